@@ -1,0 +1,70 @@
+package pipeline
+
+// Kind is the sort of a surface imperfection.
+type Kind string
+
+// The kinds.
+const (
+	Dig      Kind = "dig"
+	Scratch  Kind = "scratch"
+	EdgeChip Kind = "edge chip"
+	Stain    Kind = "stain"
+	Particle Kind = "particle"
+	Fibre    Kind = "fibre"
+)
+
+// Kinds lists the kinds in a fixed order.
+func Kinds() []Kind { return []Kind{Dig, Scratch, EdgeChip, Stain, Particle, Fibre} }
+
+// MaxDefects is how many defects one unit's evidence keeps; beyond it the evidence is
+// truncated and cannot be accepted.
+const MaxDefects = 2000
+
+// Point is a place in pixels.
+type Point struct {
+	X float64 `json:"x"`
+	Y float64 `json:"y"`
+}
+
+// Box is a half-open pixel rectangle.
+type Box struct {
+	X0 int `json:"x0"`
+	Y0 int `json:"y0"`
+	X1 int `json:"x1"`
+	Y1 int `json:"y1"`
+}
+
+// Defect is one surface imperfection as one view, or a merge of views, found it.
+type Defect struct {
+	ID   int    `json:"id"` // from 1, within the list it stands in
+	Kind Kind   `json:"kind"`
+	View string `json:"view"` // the view whose measures are given
+	Zone string `json:"zone"`
+	Place
+	EdgeDistanceUM float64  `json:"edge_distance_um"` // from the zone's own edge, inwards; 0 where it has none
+	AreaPx         int      `json:"area_px"`          // pixels above the low threshold
+	AreaUM2        float64  `json:"area_um2"`         // at half height
+	LengthUM       float64  `json:"length_um"`        // along the long axis, at half height
+	WidthUM        float64  `json:"width_um"`         // across it, at half height
+	DiameterUM     float64  `json:"diameter_um"`      // of the circle with the half-height area
+	LengthPx       float64  `json:"length_px"`
+	WidthPx        float64  `json:"width_px"`
+	DiameterPx     float64  `json:"diameter_px"`
+	AngleDeg       float64  `json:"angle_deg"`  // long axis, from +x towards +y in pixels, −90 < a ≤ 90
+	Flux           float64  `json:"flux"`       // DN·px above background, over the footprint
+	PeakDN         float64  `json:"peak_dn"`    // highest value above background
+	PeakSigma      float64  `json:"peak_sigma"` // highest value of the snr plane
+	SNR            float64  `json:"snr"`        // flux over its own noise
+	Dark           bool     `json:"dark"`       // darker than the background
+	Saturated      bool     `json:"saturated"`  // touches a saturated pixel: not sized by flux
+	Box            Box      `json:"box"`
+	Path           []Point  `json:"path"`        // only for long defects: points along it
+	SeenIn         []string `json:"seen_in"`     // after a merge: the views that saw it
+	MergedFrom     []Ref    `json:"merged_from"` // after a merge: the defects it stands for
+}
+
+// Ref names a defect of one view.
+type Ref struct {
+	View string `json:"view"`
+	ID   int    `json:"id"`
+}

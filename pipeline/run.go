@@ -1,0 +1,111 @@
+package pipeline
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"runtime/debug"
+	"strings"
+	"time"
+)
+
+// ViewResult is one view after its stages.
+type ViewResult struct {
+	Item         *Item
+	Milliseconds map[string]float64
+	Failure      *Failure // nil = all stages ran
+}
+
+// RunView runs the stages of one view. It never returns an error: what went wrong is
+// the result's Failure, and a Failure is a hold.
+func (p *Pipeline) RunView(ctx context.Context, id Identity, view View) ViewResult {
+	res := ViewResult{Item: &Item{Identity: id, View: view.Name, Frames: view.Frames}, Milliseconds: map[string]float64{}}
+	line, ok := p.views[view.Name]
+	if !ok {
+		res.Failure = &Failure{Reason: ReasonBadFrame, View: view.Name,
+			Detail: fmt.Sprintf("the recipe has no view %q (has %s)", view.Name, strings.Join(p.Views(), ", "))}
+		return res
+	}
+	res.Item.Calibration, res.Item.Geometry = line.calibration, line.geometry
+	if !proveSettings(res.Item) {
+		return res
+	}
+	for _, b := range line.stages {
+		if f := runStage(ctx, b, res.Item, res.Milliseconds); f != nil {
+			f.View, res.Failure = view.Name, f
+			return res
+		}
+	}
+	numberDefects(res.Item)
+	return res
+}
+
+// proveSettings holds the frames against the calibration; a mismatch is a failed
+// proof and no stage runs.
+func proveSettings(item *Item) bool {
+	if item.Calibration == nil {
+		return true
+	}
+	for _, f := range item.Frames {
+		if err := item.Calibration.Match(f.Header.Capture); err != nil {
+			item.Prove(Proof{Name: "settings", OK: false, Reason: err.Error()})
+			return false
+		}
+	}
+	item.Prove(Proof{Name: "settings", OK: true})
+	return true
+}
+
+func runStage(ctx context.Context, b built, item *Item, ms map[string]float64) (f *Failure) {
+	start := time.Now()
+	defer func() {
+		ms[b.factory.Type] += float64(time.Since(start).Microseconds()) / 1000
+		if r := recover(); r != nil {
+			f = &Failure{Reason: ReasonStageFailed, Stage: b.factory.Type, Detail: fmt.Sprintf("panic: %v\n%s", r, firstLines(debug.Stack(), 24))}
+		}
+	}()
+	if err := ctx.Err(); err != nil {
+		return &Failure{Reason: ReasonStageFailed, Stage: b.factory.Type, Detail: "not started: " + err.Error()}
+	}
+	if err := b.stage.Run(ctx, item); err != nil {
+		return &Failure{Reason: ReasonStageFailed, Stage: b.factory.Type, Detail: err.Error()}
+	}
+	return finiteFailure(b.factory.Type, item)
+}
+
+func firstLines(b []byte, n int) string {
+	lines := strings.SplitN(string(b), "\n", n+1)
+	return strings.Join(lines[:min(n, len(lines))], "\n")
+}
+
+// finiteFailure refuses numbers that are not numbers: they would compare as within
+// every limit.
+func finiteFailure(stage string, item *Item) *Failure {
+	for _, d := range item.Defects {
+		for _, v := range []float64{d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.Flux, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM} {
+			if math.IsNaN(v) || math.IsInf(v, 0) {
+				return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("defect at (%.1f, %.1f) px has a measure that is no number", d.XPx, d.YPx)}
+			}
+		}
+	}
+	for _, m := range item.Measurements {
+		if math.IsNaN(m.Value) || math.IsInf(m.Value, 0) {
+			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("measurement %s is no number", m.Name)}
+		}
+	}
+	return nil
+}
+
+// numberDefects gives ids from 1 and cuts the list at MaxDefects.
+func numberDefects(item *Item) {
+	defects := item.Defects
+	if len(defects) > MaxDefects {
+		defects, item.Truncated = defects[:MaxDefects], true
+	}
+	out := make([]Defect, len(defects))
+	for i, d := range defects {
+		d.ID, d.View = i+1, item.View
+		out[i] = d
+	}
+	item.Defects = out
+}
