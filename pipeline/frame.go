@@ -41,7 +41,8 @@ type FrameHeader struct {
 	Captured       time.Time         `json:"captured"`
 	CRC32C         uint32            `json:"crc32c"` // of the pixel bytes, Castagnoli
 	RequestID      string            `json:"request_id"`
-	AnswerWithinMS int               `json:"answer_within_ms"` // 0 = no deadline
+	AnswerWithinMS int               `json:"answer_within_ms"`  // 0 = no deadline
+	Spooled        bool              `json:"spooled,omitempty"` // waited in a spool because no server answered: its verdict is late
 }
 
 // Frame is one picture with its header. The bytes of Raw are never altered.

@@ -234,8 +234,10 @@ type FrameHeader struct {
 	// Deadline for the verdict from the frame's arrival; 0 = none.
 	AnswerWithinMs int32    `protobuf:"varint,22,opt,name=answer_within_ms,json=answerWithinMs,proto3" json:"answer_within_ms,omitempty"`
 	SensorC        *float64 `protobuf:"fixed64,23,opt,name=sensor_c,json=sensorC,proto3,oneof" json:"sensor_c,omitempty"`
-	unknownFields  protoimpl.UnknownFields
-	sizeCache      protoimpl.SizeCache
+	// The frame waited in a spool because no server answered; its verdict is late.
+	Spooled       bool `protobuf:"varint,24,opt,name=spooled,proto3" json:"spooled,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *FrameHeader) Reset() {
@@ -429,6 +431,13 @@ func (x *FrameHeader) GetSensorC() float64 {
 	return 0
 }
 
+func (x *FrameHeader) GetSpooled() bool {
+	if x != nil {
+		return x.Spooled
+	}
+	return false
+}
+
 // FrameChunk is a piece of a frame's pixels. Keep the whole message below 1 MiB.
 type FrameChunk struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -562,7 +571,7 @@ const file_inspectpb_frame_proto_rawDesc = "" +
 	"\astation\x18\b \x01(\tR\astation\x12\x18\n" +
 	"\aattempt\x18\t \x01(\x05R\aattempt\x125\n" +
 	"\apurpose\x18\n" +
-	" \x01(\x0e2\x1b.lapgate.inspect.v1.PurposeR\apurpose\"\xbb\x06\n" +
+	" \x01(\x0e2\x1b.lapgate.inspect.v1.PurposeR\apurpose\"\xd5\x06\n" +
 	"\vFrameHeader\x128\n" +
 	"\bidentity\x18\x01 \x01(\v2\x1c.lapgate.inspect.v1.IdentityR\bidentity\x12=\n" +
 	"\x04tags\x18\x02 \x03(\v2).lapgate.inspect.v1.FrameHeader.TagsEntryR\x04tags\x12\x12\n" +
@@ -590,7 +599,8 @@ const file_inspectpb_frame_proto_rawDesc = "" +
 	"\n" +
 	"request_id\x18\x15 \x01(\tR\trequestId\x12(\n" +
 	"\x10answer_within_ms\x18\x16 \x01(\x05R\x0eanswerWithinMs\x12\x1e\n" +
-	"\bsensor_c\x18\x17 \x01(\x01H\x00R\asensorC\x88\x01\x01\x1a7\n" +
+	"\bsensor_c\x18\x17 \x01(\x01H\x00R\asensorC\x88\x01\x01\x12\x18\n" +
+	"\aspooled\x18\x18 \x01(\bR\aspooled\x1a7\n" +
 	"\tTagsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\tR\x05value:\x028\x01B\v\n" +
