@@ -1,0 +1,60 @@
+# lapgate: build, test and demonstrate. Every target that needs outside packages runs
+# deps first; on Debian 12 that installs what is missing through apt.
+
+SHELL   := /bin/bash
+TAGS    := gocv_specific_modules
+export GOFLAGS := $(strip $(filter-out -tags=%,$(shell go env GOFLAGS 2>/dev/null)) -trimpath -tags=$(TAGS))
+
+VERSION := 0.1.0
+COMMIT  := $(shell git rev-parse --short=12 HEAD 2>/dev/null || echo unknown)
+LDFLAGS := -X main.version=$(VERSION) -X main.commit=$(COMMIT)
+DATA    ?= $(firstword $(wildcard ../shared/data ../../shared/data))
+
+.PHONY: all deps deps-check build test race fuzz demo bench evaluate crosscheck lint gen clean
+
+all: build
+
+deps: ## install what is missing (Debian 12) and check the Go version
+	@.ci/deps
+
+build: deps
+	@mkdir -p build
+	go build -ldflags '$(LDFLAGS)' -o build/lapgated ./cmd/lapgated
+	CGO_ENABLED=0 go build -ldflags '$(LDFLAGS)' -o build/lapgate ./cmd/lapgate
+	CGO_ENABLED=0 GOOS=windows GOARCH=amd64 go build -ldflags '$(LDFLAGS)' -o build/lapgate.exe ./cmd/lapgate
+
+test: build
+	go vet ./...
+	go test ./...
+
+race: deps
+	go test -race -short ./pipeline/... ./plugins/... ./server/... ./configs/... ./cmd/lapgate/...
+
+fuzz: deps ## every fuzz target for FUZZTIME
+	@.ci/fuzz $(or $(FUZZTIME),5s)
+
+demo: build ## the main job with embedded defaults; ONCE=1 stops after the report
+	build/lapgated demo --client build/lapgate --dir build/demo $(if $(ONCE),--once --report build/demo.json)
+
+bench: build
+	go run ./cmd/bench --out build/bench.json
+
+evaluate: build
+	go run ./cmd/evaluate --data '$(DATA)' --out build/evaluate.json
+
+crosscheck: deps
+	@mkdir -p build/crosscheck
+	go run ./cmd/crosscheck build/crosscheck
+	/usr/bin/python3 testdata/crosscheck/crosscheck.py build/crosscheck
+
+lint: deps
+	@test -z "$$(gofmt -l $$(git ls-files '*.go'))" || { echo 'not gofmt-clean:'; gofmt -l $$(git ls-files '*.go'); exit 1; }
+	go vet ./...
+	go tool -modfile=proto/tools/go.mod staticcheck -tags=$(TAGS) ./...
+	cd proto && go tool -modfile=tools/buf/go.mod buf lint
+
+gen: ## generated code from the .proto files
+	cd proto && go tool -modfile=tools/buf/go.mod buf generate
+
+clean:
+	rm -rf build

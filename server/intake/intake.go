@@ -1,0 +1,190 @@
+package intake
+
+import (
+	"context"
+	"fmt"
+	"log/slog"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"lapgate/pipeline"
+)
+
+// Recipes gives the pipeline in force for a part, revision and surface.
+type Recipes interface {
+	For(id pipeline.Identity) (*pipeline.Pipeline, error)
+}
+
+// Verdict is what intake answers for one showing.
+type Verdict struct {
+	ID        string // of the inspection, in the ledger
+	Identity  pipeline.Identity
+	Evidence  pipeline.Evidence
+	Judgement pipeline.Judgement
+	Stored    bool // the same frames had been judged before
+	Late      bool
+	LatencyMS float64
+	RequestID string
+}
+
+// Answer is called once per showing and client, with a verdict or with the reason why
+// there is none.
+type Answer func(Verdict, error)
+
+// Settings are intake's limits. Zero values are refused by New.
+type Settings struct {
+	MaxBytesInFlight int64
+	MaxFrameBytes    int64
+	Workers          int
+	ViewTimeout      time.Duration // where the recipe gives none
+	Now              func() time.Time
+	Log              *slog.Logger
+	// Recorded is told of every inspection that the ledger took; it must not block.
+	Recorded func(Verdict, *pipeline.Pipeline, time.Time)
+	// Keep is given the frames of a judged showing; it must not block. Nil = none kept.
+	Keep func(Verdict, []pipeline.View)
+}
+
+// Intake assembles showings and has them judged. It is safe for concurrent use.
+type Intake struct {
+	settings  Settings
+	recipes   Recipes
+	ledger    Ledger
+	admission *admission
+	pool      *pool
+	stopping  atomic.Bool
+	units     keyedLock
+
+	mu       sync.Mutex // guards showings
+	showings map[string]*showing
+	idle     sync.WaitGroup // one per open showing
+}
+
+// New starts intake's workers.
+func New(s Settings, recipes Recipes, ledger Ledger) (*Intake, error) {
+	if s.MaxBytesInFlight < 1 || s.MaxFrameBytes < 1 || s.Workers < 1 || s.ViewTimeout <= 0 {
+		return nil, pipeline.Invalid("intake: got %d bytes in flight, %d bytes a frame, %d workers, time-out %v; want all above zero",
+			s.MaxBytesInFlight, s.MaxFrameBytes, s.Workers, s.ViewTimeout)
+	}
+	if s.Now == nil {
+		s.Now = time.Now
+	}
+	if s.Log == nil {
+		s.Log = slog.Default()
+	}
+	return &Intake{settings: s, recipes: recipes, ledger: ledger, pool: newPool(s.Workers), showings: map[string]*showing{},
+		admission: &admission{most: s.MaxBytesInFlight, frame: s.MaxFrameBytes}}, nil
+}
+
+// BytesInFlight returns the bytes of frames held in memory.
+func (in *Intake) BytesInFlight() int64 { return in.admission.inFlight() }
+
+// Inspect judges all frames of one showing and waits for the verdict.
+func (in *Intake) Inspect(ctx context.Context, headers []pipeline.FrameHeader, data [][]byte) (Verdict, error) {
+	type outcome struct {
+		v   Verdict
+		err error
+	}
+	done := make(chan outcome, 1)
+	client := new(byte)
+	answer := func(v Verdict, err error) { done <- outcome{v, err} }
+	for i, h := range headers {
+		err := in.offer(h, data[i], client, answer)
+		if err != nil && !in.Refuse(h, err, client, answer) {
+			return Verdict{}, err
+		}
+	}
+	select {
+	case o := <-done:
+		return o.v, o.err
+	case <-ctx.Done():
+		return Verdict{}, ctx.Err()
+	}
+}
+
+func (in *Intake) offer(h pipeline.FrameHeader, data []byte, client any, answer Answer) error {
+	r, err := in.Begin(h)
+	if err != nil {
+		return err
+	}
+	if err = r.Add(0, data); err == nil {
+		err = r.Submit(client, answer)
+	}
+	if err != nil {
+		r.Abandon()
+	}
+	return err
+}
+
+// Drain stops taking new showings, waits until the open ones have their verdict or
+// grace has passed, and stops the workers. Showings that are still incomplete then get
+// no verdict: their frames were never answered, so the line resends them.
+func (in *Intake) Drain(grace time.Duration) {
+	in.stopping.Store(true)
+	done := make(chan struct{})
+	go func() { in.idle.Wait(); close(done) }()
+	select {
+	case <-done:
+	case <-time.After(grace):
+		in.dropAll(pipeline.Fail(pipeline.Unready, "the server stopped before all views came; resend the unit"))
+		<-done
+	}
+	in.pool.close()
+}
+
+func (in *Intake) dropAll(why error) {
+	in.mu.Lock()
+	var open []*showing
+	for _, s := range in.showings {
+		open = append(open, s)
+	}
+	in.mu.Unlock()
+	for _, s := range open {
+		s.drop(why)
+	}
+}
+
+// keyedLock lets one holder at a time through for each key.
+type keyedLock struct {
+	mu   sync.Mutex // guards held
+	held map[string]chan struct{}
+}
+
+func (k *keyedLock) lock(key string) (unlock func()) {
+	for {
+		k.mu.Lock()
+		if k.held == nil {
+			k.held = map[string]chan struct{}{}
+		}
+		wait, taken := k.held[key]
+		if !taken {
+			mine := make(chan struct{})
+			k.held[key] = mine
+			k.mu.Unlock()
+			return func() {
+				k.mu.Lock()
+				delete(k.held, key)
+				k.mu.Unlock()
+				close(mine)
+			}
+		}
+		k.mu.Unlock()
+		<-wait
+	}
+}
+
+// showingKey names the showing that a frame belongs to while it is being assembled.
+func showingKey(h pipeline.FrameHeader) string {
+	if h.Unit == "" {
+		return fmt.Sprintf("request %s/%s/%s/%s", h.Line, h.Station, h.Part, h.RequestID)
+	}
+	return h.Identity.Key()
+}
+
+func (in *Intake) pending(h pipeline.FrameHeader) bool {
+	in.mu.Lock()
+	defer in.mu.Unlock()
+	_, ok := in.showings[showingKey(h)]
+	return ok
+}
