@@ -18,11 +18,16 @@ const (
 
 // Curve gives costs relative to that of the first unit.
 type Curve struct {
-	Convention Convention
-	Rate       float64 // share left after each doubling: 0.8 for an 80 % curve
+	convention Convention
+	exponent   float64         // b = ln(rate)/ln 2
+	head       [direct]float64 // Crawford totals of 1, 2 ... direct units
 }
 
-// New refuses an unknown convention and a rate outside (0, 1].
+// direct is how many units are summed one by one before Euler-Maclaurin.
+const direct = 16
+
+// New makes the curve that leaves rate of the cost after each doubling: 0.8
+// for an 80 % curve. It refuses an unknown convention and a rate outside (0, 1].
 func New(convention Convention, rate float64) (Curve, error) {
 	if convention != Crawford && convention != Wright {
 		return Curve{}, fmt.Errorf("learning convention %q is unknown; allowed: %s, %s", convention, Crawford, Wright)
@@ -30,17 +35,23 @@ func New(convention Convention, rate float64) (Curve, error) {
 	if !(rate > 0 && rate <= 1) {
 		return Curve{}, fmt.Errorf("learning rate %v; allowed: above 0, at most 1", rate)
 	}
-	return Curve{convention, rate}, nil
+	c := Curve{convention: convention, exponent: math.Log(rate) / math.Ln2}
+	sum := 0.0
+	for k := range c.head {
+		sum += math.Pow(float64(k+1), c.exponent)
+		c.head[k] = sum
+	}
+	return c, nil
 }
 
 // Exponent is b = ln(rate)/ln 2, at most 0.
-func (c Curve) Exponent() float64 { return math.Log(c.Rate) / math.Ln2 }
+func (c *Curve) Exponent() float64 { return c.exponent }
 
 // Unit is the relative cost of the n-th unit. Crawford 1944: n^b.
 // Wright 1936: n^(1+b) - (n-1)^(1+b).
-func (c Curve) Unit(n float64) float64 {
+func (c *Curve) Unit(n float64) float64 {
 	b := c.Exponent()
-	if c.Convention == Wright {
+	if c.convention == Wright {
 		return math.Pow(n, 1+b) - math.Pow(n-1, 1+b)
 	}
 	return math.Pow(n, b)
@@ -48,38 +59,36 @@ func (c Curve) Unit(n float64) float64 {
 
 // Total is the relative cost of the first n units. Crawford: sum of k^b, a
 // part of a unit counted by its share. Wright: n^(1+b).
-func (c Curve) Total(n float64) float64 {
+func (c *Curve) Total(n float64) float64 {
 	if n <= 0 {
 		return 0
 	}
-	if c.Convention == Wright {
+	if c.convention == Wright {
 		return c.wrightTotal(n)
 	}
 	whole := math.Floor(n)
-	return sumPowers(whole, c.Exponent()) + (n-whole)*math.Pow(whole+1, c.Exponent())
+	return c.sum(whole) + (n-whole)*math.Pow(whole+1, c.exponent)
 }
 
 // wrightTotal keeps part of the first unit in proportion: an average below one
 // unit has no meaning.
-func (c Curve) wrightTotal(n float64) float64 {
+func (c *Curve) wrightTotal(n float64) float64 {
 	if n < 1 {
 		return n
 	}
-	return math.Pow(n, 1+c.Exponent())
+	return math.Pow(n, 1+c.exponent)
 }
 
-// sumPowers is the sum of k^b for k = 1..n: term by term for the first ones,
-// then Euler-Maclaurin, whose error here is below 1e-12 of the sum.
-func sumPowers(n, b float64) float64 {
-	const direct = 16
-	sum := 0.0
-	for k := 1.0; k <= math.Min(n, direct); k++ {
-		sum += math.Pow(k, b)
+// sum is the sum of k^b for k = 1..n: one by one for the first units, then
+// Euler-Maclaurin, whose error here is below 1e-12 of the sum.
+func (c *Curve) sum(n float64) float64 {
+	switch {
+	case n < 1:
+		return 0
+	case n <= direct:
+		return c.head[int(n)-1]
 	}
-	if n <= direct {
-		return sum
-	}
-	return sum + tail(n, b) - tail(direct, b)
+	return c.head[direct-1] + tail(n, c.exponent) - tail(direct, c.exponent)
 }
 
 // tail is the Euler-Maclaurin form of the sum up to m, less a constant.

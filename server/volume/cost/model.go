@@ -1,0 +1,102 @@
+package cost
+
+import (
+	"fmt"
+
+	"lapgate/server/volume/learning"
+	"lapgate/server/volume/plan"
+	"lapgate/server/volume/sampling"
+)
+
+// Model is a plan made ready for many evaluations. It does not change.
+type Model struct {
+	plan   *plan.Plan
+	makers []maker
+	gates  []gate
+	routes []route
+	escape float64 // money per escape
+}
+
+type route struct {
+	cost float64
+	then int // next route, or -1 for scrap
+}
+
+// NewModel prepares a validated plan.
+func NewModel(p *plan.Plan) (*Model, error) {
+	o := p.Outcomes
+	m := &Model{plan: p, escape: o.EscapeCost + o.Returns.ShareOfEscapes*o.Returns.Cost}
+	for i := range p.Processes {
+		mk, err := newMaker(&p.Processes[i])
+		if err != nil {
+			return nil, fmt.Errorf("process %q: %w", p.Processes[i].Name, err)
+		}
+		m.makers = append(m.makers, mk)
+	}
+	for i := range p.Inspections {
+		m.gates = append(m.gates, newGate(p, &p.Inspections[i]))
+	}
+	for i := range p.Reworks {
+		m.routes = append(m.routes, route{p.Reworks[i].Cost, p.ReworkIndex(p.Reworks[i].Then)})
+	}
+	return m, nil
+}
+
+// newMaker normalises the learning curve so that the stated price holds at
+// the start it was given for.
+func newMaker(x *plan.Process) (maker, error) {
+	m := maker{process: x}
+	if x.Learning == nil {
+		return m, nil
+	}
+	curve, err := learning.New(learning.Convention(x.Learning.Convention), x.Learning.Rate)
+	if err != nil {
+		return m, err
+	}
+	m.curve, m.share, m.scale = &curve, x.Learning.Share, 1
+	if x.Learning.PricedAt > 1 {
+		m.scale = 1 / curve.Unit(x.Learning.PricedAt)
+	}
+	return m, nil
+}
+
+func newGate(p *plan.Plan, x *plan.Inspection) gate {
+	g := gate{option: x, route: p.ReworkIndex(x.Rework), uptime: 1}
+	if x.Station.Uptime > 0 {
+		g.uptime = x.Station.Uptime
+	}
+	if x.SameResultShare != nil {
+		g.same = *x.SameResultShare
+	}
+	s, w := x.Station, p.WorkingTime
+	g.hours = s.CycleTimeS / 3600 / g.uptime
+	g.perLook = s.CostPerLook + g.hours*(s.Crew*w.LabourCostPerHour+s.RunningCostPerHour)
+	if s.Charge != plan.Dedicated && s.LifeYears > 0 {
+		g.perLook += g.hours * s.Price / (s.LifeYears * w.PeriodsPerYear * w.HoursPerPeriod)
+	}
+	if s.MaxWaitS > 0 && g.hours > 0 {
+		g.loads = loadsForWait(s.MaxWaitS / 3600 / g.hours)
+	}
+	g.perHold = x.Hold.Cost + x.Hold.Minutes/60*w.LabourCostPerHour
+	return g
+}
+
+// gate is one inspection option made ready. Money is per look or per hold.
+type gate struct {
+	option           *plan.Inspection
+	route            int
+	same, uptime     float64
+	hours            float64 // station hours per look
+	perLook, perHold float64
+	loads            []float64 // see loadsForWait; empty where no wait is asked for
+}
+
+// lotPlan is the sampling plan for a lot of the given units.
+func (g *gate) lotPlan(lot int) sampling.SinglePlan {
+	s, err := sampling.NormalPlan(lot, g.option.ISO2859.Level, g.option.ISO2859.AQLPercent)
+	if err != nil {
+		// Level, AQL and lot size were checked with the plan.
+		panic(err)
+	}
+	return s
+}
