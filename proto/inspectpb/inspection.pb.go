@@ -81,7 +81,7 @@ func (Disposition) EnumDescriptor() ([]byte, []int) {
 // FrameStart announces a frame; its chunks follow.
 type FrameStart struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// Chosen by the sender, unique among the frames in flight on this stream.
+	// Chosen by the sender, from 1, unique among the frames in flight on this stream.
 	Frame         uint32       `protobuf:"varint,1,opt,name=frame,proto3" json:"frame,omitempty"`
 	Header        *FrameHeader `protobuf:"bytes,2,opt,name=header,proto3" json:"header,omitempty"`
 	unknownFields protoimpl.UnknownFields
@@ -328,10 +328,11 @@ func (x *UnitVerdict) GetRequestId() string {
 
 // FrameRefused says why a frame was not taken. The unit it belongs to is held.
 type FrameRefused struct {
-	state     protoimpl.MessageState `protogen:"open.v1"`
-	Frame     uint32                 `protobuf:"varint,1,opt,name=frame,proto3" json:"frame,omitempty"`
-	RequestId string                 `protobuf:"bytes,2,opt,name=request_id,json=requestId,proto3" json:"request_id,omitempty"`
-	Identity  *Identity              `protobuf:"bytes,3,opt,name=identity,proto3" json:"identity,omitempty"`
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// 0 = the whole showing, not one frame.
+	Frame     uint32    `protobuf:"varint,1,opt,name=frame,proto3" json:"frame,omitempty"`
+	RequestId string    `protobuf:"bytes,2,opt,name=request_id,json=requestId,proto3" json:"request_id,omitempty"`
+	Identity  *Identity `protobuf:"bytes,3,opt,name=identity,proto3" json:"identity,omitempty"`
 	// A gRPC status code, such as 3 for InvalidArgument or 8 for ResourceExhausted.
 	Code int32 `protobuf:"varint,4,opt,name=code,proto3" json:"code,omitempty"`
 	// Field, got and wanted.

@@ -10,6 +10,18 @@ import (
 // RetryDelay is what a client that found no room is told to wait.
 const RetryDelay = 250 * time.Millisecond
 
+// retryLater is an error that says when to try again.
+type retryLater struct {
+	error
+	after time.Duration
+}
+
+// Unwrap returns the error with its kind.
+func (r retryLater) Unwrap() error { return r.error }
+
+// RetryAfter says how long to wait.
+func (r retryLater) RetryAfter() time.Duration { return r.after }
+
 // admission counts the bytes of frames in memory. It never blocks: when there is no
 // room it says so before memory grows.
 type admission struct {
@@ -27,7 +39,7 @@ func (a *admission) take(n int64) error {
 	a.mu.Lock()
 	defer a.mu.Unlock()
 	if a.held+n > a.most {
-		return pipeline.Fail(pipeline.Exhausted, "no room for a frame of %d bytes: %d of %d bytes are in flight; try again in %v", n, a.held, a.most, RetryDelay)
+		return retryLater{pipeline.Fail(pipeline.Exhausted, "no room for a frame of %d bytes: %d of %d bytes are in flight; try again in %v", n, a.held, a.most, RetryDelay), RetryDelay}
 	}
 	a.held += n
 	return nil

@@ -6,36 +6,17 @@ import (
 	"time"
 
 	"lapgate/pipeline"
+	"lapgate/server/ledger"
 )
 
-// Record is what the ledger is asked to keep of a showing.
-type Record struct {
-	Identity  pipeline.Identity
-	Digest    string
-	RequestID string
-	Captured  time.Time
-	Received  time.Time
-	Late      bool
-	LatencyMS float64
-	Evidence  pipeline.Evidence
-	Judgement pipeline.Judgement
-}
-
-// Ledger is what intake needs of the ledger.
+// Ledger is what intake needs of the ledger; see ledger.Store.
 type Ledger interface {
-	// Find returns the inspection with this identity, or nil.
-	Find(ctx context.Context, id pipeline.Identity) (*Verdict, error)
-	// FindFrames returns an inspection of the same part, lot, line and station with the
-	// same frames: of the same unit whatever the attempt, or, where the unit is empty, of
-	// the same request. Nil = none.
-	FindFrames(ctx context.Context, id pipeline.Identity, requestID, digest string) (*Verdict, error)
-	// NextUnitID gives a unit id that was never given before.
-	NextUnitID(ctx context.Context) (string, error)
-	// NextAttempt gives the number of the next showing of the unit's surface.
+	Find(ctx context.Context, id pipeline.Identity) (ledger.Inspection, error)
+	FindRequest(ctx context.Context, line, station, requestID string) (ledger.Inspection, error)
+	FindDigest(ctx context.Context, id pipeline.Identity, digest string) (ledger.Inspection, error)
+	NextUnitID(ctx context.Context, part string) (string, error)
 	NextAttempt(ctx context.Context, id pipeline.Identity) (int, error)
-	// Record keeps a showing. Same identity and digest: the stored one comes back with
-	// Stored set. Same identity, other digest: an error of kind Conflict.
-	Record(ctx context.Context, r Record) (Verdict, error)
+	Record(ctx context.Context, in ledger.Inspection) (stored ledger.Inspection, fresh bool, err error)
 }
 
 // ledgerTimeout bounds the ledger calls of one showing.
@@ -67,43 +48,47 @@ func (s *showing) views() []pipeline.View {
 
 func (s *showing) conclude(ctx context.Context) (Verdict, error) {
 	digest := pipeline.Digest(s.views())
-	if earlier, err := s.knownAlready(ctx, digest); earlier != nil || err != nil {
-		if earlier != nil {
-			earlier.Stored, earlier.RequestID = true, s.first.RequestID
-			return *earlier, nil
-		}
-		return Verdict{}, err
+	if same, known, err := s.knownAlready(ctx, digest); known || err != nil {
+		return Verdict{Inspection: same, Stored: true}, err
 	}
 	id, err := s.identify(ctx)
 	if err != nil {
 		return Verdict{}, err
 	}
-	record := s.judge(ctx, id, digest)
-	v, err := s.intake.ledger.Record(ctx, record)
+	stored, fresh, err := s.intake.ledger.Record(ctx, s.judge(ctx, id, digest))
 	if err != nil {
 		return Verdict{}, err
 	}
-	v.RequestID = s.first.RequestID
-	if !v.Stored {
-		s.tell(v, record)
+	v := Verdict{Inspection: stored, Stored: !fresh}
+	if fresh {
+		s.tell(v)
 	}
 	return v, nil
 }
 
-// knownAlready returns the stored verdict when these frames were judged before, a
+// knownAlready returns the stored inspection when these frames were judged before, a
 // Conflict when the identity was used for other frames, and neither for a new showing.
-func (s *showing) knownAlready(ctx context.Context, digest string) (*Verdict, error) {
-	if s.earlier == nil && s.first.Unit != "" && s.first.Attempt > 0 {
-		return nil, nil
-	}
-	same, err := s.intake.ledger.FindFrames(ctx, s.first.Identity, s.first.RequestID, digest)
-	if err != nil || same != nil || s.earlier == nil {
-		return same, err
-	}
+func (s *showing) knownAlready(ctx context.Context, digest string) (same ledger.Inspection, known bool, err error) {
 	id := s.first.Identity
-	return nil, pipeline.Fail(pipeline.Conflict,
-		"identity conflict: part %s lot %s unit %s attempt %d on line %s station %s was judged with other frames (inspection %s); give the unit its own id or the next attempt",
-		id.Part, id.Lot, id.Unit, id.Attempt, id.Line, id.Station, s.earlier.ID)
+	switch {
+	case s.earlier != nil:
+		same = *s.earlier
+	case id.Unit == "":
+		same, err = s.intake.ledger.FindRequest(ctx, id.Line, id.Station, s.first.RequestID)
+	case id.Attempt == 0:
+		same, err = s.intake.ledger.FindDigest(ctx, id, digest)
+	default:
+		return same, false, nil
+	}
+	if pipeline.KindOf(err) == pipeline.NotFoundKind && err != nil {
+		return same, false, nil
+	}
+	if err == nil && same.Digest != digest {
+		err = pipeline.Fail(pipeline.Conflict,
+			"%s: part %s lot %s unit %s attempt %d on line %s station %s was judged with other frames (inspection %d); give the unit its own id or the next attempt",
+			pipeline.ReasonConflict, id.Part, id.Lot, same.Unit, same.Attempt, id.Line, id.Station, same.ID)
+	}
+	return same, err == nil, err
 }
 
 // identify gives the unit id and the attempt where the line left them to the server.
@@ -111,7 +96,7 @@ func (s *showing) identify(ctx context.Context) (pipeline.Identity, error) {
 	id := s.first.Identity
 	var err error
 	if id.Unit == "" {
-		if id.Unit, err = s.intake.ledger.NextUnitID(ctx); err != nil {
+		if id.Unit, err = s.intake.ledger.NextUnitID(ctx, id.Part); err != nil {
 			return id, err
 		}
 	}
@@ -121,7 +106,7 @@ func (s *showing) identify(ctx context.Context) (pipeline.Identity, error) {
 	return id, err
 }
 
-func (s *showing) judge(ctx context.Context, id pipeline.Identity, digest string) Record {
+func (s *showing) judge(ctx context.Context, id pipeline.Identity, digest string) ledger.Inspection {
 	now := s.intake.settings.Now()
 	failures := s.failures
 	late := s.late(now)
@@ -138,7 +123,7 @@ func (s *showing) judge(ctx context.Context, id pipeline.Identity, digest string
 			evidence.Views[i].Frames[j].Header.Identity = id
 		}
 	}
-	return Record{Identity: id, Digest: digest, RequestID: s.first.RequestID, Captured: s.captured(now), Received: s.opened,
+	return ledger.Inspection{Identity: id, Digest: digest, RequestID: s.first.RequestID, Captured: s.captured(), Judged: now,
 		Late: late != nil, LatencyMS: float64(now.Sub(s.lastCame).Microseconds()) / 1000, Evidence: evidence, Judgement: judgement}
 }
 
@@ -154,25 +139,25 @@ func (s *showing) late(now time.Time) *pipeline.Failure {
 	return nil
 }
 
-// clockTolerance is how far a line's clock may run ahead of the server's.
-const clockTolerance = 5 * time.Minute
-
-// captured returns the time of capture; one in the future beyond the tolerance is
-// replaced by the time of judging (the header keeps what the line said).
-func (s *showing) captured(now time.Time) time.Time {
-	if s.first.Captured.After(now.Add(clockTolerance)) {
-		s.intake.settings.Log.Warn("clock ahead", "unit", s.first.Unit, "station", s.first.Station, "captured", s.first.Captured)
-		return now
+// captured returns when the last frame of the showing was taken, by the line's clock.
+func (s *showing) captured() time.Time {
+	last := s.first.Captured
+	for _, frames := range s.frames {
+		for _, f := range frames {
+			if f.Header.Captured.After(last) {
+				last = f.Header.Captured
+			}
+		}
 	}
-	return s.first.Captured
+	return last
 }
 
-func (s *showing) tell(v Verdict, r Record) {
+func (s *showing) tell(v Verdict) {
 	if s.intake.settings.Keep != nil {
 		s.intake.settings.Keep(v, s.views())
 	}
 	if s.intake.settings.Recorded != nil {
-		s.intake.settings.Recorded(v, s.pipe, r.Captured)
+		s.intake.settings.Recorded(v)
 	}
 }
 

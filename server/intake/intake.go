@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"lapgate/pipeline"
+	"lapgate/server/ledger"
 )
 
 // Recipes gives the pipeline in force for a part, revision and surface.
@@ -16,16 +17,10 @@ type Recipes interface {
 	For(id pipeline.Identity) (*pipeline.Pipeline, error)
 }
 
-// Verdict is what intake answers for one showing.
+// Verdict is what intake answers for one showing: the inspection as the ledger has it.
 type Verdict struct {
-	ID        string // of the inspection, in the ledger
-	Identity  pipeline.Identity
-	Evidence  pipeline.Evidence
-	Judgement pipeline.Judgement
-	Stored    bool // the same frames had been judged before
-	Late      bool
-	LatencyMS float64
-	RequestID string
+	ledger.Inspection
+	Stored bool // the same frames had been judged before
 }
 
 // Answer is called once per showing and client, with a verdict or with the reason why
@@ -41,7 +36,7 @@ type Settings struct {
 	Now              func() time.Time
 	Log              *slog.Logger
 	// Recorded is told of every inspection that the ledger took; it must not block.
-	Recorded func(Verdict, *pipeline.Pipeline, time.Time)
+	Recorded func(Verdict)
 	// Keep is given the frames of a judged showing; it must not block. Nil = none kept.
 	Keep func(Verdict, []pipeline.View)
 }
@@ -127,10 +122,15 @@ func (in *Intake) Drain(grace time.Duration) {
 	select {
 	case <-done:
 	case <-time.After(grace):
-		in.dropAll(pipeline.Fail(pipeline.Unready, "the server stopped before all views came; resend the unit"))
+		in.dropAll(stopping("the server stopped before all views came; resend the unit"))
 		<-done
 	}
 	in.pool.close()
+}
+
+// stopping is what a client is told while the server stops.
+func stopping(what string) error {
+	return retryLater{pipeline.Fail(pipeline.Unready, "%s", what), 2 * time.Second}
 }
 
 func (in *Intake) dropAll(why error) {
@@ -174,8 +174,8 @@ func (k *keyedLock) lock(key string) (unlock func()) {
 	}
 }
 
-// showingKey names the showing that a frame belongs to while it is being assembled.
-func showingKey(h pipeline.FrameHeader) string {
+// ShowingKey names the showing that a frame belongs to while it is being assembled.
+func ShowingKey(h pipeline.FrameHeader) string {
 	if h.Unit == "" {
 		return fmt.Sprintf("request %s/%s/%s/%s", h.Line, h.Station, h.Part, h.RequestID)
 	}
@@ -185,6 +185,6 @@ func showingKey(h pipeline.FrameHeader) string {
 func (in *Intake) pending(h pipeline.FrameHeader) bool {
 	in.mu.Lock()
 	defer in.mu.Unlock()
-	_, ok := in.showings[showingKey(h)]
+	_, ok := in.showings[ShowingKey(h)]
 	return ok
 }

@@ -20,7 +20,7 @@ func (in *Intake) Begin(h pipeline.FrameHeader) (*Receiver, error) {
 		return nil, err
 	}
 	if in.stopping.Load() && !in.pending(h) {
-		return nil, pipeline.Fail(pipeline.Unready, "the server is stopping; resend the unit to the next one")
+		return nil, stopping("the server is stopping; resend the unit to the next one")
 	}
 	n := h.PixelBytes()
 	if err := in.admission.take(int64(n)); err != nil {

@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"lapgate/pipeline"
+	"lapgate/server/ledger"
 )
 
 // showing is a unit whose views are still coming or being judged.
@@ -19,9 +20,9 @@ type showing struct {
 	pipe     *pipeline.Pipeline
 	opened   time.Time
 	deadline *time.Timer
-	// earlier is what the ledger already has under this identity; then no view is run
-	// until the frames are known to differ or be the same.
-	earlier *Verdict
+	// earlier is the inspection that the ledger already has under this identity; with one
+	// no view is run, since the frames are either the same or in conflict.
+	earlier *ledger.Inspection
 
 	mu       sync.Mutex                  // guards everything below
 	answers  map[any]Answer              // by client
@@ -79,7 +80,7 @@ func (in *Intake) Refuse(h pipeline.FrameHeader, why error, client any, answer A
 
 // open returns the open showing that the header belongs to, or a new one.
 func (in *Intake) open(h pipeline.FrameHeader) (*showing, error) {
-	key := showingKey(h)
+	key := ShowingKey(h)
 	in.mu.Lock()
 	s, ok := in.showings[key]
 	in.mu.Unlock()
@@ -105,7 +106,10 @@ func (in *Intake) newShowing(key string, h pipeline.FrameHeader) (*showing, erro
 	s := &showing{intake: in, key: key, first: h, pipe: pipe, opened: in.settings.Now(),
 		frames: map[string][]pipeline.Frame{}, answers: map[any]Answer{}}
 	if h.Unit != "" && h.Attempt > 0 {
-		if s.earlier, err = in.ledger.Find(context.Background(), h.Identity); err != nil {
+		earlier, err := in.ledger.Find(context.Background(), h.Identity)
+		if err == nil {
+			s.earlier = &earlier
+		} else if pipeline.KindOf(err) != pipeline.NotFoundKind {
 			return nil, err
 		}
 	}
