@@ -138,12 +138,18 @@ func (c Chart) Standardized() []float64 {
 	return z
 }
 
+// maxCount is where a float64 stops holding every whole number, with room for the limits.
+const maxCount = 1 << 50
+
 func checkLimits(kind ChartKind, centre, size float64) error {
 	if kind != ChartP && kind != ChartU && kind != ChartC {
 		return fmt.Errorf("chart %q: want %q, %q or %q", kind, ChartP, ChartU, ChartC)
 	}
 	if err := checkPositive("sample size", size); err != nil {
 		return err
+	}
+	if size > maxCount || centre*size > maxCount {
+		return fmt.Errorf("sample size %v at centre %v: want counts below %v, which are held exactly", size, centre, float64(maxCount))
 	}
 	if kind == ChartP && size != math.Trunc(size) {
 		return fmt.Errorf("sample size %v: a p chart wants whole units", size)

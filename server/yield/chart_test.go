@@ -5,6 +5,8 @@ import (
 	"math"
 	"reflect"
 	"testing"
+
+	"gonum.org/v1/gonum/stat/distuv"
 )
 
 func samplesOf(t *testing.T, file, count, size string) []Sample {
@@ -130,13 +132,12 @@ func TestLaneyChart(t *testing.T) {
 	}
 }
 
-// A count that lies on a limit is inside it: n 100, centre 0.1 has its upper limit at 19 %.
+// A count that lies on a limit is inside it (Nelson 1984: beyond): centre 16 has sigma 4 and limits 4 and 28.
 func TestLimitIsInside(t *testing.T) {
-	chart := must[Chart](t)(NewChartAt(ChartP, 0.1, []Sample{{19, 100}, {20, 100}}))
-	near(t, "limit", chart.Points[0].High, 0.19, 1e-15)
-	if chart.Points[0].High >= 0.19 && chart.Points[0].Outside || !chart.Points[1].Outside {
-		t.Errorf("got %+v", chart.Points)
-	}
+	chart := must[Chart](t)(NewChartAt(ChartC, 16, []Sample{{3, 1}, {4, 1}, {28, 1}, {29, 1}}))
+	checkChart(t, "centre 16", chart, 16, 4, 28, 1, 4)
+	law := distuv.Poisson{Lambda: 16}
+	near(t, "run length", chart.RunLength, 1/(law.CDF(3)+1-law.CDF(28)), 1e-6)
 }
 
 func TestChartWithoutEvents(t *testing.T) {
@@ -164,6 +165,7 @@ func TestChartRefuses(t *testing.T) {
 		"c with size":     {ChartC, 0.1, []Sample{{1, 2}}},
 		"share over 1":    {ChartP, 1.1, []Sample{{1, 50}}},
 		"negative centre": {ChartU, -1, []Sample{{1, 50}}},
+		"huge size":       {ChartU, 1, []Sample{{1, 1e300}}},
 		"NaN centre":      {ChartU, math.NaN(), []Sample{{1, 50}}},
 	} {
 		_, err := NewChartAt(c.kind, c.centre, c.samples)

@@ -2,6 +2,7 @@ package yield
 
 import (
 	"fmt"
+	"math"
 	"math/rand/v2"
 	"strings"
 	"testing"
@@ -78,6 +79,15 @@ func TestPoolLotsWidens(t *testing.T) {
 	}
 }
 
+// Lots of 20 that are good or bad as a whole carry one unit each: 60 / 20 = 3 units, less by Student's 97.5 % points
+// 2.00100 (59 degrees of freedom) and 4.30265 (2), as in printed tables.
+func TestPoolLotsEffectiveUnits(t *testing.T) {
+	got := must[PooledRate](t)(PoolLots([]Lot{{20, 20}, {0, 20}, {20, 20}}, 0.95))
+	near(t, "correlation", got.Correlation, 1, 1e-12)
+	near(t, "design effect", got.DesignEffect, 20, 1e-9)
+	near(t, "effective units", got.EffectiveUnits, 3*math.Pow(2.00100/4.30265, 2), 1e-5)
+}
+
 func TestPoolLotsFallsBack(t *testing.T) {
 	for why, lots := range map[string][]Lot{
 		"no more than chance": {{48, 50}, {47, 50}, {49, 50}},
@@ -129,8 +139,8 @@ func TestPoolLotsCoverage(t *testing.T) {
 		mean, rho         float64
 		least, plainBelow float64
 	}{
-		{12, 50, 0.95, 0.10, 0.85, 0.65},
-		{20, 100, 0.97, 0.03, 0.85, 0.75},
+		{12, 50, 0.95, 0.10, 0.90, 0.65},
+		{20, 100, 0.97, 0.03, 0.92, 0.75},
 		{20, 40, 0.95, 0.00, 0.94, 1.01},
 	} {
 		pooled, plain, flagged := coverageOfLots(t, c.lots, c.units, c.mean, c.rho)

@@ -19,7 +19,7 @@ func (l Limits) RunLength(rate float64) (float64, error) {
 }
 
 // RunLengthScattered is the run length of a p chart when the rate itself moves from point to point with mean
-// rate and standard deviation sd, as a Beta law: counts outside then have beta-binomial probabilities.
+// rate and standard deviation sd, as a Beta law: counts outside then have beta-binomial probabilities. It takes time in proportion to the sample size.
 func (l Limits) RunLengthScattered(rate, sd float64) (float64, error) {
 	if l.Kind != ChartP {
 		return 0, fmt.Errorf("chart %q: a scattered rate is worked out for %q only", l.Kind, ChartP)
@@ -62,18 +62,20 @@ func (l Limits) signalAt(rate float64) float64 {
 }
 
 // inside gives the least and the most count that do not signal, by the chart's own comparison, so that
-// rounding cannot make the two disagree.
+// rounding cannot make the two disagree: the product with the size is at most one count off.
 func (l Limits) inside() (least, most int) {
 	least = max(0, int(math.Ceil(l.Low*l.Size))-1)
-	for l.beyond(least) {
-		least++
-	}
-	most = int(math.Ceil(l.High*l.Size)) + 1
+	most = int(math.Floor(l.High*l.Size)) + 1
 	if l.Kind == ChartP {
 		most = min(most, int(l.Size))
 	}
-	for most > least && l.beyond(most) {
-		most--
+	for range 2 {
+		if l.beyond(least) {
+			least++
+		}
+		if l.beyond(most) {
+			most--
+		}
 	}
 	return least, most
 }
