@@ -47,6 +47,7 @@ func plainWords(message string) string {
 		{` \(in container '[^']*'\)`, ""},
 		{`^Syntax error: `, ""},
 		{` expecting \{.*\}`, ""},
+		{` \(did you mean [^)]*\)`, ""}, // CEL also thinks of names that are switched off here
 		{`'<EOF>'`, "the end of the expression"},
 		{`'_([^_'a-z?]+)_'`, "'$1'"},
 		{`'_\?_:_'`, "'? :'"},
@@ -73,9 +74,6 @@ func suggest(e SyntaxError, expr string, names []string) SyntaxError {
 	if before := textBefore(expr, e.Line, e.Column); strings.HasSuffix(before, m[1]) {
 		e.Column -= len(m[1])
 		known, what = functionNames(), "functions"
-	}
-	if strings.Contains(e.Message, "did you mean") {
-		return e
 	}
 	if near := Nearest(m[1], known); near != "" {
 		e.Message += fmt.Sprintf(" (did you mean '%s'?)", near)

@@ -179,6 +179,7 @@ func TestSyntaxErrors(t *testing.T) {
 		{"'µ' == kind && wdth_um > 1", Truth, "1:16: unknown name 'wdth_um' (did you mean 'width_um'?)"},
 		{"defects.exists(d, d.wdth_um > 1)", Truth, "1:20: unknown name 'wdth_um' (did you mean 'width_um'?)"},
 		{"szie(defects)", Number, "1:1: unknown name 'szie' (did you mean 'size'?)"},
+		{"snt > 3", Truth, "1:1: unknown name 'snt' (names: kind, width_um, area_um2, saturated, defects)"},
 		{"kind + 1", Text, "1:6: these operands do not go together: '+' applied to '(text, number)'"},
 		{"4 *", Number, "1:4: mismatched input the end of the expression"},
 		{"width_um", Truth, "1:1: the expression gives a number, want a condition (true or false)"},
