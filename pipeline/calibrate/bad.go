@@ -112,13 +112,11 @@ func minus(a, b *raster.Plane) *raster.Plane {
 // robustSigma returns 1.4826 times the median absolute deviation.
 func robustSigma(v []float32) float64 {
 	s := slices.Clone(v)
-	slices.Sort(s)
-	middle := s[len(s)/2]
+	centre := middle(s)
 	for i, x := range v {
-		s[i] = float32(math.Abs(float64(x - middle)))
+		s[i] = float32(math.Abs(float64(x - centre)))
 	}
-	slices.Sort(s)
-	return madToSigma * float64(s[len(s)/2])
+	return madToSigma * float64(middle(s))
 }
 
 // localMedian returns the median of each pixel's 5 × 5 neighbourhood, which is smaller
@@ -152,7 +150,6 @@ func medianRow(dst []float32, p *raster.Plane, y int) {
 		for row := y0; row < y1; row++ {
 			v = append(v, p.Row(row)[x0:x1]...)
 		}
-		slices.Sort(v)
-		dst[x] = v[len(v)/2]
+		dst[x] = middle(v)
 	}
 }

@@ -244,11 +244,3 @@ func meanOf(p *raster.Plane) float64 {
 	}
 	return sum / float64(len(p.Pix))
 }
-
-func medianOf(p *raster.Plane) float64 {
-	v := make([]float64, len(p.Pix))
-	for i, x := range p.Pix {
-		v[i] = float64(x)
-	}
-	return median(v)
-}

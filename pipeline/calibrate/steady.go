@@ -10,7 +10,8 @@ import (
 const (
 	chanceSigmas     = 8
 	outlierSigmas    = 6
-	outlierShare     = 0.01  // of a tile: more is not a blinking pixel
+	outlierShare     = 0.01  // of a tile, or
+	outlierPixels    = 3     // in a small one: more are not blinking pixels
 	minVarianceRise  = 0.5   // of the variance expected
 	minShiftDN       = 0.5   // of a tile's mean
 	minShiftShare    = 0.005 // of a tile's mean above dark
@@ -42,7 +43,7 @@ func (s scene) checkSteady(a, b []uint16, width int, tiles []tile) error {
 			continue
 		}
 		diff, variance, share := t.inliers(a, b, width, outlierSigmas*math.Sqrt(2*expected[i]))
-		if share <= outlierShare && s.explained(t, diff-shift, variance, expected[i]) {
+		if share <= max(outlierShare, outlierPixels/float64(t.n)) && s.explained(t, diff-shift, variance, expected[i]) {
 			continue
 		}
 		return fmt.Errorf("differs more than noise allows from x %d to %d, y %d to %d (difference %.2f DN, variance %.2f DN², noise explains %.2f DN²): "+
@@ -130,13 +131,18 @@ func (s scene) typicalGain(tiles []tile) float64 {
 // pixels is independent, a moved texture is not.
 func (s scene) checkWhite(a, b []uint16, width int) error {
 	across, down := neighbourCorrelation(a, b, width)
-	limit := max(maxCorrelation, correlationScale/math.Sqrt(float64(len(a))))
-	if max(math.Abs(across), math.Abs(down)) > limit {
-		return fmt.Errorf("difference is not pixel noise (correlation of neighbours %.2f across, %.2f down, want within ±%.2f): "+
+	height := len(a) / width
+	limitAcross, limitDown := correlationLimit(len(a)-height), correlationLimit(len(a)-width)
+	if math.Abs(across) > limitAcross || math.Abs(down) > limitDown {
+		return fmt.Errorf("difference is not pixel noise (correlation of neighbours %.2f across, %.2f down, want within ±%.2f, ±%.2f): "+
 			"the target moved, or the camera smooths, sharpens or compresses; fix the target, switch such processing off, and take the folder again",
-			across, down, limit)
+			across, down, limitAcross, limitDown)
 	}
 	return nil
+}
+
+func correlationLimit(pairs int) float64 {
+	return max(maxCorrelation, correlationScale/math.Sqrt(float64(max(pairs, 1))))
 }
 
 func neighbourCorrelation(a, b []uint16, width int) (across, down float64) {
