@@ -87,7 +87,7 @@ func between(low, high float64) float64 {
 func (s *search) refine(low, high point, sign float64) Crossing {
 	for range 60 {
 		middle := s.at((low.quantity + high.quantity) / 2)
-		if middle.quantity <= low.quantity || middle.quantity >= high.quantity {
+		if high.quantity-low.quantity < 1e-10*high.quantity {
 			break
 		}
 		if middle.sign() == sign {
@@ -100,14 +100,32 @@ func (s *search) refine(low, high point, sign float64) Crossing {
 	return Crossing{high.quantity, sign > 0, step > 1e-7*math.Max(1e-300, high.a)}
 }
 
-// Nearest is the crossing nearest a quantity in ratio; ok is false if there is
-// none.
-func Nearest(found []Crossing, quantity float64) (nearest Crossing, ok bool) {
-	best := math.Inf(1)
-	for _, c := range found {
-		if d := math.Abs(math.Log(c.Quantity / quantity)); d < best {
-			best, nearest, ok = d, c, true
+// nearestTurn is the crossing nearest a quantity in ratio, NaN if there is none
+// between from and to. It walks outwards on both sides in steps that grow from
+// 2 % of the quantity with the distance and bisects the first change of sign;
+// two changes within one step are not seen.
+func nearestTurn(a, b Curve, near, from, to float64) float64 {
+	s := &search{a: a, b: b, left: math.MaxInt}
+	start := s.at(near)
+	below, above := start, start
+	for step := 1.0; below.quantity > from || above.quantity < to; step++ {
+		ratio := math.Exp(0.02*step + 0.002*step*step)
+		if next := near * ratio; above.quantity < to {
+			p := s.at(math.Min(next, to))
+			if turned(above, p) {
+				return s.refine(above, p, p.sign()).Quantity
+			}
+			above = p
+		}
+		if next := near / ratio; below.quantity > from {
+			p := s.at(math.Max(next, from))
+			if turned(p, below) {
+				return s.refine(p, below, below.sign()).Quantity
+			}
+			below = p
 		}
 	}
-	return nearest, ok
+	return math.NaN()
 }
+
+func turned(low, high point) bool { return low.sign() != high.sign() && high.sign() != 0 }

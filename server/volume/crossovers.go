@@ -114,12 +114,7 @@ type spread struct {
 func (s *spread) in(w *plan.World) float64 {
 	a := s.model.Combination(s.a[0], s.a[1], w)
 	b := s.model.Combination(s.b[0], s.b[1], w)
-	found, _ := Crossings(curve(a), curve(b), s.from, s.to, pairBudget)
-	nearest, ok := Nearest(found, s.near)
-	if !ok {
-		return math.NaN()
-	}
-	return nearest.Quantity
+	return nearestTurn(curve(a), curve(b), s.near, s.from, s.to)
 }
 
 func (s *spread) over(ctx context.Context, worlds []plan.World, level float64) (CrossingDistribution, error) {

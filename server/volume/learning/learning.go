@@ -21,6 +21,7 @@ type Curve struct {
 	convention Convention
 	exponent   float64         // b = ln(rate)/ln 2
 	head       [direct]float64 // Crawford totals of 1, 2 ... direct units
+	rest       float64         // what tail leaves out
 }
 
 // direct is how many units are summed one by one before Euler-Maclaurin.
@@ -41,6 +42,7 @@ func New(convention Convention, rate float64) (Curve, error) {
 		sum += math.Pow(float64(k+1), c.exponent)
 		c.head[k] = sum
 	}
+	c.rest = sum - tail(direct, c.exponent)
 	return c, nil
 }
 
@@ -88,7 +90,7 @@ func (c *Curve) sum(n float64) float64 {
 	case n <= direct:
 		return c.head[int(n)-1]
 	}
-	return c.head[direct-1] + tail(n, c.exponent) - tail(direct, c.exponent)
+	return c.rest + tail(n, c.exponent)
 }
 
 // tail is the Euler-Maclaurin form of the sum up to m, less a constant.
