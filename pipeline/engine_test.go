@@ -168,7 +168,7 @@ func TestCalibrationOfOtherSettingsIsHeld(t *testing.T) {
 		t.Fatal(err)
 	}
 	e, j := inspect(t, p)
-	if j.Verdict != pipeline.Hold || !strings.Contains(j.Reasons[0].Text, "exposure_us: frame has 0 µs, calibration has 500") {
+	if j.Verdict != pipeline.Hold || !strings.Contains(j.Reasons[0].Text, "exposure_us: got 0, want 500") {
 		t.Errorf("reasons %+v, want a hold that names exposure_us, found and wanted", j.Reasons)
 	}
 	if len(e.Defects) != 0 {

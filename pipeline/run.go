@@ -47,7 +47,7 @@ func proveSettings(item *Item) bool {
 		return true
 	}
 	for _, f := range item.Frames {
-		if err := item.Calibration.Match(f.Header.Capture); err != nil {
+		if err := item.Calibration.Match(f.Header); err != nil {
 			item.Prove(Proof{Name: "settings", OK: false, Reason: err.Error()})
 			return false
 		}

@@ -154,7 +154,7 @@ func TestMatch(t *testing.T) {
 	}}
 	good := pipeline.FrameHeader{CameraID: "cam-1", Capture: cal.Capture}
 	good.Format, good.BinningX, good.ExposureUS = raster.Mono12p, 0, 1000.5
-	if err := Match(cal, good); err != nil {
+	if err := cal.Match(good); err != nil {
 		t.Errorf("same counts, other packing: %v", err)
 	}
 	nan := 0.0
@@ -171,7 +171,7 @@ func TestMatch(t *testing.T) {
 	} {
 		h := good
 		change(&h)
-		if err := Match(cal, h); err == nil || !strings.Contains(err.Error(), want) {
+		if err := cal.Match(h); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("got %v, want ...%s...", err, want)
 		}
 	}

@@ -86,7 +86,7 @@ func (s *stack) sameCapture(f Frame) error {
 	if s.capture.Width == 0 {
 		s.capture.Format, s.capture.Width, s.capture.Height = got.Format, got.Width, got.Height
 	}
-	if err := matchCapture(s.capture, got); err != nil {
+	if err := pipeline.MatchCapture(s.capture, got); err != nil {
 		return fmt.Errorf("%w: all frames of a calibration are taken with the same settings", err)
 	}
 	return nil
