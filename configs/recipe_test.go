@@ -32,7 +32,9 @@ type spotStage struct {
 
 func catalogue(t *testing.T) *pipeline.Catalogue {
 	t.Helper()
-	build := func(s spotSettings, _ pipeline.Environment) (pipeline.Stage, error) { return spotStage{settings: s}, nil }
+	build := func(s spotSettings, _ pipeline.Environment) (pipeline.Stage, error) {
+		return spotStage{settings: s}, nil
+	}
 	defaults := spotSettings{KLow: 3.5, KHigh: 6, Sizes: []int{1, 2}}
 	c, err := pipeline.NewCatalogue([]pipeline.Factory{
 		pipeline.Make(pipeline.Factory{Type: "spots", Version: "1", Scope: pipeline.ScopeView}, defaults, build),
