@@ -7,11 +7,12 @@ import (
 	"time"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/raster"
 )
 
 // Check refuses a scene that cannot be drawn; the error starts with the key it is about.
 func (s Scene) Check() error {
-	if s.Format != Format {
+	if s.Format != 0 && s.Format != Format {
 		return pipeline.Invalid("format: got %d, want %d", s.Format, Format)
 	}
 	checks := []func() error{s.checkRun, s.checkPart, s.Camera.check, s.checkLamp, s.checkViews, s.checkLines, s.checkProcesses, s.checkSpoilers}
@@ -49,15 +50,15 @@ func (s Scene) checkPart() error {
 }
 
 func (c Camera) check() error {
-	if !c.PixelFormat.Known() {
-		return pipeline.Invalid("camera.pixel_format: not given, want a name such as Mono8")
+	if _, err := raster.ParsePixelFormat(c.PixelFormat); err != nil {
+		return pipeline.Invalid("camera.pixel_format: %w", err)
 	}
 	return firstBad(pipeline.CheckID("camera.id", c.ID),
 		within("camera.width", float64(c.Width), 16, 32768), within("camera.height", float64(c.Height), 16, 32768),
 		within("camera.um_per_px", c.UMPerPx, 1e-3, 1e4), within("camera.gain_dn_per_e", c.GainDNPerE, 1e-6, 1e3),
 		within("camera.dark_noise_e", c.DarkNoiseE, 0, 1e4), within("camera.response_spread", c.ResponseSpread, 0, 0.2),
 		within("camera.dark_spread_dn", c.DarkSpreadDN, 0, 1e3), within("camera.blur_px", c.BlurPx, 0, 50),
-		within("camera.black_level_dn", c.BlackLevelDN, 0, float64(c.PixelFormat.MaxCount())),
+		within("camera.black_level_dn", c.BlackLevelDN, 0, float64(c.format().MaxCount())),
 		within("camera.hot_pixels", float64(c.HotPixels), 0, 1e5), within("camera.dead_pixels", float64(c.DeadPixels), 0, 1e5),
 		c.HotPixelDN.check("camera.hot_pixel_dn"))
 }

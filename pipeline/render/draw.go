@@ -4,13 +4,15 @@ import (
 	"math"
 )
 
-// discRows is how many lines a pixel row is cut into for a disc.
-const discRows = 32
+// discRows is how many lines a row of a fine patch is cut into for a disc.
+const discRows = 12
 
-// drawDisc adds value times the share of each pixel that the disc covers: exact along
-// x, by discRows chords along y.
+// drawDisc adds, to a fine patch, value times the share of each of its pixels that the
+// disc covers: exact along x, by discRows chords along y. x, y and radius are in whole
+// pixels.
 func (p *patch) drawDisc(x, y, radius float64, value float32) {
-	step := 1.0 / discRows
+	x, y, radius = fineAt(x), fineAt(y), radius*fineness
+	const step = 1.0 / discRows
 	for py := range p.h {
 		row := p.row(py)
 		for k := range discRows {
@@ -33,19 +35,20 @@ func addChord(row []float32, a, b float64, value float32) {
 	}
 }
 
-// outlineSteps is how many points along each side of a pixel are asked for an
+// outlineSteps is how many points along each side of a fine pixel are asked for an
 // irregular shape.
-const outlineSteps = 6
+const outlineSteps = 2
 
-// drawShape adds value times the share of each pixel's points that are inside.
+// drawShape adds, to a fine patch, value times the share of each pixel's points that are
+// inside; inside is asked in whole pixels.
 func (p *patch) drawShape(value float32, inside func(x, y float64) bool) {
 	value /= outlineSteps * outlineSteps
 	for py := range p.h {
 		row := p.row(py)
 		for px := range row {
 			for k := range outlineSteps * outlineSteps {
-				x := float64(p.x0+px) - 0.5 + (float64(k%outlineSteps)+0.5)/outlineSteps
-				y := float64(p.y0+py) - 0.5 + (float64(k/outlineSteps)+0.5)/outlineSteps
+				x := (float64(p.x0+px)+(float64(k%outlineSteps)+0.5)/outlineSteps)/fineness - 0.5
+				y := (float64(p.y0+py)+(float64(k/outlineSteps)+0.5)/outlineSteps)/fineness - 0.5
 				if inside(x, y) {
 					row[px] += value
 				}

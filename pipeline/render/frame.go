@@ -14,7 +14,7 @@ const viewDelay = 150 * time.Millisecond
 func (r *Renderer) header(id pipeline.Identity, view string) pipeline.FrameHeader {
 	c := r.scene.Camera
 	return pipeline.FrameHeader{Identity: id, View: view, Count: 1, CameraID: c.ID, Captured: r.scene.start(),
-		Capture: pipeline.Capture{Format: c.PixelFormat, Width: c.Width, Height: c.Height, ExposureUS: c.ExposureUS,
+		Capture: pipeline.Capture{Format: c.format(), Width: c.Width, Height: c.Height, ExposureUS: c.ExposureUS,
 			GainDB: c.GainDB, BlackLevel: c.BlackLevelDN, BinningX: 1, BinningY: 1}}
 }
 

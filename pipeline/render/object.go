@@ -51,6 +51,9 @@ func (o *Object) see(s Sighting) {
 // irregular is how far an irregular outline may stand out, relative to its mean radius.
 const irregular = 1.5
 
+// stainReach is how far a stain is drawn, relative to its radius: to 1e−4 of its middle.
+const stainReach = 1.92
+
 // reachUM is the radius of a circle about the middle that holds the whole object.
 func (o Object) reachUM() float64 {
 	switch o.Kind {
@@ -60,6 +63,8 @@ func (o Object) reachUM() float64 {
 		return irregular * max(o.LengthUM/2, o.WidthUM)
 	case pipeline.Particle:
 		return irregular * o.DiameterUM / 2
+	case pipeline.Stain:
+		return stainReach * o.DiameterUM / 2
 	}
 	return o.DiameterUM / 2
 }

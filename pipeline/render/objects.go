@@ -60,14 +60,17 @@ func (st stage) patchOf(o Object) *patch {
 	case pipeline.Stain:
 		p.drawStain(x, y, o.DiameterUM/2*scale, st.blur, value)
 		return p
-	case pipeline.Particle:
-		p.drawShape(value, grain(o, x, y, o.DiameterUM/2*scale))
-	case pipeline.EdgeChip:
-		st.drawChip(p, o, value)
-	default:
-		p.drawDisc(x, y, o.DiameterUM/2*scale, value)
 	}
-	p.blur(st.blur)
+	p.drawnFine(st.blur, func(fine *patch) {
+		switch o.Kind {
+		case pipeline.Particle:
+			fine.drawShape(value, grain(o, x, y, o.DiameterUM/2*scale))
+		case pipeline.EdgeChip:
+			st.drawChip(fine, o, value)
+		default:
+			fine.drawDisc(x, y, o.DiameterUM/2*scale, value)
+		}
+	})
 	return p
 }
 
@@ -153,12 +156,25 @@ func (st stage) drawChip(p *patch, o Object, value float32) {
 	ex, ey := st.x+ux*st.radius, st.y+uy*st.radius
 	depth, half := o.WidthUM*scale, o.LengthUM/2*scale
 	outline := newOutline(o.shape)
+	deep, before, after := outline.halfExtent()
 	p.drawShape(value, func(x, y float64) bool {
 		if math.Hypot(x-st.x, y-st.y) > st.radius {
 			return false
 		}
-		in := -((x-ex)*ux + (y-ey)*uy) / depth
-		along := ((y-ey)*ux - (x-ex)*uy) / half
+		in := -((x-ex)*ux + (y-ey)*uy) / depth * deep
+		along := ((y-ey)*ux-(x-ex)*uy)/half*(before+after)/2 + (after-before)/2
 		return math.Hypot(in, along) <= outline.at(math.Atan2(in, along))
 	})
+}
+
+// halfExtent returns how deep the upper half of the outline is, and how far it reaches
+// along its base to either side.
+func (o outline) halfExtent() (deep, before, after float64) {
+	for i := range 181 {
+		angle := math.Pi * float64(i) / 180
+		sin, cos := math.Sincos(angle)
+		r := o.at(angle)
+		deep, before, after = max(deep, r*sin), max(before, -r*cos), max(after, r*cos)
+	}
+	return deep, before, after
 }

@@ -13,7 +13,7 @@ const Format = 1
 // Scene is a scene file: everything a run of rendered units depends on. Equal scenes
 // give equal bytes.
 type Scene struct {
-	Format         int               `yaml:"format"`
+	Format         int               `yaml:"format"` // 1; 0 = the reader of the file has checked it
 	Seed           uint64            `yaml:"seed"`
 	Start          string            `yaml:"start"`            // RFC 3339; capture of each line's first unit
 	SecondsPerUnit float64           `yaml:"seconds_per_unit"` // between two units of one line
@@ -47,22 +47,22 @@ type Part struct {
 // Camera is the sensor with its optics. One camera, with one fixed pattern, serves
 // every line of a scene.
 type Camera struct {
-	ID             string             `yaml:"id"`
-	Width          int                `yaml:"width"`
-	Height         int                `yaml:"height"`
-	UMPerPx        float64            `yaml:"um_per_px"`
-	PixelFormat    raster.PixelFormat `yaml:"pixel_format"`
-	ExposureUS     float64            `yaml:"exposure_us"`
-	GainDB         float64            `yaml:"gain_db"`
-	BlackLevelDN   float64            `yaml:"black_level_dn"`
-	GainDNPerE     float64            `yaml:"gain_dn_per_e"`   // system gain K
-	DarkNoiseE     float64            `yaml:"dark_noise_e"`    // σ_d, electrons
-	ResponseSpread float64            `yaml:"response_spread"` // relative standard deviation of the pixel gain
-	DarkSpreadDN   float64            `yaml:"dark_spread_dn"`  // standard deviation of the dark offset
-	HotPixels      int                `yaml:"hot_pixels"`
-	HotPixelDN     Distribution       `yaml:"hot_pixel_dn"` // above the black level
-	DeadPixels     int                `yaml:"dead_pixels"`  // they see no light
-	BlurPx         float64            `yaml:"blur_px"`      // sigma of the Gaussian point spread
+	ID             string       `yaml:"id"`
+	Width          int          `yaml:"width"`
+	Height         int          `yaml:"height"`
+	UMPerPx        float64      `yaml:"um_per_px"`
+	PixelFormat    string       `yaml:"pixel_format"` // PFNC name, such as Mono8
+	ExposureUS     float64      `yaml:"exposure_us"`
+	GainDB         float64      `yaml:"gain_db"`
+	BlackLevelDN   float64      `yaml:"black_level_dn"`
+	GainDNPerE     float64      `yaml:"gain_dn_per_e"`   // system gain K
+	DarkNoiseE     float64      `yaml:"dark_noise_e"`    // σ_d, electrons
+	ResponseSpread float64      `yaml:"response_spread"` // relative standard deviation of the pixel gain
+	DarkSpreadDN   float64      `yaml:"dark_spread_dn"`  // standard deviation of the dark offset
+	HotPixels      int          `yaml:"hot_pixels"`
+	HotPixelDN     Distribution `yaml:"hot_pixel_dn"` // above the black level
+	DeadPixels     int          `yaml:"dead_pixels"`  // they see no light
+	BlurPx         float64      `yaml:"blur_px"`      // sigma of the Gaussian point spread
 }
 
 // Lamp is the range of lamp power, 1 = nominal; each unit's is drawn uniformly.
@@ -157,6 +157,12 @@ type CalibrationFrames struct {
 	Dark     int `yaml:"dark"`
 	Stray    int `yaml:"stray"`
 	Response int `yaml:"response"`
+}
+
+// format returns the pixel format; Check has refused unknown names before.
+func (c Camera) format() raster.PixelFormat {
+	f, _ := raster.ParsePixelFormat(c.PixelFormat)
+	return f
 }
 
 func (s Scene) start() time.Time {

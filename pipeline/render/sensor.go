@@ -50,7 +50,7 @@ func (s *sensor) expose(light *raster.Plane, m viewMaps, power float64, r *rand.
 	k, p := float32(s.camera.GainDNPerE), float32(power)
 	dark := k * float32(s.camera.DarkNoiseE)
 	dark *= dark
-	top := float32(s.camera.PixelFormat.MaxCount())
+	top := float32(s.camera.format().MaxCount())
 	for i, v := range light.Pix {
 		signal := p * (v*m.gain.Pix[i] + m.stray.Pix[i])
 		sigma := float32(math.Sqrt(float64(k*max(signal, 0) + dark)))
