@@ -14,7 +14,7 @@ type CircleSearch struct {
 	Reach      float64 // how far the centre may lie from it, px
 	RMin, RMax float64 // px
 	DarkInside bool    // the part is darker than its surroundings
-	Rays       int     // directions in which the edge is looked for; 0 = 360
+	Rays       int     // directions in which the edge is looked for; 0 = DefaultRays
 	MaxRMS     float64 // residuals beyond this are no circle, px; 0 = 1.5
 }
 
@@ -26,6 +26,9 @@ type CircleFit struct {
 	RMS       float64 // root mean square of their radial residuals, px
 	EdgeWidth float64 // 10–90 % width of the mean edge profile, px; 0 = not measurable
 }
+
+// DefaultRays is in how many directions the edge is looked for.
+const DefaultRays = 360
 
 // leastPoints is the share of the rays that must have found the edge.
 const leastPoints = 0.3
@@ -39,7 +42,7 @@ func FindCircle(src *Plane, s CircleSearch) (CircleFit, error) {
 		panic(fmt.Sprintf("raster: circle search %+v out of range", s))
 	}
 	if s.Rays == 0 {
-		s.Rays = 360
+		s.Rays = DefaultRays
 	}
 	if s.MaxRMS == 0 {
 		s.MaxRMS = 1.5

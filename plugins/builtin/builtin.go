@@ -1,0 +1,29 @@
+// Package builtin is the list of stages and fusers that are compiled into the programs.
+// It holds none of them itself.
+package builtin
+
+import (
+	"lapgate/pipeline"
+	"lapgate/plugins/blobs"
+	"lapgate/plugins/classify"
+	"lapgate/plugins/darkfield"
+	"lapgate/plugins/flatfield"
+	"lapgate/plugins/merge"
+	"lapgate/plugins/region"
+)
+
+// Stages returns the factories of all stages.
+func Stages() []pipeline.Factory {
+	return []pipeline.Factory{
+		region.Factory,
+		flatfield.Factory,
+		darkfield.Factory,
+		blobs.Factory,
+		merge.Factory(),
+		classify.Factory(),
+		classify.ViewFactory(),
+	}
+}
+
+// Catalogue returns the catalogue of all stages. It cannot fail unless two have one type.
+func Catalogue() (*pipeline.Catalogue, error) { return pipeline.NewCatalogue(Stages(), nil) }

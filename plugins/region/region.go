@@ -1,0 +1,183 @@
+package region
+
+import (
+	"context"
+	"fmt"
+	"math"
+
+	"lapgate/pipeline"
+	"lapgate/pipeline/raster"
+)
+
+// Factory describes the stage.
+var Factory = withMaskHash(pipeline.Make(pipeline.Factory{
+	Type: "region", Version: "1", Scope: pipeline.ScopeView,
+	Summary: "Finds the part on the frame as received and lays the drawing's zones over it.",
+	Reads:   []string{pipeline.RawPlane}, Writes: []string{"region", "geometry"},
+}, Default, build))
+
+// withMaskHash puts the hash of the mask that was read into the effective settings.
+func withMaskHash(f pipeline.Factory) pipeline.Factory {
+	inner := f.New
+	f.New = func(decode pipeline.Decode, env pipeline.Environment) (pipeline.Stage, any, error) {
+		s, settings, err := inner(decode, env)
+		if st, ok := s.(*stage); ok && err == nil {
+			settings = st.s
+		}
+		return s, settings, err
+	}
+	return f
+}
+
+type stage struct {
+	s        Settings
+	geometry pipeline.Geometry
+	mask     *raster.Mask // for MaskImage
+}
+
+func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
+	st := &stage{s: s, geometry: env.Geometry}
+	if st.geometry == nil {
+		return nil, pipeline.Invalid("region: the view has no scale; give um_per_px")
+	}
+	if s.Shape == MaskImage {
+		mask, sum, err := readMask(s.MaskFile, env.ReadFile)
+		if err != nil {
+			return nil, err
+		}
+		if s.MaskSHA256 != "" && s.MaskSHA256 != sum {
+			return nil, pipeline.Invalid("mask_sha256: got %s, but %s has %s", s.MaskSHA256, s.MaskFile, sum)
+		}
+		st.mask, st.s.MaskSHA256 = mask, sum
+	}
+	return st, nil
+}
+
+// Run implements pipeline.Stage.
+func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
+	raw, err := item.Raw()
+	if err != nil {
+		return err
+	}
+	switch st.s.Shape {
+	case FoundCircle:
+		st.find(item, raw)
+	case Circle:
+		x, y := st.centre(raw)
+		st.lay(item, raw, raster.Circle{X: x, Y: y, R: st.px(st.s.DiameterMM) / 2})
+	case Polygon:
+		st.fill(item, polygonMask(raw.Width, raw.Height, st.s.Polygon), polygonArea(st.s.Polygon), polygonEdge(st.s.Polygon))
+	case MaskImage:
+		if st.mask.Width != raw.Width || st.mask.Height != raw.Height {
+			return pipeline.Invalid("mask_file %s: got %d × %d px, the frame has %d × %d", st.s.MaskFile, st.mask.Width, st.mask.Height, raw.Width, raw.Height)
+		}
+		st.fill(item, st.mask, float64(st.mask.Count()), nil)
+	default:
+		st.fill(item, wholeMask(raw.Width, raw.Height), float64(raw.Width*raw.Height), nil)
+	}
+	return ctx.Err()
+}
+
+// umPerPx is the scale at the middle of the view.
+func (st *stage) umPerPx() float64 { _, _, s := st.geometry.ToStation(0, 0); return s }
+
+func (st *stage) px(mm float64) float64 { return mm * 1000 / st.umPerPx() }
+
+func (st *stage) centre(raw *raster.Plane) (x, y float64) {
+	if st.s.CentreXPx == 0 && st.s.CentreYPx == 0 {
+		return float64(raw.Width-1) / 2, float64(raw.Height-1) / 2
+	}
+	return st.s.CentreXPx, st.s.CentreYPx
+}
+
+// find looks for the part and proves that it is there; without it the region is empty.
+func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
+	s := st.s
+	search := raster.CircleSearch{DarkInside: s.Polarity == "dark", MaxRMS: s.MaxEdgeRMSPx, Reach: s.SearchPx}
+	search.X, search.Y = st.centre(raw)
+	if search.Reach == 0 {
+		search.Reach = float64(min(raw.Width, raw.Height)) / 4
+	}
+	// The search is wider than the tolerance, so that a part of the wrong size is measured.
+	search.RMin = max(st.px(s.DiameterMM-2*s.DiameterToleranceMM)/2, 2)
+	search.RMax = max(st.px(s.DiameterMM+2*s.DiameterToleranceMM)/2, search.RMin+1)
+	fit, err := raster.FindCircle(raw, search)
+	proof := pipeline.Proof{Name: "part", Unit: "mm", Low: s.DiameterMM - s.DiameterToleranceMM, High: s.DiameterMM + s.DiameterToleranceMM}
+	if err != nil {
+		proof.Reason = "part not found: " + err.Error()
+		item.Prove(proof)
+		st.leaveEmpty(item, raw)
+		return
+	}
+	st.prove(item, proof, fit)
+	st.measure(item, fit)
+	st.lay(item, raw, fit.Circle)
+}
+
+func (st *stage) leaveEmpty(item *pipeline.Item, raw *raster.Plane) {
+	x, y := st.centre(raw)
+	item.Region = pipeline.NewRegion(raw.Width, raw.Height, x, y, 0, nil)
+	item.Geometry = st.geometry.WithOrigin(x, y)
+}
+
+func (st *stage) prove(item *pipeline.Item, proof pipeline.Proof, fit raster.CircleFit) {
+	s := st.s
+	proof.Value = 2 * fit.R * st.umPerPx() / 1000
+	share := float64(fit.Points) / raster.DefaultRays
+	switch {
+	case proof.Value < proof.Low || proof.Value > proof.High:
+		proof.Reason = fmt.Sprintf("found a diameter of %.3f mm, want %.3f to %.3f", proof.Value, proof.Low, proof.High)
+	case share < s.MinEdgeShare:
+		proof.Reason = fmt.Sprintf("found the edge in %.0f %% of directions, want %.0f %%", 100*share, 100*s.MinEdgeShare)
+	default:
+		proof.OK = true
+	}
+	item.Prove(proof)
+	if s.MaxEdgeWidthPx > 0 {
+		focus := pipeline.Proof{Name: "focus", Value: fit.EdgeWidth, High: s.MaxEdgeWidthPx, Unit: "px"}
+		focus.OK = fit.EdgeWidth > 0 && fit.EdgeWidth <= s.MaxEdgeWidthPx
+		if !focus.OK {
+			focus.Reason = fmt.Sprintf("the part's edge is %.2f px wide (10–90 %%), want at most %.2f: check focus", fit.EdgeWidth, s.MaxEdgeWidthPx)
+		}
+		item.Prove(focus)
+	}
+}
+
+func (st *stage) measure(item *pipeline.Item, fit raster.CircleFit) {
+	item.Measure("part_diameter_mm", 2*fit.R*st.umPerPx()/1000, "mm")
+	item.Measure("part_edge_points", float64(fit.Points), "")
+	item.Measure("part_edge_rms_px", fit.RMS, "px")
+	item.Measure("part_edge_width_px", fit.EdgeWidth, "px")
+}
+
+// lay puts the zones over a circle.
+func (st *stage) lay(item *pipeline.Item, raw *raster.Plane, c raster.Circle) {
+	list := st.s.Zones
+	if len(list) == 0 {
+		list = []ZoneSettings{{Name: "all"}}
+	}
+	var zones []pipeline.Zone
+	for _, z := range list {
+		outer, inner := z.outer(st.s), z.InnerDiameterMM
+		area := math.Pi / 4 * (outer*outer - inner*inner)
+		ro, ri := st.px(outer)/2, st.px(inner)/2
+		zones = append(zones, pipeline.Zone{Name: z.Name, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi),
+			Spans: ringSpans(raw.Width, raw.Height, c.X, c.Y, ri, ro), EdgeDistancePx: ringEdge(c.X, c.Y, ri, ro)})
+	}
+	item.Region = pipeline.NewRegion(raw.Width, raw.Height, c.X, c.Y, c.R, zones)
+	item.Geometry = st.geometry.WithOrigin(c.X, c.Y)
+}
+
+// fill makes a region of one zone with the pixels of a mask.
+func (st *stage) fill(item *pipeline.Item, mask *raster.Mask, areaPx float64, edge func(x, y float64) float64) {
+	scale := st.umPerPx() / 1000
+	area := areaPx * scale * scale
+	spans := mask.Spans()
+	zone := pipeline.Zone{Name: "all", Spans: spans, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), EdgeDistancePx: edge}
+	s := raster.ShapeOf(spans)
+	if s.Area == 0 {
+		s.X, s.Y = float64(mask.Width-1)/2, float64(mask.Height-1)/2
+	}
+	item.Region = pipeline.NewRegion(mask.Width, mask.Height, s.X, s.Y, 0, []pipeline.Zone{zone})
+	item.Geometry = st.geometry.WithOrigin(s.X, s.Y)
+}
