@@ -54,7 +54,8 @@ type postgres struct {
 
 var server postgres
 
-// database makes an empty database and returns its address.
+// database makes an empty schema, which serves as a database of its own, and returns its
+// address.
 func (p *postgres) database(t testing.TB) string {
 	t.Helper()
 	p.once.Do(func() {
@@ -70,19 +71,19 @@ func (p *postgres) database(t testing.TB) string {
 	}
 	p.n++
 	name := fmt.Sprintf("ledger%d", p.n)
-	db, err := sql.Open("pgx", p.dsn("postgres"))
+	db, err := sql.Open("pgx", p.dsn("public"))
 	if err != nil {
 		t.Fatal(err)
 	}
 	defer db.Close()
-	if _, err := db.Exec("CREATE DATABASE " + name); err != nil {
+	if _, err := db.Exec("CREATE SCHEMA " + name); err != nil {
 		t.Fatal(err)
 	}
 	return p.dsn(name)
 }
 
-func (p *postgres) dsn(database string) string {
-	return fmt.Sprintf("postgres:///%s?host=%s&user=ledger&sslmode=disable", database, p.dir)
+func (p *postgres) dsn(schema string) string {
+	return fmt.Sprintf("postgres:///postgres?host=%s&user=ledger&sslmode=disable&search_path=%s", p.dir, schema)
 }
 
 func (p *postgres) start() error {
@@ -111,7 +112,7 @@ func (p *postgres) start() error {
 		return fmt.Errorf("initdb: %w: %s", err, out)
 	}
 	p.proc = exec.Command(filepath.Join(filepath.Dir(initdb), "postgres"), "-D", data, "-k", p.dir,
-		"-c", "listen_addresses=", "-c", "max_connections=100")
+		"-c", "listen_addresses=", "-c", "max_connections=100", "-c", "fsync=off") // durability is not tested here
 	p.proc.SysProcAttr, p.proc.Dir = attributes, p.dir
 	if err := p.proc.Start(); err != nil {
 		return err
@@ -120,7 +121,7 @@ func (p *postgres) start() error {
 }
 
 func (p *postgres) await() error {
-	db, err := sql.Open("pgx", p.dsn("postgres"))
+	db, err := sql.Open("pgx", p.dsn("public"))
 	if err != nil {
 		return err
 	}
@@ -136,7 +137,7 @@ func (p *postgres) await() error {
 
 func (p *postgres) stop() {
 	if p.proc != nil && p.proc.Process != nil {
-		_ = p.proc.Process.Signal(syscall.SIGINT) // fast shutdown
+		_ = p.proc.Process.Signal(syscall.SIGQUIT) // at once: nothing is kept
 		_ = p.proc.Wait()
 	}
 	if strings.HasPrefix(filepath.Base(p.dir), "pg") {

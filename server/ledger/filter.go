@@ -1,6 +1,7 @@
 package ledger
 
 import (
+	"encoding/json"
 	"fmt"
 	"strconv"
 	"strings"
@@ -16,6 +17,7 @@ type Filter struct {
 	Purpose                                          pipeline.Purpose // empty = production
 	AnyPurpose                                       bool
 	Verdict                                          pipeline.Verdict // the line's
+	Reason                                           string           // name of one of the line's reasons
 	From, To                                         time.Time        // of the counted time; To is excluded
 	NotJudgedBy                                      string           // recipe text hash: no judgement by it yet
 	Shard, Shards                                    int              // the Shard-th, from 0, of Shards equal parts; 0 = no parts
@@ -74,6 +76,13 @@ func (f Filter) where() (*where, error) {
 			return nil, err
 		}
 		w.add("i.verdict = %s", string(f.Verdict))
+	}
+	if f.Reason != "" {
+		name, err := json.Marshal(f.Reason)
+		if err != nil {
+			return nil, err
+		}
+		w.add("EXISTS (SELECT 1 FROM judgements r WHERE r.inspection_id = i.id AND r.seq = 0 AND r.reasons LIKE %s)", `%"name":`+string(name)+`,%`)
 	}
 	if !f.From.IsZero() {
 		w.add("i.counted_us >= %s", micros(f.From))

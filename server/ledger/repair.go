@@ -24,11 +24,15 @@ func (s *Store) repair(ctx context.Context, fromUS, toUS int64) error {
 		if err := s.count(ctx, t); err != nil {
 			return s.engine.classify(err)
 		}
-		if err := s.write(ctx, func(tx *sql.Tx) error { return replaceBucket(ctx, tx, b, t) }); err != nil {
+		if err := s.writeTally(ctx, b, t); err != nil {
 			return err
 		}
 	}
 	return nil
+}
+
+func (s *Store) writeTally(ctx context.Context, b dirtyBucket, t *tally) error {
+	return s.write(ctx, func(tx *sql.Tx) error { return replaceBucket(ctx, tx, b, t) })
 }
 
 // replaceBucket writes a bucket's counts. The counts were taken after its mark was read:

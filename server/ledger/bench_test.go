@@ -1,0 +1,52 @@
+package ledger
+
+import (
+	"context"
+	"fmt"
+	"path/filepath"
+	"testing"
+	"time"
+
+	"lapgate/pipeline"
+)
+
+func onEachBench(b *testing.B, bench func(*testing.B, *Store)) {
+	b.Run("sqlite", func(b *testing.B) { bench(b, openAt(b, filepath.Join(b.TempDir(), "ledger.db"))) })
+	b.Run("postgresql", func(b *testing.B) { bench(b, openAt(b, server.database(b))) })
+}
+
+func sample(i int) Inspection {
+	in := disc(fmt.Sprint(i), 1, pipeline.Reject, noon.Add(time.Duration(i)*time.Second), "dig size")
+	in.Evidence.Defects = defects(20)
+	in.Evidence.Views[0].Defects = defects(20)
+	return in
+}
+
+// BenchmarkRecord is one unit with 20 defects, before and after merge, per transaction.
+func BenchmarkRecord(b *testing.B) {
+	onEachBench(b, func(b *testing.B, s *Store) {
+		i := 0
+		for b.Loop() {
+			mustRecord(b, s, sample(i))
+			i++
+		}
+		b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "units/s")
+	})
+}
+
+// BenchmarkRepairBucket recounts a bucket of 900 units, one a second.
+func BenchmarkRepairBucket(b *testing.B) {
+	onEachBench(b, func(b *testing.B, s *Store) {
+		for i := range 900 {
+			mustRecord(b, s, sample(i))
+		}
+		for i := 0; b.Loop(); i++ {
+			b.StopTimer()
+			mustRecord(b, s, disc(fmt.Sprint("more-", i), 1, pipeline.Accept, noon))
+			b.StartTimer()
+			if err := s.Repair(context.Background()); err != nil {
+				b.Fatal(err)
+			}
+		}
+	})
+}
