@@ -29,26 +29,32 @@ func LoadOver[T any](path string, defaults T) (T, Source, error) {
 
 // Decode is LoadOver for text that was read already; file is its name in messages.
 func Decode[T any](file string, text []byte, defaults T) (T, Source, error) {
-	src, err := parse(file, text)
-	if err != nil {
+	v, src, problems := decodeAll(file, text, defaults)
+	if err := problems.err(); err != nil {
 		return defaults, src, err
 	}
-	if err := src.checkFormat(); err != nil {
-		return defaults, src, err
+	return v, src, nil
+}
+
+// decodeAll is Decode that returns what could be read beside the problems.
+func decodeAll[T any](file string, text []byte, defaults T) (T, Source, Problems) {
+	src, problems := parse(file, text)
+	if problems == nil {
+		problems = src.checkFormat()
+	}
+	if problems != nil {
+		return defaults, src, problems
 	}
 	into := reflect.New(reflect.TypeFor[T]()).Elem()
 	into.Set(reflect.ValueOf(defaults))
 	r := &reader{file: file, skip: map[string]bool{"format": true}}
 	r.lay(src.root, into, "")
-	if err := r.problems.err(); err != nil {
-		return defaults, src, err
-	}
-	return into.Interface().(T), src, nil
+	return into.Interface().(T), src, r.problems
 }
 
 // checkFormat refuses a file without `format: 1`; nothing else in a file of a newer
 // format is looked at.
-func (s Source) checkFormat() error {
+func (s Source) checkFormat() Problems {
 	const path = "format"
 	n, times := ast.Node(nil), 0
 	pairs, _ := entries(s.root)
@@ -75,5 +81,5 @@ func (s Source) checkFormat() error {
 	case times > 1:
 		r.wrong(n, path, "the key is given twice", "it once")
 	}
-	return r.problems.err()
+	return r.problems
 }

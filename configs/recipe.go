@@ -50,11 +50,12 @@ func LoadRecipe(path string, catalogue *pipeline.Catalogue) (*pipeline.Recipe, e
 
 // DecodeRecipe is LoadRecipe for text that was read already.
 func DecodeRecipe(file string, text []byte, catalogue *pipeline.Catalogue) (*pipeline.Recipe, error) {
-	written, src, err := Decode(file, text, recipeFile{MaxAttempts: DefaultMaxAttempts})
-	if err != nil {
-		return nil, err
+	written, src, problems := decodeAll(file, text, recipeFile{MaxAttempts: DefaultMaxAttempts})
+	c := &recipeReader{src: src, catalogue: catalogue, problems: problems}
+	if problems != nil {
+		c.stagesOnly(written)
+		return nil, c.problems.err()
 	}
-	c := &recipeReader{src: src, catalogue: catalogue}
 	r := c.recipe(written)
 	if err := c.problems.err(); err != nil {
 		return nil, err
@@ -96,6 +97,15 @@ func (c *recipeReader) recipe(w recipeFile) *pipeline.Recipe {
 	return r
 }
 
+// stagesOnly looks at the stages of a recipe that is faulty elsewhere, so that their
+// mistakes are told in the same go. The rest would only repeat what is known.
+func (c *recipeReader) stagesOnly(w recipeFile) {
+	for i, v := range w.Views {
+		c.stages(v.Stages, index("views", i)+".stages", pipeline.ScopeView)
+	}
+	c.stages(w.Unit, "unit", pipeline.ScopeUnit)
+}
+
 func (c *recipeReader) id(path, id string, required bool) {
 	if id == "" && !required {
 		return
@@ -128,6 +138,10 @@ func (c *recipeReader) view(v viewFile, path string) pipeline.RecipeView {
 }
 
 func (c *recipeReader) judge(specs []limits.Spec, minCoverage float64) pipeline.Judge {
+	if len(specs) == 0 {
+		c.wrong(true, "limits", "no limit is given", "at least one: without a limit every unit would pass")
+		return nil
+	}
 	j, err := limits.New(specs, minCoverage)
 	var all limits.Mistakes
 	switch {

@@ -45,9 +45,9 @@ func readFile(path string) ([]byte, error) {
 }
 
 // parse turns text into a Source, or says why it is not a YAML mapping.
-func parse(file string, text []byte) (Source, error) {
+func parse(file string, text []byte) (Source, Problems) {
 	src := Source{File: file, Text: text, Hash: HashOf(text)}
-	refuse := func(line, column int, found, want string) (Source, error) {
+	refuse := func(line, column int, found, want string) (Source, Problems) {
 		return src, Problems{{File: file, Line: line, Column: column, Found: found, Want: want}}
 	}
 	switch {
@@ -83,7 +83,7 @@ func parse(file string, text []byte) (Source, error) {
 	return src, nil
 }
 
-func syntaxProblem(file string, err error) error {
+func syntaxProblem(file string, err error) Problems {
 	p := Problem{File: file, Found: err.Error()}
 	var syntax *yaml.SyntaxError
 	if errors.As(err, &syntax) && syntax.Token != nil {

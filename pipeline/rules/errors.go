@@ -48,6 +48,7 @@ func plainWords(message string) string {
 		{`^Syntax error: `, ""},
 		{` expecting \{.*\}`, ""},
 		{` \(did you mean [^)]*\)`, ""}, // CEL also thinks of names that are switched off here
+		{`mismatched input '<EOF>'`, "the expression ends too early"},
 		{`'<EOF>'`, "the end of the expression"},
 		{`'_([^_'a-z?]+)_'`, "'$1'"},
 		{`'_\?_:_'`, "'? :'"},

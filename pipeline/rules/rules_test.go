@@ -181,7 +181,7 @@ func TestSyntaxErrors(t *testing.T) {
 		{"szie(defects)", Number, "1:1: unknown name 'szie' (did you mean 'size'?)"},
 		{"snt > 3", Truth, "1:1: unknown name 'snt' (names: kind, width_um, area_um2, saturated, defects)"},
 		{"kind + 1", Text, "1:6: these operands do not go together: '+' applied to '(text, number)'"},
-		{"4 *", Number, "1:4: mismatched input the end of the expression"},
+		{"4 *", Number, "1:4: the expression ends too early"},
 		{"width_um", Truth, "1:1: the expression gives a number, want a condition (true or false)"},
 		{"width_um > 1", Number, "1:1: the expression gives a condition (true or false), want a number"},
 		{"defects", Number, "1:1: the expression gives a list, want a number"},
