@@ -28,7 +28,9 @@ type Deps struct {
 	Book   *Book
 	Feed   *Feed
 	Log    *slog.Logger
-	Now    func() time.Time
+	// Check says what is wrong with a recipe's text, as if it were saved.
+	Check func(file string, text []byte) error
+	Now   func() time.Time
 }
 
 // Inspection implements inspectpb.InspectionServiceServer.

@@ -61,16 +61,16 @@ func (*ListRecipesRequest) Descriptor() ([]byte, []int) {
 
 // RecipeInForce is a recipe that units are judged by now.
 type RecipeInForce struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Part          string                 `protobuf:"bytes,1,opt,name=part,proto3" json:"part,omitempty"`
-	Revision      string                 `protobuf:"bytes,2,opt,name=revision,proto3" json:"revision,omitempty"`
-	Surface       string                 `protobuf:"bytes,3,opt,name=surface,proto3" json:"surface,omitempty"`
-	Hash          string                 `protobuf:"bytes,4,opt,name=hash,proto3" json:"hash,omitempty"`
-	DetectionHash string                 `protobuf:"bytes,5,opt,name=detection_hash,json=detectionHash,proto3" json:"detection_hash,omitempty"`
-	JudgingHash   string                 `protobuf:"bytes,6,opt,name=judging_hash,json=judgingHash,proto3" json:"judging_hash,omitempty"`
-	File          string                 `protobuf:"bytes,7,opt,name=file,proto3" json:"file,omitempty"`
-	Views         []string               `protobuf:"bytes,8,rep,name=views,proto3" json:"views,omitempty"`
-	Since         *timestamppb.Timestamp `protobuf:"bytes,9,opt,name=since,proto3" json:"since,omitempty"`
+	state    protoimpl.MessageState `protogen:"open.v1"`
+	Part     string                 `protobuf:"bytes,1,opt,name=part,proto3" json:"part,omitempty"`
+	Revision string                 `protobuf:"bytes,2,opt,name=revision,proto3" json:"revision,omitempty"`
+	Surface  string                 `protobuf:"bytes,3,opt,name=surface,proto3" json:"surface,omitempty"`
+	Hash     string                 `protobuf:"bytes,4,opt,name=hash,proto3" json:"hash,omitempty"`
+	// Where units were judged by it, with the hashes that the calibration there gave.
+	Places []*RecipePlace         `protobuf:"bytes,5,rep,name=places,proto3" json:"places,omitempty"`
+	File   string                 `protobuf:"bytes,7,opt,name=file,proto3" json:"file,omitempty"`
+	Views  []string               `protobuf:"bytes,8,rep,name=views,proto3" json:"views,omitempty"`
+	Since  *timestamppb.Timestamp `protobuf:"bytes,9,opt,name=since,proto3" json:"since,omitempty"`
 	// The error of a later save of this file that was refused; empty = none.
 	Refused       string `protobuf:"bytes,10,opt,name=refused,proto3" json:"refused,omitempty"`
 	unknownFields protoimpl.UnknownFields
@@ -135,18 +135,11 @@ func (x *RecipeInForce) GetHash() string {
 	return ""
 }
 
-func (x *RecipeInForce) GetDetectionHash() string {
+func (x *RecipeInForce) GetPlaces() []*RecipePlace {
 	if x != nil {
-		return x.DetectionHash
+		return x.Places
 	}
-	return ""
-}
-
-func (x *RecipeInForce) GetJudgingHash() string {
-	if x != nil {
-		return x.JudgingHash
-	}
-	return ""
+	return nil
 }
 
 func (x *RecipeInForce) GetFile() string {
@@ -177,6 +170,75 @@ func (x *RecipeInForce) GetRefused() string {
 	return ""
 }
 
+// RecipePlace is a line and station with cameras of its own.
+type RecipePlace struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Line          string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station       string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	DetectionHash string                 `protobuf:"bytes,3,opt,name=detection_hash,json=detectionHash,proto3" json:"detection_hash,omitempty"`
+	JudgingHash   string                 `protobuf:"bytes,4,opt,name=judging_hash,json=judgingHash,proto3" json:"judging_hash,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *RecipePlace) Reset() {
+	*x = RecipePlace{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *RecipePlace) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*RecipePlace) ProtoMessage() {}
+
+func (x *RecipePlace) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use RecipePlace.ProtoReflect.Descriptor instead.
+func (*RecipePlace) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{2}
+}
+
+func (x *RecipePlace) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *RecipePlace) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+func (x *RecipePlace) GetDetectionHash() string {
+	if x != nil {
+		return x.DetectionHash
+	}
+	return ""
+}
+
+func (x *RecipePlace) GetJudgingHash() string {
+	if x != nil {
+		return x.JudgingHash
+	}
+	return ""
+}
+
 // ListRecipesResponse lists recipes.
 type ListRecipesResponse struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -188,7 +250,7 @@ type ListRecipesResponse struct {
 
 func (x *ListRecipesResponse) Reset() {
 	*x = ListRecipesResponse{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	mi := &file_inspectpb_recipe_proto_msgTypes[3]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -200,7 +262,7 @@ func (x *ListRecipesResponse) String() string {
 func (*ListRecipesResponse) ProtoMessage() {}
 
 func (x *ListRecipesResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	mi := &file_inspectpb_recipe_proto_msgTypes[3]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -213,7 +275,7 @@ func (x *ListRecipesResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListRecipesResponse.ProtoReflect.Descriptor instead.
 func (*ListRecipesResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{2}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{3}
 }
 
 func (x *ListRecipesResponse) GetRecipes() []*RecipeInForce {
@@ -240,7 +302,7 @@ type GetRecipeRequest struct {
 
 func (x *GetRecipeRequest) Reset() {
 	*x = GetRecipeRequest{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[3]
+	mi := &file_inspectpb_recipe_proto_msgTypes[4]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -252,7 +314,7 @@ func (x *GetRecipeRequest) String() string {
 func (*GetRecipeRequest) ProtoMessage() {}
 
 func (x *GetRecipeRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[3]
+	mi := &file_inspectpb_recipe_proto_msgTypes[4]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -265,7 +327,7 @@ func (x *GetRecipeRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetRecipeRequest.ProtoReflect.Descriptor instead.
 func (*GetRecipeRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{3}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{4}
 }
 
 func (x *GetRecipeRequest) GetHash() string {
@@ -286,7 +348,7 @@ type GetRecipeResponse struct {
 
 func (x *GetRecipeResponse) Reset() {
 	*x = GetRecipeResponse{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[4]
+	mi := &file_inspectpb_recipe_proto_msgTypes[5]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -298,7 +360,7 @@ func (x *GetRecipeResponse) String() string {
 func (*GetRecipeResponse) ProtoMessage() {}
 
 func (x *GetRecipeResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[4]
+	mi := &file_inspectpb_recipe_proto_msgTypes[5]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -311,7 +373,7 @@ func (x *GetRecipeResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetRecipeResponse.ProtoReflect.Descriptor instead.
 func (*GetRecipeResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{4}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{5}
 }
 
 func (x *GetRecipeResponse) GetHash() string {
@@ -339,7 +401,7 @@ type ValidateRecipeRequest struct {
 
 func (x *ValidateRecipeRequest) Reset() {
 	*x = ValidateRecipeRequest{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[5]
+	mi := &file_inspectpb_recipe_proto_msgTypes[6]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -351,7 +413,7 @@ func (x *ValidateRecipeRequest) String() string {
 func (*ValidateRecipeRequest) ProtoMessage() {}
 
 func (x *ValidateRecipeRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[5]
+	mi := &file_inspectpb_recipe_proto_msgTypes[6]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -364,7 +426,7 @@ func (x *ValidateRecipeRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ValidateRecipeRequest.ProtoReflect.Descriptor instead.
 func (*ValidateRecipeRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{5}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{6}
 }
 
 func (x *ValidateRecipeRequest) GetFile() string {
@@ -394,7 +456,7 @@ type Problem struct {
 
 func (x *Problem) Reset() {
 	*x = Problem{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[6]
+	mi := &file_inspectpb_recipe_proto_msgTypes[7]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -406,7 +468,7 @@ func (x *Problem) String() string {
 func (*Problem) ProtoMessage() {}
 
 func (x *Problem) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[6]
+	mi := &file_inspectpb_recipe_proto_msgTypes[7]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -419,7 +481,7 @@ func (x *Problem) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Problem.ProtoReflect.Descriptor instead.
 func (*Problem) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{6}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{7}
 }
 
 func (x *Problem) GetFile() string {
@@ -460,7 +522,7 @@ type ValidateRecipeResponse struct {
 
 func (x *ValidateRecipeResponse) Reset() {
 	*x = ValidateRecipeResponse{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[7]
+	mi := &file_inspectpb_recipe_proto_msgTypes[8]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -472,7 +534,7 @@ func (x *ValidateRecipeResponse) String() string {
 func (*ValidateRecipeResponse) ProtoMessage() {}
 
 func (x *ValidateRecipeResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[7]
+	mi := &file_inspectpb_recipe_proto_msgTypes[8]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -485,7 +547,7 @@ func (x *ValidateRecipeResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ValidateRecipeResponse.ProtoReflect.Descriptor instead.
 func (*ValidateRecipeResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{7}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{8}
 }
 
 func (x *ValidateRecipeResponse) GetProblems() []*Problem {
@@ -500,19 +562,23 @@ var File_inspectpb_recipe_proto protoreflect.FileDescriptor
 const file_inspectpb_recipe_proto_rawDesc = "" +
 	"\n" +
 	"\x16inspectpb/recipe.proto\x12\x12lapgate.inspect.v1\x1a\x1fgoogle/protobuf/timestamp.proto\"\x14\n" +
-	"\x12ListRecipesRequest\"\xad\x02\n" +
+	"\x12ListRecipesRequest\"\x9c\x02\n" +
 	"\rRecipeInForce\x12\x12\n" +
 	"\x04part\x18\x01 \x01(\tR\x04part\x12\x1a\n" +
 	"\brevision\x18\x02 \x01(\tR\brevision\x12\x18\n" +
 	"\asurface\x18\x03 \x01(\tR\asurface\x12\x12\n" +
-	"\x04hash\x18\x04 \x01(\tR\x04hash\x12%\n" +
-	"\x0edetection_hash\x18\x05 \x01(\tR\rdetectionHash\x12!\n" +
-	"\fjudging_hash\x18\x06 \x01(\tR\vjudgingHash\x12\x12\n" +
+	"\x04hash\x18\x04 \x01(\tR\x04hash\x127\n" +
+	"\x06places\x18\x05 \x03(\v2\x1f.lapgate.inspect.v1.RecipePlaceR\x06places\x12\x12\n" +
 	"\x04file\x18\a \x01(\tR\x04file\x12\x14\n" +
 	"\x05views\x18\b \x03(\tR\x05views\x120\n" +
 	"\x05since\x18\t \x01(\v2\x1a.google.protobuf.TimestampR\x05since\x12\x18\n" +
 	"\arefused\x18\n" +
-	" \x01(\tR\arefused\"\x8b\x01\n" +
+	" \x01(\tR\arefused\"\x85\x01\n" +
+	"\vRecipePlace\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\x12%\n" +
+	"\x0edetection_hash\x18\x03 \x01(\tR\rdetectionHash\x12!\n" +
+	"\fjudging_hash\x18\x04 \x01(\tR\vjudgingHash\"\x8b\x01\n" +
 	"\x13ListRecipesResponse\x12;\n" +
 	"\arecipes\x18\x01 \x03(\v2!.lapgate.inspect.v1.RecipeInForceR\arecipes\x127\n" +
 	"\bproblems\x18\x02 \x03(\v2\x1b.lapgate.inspect.v1.ProblemR\bproblems\"&\n" +
@@ -548,34 +614,36 @@ func file_inspectpb_recipe_proto_rawDescGZIP() []byte {
 	return file_inspectpb_recipe_proto_rawDescData
 }
 
-var file_inspectpb_recipe_proto_msgTypes = make([]protoimpl.MessageInfo, 8)
+var file_inspectpb_recipe_proto_msgTypes = make([]protoimpl.MessageInfo, 9)
 var file_inspectpb_recipe_proto_goTypes = []any{
 	(*ListRecipesRequest)(nil),     // 0: lapgate.inspect.v1.ListRecipesRequest
 	(*RecipeInForce)(nil),          // 1: lapgate.inspect.v1.RecipeInForce
-	(*ListRecipesResponse)(nil),    // 2: lapgate.inspect.v1.ListRecipesResponse
-	(*GetRecipeRequest)(nil),       // 3: lapgate.inspect.v1.GetRecipeRequest
-	(*GetRecipeResponse)(nil),      // 4: lapgate.inspect.v1.GetRecipeResponse
-	(*ValidateRecipeRequest)(nil),  // 5: lapgate.inspect.v1.ValidateRecipeRequest
-	(*Problem)(nil),                // 6: lapgate.inspect.v1.Problem
-	(*ValidateRecipeResponse)(nil), // 7: lapgate.inspect.v1.ValidateRecipeResponse
-	(*timestamppb.Timestamp)(nil),  // 8: google.protobuf.Timestamp
+	(*RecipePlace)(nil),            // 2: lapgate.inspect.v1.RecipePlace
+	(*ListRecipesResponse)(nil),    // 3: lapgate.inspect.v1.ListRecipesResponse
+	(*GetRecipeRequest)(nil),       // 4: lapgate.inspect.v1.GetRecipeRequest
+	(*GetRecipeResponse)(nil),      // 5: lapgate.inspect.v1.GetRecipeResponse
+	(*ValidateRecipeRequest)(nil),  // 6: lapgate.inspect.v1.ValidateRecipeRequest
+	(*Problem)(nil),                // 7: lapgate.inspect.v1.Problem
+	(*ValidateRecipeResponse)(nil), // 8: lapgate.inspect.v1.ValidateRecipeResponse
+	(*timestamppb.Timestamp)(nil),  // 9: google.protobuf.Timestamp
 }
 var file_inspectpb_recipe_proto_depIdxs = []int32{
-	8, // 0: lapgate.inspect.v1.RecipeInForce.since:type_name -> google.protobuf.Timestamp
-	1, // 1: lapgate.inspect.v1.ListRecipesResponse.recipes:type_name -> lapgate.inspect.v1.RecipeInForce
-	6, // 2: lapgate.inspect.v1.ListRecipesResponse.problems:type_name -> lapgate.inspect.v1.Problem
-	6, // 3: lapgate.inspect.v1.ValidateRecipeResponse.problems:type_name -> lapgate.inspect.v1.Problem
-	0, // 4: lapgate.inspect.v1.RecipeService.ListRecipes:input_type -> lapgate.inspect.v1.ListRecipesRequest
-	3, // 5: lapgate.inspect.v1.RecipeService.GetRecipe:input_type -> lapgate.inspect.v1.GetRecipeRequest
-	5, // 6: lapgate.inspect.v1.RecipeService.ValidateRecipe:input_type -> lapgate.inspect.v1.ValidateRecipeRequest
-	2, // 7: lapgate.inspect.v1.RecipeService.ListRecipes:output_type -> lapgate.inspect.v1.ListRecipesResponse
-	4, // 8: lapgate.inspect.v1.RecipeService.GetRecipe:output_type -> lapgate.inspect.v1.GetRecipeResponse
-	7, // 9: lapgate.inspect.v1.RecipeService.ValidateRecipe:output_type -> lapgate.inspect.v1.ValidateRecipeResponse
-	7, // [7:10] is the sub-list for method output_type
-	4, // [4:7] is the sub-list for method input_type
-	4, // [4:4] is the sub-list for extension type_name
-	4, // [4:4] is the sub-list for extension extendee
-	0, // [0:4] is the sub-list for field type_name
+	2, // 0: lapgate.inspect.v1.RecipeInForce.places:type_name -> lapgate.inspect.v1.RecipePlace
+	9, // 1: lapgate.inspect.v1.RecipeInForce.since:type_name -> google.protobuf.Timestamp
+	1, // 2: lapgate.inspect.v1.ListRecipesResponse.recipes:type_name -> lapgate.inspect.v1.RecipeInForce
+	7, // 3: lapgate.inspect.v1.ListRecipesResponse.problems:type_name -> lapgate.inspect.v1.Problem
+	7, // 4: lapgate.inspect.v1.ValidateRecipeResponse.problems:type_name -> lapgate.inspect.v1.Problem
+	0, // 5: lapgate.inspect.v1.RecipeService.ListRecipes:input_type -> lapgate.inspect.v1.ListRecipesRequest
+	4, // 6: lapgate.inspect.v1.RecipeService.GetRecipe:input_type -> lapgate.inspect.v1.GetRecipeRequest
+	6, // 7: lapgate.inspect.v1.RecipeService.ValidateRecipe:input_type -> lapgate.inspect.v1.ValidateRecipeRequest
+	3, // 8: lapgate.inspect.v1.RecipeService.ListRecipes:output_type -> lapgate.inspect.v1.ListRecipesResponse
+	5, // 9: lapgate.inspect.v1.RecipeService.GetRecipe:output_type -> lapgate.inspect.v1.GetRecipeResponse
+	8, // 10: lapgate.inspect.v1.RecipeService.ValidateRecipe:output_type -> lapgate.inspect.v1.ValidateRecipeResponse
+	8, // [8:11] is the sub-list for method output_type
+	5, // [5:8] is the sub-list for method input_type
+	5, // [5:5] is the sub-list for extension type_name
+	5, // [5:5] is the sub-list for extension extendee
+	0, // [0:5] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_recipe_proto_init() }
@@ -589,7 +657,7 @@ func file_inspectpb_recipe_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_recipe_proto_rawDesc), len(file_inspectpb_recipe_proto_rawDesc)),
 			NumEnums:      0,
-			NumMessages:   8,
+			NumMessages:   9,
 			NumExtensions: 0,
 			NumServices:   1,
 		},

@@ -49,7 +49,9 @@ type Intake struct {
 	admission *admission
 	pool      *pool
 	stopping  atomic.Bool
-	units     keyedLock
+	// viewTimeout is where the recipe gives none, in nanoseconds.
+	viewTimeout atomic.Int64
+	units       keyedLock
 
 	mu       sync.Mutex // guards showings
 	showings map[string]*showing
@@ -68,8 +70,18 @@ func New(s Settings, recipes Recipes, ledger Ledger) (*Intake, error) {
 	if s.Log == nil {
 		s.Log = slog.Default()
 	}
-	return &Intake{settings: s, recipes: recipes, ledger: ledger, pool: newPool(s.Workers), showings: map[string]*showing{},
-		admission: &admission{most: s.MaxBytesInFlight, frame: s.MaxFrameBytes}}, nil
+	in := &Intake{settings: s, recipes: recipes, ledger: ledger, pool: newPool(s.Workers), showings: map[string]*showing{},
+		admission: &admission{most: s.MaxBytesInFlight, frame: s.MaxFrameBytes}}
+	in.viewTimeout.Store(int64(s.ViewTimeout))
+	return in, nil
+}
+
+// Adjust changes limits while frames come in.
+func (in *Intake) Adjust(maxBytesInFlight int64, viewTimeout time.Duration) {
+	in.admission.mu.Lock()
+	in.admission.most = maxBytesInFlight
+	in.admission.mu.Unlock()
+	in.viewTimeout.Store(int64(viewTimeout))
 }
 
 // BytesInFlight returns the bytes of frames held in memory.

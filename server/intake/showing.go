@@ -125,7 +125,7 @@ func (s *showing) timeout() time.Duration {
 	if ms := s.pipe.Recipe.ViewTimeoutMS; ms > 0 {
 		return time.Duration(ms) * time.Millisecond
 	}
-	return s.intake.settings.ViewTimeout
+	return time.Duration(s.intake.viewTimeout.Load())
 }
 
 // take adds a frame; when its view is whole the view is run, when all are whole the

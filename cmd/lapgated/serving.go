@@ -1,0 +1,166 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"log/slog"
+	"net"
+	"os"
+	"path/filepath"
+	"runtime"
+	"strings"
+	"time"
+
+	"google.golang.org/grpc"
+	"google.golang.org/grpc/health"
+	healthpb "google.golang.org/grpc/health/grpc_health_v1"
+
+	"lapgate/configs"
+	"lapgate/pipeline"
+	"lapgate/plugins/builtin"
+	"lapgate/server"
+	"lapgate/server/intake"
+	"lapgate/server/ledger"
+)
+
+// maxStreams is how many calls one connection may have open.
+const maxStreams = 256
+
+// serving is a running server.
+type serving struct {
+	settings configs.Server
+	log      *slog.Logger
+	ledger   *ledger.Store
+	intake   *intake.Intake
+	book     *server.Book
+	keeper   *keeper
+	grpc     *grpc.Server
+	health   *health.Server
+	listener net.Listener
+	served   chan error
+}
+
+// startServing opens the ledger, loads the recipes and listens. It stops by stop.
+func startServing(ctx context.Context, set configs.Server, log *slog.Logger) (*serving, error) {
+	s := &serving{settings: set, log: log, served: make(chan error, 1)}
+	if err := s.open(ctx); err != nil {
+		s.close()
+		return nil, err
+	}
+	go func() { s.served <- s.grpc.Serve(s.listener) }()
+	s.health.SetServingStatus("", healthpb.HealthCheckResponse_SERVING)
+	return s, nil
+}
+
+func (s *serving) open(ctx context.Context) error {
+	cat, err := builtin.Catalogue()
+	if err != nil {
+		return err
+	}
+	if s.ledger, err = ledger.Open(ctx, s.settings.Ledger); err != nil {
+		return fmt.Errorf("ledger %s: %w", s.settings.Ledger, err)
+	}
+	if s.keeper, err = newKeeper(s.settings.Images, s.log); err != nil {
+		return err
+	}
+	builder := recipeBuilder{catalogue: cat, calibrations: s.settings.Calibrations}
+	s.book = server.NewBook(builder.build)
+	feed := server.NewFeed()
+	s.intake, err = intake.New(intake.Settings{MaxBytesInFlight: s.settings.MaxBytesInFlight, MaxFrameBytes: s.settings.MaxFrameBytes,
+		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Recorded: feed.Send, Keep: s.keeper.keep}, s.book, s.ledger)
+	if err != nil {
+		return err
+	}
+	if err := s.watchRecipes(ctx, cat); err != nil {
+		return err
+	}
+	s.grpc, s.health = server.NewGRPC(server.Deps{Intake: s.intake, Ledger: s.ledger, Book: s.book, Feed: feed, Log: s.log, Now: time.Now,
+		Check: func(file string, text []byte) error { _, err := configs.DecodeRecipe(file, text, cat); return err }},
+		server.GRPCOptions{MaxMessageBytes: int(min(s.settings.MaxBytesInFlight, 1<<30)), MaxStreams: maxStreams, Reflection: s.settings.Reflection})
+	s.listener, err = listen(s.settings.Listen)
+	return err
+}
+
+// listen opens a TCP address, or a unix socket for unix:PATH.
+func listen(address string) (net.Listener, error) {
+	if path, ok := strings.CutPrefix(address, "unix:"); ok {
+		return net.Listen("unix", strings.TrimPrefix(path, "//"))
+	}
+	return net.Listen("tcp", address)
+}
+
+func workers(s configs.Server) int {
+	if s.Workers > 0 {
+		return s.Workers
+	}
+	return runtime.NumCPU()
+}
+
+func viewTimeout(s configs.Server) time.Duration {
+	return time.Duration(s.ViewTimeoutMS) * time.Millisecond
+}
+
+// watchRecipes brings every good recipe of the folder into force, now and on each save.
+func (s *serving) watchRecipes(ctx context.Context, cat *pipeline.Catalogue) error {
+	if err := os.MkdirAll(s.settings.Recipes, 0o755); err != nil {
+		return err
+	}
+	_, err := configs.Watch(ctx, configs.WatchOptions[*pipeline.Recipe]{
+		Folder:  s.settings.Recipes,
+		Parse:   func(path string, text []byte) (*pipeline.Recipe, error) { return configs.DecodeRecipe(path, text, cat) },
+		Changed: func(path string, r *pipeline.Recipe) { s.adopt(ctx, path, r) },
+		Failed: func(path string, err error) {
+			s.book.Refuse(path, err)
+			s.log.Error("recipe refused; the last good one stays in force", "file", path, "error", err)
+		},
+	})
+	return err
+}
+
+// adopt keeps a recipe's text in the ledger, then brings it into force.
+func (s *serving) adopt(ctx context.Context, path string, r *pipeline.Recipe) {
+	err := s.ledger.PutRecipe(ctx, ledger.Recipe{Hash: r.TextHash, Part: r.Part, Revision: r.Revision, Surface: r.Surface,
+		File: filepath.Base(path), Text: string(r.Text)})
+	if err == nil {
+		err = s.book.Put(path, r, time.Now())
+	}
+	if err != nil {
+		s.book.Refuse(path, err)
+		s.log.Error("recipe refused; the last good one stays in force", "file", path, "error", err)
+		return
+	}
+	s.log.Info("recipe in force", "file", path, "part", r.Part, "hash", r.TextHash)
+}
+
+func (s *serving) address() string { return s.listener.Addr().String() }
+
+// stop takes no more units, finishes those under way within the grace, and closes all.
+func (s *serving) stop() error {
+	s.health.SetServingStatus("", healthpb.HealthCheckResponse_NOT_SERVING)
+	s.intake.Drain(time.Duration(s.settings.ShutdownGraceMS) * time.Millisecond)
+	gone := make(chan struct{})
+	go func() { s.grpc.GracefulStop(); close(gone) }()
+	select {
+	case <-gone:
+	case <-time.After(500 * time.Millisecond): // answered streams that their clients keep open
+		s.grpc.Stop()
+		<-gone
+	}
+	err := <-s.served
+	return errors.Join(err, s.close())
+}
+
+func (s *serving) close() error {
+	var errs []error
+	if s.keeper != nil {
+		errs = append(errs, s.keeper.close())
+	}
+	if s.book != nil {
+		errs = append(errs, s.book.Close())
+	}
+	if s.ledger != nil {
+		errs = append(errs, s.ledger.Close())
+	}
+	return errors.Join(errs...)
+}
