@@ -3,6 +3,7 @@ package ledger
 import (
 	"context"
 	"fmt"
+	"math/rand/v2"
 	"path/filepath"
 	"testing"
 	"time"
@@ -17,8 +18,8 @@ func onEachBench(b *testing.B, bench func(*testing.B, *Store)) {
 
 func sample(i int) Inspection {
 	in := disc(fmt.Sprint(i), 1, pipeline.Reject, noon.Add(time.Duration(i)*time.Second), "dig size")
-	in.Evidence.Defects = defects(20)
-	in.Evidence.Views[0].Defects = defects(20)
+	in.Evidence.Defects = scattered(20)
+	in.Evidence.Views[0].Defects = scattered(20)
 	return in
 }
 
@@ -49,4 +50,37 @@ func BenchmarkRepairBucket(b *testing.B) {
 			}
 		}
 	})
+}
+
+// BenchmarkEvidence shows what evidence of 20 defects, kept before and after the merge,
+// takes on disk.
+func BenchmarkEvidence(b *testing.B) {
+	in := sample(1)
+	var t texts
+	for b.Loop() {
+		var err error
+		if t, err = encode(in); err != nil {
+			b.Fatal(err)
+		}
+	}
+	text, err := unzip(t.evidence)
+	if err != nil {
+		b.Fatal(err)
+	}
+	b.ReportMetric(float64(len(text)), "json_B")
+	b.ReportMetric(float64(len(t.evidence)), "stored_B")
+}
+
+// scattered gives every defect measures of its own, as real ones have.
+func scattered(n int) []pipeline.Defect {
+	r := rand.New(rand.NewPCG(1, 2))
+	out := defects(n)
+	for i := range out {
+		d := &out[i]
+		for _, v := range []*float64{&d.AreaUM2, &d.LengthUM, &d.WidthUM, &d.DiameterUM, &d.LengthPx, &d.WidthPx, &d.DiameterPx,
+			&d.AngleDeg, &d.Flux, &d.PeakDN, &d.PeakSigma, &d.SNR, &d.EdgeDistanceUM} {
+			*v = r.Float64() * 1000
+		}
+	}
+	return out
 }

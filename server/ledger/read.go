@@ -67,14 +67,18 @@ func scanInspection(r row, more ...any) (Inspection, error) {
 
 // complete reads what stands in other tables: evidence, frames, the line's judgement.
 func (s *Store) complete(ctx context.Context, in *Inspection) error {
-	var body string
-	if err := s.reader.QueryRowContext(ctx, `SELECT body FROM evidence WHERE inspection_id = $1`, in.ID).Scan(&body); err != nil {
+	var packed []byte
+	if err := s.reader.QueryRowContext(ctx, `SELECT body FROM evidence WHERE inspection_id = $1`, in.ID).Scan(&packed); err != nil {
 		return err
+	}
+	body, err := unzip(packed)
+	if err != nil {
+		return fmt.Errorf("inspection %d: stored evidence: %w", in.ID, err)
 	}
 	if err := fromJSON("evidence", body, &in.Evidence); err != nil {
 		return err
 	}
-	err := each(ctx, s.reader, func(r *sql.Rows) error {
+	err = each(ctx, s.reader, func(r *sql.Rows) error {
 		var ordinal int
 		var frames string
 		if err := r.Scan(&ordinal, &frames); err != nil {

@@ -72,8 +72,9 @@ func newID() int64 {
 
 // texts are the JSON columns of an inspection.
 type texts struct {
-	frames                           []string // one for each view
-	evidence, reasons, stageVersions string
+	frames                 []string // one for each view
+	evidence               []byte   // gzip
+	reasons, stageVersions string
 }
 
 func encode(in Inspection) (texts, error) {
@@ -91,8 +92,11 @@ func encode(in Inspection) (texts, error) {
 		t.frames = append(t.frames, text)
 		body.Views[i].Frames = nil
 	}
-	var err error
-	if t.evidence, err = toJSON("evidence", body); err != nil {
+	text, err := toJSON("evidence", body)
+	if err != nil {
+		return t, err
+	}
+	if t.evidence, err = zip(text); err != nil {
 		return t, err
 	}
 	t.reasons, t.stageVersions, err = encodeJudgement(in.Judgement)

@@ -1,5 +1,6 @@
 -- Types are those that SQLite and PostgreSQL-wire databases share; times are µs since
--- 1970 UTC, booleans are 0 or 1, JSON is TEXT. Forward only.
+-- 1970 UTC, booleans are 0 or 1, JSON is TEXT, BYTEA is a blob (SQLite keeps a blob as it
+-- is under any type name). Forward only.
 
 -- +goose Up
 CREATE TABLE IF NOT EXISTS inspections (
@@ -45,7 +46,7 @@ CREATE TABLE IF NOT EXISTS views (
 
 CREATE TABLE IF NOT EXISTS evidence (
     inspection_id BIGINT NOT NULL PRIMARY KEY REFERENCES inspections (id),
-    body          TEXT NOT NULL -- JSON, without the frames, which stand in views
+    body          BYTEA NOT NULL -- gzip of JSON, without the frames, which stand in views
 );
 
 CREATE TABLE IF NOT EXISTS judgements (
