@@ -65,23 +65,29 @@ func (l *limit) judge(e pipeline.Evidence, whole bool) []pipeline.Reason {
 	if zones := zoneNames(e); l.Zone != "" && !slices.Contains(zones, l.Zone) {
 		return []pipeline.Reason{l.unjudged(0, fmt.Sprintf("zone %q is not in the region (has %s)", l.Zone, listOrNone(zones)))}
 	}
-	defects := l.narrow(e.Defects)
 	if l.Each == "" {
-		return l.judgeList(e, defects, whole)
+		return l.judgeList(e, l.narrow(e.Defects), whole)
 	}
 	var out []pipeline.Reason
-	for i := range defects {
-		out = append(out, l.judgeDefect(&defects[i], whole)...)
+	for i := range e.Defects {
+		if d := &e.Defects[i]; l.about(d) {
+			out = append(out, l.judgeDefect(d, whole)...)
+		}
 	}
 	return out
 }
 
+// about reports whether the limit is about a defect at all.
+func (l *limit) about(d *pipeline.Defect) bool {
+	return (l.Zone == "" || d.Zone == l.Zone) && (l.Kind == "" || d.Kind == pipeline.Kind(l.Kind))
+}
+
 // narrow returns the defects that the limit is about.
 func (l *limit) narrow(all []pipeline.Defect) []pipeline.Defect {
-	var out []pipeline.Defect
-	for _, d := range all {
-		if (l.Zone == "" || d.Zone == l.Zone) && (l.Kind == "" || d.Kind == pipeline.Kind(l.Kind)) {
-			out = append(out, d)
+	out := make([]pipeline.Defect, 0, len(all))
+	for i := range all {
+		if l.about(&all[i]) {
+			out = append(out, all[i])
 		}
 	}
 	return out
@@ -89,7 +95,9 @@ func (l *limit) narrow(all []pipeline.Defect) []pipeline.Defect {
 
 func (l *limit) judgeDefect(d *pipeline.Defect, whole bool) []pipeline.Reason {
 	values := l.record.Of(d)
-	subject := fmt.Sprintf("%s %d at (%.1f, %.1f) px of view %s", d.Kind, d.ID, d.XPx, d.YPx, d.View)
+	subject := func() string {
+		return fmt.Sprintf("%s %d at (%.1f, %.1f) px of view %s", d.Kind, d.ID, d.XPx, d.YPx, d.View)
+	}
 	if l.bounded() {
 		value, err := l.rule.Number(values)
 		if err != nil {
@@ -105,7 +113,7 @@ func (l *limit) judgeList(e pipeline.Evidence, defects []pipeline.Defect, whole 
 	if area := l.area(e); area > 0 {
 		values["zone_area_mm2"] = area
 	}
-	subject := fmt.Sprintf("%d %s", len(defects), l.group())
+	subject := func() string { return fmt.Sprintf("%d %s", len(defects), l.group()) }
 	if l.Broken != "" {
 		return l.condition(values, 0, subject, whole)
 	}

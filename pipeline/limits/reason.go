@@ -26,7 +26,7 @@ func (l *limit) calls(certain bool) pipeline.Verdict {
 }
 
 // condition is broken when the rule is true.
-func (l *limit) condition(values rules.Values, defect int, subject string, certain bool) []pipeline.Reason {
+func (l *limit) condition(values rules.Values, defect int, subject func() string, certain bool) []pipeline.Reason {
 	broken, err := l.rule.Bool(values)
 	if err != nil {
 		return []pipeline.Reason{l.unjudged(defect, err.Error())}
@@ -34,11 +34,11 @@ func (l *limit) condition(values rules.Values, defect int, subject string, certa
 	if !broken {
 		return nil
 	}
-	return []pipeline.Reason{l.reason(defect, l.calls(certain), fmt.Sprintf("%s: %s", subject, l.rule.Text()))}
+	return []pipeline.Reason{l.reason(defect, l.calls(certain), fmt.Sprintf("%s: %s", subject(), l.rule.Text()))}
 }
 
 // bounds holds a value against at_most and at_least with the guard band of ISO 14253-1.
-func (l *limit) bounds(value float64, defect int, subject string, whole bool) []pipeline.Reason {
+func (l *limit) bounds(value float64, defect int, subject func() string, whole bool) []pipeline.Reason {
 	var out []pipeline.Reason
 	u := l.uncertainty(value)
 	if l.AtMost != nil && value > *l.AtMost-u {
@@ -55,8 +55,8 @@ func (l *limit) uncertainty(value float64) float64 {
 	return max(l.Uncertainty, l.UncertaintyPercent/100*math.Abs(value))
 }
 
-func (l *limit) bound(value, at, u float64, certain bool, side string, defect int, subject string) pipeline.Reason {
-	text := fmt.Sprintf("%s: %s is %.6g %s, %s %.6g allowed (by %+.4g)", subject, l.rule.Text(), value, l.Unit, side, at, value-at)
+func (l *limit) bound(value, at, u float64, certain bool, side string, defect int, subject func() string) pipeline.Reason {
+	text := fmt.Sprintf("%s: %s is %.6g %s, %s %.6g allowed (by %+.4g)", subject(), l.rule.Text(), value, l.Unit, side, at, value-at)
 	if u > 0 {
 		text += fmt.Sprintf(", uncertainty %.4g", u)
 	}
