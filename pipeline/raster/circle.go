@@ -14,6 +14,7 @@ type CircleSearch struct {
 	Reach      float64 // how far the centre may lie from it, px
 	RMin, RMax float64 // px
 	DarkInside bool    // the part is darker than its surroundings
+	Ridge      bool    // the outline itself is a bright line, as a chamfer is in dark field
 	Rays       int     // directions in which the edge is looked for; 0 = DefaultRays
 	MaxRMS     float64 // residuals beyond this are no circle, px; 0 = 1.5
 }
@@ -35,7 +36,8 @@ const leastPoints = 0.3
 
 // FindCircle finds the outline of a round part. It votes for the centre with the
 // gradients of a reduced picture (Hough transform; Duda and Hart 1972), walks out
-// along rays to the steepest place of the wanted sign, to a fraction of a pixel, and fits
+// along rays to the steepest place of the wanted sign (with Ridge, to the crest of the
+// bright line), to a fraction of a pixel, and fits
 // a circle to these points (FitCircle). The error says how far it came.
 func FindCircle(src *Plane, s CircleSearch) (CircleFit, error) {
 	if !(s.RMin > 0) || !(s.RMax > s.RMin) || !(s.Reach >= 0) {

@@ -18,7 +18,11 @@ func edgePoints(src *Plane, c Circle, reach float64, s CircleSearch) (points []P
 			continue
 		}
 		rays++
-		if at, ok := steepestSlope(profile, s.DarkInside); ok {
+		find := steepestSlope
+		if s.Ridge {
+			find = crest
+		}
+		if at, ok := find(profile, s.DarkInside); ok {
 			r := c.R - reach + at*edgeStep
 			points = append(points, Point{c.X + r*cos, c.Y + r*sin})
 		}
@@ -52,23 +56,36 @@ func rayProfile(dst []float64, src *Plane, c Circle, reach, cos, sin float64) bo
 // steeply; false when it does so nowhere inside. A slope is the difference between the
 // means of the four samples on either side.
 func steepestSlope(p []float64, rising bool) (float64, bool) {
-	slope := func(i int) float64 {
+	return highest(len(p), 4, func(i int) float64 {
 		d := p[i+1] - p[i-1] + p[i+2] - p[i-2] + p[i+3] - p[i-3] + p[i+4] - p[i-4]
 		if rising {
 			return d
 		}
 		return -d
-	}
+	})
+}
+
+// crest returns where, in samples, a profile stands highest above the samples on
+// either side: the mean of five against those four and five away.
+func crest(p []float64, _ bool) (float64, bool) {
+	return highest(len(p), 5, func(i int) float64 {
+		return (p[i-2]+p[i-1]+p[i]+p[i+1]+p[i+2])/5 - (p[i-5]+p[i-4]+p[i+4]+p[i+5])/4
+	})
+}
+
+// highest returns where f, which looks reach samples to either side, is highest and above
+// 0, refined by a parabola through three values.
+func highest(n, reach int, f func(i int) float64) (float64, bool) {
 	best, at := 0., -1
-	for i := 5; i < len(p)-5; i++ {
-		if v := slope(i); v > best {
+	for i := reach + 1; i < n-reach-1; i++ {
+		if v := f(i); v > best {
 			best, at = v, i
 		}
 	}
 	if at < 0 {
 		return 0, false
 	}
-	a, b, c := slope(at-1), best, slope(at+1)
+	a, b, c := f(at-1), best, f(at+1)
 	if bend := a - 2*b + c; bend < 0 {
 		return float64(at) + min(max((a-c)/(2*bend), -1), 1), true
 	}

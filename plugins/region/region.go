@@ -93,7 +93,7 @@ func (st *stage) centre(raw *raster.Plane) (x, y float64) {
 // find looks for the part and proves that it is there; without it the region is empty.
 func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
 	s := st.s
-	search := raster.CircleSearch{DarkInside: s.Polarity == "dark", MaxRMS: s.MaxEdgeRMSPx, Reach: s.SearchPx}
+	search := raster.CircleSearch{DarkInside: s.Polarity == "dark", Ridge: s.Polarity == "rim", MaxRMS: s.MaxEdgeRMSPx, Reach: s.SearchPx}
 	search.X, search.Y = st.centre(raw)
 	if search.Reach == 0 {
 		search.Reach = float64(min(raw.Width, raw.Height)) / 4

@@ -28,7 +28,8 @@ type Settings struct {
 	// DiameterToleranceMM is how much the diameter found may differ from diameter_mm, in
 	// mm; for found_circle it must be above 0.
 	DiameterToleranceMM float64 `json:"diameter_tolerance_mm" yaml:"diameter_tolerance_mm"`
-	// Polarity says how the part looks against its surroundings: bright or dark.
+	// Polarity says how the part looks against its surroundings: bright, dark, or rim
+	// where the outline itself is a bright line, as a chamfer is in dark field.
 	Polarity string `json:"polarity" yaml:"polarity"`
 	// CentreXPx and CentreYPx are the expected centre in px. Both 0: the frame's middle.
 	CentreXPx float64 `json:"centre_x_px" yaml:"centre_x_px"`
@@ -83,8 +84,8 @@ func (s Settings) Check() error {
 	if !slices.Contains(Shapes(), s.Shape) {
 		return fmt.Errorf("shape: got %q, want one of %s", s.Shape, strings.Join(Shapes(), ", "))
 	}
-	if s.Polarity != "bright" && s.Polarity != "dark" {
-		return fmt.Errorf("polarity: got %q, want bright or dark", s.Polarity)
+	if s.Polarity != "bright" && s.Polarity != "dark" && s.Polarity != "rim" {
+		return fmt.Errorf("polarity: got %q, want bright, dark or rim", s.Polarity)
 	}
 	if err := s.checkNumbers(); err != nil {
 		return err
