@@ -1,7 +1,6 @@
 package spool
 
 import (
-	"bytes"
 	"encoding/binary"
 	"encoding/json"
 	"fmt"
@@ -57,25 +56,57 @@ func encode(w io.Writer, e Entry, pixels []byte) error {
 // sizeOf returns the bytes that encode will write, but for the JSON's own length.
 func sizeOf(pixels int) int64 { return int64(prefixSize + pixels + trailer) }
 
+// lengthsOf reads the prefix of a file.
+func lengthsOf(prefix []byte) (text, pixels uint64, err error) {
+	if len(prefix) < prefixSize || string(prefix[:len(magic)]) != magic {
+		return 0, 0, fmt.Errorf("spool file: starts with %q, want %q and two lengths", prefix[:min(len(prefix), prefixSize)], magic)
+	}
+	text = uint64(binary.LittleEndian.Uint32(prefix[len(magic):]))
+	if text > maxEntry {
+		return 0, 0, fmt.Errorf("spool file: header of %d bytes, want at most %d", text, maxEntry)
+	}
+	return text, binary.LittleEndian.Uint64(prefix[len(magic)+4:]), nil
+}
+
 // decode reads what encode wrote. It refuses anything cut, longer or altered.
 func decode(file []byte) (Entry, []byte, error) {
-	if len(file) < prefixSize+trailer || string(file[:len(magic)]) != magic {
-		return Entry{}, nil, fmt.Errorf("spool file: got %d bytes starting with %q, want %q", len(file), file[:min(len(file), len(magic))], magic)
+	text, pixels, err := lengthsOf(file)
+	if err != nil {
+		return Entry{}, nil, err
 	}
-	text := uint64(binary.LittleEndian.Uint32(file[len(magic):]))
-	pixels := binary.LittleEndian.Uint64(file[len(magic)+4:])
-	have := uint64(len(file) - prefixSize - trailer)
-	if text > maxEntry || pixels > have || text+pixels != have {
+	have := uint64(max(0, len(file)-prefixSize-trailer))
+	if pixels > have || text+pixels != have || len(file) < prefixSize+trailer {
 		return Entry{}, nil, fmt.Errorf("spool file: got %d bytes of header and pixels, want %d + %d", have, text, pixels)
 	}
 	body, sum := file[:len(file)-trailer], binary.LittleEndian.Uint32(file[len(file)-trailer:])
 	if got := crc32.Checksum(body, castagnoli()); got != sum {
 		return Entry{}, nil, fmt.Errorf("spool file: checksum 0x%08x over its content, want 0x%08x", got, sum)
 	}
+	e, err := decodeEntry(body[prefixSize : prefixSize+int(text)])
+	return e, body[prefixSize+int(text):], err
+}
+
+func decodeEntry(text []byte) (Entry, error) {
 	var e Entry
-	d := json.NewDecoder(bytes.NewReader(body[prefixSize : prefixSize+int(text)]))
-	if err := d.Decode(&e); err != nil {
-		return Entry{}, nil, fmt.Errorf("spool file: header: %w", err)
+	if err := json.Unmarshal(text, &e); err != nil {
+		return Entry{}, fmt.Errorf("spool file: header: %w", err)
 	}
-	return e, body[prefixSize+int(text):], nil
+	return e, nil
+}
+
+// decodeHead reads an entry without the pixels behind it.
+func decodeHead(r io.Reader) (Entry, error) {
+	prefix := make([]byte, prefixSize)
+	if _, err := io.ReadFull(r, prefix); err != nil {
+		return Entry{}, fmt.Errorf("spool file: %w", err)
+	}
+	size, _, err := lengthsOf(prefix)
+	if err != nil {
+		return Entry{}, err
+	}
+	text := make([]byte, size)
+	if _, err := io.ReadFull(r, text); err != nil {
+		return Entry{}, fmt.Errorf("spool file: %w", err)
+	}
+	return decodeEntry(text)
 }

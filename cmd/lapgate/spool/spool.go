@@ -142,6 +142,20 @@ func (s *Spool) Get(n Number) (Entry, []byte, error) {
 	return e, pixels, nil
 }
 
+// Head reads a frame's entry and leaves its pixels unread and unchecked.
+func (s *Spool) Head(n Number) (Entry, error) {
+	f, err := os.Open(s.path(n))
+	if err != nil {
+		return Entry{}, err
+	}
+	defer f.Close()
+	e, err := decodeHead(f)
+	if err != nil {
+		return Entry{}, fmt.Errorf("%s: %w", s.path(n), err)
+	}
+	return e, nil
+}
+
 func (s *Spool) forget(n Number) {
 	s.bytes -= s.size[n]
 	delete(s.size, n)

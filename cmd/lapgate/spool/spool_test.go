@@ -65,6 +65,9 @@ func TestFramesComeBackInOrderAfterReopening(t *testing.T) {
 	if err != nil || !reflect.DeepEqual(e, entry("U3")) || string(pixels) != "U3pixels" {
 		t.Errorf("got %+v %q %v", e, pixels, err)
 	}
+	if head, err := s.Head(1); err != nil || !reflect.DeepEqual(head, entry("U1")) {
+		t.Errorf("head %+v %v", head, err)
+	}
 	if n := put(t, s, "U4", nil); n != 4 {
 		t.Errorf("new frame got number %d, want 4, behind all others", n)
 	}
