@@ -136,7 +136,7 @@ func TestThresholdsAndArea(t *testing.T) {
 // More blobs than the evidence holds: the strongest stay and the item says it was cut.
 func TestTooManyBlobs(t *testing.T) {
 	it := item(func(x, y float64) float64 {
-		if math.Mod(x, 4) == 0 && math.Mod(y, 4) == 0 {
+		if math.Mod(x, 4) == 2 && math.Mod(y, 4) == 2 {
 			return 35 + x/20
 		}
 		return 0
