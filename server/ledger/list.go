@@ -59,8 +59,7 @@ func (s *Store) OpenHolds(ctx context.Context, f Filter, p Page) (Showings, erro
 // said, or could not confirm it. A hold in the reject bin is no mismatch: it is the rule
 // of a line without a third bin.
 func (s *Store) Mismatches(ctx context.Context, f Filter, p Page) (Showings, error) {
-	return s.list(ctx, f, p, `o.bin IS NOT NULL`,
-		`(o.confirmed = 0 OR o.bin <> i.verdict AND NOT (i.verdict = 'hold' AND o.bin = 'reject'))`)
+	return s.list(ctx, f, p, `i.id IN (SELECT b.inspection_id FROM outcomes b WHERE b.mismatch = 1)`, `o.mismatch = 1`)
 }
 
 func (s *Store) list(ctx context.Context, f Filter, p Page, more ...string) (Showings, error) {

@@ -29,7 +29,8 @@ func (s *Store) Outcome(ctx context.Context, id pipeline.Identity, o Outcome) er
 	o.At, o.Reported = toMicros(o.At), toMicros(s.Now())
 	return s.write(ctx, func(tx *sql.Tx) error {
 		var inspection int64
-		err := tx.QueryRowContext(ctx, `SELECT id FROM inspections WHERE `+whereIdentity, identityArgs(id)...).Scan(&inspection)
+		var verdict pipeline.Verdict
+		err := tx.QueryRowContext(ctx, `SELECT id, verdict FROM inspections WHERE `+whereIdentity, identityArgs(id)...).Scan(&inspection, &verdict)
 		if err != nil {
 			return orMissing(err, "outcome: no inspection on record for %s", describe(id))
 		}
@@ -37,8 +38,15 @@ func (s *Store) Outcome(ctx context.Context, id pipeline.Identity, o Outcome) er
 		if err != nil || last == (Outcome{o.Bin, o.Confirmed, o.At, last.Reported}) {
 			return err
 		}
-		return insertOutcome(ctx, tx, inspection, id, o)
+		return insertOutcome(ctx, tx, inspection, o, o.mismatches(verdict), id)
 	})
+}
+
+// mismatches reports whether the line did something else than the verdict said, or could
+// not confirm it. A hold in the reject bin is the rule of a line without a third bin.
+func (o Outcome) mismatches(v pipeline.Verdict) bool {
+	byRule := v == pipeline.Hold && o.Bin == pipeline.Reject
+	return !o.Confirmed || o.Bin != v && !byRule
 }
 
 func lastOutcome(ctx context.Context, tx *sql.Tx, inspection int64) (Outcome, error) {
@@ -53,13 +61,13 @@ func lastOutcome(ctx context.Context, tx *sql.Tx, inspection int64) (Outcome, er
 	return o, err
 }
 
-func insertOutcome(ctx context.Context, tx *sql.Tx, inspection int64, id pipeline.Identity, o Outcome) error {
+func insertOutcome(ctx context.Context, tx *sql.Tx, inspection int64, o Outcome, mismatch bool, id pipeline.Identity) error {
 	seq, err := nextSeq(ctx, tx, "outcomes", inspection)
 	if err != nil {
 		return err
 	}
-	_, err = tx.ExecContext(ctx, `INSERT INTO outcomes (inspection_id, seq, bin, confirmed, at_us, reported_us) VALUES ($1, $2, $3, $4, $5, $6)`,
-		inspection, seq, string(o.Bin), flag(o.Confirmed), micros(o.At), micros(o.Reported))
+	_, err = tx.ExecContext(ctx, `INSERT INTO outcomes (inspection_id, seq, bin, confirmed, mismatch, at_us, reported_us) VALUES ($1, $2, $3, $4, $5, $6, $7)`,
+		inspection, seq, string(o.Bin), flag(o.Confirmed), flag(mismatch), micros(o.At), micros(o.Reported))
 	if err != nil {
 		return err
 	}

@@ -30,6 +30,7 @@ CREATE TABLE IF NOT EXISTS inspections (
 CREATE UNIQUE INDEX IF NOT EXISTS inspections_identity
     ON inspections (part, lot, unit, surface, station, purpose, attempt, line);
 CREATE INDEX IF NOT EXISTS inspections_counted ON inspections (counted_us, id);
+CREATE INDEX IF NOT EXISTS inspections_lot ON inspections (lot, counted_us, id);
 CREATE INDEX IF NOT EXISTS inspections_unit ON inspections (unit);
 CREATE INDEX IF NOT EXISTS inspections_request ON inspections (request_id) WHERE request_id <> '';
 CREATE INDEX IF NOT EXISTS inspections_hold ON inspections (counted_us, id) WHERE verdict = 'hold';
@@ -78,10 +79,12 @@ CREATE TABLE IF NOT EXISTS outcomes (
     seq           BIGINT NOT NULL, -- the highest is the word that counts
     bin           TEXT NOT NULL,
     confirmed     SMALLINT NOT NULL,
+    mismatch      SMALLINT NOT NULL, -- does not fit the verdict; neither ever changes
     at_us         BIGINT NOT NULL,
     reported_us   BIGINT NOT NULL,
     PRIMARY KEY (inspection_id, seq)
 );
+CREATE INDEX IF NOT EXISTS outcomes_mismatch ON outcomes (inspection_id) WHERE mismatch = 1;
 
 CREATE TABLE IF NOT EXISTS recipes (
     hash     TEXT NOT NULL PRIMARY KEY,
