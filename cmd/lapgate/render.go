@@ -7,6 +7,7 @@ import (
 	"io"
 	"os"
 	"runtime"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -55,13 +56,15 @@ The same scene gives the same bytes, whatever the number of workers.`,
 	return cmd
 }
 
+// loadScene reads and checks a scene; the error says where in the file it is wrong.
 func loadScene(path string) (render.Scene, error) {
-	s, _, err := configs.Load[render.Scene](path)
-	if err == nil {
-		err = s.Check()
-	}
+	s, src, err := configs.Load[render.Scene](path)
 	if err != nil {
-		return s, pipeline.Invalid("%s: %w", path, err)
+		return s, &pipeline.Error{Kind: pipeline.InvalidKind, Err: err}
+	}
+	if err := s.Check(); err != nil {
+		key, _, _ := strings.Cut(err.Error(), ":")
+		return s, pipeline.Invalid("%s: %w", src.At(key), err)
 	}
 	return s, nil
 }

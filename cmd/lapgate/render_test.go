@@ -9,6 +9,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"regexp"
 	"strings"
 	"testing"
 
@@ -127,15 +128,46 @@ func TestRenderRefusesFolderWithFrames(t *testing.T) {
 	}
 }
 
+// edited writes a copy of a scene file with one text in it replaced.
+func edited(t *testing.T, name, from, to string) string {
+	t.Helper()
+	text, err := os.ReadFile(filepath.Join("..", "..", filepath.FromSlash(name)))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if !bytes.Contains(text, []byte(from)) {
+		t.Fatalf("%s has no %q", name, from)
+	}
+	path := filepath.Join(t.TempDir(), "scene.yaml")
+	if err := os.WriteFile(path, bytes.Replace(text, []byte(from), []byte(to), 1), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	return path
+}
+
 func TestRenderCommandPrintsJSON(t *testing.T) {
+	scene := edited(t, "testdata/scenes/spoilers.yaml", "{dark: 4, stray: 4, response: 4}", "{dark: 1, stray: 0, response: 1}")
 	cmd, stdout := renderCommand(), &bytes.Buffer{}
 	cmd.SetOut(stdout)
-	cmd.SetArgs([]string{"--scene", filepath.Join("..", "..", "testdata", "scenes", "spoilers.yaml"), "--out", t.TempDir(), "--units", "1", "--json"})
+	cmd.SetArgs([]string{"--scene", scene, "--out", t.TempDir(), "--units", "1", "--json"})
 	if err := cmd.Execute(); err != nil {
 		t.Fatal(err)
 	}
 	var got renderSummary
-	if err := json.Unmarshal(stdout.Bytes(), &got); err != nil || got.Units != 1 || got.Frames != 3 || got.CalibrationFrames != 36 {
+	if err := json.Unmarshal(stdout.Bytes(), &got); err != nil || got.Units != 1 || got.Frames != 3 || got.CalibrationFrames != 6 {
 		t.Errorf("got %s, %v", stdout, err)
+	}
+}
+
+func TestLoadSceneSaysWhere(t *testing.T) {
+	cases := []struct{ from, to, want string }{
+		{"  blur_px: 0.7", "  blur_px: 90", `scene\.yaml:\d+:12: camera\.blur_px: got 90, want 0 to 50`},
+		{"scratch_width_um: 60", "scratch_with_um: 60", `scene\.yaml:\d+:3: .*unknown key "scratch_with_um"`},
+	}
+	for _, c := range cases {
+		_, err := loadScene(edited(t, "configs/demo/scene.yaml", c.from, c.to))
+		if err == nil || !regexp.MustCompile(c.want).MatchString(err.Error()) || pipeline.KindOf(err) != pipeline.InvalidKind {
+			t.Errorf("got %v, want an invalid-input error like %s", err, c.want)
+		}
 	}
 }
