@@ -49,7 +49,7 @@ var arrows = map[string][]string{
 	"server/export":             {"server/yield", "server/ledger", "pipeline/rules"},
 	"server/report":             {"pipeline", "pipeline/raster", "pipeline/raster/files", "pipeline/limits", "server/yield", "server/study", "server/volume", "server/volume/..."},
 	"server/web":                {"proto/inspectpb"},
-	"configs":                   {"pipeline", "pipeline/limits", viper, yamlLibrary},
+	"configs":                   {"pipeline", "pipeline/limits", "pipeline/rules", viper, yamlLibrary},
 	"cmd/...":                   {"pipeline", "pipeline/...", "plugins/...", "proto/...", "server", "server/...", "configs"},
 	"cmd/lapgate":               {"proto/inspectpb", "pipeline", "pipeline/raster", "pipeline/raster/files", "pipeline/render", "configs", "server/yield", "server/study", "server/volume", "server/volume/...", "server/report", "cmd/lapgate/..."},
 	"cmd/lapgate/...":           {"pipeline", "pipeline/raster", "pipeline/raster/files"},

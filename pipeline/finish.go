@@ -47,13 +47,11 @@ func (p *Pipeline) missing(results []ViewResult, failures []Failure) []Failure {
 	return out
 }
 
+// runUnit runs the unit's stages over the defects of all views: a merge replaces them,
+// a recipe without one keeps them.
 func (p *Pipeline) runUnit(ctx context.Context, unit *Item, e *Evidence) {
-	if len(p.unit) == 0 {
-		for _, v := range unit.Views {
-			unit.Defects = append(unit.Defects, v.Defects...)
-		}
-		renumber(unit)
-		return
+	for _, v := range unit.Views {
+		unit.Defects = append(unit.Defects, v.Defects...)
 	}
 	ms := map[string]float64{}
 	for _, b := range p.unit {

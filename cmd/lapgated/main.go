@@ -79,7 +79,7 @@ func (a *app) root() *cobra.Command {
 		Args:          cobra.NoArgs,
 	}
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(a.serveCommand(), a.inspectCommand(), a.calibrateCommand(), a.validateCommand(), a.stagesCommand())
+	root.AddCommand(a.serveCommand(), a.inspectCommand(), a.calibrateCommand(), a.validateCommand(), a.stagesCommand(), a.demoCommand())
 	for _, c := range root.Commands() {
 		if check := c.Args; check != nil {
 			c.Args = func(cmd *cobra.Command, args []string) error {

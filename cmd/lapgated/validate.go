@@ -1,11 +1,14 @@
 package main
 
 import (
+	"errors"
 	"fmt"
+	"os"
 
 	"github.com/spf13/cobra"
 
 	"lapgate/configs"
+	"lapgate/pipeline"
 	"lapgate/plugins/builtin"
 )
 
@@ -27,17 +30,15 @@ func (a *app) validate(paths []string, asJSON bool) error {
 		return err
 	}
 	var all []configs.Problem
-	checked := 0
 	for _, p := range paths {
-		n, problems, err := configs.Validate(p, cat)
+		problems, err := validatePath(p, cat)
 		if err != nil {
 			return usageError{err}
 		}
-		checked += n
 		all = append(all, problems...)
 	}
 	if asJSON {
-		if err := printJSON(a.out, map[string]any{"files": checked, "problems": problemForms(all)}); err != nil {
+		if err := printJSON(a.out, map[string]any{"problems": problemForms(all)}); err != nil {
 			return err
 		}
 	} else {
@@ -46,10 +47,27 @@ func (a *app) validate(paths []string, asJSON bool) error {
 		}
 	}
 	if len(all) > 0 {
-		return usageError{fmt.Errorf("%d problems in %d files", len(all), checked)}
+		return usageError{fmt.Errorf("%d problems", len(all))}
 	}
-	fmt.Fprintf(a.err, "%d files are good\n", checked)
+	fmt.Fprintln(a.err, "no problem found")
 	return nil
+}
+
+// validatePath checks a folder of configurations, or one recipe.
+func validatePath(path string, cat *pipeline.Catalogue) ([]configs.Problem, error) {
+	info, err := os.Stat(path)
+	if err != nil {
+		return nil, err
+	}
+	if info.IsDir() {
+		return configs.ValidateFolder(path, cat)
+	}
+	_, err = configs.LoadRecipe(path, cat)
+	var problems configs.Problems
+	if errors.As(err, &problems) {
+		return problems, nil
+	}
+	return nil, err
 }
 
 func problemForms(list []configs.Problem) []map[string]any {

@@ -1,0 +1,28 @@
+package main
+
+import (
+	"fmt"
+	"io"
+)
+
+func printShare(w io.Writer, what string, n, of int, i [2]float64) {
+	fmt.Fprintf(w, "  %-16s  %4d  (%.2f to %.2f %% of %d)\n", what, n, 100*i[0], 100*i[1], of)
+}
+
+// printWhereToLook says what to try next.
+func (d *demo) printWhereToLook() {
+	server := d.server.address()
+	fmt.Fprintf(d.out, `
+where to look next
+  the files           %s: configs (scene, recipe, plan), frames, truth.jsonl, calibrations, verdicts, ledger.db
+  yield by process    %s yield --by process --server %s
+  a unit's story      %s unit D000001 --server %s
+  tune a threshold    edit %s and save: the server takes it, or says why not
+  one unit, drawn     build/lapgated inspect --recipe %s --calibration ring=%s --calibration bar=%s \
+                        ring=%s bar=%s --overlay overlay.png
+
+A verdict is not a certificate: acceptance follows the contract's drawing, standard and, where one is required, an accredited
+laboratory. Bright LED and laser lighting can hurt eyes (IEC 62471, IEC 60825). The reject gate is not a safety device.
+`, d.dir, d.client, server, d.client, server, d.path("configs/demo/recipes/disc-25.yaml"), d.path("configs/demo/recipes/disc-25.yaml"),
+		d.path("calibrations/ring"), d.path("calibrations/bar"), d.path("frames/A/D000001_ring.pgm"), d.path("frames/A/D000001_bar.pgm"))
+}
