@@ -5,18 +5,18 @@ import "fmt"
 // GridSettings say how level and noise are measured. Take DefaultGrid and change what
 // needs changing.
 type GridSettings struct {
-	CellPx     int     // side of a square cell, px; at least 8
-	ClipSigma  float64 // values further than this many sigmas from the mean are left out
-	MinShare   float64 // share of a cell's pixels that must be valid; below it the cell is filled
-	FloorDN    float64 // smallest noise a cell may have, DN
-	BlockNoise bool    // also measure noise on 4 × 4 block means, which see lay and grain
+	CellPx    int     // side of a square cell, px; at least 8
+	ClipSigma float64 // values further than this many sigmas from the mean are left out
+	MinShare  float64 // share of a cell's pixels that must be valid; below it the cell is filled
+	FloorDN   float64 // smallest noise a cell may have, DN
+	Grain     bool    // also measure the noise that the matched filter leaves
 }
 
 // DefaultGrid returns cells of 64 px, clipping at 3 sigmas, 1/32 of a cell as the
 // least that can be measured, and 1/√12 DN (the quantisation noise of whole counts,
 // EMVA Standard 1288) as the smallest noise.
 func DefaultGrid() GridSettings {
-	return GridSettings{CellPx: 64, ClipSigma: 3, MinShare: 1. / 32, FloorDN: 0.288675, BlockNoise: true}
+	return GridSettings{CellPx: 64, ClipSigma: 3, MinShare: 1. / 32, FloorDN: 0.288675, Grain: true}
 }
 
 // Grid is the level and the noise of a picture on a coarse grid of square cells that
@@ -33,12 +33,13 @@ type Grid struct {
 // MeasureGrid measures level and noise of src in cells, over the pixels that are in
 // mask and not in bad (nil = none bad).
 //
-// Level and sigma of a cell are clipped moments (see clippedMoments), each replaced by
-// the median of its 3 × 3 cells. The level's median is not pulled by a slope: where a
-// neighbour is missing, its point reflection 2·centre − opposite stands in. Noise is
-// the sigma of one pixel times the grain factor max(1, 4·sigma of 4 × 4 block
-// means / sigma of one pixel): 1 for white noise, and more where lay or grain scatters
-// the filtered picture more than white noise would. Cells with too few valid pixels
+// Level and sigma of a cell are clipped moments (see clipper). The sigma is replaced by
+// the median of its 3 × 3 cells, and so is the level where it is more than 0.3 sigma
+// away from that. The level's median is not pulled by a slope: where a neighbour is
+// missing, its point reflection 2·centre − opposite stands in. Noise is
+// the sigma of one pixel times the grain factor max(1, sigma of the filtered picture /
+// (MatchedGain · sigma of one pixel)): 1 for white noise, and more where lay or grain
+// scatters the filtered picture more than white noise would. Cells with too few valid pixels
 // take the level along the slope of their neighbours, and their neighbours' noise.
 //
 // It panics when the sizes differ or a setting is out of range.
@@ -55,7 +56,7 @@ func MeasureGrid(src *Plane, mask, bad *Mask, s GridSettings) *Grid {
 	g.Level = g.medianOf(g.Level, true)
 	g.Noise = g.medianOf(g.Noise, false)
 	g.fill()
-	if s.BlockNoise {
+	if s.Grain {
 		g.addGrain(src, mask, bad, s)
 	}
 	for i := range g.Noise {

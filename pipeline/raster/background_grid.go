@@ -5,8 +5,14 @@ import (
 	"slices"
 )
 
+// medianStep is how far, in sigmas of one pixel, a cell's level may lie from the median of
+// its neighbourhood and stay: a defect that fills a cell pulls it further, while haze that
+// changes from cell to cell is to be followed. A whole cell's mean is known to 1/64 sigma.
+const medianStep = 0.3
+
 // medianOf returns the median over the measured cells of each 3 × 3 neighbourhood. With
-// slope, missing neighbours are replaced by the point reflection of the opposite ones.
+// slope, missing neighbours are replaced by the point reflection of the opposite ones,
+// and values within medianStep of the median stay as they are.
 func (g *Grid) medianOf(values []float64, slope bool) []float64 {
 	out := slices.Clone(values)
 	var near [9]float64
@@ -21,7 +27,10 @@ func (g *Grid) medianOf(values []float64, slope bool) []float64 {
 				n++
 			}
 		}
-		out[i] = median(near[:n])
+		m := median(near[:n])
+		if !slope || math.Abs(values[i]-m) > medianStep*g.Noise[i] {
+			out[i] = m
+		}
 	}
 	return out
 }
@@ -89,36 +98,52 @@ func (g *Grid) fillCell(i int, known []bool) bool {
 	return true
 }
 
-// blockPx is the side of the blocks whose means show lay and grain. A block's mean has
-// 1/4 of the noise of one pixel where that is white; the 5 × 5 filter has 0.2734.
-const blockPx = 4
+// grainStep is the distance, in px, between the places where the filtered picture is
+// sampled: about as far as the 5 × 5 filter makes neighbours alike.
+const grainStep = 4
 
-// leastBlocks is how many blocks a cell needs for a grain factor of its own.
-const leastBlocks = 24
+// leastSamples is how many samples a cell needs for a grain factor of its own.
+const leastSamples = 24
 
 // addGrain multiplies the noise by the grain factor.
 func (g *Grid) addGrain(src *Plane, mask, bad *Mask, s GridSettings) {
 	cells := make([][]float32, len(g.Level))
-	for y := 0; y+blockPx <= src.Height; y += blockPx {
-		for x := 0; x+blockPx <= src.Width; x += blockPx {
-			if mean, ok := blockMean(src, mask, bad, x, y); ok {
-				const half = (blockPx - 1) / 2.
+	for y := 2; y+2 < src.Height; y += grainStep {
+		for x := 2; x+2 < src.Width; x += grainStep {
+			if mean, ok := filteredAt(src, mask, bad, x, y); ok {
 				i := y/g.CellPx*g.Columns + x/g.CellPx
-				cells[i] = append(cells[i], mean-float32(g.levelAt(float64(x)+half, float64(y)+half)))
+				cells[i] = append(cells[i], mean-float32(g.levelAt(float64(x), float64(y))))
 			}
 		}
 	}
 	factor := make([]float64, len(g.Level))
-	known := slices.Clone(g.Filled)
+	known := make([]bool, len(g.Level))
 	var c clipper
-	for i, blocks := range cells {
-		known[i] = len(blocks) >= leastBlocks && g.Noise[i] > 0
+	for i, samples := range cells {
+		known[i] = len(samples) >= leastSamples && g.Noise[i] > 0
 		if known[i] {
-			_, sigma := c.moments(blocks, s.ClipSigma, s.FloorDN/blockPx)
-			factor[i] = blockPx * sigma / g.Noise[i]
+			_, sigma := c.moments(samples, s.ClipSigma, s.FloorDN*MatchedGain)
+			factor[i] = sigma / (MatchedGain * g.Noise[i])
 		}
 	}
 	g.multiply(factor, known)
+}
+
+// filteredAt returns the 5 × 5 binomial mean at (x, y); false where a pixel is missing.
+func filteredAt(src *Plane, mask, bad *Mask, x, y int) (float32, bool) {
+	sum := float32(0)
+	for v := -2; v <= 2; v++ {
+		row, in := src.Row(y + v)[x-2:x+3], mask.Row(y + v)[x-2:x+3]
+		part := float32(0)
+		for u, w := range binomial {
+			if !in[u] || bad != nil && bad.Bits[(y+v)*bad.Width+x-2+u] {
+				return 0, false
+			}
+			part += w * row[u]
+		}
+		sum += binomial[v+2] * part
+	}
+	return sum, true
 }
 
 // multiply applies the median of the known factors around each cell where it is above 1.
@@ -136,20 +161,6 @@ func (g *Grid) multiply(factor []float64, known []bool) {
 			g.Noise[i] *= max(1, median(near[:n]))
 		}
 	}
-}
-
-func blockMean(src *Plane, mask, bad *Mask, x0, y0 int) (float32, bool) {
-	sum := float32(0)
-	for y := y0; y < y0+blockPx; y++ {
-		row, in := src.Row(y), mask.Row(y)
-		for x := x0; x < x0+blockPx; x++ {
-			if !in[x] || bad != nil && bad.Bits[y*bad.Width+x] {
-				return 0, false
-			}
-			sum += row[x]
-		}
-	}
-	return sum / (blockPx * blockPx), true
 }
 
 // node returns the cell left of or above p and how far p lies beyond that cell's
