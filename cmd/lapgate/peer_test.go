@@ -97,7 +97,7 @@ type peerStream struct {
 	peer *peer
 	grpc inspectpb.InspectionService_InspectServer
 	open map[uint32]*partial
-	full map[string]map[string]pipeline.Frame // by showing, by view
+	full map[string]map[string][]pipeline.Frame // by showing, by view
 }
 
 type partial struct {
@@ -106,7 +106,7 @@ type partial struct {
 }
 
 func (p *peer) Inspect(g inspectpb.InspectionService_InspectServer) error {
-	s := peerStream{p, g, map[uint32]*partial{}, map[string]map[string]pipeline.Frame{}}
+	s := peerStream{p, g, map[uint32]*partial{}, map[string]map[string][]pipeline.Frame{}}
 	for {
 		r, err := g.Recv()
 		if errors.Is(err, io.EOF) {
@@ -164,15 +164,16 @@ func (s *peerStream) whole(f *partial) error {
 	s.peer.headers = append(s.peer.headers, f.header)
 	key := showingKey(f.header)
 	if s.full[key] == nil {
-		s.full[key] = map[string]pipeline.Frame{}
+		s.full[key] = map[string][]pipeline.Frame{}
 	}
-	s.full[key][f.header.View] = frame
-	if len(s.full[key]) < len(s.peer.views) {
-		return nil
-	}
+	s.full[key][f.header.View] = append(s.full[key][f.header.View], frame)
 	var views []pipeline.View
-	for name, f := range s.full[key] {
-		views = append(views, pipeline.View{Name: name, Frames: []pipeline.Frame{f}})
+	for _, name := range s.peer.views {
+		frames := s.full[key][name]
+		if len(frames) == 0 || len(frames) < frames[0].Header.Count {
+			return nil
+		}
+		views = append(views, pipeline.View{Name: name, Frames: frames})
 	}
 	delete(s.full, key)
 	return s.answer(key, f.header, pipeline.Digest(views))
@@ -204,6 +205,25 @@ func (s *peerStream) answer(key string, h pipeline.FrameHeader, digest string) e
 	return s.grpc.Send(&inspectpb.InspectResponse{Message: &inspectpb.InspectResponse_Verdict{Verdict: &inspectpb.UnitVerdict{
 		Identity: inspectpb.FromIdentity(id), InspectionId: r.id, Judgement: inspectpb.FromJudgement(r.j),
 		Stored: stored, RequestId: r.header.RequestID, Coverage: 1}}})
+}
+
+// serveOn serves on a socket of its own until the test ends.
+func serveOn(t *testing.T, register func(*grpc.Server)) string {
+	t.Helper()
+	dir, err := os.MkdirTemp("", "peer") // short: a socket's path may have 107 bytes
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() { os.RemoveAll(dir) })
+	l, err := net.Listen("unix", filepath.Join(dir, "s"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	s := grpc.NewServer()
+	register(s)
+	go s.Serve(l) //nolint:errcheck // ends with Stop
+	t.Cleanup(s.Stop)
+	return filepath.Join(dir, "s")
 }
 
 // writePGM writes a picture of its own for each seed.
