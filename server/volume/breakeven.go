@@ -44,7 +44,7 @@ func SolveBreakEven(p *plan.Plan, unknown string, first, second Combination, qua
 	if err != nil {
 		return nil, err
 	}
-	s := &balance{plan: p, unknown: u, quantity: quantity}
+	s := &balance{plan: p, unknown: u, quantity: quantity, model: &cost.Model{}}
 	if s.first, err = find(p, first); err != nil {
 		return nil, err
 	}
@@ -70,6 +70,7 @@ type balance struct {
 	unknown       *plan.Unknown
 	first, second [2]int
 	quantity      float64
+	model         *cost.Model // of the last value tried
 }
 
 func (s *balance) at(value float64) (point, error) {
@@ -83,10 +84,11 @@ func (s *balance) at(value float64) (point, error) {
 	if err != nil {
 		return point{}, err
 	}
-	m, err := cost.NewModel(changed)
+	m, err := s.model.With(changed)
 	if err != nil {
 		return point{}, err
 	}
+	s.model = m
 	w := k.World(k.Values())
 	return point{value, m.Combination(s.first[0], s.first[1], &w).PerGood(s.quantity),
 		m.Combination(s.second[0], s.second[1], &w).PerGood(s.quantity)}, nil

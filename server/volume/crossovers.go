@@ -82,12 +82,17 @@ func (e *evaluation) cheapest(quantity float64) int {
 	return best
 }
 
-// distributeCrossovers fills the distributions of the winner turns.
+// distributeCrossovers fills the distributions of the winner turns. Of several
+// in a row of the same two combinations only the first gets one: the others
+// are steps of the same contest.
 func (e *evaluation) distributeCrossovers(ctx context.Context) error {
 	from, to := e.span()
-	for i := range e.result.Crossovers {
+	last := -1
+	for _, i := range e.result.winnerTurns() {
 		x := &e.result.Crossovers[i]
-		if !x.WinnerTurn {
+		opens := e.result.opensTurn(last, i)
+		last = i
+		if !opens {
 			continue
 		}
 		s := spread{model: e.model, a: e.combos[x.First], b: e.combos[x.Second], near: x.Quantity,

@@ -3,6 +3,7 @@ package volume
 import (
 	"testing"
 
+	"lapgate/server/volume/cost"
 	"lapgate/server/volume/plan"
 )
 
@@ -66,7 +67,7 @@ func TestBreakEvenOfEveryKindOfUnknown(t *testing.T) {
 		}
 		for _, v := range b.Values {
 			u, _ := p.Unknown(path)
-			s := &balance{plan: p, unknown: u, quantity: 900, first: [2]int{0, 1}, second: [2]int{1, 0}}
+			s := &balance{plan: p, unknown: u, quantity: 900, model: &cost.Model{}, first: [2]int{0, 1}, second: [2]int{1, 0}}
 			at, err := s.at(v.Value)
 			if err != nil {
 				t.Fatal(err)

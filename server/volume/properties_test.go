@@ -80,8 +80,8 @@ func TestCrossingsEqualBruteForce(t *testing.T) {
 	for i := range at {
 		for j := range i {
 			a, b := curve(at[i]), curve(at[j])
-			want := bruteForce(a, b, 3, 30000)
-			got, complete := Crossings(a, b, 3, 30000, 10_000_000)
+			want := bruteForce(a, b, 3, 15000)
+			got, complete := Crossings(a, b, 3, 15000, 10_000_000)
 			if !complete || len(got) != len(want) {
 				t.Errorf("pair %d %d: %d crossings, want %d", i, j, len(got), len(want))
 				continue

@@ -96,7 +96,7 @@ type Crossover struct {
 	WinnerTurn bool `json:"winner_turn"` // the cheapest combination of all changes here
 	Crossing
 	Cost         Money                 `json:"cost"`
-	Distribution *CrossingDistribution `json:"distribution,omitempty"` // for winner turns
+	Distribution *CrossingDistribution `json:"distribution,omitempty"` // for the first of a row of winner turns
 }
 
 // CrossingDistribution is where a crossover lies over the draws, given that

@@ -15,6 +15,8 @@ type Model struct {
 	gates  []gate
 	routes []route
 	escape float64 // money per escape
+	// loads keeps the tables of loadsForWait by limit: they are slow to make.
+	loads map[float64][]float64
 }
 
 type route struct {
@@ -23,9 +25,13 @@ type route struct {
 }
 
 // NewModel prepares a validated plan.
-func NewModel(p *plan.Plan) (*Model, error) {
-	o := p.Outcomes
-	m := &Model{plan: p, escape: o.EscapeCost + o.Returns.ShareOfEscapes*o.Returns.Cost}
+func NewModel(p *plan.Plan) (*Model, error) { return (&Model{}).With(p) }
+
+// With prepares another plan, much like this model's, and reuses what was slow
+// to make. The model itself does not change.
+func (m *Model) With(p *plan.Plan) (*Model, error) {
+	known, o := m.loads, p.Outcomes
+	m = &Model{plan: p, escape: o.EscapeCost + o.Returns.ShareOfEscapes*o.Returns.Cost, loads: map[float64][]float64{}}
 	for i := range p.Processes {
 		mk, err := newMaker(&p.Processes[i])
 		if err != nil {
@@ -34,12 +40,31 @@ func NewModel(p *plan.Plan) (*Model, error) {
 		m.makers = append(m.makers, mk)
 	}
 	for i := range p.Inspections {
-		m.gates = append(m.gates, newGate(p, &p.Inspections[i]))
+		g := newGate(p, &p.Inspections[i])
+		m.tabulate(&g, known)
+		m.gates = append(m.gates, g)
 	}
 	for i := range p.Reworks {
 		m.routes = append(m.routes, route{p.Reworks[i].Cost, p.ReworkIndex(p.Reworks[i].Then)})
 	}
 	return m, nil
+}
+
+// tabulate gives a gate with a longest wait its table of loads.
+func (m *Model) tabulate(g *gate, known map[float64][]float64) {
+	if g.option.Station.MaxWaitS <= 0 || g.hours <= 0 {
+		return
+	}
+	limit := g.option.Station.MaxWaitS / 3600 / g.hours // in service times
+	for _, tables := range []map[float64][]float64{m.loads, known} {
+		if table, ok := tables[limit]; ok {
+			g.loads = table
+		}
+	}
+	if g.loads == nil {
+		g.loads = loadsForWait(limit)
+	}
+	m.loads[limit] = g.loads
 }
 
 // newMaker normalises the learning curve so that the stated price holds at
@@ -73,9 +98,6 @@ func newGate(p *plan.Plan, x *plan.Inspection) gate {
 	g.perLook = s.CostPerLook + g.hours*(s.Crew*w.LabourCostPerHour+s.RunningCostPerHour)
 	if s.Charge != plan.Dedicated && s.LifeYears > 0 {
 		g.perLook += g.hours * s.Price / (s.LifeYears * w.PeriodsPerYear * w.HoursPerPeriod)
-	}
-	if s.MaxWaitS > 0 && g.hours > 0 {
-		g.loads = loadsForWait(s.MaxWaitS / 3600 / g.hours)
 	}
 	g.perHold = x.Hold.Cost + x.Hold.Minutes/60*w.LabourCostPerHour
 	return g

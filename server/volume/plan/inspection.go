@@ -23,9 +23,10 @@ type Inspection struct {
 	Kind            Kind      `yaml:"kind"`
 	ISO2859         *Lots     `yaml:"iso_2859_1"`
 	CSP1            *Stream   `yaml:"csp_1"`
-	FalseReject     Share     `yaml:"false_reject"` // good units rejected in one look
-	Miss            Share     `yaml:"miss"`         // bad units accepted in one look
-	Study           *StudyRef `yaml:"study"`        // instead of the two shares
+	FalseReject     Share     `yaml:"false_reject"`   // good units rejected in one look
+	Miss            Share     `yaml:"miss"`           // bad units accepted in one look
+	Study           *StudyRef `yaml:"study"`          // instead of the two shares
+	SameErrorsAs    string    `yaml:"same_errors_as"` // another option with the same camera and settings: its two shares, and its luck
 	SameResultShare *float64  `yaml:"same_result_share"`
 	Station         Station   `yaml:"station"`
 	Hold            Hold      `yaml:"hold"`

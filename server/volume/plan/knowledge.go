@@ -8,6 +8,8 @@ type Knowledge struct {
 	Names   []string // as in the file: inspections.ring.miss
 	plan    *Plan
 	gates   []int // per process: the inspection behind a measured yield, or -1
+	// errorsOf is, per inspection, the one whose misses and false rejects it has.
+	errorsOf []int
 }
 
 // Know collects the beliefs of a validated and resolved plan.
@@ -20,6 +22,10 @@ func Know(p *Plan) (*Knowledge, error) {
 		if err := k.addInspection(&p.Inspections[i]); err != nil {
 			return nil, err
 		}
+		if same := p.InspectionIndex(p.Inspections[i].SameErrorsAs); same >= 0 {
+			i = same
+		}
+		k.errorsOf = append(k.errorsOf, i)
 	}
 	for i := range p.Processes {
 		k.addProcess(&p.Processes[i])
@@ -73,7 +79,7 @@ type World struct {
 // the correction leaves 0..1 it is held there (Clipped).
 func (k *Knowledge) World(values []float64) World {
 	var w World
-	for i := range k.plan.Inspections {
+	for _, i := range k.errorsOf {
 		w.FalseReject = append(w.FalseReject, values[2*i])
 		w.Miss = append(w.Miss, values[2*i+1])
 	}

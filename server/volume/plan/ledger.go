@@ -35,7 +35,7 @@ func (p *Plan) ResolveLedger(ask func(LedgerFilter) (Counts, error)) error {
 func (f LedgerFilter) String() string {
 	var parts []string
 	for _, kv := range [][2]string{{"part", f.Part}, {"process", f.Process}, {"lot", f.Lot}, {"line", f.Line},
-		{"station", f.Station}, {"from", f.From}, {"to", f.To}} {
+		{"station", f.Station}, {"recipe", f.Recipe}, {"from", f.From}, {"to", f.To}} {
 		if kv[1] != "" {
 			parts = append(parts, kv[0]+"="+kv[1])
 		}

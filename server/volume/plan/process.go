@@ -63,12 +63,14 @@ type LedgerFilter struct {
 	Lot     string `yaml:"lot"`
 	Line    string `yaml:"line"`
 	Station string `yaml:"station"`
+	Recipe  string `yaml:"recipe"`
 	From    string `yaml:"from"` // RFC 3339, included
 	To      string `yaml:"to"`   // RFC 3339, excluded
 	Gate    string `yaml:"gate"`
 }
 
-// Counts are first-attempt verdicts of production units.
+// Counts are what the ledger holds of production: units shown and the verdicts
+// on them, where a held unit that is shown again adds its next verdict.
 type Counts struct {
 	Started  int `json:"started"`
 	Accepted int `json:"accepted"`

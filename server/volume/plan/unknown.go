@@ -158,7 +158,7 @@ func (s unknownSet) inspection(at string, i int) {
 	of("cost_per_look", func(x *Inspection) *float64 { return &x.Station.CostPerLook })
 	x := s.plan.Inspections[i]
 	s.share(at+"hold_share", x.Hold.Share, 0, func(p *Plan, v float64) { p.Inspections[i].Hold.Share = v })
-	if x.Study == nil {
+	if x.Study == nil && x.SameErrorsAs == "" {
 		s.share(at+"miss", x.Miss.Belief().Value(), 0, func(p *Plan, v float64) { p.Inspections[i].Miss = Share{Value: &v} })
 		s.share(at+"false_reject", x.FalseReject.Belief().Value(), 0, func(p *Plan, v float64) { p.Inspections[i].FalseReject = Share{Value: &v} })
 	}

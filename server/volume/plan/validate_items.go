@@ -82,7 +82,11 @@ func (p *Plan) checkInspection(c *checks, at string, x *Inspection) {
 	}
 	c.lots(at+".iso_2859_1", x.ISO2859)
 	c.stream(at+".csp_1", x.CSP1)
-	c.errorRates(at, x)
+	if x.SameErrorsAs == "" {
+		c.errorRates(at, x)
+	} else {
+		p.checkSameErrors(c, at, x)
+	}
 	c.twice(at, x)
 	c.station(at+".station", &x.Station)
 	c.share(at+".hold.share", x.Hold.Share)
@@ -108,6 +112,15 @@ func (c *checks) stream(at string, s *Stream) {
 	}
 	c.want(s.Clearance >= 1, at+".clearance", "found %d; allowed: 1 or more", s.Clearance)
 	c.positiveShare(at+".fraction", s.Fraction)
+}
+
+// checkSameErrors wants an option that says its shares itself.
+func (p *Plan) checkSameErrors(c *checks, at string, x *Inspection) {
+	i := p.InspectionIndex(x.SameErrorsAs)
+	ok := i >= 0 && p.Inspections[i].Kind != None && p.Inspections[i].SameErrorsAs == ""
+	c.want(ok, at+".same_errors_as", "found %q; name an inspection option that states its own misses and false rejects", x.SameErrorsAs)
+	c.want(x.Study == nil && x.FalseReject == (Share{}) && x.Miss == (Share{}), at+".same_errors_as",
+		"says shares or a study besides; exactly one is needed")
 }
 
 func (c *checks) errorRates(at string, x *Inspection) {

@@ -68,12 +68,14 @@ func WaitMDc(c int, a float64) (float64, error) {
 	}
 	n := float64(c)
 	mean := a/(2*(n-a)) + a/2 - (n-1)/2
-	for k := 1; k < c; k++ {
+	for k := 1; 2*k <= c; k++ { // roots k and c-k are conjugate
 		z, err := bulkRoot(c, k, a)
 		if err != nil {
 			return 0, err
 		}
-		mean += real(1 / (1 - z))
+		if mean += real(1 / (1 - z)); 2*k < c {
+			mean += real(1 / (1 - z))
+		}
 	}
 	return math.Max(0, (mean-a)/a), nil
 }
@@ -84,7 +86,7 @@ func bulkRoot(c, k int, a float64) (complex128, error) {
 	w := cmplx.Exp(complex(0, 2*math.Pi*float64(k)/float64(c)))
 	rho := complex(a/float64(c), 0)
 	z := complex128(0)
-	for range 30 {
+	for range 6 {
 		z = w * cmplx.Exp(rho*(z-1))
 	}
 	for range 60 {

@@ -83,7 +83,7 @@ func TestWaitMDcAgainstTheChain(t *testing.T) {
 	for _, r := range []struct {
 		c int
 		a float64
-	}{{2, 1.2}, {3, 2.4}, {7, 5.6}, {12, 9}, {20, 17}} {
+	}{{2, 1.2}, {3, 2.4}, {7, 5.6}, {12, 9}, {20, 17}, {6, .5}, {16, 14}} {
 		got, err := WaitMDc(r.c, r.a)
 		if err != nil {
 			t.Fatal(err)
@@ -93,7 +93,7 @@ func TestWaitMDcAgainstTheChain(t *testing.T) {
 }
 
 func chainWait(c int, a float64) float64 {
-	const states = 200
+	const states = 400
 	arrivals := make([]float64, states)
 	arrivals[0] = math.Exp(-a)
 	for k := 1; k < states; k++ {
@@ -107,7 +107,7 @@ func chainWait(c int, a float64) float64 {
 			if share < 1e-16 {
 				continue
 			}
-			for k := 0; max(n-c, 0)+k < states; k++ {
+			for k := 0; max(n-c, 0)+k < states && (arrivals[k] > 1e-17 || k < int(a)); k++ {
 				next[max(n-c, 0)+k] += share * arrivals[k]
 			}
 		}
