@@ -79,7 +79,7 @@ func (s *Store) write(ctx context.Context, f func(*sql.Tx) error) error {
 func (s *Store) writeOnce(ctx context.Context, f func(*sql.Tx) error) error {
 	tx, err := s.writer.BeginTx(ctx, nil)
 	if err != nil {
-		return err
+		return notBegun{err}
 	}
 	if err := f(tx); err != nil {
 		_ = tx.Rollback() // fails where the database has undone it already, as after a full disk
@@ -87,6 +87,11 @@ func (s *Store) writeOnce(ctx context.Context, f func(*sql.Tx) error) error {
 	}
 	return tx.Commit()
 }
+
+// notBegun is the error of a transaction that did nothing yet.
+type notBegun struct{ error }
+
+func (e notBegun) Unwrap() error { return e.error }
 
 // queryer is a pool or a transaction.
 type queryer interface {

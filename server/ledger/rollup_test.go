@@ -175,7 +175,7 @@ func countReasons(reasons map[string]ReasonCounts, x *told, first bool) {
 func TestRollUpsEqualASlowRecount(t *testing.T) {
 	onEach(t, func(t *testing.T, s *Store) {
 		ctx := context.Background()
-		all := production(t, s, rand.New(rand.NewPCG(1, 2)), 300)
+		all := production(t, s, rand.New(rand.NewPCG(1, 2)), 200)
 		wantCounts, wantReasons := recount(all)
 		got, err := s.Counts(ctx, Question{GroupBy: []Dimension{ByLine}, Every: 30 * time.Minute})
 		if err != nil || len(got) != len(wantCounts) || len(got) < 8 {

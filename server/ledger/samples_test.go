@@ -7,7 +7,6 @@ import (
 	"time"
 
 	"lapgate/pipeline"
-	"lapgate/pipeline/raster"
 )
 
 var noon = time.Date(2026, 3, 2, 12, 0, 0, 0, time.UTC)
@@ -21,7 +20,8 @@ func disc(unit string, attempt int, v pipeline.Verdict, at time.Time, reasons ..
 	for i, r := range reasons {
 		j.Reasons = append(j.Reasons, pipeline.Reason{Name: r, Verdict: v, Text: r, DefectID: i + 1})
 	}
-	header := pipeline.FrameHeader{Identity: id, Capture: pipeline.Capture{Format: raster.Mono12p, Width: 4000, Height: 3000}, Stride: 6000, View: "ring", Count: 1, CameraID: "cam1", Captured: at, CRC32C: 7}
+	// 0x010C0047 is PFNC Mono12p.
+	header := pipeline.FrameHeader{Identity: id, Capture: pipeline.Capture{Format: 0x010C0047, Width: 4000, Height: 3000}, Stride: 6000, View: "ring", Count: 1, CameraID: "cam1", Captured: at, CRC32C: 7}
 	return Inspection{Identity: id, Digest: fmt.Sprintf("d-%s-%d", unit, attempt), RequestID: "r-" + unit, Captured: at,
 		Judged: at.Add(40 * time.Millisecond), LatencyMS: 31.5, Judgement: j,
 		Evidence: pipeline.Evidence{Coverage: 0.998, Defects: defects(2), Views: []pipeline.ViewEvidence{

@@ -68,3 +68,26 @@ func inParallel(t *testing.T, n int, f func(int) error) {
 		}
 	}
 }
+
+// The server throws out every connection, as when it restarts: what was under way fails
+// with a clear error or not at all, and a resend is recorded once.
+func TestALostPostgreSQLConnection(t *testing.T) {
+	s, other := openAt(t, server.database(t)), openAt(t, server.database(t))
+	ctx := context.Background()
+	for i := range 10 {
+		_, err := other.writer.Exec(`SELECT pg_terminate_backend(pid) FROM pg_stat_activity WHERE pid <> pg_backend_pid() AND backend_type = 'client backend'`)
+		if err != nil {
+			t.Fatal(err)
+		}
+		in := disc(fmt.Sprint(i), 1, pipeline.Accept, noon)
+		if _, _, err := s.Record(ctx, in); err != nil {
+			wantKind(t, err, pipeline.Unready)
+			if _, _, err := s.Record(ctx, in); err != nil {
+				t.Fatal(err)
+			}
+		}
+	}
+	if n := rowsIn(t, s, "inspections"); n != 10 {
+		t.Errorf("%d inspections, want 10", n)
+	}
+}
