@@ -6,6 +6,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"reflect"
 	"strings"
 	"testing"
 
@@ -75,6 +76,9 @@ func TestPlansWithMistakes(t *testing.T) {
 		{func(p *Plan) { p.Inspections[2].Study.DefectSizes[0].Share = .9 }, "inspections[2].study.defect_sizes", "add up to 1"},
 		{func(p *Plan) { p.Inspections[3].ISO2859.AQLPercent = 1.2 }, "inspections[3].iso_2859_1.aql_percent", "0.65 1 1.5"},
 		{func(p *Plan) { p.Inspections[4].SameResultShare = nil }, "inspections[4].same_result_share", "missing"},
+		{func(p *Plan) { p.Quantities.Points, p.Uncertainty.Draws = 1000, 1_000_000 }, "uncertainty.draws", "combinations x quantities"},
+		{func(p *Plan) { p.Inspections[3].SameErrorsAs = "ring" }, "inspections[3].same_errors_as", "exactly one"},
+		{func(p *Plan) { p.Inspections[3].SameErrorsAs = "eye" }, "inspections[3].same_errors_as", "name an inspection option"},
 		{func(p *Plan) { p.Uncertainty.Draws = 3 }, "uncertainty.draws", "100 to"},
 	} {
 		p := good(t)
@@ -256,4 +260,63 @@ func TestUnknownLeavesThePlanAlone(t *testing.T) {
 	if _, err := p.Unknown("inspections.none.miss"); err == nil {
 		t.Error("an option without inspection has misses")
 	}
+}
+
+// Options with the same camera share its errors, world by world.
+func TestSameErrorsAreDrawnOnce(t *testing.T) {
+	p := resolved(t)
+	p.Inspections[3].SameErrorsAs, p.Inspections[3].FalseReject, p.Inspections[3].Miss = "ring", Share{}, Share{}
+	if err := p.Validate(); err != nil {
+		t.Fatal(err)
+	}
+	k, err := Know(p)
+	if err != nil {
+		t.Fatal(err)
+	}
+	values := k.Values()
+	values[2], values[3] = .123, .234
+	w := k.World(values)
+	near(t, "false reject", w.FalseReject[3], .123, 0)
+	near(t, "miss", w.Miss[3], .234, 0)
+	near(t, "another", w.Miss[4], .05, 0)
+}
+
+// The guide names every key of the files.
+func TestGuideNamesEveryKey(t *testing.T) {
+	guide, err := os.ReadFile("FORMATS.md")
+	if err != nil {
+		t.Fatal(err)
+	}
+	var missing []string
+	for _, v := range []any{Plan{}, Study{}, CountsFile{}} {
+		for _, key := range keysOf(reflect.TypeOf(v)) {
+			if !strings.Contains(string(guide), key) {
+				missing = append(missing, key)
+			}
+		}
+	}
+	if missing != nil {
+		t.Errorf("FORMATS.md lacks %v", missing)
+	}
+}
+
+func keysOf(t reflect.Type) []string {
+	for t.Kind() == reflect.Pointer || t.Kind() == reflect.Slice {
+		t = t.Elem()
+	}
+	if t.Kind() != reflect.Struct {
+		return nil
+	}
+	var keys []string
+	for i := range t.NumField() {
+		key, _, _ := strings.Cut(t.Field(i).Tag.Get("yaml"), ",")
+		if key == "-" {
+			continue
+		}
+		if key != "" {
+			keys = append(keys, "`"+key+"`")
+		}
+		keys = append(keys, keysOf(t.Field(i).Type)...)
+	}
+	return keys
 }

@@ -6,6 +6,12 @@ import (
 	"regexp"
 )
 
+// maxCells bounds the costs worked out for one plan: some minutes of work.
+const maxCells = 1_000_000_000
+
+// maxCombinations bounds processes times inspection options.
+const maxCombinations = 400
+
 // Validate checks everything that can be said without other files. The error
 // joins Problems.
 func (p *Plan) Validate() error {
@@ -45,6 +51,8 @@ func (p *Plan) checkQuantities(c *checks) {
 	}
 	u := p.Uncertainty
 	c.want(u.Draws >= 100 && u.Draws <= 1_000_000, "uncertainty.draws", "found %d; allowed: 100 to 1000000", u.Draws)
+	cells := float64(len(p.Processes)*len(p.Inspections)) * float64(q.Points+len(q.Exact)) * float64(u.Draws)
+	c.want(cells <= maxCells, "uncertainty.draws", "combinations x quantities x draws come to %.3g; allowed: %.0e", cells, float64(maxCells))
 	c.want(u.Level > 0 && u.Level < 1, "uncertainty.level", "found %v; allowed: between 0 and 1, such as 0.90", u.Level)
 }
 
@@ -60,6 +68,8 @@ func (p *Plan) checkOutcomes(c *checks) {
 func (p *Plan) checkNames(c *checks) {
 	c.want(len(p.Processes) > 0, "processes", "is empty; at least one process is needed")
 	c.want(len(p.Inspections) > 0, "inspections", "is empty; at least one option is needed")
+	n := len(p.Processes) * len(p.Inspections)
+	c.want(n <= maxCombinations, "processes", "%d combinations of process and inspection; allowed: %d", n, maxCombinations)
 	var processes, inspections, reworks []string
 	for _, x := range p.Processes {
 		processes = append(processes, x.Name)
