@@ -24,6 +24,8 @@ type Server struct {
 	Recipes          string `yaml:"recipes" help:"Folder of recipes, one file per part number; watched. It cannot be empty."`
 	Calibrations     string `yaml:"calibrations" help:"Folder of calibrations. It cannot be empty."`
 	Images           string `yaml:"images" help:"Folder where frames are kept. Empty keeps none."`
+	KeepImages       string `yaml:"keep_images" help:"Which frames are kept: none, rejects_and_holds or all. It cannot be empty."`
+	ImagesQuotaBytes int64  `yaml:"images_quota_bytes" help:"Bytes of kept frames, at most; the oldest go first. 0 = no bound."`
 	MaxBytesInFlight int64  `yaml:"max_bytes_in_flight" help:"Bytes of frames held in memory at once, in all; beyond it clients are told to try again. It cannot be 0."`
 	MaxFrameBytes    int64  `yaml:"max_frame_bytes" help:"Bytes of one frame, at most. It cannot be 0."`
 	Workers          int    `yaml:"workers" help:"Frames worked on at once. 0 = as many as there are processors."`
@@ -37,13 +39,16 @@ type Server struct {
 // DefaultServer returns the settings of an empty file.
 func DefaultServer() Server {
 	return Server{
-		Listen: "127.0.0.1:7411", Ledger: "lapgate.db", Recipes: "recipes", Calibrations: "calibrations", Images: "images",
+		Listen: "127.0.0.1:7391", Ledger: "lapgate.db", Recipes: "recipes", Calibrations: "calibrations", Images: "images", KeepImages: "rejects_and_holds", ImagesQuotaBytes: 100 << 30,
 		MaxBytesInFlight: 1 << 30, MaxFrameBytes: 128 << 20, ViewTimeoutMS: 2000, LogLevel: "info", Reflection: true, ShutdownGraceMS: 5000,
 	}
 }
 
 // logLevels are the values of log_level.
 func logLevels() []string { return []string{"debug", "info", "warn", "error"} }
+
+// keepPolicies are the values of keep_images.
+func keepPolicies() []string { return []string{"none", "rejects_and_holds", "all"} }
 
 // check returns a problem for every setting that cannot be used, by key.
 func (s Server) check() []Problem {
@@ -53,10 +58,12 @@ func (s Server) check() []Problem {
 			out = append(out, Problem{Path: key, Found: fmt.Sprintf("got %v", got), Want: want})
 		}
 	}
-	wrong(!isAddress(s.Listen), "listen", strconv.Quote(s.Listen), "host:port, such as 127.0.0.1:7411")
+	wrong(!isAddress(s.Listen), "listen", strconv.Quote(s.Listen), "host:port, such as 127.0.0.1:7391")
 	for _, f := range []struct{ key, value string }{{"ledger", s.Ledger}, {"recipes", s.Recipes}, {"calibrations", s.Calibrations}} {
 		wrong(strings.TrimSpace(f.value) == "", f.key, strconv.Quote(f.value), "a path")
 	}
+	wrong(!slices.Contains(keepPolicies(), s.KeepImages), "keep_images", strconv.Quote(s.KeepImages), "one of "+strings.Join(keepPolicies(), ", "))
+	wrong(s.ImagesQuotaBytes < 0, "images_quota_bytes", s.ImagesQuotaBytes, "0 (no bound) or more")
 	wrong(s.MaxFrameBytes < 1, "max_frame_bytes", s.MaxFrameBytes, "1 or more")
 	wrong(s.MaxBytesInFlight < max(s.MaxFrameBytes, 1), "max_bytes_in_flight", s.MaxBytesInFlight, fmt.Sprintf("max_frame_bytes (%d) or more", s.MaxFrameBytes))
 	wrong(s.Workers < 0 || s.Workers > 1024, "workers", s.Workers, "0 to 1024")

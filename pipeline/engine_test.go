@@ -2,6 +2,7 @@ package pipeline_test
 
 import (
 	"context"
+	"encoding/json"
 	"errors"
 	"math"
 	"strings"
@@ -136,6 +137,9 @@ func TestNothingUninspectedIsAccepted(t *testing.T) {
 			e, j := inspect(t, p)
 			if j.Verdict != pipeline.Hold || len(j.Reasons) == 0 {
 				t.Errorf("judgement %+v of evidence %+v, want a hold with a reason", j, e)
+			}
+			if _, err := json.Marshal(e); err != nil {
+				t.Errorf("evidence that cannot be recorded: %v", err)
 			}
 		})
 	}

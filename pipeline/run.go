@@ -79,21 +79,44 @@ func firstLines(b []byte, n int) string {
 }
 
 // finiteFailure refuses numbers that are not numbers: they would compare as within
-// every limit.
+// every limit, and could not be recorded. What the view has is then thrown away.
 func finiteFailure(stage string, item *Item) *Failure {
+	f := notFinite(stage, item)
+	if f != nil {
+		item.Defects, item.Measurements, item.Proofs, item.Coverage = nil, nil, nil, Coverage{}
+	}
+	return f
+}
+
+func notFinite(stage string, item *Item) *Failure {
 	for _, d := range item.Defects {
-		for _, v := range []float64{d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.Flux, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM} {
-			if math.IsNaN(v) || math.IsInf(v, 0) {
-				return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("defect at (%.1f, %.1f) px has a measure that is no number", d.XPx, d.YPx)}
-			}
+		if !finite(d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM) {
+			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("defect at (%.1f, %.1f) px has a measure that is no number", d.XPx, d.YPx)}
 		}
 	}
 	for _, m := range item.Measurements {
-		if math.IsNaN(m.Value) || math.IsInf(m.Value, 0) {
+		if !finite(m.Value) {
 			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("measurement %s is no number", m.Name)}
 		}
 	}
+	for _, p := range item.Proofs {
+		if !finite(p.Value, p.Low, p.High) {
+			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("proof %s holds a value that is no number", p.Name)}
+		}
+	}
+	if c := item.Coverage; !finite(c.Share, c.Background, c.Noise) {
+		return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: "the coverage holds a value that is no number"}
+	}
 	return nil
+}
+
+func finite(values ...float64) bool {
+	for _, v := range values {
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			return false
+		}
+	}
+	return true
 }
 
 // numberDefects gives ids from 1 and cuts the list at MaxDefects.

@@ -20,6 +20,7 @@ import (
 	"lapgate/pipeline"
 	"lapgate/plugins/builtin"
 	"lapgate/server"
+	"lapgate/server/images"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
 )
@@ -61,7 +62,7 @@ func (s *serving) open(ctx context.Context) error {
 	if s.ledger, err = ledger.Open(ctx, s.settings.Ledger); err != nil {
 		return fmt.Errorf("ledger %s: %w", s.settings.Ledger, err)
 	}
-	if s.keeper, err = newKeeper(s.settings.Images, s.log); err != nil {
+	if s.keeper, err = newKeeper(s.settings.Images, images.Settings{Policy: images.Policy(s.settings.KeepImages), QuotaBytes: s.settings.ImagesQuotaBytes}, s.log); err != nil {
 		return err
 	}
 	builder := recipeBuilder{catalogue: cat, calibrations: s.settings.Calibrations}

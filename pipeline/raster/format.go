@@ -3,6 +3,7 @@ package raster
 import (
 	"fmt"
 	"sort"
+	"strconv"
 	"strings"
 )
 
@@ -98,8 +99,13 @@ func (f PixelFormat) RowBytes(width int) int {
 // MarshalText writes the PFNC name.
 func (f PixelFormat) MarshalText() ([]byte, error) { return []byte(f.String()), nil }
 
-// UnmarshalText reads a PFNC name.
+// UnmarshalText reads what MarshalText writes: a PFNC name, or the code of a format
+// that is not understood.
 func (f *PixelFormat) UnmarshalText(b []byte) error {
+	if code, err := strconv.ParseUint(string(b), 0, 32); err == nil {
+		*f = PixelFormat(code)
+		return nil
+	}
 	g, err := ParsePixelFormat(string(b))
 	if err == nil {
 		*f = g

@@ -55,15 +55,39 @@ func (s *showing) conclude(ctx context.Context) (Verdict, error) {
 	if err != nil {
 		return Verdict{}, err
 	}
-	stored, fresh, err := s.intake.ledger.Record(ctx, s.judge(ctx, id, digest))
+	record := s.judge(ctx, id, digest)
+	s.keep(&record)
+	stored, fresh, err := s.intake.ledger.Record(ctx, record)
 	if err != nil {
 		return Verdict{}, err
 	}
 	v := Verdict{Inspection: stored, Stored: !fresh}
-	if fresh {
-		s.tell(v)
+	if fresh && s.intake.settings.Recorded != nil {
+		s.intake.settings.Recorded(v)
 	}
 	return v, nil
+}
+
+// keep offers the frames to the image store and notes in the record where they will be.
+// The memory is then given back when the store has written them.
+func (s *showing) keep(record *ledger.Inspection) {
+	if s.intake.settings.Keep == nil {
+		return
+	}
+	var frames []pipeline.Frame
+	var places []*string
+	for i := range record.Evidence.Views {
+		v := &record.Evidence.Views[i]
+		for j := range v.Frames {
+			frames = append(frames, pipeline.Frame{Header: v.Frames[j].Header, Raw: inOrder(s.frames[v.Name])[j].Raw})
+			places = append(places, &v.Frames[j].Stored)
+		}
+	}
+	s.kept = true
+	bytes := s.bytes
+	for i, key := range s.intake.settings.Keep(record.Judgement.Verdict, frames, func() { s.intake.admission.give(bytes) }) {
+		*places[i] = key
+	}
 }
 
 // knownAlready returns the stored inspection when these frames were judged before, a
@@ -152,15 +176,6 @@ func (s *showing) captured() time.Time {
 	return last
 }
 
-func (s *showing) tell(v Verdict) {
-	if s.intake.settings.Keep != nil {
-		s.intake.settings.Keep(v, s.views())
-	}
-	if s.intake.settings.Recorded != nil {
-		s.intake.settings.Recorded(v)
-	}
-}
-
 // end removes the showing, gives its memory back and answers every client.
 func (s *showing) end(v Verdict, err error) {
 	in := s.intake
@@ -171,7 +186,9 @@ func (s *showing) end(v Verdict, err error) {
 	s.ended = true
 	answers := s.answers
 	s.mu.Unlock()
-	in.admission.give(s.bytes)
+	if !s.kept {
+		in.admission.give(s.bytes)
+	}
 	for _, answer := range answers {
 		answer(v, err)
 	}

@@ -37,8 +37,10 @@ type Settings struct {
 	Log              *slog.Logger
 	// Recorded is told of every inspection that the ledger took; it must not block.
 	Recorded func(Verdict)
-	// Keep is given the frames of a judged showing; it must not block. Nil = none kept.
-	Keep func(Verdict, []pipeline.View)
+	// Keep is given the frames of a judged showing and returns where each will be kept, or
+	// nil; it must not block, and calls release once the pixels are no longer needed (see
+	// images.Store.Offer). Nil = none kept.
+	Keep func(v pipeline.Verdict, frames []pipeline.Frame, release func()) []string
 }
 
 // Intake assembles showings and has them judged. It is safe for concurrent use.

@@ -34,6 +34,7 @@ type showing struct {
 	bytes    int64
 	closed   bool // complete, timed out or dropped: takes no more frames
 	ended    bool // answered
+	kept     bool // the image store gives the memory back
 	dropped  error
 	spooled  bool
 }
@@ -197,12 +198,9 @@ func (s *showing) start(view string) {
 	})
 }
 
+// inOrder returns frames in the order of their index.
 func inOrder(frames []pipeline.Frame) []pipeline.Frame {
-	out := make([]pipeline.Frame, len(frames))
-	for _, f := range frames {
-		out[f.Header.Index] = f
-	}
-	return out
+	return slices.SortedFunc(slices.Values(frames), func(a, b pipeline.Frame) int { return a.Header.Index - b.Header.Index })
 }
 
 // closeIfWhole closes the showing when every view is whole or has failed.
