@@ -44,6 +44,9 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	if err != nil {
 		return err
 	}
+	if len(item.Frames) == 0 {
+		return pipeline.Invalid("view %q has no frame", item.View)
+	}
 	item.SaturatedAt = saturated(raw, float32(item.Frames[0].Raw.Format.MaxCount()))
 	if item.Calibration == nil {
 		item.BadMask = nil
