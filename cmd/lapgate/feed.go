@@ -51,6 +51,9 @@ Fields of --pattern: {part} {revision} {surface} {process} {lot} {unit} {line}
 {station} {attempt} {purpose} {view} {index} {count} {camera_id} {frame_counter}
 {request_id} {tag.NAME}, and {_} for what is not used.
 
+A --watch that is started again sends what still lies in the folder once more, and gets
+the stored verdicts; --move-to keeps the folder short.
+
 While no server answers, frames are kept in the folder --spool and sent later; they are
 marked, and their verdicts are holds with the reason late, since the part has gone.
 Status 0: every unit got its verdict, whatever it is. 1: a unit is without, a frame was

@@ -91,11 +91,13 @@ func (f *feeder) join(s *showing, h *held) {
 }
 
 func (f *feeder) open(key, requestID string) *showing {
-	if requestID == "" || f.byRequest[requestID] != nil {
-		requestID = uuid.NewString()
+	if requestID == "" || (f.byRequest[requestID] != nil && len(f.byKey[key]) == 0) {
+		requestID = uuid.NewString() // used for another unit: it names nothing
 	}
 	s := &showing{requestID: requestID, keys: []string{key}, refused: f.reported[key]}
-	f.byRequest[requestID] = s
+	if f.byRequest[requestID] == nil {
+		f.byRequest[requestID] = s // else when the earlier one is answered
+	}
 	f.byKey[key] = append(f.byKey[key], s)
 	f.order = append(f.order, s)
 	return s
@@ -168,8 +170,11 @@ func (f *feeder) finish(s *showing) {
 	}
 	delete(f.byRequest, s.requestID)
 	for _, key := range s.keys {
-		if f.byKey[key] = slices.DeleteFunc(f.byKey[key], func(o *showing) bool { return o == s }); len(f.byKey[key]) == 0 {
+		left := slices.DeleteFunc(f.byKey[key], func(o *showing) bool { return o == s })
+		if f.byKey[key] = left; len(left) == 0 {
 			delete(f.byKey, key)
+		} else if f.byRequest[left[0].requestID] == nil {
+			f.byRequest[left[0].requestID] = left[0]
 		}
 	}
 	f.order = slices.DeleteFunc(f.order, func(o *showing) bool { return o == s })

@@ -323,6 +323,23 @@ func TestUnitsWithoutSerial(t *testing.T) {
 	}
 }
 
+// TestSameIDTwiceInOneRun shows other frames under an id that is still waited for.
+func TestSameIDTwiceInOneRun(t *testing.T) {
+	for _, pattern := range []string{"{unit}_{view}", "{request_id}_{view}"} {
+		p := newPeer(t, "ring", "bar").start()
+		dir := t.TempDir()
+		var list []string
+		for i, name := range []string{"a/0001_ring.pgm", "a/0001_bar.pgm", "b/0001_ring.pgm", "b/0001_bar.pgm"} {
+			list = append(list, filepath.Join(dir, name))
+			writePGM(t, list[i], 8, 4, byte(i))
+		}
+		got := runFeed(t, t.Context(), strings.NewReader(strings.Join(list, "\n")), feedArgs(t, p, "--pattern", pattern, "-"))
+		if got.code != exitFailure || len(got.lines) != 2 || got.lines[0].Verdict != pipeline.Accept || got.lines[1].Code != "AlreadyExists" {
+			t.Errorf("%s: status %d, lines %+v\n%s", pattern, got.code, got.lines, got.stderr)
+		}
+	}
+}
+
 func TestListOnStdinAndWrongFiles(t *testing.T) {
 	p := newPeer(t, "ring", "bar").start()
 	dir := unitsIn(t, 2)

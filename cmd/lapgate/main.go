@@ -82,6 +82,6 @@ func rootCommand() *cobra.Command {
 	}
 	root.SetVersionTemplate("{{.Version}}\n")
 	root.AddCommand(feedCommand(), yieldCommand(), watchCommand(), unitCommand(), holdsCommand(), disposeCommand(),
-		outcomeCommand(), recipesCommand(), renderCommand())
+		outcomeCommand(), recipesCommand(), renderCommand(), volumeCommand())
 	return root
 }
