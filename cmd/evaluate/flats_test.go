@@ -15,7 +15,7 @@ func dataDir(t *testing.T) string {
 	return dir
 }
 
-func figure(t *testing.T, from map[string]any, name string, low, high float64) {
+func within(t *testing.T, from map[string]any, name string, low, high float64) {
 	t.Helper()
 	v, ok := from[name].(float64)
 	if !ok || !(v >= low && v <= high) {
@@ -31,11 +31,11 @@ func TestEMVAFrames(t *testing.T) {
 		t.Fatal(err)
 	}
 	t.Log(got)
-	figure(t, got, "corrected_over_floor", 0.98, 1.02)
-	figure(t, got, "one_corrected_over_floor", 0.98, 1.02)
-	figure(t, got, "low_frequency_ratio", 5, 100)
-	figure(t, got, "gain_ramp_dn_per_e", 0.97*0.2801, 1.03*0.2801)
-	figure(t, got, "quantum_efficiency", 0.97*0.452, 1.03*0.452)
+	within(t, got, "corrected_over_floor", 0.98, 1.02)
+	within(t, got, "one_corrected_over_floor", 0.98, 1.02)
+	within(t, got, "low_frequency_ratio", 5, 100)
+	within(t, got, "gain_ramp_dn_per_e", 0.97*0.2801, 1.03*0.2801)
+	within(t, got, "quantum_efficiency", 0.97*0.452, 1.03*0.452)
 }
 
 func TestLineFlats(t *testing.T) {
@@ -44,6 +44,6 @@ func TestLineFlats(t *testing.T) {
 		t.Fatal(err)
 	}
 	t.Log(got)
-	figure(t, got, "raw_spread_percent", 2, 4)
-	figure(t, got, "corrected_spread_percent", 0.1, 0.55)
+	within(t, got, "raw_spread_percent", 2, 4)
+	within(t, got, "corrected_spread_percent", 0.1, 0.55)
 }
