@@ -43,6 +43,7 @@ func drawVolumeThreshold(r *volume.Result) (template.HTML, error) {
 	limit.Color, limit.Width, limit.Dashes = lineColour(1), vg.Points(1.4), []vg.Length{vg.Points(5), vg.Points(3)}
 	p.Add(limit)
 	p.Legend.Add("the drawing's limit", swatch{lineColour(1)})
-	p.Legend.Top = true
+	p.Legend.Top, p.Legend.Left = true, true
+	p.Legend.XOffs = vg.Points(8)
 	return svgOf(p, 18*vg.Centimeter, 9*vg.Centimeter)
 }

@@ -77,6 +77,8 @@ func (e *evaluation) cautions() []string {
 	all := append(e.result.Cautions,
 		"Cost figures are estimates that rest on the listed assumptions.",
 		"A verdict is not a certificate: acceptance follows the contract's drawing and standard, and an accredited laboratory where one is required.",
+		"Bright LED and laser lighting can hurt eyes (IEC 62471, IEC 60825): follow the maker's and local rules.",
+		"The reject gate is not a safety device: machine guarding follows local codes and licensed practice.",
 		"Costs and crossovers are "+Basis+"; counted per start they differ.")
 	uncorrectable := 0.0
 	for _, w := range e.worlds {

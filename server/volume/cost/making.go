@@ -11,8 +11,9 @@ import (
 type maker struct {
 	process *plan.Process
 	curve   *learning.Curve
-	share   float64 // part of the price that learns
-	scale   float64 // brings the curve to 1 at the start the price was given for
+	share   float64   // part of the price that learns
+	scale   float64   // brings the curve to 1 at the start the price was given for
+	atBreak []float64 // what buying just up to each price break costs
 }
 
 // starts rounds the expected starts up to whole blocks.
@@ -26,13 +27,13 @@ func (m *maker) starts(expected float64) float64 {
 // making is setups plus the price of the starts. Where buying up to the next
 // price break costs less than stopping short of it, that is done.
 func (m *maker) making(starts float64) float64 {
-	best := math.Inf(1)
+	best, learned := math.Inf(1), m.learned(starts)
 	for i, b := range m.process.CostPerStart {
-		buy := starts
-		if b.FromStarts > starts && i > 0 {
-			buy = b.FromStarts
+		total := m.atBreak[i]
+		if b.FromStarts <= starts || i == 0 {
+			total = b.Cost * learned
 		}
-		best = math.Min(best, b.Cost*m.learned(buy))
+		best = math.Min(best, total)
 	}
 	return best + m.setups(starts)*m.process.SetupCost
 }

@@ -67,22 +67,32 @@ func (m *Model) tabulate(g *gate, known map[float64][]float64) {
 	m.loads[limit] = g.loads
 }
 
-// newMaker normalises the learning curve so that the stated price holds at
-// the start it was given for.
 func newMaker(x *plan.Process) (maker, error) {
 	m := maker{process: x}
-	if x.Learning == nil {
-		return m, nil
-	}
-	curve, err := learning.New(learning.Convention(x.Learning.Convention), x.Learning.Rate)
-	if err != nil {
+	if err := m.learn(x.Learning); err != nil {
 		return m, err
 	}
-	m.curve, m.share, m.scale = &curve, x.Learning.Share, 1
-	if x.Learning.PricedAt > 1 {
-		m.scale = 1 / curve.Unit(x.Learning.PricedAt)
+	for _, b := range x.CostPerStart {
+		m.atBreak = append(m.atBreak, b.Cost*m.learned(b.FromStarts))
 	}
 	return m, nil
+}
+
+// learn normalises the learning curve so that the stated price holds at the
+// start it was given for.
+func (m *maker) learn(l *plan.Learning) error {
+	if l == nil {
+		return nil
+	}
+	curve, err := learning.New(learning.Convention(l.Convention), l.Rate)
+	if err != nil {
+		return err
+	}
+	m.curve, m.share, m.scale = &curve, l.Share, 1
+	if l.PricedAt > 1 {
+		m.scale = 1 / curve.Unit(l.PricedAt)
+	}
+	return nil
 }
 
 func newGate(p *plan.Plan, x *plan.Inspection) gate {
