@@ -80,16 +80,13 @@ func (p *Pipeline) buildView(v RecipeView, cat *Catalogue, opt Options) (*viewLi
 	if err != nil {
 		return nil, nil, err
 	}
-	geometry := Planar{UMPerPx: v.UMPerPx, RotationDeg: v.RotationDeg, Mirror: v.Mirror}
+	geometry, err := geometryFor(v, cal)
+	if err != nil {
+		return nil, nil, err
+	}
 	hash := ""
 	if cal != nil {
 		hash = cal.Hash
-		if geometry.UMPerPx == 0 {
-			geometry.UMPerPx = cal.Scale.UMPerPx
-		}
-	}
-	if geometry.UMPerPx <= 0 {
-		return nil, nil, Invalid("view %q: no scale; give um_per_px in the recipe or a calibration with one", v.Name)
 	}
 	env := Environment{View: v.Name, Calibration: cal, Geometry: geometry, ReadFile: opt.ReadFile}
 	stages, form, err := p.buildStages(v.Stages, ScopeView, cat, env)
@@ -103,6 +100,22 @@ func (p *Pipeline) buildView(v RecipeView, cat *Catalogue, opt Options) (*viewLi
 	}
 	return &viewLine{spec: v, calibration: cal, geometry: geometry, stages: stages},
 		[]any{v.Name, v.Frames, geometry, hash, form}, nil
+}
+
+// geometryFor takes the scale of the recipe, or else the calibration's, and the
+// calibration's distortion.
+func geometryFor(v RecipeView, cal *Calibration) (Geometry, error) {
+	g := Planar{UMPerPx: v.UMPerPx, RotationDeg: v.RotationDeg, Mirror: v.Mirror}
+	if cal != nil && g.UMPerPx == 0 {
+		g.UMPerPx = cal.Scale.UMPerPx
+	}
+	if !(g.UMPerPx > 0) {
+		return nil, Invalid("view %q: no scale; give um_per_px in the recipe or a calibration with one", v.Name)
+	}
+	if cal != nil && cal.Distortion != nil {
+		return Distorted{Planar: g, Lens: *cal.Distortion}, nil
+	}
+	return g, nil
 }
 
 func calibrationFor(v RecipeView, opt Options) (*Calibration, error) {

@@ -33,4 +33,44 @@ type Calibration struct {
 	Noise               NoiseModel
 	Scale               Scale
 	MadeAt              string // RFC 3339
+
+	// What follows is there only where its frames were taken.
+	Distortion   *Distortion
+	Sizing       *Sizing
+	Sensor       *SensorTemperature
+	Reference    *ReferencePatch
+	PartEdge     *PartEdge
+	FixedPattern []PatternPixel
+}
+
+// SensorTemperature is what the frames of a calibration said of their camera.
+type SensorTemperature struct {
+	MeanC  float64 `json:"mean_c"` // °C
+	LowC   float64 `json:"low_c"`
+	HighC  float64 `json:"high_c"`
+	Frames int     `json:"frames"` // that said it
+}
+
+// ReferencePatch is a diffuse patch that the lamp lights in every frame.
+type ReferencePatch struct {
+	Box      Box     `json:"box"`
+	LevelDN  float64 `json:"level_dn"`  // mean above dark over the patch's good pixels
+	SpreadDN float64 `json:"spread_dn"` // standard deviation of that from frame to frame
+	Frames   int     `json:"frames"`    // from which it was taken
+}
+
+// PartEdge is the outline of a conforming part as the calibrated view shows it.
+type PartEdge struct {
+	WidthPx    float64 `json:"width_px"` // 10–90 %
+	DiameterPx float64 `json:"diameter_px"`
+	Frames     int     `json:"frames"`
+}
+
+// PatternPixel is a pixel that stands out of its 5 × 5 neighbours: by DarkDN without
+// light, and with light by Response times its level.
+type PatternPixel struct {
+	X        int     `json:"x"`
+	Y        int     `json:"y"`
+	DarkDN   float64 `json:"dark_dn"`
+	Response float64 `json:"response"`
 }

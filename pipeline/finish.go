@@ -86,7 +86,11 @@ func viewEvidence(r ViewResult) ViewEvidence {
 		v.Calibration = it.Calibration.Hash
 	}
 	if it.Geometry != nil {
-		_, _, v.UMPerPx = it.Geometry.ToStation(0, 0)
+		x, y := 0.0, 0.0
+		if it.Region != nil {
+			x, y = it.Region.CentreX, it.Region.CentreY
+		}
+		_, _, v.UMPerPx = it.Geometry.ToStation(x, y)
 	}
 	if it.Region != nil {
 		v.Region = regionEvidence(it.Region)
