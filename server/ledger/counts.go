@@ -68,6 +68,9 @@ type Counts struct {
 	Attempts    int64 // showings, whenever they were, of the units in Final
 	Binned      Tally // by the bin that the line reported, where it did
 	FirstBinned Tally // first attempts by that bin
+	// RetestAccepts are units of First that were not accepted there and were by the line at
+	// a later attempt, by the first attempt's verdict; Accept is always 0.
+	RetestAccepts Tally
 }
 
 // Counts answers a question, one row per group that holds anything, in order of time and
@@ -77,8 +80,8 @@ func (s *Store) Counts(ctx context.Context, q Question) ([]Counts, error) {
 	var v pipeline.Verdict
 	var n verdictCounts
 	a := answer{table: `rollup_verdicts`, keys: []string{`i.verdict`},
-		sums: []string{`showings`, `first_pass`, `final`, `attempts`, `binned`, `first_binned`},
-		into: []any{&v, &n.showings, &n.first, &n.final, &n.attempts, &n.binned, &n.firstBinned}}
+		sums: []string{`showings`, `first_pass`, `final`, `attempts`, `binned`, `first_binned`, `retest_accepts`},
+		into: []any{&v, &n.showings, &n.first, &n.final, &n.attempts, &n.binned, &n.firstBinned, &n.retestAccepts}}
 	err := s.ask(ctx, q, a, func(g Group) {
 		if len(out) == 0 || !out[len(out)-1].Group.equal(g) {
 			out = append(out, Counts{Group: g})
@@ -97,9 +100,11 @@ func (c *Counts) add(v pipeline.Verdict, n verdictCounts) {
 	case pipeline.Reject:
 		c.Showings.Reject, c.First.Reject, c.Final.Reject = n.showings, n.first, n.final
 		c.Binned.Reject, c.FirstBinned.Reject = n.binned, n.firstBinned
+		c.RetestAccepts.Reject = n.retestAccepts
 	case pipeline.Hold:
 		c.Showings.Hold, c.First.Hold, c.Final.Open = n.showings, n.first, n.final
 		c.Binned.Hold, c.FirstBinned.Hold = n.binned, n.firstBinned
+		c.RetestAccepts.Hold = n.retestAccepts
 	case inRework:
 		c.Final.Rework = n.final
 	}

@@ -25,6 +25,11 @@ func insert(ctx context.Context, tx *sql.Tx, in Inspection, t texts) error {
 	if err := insertJudgement(ctx, tx, in.ID, 0, in.Judgement); err != nil {
 		return err
 	}
+	if in.Check != nil {
+		if err := insertCheck(ctx, tx, in); err != nil {
+			return err
+		}
+	}
 	return touch(ctx, tx, in.Identity)
 }
 

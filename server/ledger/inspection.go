@@ -19,6 +19,7 @@ type Inspection struct {
 	LatencyMS float64   // from the last byte received to the verdict
 	Evidence  pipeline.Evidence
 	Judgement pipeline.Judgement // the line's
+	Check     *MasterCheck       // of a master that its recipe names; nil = none. Written, not read back
 
 	Counted time.Time // given by the ledger: the time under which the showing counts
 	Clock   Clock     // given by the ledger

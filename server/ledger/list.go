@@ -28,6 +28,7 @@ type Showing struct {
 	Judgements  []pipeline.Judgement
 	Disposition *Disposition
 	Outcomes    []Outcome
+	Suspicions  []Suspicion // in the story of a unit alone
 }
 
 // Showings is one page of a list, newest first.

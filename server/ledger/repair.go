@@ -62,9 +62,9 @@ func replaceBucket(ctx context.Context, tx *sql.Tx, b dirtyBucket, t *tally) err
 func insertTally(ctx context.Context, tx *sql.Tx, bucketUS int64, t *tally) error {
 	for k, n := range t.verdicts {
 		_, err := tx.ExecContext(ctx, `INSERT INTO rollup_verdicts (bucket_us, part, surface, process, lot, line, station, recipe, purpose, verdict,
-			showings, first_pass, final, attempts, binned, first_binned)
-			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16)`,
-			append(k.args(bucketUS), n.showings, n.first, n.final, n.attempts, n.binned, n.firstBinned)...)
+			showings, first_pass, final, attempts, binned, first_binned, retest_accepts)
+			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16, $17)`,
+			append(k.args(bucketUS), n.showings, n.first, n.final, n.attempts, n.binned, n.firstBinned, n.retestAccepts)...)
 		if err != nil {
 			return err
 		}

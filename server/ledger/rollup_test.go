@@ -127,6 +127,12 @@ func countUnit(counts map[string]Counts, u []*told) {
 	if u[0].Attempt == 1 {
 		c.First = plus(c.First, u[0].Judgement.Verdict)
 		c.FirstBinned = plus(c.FirstBinned, u[0].bin)
+		for _, x := range u[1:] {
+			if u[0].Judgement.Verdict != pipeline.Accept && x.Judgement.Verdict == pipeline.Accept {
+				c.RetestAccepts = plus(c.RetestAccepts, u[0].Judgement.Verdict)
+				break
+			}
+		}
 	}
 	counts[slot(u[0])] = c
 	for _, x := range u {

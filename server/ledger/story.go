@@ -9,7 +9,7 @@ import (
 )
 
 // Unit returns everything on record about a unit, oldest showing first, whatever the
-// purpose: evidence, all judgements, disposition, all outcomes. An empty part finds the
+// purpose: evidence, all judgements, disposition, all outcomes, masters that put it in doubt. An empty part finds the
 // unit id under every part. None on record is an error of kind NotFoundKind.
 func (s *Store) Unit(ctx context.Context, part, unit string) ([]Showing, error) {
 	w := &where{}
@@ -46,6 +46,9 @@ func (s *Store) tell(ctx context.Context, sh *Showing) error {
 		return err
 	}
 	if sh.Disposition, err = s.dispositionOf(ctx, sh.ID); err != nil {
+		return err
+	}
+	if sh.Suspicions, err = s.suspicionsOf(ctx, sh.ID); err != nil {
 		return err
 	}
 	return each(ctx, s.reader, func(r *sql.Rows) error {

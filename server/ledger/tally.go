@@ -1,6 +1,10 @@
 package ledger
 
-import "lapgate/pipeline"
+import (
+	"slices"
+
+	"lapgate/pipeline"
+)
 
 // cell is what a roll-up counts by within a bucket.
 type cell struct {
@@ -23,6 +27,9 @@ type verdictCounts struct {
 	attempts    int64 // showings of the units in final
 	binned      int64 // showings whose last reported bin this is
 	firstBinned int64 // first attempts whose last reported bin this is
+	// retestAccepts are first attempts with this verdict, not accept, that a later attempt
+	// of the unit was accepted after
+	retestAccepts int64
 }
 
 type cellReason struct {
@@ -78,12 +85,20 @@ func (t *tally) add(unit []rawShowing) {
 		f := t.verdict(entry.cell, last.lastWord())
 		f.final++
 		f.attempts += int64(len(unit))
+		if entry.attempt == 1 && entry.verdict != pipeline.Accept && acceptedLater(unit) {
+			t.verdict(entry.cell, entry.verdict).retestAccepts++
+		}
 	}
 	for i, r := range unit {
 		if t.holds(r) {
 			t.addShowing(r, i == 0 && r.attempt == 1)
 		}
 	}
+}
+
+// acceptedLater reports whether the line accepted a showing after the first.
+func acceptedLater(unit []rawShowing) bool {
+	return slices.ContainsFunc(unit[1:], func(r rawShowing) bool { return r.verdict == pipeline.Accept })
 }
 
 func (t *tally) addShowing(r rawShowing, first bool) {
