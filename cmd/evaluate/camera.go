@@ -15,7 +15,7 @@ func evaluateCamera(o options, _ io.Writer) (*result, error) {
 		return nil, err
 	}
 	r := numbers(got)
-	value := func(name string) float64 { v, _ := got[name].(float64); return v }
+	value := func(name string) float64 { return numberOf(got[name]) }
 	r.atMost("corrected spread over the noise floor, 3 frames", value("corrected_over_floor"), 1.02)
 	r.atMost("corrected spread over the noise floor, single frames", value("one_corrected_over_floor"), 1.02)
 	r.atLeast("low-frequency shading, raw over corrected", value("low_frequency_ratio"), 5)
@@ -45,7 +45,21 @@ func numbers(from map[string]any) *result {
 			r.plain(name, v, 0, "")
 		case int:
 			r.plain(name, float64(v), 0, "")
+		case figure:
+			v.Name = name
+			r.add(v)
 		}
 	}
 	return r
+}
+
+// numberOf returns the value of a number with or without its interval; 0 for anything else.
+func numberOf(v any) float64 {
+	switch v := v.(type) {
+	case float64:
+		return v
+	case figure:
+		return v.Value
+	}
+	return 0
 }

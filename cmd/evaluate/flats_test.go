@@ -17,8 +17,7 @@ func dataDir(t *testing.T) string {
 
 func within(t *testing.T, from map[string]any, name string, low, high float64) {
 	t.Helper()
-	v, ok := from[name].(float64)
-	if !ok || !(v >= low && v <= high) {
+	if v := numberOf(from[name]); !(v >= low && v <= high) {
 		t.Errorf("%s: got %v, want %v to %v", name, from[name], low, high)
 	}
 }

@@ -1,94 +1,70 @@
 package main
 
 import (
-	"encoding/csv"
-	"os"
-	"path/filepath"
-	"strconv"
-
+	"lapgate/pipeline"
 	"lapgate/pipeline/calibrate"
+	"lapgate/pipeline/calibrate/emva"
 	"lapgate/pipeline/raster"
+	"lapgate/pipeline/raster/files"
 )
 
-// addRamp adds K, quantum efficiency and the number of levels fitted to out.
+// addRamp adds the EMVA 1288 figures of the ramp to out. The interval of K is that of
+// the steps below 70 % of saturation drawn with replacement, the saturation point kept.
 func addRamp(out map[string]any, dir string) error {
-	photons, bright, dark, err := readRamp(dir)
+	steps, err := calibrate.RampFolder(dir, pipeline.Capture{}, files.Options{SignificantBits: 12})
 	if err != nil {
 		return err
 	}
-	peak := 0
-	for i, l := range bright {
-		if l.VarianceDN2 > bright[peak].VarianceDN2 {
-			peak = i
-		}
-	}
-	limit := 0.7 * (bright[peak].MeanDN - dark[peak].MeanDN)
-	n := 0
-	for n < len(bright) && bright[n].MeanDN-dark[n].MeanDN <= limit {
-		n++
-	}
-	gain, err := calibrate.SystemGain(bright[:n], dark[:n])
+	ramp, _, err := calibrate.MeasureRamp(steps, nil)
 	if err != nil {
 		return err
 	}
-	var xy, xx float64
-	for i := range n {
-		xy += photons[i] * (bright[i].MeanDN - dark[i].MeanDN)
-		xx += photons[i] * photons[i]
-	}
-	out["gain_ramp_dn_per_e"], out["quantum_efficiency"], out["ramp_levels"] = gain, xy/xx/gain, n
+	f := ramp.Figures
+	low, high := gainInterval(ramp)
+	out["gain_ramp_dn_per_e"] = figure{Value: f.GainDNPerE, Low: &low, High: &high, N: f.Levels, Note: "levels; published full set of 50: 0.2801"}
+	out["gain_ramp_uncertainty"] = f.GainU
+	out["quantum_efficiency"] = f.Efficiency
+	out["ramp_levels"] = f.Levels
+	out["ramp_dark_noise_e"] = f.DarkNoiseE
+	out["ramp_saturation_e"] = f.SaturationE
+	out["ramp_snr_max_db"] = emva.Decibels(f.SNRMax)
+	out["ramp_dynamic_range_db"] = emva.Decibels(f.DynamicRange)
+	out["ramp_linearity_low_percent"] = f.LinearityLow
+	out["ramp_linearity_high_percent"] = f.LinearityHigh
+	out["ramp_dsnu_e"] = emva.DSNU(ramp.Dark.VarianceDN2, f.GainDNPerE)
+	out["ramp_prnu_percent"] = emva.PRNU(ramp.Bright.VarianceDN2, ramp.Dark.VarianceDN2, ramp.Bright.MeanDN, ramp.Dark.MeanDN)
 	return nil
 }
 
-// readRamp reads ramp.csv and the pairs of frames it names.
-func readRamp(dir string) (photons []float64, bright, dark []calibrate.Level, err error) {
-	f, err := os.Open(filepath.Join(dir, "ramp.csv"))
-	if err != nil {
-		return nil, nil, nil, err
-	}
-	defer f.Close()
-	rows, err := csv.NewReader(f).ReadAll()
-	if err != nil {
-		return nil, nil, nil, err
-	}
-	for _, row := range rows[1:] {
-		p, err := strconv.ParseFloat(row[1], 64)
-		if err != nil {
-			return nil, nil, nil, err
+func gainInterval(r calibrate.Ramp) (low, high float64) {
+	var bright, dark []emva.Level
+	for _, p := range r.Points {
+		if p.Bright.MeanDN-p.Dark.MeanDN <= emva.LinearShare*r.Figures.SaturationDN {
+			bright, dark = append(bright, p.Bright), append(dark, p.Dark)
 		}
-		b, err := readPair(dir, row[2], row[3])
-		if err != nil {
-			return nil, nil, nil, err
-		}
-		d, err := readPair(dir, row[4], row[5])
-		if err != nil {
-			return nil, nil, nil, err
-		}
-		photons, bright, dark = append(photons, p), append(bright, b), append(dark, d)
 	}
-	return photons, bright, dark, nil
+	i := bootstrap(len(bright), func(drawn []int) float64 {
+		b, d := make([]emva.Level, len(drawn)), make([]emva.Level, len(drawn))
+		for k, n := range drawn {
+			b[k], d[k] = bright[n], dark[n]
+		}
+		gain, err := emva.SystemGain(b, d)
+		if err != nil { // only the darkest step was drawn
+			return r.Figures.GainDNPerE
+		}
+		return gain
+	})
+	return i.Low, i.High
 }
 
-func readPair(dir, a, b string) (calibrate.Level, error) {
-	fa, err := readFrame12(filepath.Join(dir, a))
-	if err != nil {
-		return calibrate.Level{}, err
-	}
-	fb, err := readFrame12(filepath.Join(dir, b))
-	if err != nil {
-		return calibrate.Level{}, err
-	}
-	return pairLevel(fa.Raw, fb.Raw)
-}
-
-func pairLevel(a, b raster.Raw) (calibrate.Level, error) {
+func pairLevel(a, b raster.Raw) (emva.Level, error) {
 	ca, err := a.Counts()
 	if err != nil {
-		return calibrate.Level{}, err
+		return emva.Level{}, err
 	}
 	cb, err := b.Counts()
 	if err != nil {
-		return calibrate.Level{}, err
+		return emva.Level{}, err
 	}
-	return calibrate.Pair(ca, cb), nil
+	return emva.Pair(ca, cb), nil
 }

@@ -7,6 +7,7 @@ import (
 	"sync"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/calibrate/emva"
 	"lapgate/pipeline/raster"
 )
 
@@ -64,7 +65,7 @@ func (b *badSet) noisy(s *stack, typical float64) {
 	if int(n) < s.scene.rules.NoisyFrames {
 		return
 	}
-	limit := s.scene.rules.NoisySigma * s.scene.rules.NoisySigma * max(typical, minDarkVariance)
+	limit := s.scene.rules.NoisySigma * s.scene.rules.NoisySigma * max(typical, emva.MinDarkVariance)
 	for i, q := range s.squares {
 		sum := uint64(s.sum[i])
 		variance := float64(n*q-sum*sum) / float64(n*(n-1))

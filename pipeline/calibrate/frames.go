@@ -22,6 +22,7 @@ import (
 type Frame struct {
 	Name    string           // of its file, for messages and provenance
 	Capture pipeline.Capture // settings; format and size are taken from Raw
+	SensorC *float64         // °C, where the camera says
 	Raw     raster.Raw
 }
 
@@ -75,12 +76,38 @@ func Folder(dir string, stated pipeline.Capture, o files.Options) iter.Seq2[Fram
 				continue
 			}
 			path := filepath.Join(dir, name)
-			raw, err := files.Read(path, o)
-			if !yield(Frame{Name: path, Capture: capture, Raw: raw}, err) || err != nil {
+			f, err := readFrame(path, capture, o)
+			if !yield(f, err) || err != nil {
 				return
 			}
 		}
 	}
+}
+
+// readFrame reads a frame and, from the JSON sidecar of the same name where there is one,
+// the camera's temperature.
+func readFrame(path string, c pipeline.Capture, o files.Options) (Frame, error) {
+	raw, err := files.Read(path, o)
+	if err != nil {
+		return Frame{}, err
+	}
+	f := Frame{Name: path, Capture: c, Raw: raw}
+	sidecar := strings.TrimSuffix(path, filepath.Ext(path)) + ".json"
+	text, err := os.ReadFile(sidecar)
+	if errors.Is(err, fs.ErrNotExist) {
+		return f, nil
+	}
+	var header struct {
+		SensorC *float64 `json:"sensor_c"`
+	}
+	if err == nil {
+		err = json.Unmarshal(text, &header)
+	}
+	if err != nil {
+		return Frame{}, fmt.Errorf("%s: %w", sidecar, err)
+	}
+	f.SensorC = header.SensorC
+	return f, nil
 }
 
 func folderCapture(dir string, c pipeline.Capture) (pipeline.Capture, error) {

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/calibrate/emva"
 	"lapgate/pipeline/raster"
 	"lapgate/pipeline/raster/files"
 )
@@ -84,7 +85,7 @@ type builder struct {
 	req   Request
 	cal   *pipeline.Calibration
 	from  Provenance
-	level Level // dark
+	level emva.Level // dark
 	gain  float64
 	bad   badSet
 	raw   *raster.Plane // response in DN
@@ -124,7 +125,7 @@ func (b *builder) dark(in Inputs) error {
 	b.from.Frames = append(b.from.Frames, s.files...)
 	b.bad.mask = raster.NewMask(s.width, s.height)
 	b.bad.saturated(s.saturated)
-	b.bad.hot(b.cal.Dark, math.Sqrt(max(b.level.VarianceDN2, minDarkVariance)/float64(len(s.files))), b.req.Rules)
+	b.bad.hot(b.cal.Dark, math.Sqrt(max(b.level.VarianceDN2, emva.MinDarkVariance)/float64(len(s.files))), b.req.Rules)
 	b.bad.noisy(s, b.level.VarianceDN2)
 	return nil
 }
@@ -164,7 +165,7 @@ func (b *builder) checkBright(used []SourceFrame) error {
 func (b *builder) fitGain(s *stack) error {
 	all := s.tileLevels()
 	limit := b.req.Rules.LinearShare * float64(b.cal.Capture.Format.MaxCount())
-	var linear []Level
+	var linear []emva.Level
 	for _, l := range all {
 		if l.MeanDN <= limit {
 			linear = append(linear, l)
@@ -173,7 +174,7 @@ func (b *builder) fitGain(s *stack) error {
 	if len(linear) == 0 {
 		linear = all
 	}
-	gain, err := SystemGain(linear, []Level{b.level})
+	gain, err := emva.SystemGain(linear, []emva.Level{b.level})
 	if err != nil {
 		return pipeline.Invalid("response: %w", err)
 	}

@@ -6,6 +6,7 @@ import (
 	"iter"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/calibrate/emva"
 	"lapgate/pipeline/raster"
 )
 
@@ -20,8 +21,8 @@ type stack struct {
 	squares       []uint64 // of the counts; kept for dark frames only
 	saturated     []bool   // in any frame
 	first, last   []uint16
-	pairs         []Level  // of each two frames in a row
-	tiles         [][]tile // of the same pairs
+	pairs         []emva.Level // of each two frames in a row
+	tiles         [][]tile     // of the same pairs
 }
 
 // gather takes all frames of one kind and refuses the first that does not fit.
@@ -120,7 +121,7 @@ func (s *stack) compare(counts []uint16) error {
 	if err := s.scene.checkSteady(s.first, counts, s.width, tilesOf(s.first, counts, s.width, s.height)); err != nil {
 		return fmt.Errorf("against %s: %w", s.files[0].File, err)
 	}
-	level := Pair(s.last, counts)
+	level := emva.Pair(s.last, counts)
 	if level.VarianceDN2 == 0 {
 		return errors.New("same pixels as the frame before, want a new capture: a copied frame has no noise")
 	}
@@ -150,8 +151,8 @@ func (s *stack) mean() *raster.Plane {
 }
 
 // tileLevels returns mean and temporal variance of each tile, over all pairs.
-func (s *stack) tileLevels() []Level {
-	out := make([]Level, len(s.tiles[0]))
+func (s *stack) tileLevels() []emva.Level {
+	out := make([]emva.Level, len(s.tiles[0]))
 	n := float64(len(s.tiles))
 	for _, pair := range s.tiles {
 		for i, t := range pair {
@@ -163,11 +164,11 @@ func (s *stack) tileLevels() []Level {
 }
 
 // darkLevel returns the median over the tiles, which a few noisy pixels do not move.
-func (s *stack) darkLevel() Level {
+func (s *stack) darkLevel() emva.Level {
 	var means, vars []float64
 	for _, l := range s.tileLevels() {
 		means = append(means, l.MeanDN)
 		vars = append(vars, l.VarianceDN2)
 	}
-	return Level{MeanDN: median(means), VarianceDN2: median(vars)}
+	return emva.Level{MeanDN: median(means), VarianceDN2: median(vars)}
 }

@@ -3,6 +3,8 @@ package calibrate
 import (
 	"fmt"
 	"math"
+
+	"lapgate/pipeline/calibrate/emva"
 )
 
 // Limits on what noise can do to a tile. A tile of 1 024 pixels gives its variance to
@@ -23,7 +25,7 @@ const (
 // scene is what is known when two frames are compared: the dark level, and K where it
 // has been found.
 type scene struct {
-	dark  Level
+	dark  emva.Level
 	gain  float64
 	lit   bool // false for the dark frames themselves
 	rules Rules
@@ -99,7 +101,7 @@ func wholeImage(tiles []tile) (mean, diff float64) {
 // light, K being the median over the lit tiles where it is not known yet.
 func (s scene) expectedVariance(tiles []tile) []float64 {
 	out := make([]float64, len(tiles))
-	typical := max(median(variances(tiles)), minDarkVariance)
+	typical := max(median(variances(tiles)), emva.MinDarkVariance)
 	gain := s.gain
 	if s.lit && gain == 0 {
 		gain = s.typicalGain(tiles)
@@ -107,7 +109,7 @@ func (s scene) expectedVariance(tiles []tile) []float64 {
 	for i, t := range tiles {
 		out[i] = typical
 		if s.lit {
-			out[i] = max(s.dark.VarianceDN2, minDarkVariance) + gain*max(t.mean-s.dark.MeanDN, 0)
+			out[i] = max(s.dark.VarianceDN2, emva.MinDarkVariance) + gain*max(t.mean-s.dark.MeanDN, 0)
 		}
 	}
 	return out

@@ -1,0 +1,45 @@
+package emva
+
+import "math"
+
+// linearity fits mean above dark = a + b·light over the steps between 5 and 95 % of
+// saturation so that the relative deviations are least (weights 1/y²), and reports the
+// lowest and highest deviation from the line in percent (EMVA Standard 1288). light is
+// in photons, or exposure where those are not known.
+func (f *Figures) linearity(ramp []Point) {
+	var x, y []float64
+	for _, p := range ramp {
+		light := p.Photons
+		if f.Responsivity == 0 {
+			light = p.ExposureUS
+		}
+		if s := p.signal(); s >= 0.05*f.SaturationDN && s <= 0.95*f.SaturationDN {
+			x, y = append(x, light), append(y, s)
+		}
+	}
+	a, b, ok := relativeLine(x, y)
+	if !ok {
+		return
+	}
+	f.LinearityLevels = len(x)
+	f.LinearityLow, f.LinearityHigh = math.Inf(1), math.Inf(-1)
+	for i, v := range x {
+		line := a + b*v
+		deviation := 100 * (y[i] - line) / line
+		f.LinearityLow, f.LinearityHigh = min(f.LinearityLow, deviation), max(f.LinearityHigh, deviation)
+	}
+}
+
+// relativeLine minimises Σ((y − a − b·x)/y)². It needs three different x.
+func relativeLine(x, y []float64) (a, b float64, ok bool) {
+	var w, wx, wy, wxx, wxy float64
+	for i, v := range x {
+		k := 1 / (y[i] * y[i])
+		w, wx, wy, wxx, wxy = w+k, wx+k*v, wy+k*y[i], wxx+k*v*v, wxy+k*v*y[i]
+	}
+	d := w*wxx - wx*wx
+	if len(x) < 3 || !(d > 1e-12*w*wxx) {
+		return 0, 0, false
+	}
+	return (wy*wxx - wx*wxy) / d, (w*wxy - wx*wy) / d, true
+}
