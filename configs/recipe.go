@@ -20,6 +20,7 @@ type recipeFile struct {
 	MaxAttempts   int           // showings of a unit's surface; 0 = no limit
 	MinCoverage   *float64      // share of the region that must be inspected, 0 to 1; must be given
 	ViewTimeoutMS int           // how long to wait for all views of a showing; 0 = the server's setting
+	Masters       []masterFile  // units that must be found every shift; none = the station is not held to any
 }
 
 // viewFile is one view of a recipe as it is written.
@@ -94,6 +95,7 @@ func (c *recipeReader) recipe(w recipeFile) *pipeline.Recipe {
 	r.Unit = c.stages(w.Unit, "unit", pipeline.ScopeUnit)
 	r.MinCoverage = c.coverage(w.MinCoverage)
 	r.Judge = c.judge(w.Limits, r.MinCoverage)
+	r.Masters = c.masters(w)
 	return r
 }
 

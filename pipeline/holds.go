@@ -15,6 +15,8 @@ const (
 	ReasonNoRecipe    = "no recipe"
 	ReasonCoverage    = "coverage"
 	ReasonAttempts    = "too many attempts"
+	ReasonOverdue     = "master overdue"
+	ReasonMaster      = "master failed"
 )
 
 // HoldReasons returns why evidence cannot be accepted whatever its limits say:

@@ -13,6 +13,7 @@ type Recipe struct {
 	MinCoverage             float64     // share below which a unit is held
 	MaxAttempts             int         // showings of a unit's surface; 0 = no limit
 	ViewTimeoutMS           int         // how long to wait for all views of a showing
+	Masters                 []MasterSpec
 }
 
 // RecipeView is one view of a recipe.

@@ -3,6 +3,7 @@ package intake
 import (
 	"context"
 	"fmt"
+	"slices"
 	"time"
 
 	"lapgate/pipeline"
@@ -55,7 +56,11 @@ func (s *showing) conclude(ctx context.Context) (Verdict, error) {
 	if err != nil {
 		return Verdict{}, err
 	}
-	record := s.judge(ctx, id, digest)
+	record, leave, err := s.judgeAtGate(ctx, id, digest)
+	if err != nil {
+		return Verdict{}, err
+	}
+	defer leave()
 	s.keep(&record)
 	stored, fresh, err := s.intake.ledger.Record(ctx, record)
 	if err != nil {
@@ -130,14 +135,14 @@ func (s *showing) identify(ctx context.Context) (pipeline.Identity, error) {
 	return id, err
 }
 
-func (s *showing) judge(ctx context.Context, id pipeline.Identity, digest string) ledger.Inspection {
+func (s *showing) judge(ctx context.Context, id pipeline.Identity, digest string, holds []pipeline.Failure) ledger.Inspection {
 	now := s.intake.settings.Now()
-	failures := s.failures
+	failures := append(slices.Clone(s.failures), holds...)
 	late := s.late(now)
 	if late != nil {
 		failures = append(failures, *late)
 	}
-	if most := s.pipe.Recipe.MaxAttempts; most > 0 && id.Attempt > most {
+	if most := s.pipe.Recipe.MaxAttempts; most > 0 && id.Attempt > most && id.Purpose != pipeline.Master {
 		failures = append(failures, pipeline.Failure{Reason: pipeline.ReasonAttempts,
 			Detail: fmt.Sprintf("this is attempt %d, the recipe allows %d; a person has to decide", id.Attempt, most)})
 	}

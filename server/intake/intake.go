@@ -41,6 +41,17 @@ type Settings struct {
 	// nil; it must not block, and calls release once the pixels are no longer needed (see
 	// images.Store.Offer). Nil = none kept.
 	Keep func(v pipeline.Verdict, frames []pipeline.Frame, release func()) []string
+	// Gate keeps stations from judging units while a master failed or is overdue; nil = none.
+	Gate Gate
+}
+
+// Gate is what intake asks before it judges a showing; see masters.Gate. conditions say
+// what its frames were made with.
+type Gate interface {
+	// Enter returns what holds the unit; leave is called once it is on record or given up.
+	Enter(ctx context.Context, id pipeline.Identity, r *pipeline.Recipe, conditions map[string]string) (holds []pipeline.Failure, leave func(), err error)
+	// Check says what a showing of a master proved; nil = it is none.
+	Check(r *pipeline.Recipe, in ledger.Inspection, conditions map[string]string) *ledger.MasterCheck
 }
 
 // Intake assembles showings and has them judged. It is safe for concurrent use.

@@ -125,7 +125,7 @@ func TestChecksComeBackWhole(t *testing.T) {
 		ctx := context.Background()
 		in := mustRecord(t, s, shown("M1", 1, noon, CheckPass))
 		want := in.Check.of(in)
-		got, err := s.LastCheck(ctx, PlaceOf(in.Identity), "M1", CheckPass)
+		got, err := s.LastCheck(ctx, PlaceOf(in.Identity), "M1", CheckPass, "")
 		if err != nil || !reflect.DeepEqual(got, want) {
 			t.Errorf("got %+v, %v\nwant %+v", got, err, want)
 		}
@@ -139,7 +139,9 @@ func TestChecksComeBackWhole(t *testing.T) {
 		if list, err = s.Checks(ctx, CheckFilter{From: noon.Add(time.Minute)}, 1); err != nil || len(list) != 1 || list[0].Result != CheckFail {
 			t.Errorf("from a minute past noon: %+v, %v", list, err)
 		}
-		_, err = s.LastCheck(ctx, PlaceOf(in.Identity), "M9", CheckPass)
+		_, err = s.LastCheck(ctx, PlaceOf(in.Identity), "M9", CheckPass, "")
+		wantKind(t, err, pipeline.NotFoundKind)
+		_, err = s.LastCheck(ctx, PlaceOf(in.Identity), "M1", CheckPass, "sha256:00")
 		wantKind(t, err, pipeline.NotFoundKind)
 	})
 }
