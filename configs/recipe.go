@@ -29,6 +29,7 @@ type viewFile struct {
 	Light       string
 	Frames      int        // frames in the view; 0 is read as 1
 	Calibration string     // "required" (also when empty) or "none"
+	Proofs      string     // "required" (also when empty) or "none": nothing need be proven
 	UMPerPx     float64    // stated scale; 0 = the calibration's
 	RotationDeg float64    // of the part as this camera sees it
 	Mirror      bool       // whether this camera sees the part mirrored
@@ -131,11 +132,12 @@ func (c *recipeReader) view(v viewFile, path string) pipeline.RecipeView {
 		fmt.Sprintf("1 to %d", pipeline.MaxViewFrames))
 	c.wrong(v.Calibration != "" && v.Calibration != "none" && v.Calibration != "required", path+".calibration",
 		fmt.Sprintf("got %q", v.Calibration), "required or none")
+	c.wrong(v.Proofs != "" && v.Proofs != "none" && v.Proofs != "required", path+".proofs", fmt.Sprintf("got %q", v.Proofs), "required or none")
 	c.wrong(v.UMPerPx < 0 || v.UMPerPx > 1e5, path+".um_per_px", fmt.Sprintf("got %g", v.UMPerPx), "0 to 1e5 µm; 0 = the calibration's")
 	c.wrong(v.Calibration == "none" && v.UMPerPx == 0, path+".um_per_px", "no scale is given and no calibration has one", "µm per pixel")
 	c.wrong(math.Abs(v.RotationDeg) > 360, path+".rotation_deg", fmt.Sprintf("got %g", v.RotationDeg), "-360 to 360")
 	c.wrong(len(v.Stages) == 0, path+".stages", "no stage is given", "at least one")
-	return pipeline.RecipeView{Name: v.Name, Light: v.Light, Frames: max(v.Frames, 1), NoCalibration: v.Calibration == "none",
+	return pipeline.RecipeView{Name: v.Name, Light: v.Light, Frames: max(v.Frames, 1), NoCalibration: v.Calibration == "none", NoProofs: v.Proofs == "none",
 		UMPerPx: v.UMPerPx, RotationDeg: v.RotationDeg, Mirror: v.Mirror, Stages: c.stages(v.Stages, path+".stages", pipeline.ScopeView)}
 }
 

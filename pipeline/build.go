@@ -88,7 +88,7 @@ func (p *Pipeline) buildView(v RecipeView, cat *Catalogue, opt Options) (*viewLi
 	if cal != nil {
 		hash = cal.Hash
 	}
-	env := Environment{View: v.Name, Calibration: cal, Geometry: geometry, ReadFile: opt.ReadFile}
+	env := Environment{View: v.Name, Calibration: cal, Calibrations: opt.Calibrations, Geometry: geometry, ReadFile: opt.ReadFile}
 	stages, form, err := p.buildStages(v.Stages, ScopeView, cat, env)
 	if err != nil {
 		return nil, nil, fmt.Errorf("view %q: %w", v.Name, err)
@@ -99,7 +99,7 @@ func (p *Pipeline) buildView(v RecipeView, cat *Catalogue, opt Options) (*viewLi
 		}
 	}
 	return &viewLine{spec: v, calibration: cal, geometry: geometry, stages: stages},
-		[]any{v.Name, v.Frames, geometry, hash, form}, nil
+		[]any{v.Name, v.Frames, geometry, hash, v.NoProofs, form}, nil
 }
 
 // geometryFor takes the scale of the recipe, or else the calibration's, and the

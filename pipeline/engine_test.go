@@ -5,6 +5,7 @@ import (
 	"encoding/json"
 	"errors"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -58,7 +59,7 @@ func (j countJudge) Judge(e pipeline.Evidence) (pipeline.Verdict, []pipeline.Rea
 func (j countJudge) Canonical() []byte { return []byte(`{"most":1}`) }
 
 func recipe(stages ...string) *pipeline.Recipe {
-	v := pipeline.RecipeView{Name: "ring", Frames: 1, NoCalibration: true, UMPerPx: 10}
+	v := pipeline.RecipeView{Name: "ring", Frames: 1, NoCalibration: true, NoProofs: true, UMPerPx: 10}
 	for _, s := range stages {
 		v.Stages = append(v.Stages, pipeline.StageSpec{Type: s})
 	}
@@ -246,5 +247,31 @@ func TestFusing(t *testing.T) {
 	}
 	if build(t, recipe("a", "b"), c).DetectionHash == build(t, recipe("b", "a"), c).DetectionHash {
 		t.Error("the order of stages must show in the detection hash")
+	}
+}
+
+// A view whose recipe does not say that nothing need be proven is held unless light,
+// part and live data are.
+func TestViewThatProvesNothingIsHeld(t *testing.T) {
+	proves := pipeline.RequiredProofs()
+	prove := failing("prove", func(_ context.Context, i *pipeline.Item) error {
+		i.Coverage.Share = 1
+		for _, name := range proves {
+			i.Prove(pipeline.Proof{Name: name, OK: true})
+		}
+		return nil
+	})
+	r := recipe("prove")
+	r.Views[0].NoProofs = false
+	p := build(t, r, catalogue(t, nil, prove))
+	if _, j := inspect(t, p); j.Verdict != pipeline.Accept {
+		t.Errorf("all proven: got %+v", j)
+	}
+	for i, name := range pipeline.RequiredProofs() {
+		proves = slices.Delete(pipeline.RequiredProofs(), i, i+1)
+		_, j := inspect(t, p)
+		if j.Verdict != pipeline.Hold || len(j.Reasons) != 1 || j.Reasons[0].Name != "not proven: "+name {
+			t.Errorf("without %s: got %+v", name, j)
+		}
 	}
 }

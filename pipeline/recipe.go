@@ -22,6 +22,7 @@ type RecipeView struct {
 	Light         string
 	Frames        int     // frames in the view, from 1
 	NoCalibration bool    // the stated choice "none"
+	NoProofs      bool    // the stated choice that the view need prove nothing
 	UMPerPx       float64 // stated scale; 0 = the calibration's
 	RotationDeg   float64
 	Mirror        bool

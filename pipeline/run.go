@@ -36,6 +36,7 @@ func (p *Pipeline) RunView(ctx context.Context, id Identity, view View) ViewResu
 			return res
 		}
 	}
+	demandProofs(line.spec, res.Item)
 	numberDefects(res.Item)
 	return res
 }
@@ -48,11 +49,11 @@ func proveSettings(item *Item) bool {
 	}
 	for _, f := range item.Frames {
 		if err := item.Calibration.Match(f.Header); err != nil {
-			item.Prove(Proof{Name: "settings", OK: false, Reason: err.Error()})
+			item.Prove(Proof{Name: ProofSettings, OK: false, Reason: err.Error()})
 			return false
 		}
 	}
-	item.Prove(Proof{Name: "settings", OK: true})
+	item.Prove(Proof{Name: ProofSettings, OK: true})
 	return true
 }
 

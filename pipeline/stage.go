@@ -32,10 +32,11 @@ const (
 
 // Environment is what a stage is built in.
 type Environment struct {
-	View        string
-	Calibration *Calibration                      // nil where the recipe states "none"
-	Geometry    Geometry                          // scale, rotation and mirror of the view; origin unknown yet
-	ReadFile    func(name string) ([]byte, error) // files beside the recipe; nil = none
+	View         string
+	Calibration  *Calibration                      // nil where the recipe states "none"
+	Calibrations map[string]*Calibration           // of all views of the recipe, by name
+	Geometry     Geometry                          // scale, rotation and mirror of the view; origin unknown yet
+	ReadFile     func(name string) ([]byte, error) // files beside the recipe; nil = none
 }
 
 // Factory makes a stage of one type and describes it.

@@ -33,8 +33,8 @@ max_attempts: 3
 min_coverage: 0.9
 view_timeout_ms: 400
 views:
-  - {name: ring, calibration: none, um_per_px: 10, stages: [{type: region}, {type: flatfield}, {type: darkfield, grid_px: 32}, {type: blobs}]}
-  - {name: bar, calibration: none, um_per_px: 10, stages: [{type: region}, {type: flatfield}, {type: darkfield, grid_px: 32}, {type: blobs}]}
+  - {name: ring, calibration: none, proofs: none, um_per_px: 10, stages: [{type: region}, {type: flatfield}, {type: darkfield, grid_px: 32}, {type: blobs}]}
+  - {name: bar, calibration: none, proofs: none, um_per_px: 10, stages: [{type: region}, {type: flatfield}, {type: darkfield, grid_px: 32}, {type: blobs}]}
 unit: [{type: merge}, {type: classify}]
 limits:
   - {name: dig too large, each: diameter_um, at_most: 60, unit: um}

@@ -27,7 +27,7 @@ max_attempts: 0
 min_coverage: 0.9
 view_timeout_ms: 5000
 views:
-  - {name: ring, calibration: none, um_per_px: 10, stages: [{type: region}, {type: flatfield}, {type: darkfield, grid_px: 32}, {type: blobs}]}
+  - {name: ring, calibration: none, proofs: none, um_per_px: 10, stages: [{type: region}, {type: flatfield}, {type: darkfield, grid_px: 32}, {type: blobs}]}
 limits:
   - {name: dig too large, each: diameter_um, at_most: 60, unit: um}
 `
