@@ -51,6 +51,7 @@ type rig struct {
 	inspectpb.InspectionServiceClient
 	yield   inspectpb.YieldServiceClient
 	recipes inspectpb.RecipeServiceClient
+	volume  inspectpb.VolumeServiceClient
 }
 
 // rigOptions change what a test is about; zero values are roomy.
@@ -95,6 +96,7 @@ func newRig(t *testing.T, o rigOptions) *rig {
 	must(t, err)
 	r.InspectionServiceClient = inspectpb.NewInspectionServiceClient(conn)
 	r.yield, r.recipes = inspectpb.NewYieldServiceClient(conn), inspectpb.NewRecipeServiceClient(conn)
+	r.volume = inspectpb.NewVolumeServiceClient(conn)
 	t.Cleanup(func() {
 		conn.Close()
 		g.Stop()

@@ -75,6 +75,7 @@ func NewGRPC(d Deps, o GRPCOptions) (*grpc.Server, *health.Server) {
 	inspectpb.RegisterInspectionServiceServer(g, &Inspection{deps: d})
 	inspectpb.RegisterRecipeServiceServer(g, &Recipes{deps: d})
 	inspectpb.RegisterYieldServiceServer(g, &Yield{deps: d})
+	inspectpb.RegisterVolumeServiceServer(g, &Volume{deps: d})
 	h := health.NewServer()
 	healthpb.RegisterHealthServer(g, h)
 	if o.Reflection {

@@ -80,7 +80,8 @@ func yieldOf(c ledger.Counts) (*inspectpb.Yield, error) {
 	}
 	return &inspectpb.Yield{Group: group, Units: int32(c.Final.Total()), Inspections: int32(c.Showings.Total()),
 		Accepted: int32(c.Showings.Accept), Rejected: int32(c.Showings.Reject), Held: int32(c.Showings.Hold),
-		FirstPass: rate(first), FinalIfHoldsFail: rate(final.Low), FinalIfHoldsPass: rate(final.High), OpenHolds: int32(open)}, nil
+		FirstPass: rate(first), FinalIfHoldsFail: rate(final.Low), FinalIfHoldsPass: rate(final.High), OpenHolds: int32(open),
+		FirstRejected: int32(c.First.Reject), FirstHeld: int32(c.First.Hold)}, nil
 }
 
 func tally(t ledger.Tally) yield.Tally {

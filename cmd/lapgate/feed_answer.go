@@ -215,6 +215,9 @@ func (f *feeder) refuse(s *showing, h *held, code codes.Code, why string) {
 		f.release(h)
 	}
 	if code != codes.InvalidArgument && code != codes.DataLoss {
+		for _, key := range s.keys {
+			f.reported[key] = true // frames of it may still come from the source
+		}
 		f.finish(s)
 	}
 }

@@ -47,7 +47,7 @@ type feeder struct {
 	order      []*showing
 	active     int
 	queued     int             // frames in memory that are to be sent
-	reported   map[string]bool // showings held because of a file that could not be taken
+	reported   map[string]bool // showings whose hold was told: a file or frame could not be taken
 	byNumber   map[uint32]sentFrame
 	lastNumber uint32
 	counts     feedCounts

@@ -35,6 +35,7 @@ func askLedger(ctx context.Context, server string, f plan.LedgerFilter) (plan.Co
 	if err != nil {
 		return plan.Counts{}, fmt.Errorf("asking %s for %s: %w; give --server or --ledger-counts", server, f, err)
 	}
-	return plan.Counts{Started: int(total.GetUnits()), Accepted: int(total.GetAccepted()),
-		Rejected: int(total.GetRejected()), Held: int(total.GetHeld())}, nil
+	first := total.GetFirstPass()
+	return plan.Counts{Started: int(first.GetN()), Accepted: int(first.GetK()),
+		Rejected: int(total.GetFirstRejected()), Held: int(total.GetFirstHeld())}, nil
 }

@@ -21,7 +21,7 @@ type countingYield struct {
 
 func (s *countingYield) GetSummary(_ context.Context, r *inspectpb.GetSummaryRequest) (*inspectpb.GetSummaryResponse, error) {
 	s.asked = r.GetFilter()
-	return &inspectpb.GetSummaryResponse{Total: &inspectpb.Yield{Units: 200, Accepted: 181, Rejected: 15, Held: 4}}, nil
+	return &inspectpb.GetSummaryResponse{Total: &inspectpb.Yield{FirstPass: &inspectpb.Rate{K: 181, N: 200}, FirstRejected: 15, FirstHeld: 4}}, nil
 }
 
 // The filter reaches the yield service over the wire, and its counts come back.

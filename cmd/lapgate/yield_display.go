@@ -84,7 +84,8 @@ type yieldOf struct {
 	Rejected         int32             `json:"rejected"`
 	Held             int32             `json:"held"`
 	OpenHolds        int32             `json:"open_holds"`
-	Late             int32             `json:"late"`
+	FirstRejected    int32             `json:"first_rejected"` // at the first attempt
+	FirstHeld        int32             `json:"first_held"`
 	FirstPass        rateOf            `json:"first_pass"`
 	FinalIfHoldsFail rateOf            `json:"final_if_holds_fail"`
 	FinalIfHoldsPass rateOf            `json:"final_if_holds_pass"`
@@ -96,7 +97,7 @@ func newYield(y *inspectpb.Yield) yieldOf {
 		group = map[string]string{}
 	}
 	return yieldOf{Group: group, Units: y.GetUnits(), Inspections: y.GetInspections(), Accepted: y.GetAccepted(), Rejected: y.GetRejected(),
-		Held: y.GetHeld(), OpenHolds: y.GetOpenHolds(), Late: y.GetLate(), FirstPass: newRate(y.GetFirstPass()),
+		Held: y.GetHeld(), OpenHolds: y.GetOpenHolds(), FirstRejected: y.GetFirstRejected(), FirstHeld: y.GetFirstHeld(), FirstPass: newRate(y.GetFirstPass()),
 		FinalIfHoldsFail: newRate(y.GetFinalIfHoldsFail()), FinalIfHoldsPass: newRate(y.GetFinalIfHoldsPass())}
 }
 
@@ -107,13 +108,13 @@ func summaryDisplay(r *inspectpb.GetSummaryResponse, by []string) display {
 		groups = append(groups, newYield(g))
 	}
 	d := display{document: map[string]any{"total": total, "groups": groups}}
-	d.head = append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open_holds", "late",
+	d.head = append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open_holds",
 		"first_pass", "first_pass_low", "first_pass_high", "final_if_holds_fail", "final_if_holds_pass")
-	eyeHead := append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open", "late", "first pass", "final, holds bad", "final, holds good")
+	eyeHead := append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open", "first pass", "final, holds bad", "final, holds good")
 	list := append(groups, total)
 	for i, y := range list {
 		keys := groupCells(y, by, i == len(list)-1)
-		counts := numbers(y.Units, y.Inspections, y.Accepted, y.Rejected, y.Held, y.OpenHolds, y.Late)
+		counts := numbers(y.Units, y.Inspections, y.Accepted, y.Rejected, y.Held, y.OpenHolds)
 		d.rows = append(d.rows, join(keys, counts, y.FirstPass.cells(), y.FinalIfHoldsFail.cells()[:1], y.FinalIfHoldsPass.cells()[:1]))
 		d.forEye = append(d.forEye, join(keys, counts, []string{y.FirstPass.forEye(), y.FinalIfHoldsFail.forEye(), y.FinalIfHoldsPass.forEye()}))
 	}

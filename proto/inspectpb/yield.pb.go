@@ -283,9 +283,15 @@ type Yield struct {
 	// The same; open holds counted as good.
 	FinalIfHoldsPass *Rate `protobuf:"bytes,9,opt,name=final_if_holds_pass,json=finalIfHoldsPass,proto3" json:"final_if_holds_pass,omitempty"`
 	OpenHolds        int32 `protobuf:"varint,10,opt,name=open_holds,json=openHolds,proto3" json:"open_holds,omitempty"`
-	Late             int32 `protobuf:"varint,11,opt,name=late,proto3" json:"late,omitempty"`
-	unknownFields    protoimpl.UnknownFields
-	sizeCache        protoimpl.SizeCache
+	// Verdicts of first attempts; those accepted are first_pass.k.
+	FirstRejected int32 `protobuf:"varint,11,opt,name=first_rejected,json=firstRejected,proto3" json:"first_rejected,omitempty"`
+	FirstHeld     int32 `protobuf:"varint,12,opt,name=first_held,json=firstHeld,proto3" json:"first_held,omitempty"`
+	// Showings of the units, by units; 0 without units.
+	AttemptsPerUnit float64 `protobuf:"fixed64,13,opt,name=attempts_per_unit,json=attemptsPerUnit,proto3" json:"attempts_per_unit,omitempty"`
+	// Units that a later attempt accepted, of those held or rejected at their first.
+	PassByRetest  *Rate `protobuf:"bytes,14,opt,name=pass_by_retest,json=passByRetest,proto3" json:"pass_by_retest,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Yield) Reset() {
@@ -388,11 +394,32 @@ func (x *Yield) GetOpenHolds() int32 {
 	return 0
 }
 
-func (x *Yield) GetLate() int32 {
+func (x *Yield) GetFirstRejected() int32 {
 	if x != nil {
-		return x.Late
+		return x.FirstRejected
 	}
 	return 0
+}
+
+func (x *Yield) GetFirstHeld() int32 {
+	if x != nil {
+		return x.FirstHeld
+	}
+	return 0
+}
+
+func (x *Yield) GetAttemptsPerUnit() float64 {
+	if x != nil {
+		return x.AttemptsPerUnit
+	}
+	return 0
+}
+
+func (x *Yield) GetPassByRetest() *Rate {
+	if x != nil {
+		return x.PassByRetest
+	}
+	return nil
 }
 
 // GetSummaryRequest asks for yield by group.
@@ -1233,6 +1260,190 @@ func (x *WatchResponse) GetMissed() int32 {
 	return 0
 }
 
+// GetLatencyRequest asks for latencies.
+type GetLatencyRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Filter        *Filter                `protobuf:"bytes,1,opt,name=filter,proto3" json:"filter,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *GetLatencyRequest) Reset() {
+	*x = GetLatencyRequest{}
+	mi := &file_inspectpb_yield_proto_msgTypes[17]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *GetLatencyRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*GetLatencyRequest) ProtoMessage() {}
+
+func (x *GetLatencyRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[17]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use GetLatencyRequest.ProtoReflect.Descriptor instead.
+func (*GetLatencyRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{17}
+}
+
+func (x *GetLatencyRequest) GetFilter() *Filter {
+	if x != nil {
+		return x.Filter
+	}
+	return nil
+}
+
+// Latency is how long verdicts took at a station, in ms from the last byte received to
+// the verdict. Percentiles are nearest-rank: a value that occurred.
+type Latency struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Line          string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station       string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	N             int32                  `protobuf:"varint,3,opt,name=n,proto3" json:"n,omitempty"`
+	P50Ms         float64                `protobuf:"fixed64,4,opt,name=p50_ms,json=p50Ms,proto3" json:"p50_ms,omitempty"`
+	P90Ms         float64                `protobuf:"fixed64,5,opt,name=p90_ms,json=p90Ms,proto3" json:"p90_ms,omitempty"`
+	P99Ms         float64                `protobuf:"fixed64,6,opt,name=p99_ms,json=p99Ms,proto3" json:"p99_ms,omitempty"`
+	MaxMs         float64                `protobuf:"fixed64,7,opt,name=max_ms,json=maxMs,proto3" json:"max_ms,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Latency) Reset() {
+	*x = Latency{}
+	mi := &file_inspectpb_yield_proto_msgTypes[18]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Latency) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Latency) ProtoMessage() {}
+
+func (x *Latency) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[18]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Latency.ProtoReflect.Descriptor instead.
+func (*Latency) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{18}
+}
+
+func (x *Latency) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *Latency) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+func (x *Latency) GetN() int32 {
+	if x != nil {
+		return x.N
+	}
+	return 0
+}
+
+func (x *Latency) GetP50Ms() float64 {
+	if x != nil {
+		return x.P50Ms
+	}
+	return 0
+}
+
+func (x *Latency) GetP90Ms() float64 {
+	if x != nil {
+		return x.P90Ms
+	}
+	return 0
+}
+
+func (x *Latency) GetP99Ms() float64 {
+	if x != nil {
+		return x.P99Ms
+	}
+	return 0
+}
+
+func (x *Latency) GetMaxMs() float64 {
+	if x != nil {
+		return x.MaxMs
+	}
+	return 0
+}
+
+// GetLatencyResponse is one row by line and station.
+type GetLatencyResponse struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Stations      []*Latency             `protobuf:"bytes,1,rep,name=stations,proto3" json:"stations,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *GetLatencyResponse) Reset() {
+	*x = GetLatencyResponse{}
+	mi := &file_inspectpb_yield_proto_msgTypes[19]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *GetLatencyResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*GetLatencyResponse) ProtoMessage() {}
+
+func (x *GetLatencyResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[19]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use GetLatencyResponse.ProtoReflect.Descriptor instead.
+func (*GetLatencyResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{19}
+}
+
+func (x *GetLatencyResponse) GetStations() []*Latency {
+	if x != nil {
+		return x.Stations
+	}
+	return nil
+}
+
 var File_inspectpb_yield_proto protoreflect.FileDescriptor
 
 const file_inspectpb_yield_proto_rawDesc = "" +
@@ -1256,7 +1467,7 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x01n\x18\x02 \x01(\x05R\x01n\x12\x14\n" +
 	"\x05value\x18\x03 \x01(\x01R\x05value\x12E\n" +
 	"\x0fclopper_pearson\x18\x04 \x01(\v2\x1c.lapgate.inspect.v1.IntervalR\x0eclopperPearson\x124\n" +
-	"\x06wilson\x18\x05 \x01(\v2\x1c.lapgate.inspect.v1.IntervalR\x06wilson\"\xff\x03\n" +
+	"\x06wilson\x18\x05 \x01(\v2\x1c.lapgate.inspect.v1.IntervalR\x06wilson\"\x9d\x05\n" +
 	"\x05Yield\x12:\n" +
 	"\x05group\x18\x01 \x03(\v2$.lapgate.inspect.v1.Yield.GroupEntryR\x05group\x12\x14\n" +
 	"\x05units\x18\x02 \x01(\x05R\x05units\x12 \n" +
@@ -1270,8 +1481,12 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x13final_if_holds_pass\x18\t \x01(\v2\x18.lapgate.inspect.v1.RateR\x10finalIfHoldsPass\x12\x1d\n" +
 	"\n" +
 	"open_holds\x18\n" +
-	" \x01(\x05R\topenHolds\x12\x12\n" +
-	"\x04late\x18\v \x01(\x05R\x04late\x1a8\n" +
+	" \x01(\x05R\topenHolds\x12%\n" +
+	"\x0efirst_rejected\x18\v \x01(\x05R\rfirstRejected\x12\x1d\n" +
+	"\n" +
+	"first_held\x18\f \x01(\x05R\tfirstHeld\x12*\n" +
+	"\x11attempts_per_unit\x18\r \x01(\x01R\x0fattemptsPerUnit\x12>\n" +
+	"\x0epass_by_retest\x18\x0e \x01(\v2\x18.lapgate.inspect.v1.RateR\fpassByRetest\x1a8\n" +
 	"\n" +
 	"GroupEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
@@ -1336,14 +1551,28 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\"X\n" +
 	"\rWatchResponse\x12/\n" +
 	"\x04unit\x18\x01 \x01(\v2\x1b.lapgate.inspect.v1.UnitRowR\x04unit\x12\x16\n" +
-	"\x06missed\x18\x02 \x01(\x05R\x06missed2\xc9\x03\n" +
+	"\x06missed\x18\x02 \x01(\x05R\x06missed\"G\n" +
+	"\x11GetLatencyRequest\x122\n" +
+	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\"\xa1\x01\n" +
+	"\aLatency\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\x12\f\n" +
+	"\x01n\x18\x03 \x01(\x05R\x01n\x12\x15\n" +
+	"\x06p50_ms\x18\x04 \x01(\x01R\x05p50Ms\x12\x15\n" +
+	"\x06p90_ms\x18\x05 \x01(\x01R\x05p90Ms\x12\x15\n" +
+	"\x06p99_ms\x18\x06 \x01(\x01R\x05p99Ms\x12\x15\n" +
+	"\x06max_ms\x18\a \x01(\x01R\x05maxMs\"M\n" +
+	"\x12GetLatencyResponse\x127\n" +
+	"\bstations\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.LatencyR\bstations2\xa6\x04\n" +
 	"\fYieldService\x12[\n" +
 	"\n" +
 	"GetSummary\x12%.lapgate.inspect.v1.GetSummaryRequest\x1a&.lapgate.inspect.v1.GetSummaryResponse\x12X\n" +
 	"\tGetSeries\x12$.lapgate.inspect.v1.GetSeriesRequest\x1a%.lapgate.inspect.v1.GetSeriesResponse\x12X\n" +
 	"\tGetPareto\x12$.lapgate.inspect.v1.GetParetoRequest\x1a%.lapgate.inspect.v1.GetParetoResponse\x12X\n" +
 	"\tListUnits\x12$.lapgate.inspect.v1.ListUnitsRequest\x1a%.lapgate.inspect.v1.ListUnitsResponse\x12N\n" +
-	"\x05Watch\x12 .lapgate.inspect.v1.WatchRequest\x1a!.lapgate.inspect.v1.WatchResponse0\x01B#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
+	"\x05Watch\x12 .lapgate.inspect.v1.WatchRequest\x1a!.lapgate.inspect.v1.WatchResponse0\x01\x12[\n" +
+	"\n" +
+	"GetLatency\x12%.lapgate.inspect.v1.GetLatencyRequest\x1a&.lapgate.inspect.v1.GetLatencyResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
 
 var (
 	file_inspectpb_yield_proto_rawDescOnce sync.Once
@@ -1357,7 +1586,7 @@ func file_inspectpb_yield_proto_rawDescGZIP() []byte {
 	return file_inspectpb_yield_proto_rawDescData
 }
 
-var file_inspectpb_yield_proto_msgTypes = make([]protoimpl.MessageInfo, 18)
+var file_inspectpb_yield_proto_msgTypes = make([]protoimpl.MessageInfo, 21)
 var file_inspectpb_yield_proto_goTypes = []any{
 	(*Filter)(nil),                // 0: lapgate.inspect.v1.Filter
 	(*Interval)(nil),              // 1: lapgate.inspect.v1.Interval
@@ -1376,56 +1605,64 @@ var file_inspectpb_yield_proto_goTypes = []any{
 	(*ListUnitsResponse)(nil),     // 14: lapgate.inspect.v1.ListUnitsResponse
 	(*WatchRequest)(nil),          // 15: lapgate.inspect.v1.WatchRequest
 	(*WatchResponse)(nil),         // 16: lapgate.inspect.v1.WatchResponse
-	nil,                           // 17: lapgate.inspect.v1.Yield.GroupEntry
-	(Purpose)(0),                  // 18: lapgate.inspect.v1.Purpose
-	(*timestamppb.Timestamp)(nil), // 19: google.protobuf.Timestamp
-	(Verdict)(0),                  // 20: lapgate.inspect.v1.Verdict
-	(*Identity)(nil),              // 21: lapgate.inspect.v1.Identity
+	(*GetLatencyRequest)(nil),     // 17: lapgate.inspect.v1.GetLatencyRequest
+	(*Latency)(nil),               // 18: lapgate.inspect.v1.Latency
+	(*GetLatencyResponse)(nil),    // 19: lapgate.inspect.v1.GetLatencyResponse
+	nil,                           // 20: lapgate.inspect.v1.Yield.GroupEntry
+	(Purpose)(0),                  // 21: lapgate.inspect.v1.Purpose
+	(*timestamppb.Timestamp)(nil), // 22: google.protobuf.Timestamp
+	(Verdict)(0),                  // 23: lapgate.inspect.v1.Verdict
+	(*Identity)(nil),              // 24: lapgate.inspect.v1.Identity
 }
 var file_inspectpb_yield_proto_depIdxs = []int32{
-	18, // 0: lapgate.inspect.v1.Filter.purpose:type_name -> lapgate.inspect.v1.Purpose
-	19, // 1: lapgate.inspect.v1.Filter.from:type_name -> google.protobuf.Timestamp
-	19, // 2: lapgate.inspect.v1.Filter.to:type_name -> google.protobuf.Timestamp
+	21, // 0: lapgate.inspect.v1.Filter.purpose:type_name -> lapgate.inspect.v1.Purpose
+	22, // 1: lapgate.inspect.v1.Filter.from:type_name -> google.protobuf.Timestamp
+	22, // 2: lapgate.inspect.v1.Filter.to:type_name -> google.protobuf.Timestamp
 	1,  // 3: lapgate.inspect.v1.Rate.clopper_pearson:type_name -> lapgate.inspect.v1.Interval
 	1,  // 4: lapgate.inspect.v1.Rate.wilson:type_name -> lapgate.inspect.v1.Interval
-	17, // 5: lapgate.inspect.v1.Yield.group:type_name -> lapgate.inspect.v1.Yield.GroupEntry
+	20, // 5: lapgate.inspect.v1.Yield.group:type_name -> lapgate.inspect.v1.Yield.GroupEntry
 	2,  // 6: lapgate.inspect.v1.Yield.first_pass:type_name -> lapgate.inspect.v1.Rate
 	2,  // 7: lapgate.inspect.v1.Yield.final_if_holds_fail:type_name -> lapgate.inspect.v1.Rate
 	2,  // 8: lapgate.inspect.v1.Yield.final_if_holds_pass:type_name -> lapgate.inspect.v1.Rate
-	0,  // 9: lapgate.inspect.v1.GetSummaryRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	3,  // 10: lapgate.inspect.v1.GetSummaryResponse.total:type_name -> lapgate.inspect.v1.Yield
-	3,  // 11: lapgate.inspect.v1.GetSummaryResponse.groups:type_name -> lapgate.inspect.v1.Yield
-	0,  // 12: lapgate.inspect.v1.GetSeriesRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	19, // 13: lapgate.inspect.v1.SeriesPoint.start:type_name -> google.protobuf.Timestamp
-	2,  // 14: lapgate.inspect.v1.SeriesPoint.accept_rate:type_name -> lapgate.inspect.v1.Rate
-	7,  // 15: lapgate.inspect.v1.GetSeriesResponse.points:type_name -> lapgate.inspect.v1.SeriesPoint
-	0,  // 16: lapgate.inspect.v1.GetParetoRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	20, // 17: lapgate.inspect.v1.ParetoRow.verdict:type_name -> lapgate.inspect.v1.Verdict
-	10, // 18: lapgate.inspect.v1.GetParetoResponse.rows:type_name -> lapgate.inspect.v1.ParetoRow
-	0,  // 19: lapgate.inspect.v1.ListUnitsRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	20, // 20: lapgate.inspect.v1.ListUnitsRequest.verdict:type_name -> lapgate.inspect.v1.Verdict
-	21, // 21: lapgate.inspect.v1.UnitRow.identity:type_name -> lapgate.inspect.v1.Identity
-	20, // 22: lapgate.inspect.v1.UnitRow.verdict:type_name -> lapgate.inspect.v1.Verdict
-	19, // 23: lapgate.inspect.v1.UnitRow.captured:type_name -> google.protobuf.Timestamp
-	19, // 24: lapgate.inspect.v1.UnitRow.judged:type_name -> google.protobuf.Timestamp
-	13, // 25: lapgate.inspect.v1.ListUnitsResponse.units:type_name -> lapgate.inspect.v1.UnitRow
-	0,  // 26: lapgate.inspect.v1.WatchRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	13, // 27: lapgate.inspect.v1.WatchResponse.unit:type_name -> lapgate.inspect.v1.UnitRow
-	4,  // 28: lapgate.inspect.v1.YieldService.GetSummary:input_type -> lapgate.inspect.v1.GetSummaryRequest
-	6,  // 29: lapgate.inspect.v1.YieldService.GetSeries:input_type -> lapgate.inspect.v1.GetSeriesRequest
-	9,  // 30: lapgate.inspect.v1.YieldService.GetPareto:input_type -> lapgate.inspect.v1.GetParetoRequest
-	12, // 31: lapgate.inspect.v1.YieldService.ListUnits:input_type -> lapgate.inspect.v1.ListUnitsRequest
-	15, // 32: lapgate.inspect.v1.YieldService.Watch:input_type -> lapgate.inspect.v1.WatchRequest
-	5,  // 33: lapgate.inspect.v1.YieldService.GetSummary:output_type -> lapgate.inspect.v1.GetSummaryResponse
-	8,  // 34: lapgate.inspect.v1.YieldService.GetSeries:output_type -> lapgate.inspect.v1.GetSeriesResponse
-	11, // 35: lapgate.inspect.v1.YieldService.GetPareto:output_type -> lapgate.inspect.v1.GetParetoResponse
-	14, // 36: lapgate.inspect.v1.YieldService.ListUnits:output_type -> lapgate.inspect.v1.ListUnitsResponse
-	16, // 37: lapgate.inspect.v1.YieldService.Watch:output_type -> lapgate.inspect.v1.WatchResponse
-	33, // [33:38] is the sub-list for method output_type
-	28, // [28:33] is the sub-list for method input_type
-	28, // [28:28] is the sub-list for extension type_name
-	28, // [28:28] is the sub-list for extension extendee
-	0,  // [0:28] is the sub-list for field type_name
+	2,  // 9: lapgate.inspect.v1.Yield.pass_by_retest:type_name -> lapgate.inspect.v1.Rate
+	0,  // 10: lapgate.inspect.v1.GetSummaryRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	3,  // 11: lapgate.inspect.v1.GetSummaryResponse.total:type_name -> lapgate.inspect.v1.Yield
+	3,  // 12: lapgate.inspect.v1.GetSummaryResponse.groups:type_name -> lapgate.inspect.v1.Yield
+	0,  // 13: lapgate.inspect.v1.GetSeriesRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	22, // 14: lapgate.inspect.v1.SeriesPoint.start:type_name -> google.protobuf.Timestamp
+	2,  // 15: lapgate.inspect.v1.SeriesPoint.accept_rate:type_name -> lapgate.inspect.v1.Rate
+	7,  // 16: lapgate.inspect.v1.GetSeriesResponse.points:type_name -> lapgate.inspect.v1.SeriesPoint
+	0,  // 17: lapgate.inspect.v1.GetParetoRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	23, // 18: lapgate.inspect.v1.ParetoRow.verdict:type_name -> lapgate.inspect.v1.Verdict
+	10, // 19: lapgate.inspect.v1.GetParetoResponse.rows:type_name -> lapgate.inspect.v1.ParetoRow
+	0,  // 20: lapgate.inspect.v1.ListUnitsRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	23, // 21: lapgate.inspect.v1.ListUnitsRequest.verdict:type_name -> lapgate.inspect.v1.Verdict
+	24, // 22: lapgate.inspect.v1.UnitRow.identity:type_name -> lapgate.inspect.v1.Identity
+	23, // 23: lapgate.inspect.v1.UnitRow.verdict:type_name -> lapgate.inspect.v1.Verdict
+	22, // 24: lapgate.inspect.v1.UnitRow.captured:type_name -> google.protobuf.Timestamp
+	22, // 25: lapgate.inspect.v1.UnitRow.judged:type_name -> google.protobuf.Timestamp
+	13, // 26: lapgate.inspect.v1.ListUnitsResponse.units:type_name -> lapgate.inspect.v1.UnitRow
+	0,  // 27: lapgate.inspect.v1.WatchRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	13, // 28: lapgate.inspect.v1.WatchResponse.unit:type_name -> lapgate.inspect.v1.UnitRow
+	0,  // 29: lapgate.inspect.v1.GetLatencyRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	18, // 30: lapgate.inspect.v1.GetLatencyResponse.stations:type_name -> lapgate.inspect.v1.Latency
+	4,  // 31: lapgate.inspect.v1.YieldService.GetSummary:input_type -> lapgate.inspect.v1.GetSummaryRequest
+	6,  // 32: lapgate.inspect.v1.YieldService.GetSeries:input_type -> lapgate.inspect.v1.GetSeriesRequest
+	9,  // 33: lapgate.inspect.v1.YieldService.GetPareto:input_type -> lapgate.inspect.v1.GetParetoRequest
+	12, // 34: lapgate.inspect.v1.YieldService.ListUnits:input_type -> lapgate.inspect.v1.ListUnitsRequest
+	15, // 35: lapgate.inspect.v1.YieldService.Watch:input_type -> lapgate.inspect.v1.WatchRequest
+	17, // 36: lapgate.inspect.v1.YieldService.GetLatency:input_type -> lapgate.inspect.v1.GetLatencyRequest
+	5,  // 37: lapgate.inspect.v1.YieldService.GetSummary:output_type -> lapgate.inspect.v1.GetSummaryResponse
+	8,  // 38: lapgate.inspect.v1.YieldService.GetSeries:output_type -> lapgate.inspect.v1.GetSeriesResponse
+	11, // 39: lapgate.inspect.v1.YieldService.GetPareto:output_type -> lapgate.inspect.v1.GetParetoResponse
+	14, // 40: lapgate.inspect.v1.YieldService.ListUnits:output_type -> lapgate.inspect.v1.ListUnitsResponse
+	16, // 41: lapgate.inspect.v1.YieldService.Watch:output_type -> lapgate.inspect.v1.WatchResponse
+	19, // 42: lapgate.inspect.v1.YieldService.GetLatency:output_type -> lapgate.inspect.v1.GetLatencyResponse
+	37, // [37:43] is the sub-list for method output_type
+	31, // [31:37] is the sub-list for method input_type
+	31, // [31:31] is the sub-list for extension type_name
+	31, // [31:31] is the sub-list for extension extendee
+	0,  // [0:31] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_yield_proto_init() }
@@ -1441,7 +1678,7 @@ func file_inspectpb_yield_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_yield_proto_rawDesc), len(file_inspectpb_yield_proto_rawDesc)),
 			NumEnums:      0,
-			NumMessages:   18,
+			NumMessages:   21,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
