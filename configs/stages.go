@@ -88,6 +88,8 @@ func (c *recipeReader) checkStage(spec pipeline.StageSpec, at string, scope pipe
 	}
 	if checker, ok := dst.Elem().Interface().(pipeline.Checker); ok {
 		c.checked(at, checker.Check())
+	} else if f.Check != nil {
+		c.checked(at, f.Check(dst.Elem().Interface()))
 	}
 }
 

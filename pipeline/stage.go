@@ -52,6 +52,9 @@ type Factory struct {
 	// New decodes settings over the defaults, checks them, and builds the stage. It
 	// returns the effective settings too.
 	New func(decode Decode, env Environment) (Stage, any, error)
+	// Check says what is wrong with settings of a type that is no Checker itself, as a
+	// Checker would; nil = nothing to say.
+	Check func(settings any) error
 }
 
 // Checker is a settings type that can say what is wrong with it. The error starts
