@@ -44,7 +44,7 @@ func (s Scene) checkRun() error {
 func (s Scene) checkPart() error {
 	p, c := s.Part, s.Camera
 	return firstBad(pipeline.CheckID("part.number", p.Number),
-		within("part.diameter_mm", p.DiameterMM, 0.1, 1e4),
+		within("part.diameter_mm", p.DiameterMM, 0.1, 1e4), p.checkNotch(),
 		within("part.clear_aperture_mm", p.ClearApertureMM, 0.05, p.DiameterMM),
 		within("part.max_shift_px", p.MaxShiftPx, 0, float64(min(c.Width, c.Height))/2))
 }

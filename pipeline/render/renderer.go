@@ -71,6 +71,7 @@ func (r *Renderer) draw(u *Unit, v View) *raster.Plane {
 	plane := st.background(r)
 	if _, empty := u.spoiled(SpoilEmptyNest, v.Name); !empty {
 		st.addObjects(plane)
+		st.notch(plane)
 	}
 	st.spoil(plane, r)
 	r.scene.addReference(plane, v)
@@ -100,8 +101,23 @@ func (r *Renderer) Frame(u *Unit, view string) (pipeline.Frame, error) {
 		first := (light.Height - rows) / 2 * light.Width
 		clear(counts[first : first+rows*light.Width])
 	}
+	if px, ok := u.spoiled(SpoilShift, view); ok {
+		moveWindow(counts, light.Width, int(px))
+	}
 	h := r.header(u.Identity, view)
 	h.Captured = u.Captured.Add(viewDelay * time.Duration(i))
 	h.FrameCounter = uint64(u.Index*len(r.scene.Views) + i + 1)
 	return r.frame(h, counts), nil
+}
+
+// moveWindow moves every row by px to the right, with the sensor's own pattern; what
+// leaves the frame enters on the other side.
+func moveWindow(counts []uint16, width, px int) {
+	row := make([]uint16, width)
+	for y := 0; y < len(counts); y += width {
+		for x, v := range counts[y : y+width] {
+			row[((x+px)%width+width)%width] = v
+		}
+		copy(counts[y:], row)
+	}
 }

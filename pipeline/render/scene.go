@@ -42,6 +42,7 @@ type Part struct {
 	ClearApertureMM float64 `yaml:"clear_aperture_mm"` // diameter in which limits hold and defects lie
 	MaxShiftPx      float64 `yaml:"max_shift_px"`      // of the part's centre from the frame's, each way
 	Turned          bool    `yaml:"turned"`            // each unit lies at an angle of its own
+	Notch           Notch   `yaml:"notch"`             // a datum in the edge
 }
 
 // Camera is the sensor with its optics. One camera, with one fixed pattern, serves

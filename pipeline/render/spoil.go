@@ -27,12 +27,14 @@ const (
 	SpoilQuarterStain = "quarter_stain"  // what a stain over a quarter of the part adds, DN
 	SpoilBroken       = "broken"         // depth of the segment broken off, mm
 	SpoilOilFilm      = "oil_film"       // root mean square of its fringes, DN
+	SpoilGrain        = "grain"          // root mean square of the grain that rough polish leaves, DN
+	SpoilShift        = "camera_shift"   // px to the right by which the read-out window of the sensor moved
 )
 
 // ofPart reports whether the spoiler is a fault of the part and not of the picture.
 func (sp Spoiler) ofPart() bool {
 	switch sp.Kind {
-	case SpoilDiameter, SpoilMatt, SpoilFingerprint, SpoilQuarterStain, SpoilBroken, SpoilOilFilm:
+	case SpoilDiameter, SpoilMatt, SpoilFingerprint, SpoilQuarterStain, SpoilBroken, SpoilOilFilm, SpoilGrain:
 		return true
 	}
 	return false
@@ -42,7 +44,7 @@ func (s Scene) checkSpoilers() error {
 	for i, sp := range s.Spoilers {
 		key := fmt.Sprintf("spoilers[%d].", i)
 		err := firstBad(oneOf(key+"kind", sp.Kind, SpoilLamp, SpoilCap, SpoilEmptyNest, SpoilDefocus, SpoilBlackBand, SpoilDiameter,
-			SpoilMatt, SpoilFingerprint, SpoilQuarterStain, SpoilBroken, SpoilOilFilm), atLeast(key+"unit", float64(sp.Unit), 0), atLeast(key+"value", sp.Value, 0))
+			SpoilMatt, SpoilFingerprint, SpoilQuarterStain, SpoilBroken, SpoilOilFilm, SpoilGrain, SpoilShift), atLeast(key+"unit", float64(sp.Unit), 0), atLeast(key+"value", sp.Value, 0))
 		if err != nil {
 			return err
 		}

@@ -2,6 +2,7 @@ package render
 
 import (
 	"math"
+	"math/rand/v2"
 
 	"lapgate/pipeline/raster"
 )
@@ -26,11 +27,13 @@ func (st stage) spoilLight(sp Spoiler, r *Renderer) func(v, cover, dx, dy float3
 	rnd := r.unitStream(*st.unit, sp.Kind)
 	switch sp.Kind {
 	case SpoilMatt:
-		grain := raster.NewPlane(3*int(st.radius+8), 3*int(st.radius+8))
-		for i := range grain.Pix {
-			grain.Pix[i] = 0.1 * value * float32(rnd.NormFloat64())
+		grain := st.grain(0.04*value, rnd)
+		half := float32(grain.Width / 2)
+		return func(v, cover, dx, dy float32) float32 {
+			return max(v+cover*grain.At(int(dx+half), int(dy+half)), 0)
 		}
-		(&patch{w: grain.Width, h: grain.Height, pix: grain.Pix}).blur(max(st.blur, 0.5))
+	case SpoilGrain:
+		grain := st.grain(value, rnd)
 		half := float32(grain.Width / 2)
 		return func(v, cover, dx, dy float32) float32 {
 			return max(v+cover*grain.At(int(dx+half), int(dy+half)), 0)
@@ -49,6 +52,26 @@ func (st stage) spoilLight(sp Spoiler, r *Renderer) func(v, cover, dx, dy float3
 		return st.broken(sp.Value, 2*math.Pi*rnd.Float64())
 	}
 	return nil
+}
+
+// grain returns white noise of the root mean square given, seen through the blur, that is
+// larger than the part.
+func (st stage) grain(rms float32, rnd *rand.Rand) *raster.Plane {
+	side := 3 * int(st.radius+8)
+	p := &patch{w: side, h: side, pix: make([]float32, side*side)}
+	for i := range p.pix {
+		p.pix[i] = float32(rnd.NormFloat64())
+	}
+	p.blur(max(st.blur, 0.5))
+	sum := 0.0
+	for _, v := range p.pix {
+		sum += float64(v * v)
+	}
+	scale := rms / float32(math.Sqrt(sum/float64(len(p.pix))))
+	for i := range p.pix {
+		p.pix[i] *= scale
+	}
+	return &raster.Plane{Pix: p.pix, Width: side, Height: side, Stride: side}
 }
 
 // plateau leaves room around a frame for a texture that is asked off its border.
