@@ -78,6 +78,56 @@ func (Disposition) EnumDescriptor() ([]byte, []int) {
 	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{0}
 }
 
+// StationState says whether a station judges units or holds them all.
+type StationState int32
+
+const (
+	StationState_STATION_STATE_UNSPECIFIED StationState = 0
+	StationState_STATION_STATE_OK          StationState = 1
+	StationState_STATION_STATE_HOLDING     StationState = 2
+)
+
+// Enum value maps for StationState.
+var (
+	StationState_name = map[int32]string{
+		0: "STATION_STATE_UNSPECIFIED",
+		1: "STATION_STATE_OK",
+		2: "STATION_STATE_HOLDING",
+	}
+	StationState_value = map[string]int32{
+		"STATION_STATE_UNSPECIFIED": 0,
+		"STATION_STATE_OK":          1,
+		"STATION_STATE_HOLDING":     2,
+	}
+)
+
+func (x StationState) Enum() *StationState {
+	p := new(StationState)
+	*p = x
+	return p
+}
+
+func (x StationState) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (StationState) Descriptor() protoreflect.EnumDescriptor {
+	return file_inspectpb_inspection_proto_enumTypes[1].Descriptor()
+}
+
+func (StationState) Type() protoreflect.EnumType {
+	return &file_inspectpb_inspection_proto_enumTypes[1]
+}
+
+func (x StationState) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use StationState.Descriptor instead.
+func (StationState) EnumDescriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{1}
+}
+
 // FrameStart announces a frame; its chunks follow.
 type FrameStart struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -960,10 +1010,12 @@ type InspectionRecord struct {
 	LatencyMs    float64                `protobuf:"fixed64,7,opt,name=latency_ms,json=latencyMs,proto3" json:"latency_ms,omitempty"`
 	Evidence     *Evidence              `protobuf:"bytes,8,opt,name=evidence,proto3" json:"evidence,omitempty"`
 	// All judgements in the order they were made; the line's first.
-	Judgements    []*Judgement         `protobuf:"bytes,9,rep,name=judgements,proto3" json:"judgements,omitempty"`
-	Dispositions  []*DispositionRecord `protobuf:"bytes,10,rep,name=dispositions,proto3" json:"dispositions,omitempty"`
-	Outcomes      []*OutcomeRecord     `protobuf:"bytes,11,rep,name=outcomes,proto3" json:"outcomes,omitempty"`
-	Verdict       Verdict              `protobuf:"varint,12,opt,name=verdict,proto3,enum=lapgate.inspect.v1.Verdict" json:"verdict,omitempty"`
+	Judgements   []*Judgement         `protobuf:"bytes,9,rep,name=judgements,proto3" json:"judgements,omitempty"`
+	Dispositions []*DispositionRecord `protobuf:"bytes,10,rep,name=dispositions,proto3" json:"dispositions,omitempty"`
+	Outcomes     []*OutcomeRecord     `protobuf:"bytes,11,rep,name=outcomes,proto3" json:"outcomes,omitempty"`
+	Verdict      Verdict              `protobuf:"varint,12,opt,name=verdict,proto3,enum=lapgate.inspect.v1.Verdict" json:"verdict,omitempty"`
+	// Masters that put it in doubt, oldest first.
+	Suspicions    []*Suspicion `protobuf:"bytes,13,rep,name=suspicions,proto3" json:"suspicions,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1082,6 +1134,83 @@ func (x *InspectionRecord) GetVerdict() Verdict {
 	return Verdict_VERDICT_UNSPECIFIED
 }
 
+func (x *InspectionRecord) GetSuspicions() []*Suspicion {
+	if x != nil {
+		return x.Suspicions
+	}
+	return nil
+}
+
+// Suspicion is one master that puts an inspection in doubt.
+type Suspicion struct {
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Master string                 `protobuf:"bytes,1,opt,name=master,proto3" json:"master,omitempty"`
+	// failed or overdue.
+	Cause         string                 `protobuf:"bytes,2,opt,name=cause,proto3" json:"cause,omitempty"`
+	Why           string                 `protobuf:"bytes,3,opt,name=why,proto3" json:"why,omitempty"`
+	At            *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=at,proto3" json:"at,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Suspicion) Reset() {
+	*x = Suspicion{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Suspicion) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Suspicion) ProtoMessage() {}
+
+func (x *Suspicion) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Suspicion.ProtoReflect.Descriptor instead.
+func (*Suspicion) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{14}
+}
+
+func (x *Suspicion) GetMaster() string {
+	if x != nil {
+		return x.Master
+	}
+	return ""
+}
+
+func (x *Suspicion) GetCause() string {
+	if x != nil {
+		return x.Cause
+	}
+	return ""
+}
+
+func (x *Suspicion) GetWhy() string {
+	if x != nil {
+		return x.Why
+	}
+	return ""
+}
+
+func (x *Suspicion) GetAt() *timestamppb.Timestamp {
+	if x != nil {
+		return x.At
+	}
+	return nil
+}
+
 // DispositionRecord is a closed hold.
 type DispositionRecord struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1095,7 +1224,7 @@ type DispositionRecord struct {
 
 func (x *DispositionRecord) Reset() {
 	*x = DispositionRecord{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	mi := &file_inspectpb_inspection_proto_msgTypes[15]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1107,7 +1236,7 @@ func (x *DispositionRecord) String() string {
 func (*DispositionRecord) ProtoMessage() {}
 
 func (x *DispositionRecord) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	mi := &file_inspectpb_inspection_proto_msgTypes[15]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1120,7 +1249,7 @@ func (x *DispositionRecord) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use DispositionRecord.ProtoReflect.Descriptor instead.
 func (*DispositionRecord) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{14}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{15}
 }
 
 func (x *DispositionRecord) GetDisposition() Disposition {
@@ -1163,7 +1292,7 @@ type OutcomeRecord struct {
 
 func (x *OutcomeRecord) Reset() {
 	*x = OutcomeRecord{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[15]
+	mi := &file_inspectpb_inspection_proto_msgTypes[16]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1175,7 +1304,7 @@ func (x *OutcomeRecord) String() string {
 func (*OutcomeRecord) ProtoMessage() {}
 
 func (x *OutcomeRecord) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[15]
+	mi := &file_inspectpb_inspection_proto_msgTypes[16]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1188,7 +1317,7 @@ func (x *OutcomeRecord) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use OutcomeRecord.ProtoReflect.Descriptor instead.
 func (*OutcomeRecord) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{15}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{16}
 }
 
 func (x *OutcomeRecord) GetBin() Verdict {
@@ -1223,7 +1352,7 @@ type GetUnitRequest struct {
 
 func (x *GetUnitRequest) Reset() {
 	*x = GetUnitRequest{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[16]
+	mi := &file_inspectpb_inspection_proto_msgTypes[17]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1235,7 +1364,7 @@ func (x *GetUnitRequest) String() string {
 func (*GetUnitRequest) ProtoMessage() {}
 
 func (x *GetUnitRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[16]
+	mi := &file_inspectpb_inspection_proto_msgTypes[17]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1248,7 +1377,7 @@ func (x *GetUnitRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetUnitRequest.ProtoReflect.Descriptor instead.
 func (*GetUnitRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{16}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{17}
 }
 
 func (x *GetUnitRequest) GetPart() string {
@@ -1275,7 +1404,7 @@ type GetUnitResponse struct {
 
 func (x *GetUnitResponse) Reset() {
 	*x = GetUnitResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[17]
+	mi := &file_inspectpb_inspection_proto_msgTypes[18]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1287,7 +1416,7 @@ func (x *GetUnitResponse) String() string {
 func (*GetUnitResponse) ProtoMessage() {}
 
 func (x *GetUnitResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[17]
+	mi := &file_inspectpb_inspection_proto_msgTypes[18]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1300,7 +1429,7 @@ func (x *GetUnitResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetUnitResponse.ProtoReflect.Descriptor instead.
 func (*GetUnitResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{17}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{18}
 }
 
 func (x *GetUnitResponse) GetInspections() []*InspectionRecord {
@@ -1322,7 +1451,7 @@ type ListMismatchesRequest struct {
 
 func (x *ListMismatchesRequest) Reset() {
 	*x = ListMismatchesRequest{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[18]
+	mi := &file_inspectpb_inspection_proto_msgTypes[19]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1334,7 +1463,7 @@ func (x *ListMismatchesRequest) String() string {
 func (*ListMismatchesRequest) ProtoMessage() {}
 
 func (x *ListMismatchesRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[18]
+	mi := &file_inspectpb_inspection_proto_msgTypes[19]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1347,7 +1476,7 @@ func (x *ListMismatchesRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListMismatchesRequest.ProtoReflect.Descriptor instead.
 func (*ListMismatchesRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{18}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{19}
 }
 
 func (x *ListMismatchesRequest) GetPart() string {
@@ -1381,7 +1510,7 @@ type ListMismatchesResponse struct {
 
 func (x *ListMismatchesResponse) Reset() {
 	*x = ListMismatchesResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[19]
+	mi := &file_inspectpb_inspection_proto_msgTypes[20]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1393,7 +1522,7 @@ func (x *ListMismatchesResponse) String() string {
 func (*ListMismatchesResponse) ProtoMessage() {}
 
 func (x *ListMismatchesResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[19]
+	mi := &file_inspectpb_inspection_proto_msgTypes[20]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1406,12 +1535,304 @@ func (x *ListMismatchesResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListMismatchesResponse.ProtoReflect.Descriptor instead.
 func (*ListMismatchesResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{19}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{20}
 }
 
 func (x *ListMismatchesResponse) GetInspections() []*InspectionRecord {
 	if x != nil {
 		return x.Inspections
+	}
+	return nil
+}
+
+// HeartbeatRequest names the station that is alive.
+type HeartbeatRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Line          string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station       string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *HeartbeatRequest) Reset() {
+	*x = HeartbeatRequest{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[21]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *HeartbeatRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*HeartbeatRequest) ProtoMessage() {}
+
+func (x *HeartbeatRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[21]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use HeartbeatRequest.ProtoReflect.Descriptor instead.
+func (*HeartbeatRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{21}
+}
+
+func (x *HeartbeatRequest) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *HeartbeatRequest) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+// HeartbeatResponse says how the station stands.
+type HeartbeatResponse struct {
+	state      protoimpl.MessageState `protogen:"open.v1"`
+	ServerTime *timestamppb.Timestamp `protobuf:"bytes,1,opt,name=server_time,json=serverTime,proto3" json:"server_time,omitempty"`
+	State      StationState           `protobuf:"varint,2,opt,name=state,proto3,enum=lapgate.inspect.v1.StationState" json:"state,omitempty"`
+	// Why it holds, one sentence for each cause.
+	Because       []string `protobuf:"bytes,3,rep,name=because,proto3" json:"because,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *HeartbeatResponse) Reset() {
+	*x = HeartbeatResponse{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[22]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *HeartbeatResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*HeartbeatResponse) ProtoMessage() {}
+
+func (x *HeartbeatResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[22]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use HeartbeatResponse.ProtoReflect.Descriptor instead.
+func (*HeartbeatResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{22}
+}
+
+func (x *HeartbeatResponse) GetServerTime() *timestamppb.Timestamp {
+	if x != nil {
+		return x.ServerTime
+	}
+	return nil
+}
+
+func (x *HeartbeatResponse) GetState() StationState {
+	if x != nil {
+		return x.State
+	}
+	return StationState_STATION_STATE_UNSPECIFIED
+}
+
+func (x *HeartbeatResponse) GetBecause() []string {
+	if x != nil {
+		return x.Because
+	}
+	return nil
+}
+
+// ListStationsRequest has no filter.
+type ListStationsRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListStationsRequest) Reset() {
+	*x = ListStationsRequest{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[23]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListStationsRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListStationsRequest) ProtoMessage() {}
+
+func (x *ListStationsRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[23]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListStationsRequest.ProtoReflect.Descriptor instead.
+func (*ListStationsRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{23}
+}
+
+// Station is a line and station that was heard of.
+type Station struct {
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	Line    string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	// The latest heartbeat; missing = none since the server started.
+	Heartbeat *timestamppb.Timestamp `protobuf:"bytes,3,opt,name=heartbeat,proto3" json:"heartbeat,omitempty"`
+	// The latest inspection; missing = none since the server started.
+	Inspection    *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=inspection,proto3" json:"inspection,omitempty"`
+	State         StationState           `protobuf:"varint,5,opt,name=state,proto3,enum=lapgate.inspect.v1.StationState" json:"state,omitempty"`
+	Because       []string               `protobuf:"bytes,6,rep,name=because,proto3" json:"because,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Station) Reset() {
+	*x = Station{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[24]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Station) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Station) ProtoMessage() {}
+
+func (x *Station) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[24]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Station.ProtoReflect.Descriptor instead.
+func (*Station) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{24}
+}
+
+func (x *Station) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *Station) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+func (x *Station) GetHeartbeat() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Heartbeat
+	}
+	return nil
+}
+
+func (x *Station) GetInspection() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Inspection
+	}
+	return nil
+}
+
+func (x *Station) GetState() StationState {
+	if x != nil {
+		return x.State
+	}
+	return StationState_STATION_STATE_UNSPECIFIED
+}
+
+func (x *Station) GetBecause() []string {
+	if x != nil {
+		return x.Because
+	}
+	return nil
+}
+
+// ListStationsResponse lists stations by line and station.
+type ListStationsResponse struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Stations      []*Station             `protobuf:"bytes,1,rep,name=stations,proto3" json:"stations,omitempty"`
+	ServerTime    *timestamppb.Timestamp `protobuf:"bytes,2,opt,name=server_time,json=serverTime,proto3" json:"server_time,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListStationsResponse) Reset() {
+	*x = ListStationsResponse{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[25]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListStationsResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListStationsResponse) ProtoMessage() {}
+
+func (x *ListStationsResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[25]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListStationsResponse.ProtoReflect.Descriptor instead.
+func (*ListStationsResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{25}
+}
+
+func (x *ListStationsResponse) GetStations() []*Station {
+	if x != nil {
+		return x.Stations
+	}
+	return nil
+}
+
+func (x *ListStationsResponse) GetServerTime() *timestamppb.Timestamp {
+	if x != nil {
+		return x.ServerTime
 	}
 	return nil
 }
@@ -1482,7 +1903,7 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"page_token\x18\x05 \x01(\tR\tpageToken\"w\n" +
 	"\x11ListHoldsResponse\x12:\n" +
 	"\x05holds\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\x05holds\x12&\n" +
-	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\xe2\x04\n" +
+	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\xa1\x05\n" +
 	"\x10InspectionRecord\x12#\n" +
 	"\rinspection_id\x18\x01 \x01(\tR\finspectionId\x128\n" +
 	"\bidentity\x18\x02 \x01(\v2\x1c.lapgate.inspect.v1.IdentityR\bidentity\x12\x16\n" +
@@ -1499,7 +1920,15 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\fdispositions\x18\n" +
 	" \x03(\v2%.lapgate.inspect.v1.DispositionRecordR\fdispositions\x12=\n" +
 	"\boutcomes\x18\v \x03(\v2!.lapgate.inspect.v1.OutcomeRecordR\boutcomes\x125\n" +
-	"\averdict\x18\f \x01(\x0e2\x1b.lapgate.inspect.v1.VerdictR\averdict\"\xb2\x01\n" +
+	"\averdict\x18\f \x01(\x0e2\x1b.lapgate.inspect.v1.VerdictR\averdict\x12=\n" +
+	"\n" +
+	"suspicions\x18\r \x03(\v2\x1d.lapgate.inspect.v1.SuspicionR\n" +
+	"suspicions\"w\n" +
+	"\tSuspicion\x12\x16\n" +
+	"\x06master\x18\x01 \x01(\tR\x06master\x12\x14\n" +
+	"\x05cause\x18\x02 \x01(\tR\x05cause\x12\x10\n" +
+	"\x03why\x18\x03 \x01(\tR\x03why\x12*\n" +
+	"\x02at\x18\x04 \x01(\v2\x1a.google.protobuf.TimestampR\x02at\"\xb2\x01\n" +
 	"\x11DispositionRecord\x12A\n" +
 	"\vdisposition\x18\x01 \x01(\x0e2\x1f.lapgate.inspect.v1.DispositionR\vdisposition\x12\x16\n" +
 	"\x06person\x18\x02 \x01(\tR\x06person\x12\x16\n" +
@@ -1519,13 +1948,39 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\x04line\x18\x02 \x01(\tR\x04line\x12\x1b\n" +
 	"\tpage_size\x18\x03 \x01(\x05R\bpageSize\"`\n" +
 	"\x16ListMismatchesResponse\x12F\n" +
-	"\vinspections\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\vinspections*\x89\x01\n" +
+	"\vinspections\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\vinspections\"@\n" +
+	"\x10HeartbeatRequest\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\"\xa2\x01\n" +
+	"\x11HeartbeatResponse\x12;\n" +
+	"\vserver_time\x18\x01 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
+	"serverTime\x126\n" +
+	"\x05state\x18\x02 \x01(\x0e2 .lapgate.inspect.v1.StationStateR\x05state\x12\x18\n" +
+	"\abecause\x18\x03 \x03(\tR\abecause\"\x15\n" +
+	"\x13ListStationsRequest\"\xff\x01\n" +
+	"\aStation\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\x128\n" +
+	"\theartbeat\x18\x03 \x01(\v2\x1a.google.protobuf.TimestampR\theartbeat\x12:\n" +
+	"\n" +
+	"inspection\x18\x04 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
+	"inspection\x126\n" +
+	"\x05state\x18\x05 \x01(\x0e2 .lapgate.inspect.v1.StationStateR\x05state\x12\x18\n" +
+	"\abecause\x18\x06 \x03(\tR\abecause\"\x8c\x01\n" +
+	"\x14ListStationsResponse\x127\n" +
+	"\bstations\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.StationR\bstations\x12;\n" +
+	"\vserver_time\x18\x02 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
+	"serverTime*\x89\x01\n" +
 	"\vDisposition\x12\x1b\n" +
 	"\x17DISPOSITION_UNSPECIFIED\x10\x00\x12\x16\n" +
 	"\x12DISPOSITION_ACCEPT\x10\x01\x12\x16\n" +
 	"\x12DISPOSITION_REJECT\x10\x02\x12\x15\n" +
 	"\x11DISPOSITION_CLEAN\x10\x03\x12\x16\n" +
-	"\x12DISPOSITION_REWORK\x10\x042\xa8\x05\n" +
+	"\x12DISPOSITION_REWORK\x10\x04*^\n" +
+	"\fStationState\x12\x1d\n" +
+	"\x19STATION_STATE_UNSPECIFIED\x10\x00\x12\x14\n" +
+	"\x10STATION_STATE_OK\x10\x01\x12\x19\n" +
+	"\x15STATION_STATE_HOLDING\x10\x022\xe5\x06\n" +
 	"\x11InspectionService\x12V\n" +
 	"\aInspect\x12\".lapgate.inspect.v1.InspectRequest\x1a#.lapgate.inspect.v1.InspectResponse(\x010\x01\x12^\n" +
 	"\vInspectUnit\x12&.lapgate.inspect.v1.InspectUnitRequest\x1a'.lapgate.inspect.v1.InspectUnitResponse\x12d\n" +
@@ -1533,7 +1988,9 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\vDisposeHold\x12&.lapgate.inspect.v1.DisposeHoldRequest\x1a'.lapgate.inspect.v1.DisposeHoldResponse\x12X\n" +
 	"\tListHolds\x12$.lapgate.inspect.v1.ListHoldsRequest\x1a%.lapgate.inspect.v1.ListHoldsResponse\x12R\n" +
 	"\aGetUnit\x12\".lapgate.inspect.v1.GetUnitRequest\x1a#.lapgate.inspect.v1.GetUnitResponse\x12g\n" +
-	"\x0eListMismatches\x12).lapgate.inspect.v1.ListMismatchesRequest\x1a*.lapgate.inspect.v1.ListMismatchesResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
+	"\x0eListMismatches\x12).lapgate.inspect.v1.ListMismatchesRequest\x1a*.lapgate.inspect.v1.ListMismatchesResponse\x12X\n" +
+	"\tHeartbeat\x12$.lapgate.inspect.v1.HeartbeatRequest\x1a%.lapgate.inspect.v1.HeartbeatResponse\x12a\n" +
+	"\fListStations\x12'.lapgate.inspect.v1.ListStationsRequest\x1a(.lapgate.inspect.v1.ListStationsResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
 
 var (
 	file_inspectpb_inspection_proto_rawDescOnce sync.Once
@@ -1547,93 +2004,113 @@ func file_inspectpb_inspection_proto_rawDescGZIP() []byte {
 	return file_inspectpb_inspection_proto_rawDescData
 }
 
-var file_inspectpb_inspection_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_inspectpb_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 20)
+var file_inspectpb_inspection_proto_enumTypes = make([]protoimpl.EnumInfo, 2)
+var file_inspectpb_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 26)
 var file_inspectpb_inspection_proto_goTypes = []any{
 	(Disposition)(0),               // 0: lapgate.inspect.v1.Disposition
-	(*FrameStart)(nil),             // 1: lapgate.inspect.v1.FrameStart
-	(*InspectRequest)(nil),         // 2: lapgate.inspect.v1.InspectRequest
-	(*UnitVerdict)(nil),            // 3: lapgate.inspect.v1.UnitVerdict
-	(*FrameRefused)(nil),           // 4: lapgate.inspect.v1.FrameRefused
-	(*InspectResponse)(nil),        // 5: lapgate.inspect.v1.InspectResponse
-	(*InspectUnitRequest)(nil),     // 6: lapgate.inspect.v1.InspectUnitRequest
-	(*InspectUnitResponse)(nil),    // 7: lapgate.inspect.v1.InspectUnitResponse
-	(*ReportOutcomeRequest)(nil),   // 8: lapgate.inspect.v1.ReportOutcomeRequest
-	(*ReportOutcomeResponse)(nil),  // 9: lapgate.inspect.v1.ReportOutcomeResponse
-	(*DisposeHoldRequest)(nil),     // 10: lapgate.inspect.v1.DisposeHoldRequest
-	(*DisposeHoldResponse)(nil),    // 11: lapgate.inspect.v1.DisposeHoldResponse
-	(*ListHoldsRequest)(nil),       // 12: lapgate.inspect.v1.ListHoldsRequest
-	(*ListHoldsResponse)(nil),      // 13: lapgate.inspect.v1.ListHoldsResponse
-	(*InspectionRecord)(nil),       // 14: lapgate.inspect.v1.InspectionRecord
-	(*DispositionRecord)(nil),      // 15: lapgate.inspect.v1.DispositionRecord
-	(*OutcomeRecord)(nil),          // 16: lapgate.inspect.v1.OutcomeRecord
-	(*GetUnitRequest)(nil),         // 17: lapgate.inspect.v1.GetUnitRequest
-	(*GetUnitResponse)(nil),        // 18: lapgate.inspect.v1.GetUnitResponse
-	(*ListMismatchesRequest)(nil),  // 19: lapgate.inspect.v1.ListMismatchesRequest
-	(*ListMismatchesResponse)(nil), // 20: lapgate.inspect.v1.ListMismatchesResponse
-	(*FrameHeader)(nil),            // 21: lapgate.inspect.v1.FrameHeader
-	(*FrameChunk)(nil),             // 22: lapgate.inspect.v1.FrameChunk
-	(*Identity)(nil),               // 23: lapgate.inspect.v1.Identity
-	(*Judgement)(nil),              // 24: lapgate.inspect.v1.Judgement
-	(*Defect)(nil),                 // 25: lapgate.inspect.v1.Defect
-	(*Failure)(nil),                // 26: lapgate.inspect.v1.Failure
-	(*Frame)(nil),                  // 27: lapgate.inspect.v1.Frame
-	(Verdict)(0),                   // 28: lapgate.inspect.v1.Verdict
-	(*timestamppb.Timestamp)(nil),  // 29: google.protobuf.Timestamp
-	(*Evidence)(nil),               // 30: lapgate.inspect.v1.Evidence
+	(StationState)(0),              // 1: lapgate.inspect.v1.StationState
+	(*FrameStart)(nil),             // 2: lapgate.inspect.v1.FrameStart
+	(*InspectRequest)(nil),         // 3: lapgate.inspect.v1.InspectRequest
+	(*UnitVerdict)(nil),            // 4: lapgate.inspect.v1.UnitVerdict
+	(*FrameRefused)(nil),           // 5: lapgate.inspect.v1.FrameRefused
+	(*InspectResponse)(nil),        // 6: lapgate.inspect.v1.InspectResponse
+	(*InspectUnitRequest)(nil),     // 7: lapgate.inspect.v1.InspectUnitRequest
+	(*InspectUnitResponse)(nil),    // 8: lapgate.inspect.v1.InspectUnitResponse
+	(*ReportOutcomeRequest)(nil),   // 9: lapgate.inspect.v1.ReportOutcomeRequest
+	(*ReportOutcomeResponse)(nil),  // 10: lapgate.inspect.v1.ReportOutcomeResponse
+	(*DisposeHoldRequest)(nil),     // 11: lapgate.inspect.v1.DisposeHoldRequest
+	(*DisposeHoldResponse)(nil),    // 12: lapgate.inspect.v1.DisposeHoldResponse
+	(*ListHoldsRequest)(nil),       // 13: lapgate.inspect.v1.ListHoldsRequest
+	(*ListHoldsResponse)(nil),      // 14: lapgate.inspect.v1.ListHoldsResponse
+	(*InspectionRecord)(nil),       // 15: lapgate.inspect.v1.InspectionRecord
+	(*Suspicion)(nil),              // 16: lapgate.inspect.v1.Suspicion
+	(*DispositionRecord)(nil),      // 17: lapgate.inspect.v1.DispositionRecord
+	(*OutcomeRecord)(nil),          // 18: lapgate.inspect.v1.OutcomeRecord
+	(*GetUnitRequest)(nil),         // 19: lapgate.inspect.v1.GetUnitRequest
+	(*GetUnitResponse)(nil),        // 20: lapgate.inspect.v1.GetUnitResponse
+	(*ListMismatchesRequest)(nil),  // 21: lapgate.inspect.v1.ListMismatchesRequest
+	(*ListMismatchesResponse)(nil), // 22: lapgate.inspect.v1.ListMismatchesResponse
+	(*HeartbeatRequest)(nil),       // 23: lapgate.inspect.v1.HeartbeatRequest
+	(*HeartbeatResponse)(nil),      // 24: lapgate.inspect.v1.HeartbeatResponse
+	(*ListStationsRequest)(nil),    // 25: lapgate.inspect.v1.ListStationsRequest
+	(*Station)(nil),                // 26: lapgate.inspect.v1.Station
+	(*ListStationsResponse)(nil),   // 27: lapgate.inspect.v1.ListStationsResponse
+	(*FrameHeader)(nil),            // 28: lapgate.inspect.v1.FrameHeader
+	(*FrameChunk)(nil),             // 29: lapgate.inspect.v1.FrameChunk
+	(*Identity)(nil),               // 30: lapgate.inspect.v1.Identity
+	(*Judgement)(nil),              // 31: lapgate.inspect.v1.Judgement
+	(*Defect)(nil),                 // 32: lapgate.inspect.v1.Defect
+	(*Failure)(nil),                // 33: lapgate.inspect.v1.Failure
+	(*Frame)(nil),                  // 34: lapgate.inspect.v1.Frame
+	(Verdict)(0),                   // 35: lapgate.inspect.v1.Verdict
+	(*timestamppb.Timestamp)(nil),  // 36: google.protobuf.Timestamp
+	(*Evidence)(nil),               // 37: lapgate.inspect.v1.Evidence
 }
 var file_inspectpb_inspection_proto_depIdxs = []int32{
-	21, // 0: lapgate.inspect.v1.FrameStart.header:type_name -> lapgate.inspect.v1.FrameHeader
-	1,  // 1: lapgate.inspect.v1.InspectRequest.start:type_name -> lapgate.inspect.v1.FrameStart
-	22, // 2: lapgate.inspect.v1.InspectRequest.chunk:type_name -> lapgate.inspect.v1.FrameChunk
-	23, // 3: lapgate.inspect.v1.UnitVerdict.identity:type_name -> lapgate.inspect.v1.Identity
-	24, // 4: lapgate.inspect.v1.UnitVerdict.judgement:type_name -> lapgate.inspect.v1.Judgement
-	25, // 5: lapgate.inspect.v1.UnitVerdict.defects:type_name -> lapgate.inspect.v1.Defect
-	26, // 6: lapgate.inspect.v1.UnitVerdict.failures:type_name -> lapgate.inspect.v1.Failure
-	23, // 7: lapgate.inspect.v1.FrameRefused.identity:type_name -> lapgate.inspect.v1.Identity
-	3,  // 8: lapgate.inspect.v1.InspectResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
-	4,  // 9: lapgate.inspect.v1.InspectResponse.refused:type_name -> lapgate.inspect.v1.FrameRefused
-	27, // 10: lapgate.inspect.v1.InspectUnitRequest.frames:type_name -> lapgate.inspect.v1.Frame
-	3,  // 11: lapgate.inspect.v1.InspectUnitResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
-	23, // 12: lapgate.inspect.v1.ReportOutcomeRequest.identity:type_name -> lapgate.inspect.v1.Identity
-	28, // 13: lapgate.inspect.v1.ReportOutcomeRequest.bin:type_name -> lapgate.inspect.v1.Verdict
-	29, // 14: lapgate.inspect.v1.ReportOutcomeRequest.at:type_name -> google.protobuf.Timestamp
+	28, // 0: lapgate.inspect.v1.FrameStart.header:type_name -> lapgate.inspect.v1.FrameHeader
+	2,  // 1: lapgate.inspect.v1.InspectRequest.start:type_name -> lapgate.inspect.v1.FrameStart
+	29, // 2: lapgate.inspect.v1.InspectRequest.chunk:type_name -> lapgate.inspect.v1.FrameChunk
+	30, // 3: lapgate.inspect.v1.UnitVerdict.identity:type_name -> lapgate.inspect.v1.Identity
+	31, // 4: lapgate.inspect.v1.UnitVerdict.judgement:type_name -> lapgate.inspect.v1.Judgement
+	32, // 5: lapgate.inspect.v1.UnitVerdict.defects:type_name -> lapgate.inspect.v1.Defect
+	33, // 6: lapgate.inspect.v1.UnitVerdict.failures:type_name -> lapgate.inspect.v1.Failure
+	30, // 7: lapgate.inspect.v1.FrameRefused.identity:type_name -> lapgate.inspect.v1.Identity
+	4,  // 8: lapgate.inspect.v1.InspectResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
+	5,  // 9: lapgate.inspect.v1.InspectResponse.refused:type_name -> lapgate.inspect.v1.FrameRefused
+	34, // 10: lapgate.inspect.v1.InspectUnitRequest.frames:type_name -> lapgate.inspect.v1.Frame
+	4,  // 11: lapgate.inspect.v1.InspectUnitResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
+	30, // 12: lapgate.inspect.v1.ReportOutcomeRequest.identity:type_name -> lapgate.inspect.v1.Identity
+	35, // 13: lapgate.inspect.v1.ReportOutcomeRequest.bin:type_name -> lapgate.inspect.v1.Verdict
+	36, // 14: lapgate.inspect.v1.ReportOutcomeRequest.at:type_name -> google.protobuf.Timestamp
 	0,  // 15: lapgate.inspect.v1.DisposeHoldRequest.disposition:type_name -> lapgate.inspect.v1.Disposition
-	14, // 16: lapgate.inspect.v1.DisposeHoldResponse.inspection:type_name -> lapgate.inspect.v1.InspectionRecord
-	14, // 17: lapgate.inspect.v1.ListHoldsResponse.holds:type_name -> lapgate.inspect.v1.InspectionRecord
-	23, // 18: lapgate.inspect.v1.InspectionRecord.identity:type_name -> lapgate.inspect.v1.Identity
-	29, // 19: lapgate.inspect.v1.InspectionRecord.captured:type_name -> google.protobuf.Timestamp
-	29, // 20: lapgate.inspect.v1.InspectionRecord.judged:type_name -> google.protobuf.Timestamp
-	30, // 21: lapgate.inspect.v1.InspectionRecord.evidence:type_name -> lapgate.inspect.v1.Evidence
-	24, // 22: lapgate.inspect.v1.InspectionRecord.judgements:type_name -> lapgate.inspect.v1.Judgement
-	15, // 23: lapgate.inspect.v1.InspectionRecord.dispositions:type_name -> lapgate.inspect.v1.DispositionRecord
-	16, // 24: lapgate.inspect.v1.InspectionRecord.outcomes:type_name -> lapgate.inspect.v1.OutcomeRecord
-	28, // 25: lapgate.inspect.v1.InspectionRecord.verdict:type_name -> lapgate.inspect.v1.Verdict
-	0,  // 26: lapgate.inspect.v1.DispositionRecord.disposition:type_name -> lapgate.inspect.v1.Disposition
-	29, // 27: lapgate.inspect.v1.DispositionRecord.at:type_name -> google.protobuf.Timestamp
-	28, // 28: lapgate.inspect.v1.OutcomeRecord.bin:type_name -> lapgate.inspect.v1.Verdict
-	29, // 29: lapgate.inspect.v1.OutcomeRecord.at:type_name -> google.protobuf.Timestamp
-	14, // 30: lapgate.inspect.v1.GetUnitResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
-	14, // 31: lapgate.inspect.v1.ListMismatchesResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
-	2,  // 32: lapgate.inspect.v1.InspectionService.Inspect:input_type -> lapgate.inspect.v1.InspectRequest
-	6,  // 33: lapgate.inspect.v1.InspectionService.InspectUnit:input_type -> lapgate.inspect.v1.InspectUnitRequest
-	8,  // 34: lapgate.inspect.v1.InspectionService.ReportOutcome:input_type -> lapgate.inspect.v1.ReportOutcomeRequest
-	10, // 35: lapgate.inspect.v1.InspectionService.DisposeHold:input_type -> lapgate.inspect.v1.DisposeHoldRequest
-	12, // 36: lapgate.inspect.v1.InspectionService.ListHolds:input_type -> lapgate.inspect.v1.ListHoldsRequest
-	17, // 37: lapgate.inspect.v1.InspectionService.GetUnit:input_type -> lapgate.inspect.v1.GetUnitRequest
-	19, // 38: lapgate.inspect.v1.InspectionService.ListMismatches:input_type -> lapgate.inspect.v1.ListMismatchesRequest
-	5,  // 39: lapgate.inspect.v1.InspectionService.Inspect:output_type -> lapgate.inspect.v1.InspectResponse
-	7,  // 40: lapgate.inspect.v1.InspectionService.InspectUnit:output_type -> lapgate.inspect.v1.InspectUnitResponse
-	9,  // 41: lapgate.inspect.v1.InspectionService.ReportOutcome:output_type -> lapgate.inspect.v1.ReportOutcomeResponse
-	11, // 42: lapgate.inspect.v1.InspectionService.DisposeHold:output_type -> lapgate.inspect.v1.DisposeHoldResponse
-	13, // 43: lapgate.inspect.v1.InspectionService.ListHolds:output_type -> lapgate.inspect.v1.ListHoldsResponse
-	18, // 44: lapgate.inspect.v1.InspectionService.GetUnit:output_type -> lapgate.inspect.v1.GetUnitResponse
-	20, // 45: lapgate.inspect.v1.InspectionService.ListMismatches:output_type -> lapgate.inspect.v1.ListMismatchesResponse
-	39, // [39:46] is the sub-list for method output_type
-	32, // [32:39] is the sub-list for method input_type
-	32, // [32:32] is the sub-list for extension type_name
-	32, // [32:32] is the sub-list for extension extendee
-	0,  // [0:32] is the sub-list for field type_name
+	15, // 16: lapgate.inspect.v1.DisposeHoldResponse.inspection:type_name -> lapgate.inspect.v1.InspectionRecord
+	15, // 17: lapgate.inspect.v1.ListHoldsResponse.holds:type_name -> lapgate.inspect.v1.InspectionRecord
+	30, // 18: lapgate.inspect.v1.InspectionRecord.identity:type_name -> lapgate.inspect.v1.Identity
+	36, // 19: lapgate.inspect.v1.InspectionRecord.captured:type_name -> google.protobuf.Timestamp
+	36, // 20: lapgate.inspect.v1.InspectionRecord.judged:type_name -> google.protobuf.Timestamp
+	37, // 21: lapgate.inspect.v1.InspectionRecord.evidence:type_name -> lapgate.inspect.v1.Evidence
+	31, // 22: lapgate.inspect.v1.InspectionRecord.judgements:type_name -> lapgate.inspect.v1.Judgement
+	17, // 23: lapgate.inspect.v1.InspectionRecord.dispositions:type_name -> lapgate.inspect.v1.DispositionRecord
+	18, // 24: lapgate.inspect.v1.InspectionRecord.outcomes:type_name -> lapgate.inspect.v1.OutcomeRecord
+	35, // 25: lapgate.inspect.v1.InspectionRecord.verdict:type_name -> lapgate.inspect.v1.Verdict
+	16, // 26: lapgate.inspect.v1.InspectionRecord.suspicions:type_name -> lapgate.inspect.v1.Suspicion
+	36, // 27: lapgate.inspect.v1.Suspicion.at:type_name -> google.protobuf.Timestamp
+	0,  // 28: lapgate.inspect.v1.DispositionRecord.disposition:type_name -> lapgate.inspect.v1.Disposition
+	36, // 29: lapgate.inspect.v1.DispositionRecord.at:type_name -> google.protobuf.Timestamp
+	35, // 30: lapgate.inspect.v1.OutcomeRecord.bin:type_name -> lapgate.inspect.v1.Verdict
+	36, // 31: lapgate.inspect.v1.OutcomeRecord.at:type_name -> google.protobuf.Timestamp
+	15, // 32: lapgate.inspect.v1.GetUnitResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
+	15, // 33: lapgate.inspect.v1.ListMismatchesResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
+	36, // 34: lapgate.inspect.v1.HeartbeatResponse.server_time:type_name -> google.protobuf.Timestamp
+	1,  // 35: lapgate.inspect.v1.HeartbeatResponse.state:type_name -> lapgate.inspect.v1.StationState
+	36, // 36: lapgate.inspect.v1.Station.heartbeat:type_name -> google.protobuf.Timestamp
+	36, // 37: lapgate.inspect.v1.Station.inspection:type_name -> google.protobuf.Timestamp
+	1,  // 38: lapgate.inspect.v1.Station.state:type_name -> lapgate.inspect.v1.StationState
+	26, // 39: lapgate.inspect.v1.ListStationsResponse.stations:type_name -> lapgate.inspect.v1.Station
+	36, // 40: lapgate.inspect.v1.ListStationsResponse.server_time:type_name -> google.protobuf.Timestamp
+	3,  // 41: lapgate.inspect.v1.InspectionService.Inspect:input_type -> lapgate.inspect.v1.InspectRequest
+	7,  // 42: lapgate.inspect.v1.InspectionService.InspectUnit:input_type -> lapgate.inspect.v1.InspectUnitRequest
+	9,  // 43: lapgate.inspect.v1.InspectionService.ReportOutcome:input_type -> lapgate.inspect.v1.ReportOutcomeRequest
+	11, // 44: lapgate.inspect.v1.InspectionService.DisposeHold:input_type -> lapgate.inspect.v1.DisposeHoldRequest
+	13, // 45: lapgate.inspect.v1.InspectionService.ListHolds:input_type -> lapgate.inspect.v1.ListHoldsRequest
+	19, // 46: lapgate.inspect.v1.InspectionService.GetUnit:input_type -> lapgate.inspect.v1.GetUnitRequest
+	21, // 47: lapgate.inspect.v1.InspectionService.ListMismatches:input_type -> lapgate.inspect.v1.ListMismatchesRequest
+	23, // 48: lapgate.inspect.v1.InspectionService.Heartbeat:input_type -> lapgate.inspect.v1.HeartbeatRequest
+	25, // 49: lapgate.inspect.v1.InspectionService.ListStations:input_type -> lapgate.inspect.v1.ListStationsRequest
+	6,  // 50: lapgate.inspect.v1.InspectionService.Inspect:output_type -> lapgate.inspect.v1.InspectResponse
+	8,  // 51: lapgate.inspect.v1.InspectionService.InspectUnit:output_type -> lapgate.inspect.v1.InspectUnitResponse
+	10, // 52: lapgate.inspect.v1.InspectionService.ReportOutcome:output_type -> lapgate.inspect.v1.ReportOutcomeResponse
+	12, // 53: lapgate.inspect.v1.InspectionService.DisposeHold:output_type -> lapgate.inspect.v1.DisposeHoldResponse
+	14, // 54: lapgate.inspect.v1.InspectionService.ListHolds:output_type -> lapgate.inspect.v1.ListHoldsResponse
+	20, // 55: lapgate.inspect.v1.InspectionService.GetUnit:output_type -> lapgate.inspect.v1.GetUnitResponse
+	22, // 56: lapgate.inspect.v1.InspectionService.ListMismatches:output_type -> lapgate.inspect.v1.ListMismatchesResponse
+	24, // 57: lapgate.inspect.v1.InspectionService.Heartbeat:output_type -> lapgate.inspect.v1.HeartbeatResponse
+	27, // 58: lapgate.inspect.v1.InspectionService.ListStations:output_type -> lapgate.inspect.v1.ListStationsResponse
+	50, // [50:59] is the sub-list for method output_type
+	41, // [41:50] is the sub-list for method input_type
+	41, // [41:41] is the sub-list for extension type_name
+	41, // [41:41] is the sub-list for extension extendee
+	0,  // [0:41] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_inspection_proto_init() }
@@ -1656,8 +2133,8 @@ func file_inspectpb_inspection_proto_init() {
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_inspection_proto_rawDesc), len(file_inspectpb_inspection_proto_rawDesc)),
-			NumEnums:      1,
-			NumMessages:   20,
+			NumEnums:      2,
+			NumMessages:   26,
 			NumExtensions: 0,
 			NumServices:   1,
 		},

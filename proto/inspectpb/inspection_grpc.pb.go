@@ -26,6 +26,8 @@ const (
 	InspectionService_ListHolds_FullMethodName      = "/lapgate.inspect.v1.InspectionService/ListHolds"
 	InspectionService_GetUnit_FullMethodName        = "/lapgate.inspect.v1.InspectionService/GetUnit"
 	InspectionService_ListMismatches_FullMethodName = "/lapgate.inspect.v1.InspectionService/ListMismatches"
+	InspectionService_Heartbeat_FullMethodName      = "/lapgate.inspect.v1.InspectionService/Heartbeat"
+	InspectionService_ListStations_FullMethodName   = "/lapgate.inspect.v1.InspectionService/ListStations"
 )
 
 // InspectionServiceClient is the client API for InspectionService service.
@@ -51,6 +53,11 @@ type InspectionServiceClient interface {
 	GetUnit(ctx context.Context, in *GetUnitRequest, opts ...grpc.CallOption) (*GetUnitResponse, error)
 	// ListMismatches lists units whose outcome differs from their verdict.
 	ListMismatches(ctx context.Context, in *ListMismatchesRequest, opts ...grpc.CallOption) (*ListMismatchesResponse, error)
+	// Heartbeat says that a line is there, and asks whether its station may judge. No
+	// answer means: reject bin.
+	Heartbeat(ctx context.Context, in *HeartbeatRequest, opts ...grpc.CallOption) (*HeartbeatResponse, error)
+	// ListStations lists the stations heard of since the server started.
+	ListStations(ctx context.Context, in *ListStationsRequest, opts ...grpc.CallOption) (*ListStationsResponse, error)
 }
 
 type inspectionServiceClient struct {
@@ -134,6 +141,26 @@ func (c *inspectionServiceClient) ListMismatches(ctx context.Context, in *ListMi
 	return out, nil
 }
 
+func (c *inspectionServiceClient) Heartbeat(ctx context.Context, in *HeartbeatRequest, opts ...grpc.CallOption) (*HeartbeatResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(HeartbeatResponse)
+	err := c.cc.Invoke(ctx, InspectionService_Heartbeat_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *inspectionServiceClient) ListStations(ctx context.Context, in *ListStationsRequest, opts ...grpc.CallOption) (*ListStationsResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListStationsResponse)
+	err := c.cc.Invoke(ctx, InspectionService_ListStations_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // InspectionServiceServer is the server API for InspectionService service.
 // All implementations must embed UnimplementedInspectionServiceServer
 // for forward compatibility.
@@ -157,6 +184,11 @@ type InspectionServiceServer interface {
 	GetUnit(context.Context, *GetUnitRequest) (*GetUnitResponse, error)
 	// ListMismatches lists units whose outcome differs from their verdict.
 	ListMismatches(context.Context, *ListMismatchesRequest) (*ListMismatchesResponse, error)
+	// Heartbeat says that a line is there, and asks whether its station may judge. No
+	// answer means: reject bin.
+	Heartbeat(context.Context, *HeartbeatRequest) (*HeartbeatResponse, error)
+	// ListStations lists the stations heard of since the server started.
+	ListStations(context.Context, *ListStationsRequest) (*ListStationsResponse, error)
 	mustEmbedUnimplementedInspectionServiceServer()
 }
 
@@ -187,6 +219,12 @@ func (UnimplementedInspectionServiceServer) GetUnit(context.Context, *GetUnitReq
 }
 func (UnimplementedInspectionServiceServer) ListMismatches(context.Context, *ListMismatchesRequest) (*ListMismatchesResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListMismatches not implemented")
+}
+func (UnimplementedInspectionServiceServer) Heartbeat(context.Context, *HeartbeatRequest) (*HeartbeatResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method Heartbeat not implemented")
+}
+func (UnimplementedInspectionServiceServer) ListStations(context.Context, *ListStationsRequest) (*ListStationsResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListStations not implemented")
 }
 func (UnimplementedInspectionServiceServer) mustEmbedUnimplementedInspectionServiceServer() {}
 func (UnimplementedInspectionServiceServer) testEmbeddedByValue()                           {}
@@ -324,6 +362,42 @@ func _InspectionService_ListMismatches_Handler(srv interface{}, ctx context.Cont
 	return interceptor(ctx, in, info, handler)
 }
 
+func _InspectionService_Heartbeat_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(HeartbeatRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(InspectionServiceServer).Heartbeat(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: InspectionService_Heartbeat_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(InspectionServiceServer).Heartbeat(ctx, req.(*HeartbeatRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _InspectionService_ListStations_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListStationsRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(InspectionServiceServer).ListStations(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: InspectionService_ListStations_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(InspectionServiceServer).ListStations(ctx, req.(*ListStationsRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // InspectionService_ServiceDesc is the grpc.ServiceDesc for InspectionService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -354,6 +428,14 @@ var InspectionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "ListMismatches",
 			Handler:    _InspectionService_ListMismatches_Handler,
+		},
+		{
+			MethodName: "Heartbeat",
+			Handler:    _InspectionService_Heartbeat_Handler,
+		},
+		{
+			MethodName: "ListStations",
+			Handler:    _InspectionService_ListStations_Handler,
 		},
 	},
 	Streams: []grpc.StreamDesc{

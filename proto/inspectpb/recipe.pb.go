@@ -22,6 +22,57 @@ const (
 	_ = protoimpl.EnforceVersion(protoimpl.MaxVersion - 20)
 )
 
+// Effective says from when an approved recipe judges.
+type Effective int32
+
+const (
+	Effective_EFFECTIVE_UNSPECIFIED Effective = 0
+	Effective_EFFECTIVE_NOW         Effective = 1
+	// For lots that the line and station have not seen before.
+	Effective_EFFECTIVE_NEXT_LOT Effective = 2
+)
+
+// Enum value maps for Effective.
+var (
+	Effective_name = map[int32]string{
+		0: "EFFECTIVE_UNSPECIFIED",
+		1: "EFFECTIVE_NOW",
+		2: "EFFECTIVE_NEXT_LOT",
+	}
+	Effective_value = map[string]int32{
+		"EFFECTIVE_UNSPECIFIED": 0,
+		"EFFECTIVE_NOW":         1,
+		"EFFECTIVE_NEXT_LOT":    2,
+	}
+)
+
+func (x Effective) Enum() *Effective {
+	p := new(Effective)
+	*p = x
+	return p
+}
+
+func (x Effective) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (Effective) Descriptor() protoreflect.EnumDescriptor {
+	return file_inspectpb_recipe_proto_enumTypes[0].Descriptor()
+}
+
+func (Effective) Type() protoreflect.EnumType {
+	return &file_inspectpb_recipe_proto_enumTypes[0]
+}
+
+func (x Effective) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use Effective.Descriptor instead.
+func (Effective) EnumDescriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{0}
+}
+
 // ListRecipesRequest has no filter.
 type ListRecipesRequest struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -72,7 +123,9 @@ type RecipeInForce struct {
 	Views  []string               `protobuf:"bytes,8,rep,name=views,proto3" json:"views,omitempty"`
 	Since  *timestamppb.Timestamp `protobuf:"bytes,9,opt,name=since,proto3" json:"since,omitempty"`
 	// The error of a later save of this file that was refused; empty = none.
-	Refused       string `protobuf:"bytes,10,opt,name=refused,proto3" json:"refused,omitempty"`
+	Refused string `protobuf:"bytes,10,opt,name=refused,proto3" json:"refused,omitempty"`
+	// The approval it runs by; missing where the server needs none.
+	Approval      *Approval `protobuf:"bytes,11,opt,name=approval,proto3" json:"approval,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -170,6 +223,440 @@ func (x *RecipeInForce) GetRefused() string {
 	return ""
 }
 
+func (x *RecipeInForce) GetApproval() *Approval {
+	if x != nil {
+		return x.Approval
+	}
+	return nil
+}
+
+// RecipeWaiting is a recipe that was saved, is sound, and judges nothing yet.
+type RecipeWaiting struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Part          string                 `protobuf:"bytes,1,opt,name=part,proto3" json:"part,omitempty"`
+	Revision      string                 `protobuf:"bytes,2,opt,name=revision,proto3" json:"revision,omitempty"`
+	Surface       string                 `protobuf:"bytes,3,opt,name=surface,proto3" json:"surface,omitempty"`
+	Hash          string                 `protobuf:"bytes,4,opt,name=hash,proto3" json:"hash,omitempty"`
+	File          string                 `protobuf:"bytes,5,opt,name=file,proto3" json:"file,omitempty"`
+	Since         *timestamppb.Timestamp `protobuf:"bytes,6,opt,name=since,proto3" json:"since,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *RecipeWaiting) Reset() {
+	*x = RecipeWaiting{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *RecipeWaiting) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*RecipeWaiting) ProtoMessage() {}
+
+func (x *RecipeWaiting) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use RecipeWaiting.ProtoReflect.Descriptor instead.
+func (*RecipeWaiting) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{2}
+}
+
+func (x *RecipeWaiting) GetPart() string {
+	if x != nil {
+		return x.Part
+	}
+	return ""
+}
+
+func (x *RecipeWaiting) GetRevision() string {
+	if x != nil {
+		return x.Revision
+	}
+	return ""
+}
+
+func (x *RecipeWaiting) GetSurface() string {
+	if x != nil {
+		return x.Surface
+	}
+	return ""
+}
+
+func (x *RecipeWaiting) GetHash() string {
+	if x != nil {
+		return x.Hash
+	}
+	return ""
+}
+
+func (x *RecipeWaiting) GetFile() string {
+	if x != nil {
+		return x.File
+	}
+	return ""
+}
+
+func (x *RecipeWaiting) GetSince() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Since
+	}
+	return nil
+}
+
+// Approval is two people's word that a recipe may judge what ships.
+type Approval struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Hash          string                 `protobuf:"bytes,1,opt,name=hash,proto3" json:"hash,omitempty"`
+	Author        string                 `protobuf:"bytes,2,opt,name=author,proto3" json:"author,omitempty"`
+	Approver      string                 `protobuf:"bytes,3,opt,name=approver,proto3" json:"approver,omitempty"`
+	Reason        string                 `protobuf:"bytes,4,opt,name=reason,proto3" json:"reason,omitempty"`
+	Effective     Effective              `protobuf:"varint,5,opt,name=effective,proto3,enum=lapgate.inspect.v1.Effective" json:"effective,omitempty"`
+	At            *timestamppb.Timestamp `protobuf:"bytes,6,opt,name=at,proto3" json:"at,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Approval) Reset() {
+	*x = Approval{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[3]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Approval) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Approval) ProtoMessage() {}
+
+func (x *Approval) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[3]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Approval.ProtoReflect.Descriptor instead.
+func (*Approval) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{3}
+}
+
+func (x *Approval) GetHash() string {
+	if x != nil {
+		return x.Hash
+	}
+	return ""
+}
+
+func (x *Approval) GetAuthor() string {
+	if x != nil {
+		return x.Author
+	}
+	return ""
+}
+
+func (x *Approval) GetApprover() string {
+	if x != nil {
+		return x.Approver
+	}
+	return ""
+}
+
+func (x *Approval) GetReason() string {
+	if x != nil {
+		return x.Reason
+	}
+	return ""
+}
+
+func (x *Approval) GetEffective() Effective {
+	if x != nil {
+		return x.Effective
+	}
+	return Effective_EFFECTIVE_UNSPECIFIED
+}
+
+func (x *Approval) GetAt() *timestamppb.Timestamp {
+	if x != nil {
+		return x.At
+	}
+	return nil
+}
+
+// ApproveRecipeRequest carries an approval; at is given by the server.
+type ApproveRecipeRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Approval      *Approval              `protobuf:"bytes,1,opt,name=approval,proto3" json:"approval,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ApproveRecipeRequest) Reset() {
+	*x = ApproveRecipeRequest{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[4]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ApproveRecipeRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ApproveRecipeRequest) ProtoMessage() {}
+
+func (x *ApproveRecipeRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[4]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ApproveRecipeRequest.ProtoReflect.Descriptor instead.
+func (*ApproveRecipeRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{4}
+}
+
+func (x *ApproveRecipeRequest) GetApproval() *Approval {
+	if x != nil {
+		return x.Approval
+	}
+	return nil
+}
+
+// ApproveRecipeResponse is the approval as recorded.
+type ApproveRecipeResponse struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Approval      *Approval              `protobuf:"bytes,1,opt,name=approval,proto3" json:"approval,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ApproveRecipeResponse) Reset() {
+	*x = ApproveRecipeResponse{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[5]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ApproveRecipeResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ApproveRecipeResponse) ProtoMessage() {}
+
+func (x *ApproveRecipeResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[5]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ApproveRecipeResponse.ProtoReflect.Descriptor instead.
+func (*ApproveRecipeResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{5}
+}
+
+func (x *ApproveRecipeResponse) GetApproval() *Approval {
+	if x != nil {
+		return x.Approval
+	}
+	return nil
+}
+
+// ListApprovalsRequest names a part; empty = all.
+type ListApprovalsRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Part          string                 `protobuf:"bytes,1,opt,name=part,proto3" json:"part,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListApprovalsRequest) Reset() {
+	*x = ListApprovalsRequest{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[6]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListApprovalsRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListApprovalsRequest) ProtoMessage() {}
+
+func (x *ListApprovalsRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[6]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListApprovalsRequest.ProtoReflect.Descriptor instead.
+func (*ListApprovalsRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{6}
+}
+
+func (x *ListApprovalsRequest) GetPart() string {
+	if x != nil {
+		return x.Part
+	}
+	return ""
+}
+
+// ApprovalRecord is an approval and what it is of.
+type ApprovalRecord struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Approval      *Approval              `protobuf:"bytes,1,opt,name=approval,proto3" json:"approval,omitempty"`
+	Part          string                 `protobuf:"bytes,2,opt,name=part,proto3" json:"part,omitempty"`
+	Revision      string                 `protobuf:"bytes,3,opt,name=revision,proto3" json:"revision,omitempty"`
+	Surface       string                 `protobuf:"bytes,4,opt,name=surface,proto3" json:"surface,omitempty"`
+	File          string                 `protobuf:"bytes,5,opt,name=file,proto3" json:"file,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ApprovalRecord) Reset() {
+	*x = ApprovalRecord{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[7]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ApprovalRecord) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ApprovalRecord) ProtoMessage() {}
+
+func (x *ApprovalRecord) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[7]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ApprovalRecord.ProtoReflect.Descriptor instead.
+func (*ApprovalRecord) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{7}
+}
+
+func (x *ApprovalRecord) GetApproval() *Approval {
+	if x != nil {
+		return x.Approval
+	}
+	return nil
+}
+
+func (x *ApprovalRecord) GetPart() string {
+	if x != nil {
+		return x.Part
+	}
+	return ""
+}
+
+func (x *ApprovalRecord) GetRevision() string {
+	if x != nil {
+		return x.Revision
+	}
+	return ""
+}
+
+func (x *ApprovalRecord) GetSurface() string {
+	if x != nil {
+		return x.Surface
+	}
+	return ""
+}
+
+func (x *ApprovalRecord) GetFile() string {
+	if x != nil {
+		return x.File
+	}
+	return ""
+}
+
+// ListApprovalsResponse lists approvals.
+type ListApprovalsResponse struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Approvals     []*ApprovalRecord      `protobuf:"bytes,1,rep,name=approvals,proto3" json:"approvals,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListApprovalsResponse) Reset() {
+	*x = ListApprovalsResponse{}
+	mi := &file_inspectpb_recipe_proto_msgTypes[8]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListApprovalsResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListApprovalsResponse) ProtoMessage() {}
+
+func (x *ListApprovalsResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_recipe_proto_msgTypes[8]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListApprovalsResponse.ProtoReflect.Descriptor instead.
+func (*ListApprovalsResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{8}
+}
+
+func (x *ListApprovalsResponse) GetApprovals() []*ApprovalRecord {
+	if x != nil {
+		return x.Approvals
+	}
+	return nil
+}
+
 // RecipePlace is a line and station with cameras of its own.
 type RecipePlace struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -183,7 +670,7 @@ type RecipePlace struct {
 
 func (x *RecipePlace) Reset() {
 	*x = RecipePlace{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	mi := &file_inspectpb_recipe_proto_msgTypes[9]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -195,7 +682,7 @@ func (x *RecipePlace) String() string {
 func (*RecipePlace) ProtoMessage() {}
 
 func (x *RecipePlace) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[2]
+	mi := &file_inspectpb_recipe_proto_msgTypes[9]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -208,7 +695,7 @@ func (x *RecipePlace) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RecipePlace.ProtoReflect.Descriptor instead.
 func (*RecipePlace) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{2}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{9}
 }
 
 func (x *RecipePlace) GetLine() string {
@@ -241,16 +728,20 @@ func (x *RecipePlace) GetJudgingHash() string {
 
 // ListRecipesResponse lists recipes.
 type ListRecipesResponse struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Recipes       []*RecipeInForce       `protobuf:"bytes,1,rep,name=recipes,proto3" json:"recipes,omitempty"`
-	Problems      []*Problem             `protobuf:"bytes,2,rep,name=problems,proto3" json:"problems,omitempty"`
+	state    protoimpl.MessageState `protogen:"open.v1"`
+	Recipes  []*RecipeInForce       `protobuf:"bytes,1,rep,name=recipes,proto3" json:"recipes,omitempty"`
+	Problems []*Problem             `protobuf:"bytes,2,rep,name=problems,proto3" json:"problems,omitempty"`
+	// Saved and not approved.
+	Waiting []*RecipeWaiting `protobuf:"bytes,3,rep,name=waiting,proto3" json:"waiting,omitempty"`
+	// The server runs for development: recipes need no approval.
+	Development   bool `protobuf:"varint,4,opt,name=development,proto3" json:"development,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ListRecipesResponse) Reset() {
 	*x = ListRecipesResponse{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[3]
+	mi := &file_inspectpb_recipe_proto_msgTypes[10]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -262,7 +753,7 @@ func (x *ListRecipesResponse) String() string {
 func (*ListRecipesResponse) ProtoMessage() {}
 
 func (x *ListRecipesResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[3]
+	mi := &file_inspectpb_recipe_proto_msgTypes[10]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -275,7 +766,7 @@ func (x *ListRecipesResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListRecipesResponse.ProtoReflect.Descriptor instead.
 func (*ListRecipesResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{3}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{10}
 }
 
 func (x *ListRecipesResponse) GetRecipes() []*RecipeInForce {
@@ -292,6 +783,20 @@ func (x *ListRecipesResponse) GetProblems() []*Problem {
 	return nil
 }
 
+func (x *ListRecipesResponse) GetWaiting() []*RecipeWaiting {
+	if x != nil {
+		return x.Waiting
+	}
+	return nil
+}
+
+func (x *ListRecipesResponse) GetDevelopment() bool {
+	if x != nil {
+		return x.Development
+	}
+	return false
+}
+
 // GetRecipeRequest names a recipe by the hash of its text.
 type GetRecipeRequest struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -302,7 +807,7 @@ type GetRecipeRequest struct {
 
 func (x *GetRecipeRequest) Reset() {
 	*x = GetRecipeRequest{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[4]
+	mi := &file_inspectpb_recipe_proto_msgTypes[11]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -314,7 +819,7 @@ func (x *GetRecipeRequest) String() string {
 func (*GetRecipeRequest) ProtoMessage() {}
 
 func (x *GetRecipeRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[4]
+	mi := &file_inspectpb_recipe_proto_msgTypes[11]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -327,7 +832,7 @@ func (x *GetRecipeRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetRecipeRequest.ProtoReflect.Descriptor instead.
 func (*GetRecipeRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{4}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{11}
 }
 
 func (x *GetRecipeRequest) GetHash() string {
@@ -348,7 +853,7 @@ type GetRecipeResponse struct {
 
 func (x *GetRecipeResponse) Reset() {
 	*x = GetRecipeResponse{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[5]
+	mi := &file_inspectpb_recipe_proto_msgTypes[12]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -360,7 +865,7 @@ func (x *GetRecipeResponse) String() string {
 func (*GetRecipeResponse) ProtoMessage() {}
 
 func (x *GetRecipeResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[5]
+	mi := &file_inspectpb_recipe_proto_msgTypes[12]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -373,7 +878,7 @@ func (x *GetRecipeResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetRecipeResponse.ProtoReflect.Descriptor instead.
 func (*GetRecipeResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{5}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{12}
 }
 
 func (x *GetRecipeResponse) GetHash() string {
@@ -401,7 +906,7 @@ type ValidateRecipeRequest struct {
 
 func (x *ValidateRecipeRequest) Reset() {
 	*x = ValidateRecipeRequest{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[6]
+	mi := &file_inspectpb_recipe_proto_msgTypes[13]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -413,7 +918,7 @@ func (x *ValidateRecipeRequest) String() string {
 func (*ValidateRecipeRequest) ProtoMessage() {}
 
 func (x *ValidateRecipeRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[6]
+	mi := &file_inspectpb_recipe_proto_msgTypes[13]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -426,7 +931,7 @@ func (x *ValidateRecipeRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ValidateRecipeRequest.ProtoReflect.Descriptor instead.
 func (*ValidateRecipeRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{6}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{13}
 }
 
 func (x *ValidateRecipeRequest) GetFile() string {
@@ -456,7 +961,7 @@ type Problem struct {
 
 func (x *Problem) Reset() {
 	*x = Problem{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[7]
+	mi := &file_inspectpb_recipe_proto_msgTypes[14]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -468,7 +973,7 @@ func (x *Problem) String() string {
 func (*Problem) ProtoMessage() {}
 
 func (x *Problem) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[7]
+	mi := &file_inspectpb_recipe_proto_msgTypes[14]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -481,7 +986,7 @@ func (x *Problem) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Problem.ProtoReflect.Descriptor instead.
 func (*Problem) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{7}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{14}
 }
 
 func (x *Problem) GetFile() string {
@@ -522,7 +1027,7 @@ type ValidateRecipeResponse struct {
 
 func (x *ValidateRecipeResponse) Reset() {
 	*x = ValidateRecipeResponse{}
-	mi := &file_inspectpb_recipe_proto_msgTypes[8]
+	mi := &file_inspectpb_recipe_proto_msgTypes[15]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -534,7 +1039,7 @@ func (x *ValidateRecipeResponse) String() string {
 func (*ValidateRecipeResponse) ProtoMessage() {}
 
 func (x *ValidateRecipeResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_recipe_proto_msgTypes[8]
+	mi := &file_inspectpb_recipe_proto_msgTypes[15]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -547,7 +1052,7 @@ func (x *ValidateRecipeResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ValidateRecipeResponse.ProtoReflect.Descriptor instead.
 func (*ValidateRecipeResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{8}
+	return file_inspectpb_recipe_proto_rawDescGZIP(), []int{15}
 }
 
 func (x *ValidateRecipeResponse) GetProblems() []*Problem {
@@ -562,7 +1067,7 @@ var File_inspectpb_recipe_proto protoreflect.FileDescriptor
 const file_inspectpb_recipe_proto_rawDesc = "" +
 	"\n" +
 	"\x16inspectpb/recipe.proto\x12\x12lapgate.inspect.v1\x1a\x1fgoogle/protobuf/timestamp.proto\"\x14\n" +
-	"\x12ListRecipesRequest\"\x9c\x02\n" +
+	"\x12ListRecipesRequest\"\xd6\x02\n" +
 	"\rRecipeInForce\x12\x12\n" +
 	"\x04part\x18\x01 \x01(\tR\x04part\x12\x1a\n" +
 	"\brevision\x18\x02 \x01(\tR\brevision\x12\x18\n" +
@@ -573,15 +1078,46 @@ const file_inspectpb_recipe_proto_rawDesc = "" +
 	"\x05views\x18\b \x03(\tR\x05views\x120\n" +
 	"\x05since\x18\t \x01(\v2\x1a.google.protobuf.TimestampR\x05since\x12\x18\n" +
 	"\arefused\x18\n" +
-	" \x01(\tR\arefused\"\x85\x01\n" +
+	" \x01(\tR\arefused\x128\n" +
+	"\bapproval\x18\v \x01(\v2\x1c.lapgate.inspect.v1.ApprovalR\bapproval\"\xb3\x01\n" +
+	"\rRecipeWaiting\x12\x12\n" +
+	"\x04part\x18\x01 \x01(\tR\x04part\x12\x1a\n" +
+	"\brevision\x18\x02 \x01(\tR\brevision\x12\x18\n" +
+	"\asurface\x18\x03 \x01(\tR\asurface\x12\x12\n" +
+	"\x04hash\x18\x04 \x01(\tR\x04hash\x12\x12\n" +
+	"\x04file\x18\x05 \x01(\tR\x04file\x120\n" +
+	"\x05since\x18\x06 \x01(\v2\x1a.google.protobuf.TimestampR\x05since\"\xd3\x01\n" +
+	"\bApproval\x12\x12\n" +
+	"\x04hash\x18\x01 \x01(\tR\x04hash\x12\x16\n" +
+	"\x06author\x18\x02 \x01(\tR\x06author\x12\x1a\n" +
+	"\bapprover\x18\x03 \x01(\tR\bapprover\x12\x16\n" +
+	"\x06reason\x18\x04 \x01(\tR\x06reason\x12;\n" +
+	"\teffective\x18\x05 \x01(\x0e2\x1d.lapgate.inspect.v1.EffectiveR\teffective\x12*\n" +
+	"\x02at\x18\x06 \x01(\v2\x1a.google.protobuf.TimestampR\x02at\"P\n" +
+	"\x14ApproveRecipeRequest\x128\n" +
+	"\bapproval\x18\x01 \x01(\v2\x1c.lapgate.inspect.v1.ApprovalR\bapproval\"Q\n" +
+	"\x15ApproveRecipeResponse\x128\n" +
+	"\bapproval\x18\x01 \x01(\v2\x1c.lapgate.inspect.v1.ApprovalR\bapproval\"*\n" +
+	"\x14ListApprovalsRequest\x12\x12\n" +
+	"\x04part\x18\x01 \x01(\tR\x04part\"\xa8\x01\n" +
+	"\x0eApprovalRecord\x128\n" +
+	"\bapproval\x18\x01 \x01(\v2\x1c.lapgate.inspect.v1.ApprovalR\bapproval\x12\x12\n" +
+	"\x04part\x18\x02 \x01(\tR\x04part\x12\x1a\n" +
+	"\brevision\x18\x03 \x01(\tR\brevision\x12\x18\n" +
+	"\asurface\x18\x04 \x01(\tR\asurface\x12\x12\n" +
+	"\x04file\x18\x05 \x01(\tR\x04file\"Y\n" +
+	"\x15ListApprovalsResponse\x12@\n" +
+	"\tapprovals\x18\x01 \x03(\v2\".lapgate.inspect.v1.ApprovalRecordR\tapprovals\"\x85\x01\n" +
 	"\vRecipePlace\x12\x12\n" +
 	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
 	"\astation\x18\x02 \x01(\tR\astation\x12%\n" +
 	"\x0edetection_hash\x18\x03 \x01(\tR\rdetectionHash\x12!\n" +
-	"\fjudging_hash\x18\x04 \x01(\tR\vjudgingHash\"\x8b\x01\n" +
+	"\fjudging_hash\x18\x04 \x01(\tR\vjudgingHash\"\xea\x01\n" +
 	"\x13ListRecipesResponse\x12;\n" +
 	"\arecipes\x18\x01 \x03(\v2!.lapgate.inspect.v1.RecipeInForceR\arecipes\x127\n" +
-	"\bproblems\x18\x02 \x03(\v2\x1b.lapgate.inspect.v1.ProblemR\bproblems\"&\n" +
+	"\bproblems\x18\x02 \x03(\v2\x1b.lapgate.inspect.v1.ProblemR\bproblems\x12;\n" +
+	"\awaiting\x18\x03 \x03(\v2!.lapgate.inspect.v1.RecipeWaitingR\awaiting\x12 \n" +
+	"\vdevelopment\x18\x04 \x01(\bR\vdevelopment\"&\n" +
 	"\x10GetRecipeRequest\x12\x12\n" +
 	"\x04hash\x18\x01 \x01(\tR\x04hash\";\n" +
 	"\x11GetRecipeResponse\x12\x12\n" +
@@ -596,11 +1132,17 @@ const file_inspectpb_recipe_proto_rawDesc = "" +
 	"\x06column\x18\x03 \x01(\x05R\x06column\x12\x18\n" +
 	"\amessage\x18\x04 \x01(\tR\amessage\"Q\n" +
 	"\x16ValidateRecipeResponse\x127\n" +
-	"\bproblems\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.ProblemR\bproblems2\xb2\x02\n" +
+	"\bproblems\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.ProblemR\bproblems*Q\n" +
+	"\tEffective\x12\x19\n" +
+	"\x15EFFECTIVE_UNSPECIFIED\x10\x00\x12\x11\n" +
+	"\rEFFECTIVE_NOW\x10\x01\x12\x16\n" +
+	"\x12EFFECTIVE_NEXT_LOT\x10\x022\xfe\x03\n" +
 	"\rRecipeService\x12^\n" +
 	"\vListRecipes\x12&.lapgate.inspect.v1.ListRecipesRequest\x1a'.lapgate.inspect.v1.ListRecipesResponse\x12X\n" +
 	"\tGetRecipe\x12$.lapgate.inspect.v1.GetRecipeRequest\x1a%.lapgate.inspect.v1.GetRecipeResponse\x12g\n" +
-	"\x0eValidateRecipe\x12).lapgate.inspect.v1.ValidateRecipeRequest\x1a*.lapgate.inspect.v1.ValidateRecipeResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
+	"\x0eValidateRecipe\x12).lapgate.inspect.v1.ValidateRecipeRequest\x1a*.lapgate.inspect.v1.ValidateRecipeResponse\x12d\n" +
+	"\rApproveRecipe\x12(.lapgate.inspect.v1.ApproveRecipeRequest\x1a).lapgate.inspect.v1.ApproveRecipeResponse\x12d\n" +
+	"\rListApprovals\x12(.lapgate.inspect.v1.ListApprovalsRequest\x1a).lapgate.inspect.v1.ListApprovalsResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
 
 var (
 	file_inspectpb_recipe_proto_rawDescOnce sync.Once
@@ -614,36 +1156,58 @@ func file_inspectpb_recipe_proto_rawDescGZIP() []byte {
 	return file_inspectpb_recipe_proto_rawDescData
 }
 
-var file_inspectpb_recipe_proto_msgTypes = make([]protoimpl.MessageInfo, 9)
+var file_inspectpb_recipe_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
+var file_inspectpb_recipe_proto_msgTypes = make([]protoimpl.MessageInfo, 16)
 var file_inspectpb_recipe_proto_goTypes = []any{
-	(*ListRecipesRequest)(nil),     // 0: lapgate.inspect.v1.ListRecipesRequest
-	(*RecipeInForce)(nil),          // 1: lapgate.inspect.v1.RecipeInForce
-	(*RecipePlace)(nil),            // 2: lapgate.inspect.v1.RecipePlace
-	(*ListRecipesResponse)(nil),    // 3: lapgate.inspect.v1.ListRecipesResponse
-	(*GetRecipeRequest)(nil),       // 4: lapgate.inspect.v1.GetRecipeRequest
-	(*GetRecipeResponse)(nil),      // 5: lapgate.inspect.v1.GetRecipeResponse
-	(*ValidateRecipeRequest)(nil),  // 6: lapgate.inspect.v1.ValidateRecipeRequest
-	(*Problem)(nil),                // 7: lapgate.inspect.v1.Problem
-	(*ValidateRecipeResponse)(nil), // 8: lapgate.inspect.v1.ValidateRecipeResponse
-	(*timestamppb.Timestamp)(nil),  // 9: google.protobuf.Timestamp
+	(Effective)(0),                 // 0: lapgate.inspect.v1.Effective
+	(*ListRecipesRequest)(nil),     // 1: lapgate.inspect.v1.ListRecipesRequest
+	(*RecipeInForce)(nil),          // 2: lapgate.inspect.v1.RecipeInForce
+	(*RecipeWaiting)(nil),          // 3: lapgate.inspect.v1.RecipeWaiting
+	(*Approval)(nil),               // 4: lapgate.inspect.v1.Approval
+	(*ApproveRecipeRequest)(nil),   // 5: lapgate.inspect.v1.ApproveRecipeRequest
+	(*ApproveRecipeResponse)(nil),  // 6: lapgate.inspect.v1.ApproveRecipeResponse
+	(*ListApprovalsRequest)(nil),   // 7: lapgate.inspect.v1.ListApprovalsRequest
+	(*ApprovalRecord)(nil),         // 8: lapgate.inspect.v1.ApprovalRecord
+	(*ListApprovalsResponse)(nil),  // 9: lapgate.inspect.v1.ListApprovalsResponse
+	(*RecipePlace)(nil),            // 10: lapgate.inspect.v1.RecipePlace
+	(*ListRecipesResponse)(nil),    // 11: lapgate.inspect.v1.ListRecipesResponse
+	(*GetRecipeRequest)(nil),       // 12: lapgate.inspect.v1.GetRecipeRequest
+	(*GetRecipeResponse)(nil),      // 13: lapgate.inspect.v1.GetRecipeResponse
+	(*ValidateRecipeRequest)(nil),  // 14: lapgate.inspect.v1.ValidateRecipeRequest
+	(*Problem)(nil),                // 15: lapgate.inspect.v1.Problem
+	(*ValidateRecipeResponse)(nil), // 16: lapgate.inspect.v1.ValidateRecipeResponse
+	(*timestamppb.Timestamp)(nil),  // 17: google.protobuf.Timestamp
 }
 var file_inspectpb_recipe_proto_depIdxs = []int32{
-	2, // 0: lapgate.inspect.v1.RecipeInForce.places:type_name -> lapgate.inspect.v1.RecipePlace
-	9, // 1: lapgate.inspect.v1.RecipeInForce.since:type_name -> google.protobuf.Timestamp
-	1, // 2: lapgate.inspect.v1.ListRecipesResponse.recipes:type_name -> lapgate.inspect.v1.RecipeInForce
-	7, // 3: lapgate.inspect.v1.ListRecipesResponse.problems:type_name -> lapgate.inspect.v1.Problem
-	7, // 4: lapgate.inspect.v1.ValidateRecipeResponse.problems:type_name -> lapgate.inspect.v1.Problem
-	0, // 5: lapgate.inspect.v1.RecipeService.ListRecipes:input_type -> lapgate.inspect.v1.ListRecipesRequest
-	4, // 6: lapgate.inspect.v1.RecipeService.GetRecipe:input_type -> lapgate.inspect.v1.GetRecipeRequest
-	6, // 7: lapgate.inspect.v1.RecipeService.ValidateRecipe:input_type -> lapgate.inspect.v1.ValidateRecipeRequest
-	3, // 8: lapgate.inspect.v1.RecipeService.ListRecipes:output_type -> lapgate.inspect.v1.ListRecipesResponse
-	5, // 9: lapgate.inspect.v1.RecipeService.GetRecipe:output_type -> lapgate.inspect.v1.GetRecipeResponse
-	8, // 10: lapgate.inspect.v1.RecipeService.ValidateRecipe:output_type -> lapgate.inspect.v1.ValidateRecipeResponse
-	8, // [8:11] is the sub-list for method output_type
-	5, // [5:8] is the sub-list for method input_type
-	5, // [5:5] is the sub-list for extension type_name
-	5, // [5:5] is the sub-list for extension extendee
-	0, // [0:5] is the sub-list for field type_name
+	10, // 0: lapgate.inspect.v1.RecipeInForce.places:type_name -> lapgate.inspect.v1.RecipePlace
+	17, // 1: lapgate.inspect.v1.RecipeInForce.since:type_name -> google.protobuf.Timestamp
+	4,  // 2: lapgate.inspect.v1.RecipeInForce.approval:type_name -> lapgate.inspect.v1.Approval
+	17, // 3: lapgate.inspect.v1.RecipeWaiting.since:type_name -> google.protobuf.Timestamp
+	0,  // 4: lapgate.inspect.v1.Approval.effective:type_name -> lapgate.inspect.v1.Effective
+	17, // 5: lapgate.inspect.v1.Approval.at:type_name -> google.protobuf.Timestamp
+	4,  // 6: lapgate.inspect.v1.ApproveRecipeRequest.approval:type_name -> lapgate.inspect.v1.Approval
+	4,  // 7: lapgate.inspect.v1.ApproveRecipeResponse.approval:type_name -> lapgate.inspect.v1.Approval
+	4,  // 8: lapgate.inspect.v1.ApprovalRecord.approval:type_name -> lapgate.inspect.v1.Approval
+	8,  // 9: lapgate.inspect.v1.ListApprovalsResponse.approvals:type_name -> lapgate.inspect.v1.ApprovalRecord
+	2,  // 10: lapgate.inspect.v1.ListRecipesResponse.recipes:type_name -> lapgate.inspect.v1.RecipeInForce
+	15, // 11: lapgate.inspect.v1.ListRecipesResponse.problems:type_name -> lapgate.inspect.v1.Problem
+	3,  // 12: lapgate.inspect.v1.ListRecipesResponse.waiting:type_name -> lapgate.inspect.v1.RecipeWaiting
+	15, // 13: lapgate.inspect.v1.ValidateRecipeResponse.problems:type_name -> lapgate.inspect.v1.Problem
+	1,  // 14: lapgate.inspect.v1.RecipeService.ListRecipes:input_type -> lapgate.inspect.v1.ListRecipesRequest
+	12, // 15: lapgate.inspect.v1.RecipeService.GetRecipe:input_type -> lapgate.inspect.v1.GetRecipeRequest
+	14, // 16: lapgate.inspect.v1.RecipeService.ValidateRecipe:input_type -> lapgate.inspect.v1.ValidateRecipeRequest
+	5,  // 17: lapgate.inspect.v1.RecipeService.ApproveRecipe:input_type -> lapgate.inspect.v1.ApproveRecipeRequest
+	7,  // 18: lapgate.inspect.v1.RecipeService.ListApprovals:input_type -> lapgate.inspect.v1.ListApprovalsRequest
+	11, // 19: lapgate.inspect.v1.RecipeService.ListRecipes:output_type -> lapgate.inspect.v1.ListRecipesResponse
+	13, // 20: lapgate.inspect.v1.RecipeService.GetRecipe:output_type -> lapgate.inspect.v1.GetRecipeResponse
+	16, // 21: lapgate.inspect.v1.RecipeService.ValidateRecipe:output_type -> lapgate.inspect.v1.ValidateRecipeResponse
+	6,  // 22: lapgate.inspect.v1.RecipeService.ApproveRecipe:output_type -> lapgate.inspect.v1.ApproveRecipeResponse
+	9,  // 23: lapgate.inspect.v1.RecipeService.ListApprovals:output_type -> lapgate.inspect.v1.ListApprovalsResponse
+	19, // [19:24] is the sub-list for method output_type
+	14, // [14:19] is the sub-list for method input_type
+	14, // [14:14] is the sub-list for extension type_name
+	14, // [14:14] is the sub-list for extension extendee
+	0,  // [0:14] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_recipe_proto_init() }
@@ -656,13 +1220,14 @@ func file_inspectpb_recipe_proto_init() {
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_recipe_proto_rawDesc), len(file_inspectpb_recipe_proto_rawDesc)),
-			NumEnums:      0,
-			NumMessages:   9,
+			NumEnums:      1,
+			NumMessages:   16,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
 		GoTypes:           file_inspectpb_recipe_proto_goTypes,
 		DependencyIndexes: file_inspectpb_recipe_proto_depIdxs,
+		EnumInfos:         file_inspectpb_recipe_proto_enumTypes,
 		MessageInfos:      file_inspectpb_recipe_proto_msgTypes,
 	}.Build()
 	File_inspectpb_recipe_proto = out.File

@@ -22,6 +22,8 @@ const (
 	RecipeService_ListRecipes_FullMethodName    = "/lapgate.inspect.v1.RecipeService/ListRecipes"
 	RecipeService_GetRecipe_FullMethodName      = "/lapgate.inspect.v1.RecipeService/GetRecipe"
 	RecipeService_ValidateRecipe_FullMethodName = "/lapgate.inspect.v1.RecipeService/ValidateRecipe"
+	RecipeService_ApproveRecipe_FullMethodName  = "/lapgate.inspect.v1.RecipeService/ApproveRecipe"
+	RecipeService_ListApprovals_FullMethodName  = "/lapgate.inspect.v1.RecipeService/ListApprovals"
 )
 
 // RecipeServiceClient is the client API for RecipeService service.
@@ -36,6 +38,10 @@ type RecipeServiceClient interface {
 	GetRecipe(ctx context.Context, in *GetRecipeRequest, opts ...grpc.CallOption) (*GetRecipeResponse, error)
 	// ValidateRecipe checks a text as if it were saved, and changes nothing.
 	ValidateRecipe(ctx context.Context, in *ValidateRecipeRequest, opts ...grpc.CallOption) (*ValidateRecipeResponse, error)
+	// ApproveRecipe records that a second person lets a saved recipe judge units.
+	ApproveRecipe(ctx context.Context, in *ApproveRecipeRequest, opts ...grpc.CallOption) (*ApproveRecipeResponse, error)
+	// ListApprovals lists approvals, oldest first.
+	ListApprovals(ctx context.Context, in *ListApprovalsRequest, opts ...grpc.CallOption) (*ListApprovalsResponse, error)
 }
 
 type recipeServiceClient struct {
@@ -76,6 +82,26 @@ func (c *recipeServiceClient) ValidateRecipe(ctx context.Context, in *ValidateRe
 	return out, nil
 }
 
+func (c *recipeServiceClient) ApproveRecipe(ctx context.Context, in *ApproveRecipeRequest, opts ...grpc.CallOption) (*ApproveRecipeResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ApproveRecipeResponse)
+	err := c.cc.Invoke(ctx, RecipeService_ApproveRecipe_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *recipeServiceClient) ListApprovals(ctx context.Context, in *ListApprovalsRequest, opts ...grpc.CallOption) (*ListApprovalsResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListApprovalsResponse)
+	err := c.cc.Invoke(ctx, RecipeService_ListApprovals_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // RecipeServiceServer is the server API for RecipeService service.
 // All implementations must embed UnimplementedRecipeServiceServer
 // for forward compatibility.
@@ -88,6 +114,10 @@ type RecipeServiceServer interface {
 	GetRecipe(context.Context, *GetRecipeRequest) (*GetRecipeResponse, error)
 	// ValidateRecipe checks a text as if it were saved, and changes nothing.
 	ValidateRecipe(context.Context, *ValidateRecipeRequest) (*ValidateRecipeResponse, error)
+	// ApproveRecipe records that a second person lets a saved recipe judge units.
+	ApproveRecipe(context.Context, *ApproveRecipeRequest) (*ApproveRecipeResponse, error)
+	// ListApprovals lists approvals, oldest first.
+	ListApprovals(context.Context, *ListApprovalsRequest) (*ListApprovalsResponse, error)
 	mustEmbedUnimplementedRecipeServiceServer()
 }
 
@@ -106,6 +136,12 @@ func (UnimplementedRecipeServiceServer) GetRecipe(context.Context, *GetRecipeReq
 }
 func (UnimplementedRecipeServiceServer) ValidateRecipe(context.Context, *ValidateRecipeRequest) (*ValidateRecipeResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ValidateRecipe not implemented")
+}
+func (UnimplementedRecipeServiceServer) ApproveRecipe(context.Context, *ApproveRecipeRequest) (*ApproveRecipeResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ApproveRecipe not implemented")
+}
+func (UnimplementedRecipeServiceServer) ListApprovals(context.Context, *ListApprovalsRequest) (*ListApprovalsResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListApprovals not implemented")
 }
 func (UnimplementedRecipeServiceServer) mustEmbedUnimplementedRecipeServiceServer() {}
 func (UnimplementedRecipeServiceServer) testEmbeddedByValue()                       {}
@@ -182,6 +218,42 @@ func _RecipeService_ValidateRecipe_Handler(srv interface{}, ctx context.Context,
 	return interceptor(ctx, in, info, handler)
 }
 
+func _RecipeService_ApproveRecipe_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ApproveRecipeRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(RecipeServiceServer).ApproveRecipe(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: RecipeService_ApproveRecipe_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(RecipeServiceServer).ApproveRecipe(ctx, req.(*ApproveRecipeRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _RecipeService_ListApprovals_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListApprovalsRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(RecipeServiceServer).ListApprovals(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: RecipeService_ListApprovals_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(RecipeServiceServer).ListApprovals(ctx, req.(*ListApprovalsRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // RecipeService_ServiceDesc is the grpc.ServiceDesc for RecipeService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -200,6 +272,14 @@ var RecipeService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "ValidateRecipe",
 			Handler:    _RecipeService_ValidateRecipe_Handler,
+		},
+		{
+			MethodName: "ApproveRecipe",
+			Handler:    _RecipeService_ApproveRecipe_Handler,
+		},
+		{
+			MethodName: "ListApprovals",
+			Handler:    _RecipeService_ListApprovals_Handler,
 		},
 	},
 	Streams:  []grpc.StreamDesc{},

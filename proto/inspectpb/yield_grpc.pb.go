@@ -24,6 +24,7 @@ const (
 	YieldService_GetPareto_FullMethodName  = "/lapgate.inspect.v1.YieldService/GetPareto"
 	YieldService_ListUnits_FullMethodName  = "/lapgate.inspect.v1.YieldService/ListUnits"
 	YieldService_Watch_FullMethodName      = "/lapgate.inspect.v1.YieldService/Watch"
+	YieldService_GetLatency_FullMethodName = "/lapgate.inspect.v1.YieldService/GetLatency"
 )
 
 // YieldServiceClient is the client API for YieldService service.
@@ -43,6 +44,8 @@ type YieldServiceClient interface {
 	ListUnits(ctx context.Context, in *ListUnitsRequest, opts ...grpc.CallOption) (*ListUnitsResponse, error)
 	// Watch sends each inspection as the ledger takes it.
 	Watch(ctx context.Context, in *WatchRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[WatchResponse], error)
+	// GetLatency returns how long verdicts took, by line and station.
+	GetLatency(ctx context.Context, in *GetLatencyRequest, opts ...grpc.CallOption) (*GetLatencyResponse, error)
 }
 
 type yieldServiceClient struct {
@@ -112,6 +115,16 @@ func (c *yieldServiceClient) Watch(ctx context.Context, in *WatchRequest, opts .
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type YieldService_WatchClient = grpc.ServerStreamingClient[WatchResponse]
 
+func (c *yieldServiceClient) GetLatency(ctx context.Context, in *GetLatencyRequest, opts ...grpc.CallOption) (*GetLatencyResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(GetLatencyResponse)
+	err := c.cc.Invoke(ctx, YieldService_GetLatency_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // YieldServiceServer is the server API for YieldService service.
 // All implementations must embed UnimplementedYieldServiceServer
 // for forward compatibility.
@@ -129,6 +142,8 @@ type YieldServiceServer interface {
 	ListUnits(context.Context, *ListUnitsRequest) (*ListUnitsResponse, error)
 	// Watch sends each inspection as the ledger takes it.
 	Watch(*WatchRequest, grpc.ServerStreamingServer[WatchResponse]) error
+	// GetLatency returns how long verdicts took, by line and station.
+	GetLatency(context.Context, *GetLatencyRequest) (*GetLatencyResponse, error)
 	mustEmbedUnimplementedYieldServiceServer()
 }
 
@@ -153,6 +168,9 @@ func (UnimplementedYieldServiceServer) ListUnits(context.Context, *ListUnitsRequ
 }
 func (UnimplementedYieldServiceServer) Watch(*WatchRequest, grpc.ServerStreamingServer[WatchResponse]) error {
 	return status.Error(codes.Unimplemented, "method Watch not implemented")
+}
+func (UnimplementedYieldServiceServer) GetLatency(context.Context, *GetLatencyRequest) (*GetLatencyResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method GetLatency not implemented")
 }
 func (UnimplementedYieldServiceServer) mustEmbedUnimplementedYieldServiceServer() {}
 func (UnimplementedYieldServiceServer) testEmbeddedByValue()                      {}
@@ -258,6 +276,24 @@ func _YieldService_Watch_Handler(srv interface{}, stream grpc.ServerStream) erro
 // This type alias is provided for backwards compatibility with existing code that references the prior non-generic stream type by name.
 type YieldService_WatchServer = grpc.ServerStreamingServer[WatchResponse]
 
+func _YieldService_GetLatency_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(GetLatencyRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(YieldServiceServer).GetLatency(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: YieldService_GetLatency_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(YieldServiceServer).GetLatency(ctx, req.(*GetLatencyRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // YieldService_ServiceDesc is the grpc.ServiceDesc for YieldService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -280,6 +316,10 @@ var YieldService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "ListUnits",
 			Handler:    _YieldService_ListUnits_Handler,
+		},
+		{
+			MethodName: "GetLatency",
+			Handler:    _YieldService_GetLatency_Handler,
 		},
 	},
 	Streams: []grpc.StreamDesc{
