@@ -283,7 +283,7 @@ func (x *CheckSettingsRequest) GetSettingsJson() string {
 // SettingProblem is one thing wrong with the settings.
 type SettingProblem struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// Such as "bands[1].low".
+	// Such as "bands[1].low"; empty = the settings as a whole.
 	Key           string `protobuf:"bytes,1,opt,name=key,proto3" json:"key,omitempty"`
 	Message       string `protobuf:"bytes,2,opt,name=message,proto3" json:"message,omitempty"`
 	unknownFields protoimpl.UnknownFields
@@ -387,6 +387,59 @@ func (x *CheckSettingsResponse) GetProblems() []*SettingProblem {
 	return nil
 }
 
+// PixelAt is a pixel by column and row.
+type PixelAt struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	X             int32                  `protobuf:"varint,1,opt,name=x,proto3" json:"x,omitempty"`
+	Y             int32                  `protobuf:"varint,2,opt,name=y,proto3" json:"y,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *PixelAt) Reset() {
+	*x = PixelAt{}
+	mi := &file_stagepb_stage_proto_msgTypes[5]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *PixelAt) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*PixelAt) ProtoMessage() {}
+
+func (x *PixelAt) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[5]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use PixelAt.ProtoReflect.Descriptor instead.
+func (*PixelAt) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{5}
+}
+
+func (x *PixelAt) GetX() int32 {
+	if x != nil {
+		return x.X
+	}
+	return 0
+}
+
+func (x *PixelAt) GetY() int32 {
+	if x != nil {
+		return x.Y
+	}
+	return 0
+}
+
 // Calibration is what the stage may know of a view's calibration.
 type Calibration struct {
 	state              protoimpl.MessageState `protogen:"open.v1"`
@@ -398,13 +451,14 @@ type Calibration struct {
 	Dark               *Plane                 `protobuf:"bytes,6,opt,name=dark,proto3" json:"dark,omitempty"`
 	Stray              *Plane                 `protobuf:"bytes,7,opt,name=stray,proto3" json:"stray,omitempty"`
 	Response           *Plane                 `protobuf:"bytes,8,opt,name=response,proto3" json:"response,omitempty"`
+	BadPixels          []*PixelAt             `protobuf:"bytes,9,rep,name=bad_pixels,json=badPixels,proto3" json:"bad_pixels,omitempty"`
 	unknownFields      protoimpl.UnknownFields
 	sizeCache          protoimpl.SizeCache
 }
 
 func (x *Calibration) Reset() {
 	*x = Calibration{}
-	mi := &file_stagepb_stage_proto_msgTypes[5]
+	mi := &file_stagepb_stage_proto_msgTypes[6]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -416,7 +470,7 @@ func (x *Calibration) String() string {
 func (*Calibration) ProtoMessage() {}
 
 func (x *Calibration) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[5]
+	mi := &file_stagepb_stage_proto_msgTypes[6]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -429,7 +483,7 @@ func (x *Calibration) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Calibration.ProtoReflect.Descriptor instead.
 func (*Calibration) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{5}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{6}
 }
 
 func (x *Calibration) GetHash() string {
@@ -488,6 +542,13 @@ func (x *Calibration) GetResponse() *Plane {
 	return nil
 }
 
+func (x *Calibration) GetBadPixels() []*PixelAt {
+	if x != nil {
+		return x.BadPixels
+	}
+	return nil
+}
+
 // Planar maps pixels of a flat part to µm.
 type Planar struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -502,7 +563,7 @@ type Planar struct {
 
 func (x *Planar) Reset() {
 	*x = Planar{}
-	mi := &file_stagepb_stage_proto_msgTypes[6]
+	mi := &file_stagepb_stage_proto_msgTypes[7]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -514,7 +575,7 @@ func (x *Planar) String() string {
 func (*Planar) ProtoMessage() {}
 
 func (x *Planar) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[6]
+	mi := &file_stagepb_stage_proto_msgTypes[7]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -527,7 +588,7 @@ func (x *Planar) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Planar.ProtoReflect.Descriptor instead.
 func (*Planar) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{6}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{7}
 }
 
 func (x *Planar) GetOriginX() float64 {
@@ -565,20 +626,154 @@ func (x *Planar) GetMirror() bool {
 	return false
 }
 
+// Distortion is the radial distortion of a lens: a point at c + d is seen at
+// c + d·(1 + k1·ρ² + k2·ρ⁴), ρ = |d| / norm_px.
+type Distortion struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	K1            float64                `protobuf:"fixed64,1,opt,name=k1,proto3" json:"k1,omitempty"`
+	K2            float64                `protobuf:"fixed64,2,opt,name=k2,proto3" json:"k2,omitempty"`
+	CentreX       float64                `protobuf:"fixed64,3,opt,name=centre_x,json=centreX,proto3" json:"centre_x,omitempty"`
+	CentreY       float64                `protobuf:"fixed64,4,opt,name=centre_y,json=centreY,proto3" json:"centre_y,omitempty"`
+	NormPx        float64                `protobuf:"fixed64,5,opt,name=norm_px,json=normPx,proto3" json:"norm_px,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Distortion) Reset() {
+	*x = Distortion{}
+	mi := &file_stagepb_stage_proto_msgTypes[8]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Distortion) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Distortion) ProtoMessage() {}
+
+func (x *Distortion) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[8]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Distortion.ProtoReflect.Descriptor instead.
+func (*Distortion) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{8}
+}
+
+func (x *Distortion) GetK1() float64 {
+	if x != nil {
+		return x.K1
+	}
+	return 0
+}
+
+func (x *Distortion) GetK2() float64 {
+	if x != nil {
+		return x.K2
+	}
+	return 0
+}
+
+func (x *Distortion) GetCentreX() float64 {
+	if x != nil {
+		return x.CentreX
+	}
+	return 0
+}
+
+func (x *Distortion) GetCentreY() float64 {
+	if x != nil {
+		return x.CentreY
+	}
+	return 0
+}
+
+func (x *Distortion) GetNormPx() float64 {
+	if x != nil {
+		return x.NormPx
+	}
+	return 0
+}
+
+// Geometry maps pixels to the part.
+type Geometry struct {
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Planar *Planar                `protobuf:"bytes,1,opt,name=planar,proto3" json:"planar,omitempty"`
+	// Absent = none; planar is then that of the pixels as seen.
+	Distortion    *Distortion `protobuf:"bytes,2,opt,name=distortion,proto3" json:"distortion,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Geometry) Reset() {
+	*x = Geometry{}
+	mi := &file_stagepb_stage_proto_msgTypes[9]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Geometry) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Geometry) ProtoMessage() {}
+
+func (x *Geometry) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[9]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Geometry.ProtoReflect.Descriptor instead.
+func (*Geometry) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{9}
+}
+
+func (x *Geometry) GetPlanar() *Planar {
+	if x != nil {
+		return x.Planar
+	}
+	return nil
+}
+
+func (x *Geometry) GetDistortion() *Distortion {
+	if x != nil {
+		return x.Distortion
+	}
+	return nil
+}
+
 // OpenRequest carries what a stage is built with.
 type OpenRequest struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	SettingsJson  string                 `protobuf:"bytes,1,opt,name=settings_json,json=settingsJson,proto3" json:"settings_json,omitempty"`
-	View          string                 `protobuf:"bytes,2,opt,name=view,proto3" json:"view,omitempty"`
-	Calibration   *Calibration           `protobuf:"bytes,3,opt,name=calibration,proto3" json:"calibration,omitempty"`
-	Geometry      *Planar                `protobuf:"bytes,4,opt,name=geometry,proto3" json:"geometry,omitempty"`
+	state        protoimpl.MessageState `protogen:"open.v1"`
+	SettingsJson string                 `protobuf:"bytes,1,opt,name=settings_json,json=settingsJson,proto3" json:"settings_json,omitempty"`
+	View         string                 `protobuf:"bytes,2,opt,name=view,proto3" json:"view,omitempty"`
+	Calibration  *Calibration           `protobuf:"bytes,3,opt,name=calibration,proto3" json:"calibration,omitempty"`
+	Geometry     *Geometry              `protobuf:"bytes,4,opt,name=geometry,proto3" json:"geometry,omitempty"`
+	// Files beside the recipe that an earlier answer asked for, by name.
+	Files         map[string][]byte `protobuf:"bytes,5,rep,name=files,proto3" json:"files,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *OpenRequest) Reset() {
 	*x = OpenRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[7]
+	mi := &file_stagepb_stage_proto_msgTypes[10]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -590,7 +785,7 @@ func (x *OpenRequest) String() string {
 func (*OpenRequest) ProtoMessage() {}
 
 func (x *OpenRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[7]
+	mi := &file_stagepb_stage_proto_msgTypes[10]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -603,7 +798,7 @@ func (x *OpenRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use OpenRequest.ProtoReflect.Descriptor instead.
 func (*OpenRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{7}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{10}
 }
 
 func (x *OpenRequest) GetSettingsJson() string {
@@ -627,24 +822,33 @@ func (x *OpenRequest) GetCalibration() *Calibration {
 	return nil
 }
 
-func (x *OpenRequest) GetGeometry() *Planar {
+func (x *OpenRequest) GetGeometry() *Geometry {
 	if x != nil {
 		return x.Geometry
 	}
 	return nil
 }
 
+func (x *OpenRequest) GetFiles() map[string][]byte {
+	if x != nil {
+		return x.Files
+	}
+	return nil
+}
+
 // OpenResponse names what was built, for Run and Close.
 type OpenResponse struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Handle        uint64                 `protobuf:"varint,1,opt,name=handle,proto3" json:"handle,omitempty"`
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Handle uint64                 `protobuf:"varint,1,opt,name=handle,proto3" json:"handle,omitempty"`
+	// A file beside the recipe that is needed; nothing was built. Open again with it.
+	WantedFile    string `protobuf:"bytes,2,opt,name=wanted_file,json=wantedFile,proto3" json:"wanted_file,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *OpenResponse) Reset() {
 	*x = OpenResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[8]
+	mi := &file_stagepb_stage_proto_msgTypes[11]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -656,7 +860,7 @@ func (x *OpenResponse) String() string {
 func (*OpenResponse) ProtoMessage() {}
 
 func (x *OpenResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[8]
+	mi := &file_stagepb_stage_proto_msgTypes[11]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -669,7 +873,7 @@ func (x *OpenResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use OpenResponse.ProtoReflect.Descriptor instead.
 func (*OpenResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{8}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{11}
 }
 
 func (x *OpenResponse) GetHandle() uint64 {
@@ -679,10 +883,17 @@ func (x *OpenResponse) GetHandle() uint64 {
 	return 0
 }
 
+func (x *OpenResponse) GetWantedFile() string {
+	if x != nil {
+		return x.WantedFile
+	}
+	return ""
+}
+
 // SharedBytes is a piece of memory that host and stage share.
 type SharedBytes struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
-	// Path of the memory file.
+	// Path of the memory file, as the stage sees it.
 	Path   string `protobuf:"bytes,1,opt,name=path,proto3" json:"path,omitempty"`
 	Offset uint64 `protobuf:"varint,2,opt,name=offset,proto3" json:"offset,omitempty"`
 	Length uint64 `protobuf:"varint,3,opt,name=length,proto3" json:"length,omitempty"`
@@ -694,7 +905,7 @@ type SharedBytes struct {
 
 func (x *SharedBytes) Reset() {
 	*x = SharedBytes{}
-	mi := &file_stagepb_stage_proto_msgTypes[9]
+	mi := &file_stagepb_stage_proto_msgTypes[12]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -706,7 +917,7 @@ func (x *SharedBytes) String() string {
 func (*SharedBytes) ProtoMessage() {}
 
 func (x *SharedBytes) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[9]
+	mi := &file_stagepb_stage_proto_msgTypes[12]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -719,7 +930,7 @@ func (x *SharedBytes) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use SharedBytes.ProtoReflect.Descriptor instead.
 func (*SharedBytes) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{9}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{12}
 }
 
 func (x *SharedBytes) GetPath() string {
@@ -764,7 +975,7 @@ type Pixels struct {
 
 func (x *Pixels) Reset() {
 	*x = Pixels{}
-	mi := &file_stagepb_stage_proto_msgTypes[10]
+	mi := &file_stagepb_stage_proto_msgTypes[13]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -776,7 +987,7 @@ func (x *Pixels) String() string {
 func (*Pixels) ProtoMessage() {}
 
 func (x *Pixels) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[10]
+	mi := &file_stagepb_stage_proto_msgTypes[13]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -789,7 +1000,7 @@ func (x *Pixels) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Pixels.ProtoReflect.Descriptor instead.
 func (*Pixels) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{10}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{13}
 }
 
 func (x *Pixels) GetWhere() isPixels_Where {
@@ -837,13 +1048,16 @@ func (*Pixels_Data) isPixels_Where() {}
 type Frame struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	// 32-bit code of the Pixel Format Naming Convention.
-	PixelFormat   uint32            `protobuf:"varint,1,opt,name=pixel_format,json=pixelFormat,proto3" json:"pixel_format,omitempty"`
-	Width         int32             `protobuf:"varint,2,opt,name=width,proto3" json:"width,omitempty"`
-	Height        int32             `protobuf:"varint,3,opt,name=height,proto3" json:"height,omitempty"`
+	PixelFormat uint32 `protobuf:"varint,1,opt,name=pixel_format,json=pixelFormat,proto3" json:"pixel_format,omitempty"`
+	Width       int32  `protobuf:"varint,2,opt,name=width,proto3" json:"width,omitempty"`
+	Height      int32  `protobuf:"varint,3,opt,name=height,proto3" json:"height,omitempty"`
+	// Bytes between the starts of two rows.
 	Stride        int32             `protobuf:"varint,4,opt,name=stride,proto3" json:"stride,omitempty"`
 	ExposureUs    float64           `protobuf:"fixed64,5,opt,name=exposure_us,json=exposureUs,proto3" json:"exposure_us,omitempty"`
 	Index         int32             `protobuf:"varint,6,opt,name=index,proto3" json:"index,omitempty"`
 	Tags          map[string]string `protobuf:"bytes,7,rep,name=tags,proto3" json:"tags,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
+	GainDb        float64           `protobuf:"fixed64,8,opt,name=gain_db,json=gainDb,proto3" json:"gain_db,omitempty"`
+	BlackLevel    float64           `protobuf:"fixed64,9,opt,name=black_level,json=blackLevel,proto3" json:"black_level,omitempty"`
 	Pixels        *Pixels           `protobuf:"bytes,15,opt,name=pixels,proto3" json:"pixels,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
@@ -851,7 +1065,7 @@ type Frame struct {
 
 func (x *Frame) Reset() {
 	*x = Frame{}
-	mi := &file_stagepb_stage_proto_msgTypes[11]
+	mi := &file_stagepb_stage_proto_msgTypes[14]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -863,7 +1077,7 @@ func (x *Frame) String() string {
 func (*Frame) ProtoMessage() {}
 
 func (x *Frame) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[11]
+	mi := &file_stagepb_stage_proto_msgTypes[14]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -876,7 +1090,7 @@ func (x *Frame) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Frame.ProtoReflect.Descriptor instead.
 func (*Frame) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{11}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{14}
 }
 
 func (x *Frame) GetPixelFormat() uint32 {
@@ -928,6 +1142,20 @@ func (x *Frame) GetTags() map[string]string {
 	return nil
 }
 
+func (x *Frame) GetGainDb() float64 {
+	if x != nil {
+		return x.GainDb
+	}
+	return 0
+}
+
+func (x *Frame) GetBlackLevel() float64 {
+	if x != nil {
+		return x.BlackLevel
+	}
+	return 0
+}
+
 func (x *Frame) GetPixels() *Pixels {
 	if x != nil {
 		return x.Pixels
@@ -937,23 +1165,24 @@ func (x *Frame) GetPixels() *Pixels {
 
 // Plane is a float32 picture, little-endian, stride in pixels.
 type Plane struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Name          string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
-	Unit          string                 `protobuf:"bytes,2,opt,name=unit,proto3" json:"unit,omitempty"`
-	Width         int32                  `protobuf:"varint,3,opt,name=width,proto3" json:"width,omitempty"`
-	Height        int32                  `protobuf:"varint,4,opt,name=height,proto3" json:"height,omitempty"`
-	Stride        int32                  `protobuf:"varint,5,opt,name=stride,proto3" json:"stride,omitempty"`
-	OriginX       float64                `protobuf:"fixed64,6,opt,name=origin_x,json=originX,proto3" json:"origin_x,omitempty"`
-	OriginY       float64                `protobuf:"fixed64,7,opt,name=origin_y,json=originY,proto3" json:"origin_y,omitempty"`
-	Step          float64                `protobuf:"fixed64,8,opt,name=step,proto3" json:"step,omitempty"`
-	Pixels        *Pixels                `protobuf:"bytes,15,opt,name=pixels,proto3" json:"pixels,omitempty"`
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	Name    string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	Unit    string                 `protobuf:"bytes,2,opt,name=unit,proto3" json:"unit,omitempty"`
+	Width   int32                  `protobuf:"varint,3,opt,name=width,proto3" json:"width,omitempty"`
+	Height  int32                  `protobuf:"varint,4,opt,name=height,proto3" json:"height,omitempty"`
+	Stride  int32                  `protobuf:"varint,5,opt,name=stride,proto3" json:"stride,omitempty"`
+	OriginX float64                `protobuf:"fixed64,6,opt,name=origin_x,json=originX,proto3" json:"origin_x,omitempty"`
+	OriginY float64                `protobuf:"fixed64,7,opt,name=origin_y,json=originY,proto3" json:"origin_y,omitempty"`
+	// Frame pixels that one pixel of the plane covers; 0 is read as 1.
+	Step          float64 `protobuf:"fixed64,8,opt,name=step,proto3" json:"step,omitempty"`
+	Pixels        *Pixels `protobuf:"bytes,15,opt,name=pixels,proto3" json:"pixels,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Plane) Reset() {
 	*x = Plane{}
-	mi := &file_stagepb_stage_proto_msgTypes[12]
+	mi := &file_stagepb_stage_proto_msgTypes[15]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -965,7 +1194,7 @@ func (x *Plane) String() string {
 func (*Plane) ProtoMessage() {}
 
 func (x *Plane) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[12]
+	mi := &file_stagepb_stage_proto_msgTypes[15]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -978,7 +1207,7 @@ func (x *Plane) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Plane.ProtoReflect.Descriptor instead.
 func (*Plane) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{12}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{15}
 }
 
 func (x *Plane) GetName() string {
@@ -1044,31 +1273,31 @@ func (x *Plane) GetPixels() *Pixels {
 	return nil
 }
 
-// Span is a half-open run of pixels in a row.
-type Span struct {
+// Mask is a set of pixels as runs: y, x0, x1 of each, half open.
+type Mask struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
-	Y             int32                  `protobuf:"varint,1,opt,name=y,proto3" json:"y,omitempty"`
-	X0            int32                  `protobuf:"varint,2,opt,name=x0,proto3" json:"x0,omitempty"`
-	X1            int32                  `protobuf:"varint,3,opt,name=x1,proto3" json:"x1,omitempty"`
+	Width         int32                  `protobuf:"varint,1,opt,name=width,proto3" json:"width,omitempty"`
+	Height        int32                  `protobuf:"varint,2,opt,name=height,proto3" json:"height,omitempty"`
+	Runs          []int32                `protobuf:"varint,3,rep,packed,name=runs,proto3" json:"runs,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
-func (x *Span) Reset() {
-	*x = Span{}
-	mi := &file_stagepb_stage_proto_msgTypes[13]
+func (x *Mask) Reset() {
+	*x = Mask{}
+	mi := &file_stagepb_stage_proto_msgTypes[16]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
 
-func (x *Span) String() string {
+func (x *Mask) String() string {
 	return protoimpl.X.MessageStringOf(x)
 }
 
-func (*Span) ProtoMessage() {}
+func (*Mask) ProtoMessage() {}
 
-func (x *Span) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[13]
+func (x *Mask) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[16]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1079,30 +1308,30 @@ func (x *Span) ProtoReflect() protoreflect.Message {
 	return mi.MessageOf(x)
 }
 
-// Deprecated: Use Span.ProtoReflect.Descriptor instead.
-func (*Span) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{13}
+// Deprecated: Use Mask.ProtoReflect.Descriptor instead.
+func (*Mask) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{16}
 }
 
-func (x *Span) GetY() int32 {
+func (x *Mask) GetWidth() int32 {
 	if x != nil {
-		return x.Y
+		return x.Width
 	}
 	return 0
 }
 
-func (x *Span) GetX0() int32 {
+func (x *Mask) GetHeight() int32 {
 	if x != nil {
-		return x.X0
+		return x.Height
 	}
 	return 0
 }
 
-func (x *Span) GetX1() int32 {
+func (x *Mask) GetRuns() []int32 {
 	if x != nil {
-		return x.X1
+		return x.Runs
 	}
-	return 0
+	return nil
 }
 
 // Zone is a named part of the region.
@@ -1111,14 +1340,15 @@ type Zone struct {
 	Name                 string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
 	AreaMm2              float64                `protobuf:"fixed64,2,opt,name=area_mm2,json=areaMm2,proto3" json:"area_mm2,omitempty"`
 	EquivalentDiameterMm float64                `protobuf:"fixed64,3,opt,name=equivalent_diameter_mm,json=equivalentDiameterMm,proto3" json:"equivalent_diameter_mm,omitempty"`
-	Spans                []*Span                `protobuf:"bytes,4,rep,name=spans,proto3" json:"spans,omitempty"`
-	unknownFields        protoimpl.UnknownFields
-	sizeCache            protoimpl.SizeCache
+	// y, x0, x1 of each run of pixels, half open.
+	Runs          []int32 `protobuf:"varint,4,rep,packed,name=runs,proto3" json:"runs,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Zone) Reset() {
 	*x = Zone{}
-	mi := &file_stagepb_stage_proto_msgTypes[14]
+	mi := &file_stagepb_stage_proto_msgTypes[17]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1130,7 +1360,7 @@ func (x *Zone) String() string {
 func (*Zone) ProtoMessage() {}
 
 func (x *Zone) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[14]
+	mi := &file_stagepb_stage_proto_msgTypes[17]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1143,7 +1373,7 @@ func (x *Zone) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Zone.ProtoReflect.Descriptor instead.
 func (*Zone) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{14}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{17}
 }
 
 func (x *Zone) GetName() string {
@@ -1167,9 +1397,9 @@ func (x *Zone) GetEquivalentDiameterMm() float64 {
 	return 0
 }
 
-func (x *Zone) GetSpans() []*Span {
+func (x *Zone) GetRuns() []int32 {
 	if x != nil {
-		return x.Spans
+		return x.Runs
 	}
 	return nil
 }
@@ -1189,7 +1419,7 @@ type Region struct {
 
 func (x *Region) Reset() {
 	*x = Region{}
-	mi := &file_stagepb_stage_proto_msgTypes[15]
+	mi := &file_stagepb_stage_proto_msgTypes[18]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1201,7 +1431,7 @@ func (x *Region) String() string {
 func (*Region) ProtoMessage() {}
 
 func (x *Region) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[15]
+	mi := &file_stagepb_stage_proto_msgTypes[18]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1214,7 +1444,7 @@ func (x *Region) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Region.ProtoReflect.Descriptor instead.
 func (*Region) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{15}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{18}
 }
 
 func (x *Region) GetCentreX() float64 {
@@ -1259,7 +1489,61 @@ func (x *Region) GetHeight() int32 {
 	return 0
 }
 
-// Defect is one surface imperfection as the stage found it.
+// DefectRef names a defect of one view.
+type DefectRef struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	View          string                 `protobuf:"bytes,1,opt,name=view,proto3" json:"view,omitempty"`
+	Id            int32                  `protobuf:"varint,2,opt,name=id,proto3" json:"id,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *DefectRef) Reset() {
+	*x = DefectRef{}
+	mi := &file_stagepb_stage_proto_msgTypes[19]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *DefectRef) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*DefectRef) ProtoMessage() {}
+
+func (x *DefectRef) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[19]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use DefectRef.ProtoReflect.Descriptor instead.
+func (*DefectRef) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{19}
+}
+
+func (x *DefectRef) GetView() string {
+	if x != nil {
+		return x.View
+	}
+	return ""
+}
+
+func (x *DefectRef) GetId() int32 {
+	if x != nil {
+		return x.Id
+	}
+	return 0
+}
+
+// Defect is one surface imperfection as the stage found it. The host fills in what is
+// in µm, and the zone, where a stage leaves them 0 or empty.
 type Defect struct {
 	state          protoimpl.MessageState `protogen:"open.v1"`
 	Kind           string                 `protobuf:"bytes,1,opt,name=kind,proto3" json:"kind,omitempty"`
@@ -1290,13 +1574,19 @@ type Defect struct {
 	WidthUm        float64                `protobuf:"fixed64,26,opt,name=width_um,json=widthUm,proto3" json:"width_um,omitempty"`
 	DiameterUm     float64                `protobuf:"fixed64,27,opt,name=diameter_um,json=diameterUm,proto3" json:"diameter_um,omitempty"`
 	EdgeDistanceUm float64                `protobuf:"fixed64,28,opt,name=edge_distance_um,json=edgeDistanceUm,proto3" json:"edge_distance_um,omitempty"`
+	View           string                 `protobuf:"bytes,29,opt,name=view,proto3" json:"view,omitempty"`
+	SeenIn         []string               `protobuf:"bytes,30,rep,name=seen_in,json=seenIn,proto3" json:"seen_in,omitempty"`
+	MergedFrom     []*DefectRef           `protobuf:"bytes,31,rep,name=merged_from,json=mergedFrom,proto3" json:"merged_from,omitempty"`
+	PartUUm        float64                `protobuf:"fixed64,32,opt,name=part_u_um,json=partUUm,proto3" json:"part_u_um,omitempty"`
+	PartVUm        float64                `protobuf:"fixed64,33,opt,name=part_v_um,json=partVUm,proto3" json:"part_v_um,omitempty"`
+	PartAngleKnown bool                   `protobuf:"varint,34,opt,name=part_angle_known,json=partAngleKnown,proto3" json:"part_angle_known,omitempty"`
 	unknownFields  protoimpl.UnknownFields
 	sizeCache      protoimpl.SizeCache
 }
 
 func (x *Defect) Reset() {
 	*x = Defect{}
-	mi := &file_stagepb_stage_proto_msgTypes[16]
+	mi := &file_stagepb_stage_proto_msgTypes[20]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1308,7 +1598,7 @@ func (x *Defect) String() string {
 func (*Defect) ProtoMessage() {}
 
 func (x *Defect) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[16]
+	mi := &file_stagepb_stage_proto_msgTypes[20]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1321,7 +1611,7 @@ func (x *Defect) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Defect.ProtoReflect.Descriptor instead.
 func (*Defect) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{16}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{20}
 }
 
 func (x *Defect) GetKind() string {
@@ -1520,6 +1810,48 @@ func (x *Defect) GetEdgeDistanceUm() float64 {
 	return 0
 }
 
+func (x *Defect) GetView() string {
+	if x != nil {
+		return x.View
+	}
+	return ""
+}
+
+func (x *Defect) GetSeenIn() []string {
+	if x != nil {
+		return x.SeenIn
+	}
+	return nil
+}
+
+func (x *Defect) GetMergedFrom() []*DefectRef {
+	if x != nil {
+		return x.MergedFrom
+	}
+	return nil
+}
+
+func (x *Defect) GetPartUUm() float64 {
+	if x != nil {
+		return x.PartUUm
+	}
+	return 0
+}
+
+func (x *Defect) GetPartVUm() float64 {
+	if x != nil {
+		return x.PartVUm
+	}
+	return 0
+}
+
+func (x *Defect) GetPartAngleKnown() bool {
+	if x != nil {
+		return x.PartAngleKnown
+	}
+	return false
+}
+
 // Measurement is a number that the stage took.
 type Measurement struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1532,7 +1864,7 @@ type Measurement struct {
 
 func (x *Measurement) Reset() {
 	*x = Measurement{}
-	mi := &file_stagepb_stage_proto_msgTypes[17]
+	mi := &file_stagepb_stage_proto_msgTypes[21]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1544,7 +1876,7 @@ func (x *Measurement) String() string {
 func (*Measurement) ProtoMessage() {}
 
 func (x *Measurement) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[17]
+	mi := &file_stagepb_stage_proto_msgTypes[21]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1557,7 +1889,7 @@ func (x *Measurement) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Measurement.ProtoReflect.Descriptor instead.
 func (*Measurement) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{17}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{21}
 }
 
 func (x *Measurement) GetName() string {
@@ -1581,25 +1913,199 @@ func (x *Measurement) GetUnit() string {
 	return ""
 }
 
-// Item is one view on its way, or the unit with its views.
-type Item struct {
+// Proof is one thing that a view must show before its defects count.
+type Proof struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
-	View          string                 `protobuf:"bytes,1,opt,name=view,proto3" json:"view,omitempty"`
-	Frames        []*Frame               `protobuf:"bytes,2,rep,name=frames,proto3" json:"frames,omitempty"`
-	Region        *Region                `protobuf:"bytes,3,opt,name=region,proto3" json:"region,omitempty"`
-	Geometry      *Planar                `protobuf:"bytes,4,opt,name=geometry,proto3" json:"geometry,omitempty"`
-	Planes        []*Plane               `protobuf:"bytes,5,rep,name=planes,proto3" json:"planes,omitempty"`
-	Measurements  []*Measurement         `protobuf:"bytes,6,rep,name=measurements,proto3" json:"measurements,omitempty"`
-	Defects       []*Defect              `protobuf:"bytes,7,rep,name=defects,proto3" json:"defects,omitempty"`
-	Views         []*Item                `protobuf:"bytes,8,rep,name=views,proto3" json:"views,omitempty"`
-	CoverageShare float64                `protobuf:"fixed64,9,opt,name=coverage_share,json=coverageShare,proto3" json:"coverage_share,omitempty"`
+	Name          string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	Value         float64                `protobuf:"fixed64,2,opt,name=value,proto3" json:"value,omitempty"`
+	Low           float64                `protobuf:"fixed64,3,opt,name=low,proto3" json:"low,omitempty"`
+	High          float64                `protobuf:"fixed64,4,opt,name=high,proto3" json:"high,omitempty"`
+	Unit          string                 `protobuf:"bytes,5,opt,name=unit,proto3" json:"unit,omitempty"`
+	Ok            bool                   `protobuf:"varint,6,opt,name=ok,proto3" json:"ok,omitempty"`
+	Reason        string                 `protobuf:"bytes,7,opt,name=reason,proto3" json:"reason,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
+func (x *Proof) Reset() {
+	*x = Proof{}
+	mi := &file_stagepb_stage_proto_msgTypes[22]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Proof) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Proof) ProtoMessage() {}
+
+func (x *Proof) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[22]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Proof.ProtoReflect.Descriptor instead.
+func (*Proof) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{22}
+}
+
+func (x *Proof) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *Proof) GetValue() float64 {
+	if x != nil {
+		return x.Value
+	}
+	return 0
+}
+
+func (x *Proof) GetLow() float64 {
+	if x != nil {
+		return x.Low
+	}
+	return 0
+}
+
+func (x *Proof) GetHigh() float64 {
+	if x != nil {
+		return x.High
+	}
+	return 0
+}
+
+func (x *Proof) GetUnit() string {
+	if x != nil {
+		return x.Unit
+	}
+	return ""
+}
+
+func (x *Proof) GetOk() bool {
+	if x != nil {
+		return x.Ok
+	}
+	return false
+}
+
+func (x *Proof) GetReason() string {
+	if x != nil {
+		return x.Reason
+	}
+	return ""
+}
+
+// Coverage says how much of the region was inspected well enough.
+type Coverage struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Share         float64                `protobuf:"fixed64,1,opt,name=share,proto3" json:"share,omitempty"`
+	Background    float64                `protobuf:"fixed64,2,opt,name=background,proto3" json:"background,omitempty"`
+	Noise         float64                `protobuf:"fixed64,3,opt,name=noise,proto3" json:"noise,omitempty"`
+	SaturatedPx   int64                  `protobuf:"varint,4,opt,name=saturated_px,json=saturatedPx,proto3" json:"saturated_px,omitempty"`
+	MaskedPx      int64                  `protobuf:"varint,5,opt,name=masked_px,json=maskedPx,proto3" json:"masked_px,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Coverage) Reset() {
+	*x = Coverage{}
+	mi := &file_stagepb_stage_proto_msgTypes[23]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Coverage) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Coverage) ProtoMessage() {}
+
+func (x *Coverage) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[23]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Coverage.ProtoReflect.Descriptor instead.
+func (*Coverage) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{23}
+}
+
+func (x *Coverage) GetShare() float64 {
+	if x != nil {
+		return x.Share
+	}
+	return 0
+}
+
+func (x *Coverage) GetBackground() float64 {
+	if x != nil {
+		return x.Background
+	}
+	return 0
+}
+
+func (x *Coverage) GetNoise() float64 {
+	if x != nil {
+		return x.Noise
+	}
+	return 0
+}
+
+func (x *Coverage) GetSaturatedPx() int64 {
+	if x != nil {
+		return x.SaturatedPx
+	}
+	return 0
+}
+
+func (x *Coverage) GetMaskedPx() int64 {
+	if x != nil {
+		return x.MaskedPx
+	}
+	return 0
+}
+
+// Item is one view on its way, or the unit with its views.
+type Item struct {
+	state           protoimpl.MessageState `protogen:"open.v1"`
+	View            string                 `protobuf:"bytes,1,opt,name=view,proto3" json:"view,omitempty"`
+	Frames          []*Frame               `protobuf:"bytes,2,rep,name=frames,proto3" json:"frames,omitempty"`
+	Region          *Region                `protobuf:"bytes,3,opt,name=region,proto3" json:"region,omitempty"`
+	Geometry        *Geometry              `protobuf:"bytes,4,opt,name=geometry,proto3" json:"geometry,omitempty"`
+	Planes          []*Plane               `protobuf:"bytes,5,rep,name=planes,proto3" json:"planes,omitempty"`
+	Measurements    []*Measurement         `protobuf:"bytes,6,rep,name=measurements,proto3" json:"measurements,omitempty"`
+	Defects         []*Defect              `protobuf:"bytes,7,rep,name=defects,proto3" json:"defects,omitempty"`
+	Views           []*Item                `protobuf:"bytes,8,rep,name=views,proto3" json:"views,omitempty"`
+	Coverage        *Coverage              `protobuf:"bytes,9,opt,name=coverage,proto3" json:"coverage,omitempty"`
+	BadPixels       *Mask                  `protobuf:"bytes,10,opt,name=bad_pixels,json=badPixels,proto3" json:"bad_pixels,omitempty"`
+	SaturatedPixels *Mask                  `protobuf:"bytes,11,opt,name=saturated_pixels,json=saturatedPixels,proto3" json:"saturated_pixels,omitempty"`
+	Proofs          []*Proof               `protobuf:"bytes,12,rep,name=proofs,proto3" json:"proofs,omitempty"`
+	Truncated       bool                   `protobuf:"varint,13,opt,name=truncated,proto3" json:"truncated,omitempty"`
+	unknownFields   protoimpl.UnknownFields
+	sizeCache       protoimpl.SizeCache
+}
+
 func (x *Item) Reset() {
 	*x = Item{}
-	mi := &file_stagepb_stage_proto_msgTypes[18]
+	mi := &file_stagepb_stage_proto_msgTypes[24]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1611,7 +2117,7 @@ func (x *Item) String() string {
 func (*Item) ProtoMessage() {}
 
 func (x *Item) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[18]
+	mi := &file_stagepb_stage_proto_msgTypes[24]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1624,7 +2130,7 @@ func (x *Item) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Item.ProtoReflect.Descriptor instead.
 func (*Item) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{18}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
 }
 
 func (x *Item) GetView() string {
@@ -1648,7 +2154,7 @@ func (x *Item) GetRegion() *Region {
 	return nil
 }
 
-func (x *Item) GetGeometry() *Planar {
+func (x *Item) GetGeometry() *Geometry {
 	if x != nil {
 		return x.Geometry
 	}
@@ -1683,14 +2189,42 @@ func (x *Item) GetViews() []*Item {
 	return nil
 }
 
-func (x *Item) GetCoverageShare() float64 {
+func (x *Item) GetCoverage() *Coverage {
 	if x != nil {
-		return x.CoverageShare
+		return x.Coverage
 	}
-	return 0
+	return nil
 }
 
-// RunRequest runs an open stage on an item.
+func (x *Item) GetBadPixels() *Mask {
+	if x != nil {
+		return x.BadPixels
+	}
+	return nil
+}
+
+func (x *Item) GetSaturatedPixels() *Mask {
+	if x != nil {
+		return x.SaturatedPixels
+	}
+	return nil
+}
+
+func (x *Item) GetProofs() []*Proof {
+	if x != nil {
+		return x.Proofs
+	}
+	return nil
+}
+
+func (x *Item) GetTruncated() bool {
+	if x != nil {
+		return x.Truncated
+	}
+	return false
+}
+
+// RunRequest runs an open stage on an item. It carries what the stage said it reads.
 type RunRequest struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
 	Handle uint64                 `protobuf:"varint,1,opt,name=handle,proto3" json:"handle,omitempty"`
@@ -1703,7 +2237,7 @@ type RunRequest struct {
 
 func (x *RunRequest) Reset() {
 	*x = RunRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[19]
+	mi := &file_stagepb_stage_proto_msgTypes[25]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1715,7 +2249,7 @@ func (x *RunRequest) String() string {
 func (*RunRequest) ProtoMessage() {}
 
 func (x *RunRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[19]
+	mi := &file_stagepb_stage_proto_msgTypes[25]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1728,7 +2262,7 @@ func (x *RunRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunRequest.ProtoReflect.Descriptor instead.
 func (*RunRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{19}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
 }
 
 func (x *RunRequest) GetHandle() uint64 {
@@ -1754,23 +2288,32 @@ func (x *RunRequest) GetOutput() *SharedBytes {
 
 // RunResponse is what the stage made. Absent parts are left as they were.
 type RunResponse struct {
-	state        protoimpl.MessageState `protogen:"open.v1"`
-	Region       *Region                `protobuf:"bytes,1,opt,name=region,proto3" json:"region,omitempty"`
-	Geometry     *Planar                `protobuf:"bytes,2,opt,name=geometry,proto3" json:"geometry,omitempty"`
-	Planes       []*Plane               `protobuf:"bytes,3,rep,name=planes,proto3" json:"planes,omitempty"`
-	Measurements []*Measurement         `protobuf:"bytes,4,rep,name=measurements,proto3" json:"measurements,omitempty"`
-	Defects      []*Defect              `protobuf:"bytes,5,rep,name=defects,proto3" json:"defects,omitempty"`
-	// The defects above replace the item's list; otherwise they are added to it.
+	state    protoimpl.MessageState `protogen:"open.v1"`
+	Region   *Region                `protobuf:"bytes,1,opt,name=region,proto3" json:"region,omitempty"`
+	Geometry *Geometry              `protobuf:"bytes,2,opt,name=geometry,proto3" json:"geometry,omitempty"`
+	Planes   []*Plane               `protobuf:"bytes,3,rep,name=planes,proto3" json:"planes,omitempty"`
+	// To be added to the item's.
+	Measurements []*Measurement `protobuf:"bytes,4,rep,name=measurements,proto3" json:"measurements,omitempty"`
+	Defects      []*Defect      `protobuf:"bytes,5,rep,name=defects,proto3" json:"defects,omitempty"`
+	// The defects above replace the item's list; otherwise they are added to it. None may
+	// vanish: each of the list lies in the box of one of these, or is what it was merged from.
 	ReplaceDefects bool `protobuf:"varint,6,opt,name=replace_defects,json=replaceDefects,proto3" json:"replace_defects,omitempty"`
 	// Not empty: the unit is held for this reason.
-	Hold          string `protobuf:"bytes,7,opt,name=hold,proto3" json:"hold,omitempty"`
+	Hold string `protobuf:"bytes,7,opt,name=hold,proto3" json:"hold,omitempty"`
+	// To be added to the item's.
+	Proofs          []*Proof  `protobuf:"bytes,8,rep,name=proofs,proto3" json:"proofs,omitempty"`
+	Coverage        *Coverage `protobuf:"bytes,9,opt,name=coverage,proto3" json:"coverage,omitempty"`
+	BadPixels       *Mask     `protobuf:"bytes,10,opt,name=bad_pixels,json=badPixels,proto3" json:"bad_pixels,omitempty"`
+	SaturatedPixels *Mask     `protobuf:"bytes,11,opt,name=saturated_pixels,json=saturatedPixels,proto3" json:"saturated_pixels,omitempty"`
+	// More defects were found than are told. It cannot be taken back.
+	Truncated     bool `protobuf:"varint,12,opt,name=truncated,proto3" json:"truncated,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *RunResponse) Reset() {
 	*x = RunResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[20]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1782,7 +2325,7 @@ func (x *RunResponse) String() string {
 func (*RunResponse) ProtoMessage() {}
 
 func (x *RunResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[20]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1795,7 +2338,7 @@ func (x *RunResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunResponse.ProtoReflect.Descriptor instead.
 func (*RunResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{20}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
 }
 
 func (x *RunResponse) GetRegion() *Region {
@@ -1805,7 +2348,7 @@ func (x *RunResponse) GetRegion() *Region {
 	return nil
 }
 
-func (x *RunResponse) GetGeometry() *Planar {
+func (x *RunResponse) GetGeometry() *Geometry {
 	if x != nil {
 		return x.Geometry
 	}
@@ -1847,6 +2390,41 @@ func (x *RunResponse) GetHold() string {
 	return ""
 }
 
+func (x *RunResponse) GetProofs() []*Proof {
+	if x != nil {
+		return x.Proofs
+	}
+	return nil
+}
+
+func (x *RunResponse) GetCoverage() *Coverage {
+	if x != nil {
+		return x.Coverage
+	}
+	return nil
+}
+
+func (x *RunResponse) GetBadPixels() *Mask {
+	if x != nil {
+		return x.BadPixels
+	}
+	return nil
+}
+
+func (x *RunResponse) GetSaturatedPixels() *Mask {
+	if x != nil {
+		return x.SaturatedPixels
+	}
+	return nil
+}
+
+func (x *RunResponse) GetTruncated() bool {
+	if x != nil {
+		return x.Truncated
+	}
+	return false
+}
+
 // CloseRequest names what to close.
 type CloseRequest struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1857,7 +2435,7 @@ type CloseRequest struct {
 
 func (x *CloseRequest) Reset() {
 	*x = CloseRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[21]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1869,7 +2447,7 @@ func (x *CloseRequest) String() string {
 func (*CloseRequest) ProtoMessage() {}
 
 func (x *CloseRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[21]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1882,7 +2460,7 @@ func (x *CloseRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseRequest.ProtoReflect.Descriptor instead.
 func (*CloseRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{21}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
 }
 
 func (x *CloseRequest) GetHandle() uint64 {
@@ -1901,7 +2479,7 @@ type CloseResponse struct {
 
 func (x *CloseResponse) Reset() {
 	*x = CloseResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[22]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1913,7 +2491,7 @@ func (x *CloseResponse) String() string {
 func (*CloseResponse) ProtoMessage() {}
 
 func (x *CloseResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[22]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1926,7 +2504,7 @@ func (x *CloseResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseResponse.ProtoReflect.Descriptor instead.
 func (*CloseResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{22}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
 }
 
 var File_stagepb_stage_proto protoreflect.FileDescriptor
@@ -1955,7 +2533,10 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\amessage\x18\x02 \x01(\tR\amessage\"\x8d\x01\n" +
 	"\x15CheckSettingsResponse\x126\n" +
 	"\x17effective_settings_json\x18\x01 \x01(\tR\x15effectiveSettingsJson\x12<\n" +
-	"\bproblems\x18\x02 \x03(\v2 .lapgate.stage.v1.SettingProblemR\bproblems\"\xbd\x02\n" +
+	"\bproblems\x18\x02 \x03(\v2 .lapgate.stage.v1.SettingProblemR\bproblems\"%\n" +
+	"\aPixelAt\x12\f\n" +
+	"\x01x\x18\x01 \x01(\x05R\x01x\x12\f\n" +
+	"\x01y\x18\x02 \x01(\x05R\x01y\"\xf7\x02\n" +
 	"\vCalibration\x12\x12\n" +
 	"\x04hash\x18\x01 \x01(\tR\x04hash\x12\x1a\n" +
 	"\tum_per_px\x18\x02 \x01(\x01R\aumPerPx\x121\n" +
@@ -1965,20 +2546,41 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\adark_dn\x18\x05 \x01(\x01R\x06darkDn\x12+\n" +
 	"\x04dark\x18\x06 \x01(\v2\x17.lapgate.stage.v1.PlaneR\x04dark\x12-\n" +
 	"\x05stray\x18\a \x01(\v2\x17.lapgate.stage.v1.PlaneR\x05stray\x123\n" +
-	"\bresponse\x18\b \x01(\v2\x17.lapgate.stage.v1.PlaneR\bresponse\"\x95\x01\n" +
+	"\bresponse\x18\b \x01(\v2\x17.lapgate.stage.v1.PlaneR\bresponse\x128\n" +
+	"\n" +
+	"bad_pixels\x18\t \x03(\v2\x19.lapgate.stage.v1.PixelAtR\tbadPixels\"\x95\x01\n" +
 	"\x06Planar\x12\x19\n" +
 	"\borigin_x\x18\x01 \x01(\x01R\aoriginX\x12\x19\n" +
 	"\borigin_y\x18\x02 \x01(\x01R\aoriginY\x12\x1a\n" +
 	"\tum_per_px\x18\x03 \x01(\x01R\aumPerPx\x12!\n" +
 	"\frotation_deg\x18\x04 \x01(\x01R\vrotationDeg\x12\x16\n" +
-	"\x06mirror\x18\x05 \x01(\bR\x06mirror\"\xbd\x01\n" +
+	"\x06mirror\x18\x05 \x01(\bR\x06mirror\"{\n" +
+	"\n" +
+	"Distortion\x12\x0e\n" +
+	"\x02k1\x18\x01 \x01(\x01R\x02k1\x12\x0e\n" +
+	"\x02k2\x18\x02 \x01(\x01R\x02k2\x12\x19\n" +
+	"\bcentre_x\x18\x03 \x01(\x01R\acentreX\x12\x19\n" +
+	"\bcentre_y\x18\x04 \x01(\x01R\acentreY\x12\x17\n" +
+	"\anorm_px\x18\x05 \x01(\x01R\x06normPx\"z\n" +
+	"\bGeometry\x120\n" +
+	"\x06planar\x18\x01 \x01(\v2\x18.lapgate.stage.v1.PlanarR\x06planar\x12<\n" +
+	"\n" +
+	"distortion\x18\x02 \x01(\v2\x1c.lapgate.stage.v1.DistortionR\n" +
+	"distortion\"\xb9\x02\n" +
 	"\vOpenRequest\x12#\n" +
 	"\rsettings_json\x18\x01 \x01(\tR\fsettingsJson\x12\x12\n" +
 	"\x04view\x18\x02 \x01(\tR\x04view\x12?\n" +
-	"\vcalibration\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.CalibrationR\vcalibration\x124\n" +
-	"\bgeometry\x18\x04 \x01(\v2\x18.lapgate.stage.v1.PlanarR\bgeometry\"&\n" +
+	"\vcalibration\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.CalibrationR\vcalibration\x126\n" +
+	"\bgeometry\x18\x04 \x01(\v2\x1a.lapgate.stage.v1.GeometryR\bgeometry\x12>\n" +
+	"\x05files\x18\x05 \x03(\v2(.lapgate.stage.v1.OpenRequest.FilesEntryR\x05files\x1a8\n" +
+	"\n" +
+	"FilesEntry\x12\x10\n" +
+	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
+	"\x05value\x18\x02 \x01(\fR\x05value:\x028\x01\"G\n" +
 	"\fOpenResponse\x12\x16\n" +
-	"\x06handle\x18\x01 \x01(\x04R\x06handle\"q\n" +
+	"\x06handle\x18\x01 \x01(\x04R\x06handle\x12\x1f\n" +
+	"\vwanted_file\x18\x02 \x01(\tR\n" +
+	"wantedFile\"q\n" +
 	"\vSharedBytes\x12\x12\n" +
 	"\x04path\x18\x01 \x01(\tR\x04path\x12\x16\n" +
 	"\x06offset\x18\x02 \x01(\x04R\x06offset\x12\x16\n" +
@@ -1989,7 +2591,7 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x06Pixels\x127\n" +
 	"\x06shared\x18\x01 \x01(\v2\x1d.lapgate.stage.v1.SharedBytesH\x00R\x06shared\x12\x14\n" +
 	"\x04data\x18\x0f \x01(\fH\x00R\x04dataB\a\n" +
-	"\x05where\"\xc9\x02\n" +
+	"\x05where\"\x83\x03\n" +
 	"\x05Frame\x12!\n" +
 	"\fpixel_format\x18\x01 \x01(\rR\vpixelFormat\x12\x14\n" +
 	"\x05width\x18\x02 \x01(\x05R\x05width\x12\x16\n" +
@@ -1998,7 +2600,10 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\vexposure_us\x18\x05 \x01(\x01R\n" +
 	"exposureUs\x12\x14\n" +
 	"\x05index\x18\x06 \x01(\x05R\x05index\x125\n" +
-	"\x04tags\x18\a \x03(\v2!.lapgate.stage.v1.Frame.TagsEntryR\x04tags\x120\n" +
+	"\x04tags\x18\a \x03(\v2!.lapgate.stage.v1.Frame.TagsEntryR\x04tags\x12\x17\n" +
+	"\again_db\x18\b \x01(\x01R\x06gainDb\x12\x1f\n" +
+	"\vblack_level\x18\t \x01(\x01R\n" +
+	"blackLevel\x120\n" +
 	"\x06pixels\x18\x0f \x01(\v2\x18.lapgate.stage.v1.PixelsR\x06pixels\x1a7\n" +
 	"\tTagsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
@@ -2012,23 +2617,26 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\borigin_x\x18\x06 \x01(\x01R\aoriginX\x12\x19\n" +
 	"\borigin_y\x18\a \x01(\x01R\aoriginY\x12\x12\n" +
 	"\x04step\x18\b \x01(\x01R\x04step\x120\n" +
-	"\x06pixels\x18\x0f \x01(\v2\x18.lapgate.stage.v1.PixelsR\x06pixels\"4\n" +
-	"\x04Span\x12\f\n" +
-	"\x01y\x18\x01 \x01(\x05R\x01y\x12\x0e\n" +
-	"\x02x0\x18\x02 \x01(\x05R\x02x0\x12\x0e\n" +
-	"\x02x1\x18\x03 \x01(\x05R\x02x1\"\x99\x01\n" +
+	"\x06pixels\x18\x0f \x01(\v2\x18.lapgate.stage.v1.PixelsR\x06pixels\"H\n" +
+	"\x04Mask\x12\x14\n" +
+	"\x05width\x18\x01 \x01(\x05R\x05width\x12\x16\n" +
+	"\x06height\x18\x02 \x01(\x05R\x06height\x12\x12\n" +
+	"\x04runs\x18\x03 \x03(\x05R\x04runs\"\x7f\n" +
 	"\x04Zone\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x19\n" +
 	"\barea_mm2\x18\x02 \x01(\x01R\aareaMm2\x124\n" +
-	"\x16equivalent_diameter_mm\x18\x03 \x01(\x01R\x14equivalentDiameterMm\x12,\n" +
-	"\x05spans\x18\x04 \x03(\v2\x16.lapgate.stage.v1.SpanR\x05spans\"\xb7\x01\n" +
+	"\x16equivalent_diameter_mm\x18\x03 \x01(\x01R\x14equivalentDiameterMm\x12\x12\n" +
+	"\x04runs\x18\x04 \x03(\x05R\x04runs\"\xb7\x01\n" +
 	"\x06Region\x12\x19\n" +
 	"\bcentre_x\x18\x01 \x01(\x01R\acentreX\x12\x19\n" +
 	"\bcentre_y\x18\x02 \x01(\x01R\acentreY\x12\x1b\n" +
 	"\tradius_px\x18\x03 \x01(\x01R\bradiusPx\x12,\n" +
 	"\x05zones\x18\x04 \x03(\v2\x16.lapgate.stage.v1.ZoneR\x05zones\x12\x14\n" +
 	"\x05width\x18\x05 \x01(\x05R\x05width\x12\x16\n" +
-	"\x06height\x18\x06 \x01(\x05R\x06height\"\xa2\x05\n" +
+	"\x06height\x18\x06 \x01(\x05R\x06height\"/\n" +
+	"\tDefectRef\x12\x12\n" +
+	"\x04view\x18\x01 \x01(\tR\x04view\x12\x0e\n" +
+	"\x02id\x18\x02 \x01(\x05R\x02id\"\xef\x06\n" +
 	"\x06Defect\x12\x12\n" +
 	"\x04kind\x18\x01 \x01(\tR\x04kind\x12\x11\n" +
 	"\x04x_px\x18\x02 \x01(\x01R\x03xPx\x12\x11\n" +
@@ -2061,34 +2669,70 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\bwidth_um\x18\x1a \x01(\x01R\awidthUm\x12\x1f\n" +
 	"\vdiameter_um\x18\x1b \x01(\x01R\n" +
 	"diameterUm\x12(\n" +
-	"\x10edge_distance_um\x18\x1c \x01(\x01R\x0eedgeDistanceUm\"K\n" +
+	"\x10edge_distance_um\x18\x1c \x01(\x01R\x0eedgeDistanceUm\x12\x12\n" +
+	"\x04view\x18\x1d \x01(\tR\x04view\x12\x17\n" +
+	"\aseen_in\x18\x1e \x03(\tR\x06seenIn\x12<\n" +
+	"\vmerged_from\x18\x1f \x03(\v2\x1b.lapgate.stage.v1.DefectRefR\n" +
+	"mergedFrom\x12\x1a\n" +
+	"\tpart_u_um\x18  \x01(\x01R\apartUUm\x12\x1a\n" +
+	"\tpart_v_um\x18! \x01(\x01R\apartVUm\x12(\n" +
+	"\x10part_angle_known\x18\" \x01(\bR\x0epartAngleKnown\"K\n" +
 	"\vMeasurement\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x12\n" +
-	"\x04unit\x18\x03 \x01(\tR\x04unit\"\xb0\x03\n" +
+	"\x04unit\x18\x03 \x01(\tR\x04unit\"\x93\x01\n" +
+	"\x05Proof\x12\x12\n" +
+	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
+	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x10\n" +
+	"\x03low\x18\x03 \x01(\x01R\x03low\x12\x12\n" +
+	"\x04high\x18\x04 \x01(\x01R\x04high\x12\x12\n" +
+	"\x04unit\x18\x05 \x01(\tR\x04unit\x12\x0e\n" +
+	"\x02ok\x18\x06 \x01(\bR\x02ok\x12\x16\n" +
+	"\x06reason\x18\a \x01(\tR\x06reason\"\x96\x01\n" +
+	"\bCoverage\x12\x14\n" +
+	"\x05share\x18\x01 \x01(\x01R\x05share\x12\x1e\n" +
+	"\n" +
+	"background\x18\x02 \x01(\x01R\n" +
+	"background\x12\x14\n" +
+	"\x05noise\x18\x03 \x01(\x01R\x05noise\x12!\n" +
+	"\fsaturated_px\x18\x04 \x01(\x03R\vsaturatedPx\x12\x1b\n" +
+	"\tmasked_px\x18\x05 \x01(\x03R\bmaskedPx\"\x8c\x05\n" +
 	"\x04Item\x12\x12\n" +
 	"\x04view\x18\x01 \x01(\tR\x04view\x12/\n" +
 	"\x06frames\x18\x02 \x03(\v2\x17.lapgate.stage.v1.FrameR\x06frames\x120\n" +
-	"\x06region\x18\x03 \x01(\v2\x18.lapgate.stage.v1.RegionR\x06region\x124\n" +
-	"\bgeometry\x18\x04 \x01(\v2\x18.lapgate.stage.v1.PlanarR\bgeometry\x12/\n" +
+	"\x06region\x18\x03 \x01(\v2\x18.lapgate.stage.v1.RegionR\x06region\x126\n" +
+	"\bgeometry\x18\x04 \x01(\v2\x1a.lapgate.stage.v1.GeometryR\bgeometry\x12/\n" +
 	"\x06planes\x18\x05 \x03(\v2\x17.lapgate.stage.v1.PlaneR\x06planes\x12A\n" +
 	"\fmeasurements\x18\x06 \x03(\v2\x1d.lapgate.stage.v1.MeasurementR\fmeasurements\x122\n" +
 	"\adefects\x18\a \x03(\v2\x18.lapgate.stage.v1.DefectR\adefects\x12,\n" +
-	"\x05views\x18\b \x03(\v2\x16.lapgate.stage.v1.ItemR\x05views\x12%\n" +
-	"\x0ecoverage_share\x18\t \x01(\x01R\rcoverageShare\"\x87\x01\n" +
+	"\x05views\x18\b \x03(\v2\x16.lapgate.stage.v1.ItemR\x05views\x126\n" +
+	"\bcoverage\x18\t \x01(\v2\x1a.lapgate.stage.v1.CoverageR\bcoverage\x125\n" +
+	"\n" +
+	"bad_pixels\x18\n" +
+	" \x01(\v2\x16.lapgate.stage.v1.MaskR\tbadPixels\x12A\n" +
+	"\x10saturated_pixels\x18\v \x01(\v2\x16.lapgate.stage.v1.MaskR\x0fsaturatedPixels\x12/\n" +
+	"\x06proofs\x18\f \x03(\v2\x17.lapgate.stage.v1.ProofR\x06proofs\x12\x1c\n" +
+	"\ttruncated\x18\r \x01(\bR\ttruncated\"\x87\x01\n" +
 	"\n" +
 	"RunRequest\x12\x16\n" +
 	"\x06handle\x18\x01 \x01(\x04R\x06handle\x12*\n" +
 	"\x04item\x18\x02 \x01(\v2\x16.lapgate.stage.v1.ItemR\x04item\x125\n" +
-	"\x06output\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.SharedBytesR\x06output\"\xda\x02\n" +
+	"\x06output\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.SharedBytesR\x06output\"\xdd\x04\n" +
 	"\vRunResponse\x120\n" +
-	"\x06region\x18\x01 \x01(\v2\x18.lapgate.stage.v1.RegionR\x06region\x124\n" +
-	"\bgeometry\x18\x02 \x01(\v2\x18.lapgate.stage.v1.PlanarR\bgeometry\x12/\n" +
+	"\x06region\x18\x01 \x01(\v2\x18.lapgate.stage.v1.RegionR\x06region\x126\n" +
+	"\bgeometry\x18\x02 \x01(\v2\x1a.lapgate.stage.v1.GeometryR\bgeometry\x12/\n" +
 	"\x06planes\x18\x03 \x03(\v2\x17.lapgate.stage.v1.PlaneR\x06planes\x12A\n" +
 	"\fmeasurements\x18\x04 \x03(\v2\x1d.lapgate.stage.v1.MeasurementR\fmeasurements\x122\n" +
 	"\adefects\x18\x05 \x03(\v2\x18.lapgate.stage.v1.DefectR\adefects\x12'\n" +
 	"\x0freplace_defects\x18\x06 \x01(\bR\x0ereplaceDefects\x12\x12\n" +
-	"\x04hold\x18\a \x01(\tR\x04hold\"&\n" +
+	"\x04hold\x18\a \x01(\tR\x04hold\x12/\n" +
+	"\x06proofs\x18\b \x03(\v2\x17.lapgate.stage.v1.ProofR\x06proofs\x126\n" +
+	"\bcoverage\x18\t \x01(\v2\x1a.lapgate.stage.v1.CoverageR\bcoverage\x125\n" +
+	"\n" +
+	"bad_pixels\x18\n" +
+	" \x01(\v2\x16.lapgate.stage.v1.MaskR\tbadPixels\x12A\n" +
+	"\x10saturated_pixels\x18\v \x01(\v2\x16.lapgate.stage.v1.MaskR\x0fsaturatedPixels\x12\x1c\n" +
+	"\ttruncated\x18\f \x01(\bR\ttruncated\"&\n" +
 	"\fCloseRequest\x12\x16\n" +
 	"\x06handle\x18\x01 \x01(\x04R\x06handle\"\x0f\n" +
 	"\rCloseResponse*>\n" +
@@ -2118,7 +2762,7 @@ func file_stagepb_stage_proto_rawDescGZIP() []byte {
 }
 
 var file_stagepb_stage_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 24)
+var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 31)
 var file_stagepb_stage_proto_goTypes = []any{
 	(Scope)(0),                    // 0: lapgate.stage.v1.Scope
 	(*DescribeRequest)(nil),       // 1: lapgate.stage.v1.DescribeRequest
@@ -2126,69 +2770,88 @@ var file_stagepb_stage_proto_goTypes = []any{
 	(*CheckSettingsRequest)(nil),  // 3: lapgate.stage.v1.CheckSettingsRequest
 	(*SettingProblem)(nil),        // 4: lapgate.stage.v1.SettingProblem
 	(*CheckSettingsResponse)(nil), // 5: lapgate.stage.v1.CheckSettingsResponse
-	(*Calibration)(nil),           // 6: lapgate.stage.v1.Calibration
-	(*Planar)(nil),                // 7: lapgate.stage.v1.Planar
-	(*OpenRequest)(nil),           // 8: lapgate.stage.v1.OpenRequest
-	(*OpenResponse)(nil),          // 9: lapgate.stage.v1.OpenResponse
-	(*SharedBytes)(nil),           // 10: lapgate.stage.v1.SharedBytes
-	(*Pixels)(nil),                // 11: lapgate.stage.v1.Pixels
-	(*Frame)(nil),                 // 12: lapgate.stage.v1.Frame
-	(*Plane)(nil),                 // 13: lapgate.stage.v1.Plane
-	(*Span)(nil),                  // 14: lapgate.stage.v1.Span
-	(*Zone)(nil),                  // 15: lapgate.stage.v1.Zone
-	(*Region)(nil),                // 16: lapgate.stage.v1.Region
-	(*Defect)(nil),                // 17: lapgate.stage.v1.Defect
-	(*Measurement)(nil),           // 18: lapgate.stage.v1.Measurement
-	(*Item)(nil),                  // 19: lapgate.stage.v1.Item
-	(*RunRequest)(nil),            // 20: lapgate.stage.v1.RunRequest
-	(*RunResponse)(nil),           // 21: lapgate.stage.v1.RunResponse
-	(*CloseRequest)(nil),          // 22: lapgate.stage.v1.CloseRequest
-	(*CloseResponse)(nil),         // 23: lapgate.stage.v1.CloseResponse
-	nil,                           // 24: lapgate.stage.v1.Frame.TagsEntry
+	(*PixelAt)(nil),               // 6: lapgate.stage.v1.PixelAt
+	(*Calibration)(nil),           // 7: lapgate.stage.v1.Calibration
+	(*Planar)(nil),                // 8: lapgate.stage.v1.Planar
+	(*Distortion)(nil),            // 9: lapgate.stage.v1.Distortion
+	(*Geometry)(nil),              // 10: lapgate.stage.v1.Geometry
+	(*OpenRequest)(nil),           // 11: lapgate.stage.v1.OpenRequest
+	(*OpenResponse)(nil),          // 12: lapgate.stage.v1.OpenResponse
+	(*SharedBytes)(nil),           // 13: lapgate.stage.v1.SharedBytes
+	(*Pixels)(nil),                // 14: lapgate.stage.v1.Pixels
+	(*Frame)(nil),                 // 15: lapgate.stage.v1.Frame
+	(*Plane)(nil),                 // 16: lapgate.stage.v1.Plane
+	(*Mask)(nil),                  // 17: lapgate.stage.v1.Mask
+	(*Zone)(nil),                  // 18: lapgate.stage.v1.Zone
+	(*Region)(nil),                // 19: lapgate.stage.v1.Region
+	(*DefectRef)(nil),             // 20: lapgate.stage.v1.DefectRef
+	(*Defect)(nil),                // 21: lapgate.stage.v1.Defect
+	(*Measurement)(nil),           // 22: lapgate.stage.v1.Measurement
+	(*Proof)(nil),                 // 23: lapgate.stage.v1.Proof
+	(*Coverage)(nil),              // 24: lapgate.stage.v1.Coverage
+	(*Item)(nil),                  // 25: lapgate.stage.v1.Item
+	(*RunRequest)(nil),            // 26: lapgate.stage.v1.RunRequest
+	(*RunResponse)(nil),           // 27: lapgate.stage.v1.RunResponse
+	(*CloseRequest)(nil),          // 28: lapgate.stage.v1.CloseRequest
+	(*CloseResponse)(nil),         // 29: lapgate.stage.v1.CloseResponse
+	nil,                           // 30: lapgate.stage.v1.OpenRequest.FilesEntry
+	nil,                           // 31: lapgate.stage.v1.Frame.TagsEntry
 }
 var file_stagepb_stage_proto_depIdxs = []int32{
 	0,  // 0: lapgate.stage.v1.DescribeResponse.scope:type_name -> lapgate.stage.v1.Scope
 	4,  // 1: lapgate.stage.v1.CheckSettingsResponse.problems:type_name -> lapgate.stage.v1.SettingProblem
-	13, // 2: lapgate.stage.v1.Calibration.dark:type_name -> lapgate.stage.v1.Plane
-	13, // 3: lapgate.stage.v1.Calibration.stray:type_name -> lapgate.stage.v1.Plane
-	13, // 4: lapgate.stage.v1.Calibration.response:type_name -> lapgate.stage.v1.Plane
-	6,  // 5: lapgate.stage.v1.OpenRequest.calibration:type_name -> lapgate.stage.v1.Calibration
-	7,  // 6: lapgate.stage.v1.OpenRequest.geometry:type_name -> lapgate.stage.v1.Planar
-	10, // 7: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
-	24, // 8: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
-	11, // 9: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
-	11, // 10: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
-	14, // 11: lapgate.stage.v1.Zone.spans:type_name -> lapgate.stage.v1.Span
-	15, // 12: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
-	12, // 13: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
-	16, // 14: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
-	7,  // 15: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Planar
-	13, // 16: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
-	18, // 17: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
-	17, // 18: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
-	19, // 19: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
-	19, // 20: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
-	10, // 21: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
-	16, // 22: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
-	7,  // 23: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Planar
-	13, // 24: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
-	18, // 25: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
-	17, // 26: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
-	1,  // 27: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
-	3,  // 28: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
-	8,  // 29: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
-	20, // 30: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
-	22, // 31: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
-	2,  // 32: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
-	5,  // 33: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
-	9,  // 34: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
-	21, // 35: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
-	23, // 36: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
-	32, // [32:37] is the sub-list for method output_type
-	27, // [27:32] is the sub-list for method input_type
-	27, // [27:27] is the sub-list for extension type_name
-	27, // [27:27] is the sub-list for extension extendee
-	0,  // [0:27] is the sub-list for field type_name
+	16, // 2: lapgate.stage.v1.Calibration.dark:type_name -> lapgate.stage.v1.Plane
+	16, // 3: lapgate.stage.v1.Calibration.stray:type_name -> lapgate.stage.v1.Plane
+	16, // 4: lapgate.stage.v1.Calibration.response:type_name -> lapgate.stage.v1.Plane
+	6,  // 5: lapgate.stage.v1.Calibration.bad_pixels:type_name -> lapgate.stage.v1.PixelAt
+	8,  // 6: lapgate.stage.v1.Geometry.planar:type_name -> lapgate.stage.v1.Planar
+	9,  // 7: lapgate.stage.v1.Geometry.distortion:type_name -> lapgate.stage.v1.Distortion
+	7,  // 8: lapgate.stage.v1.OpenRequest.calibration:type_name -> lapgate.stage.v1.Calibration
+	10, // 9: lapgate.stage.v1.OpenRequest.geometry:type_name -> lapgate.stage.v1.Geometry
+	30, // 10: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
+	13, // 11: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
+	31, // 12: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
+	14, // 13: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
+	14, // 14: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
+	18, // 15: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
+	20, // 16: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
+	15, // 17: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
+	19, // 18: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
+	10, // 19: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
+	16, // 20: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
+	22, // 21: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
+	21, // 22: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
+	25, // 23: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
+	24, // 24: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
+	17, // 25: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	17, // 26: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	23, // 27: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
+	25, // 28: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
+	13, // 29: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
+	19, // 30: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
+	10, // 31: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
+	16, // 32: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
+	22, // 33: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
+	21, // 34: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
+	23, // 35: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
+	24, // 36: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
+	17, // 37: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	17, // 38: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	1,  // 39: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
+	3,  // 40: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
+	11, // 41: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
+	26, // 42: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
+	28, // 43: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
+	2,  // 44: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
+	5,  // 45: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
+	12, // 46: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
+	27, // 47: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
+	29, // 48: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
+	44, // [44:49] is the sub-list for method output_type
+	39, // [39:44] is the sub-list for method input_type
+	39, // [39:39] is the sub-list for extension type_name
+	39, // [39:39] is the sub-list for extension extendee
+	0,  // [0:39] is the sub-list for field type_name
 }
 
 func init() { file_stagepb_stage_proto_init() }
@@ -2196,7 +2859,7 @@ func file_stagepb_stage_proto_init() {
 	if File_stagepb_stage_proto != nil {
 		return
 	}
-	file_stagepb_stage_proto_msgTypes[10].OneofWrappers = []any{
+	file_stagepb_stage_proto_msgTypes[13].OneofWrappers = []any{
 		(*Pixels_Shared)(nil),
 		(*Pixels_Data)(nil),
 	}
@@ -2206,7 +2869,7 @@ func file_stagepb_stage_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_stagepb_stage_proto_rawDesc), len(file_stagepb_stage_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   24,
+			NumMessages:   31,
 			NumExtensions: 0,
 			NumServices:   1,
 		},

@@ -37,7 +37,8 @@ type StageServiceClient interface {
 	Describe(ctx context.Context, in *DescribeRequest, opts ...grpc.CallOption) (*DescribeResponse, error)
 	// CheckSettings decodes settings over the defaults and says what is wrong with them.
 	CheckSettings(ctx context.Context, in *CheckSettingsRequest, opts ...grpc.CallOption) (*CheckSettingsResponse, error)
-	// Open builds the stage with its settings and environment.
+	// Open builds the stage with its settings and environment. Shared memory in the
+	// request is the stage's until it answers: copy what is kept.
 	Open(ctx context.Context, in *OpenRequest, opts ...grpc.CallOption) (*OpenResponse, error)
 	// Run runs it on one view or unit. Safe for concurrent calls.
 	Run(ctx context.Context, in *RunRequest, opts ...grpc.CallOption) (*RunResponse, error)
@@ -114,7 +115,8 @@ type StageServiceServer interface {
 	Describe(context.Context, *DescribeRequest) (*DescribeResponse, error)
 	// CheckSettings decodes settings over the defaults and says what is wrong with them.
 	CheckSettings(context.Context, *CheckSettingsRequest) (*CheckSettingsResponse, error)
-	// Open builds the stage with its settings and environment.
+	// Open builds the stage with its settings and environment. Shared memory in the
+	// request is the stage's until it answers: copy what is kept.
 	Open(context.Context, *OpenRequest) (*OpenResponse, error)
 	// Run runs it on one view or unit. Safe for concurrent calls.
 	Run(context.Context, *RunRequest) (*RunResponse, error)

@@ -1,0 +1,80 @@
+package stagepb
+
+import (
+	"fmt"
+
+	"lapgate/pipeline"
+)
+
+// FromGeometry encodes a geometry; the error is for one that the contract cannot carry.
+// nil is nil.
+func FromGeometry(g pipeline.Geometry) (*Geometry, error) {
+	switch g := g.(type) {
+	case nil:
+		return nil, nil
+	case pipeline.Planar:
+		return &Geometry{Planar: fromPlanar(g)}, nil
+	case pipeline.Distorted:
+		l := g.Lens
+		return &Geometry{Planar: fromPlanar(g.Planar),
+			Distortion: &Distortion{K1: l.K1, K2: l.K2, CentreX: l.CentreX, CentreY: l.CentreY, NormPx: l.NormPx}}, nil
+	}
+	return nil, fmt.Errorf("a geometry of type %T cannot be sent to a stage outside; put that stage before the one that makes it", g)
+}
+
+// ToGeometry decodes a geometry; nil is nil.
+func ToGeometry(g *Geometry) pipeline.Geometry {
+	if g == nil {
+		return nil
+	}
+	p := g.GetPlanar()
+	planar := pipeline.Planar{OriginX: p.GetOriginX(), OriginY: p.GetOriginY(), UMPerPx: p.GetUmPerPx(), RotationDeg: p.GetRotationDeg(), Mirror: p.GetMirror()}
+	l := g.GetDistortion()
+	if l == nil {
+		return planar
+	}
+	return pipeline.Distorted{Planar: planar,
+		Lens: pipeline.Distortion{K1: l.GetK1(), K2: l.GetK2(), CentreX: l.GetCentreX(), CentreY: l.GetCentreY(), NormPx: l.GetNormPx()}}
+}
+
+func fromPlanar(p pipeline.Planar) *Planar {
+	return &Planar{OriginX: p.OriginX, OriginY: p.OriginY, UmPerPx: p.UMPerPx, RotationDeg: p.RotationDeg, Mirror: p.Mirror}
+}
+
+// FromRegion encodes a region; nil is nil. The distance to a zone's edge is not carried.
+func FromRegion(r *pipeline.Region) *Region {
+	if r == nil {
+		return nil
+	}
+	m := r.Mask()
+	return &Region{CentreX: r.CentreX, CentreY: r.CentreY, RadiusPx: r.RadiusPx, Width: int32(m.Width), Height: int32(m.Height),
+		Zones: each(r.Zones, func(z pipeline.Zone) *Zone {
+			return &Zone{Name: z.Name, AreaMm2: z.AreaMM2, EquivalentDiameterMm: z.EquivalentDiameterMM, Runs: fromSpans(z.Spans)}
+		})}
+}
+
+// maxZones is what a Region can hold.
+const maxZones = 255
+
+// ToRegion decodes a region; nil is nil. Its zones have no EdgeDistancePx.
+func ToRegion(r *Region) (*pipeline.Region, error) {
+	if r == nil {
+		return nil, nil
+	}
+	width, height := int(r.GetWidth()), int(r.GetHeight())
+	if err := checkSides(width, height); err != nil {
+		return nil, fmt.Errorf("region: %w", err)
+	}
+	if len(r.GetZones()) > maxZones {
+		return nil, fmt.Errorf("region: got %d zones, want at most %d", len(r.GetZones()), maxZones)
+	}
+	var zones []pipeline.Zone
+	for _, z := range r.GetZones() {
+		spans, err := toSpans(z.GetRuns(), width, height)
+		if err != nil {
+			return nil, fmt.Errorf("region: zone %q: %w", z.GetName(), err)
+		}
+		zones = append(zones, pipeline.Zone{Name: z.GetName(), Spans: spans, AreaMM2: z.GetAreaMm2(), EquivalentDiameterMM: z.GetEquivalentDiameterMm()})
+	}
+	return pipeline.NewRegion(width, height, r.GetCentreX(), r.GetCentreY(), r.GetRadiusPx(), zones), nil
+}
