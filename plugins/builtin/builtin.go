@@ -9,12 +9,14 @@ import (
 	"lapgate/plugins/darkfield"
 	"lapgate/plugins/flatfield"
 	"lapgate/plugins/merge"
+	"lapgate/plugins/proof"
 	"lapgate/plugins/region"
 )
 
 // Stages returns the factories of all stages.
 func Stages() []pipeline.Factory {
 	return []pipeline.Factory{
+		proof.Factory,
 		region.Factory,
 		flatfield.Factory,
 		darkfield.Factory,

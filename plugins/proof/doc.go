@@ -1,0 +1,16 @@
+// Package proof is the stage that proves of a view, before its defects count, that the
+// light was there, that the frame is new and whole, and that the camera looks where it
+// did when it was calibrated. It finds no part and no defect.
+//
+// light: the mean of (frame − dark) over a diffuse patch in the field that the lamp lights,
+// against the calibration's; or a photodiode's value in the header's tags against its
+// nominal. A dark-field frame's own level is the part's haze and proves nothing.
+//
+// live data: no row, column or block of one value, no row twice, not bit for bit an earlier
+// frame of the station, no gap in the frame counter where its step is stated.
+//
+// pattern: the hot pixels of the calibration stand out of the frame where they should.
+//
+// What earlier frames looked like is kept in memory, per station and camera: after a
+// start there is nothing to compare the first frame with.
+package proof

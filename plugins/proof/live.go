@@ -1,0 +1,153 @@
+package proof
+
+import (
+	"fmt"
+	"strings"
+
+	"lapgate/pipeline"
+	"lapgate/pipeline/raster"
+)
+
+// proveLive gives one proof over all frames of the view; its value is how many things
+// were found that no living camera sends.
+func (st *stage) proveLive(item *pipeline.Item) error {
+	proof := pipeline.Proof{Name: pipeline.ProofLive}
+	var reasons []string
+	found := func(n int, format string, args ...any) {
+		if n > 0 {
+			proof.Value += float64(n)
+			reasons = append(reasons, fmt.Sprintf(format, args...))
+		}
+	}
+	for i, f := range item.Frames {
+		plane, err := planeOf(item, i)
+		if err != nil {
+			return err
+		}
+		d := findDead(plane, st.s.BlockPx, float32(f.Raw.Format.MaxCount()))
+		found(d.rows, "%d rows from row %d on are of one value or the row above again: lines were not transferred", d.rows, d.firstRow)
+		found(d.columns, "%d columns from column %d on are of one value", d.columns, d.firstColumn)
+		found(d.blocks, "%d blocks of %d px, the first at (%d, %d), are of one value: they were not transferred", d.blocks, st.s.BlockPx, d.firstX, d.firstY)
+		if text := st.memory.look(f, st.s.CounterStep); text != "" {
+			found(1, "%s", text)
+		}
+	}
+	proof.Reason = strings.Join(reasons, "; ")
+	proof.OK = proof.Reason == ""
+	item.Prove(proof)
+	return nil
+}
+
+func planeOf(item *pipeline.Item, i int) (*raster.Plane, error) {
+	if i == 0 {
+		return item.Raw()
+	}
+	return item.Frames[i].Raw.Plane()
+}
+
+// dead counts the parts of a frame that cannot be a picture.
+type dead struct {
+	rows, firstRow         int
+	columns, firstColumn   int
+	blocks, firstX, firstY int
+}
+
+// leastRow is the shortest row or column whose values may not be all alike: shorter ones
+// may be by chance.
+const leastRow = 16
+
+func findDead(p *raster.Plane, block int, top float32) dead {
+	var d dead
+	if p.Width >= leastRow {
+		d.findRows(p)
+	}
+	if p.Height >= leastRow {
+		d.findColumns(p)
+	}
+	if block > 0 {
+		d.findBlocks(p, block, top)
+	}
+	return d
+}
+
+func (d *dead) findRows(p *raster.Plane) {
+	var last []float32
+	for y := range p.Height {
+		row := p.Row(y)
+		if constant(row) || same(row, last) {
+			if d.rows == 0 {
+				d.firstRow = y
+			}
+			d.rows++
+		}
+		last = row
+	}
+}
+
+func constant(v []float32) bool {
+	for _, x := range v[1:] {
+		if x != v[0] {
+			return false
+		}
+	}
+	return true
+}
+
+func same(a, b []float32) bool {
+	if len(a) != len(b) {
+		return false
+	}
+	for i, v := range a {
+		if v != b[i] {
+			return false
+		}
+	}
+	return true
+}
+
+// findColumns keeps the columns that are still of one value from row to row: after a few
+// rows hardly any is.
+func (d *dead) findColumns(p *raster.Plane) {
+	left := make([]int, p.Width)
+	for x := range left {
+		left[x] = x
+	}
+	first := p.Row(0)
+	for y := 1; y < p.Height && len(left) > 0; y++ {
+		row, kept := p.Row(y), left[:0]
+		for _, x := range left {
+			if row[x] == first[x] {
+				kept = append(kept, x)
+			}
+		}
+		left = kept
+	}
+	if d.columns = len(left); d.columns > 0 {
+		d.firstColumn = left[0]
+	}
+}
+
+func (d *dead) findBlocks(p *raster.Plane, side int, top float32) {
+	for y := 0; y+side <= p.Height; y += side {
+		for x := 0; x+side <= p.Width; x += side {
+			if p.At(x, y) < top && constantBlock(p, x, y, side) {
+				if d.blocks == 0 {
+					d.firstX, d.firstY = x, y
+				}
+				d.blocks++
+			}
+		}
+	}
+}
+
+func constantBlock(p *raster.Plane, x, y, side int) bool {
+	v := p.At(x, y)
+	for r := y; r < y+side; r++ {
+		for _, w := range p.Row(r)[x : x+side] {
+			if w != v {
+				return false
+			}
+		}
+	}
+	return true
+}
