@@ -7,7 +7,6 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
-	"sync"
 	"time"
 
 	"lapgate/pipeline"
@@ -70,23 +69,7 @@ func newGlassSet(o options, change func(*pipeline.Recipe)) (*glassSet, []picture
 
 // inspect runs the views of all pairs.
 func (g *glassSet) inspect(list []picture) ([]glassPair, error) {
-	out := make([]glassPair, len(list))
-	errs := make([]error, workers)
-	var wg sync.WaitGroup
-	for w := range workers {
-		wg.Go(func() {
-			for i := w; i < len(list) && errs[w] == nil; i += workers {
-				out[i], errs[w] = g.pair(list[i])
-			}
-		})
-	}
-	wg.Wait()
-	for _, err := range errs {
-		if err != nil {
-			return nil, err
-		}
-	}
-	return out, nil
+	return inParallel(len(list), func(i int) (glassPair, error) { return g.pair(list[i]) })
 }
 
 func (g *glassSet) pair(p picture) (glassPair, error) {
@@ -133,13 +116,18 @@ func (g *glassSet) judge(p glassPair) (defects []pipeline.Defect, pixels [][]ras
 		}
 		pixels = append(pixels, spans)
 	}
-	marks = map[int]bool{}
+	return e.Defects, pixels, marksOf(j)
+}
+
+// marksOf returns the ids of the defects that break a limit.
+func marksOf(j pipeline.Judgement) map[int]bool {
+	marks := map[int]bool{}
 	for _, r := range j.Reasons {
 		if r.DefectID > 0 {
 			marks[r.DefectID] = true
 		}
 	}
-	return e.Defects, pixels, marks
+	return marks
 }
 
 // score scores the marks of a pair.

@@ -43,7 +43,7 @@ func chooseGlass(o options, out io.Writer) error {
 	pairs := 0
 	for _, grid := range []int{64, 128} {
 		for _, low := range []float64{3.5, 5, 7} {
-			g, choose, _, err := newGlassSet(o, func(r *pipeline.Recipe) { setAll(r, grid, low) })
+			g, choose, _, err := newGlassSet(o, func(r *pipeline.Recipe) { setAll(r, grid, low, 8) })
 			if err != nil {
 				return err
 			}
@@ -135,7 +135,7 @@ func (c credited) score(mark func(pipeline.Defect) bool) boxScore {
 }
 
 // setAll lays grid and thresholds over all views of a recipe.
-func setAll(r *pipeline.Recipe, grid int, low float64) {
+func setAll(r *pipeline.Recipe, grid int, low, high float64) {
 	for _, v := range r.Views {
 		for i, s := range v.Stages {
 			inner := s.Decode
@@ -149,7 +149,7 @@ func setAll(r *pipeline.Recipe, grid int, low float64) {
 				case *darkfield.Settings:
 					t.GridPx = grid
 				case *blobs.Settings:
-					t.KLow = low
+					t.KLow, t.KHigh = low, high
 				}
 				return nil
 			}

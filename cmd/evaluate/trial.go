@@ -5,16 +5,13 @@ import (
 	"fmt"
 	"io"
 	"math"
-	"sync"
+	"sync/atomic"
 	"time"
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/calibrate"
 	"lapgate/pipeline/render"
 )
-
-// workers is how many units are drawn and inspected at the same time.
-const workers = 2
 
 // leastSigma is the noise-free peak, in sigmas of one raw pixel, from which a dig must
 // be found.
@@ -69,31 +66,14 @@ type condition struct {
 
 // units inspects the first n units under a condition.
 func (t *trial) units(n int, c condition, progress io.Writer) ([]inspected, error) {
-	out := make([]inspected, n)
-	errs := make([]error, workers)
-	var wg sync.WaitGroup
-	var mu sync.Mutex
-	done := 0
-	for w := range workers {
-		wg.Go(func() {
-			for i := w; i < n && errs[w] == nil; i += workers {
-				out[i], errs[w] = t.unit(i, c)
-				mu.Lock()
-				done++
-				if done%20 == 0 || done == n {
-					fmt.Fprintf(progress, "rendered, %s: %d of %d\n", c.name, done, n)
-				}
-				mu.Unlock()
-			}
-		})
-	}
-	wg.Wait()
-	for _, err := range errs {
-		if err != nil {
-			return nil, err
+	var done atomic.Int64
+	return inParallel(n, func(i int) (inspected, error) {
+		out, err := t.unit(i, c)
+		if k := done.Add(1); k%20 == 0 || int(k) == n {
+			fmt.Fprintf(progress, "rendered, %s: %d of %d\n", c.name, k, n)
 		}
-	}
-	return out, nil
+		return out, err
+	})
 }
 
 func (t *trial) unit(i int, c condition) (inspected, error) {
