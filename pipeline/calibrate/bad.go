@@ -48,8 +48,8 @@ func (b *badSet) saturated(pixels []bool) {
 
 // hot marks dark pixels above their local median by HotSigma robust sigmas. The sigma
 // is at least the noise of the mean itself, for most pixels of a quiet dark agree.
-func (b *badSet) hot(dark *raster.Plane, noiseOfMean float64, r Rules) {
-	deviation := minus(dark, localMedian(dark))
+// deviation is the dark plane less its local median.
+func (b *badSet) hot(deviation *raster.Plane, noiseOfMean float64, r Rules) {
 	limit := r.HotSigma * max(robustSigma(deviation.Pix), noiseOfMean)
 	for i, v := range deviation.Pix {
 		if float64(v) > limit {

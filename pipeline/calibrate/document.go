@@ -37,6 +37,13 @@ type document struct {
 	Planes        []planeEntry `json:"planes"`
 	BadPixels     [][2]int     `json:"bad_pixels"` // x, y
 	Provenance    Provenance   `json:"provenance"`
+
+	Distortion   *pipeline.Distortion        `json:"distortion,omitempty"`
+	Sizing       *pipeline.Sizing            `json:"sizing,omitempty"`
+	Sensor       *pipeline.SensorTemperature `json:"sensor_temperature,omitempty"`
+	Reference    *pipeline.ReferencePatch    `json:"reference_patch,omitempty"`
+	PartEdge     *pipeline.PartEdge          `json:"part_edge,omitempty"`
+	FixedPattern []pipeline.PatternPixel     `json:"fixed_pattern,omitempty"`
 }
 
 // planeEntry names a file of little-endian float32, row by row without gaps.
@@ -57,6 +64,7 @@ func documentOf(m Made) document {
 		UMPerPx:  c.Scale.UMPerPx, UncertaintyUM: c.Scale.UncertaintyUM, ScaleSource: c.Scale.Source,
 		GainDNPerE: c.Noise.GainDNPerE, DarkNoiseDN: c.Noise.DarkDN, DarkNoiseE: DarkNoiseE(c.Noise),
 		BadPixels: [][2]int{}, Provenance: m.Provenance,
+		Distortion: c.Distortion, Sizing: c.Sizing, Sensor: c.Sensor, Reference: c.Reference, PartEdge: c.PartEdge, FixedPattern: c.FixedPattern,
 	}
 	for _, p := range []planeEntry{
 		{Name: "dark", Unit: "DN", plane: c.Dark}, {Name: "stray", Unit: "DN", plane: c.Stray}, {Name: "response", Unit: "1", plane: c.Response},
@@ -99,6 +107,13 @@ func (d document) calibration() (*pipeline.Calibration, error) {
 		Capture: d.onto(pipeline.Capture{Format: f, Width: d.Width, Height: d.Height}),
 		Noise:   pipeline.NoiseModel{GainDNPerE: d.GainDNPerE, DarkDN: d.DarkNoiseDN},
 		Scale:   pipeline.Scale{UMPerPx: d.UMPerPx, UncertaintyUM: d.UncertaintyUM, Source: d.ScaleSource},
+
+		Distortion: d.Distortion, Sizing: d.Sizing, Sensor: d.Sensor, Reference: d.Reference, PartEdge: d.PartEdge, FixedPattern: d.FixedPattern,
+	}
+	if c.Distortion != nil {
+		if err := c.Distortion.Check(math.Hypot(float64(d.Width), float64(d.Height)) / 2); err != nil {
+			return nil, err
+		}
 	}
 	for _, b := range d.BadPixels {
 		if b[0] < 0 || b[0] >= d.Width || b[1] < 0 || b[1] >= d.Height {

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/calibrate/dots"
 	"lapgate/pipeline/calibrate/emva"
 	"lapgate/pipeline/raster"
 	"lapgate/pipeline/raster/files"
@@ -17,12 +18,21 @@ type Request struct {
 	Scale               pipeline.Scale
 	MadeAt              string // RFC 3339, given by the caller
 	Rules               Rules
+
+	Certificate     dots.Certificate // of the dot target
+	SizingDiameters [][]float64      // µm, of the sizing target's dots row by row from the top; 0 = no dot there
+	Patch           *pipeline.Box    // the reference patch; nil = none
+	Part            PartSearch       // how to find the conforming part
 }
 
 // Inputs are the frames of each kind. Stray and Response may be nil: none was taken.
-// A mirror gives no response image; without one K is unknown.
+// A mirror gives no response image; without one, and without a ramp, K is unknown. So may be the rest: pairs of
+// frames at rising exposures, frames of a dot target, of a target with dots of known
+// diameters, and of a conforming part.
 type Inputs struct {
 	Dark, Stray, Response iter.Seq2[Frame, error]
+	Ramp                  []RampStep
+	Dots, Sizing, Part    iter.Seq2[Frame, error]
 }
 
 // Made is a calibration and what it was made from.
@@ -37,10 +47,18 @@ type Provenance struct {
 	NormDN     float64       `json:"response_norm_dn"` // mean of response − dark over good pixels; 0 = no response
 	GainLevels int           `json:"gain_levels"`      // tiles from which K was fitted
 	Bad        BadCounts     `json:"bad_pixel_reasons"`
+
+	PhotonTransfer  []emva.Level  `json:"photon_transfer,omitempty"`        // of tiles of the response frames, above dark
+	ResponseGain    float64       `json:"response_gain_dn_per_e,omitempty"` // K by those, where a ramp gave the K in force
+	DarkPattern     *emva.Spatial `json:"dark_pattern,omitempty"`
+	ResponsePattern *emva.Spatial `json:"response_pattern,omitempty"`
+	Ramp            *Ramp         `json:"ramp,omitempty"`
+	Target          *dots.Scale   `json:"dot_target,omitempty"`
+	SizingDots      []dots.Known  `json:"sizing_dots,omitempty"`
 }
 
-// Folders names the folders of frames; Stray and Response may be empty.
-type Folders struct{ Dark, Stray, Response string }
+// Folders names the folders of frames; all but Dark may be empty.
+type Folders struct{ Dark, Stray, Response, Ramp, Dots, Sizing, Part string }
 
 // FromFolders makes a calibration from folders of frames; see Folder for what one may
 // hold, and Make.
@@ -51,7 +69,16 @@ func FromFolders(req Request, in Folders, o files.Options) (Made, error) {
 		}
 		return Folder(dir, req.Capture, o)
 	}
-	return Make(req, Inputs{Dark: open(in.Dark), Stray: open(in.Stray), Response: open(in.Response)})
+	inputs := Inputs{Dark: open(in.Dark), Stray: open(in.Stray), Response: open(in.Response),
+		Dots: open(in.Dots), Sizing: open(in.Sizing), Part: open(in.Part)}
+	if in.Ramp != "" {
+		ramp, err := RampFolder(in.Ramp, req.Capture, o)
+		if err != nil {
+			return Made{}, err
+		}
+		inputs.Ramp = ramp
+	}
+	return Make(req, inputs)
 }
 
 // Make makes a calibration. It refuses frames that are saturated, clipped, too few,
@@ -61,7 +88,8 @@ func FromFolders(req Request, in Folders, o files.Options) (Made, error) {
 // Noise: dark variance is the median over 32 × 32 tiles of the two-frame variance; K
 // is the slope through the origin over the tiles of the response pairs up to
 // Rules.LinearShare of full scale, or over all tiles if none is that dark. A tile's
-// variance is taken about its own mean difference, so a flickering lamp drops out.
+// variance is taken about its own mean difference, so a flickering lamp drops out. A
+// ramp gives K by EMVA Standard 1288 instead.
 func Make(req Request, in Inputs) (Made, error) {
 	b := builder{req: req, cal: &pipeline.Calibration{
 		Camera: req.Camera, Light: req.Light, Mode: req.Mode, Scale: req.Scale, MadeAt: req.MadeAt,
@@ -69,11 +97,15 @@ func Make(req Request, in Inputs) (Made, error) {
 	if err := b.checkRequest(in); err != nil {
 		return Made{}, err
 	}
-	for _, step := range []func(Inputs) error{b.dark, b.response, b.stray, b.finish} {
+	for _, seq := range []*iter.Seq2[Frame, error]{&in.Dark, &in.Stray, &in.Response, &in.Dots, &in.Sizing, &in.Part} {
+		*seq = b.temperature.watch(*seq)
+	}
+	for _, step := range []func(Inputs) error{b.dark, b.response, b.stray, b.ramp, b.finish, b.dots, b.sizing, b.part, b.patch, b.pattern} {
 		if err := step(in); err != nil {
 			return Made{}, err
 		}
 	}
+	b.cal.Sensor = b.temperature.seen()
 	made := Made{Calibration: b.cal, Provenance: b.from}
 	hash, err := hashOf(made)
 	b.cal.Hash = hash
@@ -90,6 +122,9 @@ type builder struct {
 	bad   badSet
 	raw   *raster.Plane // response in DN
 	local *raster.Plane // its local median
+
+	darkAgainst *raster.Plane // dark less its local median
+	temperature thermometer
 }
 
 func (b *builder) checkRequest(in Inputs) error {
@@ -100,11 +135,17 @@ func (b *builder) checkRequest(in Inputs) error {
 		return pipeline.Invalid("rules: got %d to %d frames, want 2 to 10000: start from DefaultRules", r.Rules.MinFrames, r.Rules.MaxFrames)
 	case !(r.Capture.ExposureUS > 0):
 		return pipeline.Invalid("exposure_us: got %g, want the exposure of the frames", r.Capture.ExposureUS)
+	case in.Dots != nil:
+		return b.checkTarget()
 	case !(r.Scale.UMPerPx > 0) || math.IsInf(r.Scale.UMPerPx, 0):
 		return pipeline.Invalid("um_per_px: got %g, want the size of a pixel on the part", r.Scale.UMPerPx)
 	case r.Scale.Source == "":
 		return pipeline.Invalid("scale source: not given, want \"stated\" or serial and date of the target's certificate")
 	}
+	return b.checkNames()
+}
+
+func (b *builder) checkNames() error {
 	for _, id := range [][2]string{{"camera", b.req.Camera}, {"light", b.req.Light}, {"mode", b.req.Mode}} {
 		if err := pipeline.CheckID(id[0], id[1]); err != nil {
 			return err
@@ -123,9 +164,11 @@ func (b *builder) dark(in Inputs) error {
 	b.cal.Dark = s.mean()
 	b.level = s.darkLevel()
 	b.from.Frames = append(b.from.Frames, s.files...)
+	b.from.DarkPattern = s.spatial()
 	b.bad.mask = raster.NewMask(s.width, s.height)
 	b.bad.saturated(s.saturated)
-	b.bad.hot(b.cal.Dark, math.Sqrt(max(b.level.VarianceDN2, emva.MinDarkVariance)/float64(len(s.files))), b.req.Rules)
+	b.darkAgainst = minus(b.cal.Dark, localMedian(b.cal.Dark))
+	b.bad.hot(b.darkAgainst, math.Sqrt(max(b.level.VarianceDN2, emva.MinDarkVariance)/float64(len(s.files))), b.req.Rules)
 	b.bad.noisy(s, b.level.VarianceDN2)
 	return nil
 }
@@ -143,6 +186,7 @@ func (b *builder) response(in Inputs) error {
 		return err
 	}
 	b.from.Frames = append(b.from.Frames, s.files...)
+	b.from.ResponsePattern = s.spatial()
 	b.bad.saturated(s.saturated)
 	b.local = localMedian(b.raw)
 	b.bad.response(b.raw, b.local, medianOf(b.raw), b.req.Rules)
@@ -164,6 +208,7 @@ func (b *builder) checkBright(used []SourceFrame) error {
 
 func (b *builder) fitGain(s *stack) error {
 	all := s.tileLevels()
+	b.from.PhotonTransfer = transferPoints(all, b.level)
 	limit := b.req.Rules.LinearShare * float64(b.cal.Capture.Format.MaxCount())
 	var linear []emva.Level
 	for _, l := range all {

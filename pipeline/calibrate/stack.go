@@ -172,3 +172,17 @@ func (s *stack) darkLevel() emva.Level {
 	}
 	return emva.Level{MeanDN: median(means), VarianceDN2: median(vars)}
 }
+
+// spatial returns the variances of the mean image over the pixels, bad ones too.
+func (s *stack) spatial() *emva.Spatial {
+	mean := make([]float64, len(s.sum))
+	for i, v := range s.sum {
+		mean[i] = float64(v) / float64(len(s.files))
+	}
+	temporal := 0.0
+	for _, p := range s.pairs {
+		temporal += p.VarianceDN2 / float64(len(s.pairs))
+	}
+	out := emva.SpatialOf(mean, s.width, len(s.files), temporal)
+	return &out
+}

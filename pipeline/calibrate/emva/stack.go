@@ -62,20 +62,28 @@ func (s *Stack) Spatial() Spatial {
 	if s.frames < 2 {
 		panic("emva: a spatial variance needs at least two frames")
 	}
-	out := Spatial{Frames: s.frames, TemporalDN2: s.temporal()}
-	mean := s.meanImage()
-	n, l := float64(len(mean)), float64(s.frames)
+	return SpatialOf(s.meanImage(), s.width, s.frames, s.temporal())
+}
+
+// SpatialOf is Stack.Spatial from the mean image of the frames, row by row of the given
+// width, and the temporal variance of one pixel of one frame in DN².
+func SpatialOf(mean []float64, width, frames int, temporalDN2 float64) Spatial {
+	out := Spatial{Frames: frames, TemporalDN2: temporalDN2}
+	height := len(mean) / width
+	n, l, m, c := float64(len(mean)), float64(frames), float64(height), float64(width)
 	out.MeanDN = average(mean)
 	out.MeasuredDN2 = variance(mean, out.MeanDN)
-	out.VarianceDN2 = out.MeasuredDN2 - out.TemporalDN2/l
-	m, c := float64(s.height), float64(s.width)
-	cav := variance(s.columnMeans(mean), out.MeanDN) - out.TemporalDN2/(l*m)
-	rav := variance(s.rowMeans(mean), out.MeanDN) - out.TemporalDN2/(l*c)
+	out.VarianceDN2 = out.MeasuredDN2 - temporalDN2/l
+	out.LocalDN2 = neighbourhood(mean, width, height) - temporalDN2/l
 	free := n - m - c
+	if free <= 0 { // a line has no rows and columns to tell apart
+		return out
+	}
+	cav := variance(columnMeans(mean, width, height), out.MeanDN) - temporalDN2/(l*m)
+	rav := variance(rowMeans(mean, width, height), out.MeanDN) - temporalDN2/(l*c)
 	out.ColumnDN2 = (n-m)/free*cav - c/free*(out.VarianceDN2-rav)
 	out.RowDN2 = (n-c)/free*rav - m/free*(out.VarianceDN2-cav)
 	out.PixelDN2 = n / free * (out.VarianceDN2 - cav - rav)
-	out.LocalDN2 = s.neighbourhood(mean) - out.TemporalDN2/l
 	return out
 }
 
@@ -100,18 +108,18 @@ func (s *Stack) meanImage() []float64 {
 	return out
 }
 
-func (s *Stack) columnMeans(image []float64) []float64 {
-	out := make([]float64, s.width)
+func columnMeans(image []float64, width, height int) []float64 {
+	out := make([]float64, width)
 	for i, v := range image {
-		out[i%s.width] += v / float64(s.height)
+		out[i%width] += v / float64(height)
 	}
 	return out
 }
 
-func (s *Stack) rowMeans(image []float64) []float64 {
-	out := make([]float64, s.height)
+func rowMeans(image []float64, width, height int) []float64 {
+	out := make([]float64, height)
 	for i, v := range image {
-		out[i/s.width] += v / float64(s.width)
+		out[i/width] += v / float64(width)
 	}
 	return out
 }
@@ -119,18 +127,18 @@ func (s *Stack) rowMeans(image []float64) []float64 {
 // neighbourhood returns the variance of the pixels against the mean of their 5 × 5,
 // scaled by 25/24 so that a pattern without neighbours alike keeps its variance. Light
 // fall-off drops out.
-func (s *Stack) neighbourhood(image []float64) float64 {
+func neighbourhood(image []float64, width, height int) float64 {
 	const reach, count = 2, 25
 	total, n := 0.0, 0.0
-	for y := reach; y < s.height-reach; y++ {
-		for x := reach; x < s.width-reach; x++ {
+	for y := reach; y < height-reach; y++ {
+		for x := reach; x < width-reach; x++ {
 			sum := 0.0
 			for v := y - reach; v <= y+reach; v++ {
-				for _, p := range image[v*s.width+x-reach : v*s.width+x+reach+1] {
+				for _, p := range image[v*width+x-reach : v*width+x+reach+1] {
 					sum += p
 				}
 			}
-			d := image[y*s.width+x] - sum/count
+			d := image[y*width+x] - sum/count
 			total += d * d
 			n++
 		}
