@@ -4,6 +4,7 @@ package builtin
 
 import (
 	"lapgate/pipeline"
+	"lapgate/plugins/areas"
 	"lapgate/plugins/blobs"
 	"lapgate/plugins/classify"
 	"lapgate/plugins/darkfield"
@@ -21,6 +22,7 @@ func Stages() []pipeline.Factory {
 		flatfield.Factory,
 		darkfield.Factory,
 		blobs.Factory,
+		areas.Factory,
 		merge.Factory(),
 		classify.Factory(),
 		classify.ViewFactory(),
