@@ -165,7 +165,9 @@ func evaluateGlass(o options, progress io.Writer) (*result, error) {
 		}
 		if side.name == "scored pictures" {
 			r.atLeast("F1, scored pictures", total.f1(), 0.90)
-			r.byClass(g, pairs)
+			if err := r.byClass(g, pairs); err != nil {
+				return nil, err
+			}
 		}
 	}
 	return r, nil
@@ -200,13 +202,16 @@ func (r *result) boxes(g *glassSet, pairs []glassPair, name string) (boxScore, e
 }
 
 // byClass adds the recall of each class.
-func (r *result) byClass(g *glassSet, pairs []glassPair) {
+func (r *result) byClass(g *glassSet, pairs []glassPair) error {
 	for _, class := range []string{"0", "1", "2", "3"} {
 		var s boxScore
 		for _, p := range pairs {
 			of := slices.DeleteFunc(slices.Clone(p.truth), func(b truthBox) bool { return b.class != class })
 			s = s.plus(g.score(p, of))
 		}
-		_, _ = r.share("recall of class "+class+", scored pictures", s.found, s.found+s.missed, "boxes")
+		if _, err := r.share("recall of class "+class+", scored pictures", s.found, s.found+s.missed, "boxes"); err != nil {
+			return err
+		}
 	}
+	return nil
 }

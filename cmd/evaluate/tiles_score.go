@@ -3,6 +3,7 @@ package main
 import (
 	"fmt"
 	"io"
+	"slices"
 
 	"lapgate/pipeline"
 	"lapgate/server/yield"
@@ -28,6 +29,9 @@ func evaluateTiles(o options, progress io.Writer) (*result, error) {
 	r := &result{}
 	clean := ofClass(scored, "Free")
 	upper := r.class("Blowhole by digs", ofClass(scored, "Blowhole"), clean, "scored tiles", digs)
+	inside := slices.DeleteFunc(ofClass(scored, "Blowhole"), func(t tile) bool { return t.mask.Count() == 0 })
+	r.plain("scored Blowhole pictures with the defect in the cut margin", float64(len(ofClass(scored, "Blowhole"))-len(inside)), len(inside), "other pictures; the former count as missed above")
+	r.class("Blowhole by digs", inside, clean, "scored, not in the margin", digs)
 	r.class("Blowhole by any defect", ofClass(scored, "Blowhole"), clean, "scored tiles", anyKind)
 	r.class("Blowhole by digs", ofClass(chosen, "Blowhole"), ofClass(chosen, "Free"), "tiles of the choice", digs)
 	for _, other := range []string{"Crack", "Break", "Fray"} {
