@@ -43,7 +43,7 @@ var arrows = map[string][]string{
 	"server/intake":             {"pipeline", "server/ledger", "server/images"},
 	"server/ledger":             {"pipeline"},
 	"server/images":             {"pipeline", "pipeline/raster", "pipeline/raster/files"},
-	"server/masters":            {"pipeline", "server/ledger"},
+	"server/masters":            {"pipeline", "server/ledger", "server/yield"},
 	"server/rejudge":            {"pipeline", "pipeline/limits", "server/ledger", "server/images"},
 	"server/yield":              {},
 	"server/study":              {"server/yield"},

@@ -31,7 +31,9 @@ type Server struct {
 	Workers          int    `yaml:"workers" help:"Frames worked on at once. 0 = as many as there are processors."`
 	ViewTimeoutMS    int    `yaml:"view_timeout_ms" help:"Milliseconds to wait for all views of a showing, where the recipe does not say; then the unit is held. It cannot be 0."`
 	LogLevel         string `yaml:"log_level" help:"What is logged: debug, info, warn or error, and what is worse. It cannot be empty."`
-	Development      bool   `yaml:"development" help:"Logs for a person at a terminal instead of JSON lines. false = JSON lines."`
+	LogFormat        string `yaml:"log_format" help:"How it is logged: json (one object a line) or text (for a person at a terminal). It cannot be empty."`
+	Development      bool   `yaml:"development" help:"Lets every good recipe judge as soon as it is saved, without approval; not for units that ship. false = a second person approves each recipe."`
+	People           string `yaml:"people" help:"File that lists people and their roles. Empty keeps no list: every name may do everything."`
 	Reflection       bool   `yaml:"reflection" help:"Lets clients ask which services there are (gRPC reflection). false = no."`
 	ShutdownGraceMS  int    `yaml:"shutdown_grace_ms" help:"Milliseconds for units under way to finish when the server stops; the rest is held. 0 = none."`
 }
@@ -40,12 +42,15 @@ type Server struct {
 func DefaultServer() Server {
 	return Server{
 		Listen: "127.0.0.1:7391", Ledger: "lapgate.db", Recipes: "recipes", Calibrations: "calibrations", Images: "images", KeepImages: "rejects_and_holds", ImagesQuotaBytes: 100 << 30,
-		MaxBytesInFlight: 1 << 30, MaxFrameBytes: 128 << 20, ViewTimeoutMS: 2000, LogLevel: "info", Reflection: true, ShutdownGraceMS: 5000,
+		MaxBytesInFlight: 1 << 30, MaxFrameBytes: 128 << 20, ViewTimeoutMS: 2000, LogLevel: "info", LogFormat: "json", Reflection: true, ShutdownGraceMS: 5000,
 	}
 }
 
 // logLevels are the values of log_level.
 func logLevels() []string { return []string{"debug", "info", "warn", "error"} }
+
+// logFormats are the values of log_format.
+func logFormats() []string { return []string{"json", "text"} }
 
 // keepPolicies are the values of keep_images.
 func keepPolicies() []string { return []string{"none", "rejects_and_holds", "all"} }
@@ -70,6 +75,7 @@ func (s Server) check() []Problem {
 	wrong(s.ViewTimeoutMS < 1 || s.ViewTimeoutMS > 3_600_000, "view_timeout_ms", s.ViewTimeoutMS, "1 to 3600000")
 	wrong(s.ShutdownGraceMS < 0 || s.ShutdownGraceMS > 3_600_000, "shutdown_grace_ms", s.ShutdownGraceMS, "0 to 3600000")
 	wrong(!slices.Contains(logLevels(), s.LogLevel), "log_level", strconv.Quote(s.LogLevel), "one of "+strings.Join(logLevels(), ", "))
+	wrong(!slices.Contains(logFormats(), s.LogFormat), "log_format", strconv.Quote(s.LogFormat), "one of "+strings.Join(logFormats(), ", "))
 	return out
 }
 

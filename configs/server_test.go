@@ -109,6 +109,7 @@ func TestServerProblems(t *testing.T) {
 		{"format: 1\n", "LAPGATE_WORKERS=-3", nil, "LAPGATE_WORKERS: workers: got -3, want 0 to 1024"},
 		{"format: 1\n", "LAPGATE_LISTN=:0", nil, "LAPGATE_LISTN: no setting has this variable, want LAPGATE_LISTEN"},
 		{"format: 1\n", "", []string{"--log-level=loud"}, `--log-level: log_level: got "loud", want one of debug, info, warn, error`},
+		{"format: 1\nlog_format: xml\n", "", nil, `FILE:2:13: log_format: got "xml", want one of json, text`},
 		{"format: 1\nlog_level: soft\n", "", nil, `FILE:2:12: log_level: got "soft", want one of debug, info, warn, error`},
 	} {
 		path := settingsFile(t, c.text)

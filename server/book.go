@@ -1,6 +1,7 @@
 package server
 
 import (
+	"context"
 	"fmt"
 	"maps"
 	"slices"
@@ -9,6 +10,7 @@ import (
 	"time"
 
 	"lapgate/pipeline"
+	"lapgate/server/ledger"
 )
 
 // Builder makes the pipeline of a recipe for the cameras of one line and station. Stale
@@ -16,56 +18,93 @@ import (
 type Builder func(r *pipeline.Recipe, line, station string) (p *pipeline.Pipeline, stale func() bool, err error)
 
 // Book is the recipes in force, by file, and their pipelines by line and station. A
-// file that was saved broken keeps its last good recipe in force. It is safe for
+// file that was saved broken keeps its last good recipe in force; one that was saved and
+// not approved keeps its last approved one, where approval is required. It is safe for
 // concurrent use.
 type Book struct {
-	build Builder
+	build     Builder
+	approvals Approvals // nil = every good save is in force at once
+	decode    Decode
+	now       func() time.Time // set where approvals are
 
 	mu      sync.Mutex // guards everything below
 	files   map[string]*entry
+	lots    map[lotAt]time.Time  // when a lot was first asked for
 	retired []*pipeline.Pipeline // replaced, perhaps still judging; closed with the book
 }
 
+// entry is one file.
 type entry struct {
-	recipe  *pipeline.Recipe // nil = never loaded well
-	since   time.Time
-	refused error // of the latest save, nil = none
-	pipes   map[place]built
+	saved    *pipeline.Recipe // the latest good save; nil = never loaded well
+	since    time.Time        // of that save
+	refused  error            // of the latest save, nil = none
+	approved []ledger.Approved
+	versions map[string]*version // the recipes that may judge, by text hash
 }
 
-// place is where cameras of their own stand.
-type place struct{ line, station string }
-
-type built struct {
-	pipe  *pipeline.Pipeline
-	stale func() bool
+// version is one text of a file that may judge.
+type version struct {
+	recipe   *pipeline.Recipe
+	since    time.Time
+	approval *ledger.Approval // nil = none is needed
+	pipes    map[place]built
 }
 
 // NewBook returns an empty Book whose pipelines are made by build.
-func NewBook(build Builder) *Book { return &Book{build: build, files: map[string]*entry{}} }
+func NewBook(build Builder) *Book {
+	return &Book{build: build, files: map[string]*entry{}, lots: map[lotAt]time.Time{}}
+}
 
-// Put brings a recipe into force. Two files for the same part, revision and surface are
-// an error, and nothing changes.
+// Put takes over a good save. It comes into force at once, or when it is approved where
+// approval is required. Two files for the same part, revision and surface are an error,
+// and nothing changes.
 func (b *Book) Put(file string, r *pipeline.Recipe, now time.Time) error {
+	approved, err := b.readApprovals(context.Background())
+	if err != nil {
+		return err
+	}
 	b.mu.Lock()
 	defer b.mu.Unlock()
 	for other, e := range b.files {
-		if other != file && e.recipe != nil && sameSubject(e.recipe, r) {
+		if other != file && e.saved != nil && sameSubject(e.saved, r) {
 			return pipeline.Invalid("%s: part %s revision %q surface %q is in %s already; keep one of the two files", file, r.Part, r.Revision, r.Surface, other)
 		}
 	}
-	if old := b.files[file]; old != nil {
-		b.retire(old)
+	e := b.entry(file)
+	e.saved, e.since, e.refused = r, now, nil
+	if b.approvals == nil {
+		b.keepVersions(e, map[string]*version{r.TextHash: {recipe: r, since: now}})
+		return nil
 	}
-	b.files[file] = &entry{recipe: r, since: now, pipes: map[place]built{}}
-	return nil
+	return b.adopt(e, file, approved)
 }
 
-// retire sets pipelines aside. The caller holds b.mu.
-func (b *Book) retire(e *entry) {
-	for _, p := range e.pipes {
-		b.retired = append(b.retired, p.pipe)
+// entry returns the entry of a file, a new one where there is none. The caller holds b.mu.
+func (b *Book) entry(file string) *entry {
+	if b.files[file] == nil {
+		b.files[file] = &entry{versions: map[string]*version{}}
 	}
+	return b.files[file]
+}
+
+// keepVersions makes want the entry's versions; those it has already keep their
+// pipelines. The caller holds b.mu.
+func (b *Book) keepVersions(e *entry, want map[string]*version) {
+	for hash, v := range e.versions {
+		if w := want[hash]; w != nil {
+			w.pipes = v.pipes
+			continue
+		}
+		for _, p := range v.pipes {
+			b.retired = append(b.retired, p.pipe)
+		}
+	}
+	for _, v := range want {
+		if v.pipes == nil {
+			v.pipes = map[place]built{}
+		}
+	}
+	e.versions = want
 }
 
 func sameSubject(a, c *pipeline.Recipe) bool {
@@ -76,10 +115,7 @@ func sameSubject(a, c *pipeline.Recipe) bool {
 func (b *Book) Refuse(file string, why error) {
 	b.mu.Lock()
 	defer b.mu.Unlock()
-	if b.files[file] == nil {
-		b.files[file] = &entry{pipes: map[place]built{}}
-	}
-	b.files[file].refused = why
+	b.entry(file).refused = why
 }
 
 // For implements intake.Recipes. An empty revision or surface in a recipe stands for
@@ -87,42 +123,35 @@ func (b *Book) Refuse(file string, why error) {
 func (b *Book) For(id pipeline.Identity) (*pipeline.Pipeline, error) {
 	b.mu.Lock()
 	defer b.mu.Unlock()
-	var best *entry
+	var best *version
+	var waiting *pipeline.Recipe
 	most := -1
 	for _, file := range slices.Sorted(maps.Keys(b.files)) {
 		e := b.files[file]
-		if e.recipe == nil || e.recipe.Part != id.Part {
+		if e.saved == nil || e.saved.Part != id.Part {
 			continue
 		}
-		if exact, ok := matches(e.recipe, id); ok && exact > most {
-			best, most = e, exact
+		exact, ok := matches(e.saved, id)
+		if !ok || exact <= most {
+			continue
 		}
+		v, err := b.versionFor(e, id)
+		if err != nil {
+			return nil, err
+		}
+		if v == nil {
+			waiting = e.saved
+			continue
+		}
+		best, most = v, exact
 	}
-	if best == nil {
+	switch {
+	case best == nil && waiting != nil:
+		return nil, unapproved(waiting)
+	case best == nil:
 		return nil, pipeline.NotFound("%s for part %s revision %q surface %q (have %s); save one in the recipes folder", pipeline.ReasonNoRecipe, id.Part, id.Revision, id.Surface, b.have())
 	}
 	return b.at(best, place{id.Line, id.Station})
-}
-
-// at returns the entry's pipeline for a place, made anew when its calibration changed.
-// The caller holds b.mu.
-func (b *Book) at(e *entry, where place) (*pipeline.Pipeline, error) {
-	have, ok := e.pipes[where]
-	if ok && !have.stale() {
-		return have.pipe, nil
-	}
-	p, stale, err := b.build(e.recipe, where.line, where.station)
-	if err != nil {
-		if ok { // the last good one stays in force
-			return have.pipe, nil
-		}
-		return nil, pipeline.Fail(pipeline.Unready, "line %s station %s: %w", where.line, where.station, err)
-	}
-	if ok {
-		b.retired = append(b.retired, have.pipe)
-	}
-	e.pipes[where] = built{p, stale}
-	return p, nil
 }
 
 func matches(r *pipeline.Recipe, id pipeline.Identity) (exact int, ok bool) {
@@ -142,8 +171,8 @@ func matches(r *pipeline.Recipe, id pipeline.Identity) (exact int, ok bool) {
 func (b *Book) have() string {
 	var out []string
 	for _, e := range b.files {
-		if e.recipe != nil {
-			out = append(out, strings.TrimRight(fmt.Sprintf("%s/%s/%s", e.recipe.Part, e.recipe.Revision, e.recipe.Surface), "/"))
+		if e.saved != nil {
+			out = append(out, strings.TrimRight(fmt.Sprintf("%s/%s/%s", e.saved.Part, e.saved.Revision, e.saved.Surface), "/"))
 		}
 	}
 	if len(out) == 0 {
@@ -151,32 +180,4 @@ func (b *Book) have() string {
 	}
 	slices.Sort(out)
 	return strings.Join(out, ", ")
-}
-
-// snapshot returns copies of the entries by file.
-func (b *Book) snapshot() map[string]entry {
-	b.mu.Lock()
-	defer b.mu.Unlock()
-	out := map[string]entry{}
-	for file, e := range b.files {
-		out[file] = entry{recipe: e.recipe, since: e.since, refused: e.refused, pipes: maps.Clone(e.pipes)}
-	}
-	return out
-}
-
-// Close closes every pipeline that was ever in force.
-func (b *Book) Close() error {
-	b.mu.Lock()
-	defer b.mu.Unlock()
-	for _, e := range b.files {
-		b.retire(e)
-	}
-	var first error
-	for _, p := range b.retired {
-		if err := p.Close(); err != nil && first == nil {
-			first = err
-		}
-	}
-	b.files, b.retired = map[string]*entry{}, nil
-	return first
 }

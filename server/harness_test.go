@@ -24,6 +24,7 @@ import (
 	"lapgate/server"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
+	"lapgate/server/masters"
 )
 
 // recipeText judges two views of 96 × 96 px by the real stages.
@@ -52,6 +53,12 @@ type rig struct {
 	yield   inspectpb.YieldServiceClient
 	recipes inspectpb.RecipeServiceClient
 	volume  inspectpb.VolumeServiceClient
+	masters inspectpb.MasterServiceClient
+	clock   *clock
+	dsn     string
+	shown   int // showings, for frames that differ
+	round   int // of masters
+	decode  server.Decode
 }
 
 // rigOptions change what a test is about; zero values are roomy.
@@ -59,6 +66,32 @@ type rigOptions struct {
 	maxBytes int64
 	workers  int
 	dsn      string
+	recipe   string // text; empty = recipeText
+	approval bool   // only approved recipes judge
+	people   []configs.Person
+	clock    *clock // nil = the real one
+}
+
+// clock is a time that a test moves.
+type clock struct {
+	mu sync.Mutex
+	at time.Time
+}
+
+func (c *clock) now() time.Time {
+	if c == nil {
+		return time.Now()
+	}
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	c.at = c.at.Add(time.Millisecond)
+	return c.at
+}
+
+func (c *clock) advance(d time.Duration) {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	c.at = c.at.Add(d)
 }
 
 func newRig(t *testing.T, o rigOptions) *rig {
@@ -69,32 +102,57 @@ func newRig(t *testing.T, o rigOptions) *rig {
 	if o.dsn == "" {
 		o.dsn = filepath.Join(t.TempDir(), "ledger.db")
 	}
-	r := &rig{t: t}
+	if o.recipe == "" {
+		o.recipe = recipeText
+	}
+	r := &rig{t: t, clock: o.clock, dsn: o.dsn}
 	cat, err := builtin.Catalogue()
 	must(t, err)
-	recipe, err := configs.DecodeRecipe("disc.yaml", []byte(recipeText), cat)
-	must(t, err)
+	r.decode = func(file string, text []byte) (*pipeline.Recipe, error) { return configs.DecodeRecipe(file, text, cat) }
 	r.ledger, err = ledger.Open(context.Background(), o.dsn)
 	must(t, err)
+	r.ledger.Now = o.clock.now
 	r.book = server.NewBook(func(rec *pipeline.Recipe, _, _ string) (*pipeline.Pipeline, func() bool, error) {
 		p, err := pipeline.Build(rec, cat, pipeline.Options{ProgramVersion: "test"})
 		return p, func() bool { return false }, err
 	})
-	must(t, r.book.Put("disc.yaml", recipe, time.Now()))
-	must(t, r.ledger.PutRecipe(context.Background(), ledger.Recipe{Hash: recipe.TextHash, Part: recipe.Part, File: recipe.File, Text: recipeText}))
-	feed := server.NewFeed()
+	if o.approval {
+		r.book.RequireApproval(r.ledger, r.decode, o.clock.now)
+	}
+	r.save(o.recipe)
+	r.serve(o)
+	return r
+}
+
+// save is what the server does when a recipe is saved; it returns the text's hash.
+func (r *rig) save(text string) string {
+	r.t.Helper()
+	recipe, err := r.decode("disc.yaml", []byte(text))
+	must(r.t, err)
+	must(r.t, r.ledger.PutRecipe(context.Background(), ledger.Recipe{Hash: recipe.TextHash, Part: recipe.Part, File: recipe.File, Text: text}))
+	must(r.t, r.book.Put("disc.yaml", recipe, r.clock.now()))
+	return recipe.TextHash
+}
+
+// serve starts intake and services.
+func (r *rig) serve(o rigOptions) {
+	t, feed, stations := r.t, server.NewFeed(), server.NewStations()
+	gate := &masters.Gate{Ledger: r.ledger, Started: o.clock.now(), Now: o.clock.now, Log: quiet()}
+	var err error
 	r.intake, err = intake.New(intake.Settings{MaxBytesInFlight: o.maxBytes, MaxFrameBytes: 1 << 20, Workers: max(o.workers, 2),
-		ViewTimeout: time.Second, Log: quiet(), Recorded: feed.Send}, r.book, r.ledger)
+		ViewTimeout: time.Second, Now: o.clock.now, Log: quiet(), Gate: gate,
+		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v) }}, r.book, r.ledger)
 	must(t, err)
-	g, _ := server.NewGRPC(server.Deps{Intake: r.intake, Ledger: r.ledger, Book: r.book, Feed: feed, Log: quiet(), Now: time.Now,
-		Check: func(file string, text []byte) error { _, err := configs.DecodeRecipe(file, text, cat); return err }},
+	g, _ := server.NewGRPC(server.Deps{Intake: r.intake, Ledger: r.ledger, Book: r.book, Feed: feed, Log: quiet(), Now: o.clock.now,
+		Check: func(file string, text []byte) error { _, err := r.decode(file, text); return err },
+		Gate:  gate, Stations: stations, People: server.People{List: o.people}},
 		server.GRPCOptions{MaxMessageBytes: 16 << 20, MaxStreams: 64, Reflection: true})
 	l, err := net.Listen("tcp", "127.0.0.1:0")
 	must(t, err)
 	go g.Serve(l)
 	conn, err := grpc.NewClient(l.Addr().String(), grpc.WithTransportCredentials(insecure.NewCredentials()))
 	must(t, err)
-	r.InspectionServiceClient = inspectpb.NewInspectionServiceClient(conn)
+	r.InspectionServiceClient, r.masters = inspectpb.NewInspectionServiceClient(conn), inspectpb.NewMasterServiceClient(conn)
 	r.yield, r.recipes = inspectpb.NewYieldServiceClient(conn), inspectpb.NewRecipeServiceClient(conn)
 	r.volume = inspectpb.NewVolumeServiceClient(conn)
 	t.Cleanup(func() {
@@ -103,7 +161,6 @@ func newRig(t *testing.T, o rigOptions) *rig {
 		r.intake.Drain(time.Second)
 		r.ledger.Close()
 	})
-	return r
 }
 
 func must(t *testing.T, err error) {

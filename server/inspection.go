@@ -61,6 +61,9 @@ func (s *Inspection) DisposeHold(ctx context.Context, req *inspectpb.DisposeHold
 		return nil, inspectpb.ToStatus(err)
 	}
 	word, err := inspectpb.ToDisposition(req.Disposition)
+	if err == nil {
+		err = s.deps.People.mayAct(req.Person)
+	}
 	if err != nil {
 		return nil, inspectpb.ToStatus(err)
 	}

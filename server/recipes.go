@@ -14,31 +14,41 @@ import (
 
 // ListRecipes implements RecipeService.
 func (s *Recipes) ListRecipes(context.Context, *inspectpb.ListRecipesRequest) (*inspectpb.ListRecipesResponse, error) {
-	out := &inspectpb.ListRecipesResponse{}
+	out := &inspectpb.ListRecipesResponse{Development: s.deps.Book.Development()}
 	files := s.deps.Book.snapshot()
 	for _, file := range slices.Sorted(maps.Keys(files)) {
 		e := files[file]
 		if e.refused != nil {
 			out.Problems = append(out.Problems, problems(file, e.refused)...)
 		}
-		if e.recipe == nil {
-			continue
+		for _, v := range e.byAge() {
+			out.Recipes = append(out.Recipes, recipeRow(file, e, v))
 		}
-		row := &inspectpb.RecipeInForce{Part: e.recipe.Part, Revision: e.recipe.Revision, Surface: e.recipe.Surface,
-			Hash: e.recipe.TextHash, File: file, Since: inspectpb.FromTime(e.since)}
-		for _, v := range e.recipe.Views {
-			row.Views = append(row.Views, v.Name)
+		if r := e.saved; r != nil && e.versions[r.TextHash] == nil {
+			out.Waiting = append(out.Waiting, &inspectpb.RecipeWaiting{Part: r.Part, Revision: r.Revision, Surface: r.Surface, Hash: r.TextHash,
+				File: file, Since: inspectpb.FromTime(e.since)})
 		}
-		for where, p := range e.pipes {
-			row.Places = append(row.Places, &inspectpb.RecipePlace{Line: where.line, Station: where.station,
-				DetectionHash: p.pipe.DetectionHash, JudgingHash: p.pipe.JudgingHash})
-		}
-		if e.refused != nil {
-			row.Refused = e.refused.Error()
-		}
-		out.Recipes = append(out.Recipes, row)
 	}
 	return out, nil
+}
+
+func recipeRow(file string, e entry, v *version) *inspectpb.RecipeInForce {
+	row := &inspectpb.RecipeInForce{Part: v.recipe.Part, Revision: v.recipe.Revision, Surface: v.recipe.Surface,
+		Hash: v.recipe.TextHash, File: file, Since: inspectpb.FromTime(v.since)}
+	for _, view := range v.recipe.Views {
+		row.Views = append(row.Views, view.Name)
+	}
+	for where, p := range v.pipes {
+		row.Places = append(row.Places, &inspectpb.RecipePlace{Line: where.line, Station: where.station,
+			DetectionHash: p.pipe.DetectionHash, JudgingHash: p.pipe.JudgingHash})
+	}
+	if e.refused != nil {
+		row.Refused = e.refused.Error()
+	}
+	if v.approval != nil {
+		row.Approval = approval(*v.approval)
+	}
+	return row
 }
 
 // GetRecipe implements RecipeService.

@@ -30,6 +30,9 @@ func record(sh ledger.Showing) *inspectpb.InspectionRecord {
 	if d := sh.Disposition; d != nil {
 		out.Dispositions = []*inspectpb.DispositionRecord{disposition(*d)}
 	}
+	for _, s := range sh.Suspicions {
+		out.Suspicions = append(out.Suspicions, &inspectpb.Suspicion{Master: s.Master, Cause: string(s.Cause), Why: s.Why, At: inspectpb.FromTime(s.At)})
+	}
 	for _, o := range sh.Outcomes {
 		out.Outcomes = append(out.Outcomes, &inspectpb.OutcomeRecord{Bin: inspectpb.FromVerdict(o.Bin), Confirmed: o.Confirmed, At: inspectpb.FromTime(o.At)})
 	}

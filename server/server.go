@@ -19,6 +19,7 @@ import (
 	"lapgate/proto/inspectpb"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
+	"lapgate/server/masters"
 )
 
 // Deps are what the services stand on.
@@ -31,6 +32,10 @@ type Deps struct {
 	// Check says what is wrong with a recipe's text, as if it were saved.
 	Check func(file string, text []byte) error
 	Now   func() time.Time
+
+	Gate     *masters.Gate // the one that intake asks
+	Stations *Stations
+	People   People
 }
 
 // Inspection implements inspectpb.InspectionServiceServer.
@@ -76,6 +81,7 @@ func NewGRPC(d Deps, o GRPCOptions) (*grpc.Server, *health.Server) {
 	inspectpb.RegisterRecipeServiceServer(g, &Recipes{deps: d})
 	inspectpb.RegisterYieldServiceServer(g, &Yield{deps: d})
 	inspectpb.RegisterVolumeServiceServer(g, &Volume{deps: d})
+	inspectpb.RegisterMasterServiceServer(g, &Masters{deps: d})
 	h := health.NewServer()
 	healthpb.RegisterHealthServer(g, h)
 	if o.Reflection {

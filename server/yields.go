@@ -74,14 +74,23 @@ func yieldOf(c ledger.Counts) (*inspectpb.Yield, error) {
 	if err != nil {
 		return nil, err
 	}
+	retest, err := yield.NewRate(int(c.RetestAccepts.Total()), int(c.First.Reject+c.First.Hold), confidence)
+	if err != nil {
+		return nil, err
+	}
+	return &inspectpb.Yield{Group: groupOf(c), Units: int32(c.Final.Total()), Inspections: int32(c.Showings.Total()),
+		Accepted: int32(c.Showings.Accept), Rejected: int32(c.Showings.Reject), Held: int32(c.Showings.Hold),
+		FirstPass: rate(first), FinalIfHoldsFail: rate(final.Low), FinalIfHoldsPass: rate(final.High), OpenHolds: int32(open),
+		FirstRejected: int32(c.First.Reject), FirstHeld: int32(c.First.Hold),
+		AttemptsPerUnit: float64(c.Attempts) / float64(max(c.Final.Total(), 1)), PassByRetest: rate(retest)}, nil
+}
+
+func groupOf(c ledger.Counts) map[string]string {
 	group := map[string]string{}
 	for d, v := range c.Of {
 		group[string(d)] = v
 	}
-	return &inspectpb.Yield{Group: group, Units: int32(c.Final.Total()), Inspections: int32(c.Showings.Total()),
-		Accepted: int32(c.Showings.Accept), Rejected: int32(c.Showings.Reject), Held: int32(c.Showings.Hold),
-		FirstPass: rate(first), FinalIfHoldsFail: rate(final.Low), FinalIfHoldsPass: rate(final.High), OpenHolds: int32(open),
-		FirstRejected: int32(c.First.Reject), FirstHeld: int32(c.First.Hold)}, nil
+	return group
 }
 
 func tally(t ledger.Tally) yield.Tally {

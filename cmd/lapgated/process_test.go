@@ -117,7 +117,7 @@ func freeAddress(t *testing.T) string {
 func (s *site) serve() {
 	s.t.Helper()
 	s.server = exec.Command(filepath.Join(s.bin, "lapgated"), "serve", "--listen", s.address, "--ledger", s.path("ledger.db"),
-		"--recipes", s.path("recipes"), "--calibrations", s.path("calibrations"), "--images", "", "--log-level", "warn")
+		"--recipes", s.path("recipes"), "--calibrations", s.path("calibrations"), "--images", "", "--log-level", "warn", "--development")
 	s.server.Stderr = os.Stderr
 	s.check(s.server.Start())
 	for range 200 {

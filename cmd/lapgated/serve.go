@@ -34,7 +34,7 @@ func (a *app) serve(cmd *cobra.Command, file string) error {
 	}
 	level := new(slog.LevelVar)
 	setLevel(level, settings)
-	log := newLog(a.err, level, settings.Development)
+	log := newLog(a.err, level, settings.LogFormat)
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	s, err := startServing(ctx, settings, log)
@@ -53,8 +53,8 @@ func (a *app) serve(cmd *cobra.Command, file string) error {
 	return s.stop()
 }
 
-func newLog(w io.Writer, level *slog.LevelVar, development bool) *slog.Logger {
-	if development {
+func newLog(w io.Writer, level *slog.LevelVar, format string) *slog.Logger {
+	if format == "text" {
 		return slog.New(slog.NewTextHandler(w, &slog.HandlerOptions{Level: level}))
 	}
 	return slog.New(slog.NewJSONHandler(w, &slog.HandlerOptions{Level: level}))
@@ -99,7 +99,8 @@ func waiting(old, now configs.Server) []string {
 		{"listen", old.Listen != now.Listen}, {"ledger", old.Ledger != now.Ledger}, {"recipes", old.Recipes != now.Recipes},
 		{"calibrations", old.Calibrations != now.Calibrations}, {"images", old.Images != now.Images},
 		{"max_frame_bytes", old.MaxFrameBytes != now.MaxFrameBytes}, {"workers", old.Workers != now.Workers},
-		{"development", old.Development != now.Development}, {"reflection", old.Reflection != now.Reflection},
+		{"development", old.Development != now.Development}, {"log_format", old.LogFormat != now.LogFormat},
+		{"people", old.People != now.People}, {"reflection", old.Reflection != now.Reflection},
 	} {
 		if f.different {
 			out = append(out, f.key)

@@ -23,6 +23,7 @@ import (
 	"lapgate/server/images"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
+	"lapgate/server/masters"
 )
 
 // maxStreams is how many calls one connection may have open.
@@ -67,17 +68,26 @@ func (s *serving) open(ctx context.Context) error {
 	}
 	builder := recipeBuilder{catalogue: cat, calibrations: s.settings.Calibrations}
 	s.book = server.NewBook(builder.build)
-	feed := server.NewFeed()
-	s.intake, err = intake.New(intake.Settings{MaxBytesInFlight: s.settings.MaxBytesInFlight, MaxFrameBytes: s.settings.MaxFrameBytes,
-		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Recorded: feed.Send, Keep: s.keeper.keep}, s.book, s.ledger)
+	people, err := configs.LoadPeople(s.settings.People)
 	if err != nil {
 		return err
 	}
-	if err := s.watchRecipes(ctx, cat); err != nil {
+	decode := func(file string, text []byte) (*pipeline.Recipe, error) { return configs.DecodeRecipe(file, text, cat) }
+	s.requireApproval(ctx, decode)
+	feed, stations := server.NewFeed(), server.NewStations()
+	gate := &masters.Gate{Ledger: s.ledger, Started: time.Now(), Now: time.Now, Log: s.log}
+	s.intake, err = intake.New(intake.Settings{MaxBytesInFlight: s.settings.MaxBytesInFlight, MaxFrameBytes: s.settings.MaxFrameBytes,
+		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Keep: s.keeper.keep, Gate: gate,
+		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v) }}, s.book, s.ledger)
+	if err != nil {
+		return err
+	}
+	if err := s.watchRecipes(ctx, decode); err != nil {
 		return err
 	}
 	s.grpc, s.health = server.NewGRPC(server.Deps{Intake: s.intake, Ledger: s.ledger, Book: s.book, Feed: feed, Log: s.log, Now: time.Now,
-		Check: func(file string, text []byte) error { _, err := configs.DecodeRecipe(file, text, cat); return err }},
+		Check: func(file string, text []byte) error { _, err := decode(file, text); return err },
+		Gate:  gate, Stations: stations, People: server.People{List: people}},
 		server.GRPCOptions{MaxMessageBytes: int(min(s.settings.MaxBytesInFlight, 1<<30)), MaxStreams: maxStreams, Reflection: s.settings.Reflection})
 	s.listener, err = listen(s.settings.Listen)
 	return err
@@ -103,13 +113,13 @@ func viewTimeout(s configs.Server) time.Duration {
 }
 
 // watchRecipes brings every good recipe of the folder into force, now and on each save.
-func (s *serving) watchRecipes(ctx context.Context, cat *pipeline.Catalogue) error {
+func (s *serving) watchRecipes(ctx context.Context, decode server.Decode) error {
 	if err := os.MkdirAll(s.settings.Recipes, 0o755); err != nil {
 		return err
 	}
 	_, err := configs.Watch(ctx, configs.WatchOptions[*pipeline.Recipe]{
 		Folder:  s.settings.Recipes,
-		Parse:   func(path string, text []byte) (*pipeline.Recipe, error) { return configs.DecodeRecipe(path, text, cat) },
+		Parse:   decode,
 		Changed: func(path string, r *pipeline.Recipe) { s.adopt(ctx, path, r) },
 		Failed: func(path string, err error) {
 			s.book.Refuse(path, err)
@@ -131,7 +141,7 @@ func (s *serving) adopt(ctx context.Context, path string, r *pipeline.Recipe) {
 		s.log.Error("recipe refused; the last good one stays in force", "file", path, "error", err)
 		return
 	}
-	s.log.Info("recipe in force", "file", path, "part", r.Part, "hash", r.TextHash)
+	s.tellRecipe(path, r)
 }
 
 func (s *serving) address() string { return s.listener.Addr().String() }

@@ -47,32 +47,50 @@ func samePerson(a, b string) bool {
 	return plain(a) == plain(b)
 }
 
-// Approve records an approval of a recipe that is on record. The same one sent again,
-// while it is the latest of the recipe, changes nothing.
-func (s *Store) Approve(ctx context.Context, a Approval) error {
+// Approve records an approval of a recipe that is on record, and returns it as recorded.
+// The same one sent again, while it is the latest for the recipe's subject, changes nothing.
+func (s *Store) Approve(ctx context.Context, a Approval) (Approval, error) {
 	if err := a.check(); err != nil {
-		return err
+		return a, err
 	}
-	if _, err := s.Recipe(ctx, a.Hash); err != nil {
-		return err
+	r, err := s.Recipe(ctx, a.Hash)
+	if err != nil {
+		return a, err
 	}
 	if a.At.IsZero() {
 		a.At = s.Now()
 	}
-	return s.write(ctx, func(tx *sql.Tx) error {
-		var old Approval
-		err := tx.QueryRowContext(ctx, `SELECT author, approver, reason, effective FROM approvals WHERE hash = $1 ORDER BY at_us DESC, id DESC LIMIT 1`, a.Hash).
-			Scan(&old.Author, &old.Approver, &old.Reason, &old.Effective)
-		if err != nil && !errors.Is(err, sql.ErrNoRows) {
+	a.At = toMicros(a.At)
+	err = s.write(ctx, func(tx *sql.Tx) error {
+		old, err := lastApproval(ctx, tx, r)
+		if err != nil {
 			return err
 		}
-		if old == (Approval{Author: a.Author, Approver: a.Approver, Reason: a.Reason, Effective: a.Effective}) {
+		again := a
+		if again.At = old.At; again == old {
+			a = old
 			return nil
 		}
 		_, err = tx.ExecContext(ctx, `INSERT INTO approvals (id, hash, author, approver, reason, effective, at_us) VALUES ($1, $2, $3, $4, $5, $6, $7)`,
 			newID(), a.Hash, a.Author, a.Approver, a.Reason, string(a.Effective), micros(a.At))
 		return err
 	})
+	return a, err
+}
+
+// lastApproval returns the latest approval of any recipe for the same part, revision and
+// surface; the zero value = none.
+func lastApproval(ctx context.Context, tx *sql.Tx, r Recipe) (Approval, error) {
+	var a Approval
+	var at int64
+	err := tx.QueryRowContext(ctx, `SELECT a.hash, a.author, a.approver, a.reason, a.effective, a.at_us FROM approvals a JOIN recipes r ON r.hash = a.hash
+		WHERE r.part = $1 AND r.revision = $2 AND r.surface = $3 ORDER BY a.at_us DESC, a.id DESC LIMIT 1`, r.Part, r.Revision, r.Surface).
+		Scan(&a.Hash, &a.Author, &a.Approver, &a.Reason, &a.Effective, &at)
+	if errors.Is(err, sql.ErrNoRows) {
+		return Approval{}, nil
+	}
+	a.At = fromMicros(at)
+	return a, err
 }
 
 // Approved is an approval beside the recipe that it is of.

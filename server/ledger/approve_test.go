@@ -26,7 +26,7 @@ func TestApprovalsNeedASecondPersonAndARecipe(t *testing.T) {
 		} {
 			a := good
 			change(&a)
-			err := s.Approve(ctx, a)
+			_, err := s.Approve(ctx, a)
 			wantKind(t, err, pipeline.InvalidKind)
 			if !strings.Contains(err.Error(), want) {
 				t.Errorf("error %q does not speak of %s", err, want)
@@ -34,12 +34,13 @@ func TestApprovalsNeedASecondPersonAndARecipe(t *testing.T) {
 		}
 		unknown := good
 		unknown.Hash = "sha256:00"
-		wantKind(t, s.Approve(ctx, unknown), pipeline.NotFoundKind)
+		_, err = s.Approve(ctx, unknown)
+		wantKind(t, err, pipeline.NotFoundKind)
 		next := good
 		next.Effective, next.At = EffectiveNextLot, noon.Add(time.Hour)
 		for _, a := range []Approval{good, good, next} {
-			if err := s.Approve(ctx, a); err != nil {
-				t.Fatal(err)
+			if got, err := s.Approve(ctx, a); err != nil || got != a {
+				t.Fatal(got, err)
 			}
 		}
 		list, err := s.Approvals(ctx, "disc-25")

@@ -134,3 +134,15 @@ func (s *Store) Checks(ctx context.Context, f CheckFilter, limit int) ([]MasterC
 	}, `SELECT `+checkColumns+` FROM master_checks WHERE `+w.String()+` ORDER BY at_us DESC, inspection_id DESC LIMIT $`+last(w.args), w.args...)
 	return out, s.engine.classify(err)
 }
+
+// MasterPlaces lists where masters of a part were shown.
+func (s *Store) MasterPlaces(ctx context.Context, part string) ([]MasterPlace, error) {
+	var out []MasterPlace
+	err := each(ctx, s.reader, func(r *sql.Rows) error {
+		p := MasterPlace{Part: part}
+		err := r.Scan(&p.Surface, &p.Line, &p.Station)
+		out = append(out, p)
+		return err
+	}, `SELECT DISTINCT surface, line, station FROM master_checks WHERE part = $1 ORDER BY line, station, surface`, part)
+	return out, s.engine.classify(err)
+}
