@@ -133,7 +133,7 @@ func TestCompleteCalibration(t *testing.T) {
 	if !(c.PartEdge.WidthPx > 1 && c.PartEdge.WidthPx < 6) || len(c.FixedPattern) < 100 {
 		t.Errorf("edge %+v, %d pattern pixels", c.PartEdge, len(c.FixedPattern))
 	}
-	near("DSNU against neighbours, DN", math.Sqrt(m.Provenance.ResponsePattern.LocalDN2)/2300, 0.01, 0.01)
+	near("PRNU against neighbours", math.Sqrt(m.Provenance.ResponsePattern.LocalDN2)/2300, 0.01, 0.01)
 	dir := filepath.Join(t.TempDir(), "ring")
 	if err := Write(dir, m); err != nil {
 		t.Fatal(err)

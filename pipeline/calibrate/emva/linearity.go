@@ -1,33 +1,41 @@
 package emva
 
-import "math"
+import "slices"
 
 // linearity fits mean above dark = a + b·light over the steps between 5 and 95 % of
 // saturation so that the relative deviations are least (weights 1/y²), and reports the
 // lowest and highest deviation from the line in percent (EMVA Standard 1288). light is
 // in photons, or exposure where those are not known.
 func (f *Figures) linearity(ramp []Point) {
-	var x, y []float64
-	for _, p := range ramp {
-		light := p.Photons
-		if f.Responsivity == 0 {
-			light = p.ExposureUS
-		}
-		if s := p.signal(); s >= 0.05*f.SaturationDN && s <= 0.95*f.SaturationDN {
-			x, y = append(x, light), append(y, s)
-		}
-	}
-	a, b, ok := relativeLine(x, y)
-	if !ok {
+	_, deviations := Deviations(ramp, *f)
+	if len(deviations) == 0 {
 		return
 	}
-	f.LinearityLevels = len(x)
-	f.LinearityLow, f.LinearityHigh = math.Inf(1), math.Inf(-1)
-	for i, v := range x {
-		line := a + b*v
-		deviation := 100 * (y[i] - line) / line
-		f.LinearityLow, f.LinearityHigh = min(f.LinearityLow, deviation), max(f.LinearityHigh, deviation)
+	f.LinearityLevels, f.LinearityLow, f.LinearityHigh = len(deviations), slices.Min(deviations), slices.Max(deviations)
+}
+
+// Deviations returns the light of the steps between 5 and 95 % of saturation and how far
+// each lies off that line, in percent of it. Both are empty with fewer than three steps.
+func Deviations(ramp []Point, f Figures) (light, percent []float64) {
+	var y []float64
+	for _, p := range ramp {
+		x := p.Photons
+		if f.Responsivity == 0 {
+			x = p.ExposureUS
+		}
+		if s := p.signal(); s >= 0.05*f.SaturationDN && s <= 0.95*f.SaturationDN {
+			light, y = append(light, x), append(y, s)
+		}
 	}
+	a, b, ok := relativeLine(light, y)
+	if !ok {
+		return nil, nil
+	}
+	for i, x := range light {
+		line := a + b*x
+		percent = append(percent, 100*(y[i]-line)/line)
+	}
+	return light, percent
 }
 
 // relativeLine minimises Σ((y − a − b·x)/y)². It needs three different x.
