@@ -2,10 +2,10 @@ package stagetest
 
 import (
 	"context"
+	"fmt"
 	"io"
 	"math"
 	"sync"
-	"testing"
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
@@ -16,40 +16,44 @@ import (
 // often and must return equal Items for equal frames.
 type Maker func(raw raster.Raw) *pipeline.Item
 
-// Run puts a stage with its default settings through the suite. The stage is built
-// with the calibration and geometry of an Item from makeItem.
-func Run(t *testing.T, factory pipeline.Factory, makeItem Maker) {
-	t.Helper()
-	s := suite{factory, makeItem}
-	t.Run("described", s.described)
-	t.Run("defaults pass", s.defaultsPass)
-	t.Run("twice the same", s.twiceTheSame)
-	t.Run("at once", s.atOnce)
-	t.Run("input unchanged", s.inputUnchanged)
-	t.Run("fork", s.fork)
-	t.Run("cancelled", s.cancelled)
-	t.Run("odd frames", s.oddFrames)
-	t.Run("close", s.close)
-}
-
 type suite struct {
 	factory  pipeline.Factory
 	makeItem Maker
 }
 
-// build makes the stage and closes it at the end of the test.
-func (s suite) build(t *testing.T, item *pipeline.Item) pipeline.Stage {
-	t.Helper()
+type property struct {
+	name, wanted string
+	check        func(*report)
+}
+
+func (s suite) properties() []property {
+	return []property{
+		{"described", "Type, version and a sentence are given, scope is view or unit, and something is written.", s.described},
+		{"defaults pass", "The default settings pass their own check, and the stage can be built with them.", s.defaultsPass},
+		{"twice the same", "Two runs on equal items give equal results to the last bit.", s.twiceTheSame},
+		{"at once", "Runs at the same time give what one alone gives.", s.atOnce},
+		{"input unchanged", "Frames, planes, masks and lists that were given stay as they were.", s.inputUnchanged},
+		{"fork", "A run on a fork leaves the item that it came from alone.", s.fork},
+		{"cancelled", "A run with a cancelled context returns an error.", s.cancelled},
+		{"odd frames", "Tiny, empty, saturated and chequered frames give finite numbers, or an error that blames the input.", s.oddFrames},
+		{"close", "A stage that never ran can be closed, and twice.", s.close},
+	}
+}
+
+// build makes the stage; it is closed when the property has been looked at.
+func (s suite) build(r *report, item *pipeline.Item) pipeline.Stage {
 	stage, settings, err := s.factory.New(nil, environment(item))
+	if err == nil && (stage == nil || settings == nil) {
+		r.wrong("New returned no stage or no settings")
+		return nil
+	}
 	if err != nil {
-		t.Fatalf("New with default settings: %v", err)
+		r.wrong("New with default settings: %v", err)
+		return nil
 	}
-	if stage == nil || settings == nil {
-		t.Fatal("New returned no stage or no settings")
-	}
-	t.Cleanup(func() {
+	r.cleanups = append(r.cleanups, func() {
 		if err := closeStage(stage); err != nil {
-			t.Errorf("Close: %v", err)
+			r.wrong("Close: %v", err)
 		}
 	})
 	return stage
@@ -66,153 +70,193 @@ func closeStage(stage pipeline.Stage) error {
 	return nil
 }
 
-func (s suite) described(t *testing.T) {
+func (s suite) described(r *report) {
 	f := s.factory
 	if f.Type == "" || f.Version == "" || f.Summary == "" || f.Summary[len(f.Summary)-1] != '.' {
-		t.Errorf("type %q, version %q, summary %q: want all three, and a sentence", f.Type, f.Version, f.Summary)
+		r.wrong("type %q, version %q, summary %q: want all three, and a sentence", f.Type, f.Version, f.Summary)
 	}
 	if f.Scope != pipeline.ScopeView && f.Scope != pipeline.ScopeUnit {
-		t.Errorf("scope %q, want view or unit", f.Scope)
+		r.wrong("scope %q, want view or unit", f.Scope)
 	}
 	if len(f.Writes) == 0 {
-		t.Error("writes nothing")
+		r.wrong("writes nothing")
 	}
 }
 
-func (s suite) defaultsPass(t *testing.T) {
+func (s suite) defaultsPass(r *report) {
+	var err error
 	if c, ok := s.factory.Defaults.(pipeline.Checker); ok {
-		if err := c.Check(); err != nil {
-			t.Errorf("default settings: %v", err)
-		}
+		err = c.Check()
+	} else if s.factory.Check != nil {
+		err = s.factory.Check(s.factory.Defaults)
 	}
-	s.build(t, s.makeItem(Scene()))
+	if err != nil {
+		r.wrong("default settings: %v", err)
+	}
+	s.build(r, s.makeItem(Scene()))
 }
 
 // run runs the stage on a new Item and returns the digest of what came out.
-func (s suite) run(t *testing.T, stage pipeline.Stage) string {
-	t.Helper()
+func (s suite) run(stage pipeline.Stage) (digest string, err error) {
+	defer func() {
+		if p := recover(); p != nil {
+			err = fmt.Errorf("panic: %v", p)
+		}
+	}()
 	item := s.makeItem(Scene())
-	if err := stage.Run(context.Background(), item); err != nil {
-		t.Errorf("Run: %v", err)
-	}
-	return Digest(item)
+	err = stage.Run(context.Background(), item)
+	return Digest(item), err
 }
 
-func (s suite) twiceTheSame(t *testing.T) {
+func (s suite) twiceTheSame(r *report) {
 	if s.factory.Stateful {
-		t.Skip("keeps state")
+		r.skipped = "it keeps state"
+		return
 	}
-	stage := s.build(t, s.makeItem(Scene()))
-	if s.run(t, stage) != s.run(t, stage) {
-		t.Error("two runs on equal items differ")
+	stage := s.build(r, s.makeItem(Scene()))
+	if stage == nil {
+		return
+	}
+	first, err := s.run(stage)
+	second, err2 := s.run(stage)
+	if err != nil || err2 != nil {
+		r.wrong("Run: %v, then %v", err, err2)
+	}
+	if first != second {
+		r.wrong("two runs on equal items differ")
 	}
 }
 
-func (s suite) atOnce(t *testing.T) {
+func (s suite) atOnce(r *report) {
 	const n = 4
-	stage := s.build(t, s.makeItem(Scene()))
-	want := s.run(t, stage)
+	stage := s.build(r, s.makeItem(Scene()))
+	if stage == nil {
+		return
+	}
+	want, err := s.run(stage)
+	if err != nil {
+		r.wrong("Run: %v", err)
+	}
 	var wg sync.WaitGroup
-	got := make([]string, n)
+	got, errs := make([]string, n), make([]error, n)
 	for i := range n {
-		wg.Go(func() { got[i] = s.run(t, stage) })
+		wg.Go(func() { got[i], errs[i] = s.run(stage) })
 	}
 	wg.Wait()
-	for i, g := range got {
-		if g != want && !s.factory.Stateful {
-			t.Errorf("run %d of %d at once differs from one alone", i+1, n)
+	for i := range n {
+		if errs[i] != nil {
+			r.wrong("run %d of %d at once: %v", i+1, n, errs[i])
+		}
+		if got[i] != want && !s.factory.Stateful {
+			r.wrong("run %d of %d at once differs from one alone", i+1, n)
 		}
 	}
 }
 
-func (s suite) inputUnchanged(t *testing.T) {
+func (s suite) inputUnchanged(r *report) {
 	item := s.makeItem(Scene())
 	before := item.Fork()
 	want := Digest(before)
-	if err := s.build(t, item).Run(context.Background(), item); err != nil {
-		t.Fatal(err)
+	stage := s.build(r, item)
+	if stage == nil {
+		return
+	}
+	if err := stage.Run(context.Background(), item); err != nil {
+		r.wrong("Run: %v", err)
 	}
 	if Digest(before) != want {
-		t.Error("the frames, planes, masks or lists that the stage was given have changed; want new ones")
+		r.wrong("the frames, planes, masks or lists that the stage was given have changed; want new ones")
 	}
 }
 
-func (s suite) fork(t *testing.T) {
+func (s suite) fork(r *report) {
 	item := s.makeItem(Scene())
 	want := Digest(item)
-	stage := s.build(t, item)
+	stage := s.build(r, item)
+	if stage == nil {
+		return
+	}
 	a, b := item.Fork(), item.Fork()
 	for _, f := range []*pipeline.Item{a, b} {
 		if err := stage.Run(context.Background(), f); err != nil {
-			t.Fatal(err)
+			r.wrong("Run: %v", err)
 		}
 	}
 	if Digest(item) != want {
-		t.Error("a run on a fork changed the item it came from")
+		r.wrong("a run on a fork changed the item it came from")
 	}
 	if Digest(a) != Digest(b) && !s.factory.Stateful {
-		t.Error("two forks came out differently")
+		r.wrong("two forks came out differently")
 	}
 }
 
-func (s suite) cancelled(t *testing.T) {
+func (s suite) cancelled(r *report) {
 	item := s.makeItem(Scene())
-	stage := s.build(t, item)
+	stage := s.build(r, item)
+	if stage == nil {
+		return
+	}
 	ctx, cancel := context.WithCancel(context.Background())
 	cancel()
 	if err := stage.Run(ctx, item); err == nil {
-		t.Error("Run with a cancelled context returned no error")
+		r.wrong("Run with a cancelled context returned no error")
 	}
 }
 
-func (s suite) oddFrames(t *testing.T) {
+func (s suite) oddFrames(r *report) {
 	for name, raw := range OddFrames() {
-		t.Run(name, func(t *testing.T) {
-			item := s.makeItem(raw)
-			defer func() {
-				if r := recover(); r != nil {
-					t.Errorf("panic: %v", r)
-				}
-			}()
-			if err := s.build(t, item).Run(context.Background(), item); err != nil {
-				if pipeline.KindOf(err) != pipeline.InvalidKind {
-					t.Errorf("error that does not blame the input: %v", err)
-				}
-				return
-			}
-			checkNumbers(t, item)
-		})
+		one := &report{}
+		one.guard(func() { s.oddFrame(one, raw) })
+		one.close()
+		for _, f := range one.findings {
+			r.wrong("%s: %s", name, f)
+		}
 	}
+}
+
+func (s suite) oddFrame(r *report, raw raster.Raw) {
+	item := s.makeItem(raw)
+	stage := s.build(r, item)
+	if stage == nil {
+		return
+	}
+	if err := stage.Run(context.Background(), item); err != nil {
+		if pipeline.KindOf(err) != pipeline.InvalidKind {
+			r.wrong("error that does not blame the input: %v", err)
+		}
+		return
+	}
+	checkNumbers(r, item)
 }
 
 // checkNumbers refuses numbers that are not numbers, and shares outside 0 to 1.
-func checkNumbers(t *testing.T, item *pipeline.Item) {
-	t.Helper()
+func checkNumbers(r *report, item *pipeline.Item) {
 	for _, d := range item.Defects {
 		for _, v := range []float64{d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.AngleDeg, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.EdgeDistanceUM} {
 			if math.IsNaN(v) || math.IsInf(v, 0) {
-				t.Errorf("defect %+v has a measure that is no number", d)
+				r.wrong("defect %+v has a measure that is no number", d)
 			}
 		}
 	}
 	for _, m := range item.Measurements {
 		if math.IsNaN(m.Value) || math.IsInf(m.Value, 0) {
-			t.Errorf("measurement %s is %g", m.Name, m.Value)
+			r.wrong("measurement %s is %g", m.Name, m.Value)
 		}
 	}
 	if s := item.Coverage.Share; !(s >= 0 && s <= 1) {
-		t.Errorf("coverage %g, want 0 to 1", s)
+		r.wrong("coverage %g, want 0 to 1", s)
 	}
 }
 
-func (s suite) close(t *testing.T) {
+func (s suite) close(r *report) {
 	stage, _, err := s.factory.New(nil, environment(s.makeItem(Scene())))
 	if err != nil {
-		t.Fatal(err)
+		r.wrong("New: %v", err)
+		return
 	}
 	for range 2 {
 		if err := closeStage(stage); err != nil {
-			t.Errorf("Close of a stage that never ran, twice: %v", err)
+			r.wrong("Close of a stage that never ran, twice: %v", err)
 		}
 	}
 }
