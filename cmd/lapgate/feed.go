@@ -32,6 +32,7 @@ type feedFlags struct {
 	rejectTime time.Duration
 	poll       time.Duration
 	settle     time.Duration
+	heartbeat  time.Duration
 	needHeader bool
 	quiet      bool
 }
@@ -118,6 +119,7 @@ func (f *feedFlags) sendFlags(c *cobra.Command) {
 	fs.DurationVar(&f.answerTime, "answer-time", 2*time.Minute, "a stream that is silent for so long is opened anew")
 	fs.DurationVar(&f.giveUp, "give-up", 30*time.Second, "how long to look for the server once all frames are taken")
 	fs.DurationVar(&f.drain, "drain", 10*time.Second, "how long to wait for due verdicts when told to stop")
+	fs.DurationVar(&f.heartbeat, "heartbeat", 5*time.Second, "how often to tell the server that the stations are there; 0 = never")
 	fs.StringVar(&f.rejectCmd, "reject-cmd", "", "program and arguments to run for each unit that is not accepted, with its JSON on stdin; no shell")
 	fs.DurationVar(&f.rejectTime, "reject-cmd-time", 10*time.Second, "after which the program is ended and counts as failed")
 	fs.BoolVar(&f.quiet, "quiet", false, "no progress bar")
@@ -170,6 +172,10 @@ func (f *feedFlags) run(ctx context.Context, args []string, stdin io.Reader, std
 	if f.quiet {
 		total = 0
 	}
+	beating, stop := context.WithCancel(ctx)
+	defer stop()
+	feed.heart = startHeart(beating, feed.client, f.heartbeat, log)
+	feed.heart.add(f.header.Line, f.header.Station)
 	return feed.runAndTell(ctx, paced(src, f.rate), stderr, total)
 }
 

@@ -38,6 +38,7 @@ type feeder struct {
 	spool    *spool.Spool // nil = none
 	out      output
 	log      *slog.Logger
+	heart    *heart
 	moveTo   string
 	progress *progress
 	now      func() time.Time

@@ -38,6 +38,7 @@ func (f *feeder) take(r reading) {
 		return
 	}
 	f.counts.frames++
+	f.heart.add(r.header.Line, r.header.Station)
 	h := &held{taken: r.taken, waited: f.link == nil && f.failures > 0}
 	if !f.add(h) {
 		f.progress.done()

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"io"
@@ -29,6 +30,7 @@ type peer struct {
 	t      *testing.T
 	socket string
 	views  []string
+	pulse  *pulse // answers heartbeats; nil = knows none
 
 	mu       sync.Mutex // guards everything below
 	grpc     *grpc.Server
@@ -91,6 +93,14 @@ func (p *peer) recorded() []string {
 	p.mu.Lock()
 	defer p.mu.Unlock()
 	return slices.Clone(p.order)
+}
+
+// Heartbeat implements InspectionService.
+func (p *peer) Heartbeat(ctx context.Context, r *inspectpb.HeartbeatRequest) (*inspectpb.HeartbeatResponse, error) {
+	if p.pulse == nil {
+		return p.UnimplementedInspectionServiceServer.Heartbeat(ctx, r)
+	}
+	return p.pulse.Heartbeat(ctx, r)
 }
 
 type peerStream struct {

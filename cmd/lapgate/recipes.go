@@ -41,6 +41,13 @@ func recipesCommand() *cobra.Command {
 		for _, p := range r.GetProblems() {
 			fmt.Fprintf(c.OutOrStdout(), "not loaded: %s:%d:%d: %s\n", p.GetFile(), p.GetLine(), p.GetColumn(), p.GetMessage())
 		}
+		for _, p := range r.GetWaiting() {
+			fmt.Fprintf(c.OutOrStdout(), "waiting for approval: %s, saved %s; lapgate approve %s --author NAME --person NAME --reason TEXT --effective now\n",
+				p.GetFile(), whenOf(p.GetSince().AsTime()), p.GetHash())
+		}
+		if r.GetDevelopment() {
+			fmt.Fprintln(c.OutOrStdout(), "the server runs for development: recipes judge without approval")
+		}
 		return nil
 	}
 	return c
@@ -63,15 +70,42 @@ func printRecipe(c *cobra.Command, server, hash string, asJSON bool) error {
 }
 
 type recipeOf struct {
+	Part     string      `json:"part"`
+	Revision string      `json:"revision"`
+	Surface  string      `json:"surface"`
+	Hash     string      `json:"hash"`
+	Places   []placeOf   `json:"places"` // where units were judged by it
+	File     string      `json:"file"`
+	Views    []string    `json:"views"`
+	Since    time.Time   `json:"since"`
+	Refused  string      `json:"refused"`  // why a later save of the file is not in force
+	Approval *approvalOf `json:"approval"` // null = none is needed
+}
+
+// waitingOf is a recipe that was saved and not approved.
+type waitingOf struct {
 	Part     string    `json:"part"`
 	Revision string    `json:"revision"`
 	Surface  string    `json:"surface"`
 	Hash     string    `json:"hash"`
-	Places   []placeOf `json:"places"` // where units were judged by it
 	File     string    `json:"file"`
-	Views    []string  `json:"views"`
 	Since    time.Time `json:"since"`
-	Refused  string    `json:"refused"` // why a later save of the file is not in force
+}
+
+func waitingList(list []*inspectpb.RecipeWaiting) []waitingOf {
+	out := []waitingOf{}
+	for _, p := range list {
+		out = append(out, waitingOf{p.GetPart(), p.GetRevision(), p.GetSurface(), p.GetHash(), p.GetFile(), p.GetSince().AsTime()})
+	}
+	return out
+}
+
+// approver is who let a recipe judge, "-" where nobody had to.
+func (r recipeOf) approver() string {
+	if r.Approval == nil {
+		return "-"
+	}
+	return r.Approval.Approver
 }
 
 // placeOf is a station with the hashes that its calibration gave.
@@ -98,13 +132,18 @@ func recipesDisplay(r *inspectpb.ListRecipesResponse) display {
 			places = append(places, placeOf{at.GetLine(), at.GetStation(), at.GetDetectionHash(), at.GetJudgingHash()})
 		}
 		one := recipeOf{p.GetPart(), p.GetRevision(), p.GetSurface(), p.GetHash(), places, p.GetFile(),
-			orEmpty(p.GetViews()), p.GetSince().AsTime(), p.GetRefused()}
+			orEmpty(p.GetViews()), p.GetSince().AsTime(), p.GetRefused(), nil}
+		if p.GetApproval() != nil {
+			if a, err := newApproval(p.GetApproval()); err == nil {
+				one.Approval = &a
+			}
+		}
 		recipes = append(recipes, one)
-		d.forEye = append(d.forEye, []string{one.Part, one.Revision, one.Surface, strings.Join(one.Views, " "), whenOf(one.Since), one.File, one.Hash, one.Refused})
+		d.forEye = append(d.forEye, []string{one.Part, one.Revision, one.Surface, strings.Join(one.Views, " "), whenOf(one.Since), one.approver(), one.File, one.Hash, one.Refused})
 	}
 	for _, p := range r.GetProblems() {
 		problems = append(problems, problemOf{p.GetFile(), p.GetLine(), p.GetColumn(), p.GetMessage()})
 	}
-	d.document = map[string]any{"recipes": recipes, "problems": problems}
-	return d.withEyeHead([]string{"part", "revision", "surface", "views", "in force since", "file", "hash", "refused save"})
+	d.document = map[string]any{"recipes": recipes, "problems": problems, "waiting": waitingList(r.GetWaiting()), "development": r.GetDevelopment()}
+	return d.withEyeHead([]string{"part", "revision", "surface", "views", "in force since", "approved by", "file", "hash", "refused save"})
 }

@@ -21,6 +21,7 @@ type inspectionOf struct {
 	Judgements   []pipeline.Judgement `json:"judgements"`
 	Dispositions []dispositionOf      `json:"dispositions"`
 	Outcomes     []outcomeOf          `json:"outcomes"`
+	Suspicions   []suspicionOf        `json:"suspicions"` // masters that put it in doubt
 }
 
 type dispositionOf struct {
@@ -39,7 +40,8 @@ type outcomeOf struct {
 func newInspection(r *inspectpb.InspectionRecord) (inspectionOf, error) {
 	out := inspectionOf{InspectionID: r.GetInspectionId(), Digest: r.GetDigest(), Late: r.GetLate(), LatencyMS: r.GetLatencyMs(),
 		Captured: r.GetCaptured().AsTime(), Judged: r.GetJudged().AsTime(),
-		Judgements: []pipeline.Judgement{}, Dispositions: []dispositionOf{}, Outcomes: []outcomeOf{}}
+		Judgements: []pipeline.Judgement{}, Dispositions: []dispositionOf{}, Outcomes: []outcomeOf{},
+		Suspicions: newSuspicions(r.GetSuspicions())}
 	var err error
 	if out.Identity, err = inspectpb.ToIdentity(r.GetIdentity()); err != nil {
 		return out, err

@@ -81,6 +81,9 @@ func tell(w io.Writer, i inspectionOf) {
 	for _, d := range i.Dispositions {
 		fmt.Fprintf(w, "  %s  %s decided: %s (%s)\n", whenOf(d.At), d.Person, d.Disposition, d.Reason)
 	}
+	for _, s := range i.Suspicions {
+		fmt.Fprintf(w, "  %s  suspect: master %s %s: %s\n", whenOf(s.At), s.Master, s.Cause, s.Why)
+	}
 	for _, o := range i.Outcomes {
 		fmt.Fprintf(w, "  %s  the line put it into the %s bin%s%s\n", whenOf(o.At), o.Bin, unconfirmed(o.Confirmed), mismatch(i.Verdict, o.Bin))
 	}

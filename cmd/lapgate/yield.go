@@ -28,7 +28,8 @@ func yieldCommand() *cobra.Command {
 		Short: "Show counts, first-pass and final yield with their 95 % intervals",
 		Long: `Show counts and yield of inspections by time of capture. Only purpose production counts
 unless --purpose says otherwise. First pass: units accepted at their first attempt. Final
-yield is given twice: with open holds counted as bad, and as good.
+yield is given twice: with open holds counted as bad, and as good. Passed by retest:
+units that a later attempt accepted, of those held or rejected at their first.
 
 With --series: accepted of all verdicts per time bucket. With --pareto: the reasons, most
 frequent first; a unit with two reasons counts once under "first" and under both in "any".`,

@@ -89,6 +89,8 @@ type yieldOf struct {
 	FirstPass        rateOf            `json:"first_pass"`
 	FinalIfHoldsFail rateOf            `json:"final_if_holds_fail"`
 	FinalIfHoldsPass rateOf            `json:"final_if_holds_pass"`
+	AttemptsPerUnit  float64           `json:"attempts_per_unit"`
+	PassByRetest     rateOf            `json:"pass_by_retest"` // of those held or rejected at first
 }
 
 func newYield(y *inspectpb.Yield) yieldOf {
@@ -98,7 +100,8 @@ func newYield(y *inspectpb.Yield) yieldOf {
 	}
 	return yieldOf{Group: group, Units: y.GetUnits(), Inspections: y.GetInspections(), Accepted: y.GetAccepted(), Rejected: y.GetRejected(),
 		Held: y.GetHeld(), OpenHolds: y.GetOpenHolds(), FirstRejected: y.GetFirstRejected(), FirstHeld: y.GetFirstHeld(), FirstPass: newRate(y.GetFirstPass()),
-		FinalIfHoldsFail: newRate(y.GetFinalIfHoldsFail()), FinalIfHoldsPass: newRate(y.GetFinalIfHoldsPass())}
+		FinalIfHoldsFail: newRate(y.GetFinalIfHoldsFail()), FinalIfHoldsPass: newRate(y.GetFinalIfHoldsPass()),
+		AttemptsPerUnit: y.GetAttemptsPerUnit(), PassByRetest: newRate(y.GetPassByRetest())}
 }
 
 func summaryDisplay(r *inspectpb.GetSummaryResponse, by []string) display {
@@ -109,14 +112,15 @@ func summaryDisplay(r *inspectpb.GetSummaryResponse, by []string) display {
 	}
 	d := display{document: map[string]any{"total": total, "groups": groups}}
 	d.head = append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open_holds",
-		"first_pass", "first_pass_low", "first_pass_high", "final_if_holds_fail", "final_if_holds_pass")
-	eyeHead := append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open", "first pass", "final, holds bad", "final, holds good")
+		"first_pass", "first_pass_low", "first_pass_high", "final_if_holds_fail", "final_if_holds_pass", "attempts_per_unit", "pass_by_retest")
+	eyeHead := append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open", "first pass", "final, holds bad", "final, holds good", "attempts per unit", "passed by retest")
 	list := append(groups, total)
 	for i, y := range list {
 		keys := groupCells(y, by, i == len(list)-1)
 		counts := numbers(y.Units, y.Inspections, y.Accepted, y.Rejected, y.Held, y.OpenHolds)
-		d.rows = append(d.rows, join(keys, counts, y.FirstPass.cells(), y.FinalIfHoldsFail.cells()[:1], y.FinalIfHoldsPass.cells()[:1]))
-		d.forEye = append(d.forEye, join(keys, counts, []string{y.FirstPass.forEye(), y.FinalIfHoldsFail.forEye(), y.FinalIfHoldsPass.forEye()}))
+		d.rows = append(d.rows, join(keys, counts, y.FirstPass.cells(), y.FinalIfHoldsFail.cells()[:1], y.FinalIfHoldsPass.cells()[:1], []string{real64(y.AttemptsPerUnit)}, y.PassByRetest.cells()[:1]))
+		d.forEye = append(d.forEye, join(keys, counts, []string{y.FirstPass.forEye(), y.FinalIfHoldsFail.forEye(), y.FinalIfHoldsPass.forEye(),
+			fmt.Sprintf("%.3f", y.AttemptsPerUnit), y.PassByRetest.forEye()}))
 	}
 	return d.withEyeHead(eyeHead)
 }

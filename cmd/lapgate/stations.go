@@ -1,0 +1,76 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"strings"
+	"time"
+
+	"github.com/spf13/cobra"
+	"google.golang.org/grpc"
+
+	"lapgate/proto/inspectpb"
+)
+
+// stationOf is a line and station that the server heard of since it started.
+type stationOf struct {
+	Line       string     `json:"line"`
+	Station    string     `json:"station"`
+	Heartbeat  *time.Time `json:"heartbeat"` // null = none
+	Inspection *time.Time `json:"inspection"`
+	State      string     `json:"state"` // ok or holding
+	Because    []string   `json:"because"`
+}
+
+func stationsCommand() *cobra.Command {
+	var asJSON, asCSV bool
+	c := &cobra.Command{
+		Use:   "stations",
+		Short: "List the stations heard of since the server started, and which of them hold",
+		Args:  cobra.NoArgs,
+	}
+	server := serverFlag(c)
+	tableFlags(c, &asJSON, &asCSV)
+	c.RunE = func(c *cobra.Command, _ []string) error {
+		var d display
+		err := ask(c.Context(), *server, func(ctx context.Context, conn *grpc.ClientConn) error {
+			r, err := inspectpb.NewInspectionServiceClient(conn).ListStations(ctx, &inspectpb.ListStationsRequest{})
+			if err == nil {
+				d, err = stationsDisplay(r)
+			}
+			return err
+		})
+		if err != nil {
+			return err
+		}
+		return d.write(c.OutOrStdout(), asJSON, asCSV)
+	}
+	return c
+}
+
+func stationsDisplay(r *inspectpb.ListStationsResponse) (display, error) {
+	now := r.GetServerTime().AsTime()
+	list := []stationOf{}
+	d := display{head: []string{"line", "station", "heartbeat", "inspection", "state", "because"}}
+	for _, s := range r.GetStations() {
+		state, err := inspectpb.ToStationState(s.GetState())
+		if err != nil {
+			return d, err
+		}
+		one := stationOf{s.GetLine(), s.GetStation(), timeOf(s.GetHeartbeat()), timeOf(s.GetInspection()), state, orEmpty(s.GetBecause())}
+		list = append(list, one)
+		end := []string{one.State, strings.Join(one.Because, "; ")}
+		d.rows = append(d.rows, join([]string{one.Line, one.Station, zulu(one.Heartbeat), zulu(one.Inspection)}, end))
+		d.forEye = append(d.forEye, join([]string{one.Line, one.Station, ago(one.Heartbeat, now), ago(one.Inspection, now)}, end))
+	}
+	d.document = map[string]any{"server_time": now, "stations": list}
+	return d.withEyeHead([]string{"line", "station", "last heartbeat", "last inspection", "state", "because"}), nil
+}
+
+// ago writes how long before the server's now something was.
+func ago(t *time.Time, now time.Time) string {
+	if t == nil {
+		return "-"
+	}
+	return fmt.Sprintf("%v ago", max(now.Sub(*t), 0).Round(time.Second))
+}
