@@ -28,7 +28,11 @@ func (j renderJob) framesDir() string { return filepath.Join(j.out, "frames") }
 
 // calibrationKinds lists the kinds of calibration frame with how many the scene wants.
 func calibrationKinds(s render.Scene) map[string]int {
-	return map[string]int{render.FrameDark: s.Calibration.Dark, render.FrameStray: s.Calibration.Stray, render.FrameResponse: s.Calibration.Response}
+	kinds := map[string]int{render.FrameDark: s.Calibration.Dark, render.FrameStray: s.Calibration.Stray, render.FrameResponse: s.Calibration.Response}
+	for _, t := range s.Calibration.Targets {
+		kinds[t.Name] = t.Frames
+	}
+	return kinds
 }
 
 func (j renderJob) total(r *render.Renderer) int {
@@ -56,7 +60,7 @@ func (j renderJob) calibration(ctx context.Context, r *render.Renderer, p *progr
 					if err := ctx.Err(); err != nil {
 						return err
 					}
-					f, err := r.CalibrationFrame(kind, view, n)
+					f, err := calibrationFrame(r, kind, view, n)
 					if err != nil {
 						return err
 					}
@@ -67,6 +71,17 @@ func (j renderJob) calibration(ctx context.Context, r *render.Renderer, p *progr
 		}
 	}
 	return written, group.Wait()
+}
+
+// calibrationFrame takes a frame of a kind, or of a target of that name.
+func calibrationFrame(r *render.Renderer, kind, view string, n int) (pipeline.Frame, error) {
+	for _, t := range r.Scene().Calibration.Targets {
+		if t.Name == kind {
+			f, _, err := r.TargetFrame(view, t, n)
+			return f, err
+		}
+	}
+	return r.CalibrationFrame(kind, view, n)
 }
 
 // frames writes the frames of all units and, after all of them, the truth.

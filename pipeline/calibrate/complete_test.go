@@ -71,7 +71,7 @@ func (s *station) parts(n int) []Frame {
 
 func scaleTarget() render.Target {
 	return render.Target{PitchUM: 40 * stationUM, Columns: 13, Rows: 9, DiametersUM: []float64{14 * stationUM}, BackgroundDN: 40, BrightnessDN: 1500,
-		RotationDeg: 2, Lens: pipeline.Distortion{K1: -0.01, CentreX: 239.5, CentreY: 179.5, NormPx: 300}}
+		RotationDeg: 2, K1: -0.01}
 }
 
 func sizingTarget() (render.Target, [][]float64) {
@@ -128,7 +128,7 @@ func TestCompleteCalibration(t *testing.T) {
 		t.Fatalf("scale %+v, distortion %+v", c.Scale, c.Distortion)
 	}
 	x, _ := c.Distortion.Ideal(20, 20)
-	want, _ := scaleTarget().Lens.Ideal(20, 20)
+	want, _ := scaleTarget().Lens(newStation(t).scene.Camera).Ideal(20, 20)
 	near("distortion at a corner", x, want, 0.1)
 	if !(c.PartEdge.WidthPx > 1 && c.PartEdge.WidthPx < 6) || len(c.FixedPattern) < 100 {
 		t.Errorf("edge %+v, %d pattern pixels", c.PartEdge, len(c.FixedPattern))

@@ -15,7 +15,7 @@ func (s Scene) Check() error {
 	if s.Format != 0 && s.Format != Format {
 		return pipeline.Invalid("format: got %d, want %d", s.Format, Format)
 	}
-	checks := []func() error{s.checkRun, s.checkPart, s.Camera.check, s.checkLamp, s.checkViews, s.checkLines, s.checkProcesses, s.checkSpoilers}
+	checks := []func() error{s.checkTargets, s.checkRun, s.checkPart, s.Camera.check, s.checkLamp, s.checkViews, s.checkLines, s.checkProcesses, s.checkSpoilers}
 	for _, check := range checks {
 		if err := check(); err != nil {
 			return err
@@ -39,6 +39,21 @@ func (s Scene) checkRun() error {
 		within("calibration.dark", float64(s.Calibration.Dark), 0, 10000),
 		within("calibration.stray", float64(s.Calibration.Stray), 0, 10000),
 		within("calibration.response", float64(s.Calibration.Response), 0, 10000))
+}
+
+func (s Scene) checkTargets() error {
+	seen := map[string]bool{FrameDark: true, FrameStray: true, FrameResponse: true}
+	for i, t := range s.Calibration.Targets {
+		key := fmt.Sprintf("calibration.targets[%d]", i)
+		if err := firstBad(pipeline.CheckID(key+".name", t.Name), t.check()); err != nil {
+			return fmt.Errorf("%s: %w", key, err)
+		}
+		if seen[t.Name] {
+			return pipeline.Invalid("%s.name: got %q, want a name of its own", key, t.Name)
+		}
+		seen[t.Name] = true
+	}
+	return nil
 }
 
 func (s Scene) checkPart() error {

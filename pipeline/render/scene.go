@@ -155,9 +155,10 @@ type Limits struct {
 
 // CalibrationFrames is how many calibration frames there are per view.
 type CalibrationFrames struct {
-	Dark     int `yaml:"dark"`
-	Stray    int `yaml:"stray"`
-	Response int `yaml:"response"`
+	Dark     int      `yaml:"dark"`
+	Stray    int      `yaml:"stray"`
+	Response int      `yaml:"response"`
+	Targets  []Target `yaml:"targets"` // plates with dots, for scale, distortion and sizing
 }
 
 // format returns the pixel format; Check has refused unknown names before.

@@ -14,7 +14,7 @@ func TestTargetDotsAreWhereTheTruthSays(t *testing.T) {
 	s.Camera.GainDNPerE, s.Camera.DarkNoiseE = 1e-4, 0
 	s.Reference = Reference{}
 	target := Target{PitchUM: 4000, Columns: 7, Rows: 5, DiametersUM: []float64{1000, 500}, BackgroundDN: 100, BrightnessDN: 1000,
-		FluxExponent: 1, RotationDeg: 3, ShiftXPx: 2.3, Lens: pipeline.Distortion{K1: 0.02, CentreX: 150, CentreY: 120, NormPx: 190}}
+		FluxExponent: 1, RotationDeg: 3, ShiftXPx: 2.3, K1: 0.02, LensXPx: 0.5, LensYPx: 0.5}
 	f, dots, err := newRenderer(t, s).TargetFrame("ring", target, 0)
 	if err != nil {
 		t.Fatal(err)
@@ -43,10 +43,10 @@ func TestTargetDotsAreWhereTheTruthSays(t *testing.T) {
 	// The lens moves a corner dot outwards by k1·ρ²: the middle one not at all.
 	near(t, "middle dot", math.Hypot(dots[17].XPx-151.8, dots[17].YPx-119.5), 0, 0.01)
 	flat := target
-	flat.Lens = pipeline.Distortion{}
+	flat.K1 = 0
 	_, straight, _ := newRenderer(t, s).TargetFrame("ring", flat, 0)
 	dx, dy := straight[0].XPx-150, straight[0].YPx-120
-	near(t, "stretch", math.Hypot(dots[0].XPx-150, dots[0].YPx-120)/math.Hypot(dx, dy), 1+0.02*(dx*dx+dy*dy)/(190*190), 1e-9)
+	near(t, "stretch", math.Hypot(dots[0].XPx-150, dots[0].YPx-120)/math.Hypot(dx, dy), 1+0.02*(dx*dx+dy*dy)/(150*150+120*120), 1e-9)
 }
 
 func TestTargetIsChecked(t *testing.T) {
