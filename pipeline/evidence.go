@@ -21,6 +21,7 @@ type ViewEvidence struct {
 	Calibration  string             `json:"calibration"` // hash; empty where the recipe states "none"
 	Region       RegionEvidence     `json:"region"`
 	Coverage     Coverage           `json:"coverage"`
+	CoverageMap  *CoverageMap       `json:"coverage_map,omitempty"`
 	Proofs       []Proof            `json:"proofs"`
 	Measurements []Measurement      `json:"measurements"`
 	Defects      []Defect           `json:"defects"` // before merge

@@ -77,7 +77,7 @@ func renumber(unit *Item) {
 
 func viewEvidence(r ViewResult) ViewEvidence {
 	it := r.Item
-	v := ViewEvidence{Name: it.View, Coverage: it.Coverage, Proofs: it.Proofs, Measurements: it.Measurements,
+	v := ViewEvidence{Name: it.View, Coverage: it.Coverage, CoverageMap: it.CoverageMap, Proofs: it.Proofs, Measurements: it.Measurements,
 		Defects: it.Defects, Truncated: it.Truncated, Milliseconds: r.Milliseconds}
 	for _, f := range it.Frames {
 		v.Frames = append(v.Frames, FrameEvidence{Header: f.Header})
@@ -129,7 +129,7 @@ func (p *Pipeline) judge(e Evidence, now time.Time) Judgement {
 	if verdict == Accept && e.Coverage < p.Recipe.MinCoverage {
 		verdict = Hold
 		reasons = append(reasons, Reason{Name: ReasonCoverage, Verdict: Hold, Value: e.Coverage, Limit: p.Recipe.MinCoverage,
-			Over: e.Coverage - p.Recipe.MinCoverage, Text: fmt.Sprintf("inspected %.4f of the region, want %.4f", e.Coverage, p.Recipe.MinCoverage)})
+			Over: e.Coverage - p.Recipe.MinCoverage, Text: fmt.Sprintf("inspected %.4f of the region, want %.4f%s", e.Coverage, p.Recipe.MinCoverage, CoverageCause(e))})
 	}
 	return p.Stamp(Judgement{Verdict: verdict, Reasons: reasons, By: ByLine, At: now})
 }

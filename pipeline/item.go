@@ -69,6 +69,8 @@ type Item struct {
 	Proofs       []Proof
 	Defects      []Defect
 	Coverage     Coverage
+	Grid         *raster.Grid // level and noise by cells, where a stage measured them
+	CoverageMap  *CoverageMap // nil = none was made
 	Truncated    bool
 	Views        []*Item // unit scope only
 }

@@ -84,7 +84,7 @@ func firstLines(b []byte, n int) string {
 func finiteFailure(stage string, item *Item) *Failure {
 	f := notFinite(stage, item)
 	if f != nil {
-		item.Defects, item.Measurements, item.Proofs, item.Coverage = nil, nil, nil, Coverage{}
+		item.Defects, item.Measurements, item.Proofs, item.Coverage, item.CoverageMap = nil, nil, nil, Coverage{}, nil
 	}
 	return f
 }
@@ -104,6 +104,9 @@ func notFinite(stage string, item *Item) *Failure {
 		if !finite(p.Value, p.Low, p.High) {
 			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("proof %s holds a value that is no number", p.Name)}
 		}
+	}
+	if m := item.CoverageMap; m != nil && !finite(m.NoisyShare, m.UnseenShare, m.SaturatedShare) {
+		return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: "the coverage map holds a value that is no number"}
 	}
 	if c := item.Coverage; !finite(c.Share, c.Background, c.Noise) {
 		return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: "the coverage holds a value that is no number"}

@@ -84,7 +84,7 @@ func (j *Judge) coverage(e pipeline.Evidence) []pipeline.Reason {
 	}
 	return []pipeline.Reason{{Name: pipeline.ReasonCoverage, Verdict: pipeline.Hold,
 		Value: e.Coverage, Limit: j.minCoverage, Over: e.Coverage - j.minCoverage,
-		Text: fmt.Sprintf("inspected %.4f of the region, want at least %.4f", e.Coverage, j.minCoverage)}}
+		Text: fmt.Sprintf("inspected %.4f of the region, want at least %.4f%s", e.Coverage, j.minCoverage, pipeline.CoverageCause(e))}}
 }
 
 // trustworthy reports whether what was found was found rightly: there is a view, every

@@ -17,7 +17,7 @@ var Factory = pipeline.Make(pipeline.Factory{
 	Type: "darkfield", Version: "1", Scope: pipeline.ScopeView,
 	Summary: "Measures local level and noise, and writes the matched-filter contrast in units of its own sigma.",
 	Reads:   []string{pipeline.CorrectedPlane, "region", "bad pixels", "saturated pixels"},
-	Writes:  []string{pipeline.BackgroundPlane, pipeline.NoisePlane, pipeline.SNRPlane, "coverage"},
+	Writes:  []string{pipeline.BackgroundPlane, pipeline.NoisePlane, pipeline.SNRPlane, "coverage", "grid"},
 }, Default, func(s Settings, _ pipeline.Environment) (pipeline.Stage, error) { return stage{s}, nil })
 
 type stage struct{ s Settings }
@@ -39,6 +39,7 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	if err := ctx.Err(); err != nil {
 		return err
 	}
+	item.Grid = grid
 	st.contrast(item, corrected, mask, grid)
 	st.report(item, grid)
 	return ctx.Err()

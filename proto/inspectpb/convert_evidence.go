@@ -27,7 +27,7 @@ func ToEvidence(e *Evidence) (pipeline.Evidence, error) {
 func FromViewEvidence(v pipeline.ViewEvidence) *ViewEvidence {
 	return &ViewEvidence{
 		Name: v.Name, Frames: each(v.Frames, fromFrameEvidence), UmPerPx: v.UMPerPx, Calibration: v.Calibration,
-		Region: fromRegion(v.Region), Coverage: fromCoverage(v.Coverage), Proofs: each(v.Proofs, fromProof),
+		Region: fromRegion(v.Region), Coverage: fromCoverage(v.Coverage), CoverageMap: fromCoverageMap(v.CoverageMap), Proofs: each(v.Proofs, fromProof),
 		Measurements: each(v.Measurements, fromMeasurement), Defects: FromDefects(v.Defects), Truncated: v.Truncated,
 		Milliseconds: maps.Clone(v.Milliseconds),
 	}
@@ -38,7 +38,7 @@ func ToViewEvidence(v *ViewEvidence) (pipeline.ViewEvidence, error) {
 	frames, err := tryEach("frames", v.GetFrames(), toFrameEvidence)
 	return pipeline.ViewEvidence{
 		Name: v.GetName(), Frames: frames, UMPerPx: v.GetUmPerPx(), Calibration: v.GetCalibration(),
-		Region: toRegion(v.GetRegion()), Coverage: toCoverage(v.GetCoverage()), Proofs: each(v.GetProofs(), toProof),
+		Region: toRegion(v.GetRegion()), Coverage: toCoverage(v.GetCoverage()), CoverageMap: toCoverageMap(v.GetCoverageMap()), Proofs: each(v.GetProofs(), toProof),
 		Measurements: each(v.GetMeasurements(), toMeasurement), Defects: ToDefects(v.GetDefects()), Truncated: v.GetTruncated(),
 		Milliseconds: maps.Clone(v.GetMilliseconds()),
 	}, err
@@ -91,4 +91,21 @@ func fromMeasurement(m pipeline.Measurement) *Measurement {
 
 func toMeasurement(m *Measurement) pipeline.Measurement {
 	return pipeline.Measurement{Name: m.GetName(), Value: m.GetValue(), Unit: m.GetUnit()}
+}
+
+func fromCoverageMap(m *pipeline.CoverageMap) *CoverageMap {
+	if m == nil {
+		return nil
+	}
+	return &CoverageMap{CellPx: clamp32(m.CellPx), Columns: clamp32(m.Columns), Rows: clamp32(m.Rows), DigUm: each(m.DigUM, clamp32), ScratchUm: each(m.ScratchUM, clamp32),
+		NoisyShare: m.NoisyShare, UnseenShare: m.UnseenShare, SaturatedShare: m.SaturatedShare}
+}
+
+func toCoverageMap(m *CoverageMap) *pipeline.CoverageMap {
+	if m == nil {
+		return nil
+	}
+	whole := func(v int32) int { return int(v) }
+	return &pipeline.CoverageMap{CellPx: int(m.GetCellPx()), Columns: int(m.GetColumns()), Rows: int(m.GetRows()), DigUM: each(m.GetDigUm(), whole), ScratchUM: each(m.GetScratchUm(), whole),
+		NoisyShare: m.GetNoisyShare(), UnseenShare: m.GetUnseenShare(), SaturatedShare: m.GetSaturatedShare()}
 }

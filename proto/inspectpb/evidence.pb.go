@@ -1311,6 +1311,7 @@ type ViewEvidence struct {
 	Defects       []*Defect              `protobuf:"bytes,9,rep,name=defects,proto3" json:"defects,omitempty"`
 	Truncated     bool                   `protobuf:"varint,10,opt,name=truncated,proto3" json:"truncated,omitempty"`
 	Milliseconds  map[string]float64     `protobuf:"bytes,11,rep,name=milliseconds,proto3" json:"milliseconds,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"fixed64,2,opt,name=value"`
+	CoverageMap   *CoverageMap           `protobuf:"bytes,12,opt,name=coverage_map,json=coverageMap,proto3" json:"coverage_map,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1422,6 +1423,116 @@ func (x *ViewEvidence) GetMilliseconds() map[string]float64 {
 	return nil
 }
 
+func (x *ViewEvidence) GetCoverageMap() *CoverageMap {
+	if x != nil {
+		return x.CoverageMap
+	}
+	return nil
+}
+
+// CoverageMap says, cell by cell of the background grid and row by row, the smallest dig
+// and the faintest scratch that would have been found, in whole micrometres. 0: outside
+// the region; -1: nothing is found there.
+type CoverageMap struct {
+	state          protoimpl.MessageState `protogen:"open.v1"`
+	CellPx         int32                  `protobuf:"varint,1,opt,name=cell_px,json=cellPx,proto3" json:"cell_px,omitempty"`
+	Columns        int32                  `protobuf:"varint,2,opt,name=columns,proto3" json:"columns,omitempty"`
+	Rows           int32                  `protobuf:"varint,3,opt,name=rows,proto3" json:"rows,omitempty"`
+	DigUm          []int32                `protobuf:"zigzag32,4,rep,packed,name=dig_um,json=digUm,proto3" json:"dig_um,omitempty"`
+	ScratchUm      []int32                `protobuf:"zigzag32,5,rep,packed,name=scratch_um,json=scratchUm,proto3" json:"scratch_um,omitempty"`
+	NoisyShare     float64                `protobuf:"fixed64,6,opt,name=noisy_share,json=noisyShare,proto3" json:"noisy_share,omitempty"`
+	UnseenShare    float64                `protobuf:"fixed64,7,opt,name=unseen_share,json=unseenShare,proto3" json:"unseen_share,omitempty"`
+	SaturatedShare float64                `protobuf:"fixed64,8,opt,name=saturated_share,json=saturatedShare,proto3" json:"saturated_share,omitempty"`
+	unknownFields  protoimpl.UnknownFields
+	sizeCache      protoimpl.SizeCache
+}
+
+func (x *CoverageMap) Reset() {
+	*x = CoverageMap{}
+	mi := &file_inspectpb_evidence_proto_msgTypes[15]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *CoverageMap) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*CoverageMap) ProtoMessage() {}
+
+func (x *CoverageMap) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_evidence_proto_msgTypes[15]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use CoverageMap.ProtoReflect.Descriptor instead.
+func (*CoverageMap) Descriptor() ([]byte, []int) {
+	return file_inspectpb_evidence_proto_rawDescGZIP(), []int{15}
+}
+
+func (x *CoverageMap) GetCellPx() int32 {
+	if x != nil {
+		return x.CellPx
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetColumns() int32 {
+	if x != nil {
+		return x.Columns
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetRows() int32 {
+	if x != nil {
+		return x.Rows
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetDigUm() []int32 {
+	if x != nil {
+		return x.DigUm
+	}
+	return nil
+}
+
+func (x *CoverageMap) GetScratchUm() []int32 {
+	if x != nil {
+		return x.ScratchUm
+	}
+	return nil
+}
+
+func (x *CoverageMap) GetNoisyShare() float64 {
+	if x != nil {
+		return x.NoisyShare
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetUnseenShare() float64 {
+	if x != nil {
+		return x.UnseenShare
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetSaturatedShare() float64 {
+	if x != nil {
+		return x.SaturatedShare
+	}
+	return 0
+}
+
 // Evidence is everything that an inspection found.
 type Evidence struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1438,7 +1549,7 @@ type Evidence struct {
 
 func (x *Evidence) Reset() {
 	*x = Evidence{}
-	mi := &file_inspectpb_evidence_proto_msgTypes[15]
+	mi := &file_inspectpb_evidence_proto_msgTypes[16]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1450,7 +1561,7 @@ func (x *Evidence) String() string {
 func (*Evidence) ProtoMessage() {}
 
 func (x *Evidence) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_evidence_proto_msgTypes[15]
+	mi := &file_inspectpb_evidence_proto_msgTypes[16]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1463,7 +1574,7 @@ func (x *Evidence) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Evidence.ProtoReflect.Descriptor instead.
 func (*Evidence) Descriptor() ([]byte, []int) {
-	return file_inspectpb_evidence_proto_rawDescGZIP(), []int{15}
+	return file_inspectpb_evidence_proto_rawDescGZIP(), []int{16}
 }
 
 func (x *Evidence) GetViews() []*ViewEvidence {
@@ -1633,7 +1744,7 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\x05zones\x18\x04 \x03(\v2 .lapgate.inspect.v1.ZoneEvidenceR\x05zones\"`\n" +
 	"\rFrameEvidence\x127\n" +
 	"\x06header\x18\x01 \x01(\v2\x1f.lapgate.inspect.v1.FrameHeaderR\x06header\x12\x16\n" +
-	"\x06stored\x18\x02 \x01(\tR\x06stored\"\xf6\x04\n" +
+	"\x06stored\x18\x02 \x01(\tR\x06stored\"\xba\x05\n" +
 	"\fViewEvidence\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x129\n" +
 	"\x06frames\x18\x02 \x03(\v2!.lapgate.inspect.v1.FrameEvidenceR\x06frames\x12\x1a\n" +
@@ -1646,10 +1757,22 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\adefects\x18\t \x03(\v2\x1a.lapgate.inspect.v1.DefectR\adefects\x12\x1c\n" +
 	"\ttruncated\x18\n" +
 	" \x01(\bR\ttruncated\x12V\n" +
-	"\fmilliseconds\x18\v \x03(\v22.lapgate.inspect.v1.ViewEvidence.MillisecondsEntryR\fmilliseconds\x1a?\n" +
+	"\fmilliseconds\x18\v \x03(\v22.lapgate.inspect.v1.ViewEvidence.MillisecondsEntryR\fmilliseconds\x12B\n" +
+	"\fcoverage_map\x18\f \x01(\v2\x1f.lapgate.inspect.v1.CoverageMapR\vcoverageMap\x1a?\n" +
 	"\x11MillisecondsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
-	"\x05value\x18\x02 \x01(\x01R\x05value:\x028\x01\"\xce\x02\n" +
+	"\x05value\x18\x02 \x01(\x01R\x05value:\x028\x01\"\xf7\x01\n" +
+	"\vCoverageMap\x12\x17\n" +
+	"\acell_px\x18\x01 \x01(\x05R\x06cellPx\x12\x18\n" +
+	"\acolumns\x18\x02 \x01(\x05R\acolumns\x12\x12\n" +
+	"\x04rows\x18\x03 \x01(\x05R\x04rows\x12\x15\n" +
+	"\x06dig_um\x18\x04 \x03(\x11R\x05digUm\x12\x1d\n" +
+	"\n" +
+	"scratch_um\x18\x05 \x03(\x11R\tscratchUm\x12\x1f\n" +
+	"\vnoisy_share\x18\x06 \x01(\x01R\n" +
+	"noisyShare\x12!\n" +
+	"\funseen_share\x18\a \x01(\x01R\vunseenShare\x12'\n" +
+	"\x0fsaturated_share\x18\b \x01(\x01R\x0esaturatedShare\"\xce\x02\n" +
 	"\bEvidence\x126\n" +
 	"\x05views\x18\x01 \x03(\v2 .lapgate.inspect.v1.ViewEvidenceR\x05views\x124\n" +
 	"\adefects\x18\x02 \x03(\v2\x1a.lapgate.inspect.v1.DefectR\adefects\x12C\n" +
@@ -1677,7 +1800,7 @@ func file_inspectpb_evidence_proto_rawDescGZIP() []byte {
 }
 
 var file_inspectpb_evidence_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_inspectpb_evidence_proto_msgTypes = make([]protoimpl.MessageInfo, 18)
+var file_inspectpb_evidence_proto_msgTypes = make([]protoimpl.MessageInfo, 19)
 var file_inspectpb_evidence_proto_goTypes = []any{
 	(Verdict)(0),                  // 0: lapgate.inspect.v1.Verdict
 	(*Reason)(nil),                // 1: lapgate.inspect.v1.Reason
@@ -1695,40 +1818,42 @@ var file_inspectpb_evidence_proto_goTypes = []any{
 	(*RegionEvidence)(nil),        // 13: lapgate.inspect.v1.RegionEvidence
 	(*FrameEvidence)(nil),         // 14: lapgate.inspect.v1.FrameEvidence
 	(*ViewEvidence)(nil),          // 15: lapgate.inspect.v1.ViewEvidence
-	(*Evidence)(nil),              // 16: lapgate.inspect.v1.Evidence
-	nil,                           // 17: lapgate.inspect.v1.Judgement.StageVersionsEntry
-	nil,                           // 18: lapgate.inspect.v1.ViewEvidence.MillisecondsEntry
-	(*timestamppb.Timestamp)(nil), // 19: google.protobuf.Timestamp
-	(*FrameHeader)(nil),           // 20: lapgate.inspect.v1.FrameHeader
+	(*CoverageMap)(nil),           // 16: lapgate.inspect.v1.CoverageMap
+	(*Evidence)(nil),              // 17: lapgate.inspect.v1.Evidence
+	nil,                           // 18: lapgate.inspect.v1.Judgement.StageVersionsEntry
+	nil,                           // 19: lapgate.inspect.v1.ViewEvidence.MillisecondsEntry
+	(*timestamppb.Timestamp)(nil), // 20: google.protobuf.Timestamp
+	(*FrameHeader)(nil),           // 21: lapgate.inspect.v1.FrameHeader
 }
 var file_inspectpb_evidence_proto_depIdxs = []int32{
 	0,  // 0: lapgate.inspect.v1.Reason.verdict:type_name -> lapgate.inspect.v1.Verdict
 	0,  // 1: lapgate.inspect.v1.Judgement.verdict:type_name -> lapgate.inspect.v1.Verdict
 	1,  // 2: lapgate.inspect.v1.Judgement.reasons:type_name -> lapgate.inspect.v1.Reason
-	17, // 3: lapgate.inspect.v1.Judgement.stage_versions:type_name -> lapgate.inspect.v1.Judgement.StageVersionsEntry
-	19, // 4: lapgate.inspect.v1.Judgement.at:type_name -> google.protobuf.Timestamp
+	18, // 3: lapgate.inspect.v1.Judgement.stage_versions:type_name -> lapgate.inspect.v1.Judgement.StageVersionsEntry
+	20, // 4: lapgate.inspect.v1.Judgement.at:type_name -> google.protobuf.Timestamp
 	3,  // 5: lapgate.inspect.v1.Defect.place:type_name -> lapgate.inspect.v1.Place
 	5,  // 6: lapgate.inspect.v1.Defect.box:type_name -> lapgate.inspect.v1.Box
 	4,  // 7: lapgate.inspect.v1.Defect.path:type_name -> lapgate.inspect.v1.Point
 	6,  // 8: lapgate.inspect.v1.Defect.merged_from:type_name -> lapgate.inspect.v1.DefectRef
 	12, // 9: lapgate.inspect.v1.RegionEvidence.zones:type_name -> lapgate.inspect.v1.ZoneEvidence
-	20, // 10: lapgate.inspect.v1.FrameEvidence.header:type_name -> lapgate.inspect.v1.FrameHeader
+	21, // 10: lapgate.inspect.v1.FrameEvidence.header:type_name -> lapgate.inspect.v1.FrameHeader
 	14, // 11: lapgate.inspect.v1.ViewEvidence.frames:type_name -> lapgate.inspect.v1.FrameEvidence
 	13, // 12: lapgate.inspect.v1.ViewEvidence.region:type_name -> lapgate.inspect.v1.RegionEvidence
 	10, // 13: lapgate.inspect.v1.ViewEvidence.coverage:type_name -> lapgate.inspect.v1.Coverage
 	9,  // 14: lapgate.inspect.v1.ViewEvidence.proofs:type_name -> lapgate.inspect.v1.Proof
 	8,  // 15: lapgate.inspect.v1.ViewEvidence.measurements:type_name -> lapgate.inspect.v1.Measurement
 	7,  // 16: lapgate.inspect.v1.ViewEvidence.defects:type_name -> lapgate.inspect.v1.Defect
-	18, // 17: lapgate.inspect.v1.ViewEvidence.milliseconds:type_name -> lapgate.inspect.v1.ViewEvidence.MillisecondsEntry
-	15, // 18: lapgate.inspect.v1.Evidence.views:type_name -> lapgate.inspect.v1.ViewEvidence
-	7,  // 19: lapgate.inspect.v1.Evidence.defects:type_name -> lapgate.inspect.v1.Defect
-	8,  // 20: lapgate.inspect.v1.Evidence.measurements:type_name -> lapgate.inspect.v1.Measurement
-	11, // 21: lapgate.inspect.v1.Evidence.failures:type_name -> lapgate.inspect.v1.Failure
-	22, // [22:22] is the sub-list for method output_type
-	22, // [22:22] is the sub-list for method input_type
-	22, // [22:22] is the sub-list for extension type_name
-	22, // [22:22] is the sub-list for extension extendee
-	0,  // [0:22] is the sub-list for field type_name
+	19, // 17: lapgate.inspect.v1.ViewEvidence.milliseconds:type_name -> lapgate.inspect.v1.ViewEvidence.MillisecondsEntry
+	16, // 18: lapgate.inspect.v1.ViewEvidence.coverage_map:type_name -> lapgate.inspect.v1.CoverageMap
+	15, // 19: lapgate.inspect.v1.Evidence.views:type_name -> lapgate.inspect.v1.ViewEvidence
+	7,  // 20: lapgate.inspect.v1.Evidence.defects:type_name -> lapgate.inspect.v1.Defect
+	8,  // 21: lapgate.inspect.v1.Evidence.measurements:type_name -> lapgate.inspect.v1.Measurement
+	11, // 22: lapgate.inspect.v1.Evidence.failures:type_name -> lapgate.inspect.v1.Failure
+	23, // [23:23] is the sub-list for method output_type
+	23, // [23:23] is the sub-list for method input_type
+	23, // [23:23] is the sub-list for extension type_name
+	23, // [23:23] is the sub-list for extension extendee
+	0,  // [0:23] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_evidence_proto_init() }
@@ -1743,7 +1868,7 @@ func file_inspectpb_evidence_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_evidence_proto_rawDesc), len(file_inspectpb_evidence_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   18,
+			NumMessages:   19,
 			NumExtensions: 0,
 			NumServices:   0,
 		},
