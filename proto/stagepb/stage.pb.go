@@ -841,9 +841,11 @@ type OpenResponse struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
 	Handle uint64                 `protobuf:"varint,1,opt,name=handle,proto3" json:"handle,omitempty"`
 	// A file beside the recipe that is needed; nothing was built. Open again with it.
-	WantedFile    string `protobuf:"bytes,2,opt,name=wanted_file,json=wantedFile,proto3" json:"wanted_file,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	WantedFile string `protobuf:"bytes,2,opt,name=wanted_file,json=wantedFile,proto3" json:"wanted_file,omitempty"`
+	// The settings with which it was built.
+	EffectiveSettingsJson string `protobuf:"bytes,3,opt,name=effective_settings_json,json=effectiveSettingsJson,proto3" json:"effective_settings_json,omitempty"`
+	unknownFields         protoimpl.UnknownFields
+	sizeCache             protoimpl.SizeCache
 }
 
 func (x *OpenResponse) Reset() {
@@ -886,6 +888,13 @@ func (x *OpenResponse) GetHandle() uint64 {
 func (x *OpenResponse) GetWantedFile() string {
 	if x != nil {
 		return x.WantedFile
+	}
+	return ""
+}
+
+func (x *OpenResponse) GetEffectiveSettingsJson() string {
+	if x != nil {
+		return x.EffectiveSettingsJson
 	}
 	return ""
 }
@@ -2576,11 +2585,12 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\n" +
 	"FilesEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
-	"\x05value\x18\x02 \x01(\fR\x05value:\x028\x01\"G\n" +
+	"\x05value\x18\x02 \x01(\fR\x05value:\x028\x01\"\x7f\n" +
 	"\fOpenResponse\x12\x16\n" +
 	"\x06handle\x18\x01 \x01(\x04R\x06handle\x12\x1f\n" +
 	"\vwanted_file\x18\x02 \x01(\tR\n" +
-	"wantedFile\"q\n" +
+	"wantedFile\x126\n" +
+	"\x17effective_settings_json\x18\x03 \x01(\tR\x15effectiveSettingsJson\"q\n" +
 	"\vSharedBytes\x12\x12\n" +
 	"\x04path\x18\x01 \x01(\tR\x04path\x12\x16\n" +
 	"\x06offset\x18\x02 \x01(\x04R\x06offset\x12\x16\n" +

@@ -1,0 +1,225 @@
+package outside
+
+import (
+	"bytes"
+	"context"
+	"errors"
+	"image"
+	"image/png"
+	"reflect"
+	"strings"
+	"sync"
+	"testing"
+	"time"
+
+	"lapgate/pipeline"
+	"lapgate/pipeline/raster"
+	"lapgate/plugins/builtin"
+	"lapgate/plugins/stagetest"
+)
+
+// view is an item as the camera and the calibration give it.
+func view(raw raster.Raw) *pipeline.Item {
+	w, h := raw.Width, raw.Height
+	dark, response := raster.NewPlane(w, h), raster.NewPlane(w, h)
+	for i := range response.Pix {
+		dark.Pix[i] = float32(i % 3)
+		response.Pix[i] = 0.9 + 0.05*float32(i%5)
+	}
+	cal := &pipeline.Calibration{Hash: "test", Dark: dark, Response: response, BadPixels: []pipeline.PixelAt{{X: 0, Y: 0}, {X: 75, Y: 60}}}
+	return &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}, Calibration: cal,
+		Geometry: pipeline.Distorted{Planar: pipeline.Planar{UMPerPx: 10}, Lens: pipeline.Distortion{K1: -0.01, CentreX: 100, CentreY: 90, NormPx: 120}}}
+}
+
+// before returns an item as stage i of the built-in ones gets it.
+func before(t *testing.T, raw raster.Raw, i int) *pipeline.Item {
+	t.Helper()
+	all := builtin.Stages()
+	item := view(raw)
+	for _, f := range all[:i] {
+		if f.Scope == pipeline.ScopeView {
+			runFactory(t, f, item)
+		}
+	}
+	if all[i].Scope == pipeline.ScopeUnit {
+		for n := range item.Defects {
+			item.Defects[n].ID = n + 1
+		}
+		return &pipeline.Item{Views: []*pipeline.Item{item}, Defects: item.Defects}
+	}
+	return item
+}
+
+func runFactory(t *testing.T, f pipeline.Factory, item *pipeline.Item) {
+	t.Helper()
+	stage, _, err := f.New(nil, pipeline.Environment{View: item.View, Calibration: item.Calibration, Geometry: item.Geometry})
+	if err == nil {
+		err = stage.Run(context.Background(), item)
+	}
+	if err != nil {
+		t.Fatalf("%s: %v", f.Type, err)
+	}
+}
+
+// Every built-in stage passes the conformance suite outside too, and what it makes there
+// is what it makes inside, to the last bit.
+func TestBuiltinStagesOutside(t *testing.T) {
+	for i, f := range builtin.Stages() {
+		t.Run(f.Type, func(t *testing.T) {
+			t.Parallel()
+			h := open(t, settingsFor(f.Type))
+			outside := h.Factory()
+			if outside.Type != f.Type || outside.Version != f.Version || outside.Summary != f.Summary || outside.Scope != f.Scope || !reflect.DeepEqual(outside.Reads, f.Reads) {
+				t.Errorf("described as %+v", outside)
+			}
+			in, out := before(t, stagetest.Scene(), i), before(t, stagetest.Scene(), i)
+			runFactory(t, f, in)
+			runFactory(t, outside, out)
+			for _, item := range []*pipeline.Item{in, out} {
+				if len(item.Frames) > 0 { // a stage that unpacks the frame leaves the raw plane behind
+					_, _ = item.Raw()
+				}
+			}
+			if stagetest.Digest(in) != stagetest.Digest(out) {
+				t.Errorf("inside and outside differ\n in %+v\nout %+v", in, out)
+			}
+			stagetest.Run(t, outside, func(raw raster.Raw) *pipeline.Item { return before(t, raw, i) })
+			if s := h.Status(); s.Restarts != 0 {
+				t.Errorf("restarted: %+v", s)
+			}
+		})
+	}
+}
+
+// Pixels that travel in messages give the same as those in shared memory.
+func TestBytesGiveTheSame(t *testing.T) {
+	s := settingsFor("flatfield")
+	s.BytesOnly = true
+	a, b := view(stagetest.Scene()), view(stagetest.Scene())
+	runFactory(t, open(t, s).Factory(), a)
+	runFactory(t, open(t, settingsFor("flatfield")).Factory(), b)
+	if len(a.Planes) == 0 || stagetest.Digest(a) != stagetest.Digest(b) {
+		t.Error("bytes and shared memory differ")
+	}
+}
+
+func TestSettingsOutside(t *testing.T) {
+	h := open(t, settingsFor("probe"))
+	f := h.Factory()
+	got, err := settingsText(f.Defaults)
+	if want := `{"factor":1,"count":0,"words":["a"],"rules":[{"kind":"dig","over":3}],"on":false}`; err != nil || got != want {
+		t.Errorf("defaults %s, %v, want %s", got, err, want)
+	}
+	_, settings, err := f.New(decodeText(`{"factor":2.5,"words":["b","c"]}`), pipeline.Environment{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if got, _ := settingsText(settings); got != `{"factor":2.5,"count":0,"words":["b","c"],"rules":[{"kind":"dig","over":3}],"on":false}` {
+		t.Errorf("effective %s", got)
+	}
+	if again, _ := settingsText(f.Defaults); again != got {
+		t.Errorf("the defaults have changed: %s", again)
+	}
+	for text, want := range map[string]string{
+		`{"factor":-1}`:                    "factor: got -1, want above 0",
+		`{"rules":[{"kind":"","over":1}]}`: "rules[0].kind: got nothing, want a kind",
+	} {
+		_, _, err := f.New(decodeText(text), pipeline.Environment{})
+		if err == nil || err.Error() != want || pipeline.KindOf(err) != pipeline.InvalidKind {
+			t.Errorf("%s: got %v, want %q", text, err, want)
+		}
+	}
+	if err := f.Check(f.Defaults); err != nil {
+		t.Errorf("defaults: %v", err)
+	}
+}
+
+// A stage may ask for files beside the recipe when it is built.
+func TestFilesBesideTheRecipe(t *testing.T) {
+	f := open(t, settingsFor("region")).Factory()
+	var mask bytes.Buffer
+	if err := png.Encode(&mask, &image.Gray{Pix: []byte{255, 0, 255, 255}, Stride: 2, Rect: image.Rect(0, 0, 2, 2)}); err != nil {
+		t.Fatal(err)
+	}
+	env := pipeline.Environment{View: "ring", Geometry: pipeline.Planar{UMPerPx: 10}, ReadFile: func(name string) ([]byte, error) {
+		if name != "mask.png" {
+			return nil, errors.New("no such file")
+		}
+		return mask.Bytes(), nil
+	}}
+	stage, settings, err := f.New(decodeText(`{"shape":"mask","mask_file":"mask.png"}`), env)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if text, _ := settingsText(settings); !strings.Contains(text, `"mask_sha256":"`) || strings.Contains(text, `"mask_sha256":""`) {
+		t.Errorf("the effective settings do not name the mask's content: %s", text)
+	}
+	item := &pipeline.Item{View: "ring", Geometry: env.Geometry, Frames: []pipeline.Frame{{Raw: raster.Pack(raster.Mono8, make([]uint16, 4), 2, 2)}}}
+	if err := stage.Run(context.Background(), item); err != nil || item.Region.Mask().Count() != 3 {
+		t.Errorf("got %v, %+v", err, item.Region)
+	}
+	if _, _, err := f.New(decodeText(`{"shape":"mask","mask_file":"other.png"}`), env); pipeline.KindOf(err) != pipeline.InvalidKind {
+		t.Errorf("got %v", err)
+	}
+}
+
+// While one unit hangs its stage, those beside it are given to the next process.
+func TestOthersGoOn(t *testing.T) {
+	s := settingsFor("hostile", "hang")
+	s.Deadline, s.MaxConcurrent = 700*time.Millisecond, 3
+	stage := newStage(t, open(t, s).Factory(), "{}")
+	var wg sync.WaitGroup
+	errs := make([]error, 9)
+	for i := range errs {
+		mark := byte(i)
+		if i == 4 {
+			mark = 255
+		}
+		wg.Go(func() { errs[i] = stage.Run(context.Background(), tiny(mark)) })
+	}
+	wg.Wait()
+	for i, err := range errs {
+		if (err != nil) != (i == 4) {
+			t.Errorf("unit %d: %v", i, err)
+		}
+	}
+}
+
+// A caller that leaves is let go at once, and the stage is not disturbed.
+func TestCallerLeaves(t *testing.T) {
+	s := settingsFor("hostile", "hang")
+	s.MaxConcurrent, s.Deadline = 1, time.Second
+	h := open(t, s)
+	stage := newStage(t, h.Factory(), "{}")
+	ctx, cancel := context.WithTimeout(context.Background(), 50*time.Millisecond)
+	defer cancel()
+	if err := stage.Run(ctx, tiny(255)); !errors.Is(err, context.DeadlineExceeded) {
+		t.Errorf("got %v", err)
+	}
+	if err := stage.Run(context.Background(), tiny(1)); err != nil { // waits until the slot is free again
+		t.Error(err)
+	}
+}
+
+func TestTooLargeForASlot(t *testing.T) {
+	s := settingsFor("probe")
+	s.SlotBytes = 4096
+	raw := raster.NewRaw(raster.Mono8, 100, 100)
+	err := newStage(t, open(t, s).Factory(), "{}").Run(context.Background(), &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}})
+	if err == nil || !strings.Contains(err.Error(), "raise slot_mb") {
+		t.Errorf("got %v", err)
+	}
+}
+
+func TestClosedHost(t *testing.T) {
+	h := open(t, settingsFor("probe"))
+	stage := newStage(t, h.Factory(), "{}")
+	for range 2 {
+		if err := h.Close(); err != nil {
+			t.Error(err)
+		}
+	}
+	if err := stage.Run(context.Background(), tiny(1)); err == nil || !strings.Contains(err.Error(), "the stage is closed") {
+		t.Errorf("got %v", err)
+	}
+}
