@@ -247,6 +247,30 @@ func TestRestartedCounter(t *testing.T) {
 	}
 }
 
+// A frame of 12 megapixels passes from feed to verdict.
+func TestTwelveMegapixels(t *testing.T) {
+	s := newSite(t, 0)
+	s.serve()
+	raw := raster.NewRaw(raster.Mono8, 4000, 3000)
+	rng := rand.New(rand.NewPCG(12, 1))
+	for i := range raw.Data {
+		raw.Data[i] = byte(20 + 1.5*rng.NormFloat64())
+	}
+	for y := 1490; y < 1510; y++ { // a dig of 20 px
+		for x := 1990; x < 2010; x++ {
+			raw.Data[y*4000+x] = 120
+		}
+	}
+	s.check(files.Write(s.path("frames/large_ring.pgm"), raw))
+	ctx, cancel := context.WithTimeout(context.Background(), 2*time.Minute)
+	defer cancel()
+	s.check(s.feedCommand(ctx, "large.jsonl").Run())
+	v := s.answered("large.jsonl")
+	if len(v) != 1 || v[0]["verdict"] != "reject" || len(v[0]["defects"].([]any)) != 1 {
+		t.Errorf("verdicts %v, want one reject with one defect", v)
+	}
+}
+
 // A recipe saved broken keeps the last good one in force.
 func TestBrokenRecipeKeepsTheLastGoodOne(t *testing.T) {
 	s := newSite(t, 1)

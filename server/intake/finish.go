@@ -67,10 +67,23 @@ func (s *showing) conclude(ctx context.Context) (Verdict, error) {
 		return Verdict{}, err
 	}
 	v := Verdict{Inspection: stored, Stored: !fresh}
+	if fresh {
+		s.logFailures(v)
+	}
 	if fresh && s.intake.settings.Recorded != nil {
 		s.intake.settings.Recorded(v)
 	}
 	return v, nil
+}
+
+// logFailures says which stage failed on which unit; a stage that fails on every unit is
+// for the log, not only for the verdicts.
+func (s *showing) logFailures(v Verdict) {
+	for _, f := range v.Evidence.Failures {
+		if f.Stage != "" {
+			s.intake.settings.Log.Warn(f.Reason, "unit", v.Unit, "inspection", v.ID, "stage", f.Stage, "view", f.View, "detail", f.Detail)
+		}
+	}
 }
 
 // keep offers the frames to the image store and notes in the record where they will be.
