@@ -34,6 +34,7 @@ type Server struct {
 	LogFormat        string `yaml:"log_format" help:"How it is logged: json (one object a line) or text (for a person at a terminal). It cannot be empty."`
 	Development      bool   `yaml:"development" help:"Lets every good recipe judge as soon as it is saved, without approval; not for units that ship. false = a second person approves each recipe."`
 	People           string `yaml:"people" help:"File that lists people and their roles. Empty keeps no list: every name may do everything."`
+	Plugins          string `yaml:"plugins" help:"File that lists the stages that run in processes of their own. Empty keeps to the stages inside: no plug-in is started."`
 	Reflection       bool   `yaml:"reflection" help:"Lets clients ask which services there are (gRPC reflection). false = no."`
 	ShutdownGraceMS  int    `yaml:"shutdown_grace_ms" help:"Milliseconds for units under way to finish when the server stops; the rest is held. 0 = none."`
 }

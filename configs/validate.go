@@ -13,8 +13,15 @@ import (
 // serverFileName is how the server's settings are called in a folder of configurations.
 const serverFileName = "server.yaml"
 
+// peopleFileName is how the list of people is called there.
+const peopleFileName = "people.yaml"
+
+// pluginsFileName is how the list of stages outside is called there.
+const pluginsFileName = "plugins.yaml"
+
 // ValidateFolder reads every *.yaml and *.yml file of a folder (not of folders in it) as
-// the server would, server.yaml as its settings and all others as recipes, and returns
+// the server would, server.yaml as its settings, people.yaml as its list of people,
+// plugins.yaml as its list of stages outside and all others as recipes, and returns
 // every problem in the order of files and lines. The error is for a folder that cannot
 // be read or has no such file: then nothing was validated.
 func ValidateFolder(dir string, catalogue *pipeline.Catalogue) ([]Problem, error) {
@@ -33,6 +40,16 @@ func ValidateFolder(dir string, catalogue *pipeline.Catalogue) ([]Problem, error
 		path := filepath.Join(dir, f.Name())
 		if f.Name() == serverFileName {
 			problems = append(problems, validateServer(path)...)
+			continue
+		}
+		if f.Name() == pluginsFileName {
+			problems = append(problems, validatePlugins(path)...)
+			continue
+		}
+		if f.Name() == peopleFileName {
+			if _, err := LoadPeople(path); err != nil {
+				problems = append(problems, asProblems(path, err)...)
+			}
 			continue
 		}
 		problems = append(problems, validateRecipe(path, catalogue, subjects)...)

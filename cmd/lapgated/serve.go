@@ -99,7 +99,7 @@ func waiting(old, now configs.Server) []string {
 		{"listen", old.Listen != now.Listen}, {"ledger", old.Ledger != now.Ledger}, {"recipes", old.Recipes != now.Recipes},
 		{"calibrations", old.Calibrations != now.Calibrations}, {"images", old.Images != now.Images},
 		{"max_frame_bytes", old.MaxFrameBytes != now.MaxFrameBytes}, {"workers", old.Workers != now.Workers},
-		{"development", old.Development != now.Development}, {"log_format", old.LogFormat != now.LogFormat},
+		{"plugins", old.Plugins != now.Plugins}, {"development", old.Development != now.Development}, {"log_format", old.LogFormat != now.LogFormat},
 		{"people", old.People != now.People}, {"reflection", old.Reflection != now.Reflection},
 	} {
 		if f.different {
