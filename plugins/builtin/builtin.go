@@ -7,6 +7,7 @@ import (
 	"lapgate/plugins/areas"
 	"lapgate/plugins/blobs"
 	"lapgate/plugins/classify"
+	"lapgate/plugins/coverage"
 	"lapgate/plugins/darkfield"
 	"lapgate/plugins/flatfield"
 	"lapgate/plugins/merge"
@@ -23,6 +24,7 @@ func Stages() []pipeline.Factory {
 		darkfield.Factory,
 		blobs.Factory,
 		areas.Factory,
+		coverage.Factory,
 		merge.Factory(),
 		classify.Factory(),
 		classify.ViewFactory(),

@@ -124,6 +124,9 @@ func (st *stage) proveLight(item *pipeline.Item, raw *raster.Plane) error {
 		known = true
 		proof.Reason = fmt.Sprintf("the header's tag %s says %q, the view is calibrated for light %q: the views are swapped or the wrong lamp was on", st.s.LightTag, says, st.light)
 	}
+	if st.patch == nil && st.s.PhotodiodeTag == "" { // by the tag alone: nothing was measured
+		proof.Low, proof.High = 0, 0
+	}
 	if known {
 		proof.OK = proof.Reason == ""
 		item.Prove(proof)
