@@ -41,26 +41,30 @@ type Defect struct {
 	View string `json:"view"` // the view whose measures are given
 	Zone string `json:"zone"`
 	Place
-	EdgeDistanceUM float64  `json:"edge_distance_um"` // from the zone's own edge, inwards; 0 where it has none
-	AreaPx         int      `json:"area_px"`          // pixels above the low threshold
-	AreaUM2        float64  `json:"area_um2"`         // at half height
-	LengthUM       float64  `json:"length_um"`        // along the long axis, at half height
-	WidthUM        float64  `json:"width_um"`         // across it, at half height
-	DiameterUM     float64  `json:"diameter_um"`      // of the circle with the half-height area
-	LengthPx       float64  `json:"length_px"`
-	WidthPx        float64  `json:"width_px"`
-	DiameterPx     float64  `json:"diameter_px"`
-	AngleDeg       float64  `json:"angle_deg"`  // long axis, from +x towards +y in pixels, −90 < a ≤ 90
-	Flux           float64  `json:"flux"`       // DN·px above background, over the footprint
-	PeakDN         float64  `json:"peak_dn"`    // highest value above background
-	PeakSigma      float64  `json:"peak_sigma"` // highest value of the snr plane
-	SNR            float64  `json:"snr"`        // flux over its own noise
-	Dark           bool     `json:"dark"`       // darker than the background
-	Saturated      bool     `json:"saturated"`  // touches a saturated pixel: not sized by flux
-	Box            Box      `json:"box"`
-	Path           []Point  `json:"path"`        // only for long defects: points along it
-	SeenIn         []string `json:"seen_in"`     // after a merge: the views that saw it
-	MergedFrom     []Ref    `json:"merged_from"` // after a merge: the defects it stands for
+	EdgeDistanceUM float64 `json:"edge_distance_um"` // from the zone's own edge, inwards; 0 where it has none
+	AreaPx         int     `json:"area_px"`          // pixels above the low threshold
+	AreaUM2        float64 `json:"area_um2"`         // at half height
+	LengthUM       float64 `json:"length_um"`        // along the long axis, at half height
+	WidthUM        float64 `json:"width_um"`         // across it, at half height
+	DiameterUM     float64 `json:"diameter_um"`      // of the circle with the half-height area
+	LengthPx       float64 `json:"length_px"`
+	WidthPx        float64 `json:"width_px"`
+	DiameterPx     float64 `json:"diameter_px"`
+	AngleDeg       float64 `json:"angle_deg"`  // long axis, from +x towards +y in pixels, −90 < a ≤ 90
+	Flux           float64 `json:"flux"`       // DN·px above background, over the footprint
+	PeakDN         float64 `json:"peak_dn"`    // highest value above background
+	PeakSigma      float64 `json:"peak_sigma"` // highest value of the snr plane
+	SNR            float64 `json:"snr"`        // flux over its own noise
+	Dark           bool    `json:"dark"`       // darker than the background
+	Saturated      bool    `json:"saturated"`  // touches a saturated pixel: not sized by flux
+	Box            Box     `json:"box"`
+	// DiameterFluxUM is the diameter by the calibration's sizing curve, of defects too small
+	// for their outline to tell it; 0 = not sized by flux.
+	DiameterFluxUM            float64  `json:"diameter_flux_um"`
+	DiameterFluxUncertaintyUM float64  `json:"diameter_flux_uncertainty_um"` // standard, for one that scatters as the target's dots
+	Path                      []Point  `json:"path"`                         // only for long defects: points along it
+	SeenIn                    []string `json:"seen_in"`                      // after a merge: the views that saw it
+	MergedFrom                []Ref    `json:"merged_from"`                  // after a merge: the defects it stands for
 }
 
 // Ref names a defect of one view.

@@ -91,7 +91,7 @@ func finiteFailure(stage string, item *Item) *Failure {
 
 func notFinite(stage string, item *Item) *Failure {
 	for _, d := range item.Defects {
-		if !finite(d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM) {
+		if !finite(d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.DiameterFluxUM, d.DiameterFluxUncertaintyUM, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM) {
 			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("defect at (%.1f, %.1f) px has a measure that is no number", d.XPx, d.YPx)}
 		}
 	}

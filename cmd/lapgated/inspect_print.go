@@ -32,7 +32,8 @@ func inspectionForm(id pipeline.Identity, e pipeline.Evidence, j pipeline.Judgem
 func defectForm(d pipeline.Defect) map[string]any {
 	out := map[string]any{"id": d.ID, "kind": d.Kind, "view": d.View, "zone": d.Zone, "x_px": d.XPx, "y_px": d.YPx, "u_um": d.UUM, "v_um": d.VUM,
 		"edge_distance_um": d.EdgeDistanceUM, "area_px": d.AreaPx, "area_um2": d.AreaUM2, "length_um": d.LengthUM, "width_um": d.WidthUM,
-		"diameter_um": d.DiameterUM, "length_px": d.LengthPx, "width_px": d.WidthPx, "diameter_px": d.DiameterPx, "angle_deg": d.AngleDeg,
+		"diameter_um":      d.DiameterUM,
+		"diameter_flux_um": d.DiameterFluxUM, "diameter_flux_uncertainty_um": d.DiameterFluxUncertaintyUM, "length_px": d.LengthPx, "width_px": d.WidthPx, "diameter_px": d.DiameterPx, "angle_deg": d.AngleDeg,
 		"flux": d.Flux, "peak_dn": d.PeakDN, "peak_sigma": d.PeakSigma, "snr": d.SNR, "dark": d.Dark, "saturated": d.Saturated, "seen_in": d.SeenIn}
 	if len(d.Path) > 0 {
 		path := make([][2]float64, len(d.Path))

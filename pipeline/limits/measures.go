@@ -21,6 +21,7 @@ func Measures() *rules.Record[pipeline.Defect] {
 		num("length_um", func(d *pipeline.Defect) float64 { return d.LengthUM }),
 		num("width_um", func(d *pipeline.Defect) float64 { return d.WidthUM }),
 		num("diameter_um", func(d *pipeline.Defect) float64 { return d.DiameterUM }),
+		num("diameter_flux_um", func(d *pipeline.Defect) float64 { return d.DiameterFluxUM }),
 		num("angle_deg", func(d *pipeline.Defect) float64 { return d.AngleDeg }),
 		num("flux", func(d *pipeline.Defect) float64 { return d.Flux }),
 		num("peak_dn", func(d *pipeline.Defect) float64 { return d.PeakDN }),

@@ -15,7 +15,7 @@ var Factory = pipeline.Make(pipeline.Factory{
 	Type: "blobs", Version: "1", Scope: pipeline.ScopeView,
 	Summary: "Finds connected sets of pixels above two thresholds of the snr plane and measures each at half its own height.",
 	Reads: []string{pipeline.CorrectedPlane, pipeline.BackgroundPlane, pipeline.NoisePlane, pipeline.SNRPlane,
-		"region", "geometry", "saturated pixels"},
+		"region", "geometry", "saturated pixels", "calibration"},
 	Writes: []string{"defects"},
 }, Default, func(s Settings, _ pipeline.Environment) (pipeline.Stage, error) { return stage{s}, nil })
 

@@ -89,6 +89,41 @@ func TestDefectOfASpot(t *testing.T) {
 	}
 }
 
+// A spot of sigma 1 px and flux 2π·50 under a curve that gives 20 µm for it, with a lamp
+// 10 % up: sized by flux / 1.1; not when it is saturated, or twice as wide as the blur.
+func TestSmallDefectsAreSizedByFlux(t *testing.T) {
+	spot := func(x, y float64) float64 { return 50 * math.Exp(-((x-80)*(x-80)+(y-90)*(y-90))/2) }
+	curve := pipeline.Sizing{Exponent: 1.5, FluxDNPx: 2 * math.Pi * 50, ReferenceUM: 20, MinUM: 5, MaxUM: 50, Residual: 0.1, BlurWidthPx: 3}
+	sized := func(change func(*pipeline.Item, *pipeline.Sizing)) pipeline.Defect {
+		it, c := item(spot), curve
+		change(it, &c)
+		it.Calibration = &pipeline.Calibration{Sizing: &c}
+		return run(t, it, plain)[0]
+	}
+	d := sized(func(*pipeline.Item, *pipeline.Sizing) {})
+	if math.Abs(d.DiameterFluxUM-20) > 0.5 || d.DiameterFluxUncertaintyUM < 0.1*d.DiameterFluxUM || d.DiameterUM < 25 {
+		t.Errorf("got %v ± %v µm by flux, %v by outline", d.DiameterFluxUM, d.DiameterFluxUncertaintyUM, d.DiameterUM)
+	}
+	brighter := sized(func(it *pipeline.Item, _ *pipeline.Sizing) {
+		it.Prove(pipeline.Proof{Name: pipeline.ProofLight, Value: 1.1, Unit: "1", OK: true})
+	})
+	if got, want := brighter.DiameterFluxUM/d.DiameterFluxUM, math.Pow(1/1.1, 1/1.5); math.Abs(got-want) > 1e-6 {
+		t.Errorf("a brighter lamp scales by %v, want %v", got, want)
+	}
+	for name, change := range map[string]func(*pipeline.Item, *pipeline.Sizing){
+		"saturated": func(it *pipeline.Item, _ *pipeline.Sizing) {
+			it.SaturatedAt = raster.NewMask(side, side)
+			it.SaturatedAt.Set(80, 90, true)
+		},
+		"resolved":     func(_ *pipeline.Item, c *pipeline.Sizing) { c.BlurWidthPx = 1 },
+		"out of range": func(_ *pipeline.Item, c *pipeline.Sizing) { c.MinUM, c.MaxUM = 30, 60 },
+	} {
+		if d := sized(change); d.DiameterFluxUM != 0 || d.DiameterFluxUncertaintyUM != 0 {
+			t.Errorf("%s: sized %v µm by flux", name, d.DiameterFluxUM)
+		}
+	}
+}
+
 func TestDarkAndSaturated(t *testing.T) {
 	it := item(func(x, y float64) float64 { return gauss(x, y, 60, 60, -50) + gauss(x, y, 140, 140, 200) })
 	it.SaturatedAt = raster.NewMask(side, side)

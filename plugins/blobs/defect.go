@@ -19,6 +19,7 @@ func (st stage) defect(item *pipeline.Item, b raster.Blemish, spans []raster.Spa
 		Saturated: touches(item.SaturatedAt, spans),
 		Box:       pipeline.Box{X0: b.X0, Y0: b.Y0, X1: b.X1, Y1: b.Y1},
 	}
+	SizeByFlux(&d, item)
 	for _, p := range b.Path {
 		d.Path = append(d.Path, pipeline.Point(p))
 	}
@@ -31,6 +32,28 @@ func (st stage) defect(item *pipeline.Item, b raster.Blemish, spans []raster.Spa
 		d.EdgeDistanceUM = zone.EdgeDistancePx(b.X, b.Y) * scale
 	}
 	return d
+}
+
+// SizeByFlux sets the diameter by the calibration's sizing curve where the outline does
+// not tell it: a compact, bright defect under twice the blur that is not saturated. Where
+// the light was proven as a share of the calibrated one, the flux is divided by it.
+func SizeByFlux(d *pipeline.Defect, item *pipeline.Item) {
+	if item.Calibration == nil || item.Calibration.Sizing == nil || d.Dark || d.Saturated || d.Kind != pipeline.Dig {
+		return
+	}
+	curve := *item.Calibration.Sizing
+	if curve.Resolved(d.DiameterPx) {
+		return
+	}
+	flux := d.Flux
+	for _, p := range item.Proofs {
+		if p.Name == pipeline.ProofLight && p.Unit == "1" && p.OK && p.Value > 0 {
+			flux = d.Flux / p.Value
+		}
+	}
+	if um, uncertainty, ok := curve.DiameterUM(flux, d.SNR); ok {
+		d.DiameterFluxUM, d.DiameterFluxUncertaintyUM = um, uncertainty
+	}
 }
 
 // touches reports whether a pixel of the spans, or one beside them, is in the mask: the

@@ -579,34 +579,36 @@ func (x *DefectRef) GetId() int32 {
 
 // Defect is one surface imperfection.
 type Defect struct {
-	state          protoimpl.MessageState `protogen:"open.v1"`
-	Id             int32                  `protobuf:"varint,1,opt,name=id,proto3" json:"id,omitempty"`
-	Kind           string                 `protobuf:"bytes,2,opt,name=kind,proto3" json:"kind,omitempty"`
-	View           string                 `protobuf:"bytes,3,opt,name=view,proto3" json:"view,omitempty"`
-	Zone           string                 `protobuf:"bytes,4,opt,name=zone,proto3" json:"zone,omitempty"`
-	Place          *Place                 `protobuf:"bytes,5,opt,name=place,proto3" json:"place,omitempty"`
-	EdgeDistanceUm float64                `protobuf:"fixed64,6,opt,name=edge_distance_um,json=edgeDistanceUm,proto3" json:"edge_distance_um,omitempty"`
-	AreaPx         int32                  `protobuf:"varint,7,opt,name=area_px,json=areaPx,proto3" json:"area_px,omitempty"`
-	AreaUm2        float64                `protobuf:"fixed64,8,opt,name=area_um2,json=areaUm2,proto3" json:"area_um2,omitempty"`
-	LengthUm       float64                `protobuf:"fixed64,9,opt,name=length_um,json=lengthUm,proto3" json:"length_um,omitempty"`
-	WidthUm        float64                `protobuf:"fixed64,10,opt,name=width_um,json=widthUm,proto3" json:"width_um,omitempty"`
-	DiameterUm     float64                `protobuf:"fixed64,11,opt,name=diameter_um,json=diameterUm,proto3" json:"diameter_um,omitempty"`
-	LengthPx       float64                `protobuf:"fixed64,12,opt,name=length_px,json=lengthPx,proto3" json:"length_px,omitempty"`
-	WidthPx        float64                `protobuf:"fixed64,13,opt,name=width_px,json=widthPx,proto3" json:"width_px,omitempty"`
-	DiameterPx     float64                `protobuf:"fixed64,14,opt,name=diameter_px,json=diameterPx,proto3" json:"diameter_px,omitempty"`
-	AngleDeg       float64                `protobuf:"fixed64,15,opt,name=angle_deg,json=angleDeg,proto3" json:"angle_deg,omitempty"`
-	Flux           float64                `protobuf:"fixed64,16,opt,name=flux,proto3" json:"flux,omitempty"`
-	PeakDn         float64                `protobuf:"fixed64,17,opt,name=peak_dn,json=peakDn,proto3" json:"peak_dn,omitempty"`
-	PeakSigma      float64                `protobuf:"fixed64,18,opt,name=peak_sigma,json=peakSigma,proto3" json:"peak_sigma,omitempty"`
-	Snr            float64                `protobuf:"fixed64,19,opt,name=snr,proto3" json:"snr,omitempty"`
-	Dark           bool                   `protobuf:"varint,20,opt,name=dark,proto3" json:"dark,omitempty"`
-	Saturated      bool                   `protobuf:"varint,21,opt,name=saturated,proto3" json:"saturated,omitempty"`
-	Box            *Box                   `protobuf:"bytes,22,opt,name=box,proto3" json:"box,omitempty"`
-	Path           []*Point               `protobuf:"bytes,23,rep,name=path,proto3" json:"path,omitempty"`
-	SeenIn         []string               `protobuf:"bytes,24,rep,name=seen_in,json=seenIn,proto3" json:"seen_in,omitempty"`
-	MergedFrom     []*DefectRef           `protobuf:"bytes,25,rep,name=merged_from,json=mergedFrom,proto3" json:"merged_from,omitempty"`
-	unknownFields  protoimpl.UnknownFields
-	sizeCache      protoimpl.SizeCache
+	state                     protoimpl.MessageState `protogen:"open.v1"`
+	Id                        int32                  `protobuf:"varint,1,opt,name=id,proto3" json:"id,omitempty"`
+	Kind                      string                 `protobuf:"bytes,2,opt,name=kind,proto3" json:"kind,omitempty"`
+	View                      string                 `protobuf:"bytes,3,opt,name=view,proto3" json:"view,omitempty"`
+	Zone                      string                 `protobuf:"bytes,4,opt,name=zone,proto3" json:"zone,omitempty"`
+	Place                     *Place                 `protobuf:"bytes,5,opt,name=place,proto3" json:"place,omitempty"`
+	EdgeDistanceUm            float64                `protobuf:"fixed64,6,opt,name=edge_distance_um,json=edgeDistanceUm,proto3" json:"edge_distance_um,omitempty"`
+	AreaPx                    int32                  `protobuf:"varint,7,opt,name=area_px,json=areaPx,proto3" json:"area_px,omitempty"`
+	AreaUm2                   float64                `protobuf:"fixed64,8,opt,name=area_um2,json=areaUm2,proto3" json:"area_um2,omitempty"`
+	LengthUm                  float64                `protobuf:"fixed64,9,opt,name=length_um,json=lengthUm,proto3" json:"length_um,omitempty"`
+	WidthUm                   float64                `protobuf:"fixed64,10,opt,name=width_um,json=widthUm,proto3" json:"width_um,omitempty"`
+	DiameterUm                float64                `protobuf:"fixed64,11,opt,name=diameter_um,json=diameterUm,proto3" json:"diameter_um,omitempty"`
+	LengthPx                  float64                `protobuf:"fixed64,12,opt,name=length_px,json=lengthPx,proto3" json:"length_px,omitempty"`
+	WidthPx                   float64                `protobuf:"fixed64,13,opt,name=width_px,json=widthPx,proto3" json:"width_px,omitempty"`
+	DiameterPx                float64                `protobuf:"fixed64,14,opt,name=diameter_px,json=diameterPx,proto3" json:"diameter_px,omitempty"`
+	AngleDeg                  float64                `protobuf:"fixed64,15,opt,name=angle_deg,json=angleDeg,proto3" json:"angle_deg,omitempty"`
+	Flux                      float64                `protobuf:"fixed64,16,opt,name=flux,proto3" json:"flux,omitempty"`
+	PeakDn                    float64                `protobuf:"fixed64,17,opt,name=peak_dn,json=peakDn,proto3" json:"peak_dn,omitempty"`
+	PeakSigma                 float64                `protobuf:"fixed64,18,opt,name=peak_sigma,json=peakSigma,proto3" json:"peak_sigma,omitempty"`
+	Snr                       float64                `protobuf:"fixed64,19,opt,name=snr,proto3" json:"snr,omitempty"`
+	Dark                      bool                   `protobuf:"varint,20,opt,name=dark,proto3" json:"dark,omitempty"`
+	Saturated                 bool                   `protobuf:"varint,21,opt,name=saturated,proto3" json:"saturated,omitempty"`
+	Box                       *Box                   `protobuf:"bytes,22,opt,name=box,proto3" json:"box,omitempty"`
+	Path                      []*Point               `protobuf:"bytes,23,rep,name=path,proto3" json:"path,omitempty"`
+	SeenIn                    []string               `protobuf:"bytes,24,rep,name=seen_in,json=seenIn,proto3" json:"seen_in,omitempty"`
+	MergedFrom                []*DefectRef           `protobuf:"bytes,25,rep,name=merged_from,json=mergedFrom,proto3" json:"merged_from,omitempty"`
+	DiameterFluxUm            float64                `protobuf:"fixed64,26,opt,name=diameter_flux_um,json=diameterFluxUm,proto3" json:"diameter_flux_um,omitempty"`
+	DiameterFluxUncertaintyUm float64                `protobuf:"fixed64,27,opt,name=diameter_flux_uncertainty_um,json=diameterFluxUncertaintyUm,proto3" json:"diameter_flux_uncertainty_um,omitempty"`
+	unknownFields             protoimpl.UnknownFields
+	sizeCache                 protoimpl.SizeCache
 }
 
 func (x *Defect) Reset() {
@@ -812,6 +814,20 @@ func (x *Defect) GetMergedFrom() []*DefectRef {
 		return x.MergedFrom
 	}
 	return nil
+}
+
+func (x *Defect) GetDiameterFluxUm() float64 {
+	if x != nil {
+		return x.DiameterFluxUm
+	}
+	return 0
+}
+
+func (x *Defect) GetDiameterFluxUncertaintyUm() float64 {
+	if x != nil {
+		return x.DiameterFluxUncertaintyUm
+	}
+	return 0
 }
 
 // Measurement is a number that a stage took.
@@ -1676,7 +1692,7 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\x02y1\x18\x04 \x01(\x05R\x02y1\"/\n" +
 	"\tDefectRef\x12\x12\n" +
 	"\x04view\x18\x01 \x01(\tR\x04view\x12\x0e\n" +
-	"\x02id\x18\x02 \x01(\x05R\x02id\"\xf5\x05\n" +
+	"\x02id\x18\x02 \x01(\x05R\x02id\"\xe0\x06\n" +
 	"\x06Defect\x12\x0e\n" +
 	"\x02id\x18\x01 \x01(\x05R\x02id\x12\x12\n" +
 	"\x04kind\x18\x02 \x01(\tR\x04kind\x12\x12\n" +
@@ -1707,7 +1723,9 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\x04path\x18\x17 \x03(\v2\x19.lapgate.inspect.v1.PointR\x04path\x12\x17\n" +
 	"\aseen_in\x18\x18 \x03(\tR\x06seenIn\x12>\n" +
 	"\vmerged_from\x18\x19 \x03(\v2\x1d.lapgate.inspect.v1.DefectRefR\n" +
-	"mergedFrom\"K\n" +
+	"mergedFrom\x12(\n" +
+	"\x10diameter_flux_um\x18\x1a \x01(\x01R\x0ediameterFluxUm\x12?\n" +
+	"\x1cdiameter_flux_uncertainty_um\x18\x1b \x01(\x01R\x19diameterFluxUncertaintyUm\"K\n" +
 	"\vMeasurement\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x12\n" +

@@ -1554,43 +1554,45 @@ func (x *DefectRef) GetId() int32 {
 // Defect is one surface imperfection as the stage found it. The host fills in what is
 // in µm, and the zone, where a stage leaves them 0 or empty.
 type Defect struct {
-	state          protoimpl.MessageState `protogen:"open.v1"`
-	Kind           string                 `protobuf:"bytes,1,opt,name=kind,proto3" json:"kind,omitempty"`
-	XPx            float64                `protobuf:"fixed64,2,opt,name=x_px,json=xPx,proto3" json:"x_px,omitempty"`
-	YPx            float64                `protobuf:"fixed64,3,opt,name=y_px,json=yPx,proto3" json:"y_px,omitempty"`
-	AreaPx         int32                  `protobuf:"varint,4,opt,name=area_px,json=areaPx,proto3" json:"area_px,omitempty"`
-	LengthPx       float64                `protobuf:"fixed64,5,opt,name=length_px,json=lengthPx,proto3" json:"length_px,omitempty"`
-	WidthPx        float64                `protobuf:"fixed64,6,opt,name=width_px,json=widthPx,proto3" json:"width_px,omitempty"`
-	DiameterPx     float64                `protobuf:"fixed64,7,opt,name=diameter_px,json=diameterPx,proto3" json:"diameter_px,omitempty"`
-	AngleDeg       float64                `protobuf:"fixed64,8,opt,name=angle_deg,json=angleDeg,proto3" json:"angle_deg,omitempty"`
-	Flux           float64                `protobuf:"fixed64,9,opt,name=flux,proto3" json:"flux,omitempty"`
-	PeakDn         float64                `protobuf:"fixed64,10,opt,name=peak_dn,json=peakDn,proto3" json:"peak_dn,omitempty"`
-	PeakSigma      float64                `protobuf:"fixed64,11,opt,name=peak_sigma,json=peakSigma,proto3" json:"peak_sigma,omitempty"`
-	Snr            float64                `protobuf:"fixed64,12,opt,name=snr,proto3" json:"snr,omitempty"`
-	Dark           bool                   `protobuf:"varint,13,opt,name=dark,proto3" json:"dark,omitempty"`
-	Saturated      bool                   `protobuf:"varint,14,opt,name=saturated,proto3" json:"saturated,omitempty"`
-	X0             int32                  `protobuf:"varint,15,opt,name=x0,proto3" json:"x0,omitempty"`
-	Y0             int32                  `protobuf:"varint,16,opt,name=y0,proto3" json:"y0,omitempty"`
-	X1             int32                  `protobuf:"varint,17,opt,name=x1,proto3" json:"x1,omitempty"`
-	Y1             int32                  `protobuf:"varint,18,opt,name=y1,proto3" json:"y1,omitempty"`
-	PathXy         []float64              `protobuf:"fixed64,19,rep,packed,name=path_xy,json=pathXy,proto3" json:"path_xy,omitempty"`
-	Zone           string                 `protobuf:"bytes,20,opt,name=zone,proto3" json:"zone,omitempty"`
-	Id             int32                  `protobuf:"varint,21,opt,name=id,proto3" json:"id,omitempty"`
-	UUm            float64                `protobuf:"fixed64,22,opt,name=u_um,json=uUm,proto3" json:"u_um,omitempty"`
-	VUm            float64                `protobuf:"fixed64,23,opt,name=v_um,json=vUm,proto3" json:"v_um,omitempty"`
-	AreaUm2        float64                `protobuf:"fixed64,24,opt,name=area_um2,json=areaUm2,proto3" json:"area_um2,omitempty"`
-	LengthUm       float64                `protobuf:"fixed64,25,opt,name=length_um,json=lengthUm,proto3" json:"length_um,omitempty"`
-	WidthUm        float64                `protobuf:"fixed64,26,opt,name=width_um,json=widthUm,proto3" json:"width_um,omitempty"`
-	DiameterUm     float64                `protobuf:"fixed64,27,opt,name=diameter_um,json=diameterUm,proto3" json:"diameter_um,omitempty"`
-	EdgeDistanceUm float64                `protobuf:"fixed64,28,opt,name=edge_distance_um,json=edgeDistanceUm,proto3" json:"edge_distance_um,omitempty"`
-	View           string                 `protobuf:"bytes,29,opt,name=view,proto3" json:"view,omitempty"`
-	SeenIn         []string               `protobuf:"bytes,30,rep,name=seen_in,json=seenIn,proto3" json:"seen_in,omitempty"`
-	MergedFrom     []*DefectRef           `protobuf:"bytes,31,rep,name=merged_from,json=mergedFrom,proto3" json:"merged_from,omitempty"`
-	PartUUm        float64                `protobuf:"fixed64,32,opt,name=part_u_um,json=partUUm,proto3" json:"part_u_um,omitempty"`
-	PartVUm        float64                `protobuf:"fixed64,33,opt,name=part_v_um,json=partVUm,proto3" json:"part_v_um,omitempty"`
-	PartAngleKnown bool                   `protobuf:"varint,34,opt,name=part_angle_known,json=partAngleKnown,proto3" json:"part_angle_known,omitempty"`
-	unknownFields  protoimpl.UnknownFields
-	sizeCache      protoimpl.SizeCache
+	state                     protoimpl.MessageState `protogen:"open.v1"`
+	Kind                      string                 `protobuf:"bytes,1,opt,name=kind,proto3" json:"kind,omitempty"`
+	XPx                       float64                `protobuf:"fixed64,2,opt,name=x_px,json=xPx,proto3" json:"x_px,omitempty"`
+	YPx                       float64                `protobuf:"fixed64,3,opt,name=y_px,json=yPx,proto3" json:"y_px,omitempty"`
+	AreaPx                    int32                  `protobuf:"varint,4,opt,name=area_px,json=areaPx,proto3" json:"area_px,omitempty"`
+	LengthPx                  float64                `protobuf:"fixed64,5,opt,name=length_px,json=lengthPx,proto3" json:"length_px,omitempty"`
+	WidthPx                   float64                `protobuf:"fixed64,6,opt,name=width_px,json=widthPx,proto3" json:"width_px,omitempty"`
+	DiameterPx                float64                `protobuf:"fixed64,7,opt,name=diameter_px,json=diameterPx,proto3" json:"diameter_px,omitempty"`
+	AngleDeg                  float64                `protobuf:"fixed64,8,opt,name=angle_deg,json=angleDeg,proto3" json:"angle_deg,omitempty"`
+	Flux                      float64                `protobuf:"fixed64,9,opt,name=flux,proto3" json:"flux,omitempty"`
+	PeakDn                    float64                `protobuf:"fixed64,10,opt,name=peak_dn,json=peakDn,proto3" json:"peak_dn,omitempty"`
+	PeakSigma                 float64                `protobuf:"fixed64,11,opt,name=peak_sigma,json=peakSigma,proto3" json:"peak_sigma,omitempty"`
+	Snr                       float64                `protobuf:"fixed64,12,opt,name=snr,proto3" json:"snr,omitempty"`
+	Dark                      bool                   `protobuf:"varint,13,opt,name=dark,proto3" json:"dark,omitempty"`
+	Saturated                 bool                   `protobuf:"varint,14,opt,name=saturated,proto3" json:"saturated,omitempty"`
+	X0                        int32                  `protobuf:"varint,15,opt,name=x0,proto3" json:"x0,omitempty"`
+	Y0                        int32                  `protobuf:"varint,16,opt,name=y0,proto3" json:"y0,omitempty"`
+	X1                        int32                  `protobuf:"varint,17,opt,name=x1,proto3" json:"x1,omitempty"`
+	Y1                        int32                  `protobuf:"varint,18,opt,name=y1,proto3" json:"y1,omitempty"`
+	PathXy                    []float64              `protobuf:"fixed64,19,rep,packed,name=path_xy,json=pathXy,proto3" json:"path_xy,omitempty"`
+	Zone                      string                 `protobuf:"bytes,20,opt,name=zone,proto3" json:"zone,omitempty"`
+	Id                        int32                  `protobuf:"varint,21,opt,name=id,proto3" json:"id,omitempty"`
+	UUm                       float64                `protobuf:"fixed64,22,opt,name=u_um,json=uUm,proto3" json:"u_um,omitempty"`
+	VUm                       float64                `protobuf:"fixed64,23,opt,name=v_um,json=vUm,proto3" json:"v_um,omitempty"`
+	AreaUm2                   float64                `protobuf:"fixed64,24,opt,name=area_um2,json=areaUm2,proto3" json:"area_um2,omitempty"`
+	LengthUm                  float64                `protobuf:"fixed64,25,opt,name=length_um,json=lengthUm,proto3" json:"length_um,omitempty"`
+	WidthUm                   float64                `protobuf:"fixed64,26,opt,name=width_um,json=widthUm,proto3" json:"width_um,omitempty"`
+	DiameterUm                float64                `protobuf:"fixed64,27,opt,name=diameter_um,json=diameterUm,proto3" json:"diameter_um,omitempty"`
+	EdgeDistanceUm            float64                `protobuf:"fixed64,28,opt,name=edge_distance_um,json=edgeDistanceUm,proto3" json:"edge_distance_um,omitempty"`
+	View                      string                 `protobuf:"bytes,29,opt,name=view,proto3" json:"view,omitempty"`
+	SeenIn                    []string               `protobuf:"bytes,30,rep,name=seen_in,json=seenIn,proto3" json:"seen_in,omitempty"`
+	MergedFrom                []*DefectRef           `protobuf:"bytes,31,rep,name=merged_from,json=mergedFrom,proto3" json:"merged_from,omitempty"`
+	PartUUm                   float64                `protobuf:"fixed64,32,opt,name=part_u_um,json=partUUm,proto3" json:"part_u_um,omitempty"`
+	PartVUm                   float64                `protobuf:"fixed64,33,opt,name=part_v_um,json=partVUm,proto3" json:"part_v_um,omitempty"`
+	PartAngleKnown            bool                   `protobuf:"varint,34,opt,name=part_angle_known,json=partAngleKnown,proto3" json:"part_angle_known,omitempty"`
+	DiameterFluxUm            float64                `protobuf:"fixed64,35,opt,name=diameter_flux_um,json=diameterFluxUm,proto3" json:"diameter_flux_um,omitempty"`
+	DiameterFluxUncertaintyUm float64                `protobuf:"fixed64,36,opt,name=diameter_flux_uncertainty_um,json=diameterFluxUncertaintyUm,proto3" json:"diameter_flux_uncertainty_um,omitempty"`
+	unknownFields             protoimpl.UnknownFields
+	sizeCache                 protoimpl.SizeCache
 }
 
 func (x *Defect) Reset() {
@@ -1859,6 +1861,20 @@ func (x *Defect) GetPartAngleKnown() bool {
 		return x.PartAngleKnown
 	}
 	return false
+}
+
+func (x *Defect) GetDiameterFluxUm() float64 {
+	if x != nil {
+		return x.DiameterFluxUm
+	}
+	return 0
+}
+
+func (x *Defect) GetDiameterFluxUncertaintyUm() float64 {
+	if x != nil {
+		return x.DiameterFluxUncertaintyUm
+	}
+	return 0
 }
 
 // Measurement is a number that the stage took.
@@ -2646,7 +2662,7 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x06height\x18\x06 \x01(\x05R\x06height\"/\n" +
 	"\tDefectRef\x12\x12\n" +
 	"\x04view\x18\x01 \x01(\tR\x04view\x12\x0e\n" +
-	"\x02id\x18\x02 \x01(\x05R\x02id\"\xef\x06\n" +
+	"\x02id\x18\x02 \x01(\x05R\x02id\"\xda\a\n" +
 	"\x06Defect\x12\x12\n" +
 	"\x04kind\x18\x01 \x01(\tR\x04kind\x12\x11\n" +
 	"\x04x_px\x18\x02 \x01(\x01R\x03xPx\x12\x11\n" +
@@ -2686,7 +2702,9 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"mergedFrom\x12\x1a\n" +
 	"\tpart_u_um\x18  \x01(\x01R\apartUUm\x12\x1a\n" +
 	"\tpart_v_um\x18! \x01(\x01R\apartVUm\x12(\n" +
-	"\x10part_angle_known\x18\" \x01(\bR\x0epartAngleKnown\"K\n" +
+	"\x10part_angle_known\x18\" \x01(\bR\x0epartAngleKnown\x12(\n" +
+	"\x10diameter_flux_um\x18# \x01(\x01R\x0ediameterFluxUm\x12?\n" +
+	"\x1cdiameter_flux_uncertainty_um\x18$ \x01(\x01R\x19diameterFluxUncertaintyUm\"K\n" +
 	"\vMeasurement\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x12\n" +
