@@ -14,9 +14,6 @@ import (
 	"github.com/spf13/cobra"
 
 	"lapgate/configs"
-	"lapgate/pipeline"
-	"lapgate/pipeline/calibrate"
-	"lapgate/pipeline/raster/files"
 	"lapgate/pipeline/render"
 )
 
@@ -130,26 +127,6 @@ func (d *demo) runClient(args []string, out *os.File) error {
 	}
 	if err := cmd.Run(); err != nil {
 		return fmt.Errorf("%s %s: %w", d.client, args[0], err)
-	}
-	return nil
-}
-
-// calibrateViews makes the calibration of every view; both lines have the same camera.
-func (d *demo) calibrateViews() error {
-	for _, v := range d.scene.Views {
-		d.say("calibrating view %s", v.Name)
-		from := func(kind string) string { return d.path("calibration/" + v.Name + "/" + kind) }
-		made, err := calibrate.FromFolders(calibrate.Request{Camera: d.scene.Camera.ID, Light: v.Light, Mode: "demo",
-			Capture: pipeline.Capture{ExposureUS: d.scene.Camera.ExposureUS, GainDB: d.scene.Camera.GainDB, BlackLevel: d.scene.Camera.BlackLevelDN},
-			Scale:   pipeline.Scale{UMPerPx: d.scene.Camera.UMPerPx, Source: "stated"},
-			MadeAt:  time.Now().UTC().Format(time.RFC3339), Rules: calibrate.DefaultRules()},
-			calibrate.Folders{Dark: from("dark"), Stray: from("stray"), Response: from("response")}, files.Options{})
-		if err != nil {
-			return err
-		}
-		if err := calibrate.Write(d.path("calibrations/"+v.Name), made); err != nil {
-			return err
-		}
 	}
 	return nil
 }
