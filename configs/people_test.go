@@ -31,6 +31,13 @@ func TestPeople(t *testing.T) {
 			t.Errorf("%s: got %v, want %s", text, err, is)
 		}
 	}
+	dir := t.TempDir()
+	if err := os.WriteFile(filepath.Join(dir, "people.yaml"), []byte("format: 1\npeople: [{name: X, roles: [boss]}]\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	if p, err := ValidateFolder(dir, nil); err != nil || len(p) != 1 || p[0].Path != "people[0].roles[0]" {
+		t.Errorf("validated: %v, %v, want the role to be refused", p, err)
+	}
 	if got, err := LoadPeople(""); got != nil || err != nil {
 		t.Errorf("no list: got %v, %v", got, err)
 	}

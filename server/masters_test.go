@@ -2,6 +2,8 @@ package server_test
 
 import (
 	"context"
+	"fmt"
+	"math"
 	"slices"
 	"strings"
 	"testing"
@@ -11,6 +13,7 @@ import (
 	"google.golang.org/grpc/status"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/raster"
 	"lapgate/proto/inspectpb"
 	"lapgate/server/ledger"
 )
@@ -277,4 +280,65 @@ func TestStandingOfMastersAndStations(t *testing.T) {
 	if _, err := r.Heartbeat(ctx, &inspectpb.HeartbeatRequest{Line: "A"}); status.Code(err) != codes.InvalidArgument {
 		t.Errorf("a heartbeat without station: %v, want InvalidArgument", err)
 	}
+}
+
+// A lamp that fades by 2 % a shift: the peak of the master's dig falls with it, measured
+// by the real stages. The warning comes before the first missed master.
+func TestAFadingLampIsWarnedOfBeforeTheFirstMissedMaster(t *testing.T) {
+	recipe := strings.Replace(masterRecipe, "at_least: 65,", "measure: peak_sigma, at_least: LEAST,", 1)
+	// First at no bound, to see where the peak starts; then with one at 75 % of it.
+	r := newRig(t, rigOptions{recipe: strings.Replace(recipe, "LEAST", "0", 1), clock: &clock{at: time.Now().UTC().Truncate(time.Hour)}})
+	fade := func(r *rig, shift int) {
+		t.Helper()
+		l := r.line()
+		r.clock.advance(8 * time.Hour)
+		for i, view := range []string{"ring", "bar"} {
+			raw := dimmed(uint64(shift*10+i), 11, 0.4*math.Pow(0.98, float64(shift)))
+			h := header("M-DIG", view, raw)
+			h.Attempt, h.Purpose, h.Captured = shift+1, pipeline.Master, r.clock.now()
+			l.show(h, raw)
+		}
+		l.finish()
+	}
+	history := func(r *rig) []*inspectpb.MasterCheck {
+		t.Helper()
+		c, err := r.masters.ListChecks(context.Background(), &inspectpb.ListChecksRequest{Master: "M-DIG"})
+		must(t, err)
+		return c.Checks
+	}
+	fade(r, 0)
+	first := history(r)[0].GetValue()
+	if first < 10 {
+		t.Fatalf("the dig starts at %.1f sigma, want one that is well seen", first)
+	}
+	r = newRig(t, rigOptions{recipe: strings.Replace(recipe, "LEAST", fmt.Sprintf("%.2f", 0.75*first), 1), clock: &clock{at: time.Now().UTC().Truncate(time.Hour)}})
+	warned, missed := -1, -1
+	for shift := 0; shift < 40 && missed < 0; shift++ {
+		fade(r, shift)
+		if history(r)[0].Result == inspectpb.CheckResult_CHECK_RESULT_FAIL {
+			missed = shift
+			break
+		}
+		m, err := r.masters.ListMasters(context.Background(), &inspectpb.ListMastersRequest{})
+		must(t, err)
+		for _, one := range m.Masters {
+			if one.Master == "M-DIG" && one.Warning != "" && warned < 0 {
+				warned = shift
+				t.Logf("shift %d: %s", shift, one.Warning)
+			}
+		}
+	}
+	if missed < 8 || warned < 3 || warned >= missed {
+		t.Errorf("warned in shift %d, first missed in shift %d; want the warning before, and not within the first showings", warned, missed)
+	}
+	t.Logf("warned in shift %d, first missed in shift %d", warned, missed)
+}
+
+// dimmed is frame with the disc's light at a share.
+func dimmed(seed uint64, diameter, share float64) raster.Raw {
+	raw, dark := frame(seed, diameter), frame(seed, 0)
+	for i := range raw.Data {
+		raw.Data[i] = dark.Data[i] + byte(math.Round(share*float64(int(raw.Data[i])-int(dark.Data[i]))))
+	}
+	return raw
 }

@@ -54,6 +54,7 @@ type site struct {
 	bin     string
 	dir     string
 	address string
+	flags   []string // of the server, beside the usual
 	server  *exec.Cmd
 }
 
@@ -116,8 +117,9 @@ func freeAddress(t *testing.T) string {
 // serve starts the server and waits until it listens.
 func (s *site) serve() {
 	s.t.Helper()
-	s.server = exec.Command(filepath.Join(s.bin, "lapgated"), "serve", "--listen", s.address, "--ledger", s.path("ledger.db"),
-		"--recipes", s.path("recipes"), "--calibrations", s.path("calibrations"), "--images", "", "--log-level", "warn", "--development")
+	args := append([]string{"serve", "--listen", s.address, "--ledger", s.path("ledger.db"),
+		"--recipes", s.path("recipes"), "--calibrations", s.path("calibrations"), "--images", "", "--log-level", "warn", "--development"}, s.flags...)
+	s.server = exec.Command(filepath.Join(s.bin, "lapgated"), args...)
 	s.server.Stderr = os.Stderr
 	s.check(s.server.Start())
 	for range 200 {

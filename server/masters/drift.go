@@ -32,22 +32,14 @@ func Drift(history []ledger.MasterCheck, since time.Time) string {
 	for _, c := range list {
 		times, values = append(times, hours(c.At)), append(values, *c.Value)
 	}
-	trend, err := yield.NewTrend(times, values)
-	if err != nil || !trend.Moves(driftConfidence) {
+	ahead := driftAhead * -times[0] / float64(len(times)-1)
+	a, ok, err := yield.FindApproach(times, values, newest.Low, newest.High, ahead, driftConfidence)
+	if err != nil || !ok { // an error: all showings are of one moment
 		return ""
 	}
-	between := -times[0] / float64(len(times)-1)
-	for _, bound := range []*float64{newest.Low, newest.High} {
-		if bound == nil {
-			continue
-		}
-		if at, ok := trend.Crossing(0, *bound); ok && at <= driftAhead*between {
-			when := newest.At.Add(time.Duration(math.Round(at * float64(time.Hour))))
-			return fmt.Sprintf("%s of master %s went from %.4g to %.4g over %d showings; at this pace it meets its bound %g at %s", newest.Measure, newest.Master,
-				trend.At(times[0]), trend.At(0), len(list), *bound, when.UTC().Format("2006-01-02 15:04 MST"))
-		}
-	}
-	return ""
+	when := newest.At.Add(time.Duration(math.Round(a.At * float64(time.Hour))))
+	return fmt.Sprintf("%s of master %s went from %.4g to %.4g over %d showings; at this pace it meets its bound %g at %s", newest.Measure, newest.Master,
+		a.Trend.At(times[0]), a.Trend.At(0), len(list), a.Bound, when.UTC().Format("2006-01-02 15:04 MST"))
 }
 
 // alike returns the showings that may be compared with the newest, oldest first.

@@ -72,3 +72,31 @@ func (r Trend) Crossing(from, bound float64) (at float64, ok bool) {
 	}
 	return from + ahead, true
 }
+
+// Approach is a bound that a measure is on its way to.
+type Approach struct {
+	Trend
+	Bound float64
+	At    float64 // when the line meets it
+}
+
+// FindApproach fits values over rising times and returns the bound that the line meets
+// within ahead of the last time; low or high may be nil for no bound. ok is false where it
+// meets none so soon, or where the slope may be chance at the two-sided confidence.
+func FindApproach(times, values []float64, low, high *float64, ahead, confidence float64) (a Approach, ok bool, err error) {
+	a.Trend, err = NewTrend(times, values)
+	if err != nil || !a.Moves(confidence) {
+		return a, false, err
+	}
+	last := times[len(times)-1]
+	for _, bound := range []*float64{low, high} {
+		if bound == nil {
+			continue
+		}
+		if at, meets := a.Crossing(last, *bound); meets && at <= last+ahead {
+			a.Bound, a.At = *bound, at
+			return a, true, nil
+		}
+	}
+	return a, false, nil
+}

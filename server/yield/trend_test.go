@@ -54,3 +54,29 @@ func TestTrendMovesAndCrosses(t *testing.T) {
 		}
 	}
 }
+
+func TestFindApproach(t *testing.T) {
+	times, values := []float64{0, 1, 2, 3, 4, 5}, []float64{10, 9.1, 7.9, 7.05, 6, 4.95} // about 10 − t
+	two, twelve := 2.0, 12.0
+	for name, c := range map[string]struct {
+		low, high *float64
+		ahead     float64
+		ok        bool
+	}{
+		"soon":     {&two, &twelve, 3.5, true},
+		"not soon": {&two, nil, 2.5, false},
+		"away":     {nil, &twelve, 100, false},
+		"no bound": {nil, nil, 100, false},
+	} {
+		a, ok, err := FindApproach(times, values, c.low, c.high, c.ahead, 0.95)
+		if err != nil || ok != c.ok || ok && (a.Bound != two || math.Abs(a.At-8) > 0.1) {
+			t.Errorf("%s: got %+v, %v, %v", name, a, ok, err)
+		}
+	}
+	if _, ok, err := FindApproach(times, []float64{5, 5.2, 4.9, 5.1, 4.8, 5.05}, &two, nil, 100, 0.95); ok || err != nil {
+		t.Errorf("noise approaches a bound (%v)", err)
+	}
+	if _, _, err := FindApproach(times[:2], values[:2], &two, nil, 1, 0.95); err == nil {
+		t.Error("two points make a trend")
+	}
+}
