@@ -28,6 +28,12 @@ func (m *made) apply(item *pipeline.Item, stage string) error {
 	if m.coverage != nil {
 		item.Coverage = *m.coverage
 	}
+	if m.coverageMap != nil {
+		item.CoverageMap = m.coverageMap
+	}
+	if m.grid != nil {
+		item.Grid = m.grid
+	}
 	item.Truncated = item.Truncated || m.truncated
 	item.Measurements = append(slices.Clip(item.Measurements), m.measurements...)
 	item.Proofs = append(slices.Clip(item.Proofs), m.proofs...)

@@ -20,6 +20,8 @@ type made struct {
 	defects      []pipeline.Defect
 	replace      bool
 	coverage     *pipeline.Coverage
+	coverageMap  *pipeline.CoverageMap
+	grid         *raster.Grid
 	bad, hot     *raster.Mask
 	truncated    bool
 	hold         string
@@ -39,7 +41,7 @@ type checker struct {
 func (a *checker) check(res *stagepb.RunResponse) (made, error) {
 	a.res = res
 	a.m.truncated, a.m.hold = res.GetTruncated(), shorten(res.GetHold())
-	err := firstError(a.onlyDeclared, a.numbers, a.masks, a.place, a.planes, a.coverage, a.defects)
+	err := firstError(a.onlyDeclared, a.numbers, a.masks, a.place, a.planes, a.cells, a.coverage, a.defects)
 	return a.m, err
 }
 
@@ -60,6 +62,7 @@ func (a *checker) onlyDeclared() error {
 		{a.res.GetRegion() != nil, stagepb.ReadsRegion}, {a.res.GetGeometry() != nil, "geometry"}, {a.res.GetCoverage() != nil, "coverage"},
 		{len(a.res.GetDefects()) > 0 || a.res.GetReplaceDefects(), stagepb.ReadsDefects},
 		{a.res.GetBadPixels() != nil, stagepb.ReadsBadPixels}, {a.res.GetSaturatedPixels() != nil, stagepb.ReadsSaturatedPixels},
+		{a.res.GetGrid() != nil, stagepb.ReadsGrid}, {a.res.GetCoverageMap() != nil, stagepb.ReadsCoverageMap},
 	} {
 		if w.given && !a.writes(w.name) {
 			return fmt.Errorf("it wrote %s, but says that it writes %q", w.name, a.described.GetWrites())

@@ -3,6 +3,7 @@ package outside
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"lapgate/pipeline"
 	"lapgate/proto/stagepb"
@@ -114,5 +115,31 @@ func (a *checker) coverage() error {
 		return fmt.Errorf("coverage: the share rose from %g to %g; a stage outside may only lower it", a.item.Coverage.Share, c.Share)
 	}
 	a.m.coverage = &c
+	return nil
+}
+
+// cells checks the grid and the map of what would have been found.
+func (a *checker) cells() (err error) {
+	if a.m.grid, err = stagepb.ToGrid(a.res.GetGrid()); err != nil {
+		return err
+	}
+	if g := a.m.grid; g != nil {
+		w, h := a.size()
+		if w > 0 && (g.Columns != (w+g.CellPx-1)/g.CellPx || g.Rows != (h+g.CellPx-1)/g.CellPx) {
+			return fmt.Errorf("grid: got %d × %d cells of %d px, they do not fit the frame of %d × %d px", g.Columns, g.Rows, g.CellPx, w, h)
+		}
+		for i := range g.Level {
+			if !finite(g.Level[i], g.Noise[i]) || g.Noise[i] < 0 || g.Inside[i] < 0 || g.Valid[i] < 0 {
+				return fmt.Errorf("grid: cell %d has level %g, noise %g, %d and %d px; want finite numbers and none below 0", i, g.Level[i], g.Noise[i], g.Inside[i], g.Valid[i])
+			}
+		}
+	}
+	if a.m.coverageMap, err = stagepb.ToCoverageMap(a.res.GetCoverageMap()); err != nil || a.m.coverageMap == nil {
+		return err
+	}
+	m := a.m.coverageMap
+	if s := []float64{m.NoisyShare, m.UnseenShare, m.SaturatedShare}; !finite(s...) || slices.Min(s) < 0 || slices.Max(s) > 1 {
+		return fmt.Errorf("coverage map: shares %v, want 0 to 1", s)
+	}
 	return nil
 }

@@ -91,24 +91,29 @@ func (h *Host) Status() Status {
 
 // Close ends the stage's process. Twice is no error.
 func (h *Host) Close() error {
-	h.change(Closed, "closed")
+	h.change(Closed, "closed", nil)
 	<-h.over
 	return nil
 }
 
 // change sets the state and tells those who wait for one. Closed is for ever.
-func (h *Host) change(s State, why string) {
+func (h *Host) change(s State, why string, p *process) {
 	h.mu.Lock()
-	defer h.mu.Unlock()
 	if h.status.State == Closed {
+		h.mu.Unlock()
 		return
 	}
-	h.status.State, h.status.LastError, h.status.Since = s, why, time.Now()
-	if s != Up {
-		h.proc = nil
+	if h.status.State == Restarting && s == Up {
+		h.status.Restarts++
 	}
+	h.status.State, h.status.LastError, h.status.Since, h.proc = s, why, time.Now(), p
+	status := h.status
 	close(h.changed)
 	h.changed = make(chan struct{})
+	h.mu.Unlock()
+	if h.set.Changed != nil {
+		h.set.Changed(status)
+	}
 }
 
 // now returns the process, the state and what will be closed when that changes.
@@ -169,7 +174,7 @@ func (h *Host) outlive(p *process) *process {
 	}
 	why := p.withLog(p.death()).Error()
 	h.log.Error("stage outside ended; it is restarted", "stage", h.set.Name, "why", why)
-	h.change(Restarting, why)
+	h.change(Restarting, why, nil)
 	failures := 1
 	if p.answered.Load() {
 		failures = 0
@@ -183,7 +188,7 @@ func (h *Host) successor(why string, failures int) *process {
 	for ; ; failures++ {
 		if !h.spend() {
 			h.log.Error("stage outside is down: every unit that needs it is held", "stage", h.set.Name, "restarts", h.set.RestartBudget, "window", h.set.RestartWindow, "why", why)
-			h.change(Down, fmt.Sprintf("its %d restarts within %v are spent; mend the plug-in and restart the server. Its last end: %s", h.set.RestartBudget, h.set.RestartWindow, why))
+			h.change(Down, fmt.Sprintf("its %d restarts within %v are spent; mend the plug-in and restart the server. Its last end: %s", h.set.RestartBudget, h.set.RestartWindow, why), nil)
 			return nil
 		}
 		if !h.pause(failures) {
@@ -191,25 +196,12 @@ func (h *Host) successor(why string, failures int) *process {
 		}
 		p, err := h.relaunch()
 		if err == nil {
-			h.adopt(p, why)
+			h.change(Up, why, p)
 			return p
 		}
 		why = err.Error()
 		h.log.Error("stage outside does not start again", "stage", h.set.Name, "why", why)
-		h.change(Restarting, why)
-	}
-}
-
-// adopt brings a new process into service, unless the host was closed meanwhile.
-func (h *Host) adopt(p *process, why string) {
-	h.change(Up, why)
-	h.mu.Lock()
-	defer h.mu.Unlock()
-	if h.status.State == Up {
-		h.proc = p
-		h.status.Restarts++
-		close(h.changed)
-		h.changed = make(chan struct{})
+		h.change(Restarting, why, nil)
 	}
 }
 

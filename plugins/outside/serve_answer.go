@@ -76,6 +76,12 @@ func answerPlace(out *stagepb.RunResponse, was, is *pipeline.Item) (err error) {
 	if is.Coverage != was.Coverage {
 		out.Coverage = stagepb.FromCoverage(is.Coverage)
 	}
+	if is.CoverageMap != was.CoverageMap {
+		out.CoverageMap = stagepb.FromCoverageMap(is.CoverageMap)
+	}
+	if is.Grid != was.Grid {
+		out.Grid = stagepb.FromGrid(is.Grid)
+	}
 	return nil
 }
 

@@ -66,8 +66,12 @@ func (s *service) Open(_ context.Context, req *stagepb.OpenRequest) (*stagepb.Op
 	if err != nil {
 		return nil, status.Error(codes.InvalidArgument, err.Error())
 	}
+	others, err := stagepb.ToCalibrations(req.GetCalibrations(), s.memory.fetchCopy)
+	if err != nil {
+		return nil, status.Error(codes.InvalidArgument, err.Error())
+	}
 	var wanted string
-	env := pipeline.Environment{View: req.GetView(), Calibration: cal, Geometry: stagepb.ToGeometry(req.GetGeometry()), ReadFile: readSent(req.GetFiles(), &wanted)}
+	env := pipeline.Environment{View: req.GetView(), Calibration: cal, Calibrations: others, Geometry: stagepb.ToGeometry(req.GetGeometry()), ReadFile: readSent(req.GetFiles(), &wanted)}
 	stage, settings, err := s.factory.New(decodeText(req.GetSettingsJson()), env)
 	if err != nil && wanted != "" {
 		return &stagepb.OpenResponse{WantedFile: wanted}, nil

@@ -115,6 +115,9 @@ func (r *remote) open(ctx context.Context, p *process, s *slot) (*stagepb.OpenRe
 		if req.Calibration, err = stagepb.FromCalibration(r.env.Calibration, p.packer(s)); err != nil {
 			return nil, err
 		}
+		if req.Calibrations, err = stagepb.FromCalibrations(r.env.Calibrations); err != nil {
+			return nil, err
+		}
 	}
 	res, err := p.stub.Open(ctx, req)
 	if err != nil {

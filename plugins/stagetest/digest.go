@@ -43,6 +43,12 @@ func digestItem(h hash.Hash, item *pipeline.Item) {
 		}
 		digestMask(h, r.Mask())
 	}
+	if item.Grid != nil {
+		fmt.Fprintf(h, "%+v\n", *item.Grid)
+	}
+	if item.CoverageMap != nil {
+		fmt.Fprintf(h, "%+v\n", *item.CoverageMap)
+	}
 	digestDefects(h, item.Defects)
 	for _, v := range item.Views {
 		digestItem(h, v)

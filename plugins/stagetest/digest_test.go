@@ -35,6 +35,8 @@ func TestDigestSeesEveryChange(t *testing.T) {
 		"measurement": func(i *pipeline.Item) { i.Measurements[0].Value = 2 },
 		"proof":       func(i *pipeline.Item) { i.Prove(pipeline.Proof{Name: "part"}) },
 		"coverage":    func(i *pipeline.Item) { i.Coverage.MaskedPx = 1 },
+		"grid":        func(i *pipeline.Item) { i.Grid = &raster.Grid{CellPx: 1} },
+		"cells":       func(i *pipeline.Item) { i.CoverageMap = &pipeline.CoverageMap{DigUM: []int{1}} },
 		"new plane":   func(i *pipeline.Item) { i.SetPlane("noise", "DN", raster.NewPlane(1, 1)) },
 	} {
 		item := sample()

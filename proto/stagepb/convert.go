@@ -121,3 +121,63 @@ func toSpans(runs []int32, width, height int) ([]raster.Span, error) {
 	}
 	return out, nil
 }
+
+// FromGrid encodes a grid; nil is nil.
+func FromGrid(g *raster.Grid) *Grid {
+	if g == nil {
+		return nil
+	}
+	return &Grid{CellPx: int32(g.CellPx), Columns: int32(g.Columns), Rows: int32(g.Rows), Level: g.Level, Noise: g.Noise,
+		Inside: each(g.Inside, to32), Valid: each(g.Valid, to32), Filled: g.Filled}
+}
+
+// ToGrid decodes a grid and checks that every cell is there; nil is nil.
+func ToGrid(g *Grid) (*raster.Grid, error) {
+	if g == nil {
+		return nil, nil
+	}
+	out := &raster.Grid{CellPx: int(g.GetCellPx()), Columns: int(g.GetColumns()), Rows: int(g.GetRows()), Level: g.GetLevel(), Noise: g.GetNoise(),
+		Inside: each(g.GetInside(), from32), Valid: each(g.GetValid(), from32), Filled: g.GetFilled()}
+	return out, checkCells("grid", out.CellPx, out.Columns, out.Rows, len(out.Level), len(out.Noise), len(out.Inside), len(out.Valid), len(out.Filled))
+}
+
+// FromCoverageMap encodes a map; nil is nil.
+func FromCoverageMap(m *pipeline.CoverageMap) *CoverageMap {
+	if m == nil {
+		return nil
+	}
+	return &CoverageMap{CellPx: int32(m.CellPx), Columns: int32(m.Columns), Rows: int32(m.Rows), DigUm: each(m.DigUM, to32), ScratchUm: each(m.ScratchUM, to32),
+		NoisyShare: m.NoisyShare, UnseenShare: m.UnseenShare, SaturatedShare: m.SaturatedShare}
+}
+
+// ToCoverageMap decodes a map and checks that every cell is there; nil is nil.
+func ToCoverageMap(m *CoverageMap) (*pipeline.CoverageMap, error) {
+	if m == nil {
+		return nil, nil
+	}
+	out := &pipeline.CoverageMap{CellPx: int(m.GetCellPx()), Columns: int(m.GetColumns()), Rows: int(m.GetRows()), DigUM: each(m.GetDigUm(), from32), ScratchUM: each(m.GetScratchUm(), from32),
+		NoisyShare: m.GetNoisyShare(), UnseenShare: m.GetUnseenShare(), SaturatedShare: m.GetSaturatedShare()}
+	var lists []int
+	for _, n := range []int{len(out.DigUM), len(out.ScratchUM)} {
+		if n > 0 {
+			lists = append(lists, n)
+		}
+	}
+	return out, checkCells("coverage_map", out.CellPx, out.Columns, out.Rows, lists...)
+}
+
+func to32(v int) int32 { return int32(v) }
+
+func from32(v int32) int { return int(v) }
+
+func checkCells(what string, cell, columns, rows int, lists ...int) error {
+	if cell < 1 || columns < 1 || rows < 1 || columns > raster.MaxSide || rows > raster.MaxSide {
+		return fmt.Errorf("%s: got %d × %d cells of %d px, want 1 or more of each", what, columns, rows, cell)
+	}
+	for _, n := range lists {
+		if n != columns*rows {
+			return fmt.Errorf("%s: got %d values, want one for each of %d × %d cells", what, n, columns, rows)
+		}
+	}
+	return nil
+}

@@ -14,6 +14,8 @@ const (
 	ReadsDefects         = "defects"
 	ReadsBadPixels       = "bad pixels"
 	ReadsSaturatedPixels = "saturated pixels"
+	ReadsGrid            = "grid"
+	ReadsCoverageMap     = "coverage map"
 )
 
 // FromItem encodes what a stage reads of an item: frames for the raw plane, the planes
@@ -59,6 +61,12 @@ func fromMarks(out *Item, item *pipeline.Item, has func(string) bool) {
 	}
 	if has(ReadsBadPixels) {
 		out.BadPixels = FromMask(item.BadMask)
+	}
+	if has(ReadsGrid) {
+		out.Grid = FromGrid(item.Grid)
+	}
+	if has(ReadsCoverageMap) {
+		out.CoverageMap = FromCoverageMap(item.CoverageMap)
 	}
 	if has(ReadsSaturatedPixels) {
 		out.SaturatedPixels = FromMask(item.SaturatedAt)
@@ -126,5 +134,9 @@ func toMarks(out *pipeline.Item, in *Item) (err error) {
 	if out.SaturatedAt, err = ToMask(in.GetSaturatedPixels()); err != nil {
 		return fmt.Errorf("saturated_pixels: %w", err)
 	}
-	return nil
+	if out.Grid, err = ToGrid(in.GetGrid()); err != nil {
+		return err
+	}
+	out.CoverageMap, err = ToCoverageMap(in.GetCoverageMap())
+	return err
 }

@@ -30,28 +30,6 @@ func FromMessage(p *Pixels) ([]byte, error) {
 	return nil, fmt.Errorf("pixels: got none in the message")
 }
 
-// FromFrame encodes a frame.
-func FromFrame(f pipeline.Frame, pack Pack) (*Frame, error) {
-	pixels, err := pack(f.Raw.Data)
-	return &Frame{PixelFormat: uint32(f.Raw.Format), Width: int32(f.Raw.Width), Height: int32(f.Raw.Height), Stride: int32(f.Raw.Stride),
-		ExposureUs: f.Header.ExposureUS, GainDb: f.Header.GainDB, BlackLevel: f.Header.BlackLevel, Index: int32(f.Header.Index), Tags: f.Header.Tags, Pixels: pixels}, err
-}
-
-// ToFrame decodes a frame and checks its size.
-func ToFrame(f *Frame, fetch Fetch) (pipeline.Frame, error) {
-	raw := raster.Raw{Format: raster.PixelFormat(f.GetPixelFormat()), Width: int(f.GetWidth()), Height: int(f.GetHeight()), Stride: int(f.GetStride())}
-	var err error
-	if raw.Data, err = fetch(f.GetPixels()); err == nil {
-		err = raw.Check()
-	}
-	if err != nil {
-		return pipeline.Frame{}, fmt.Errorf("frame %d: %w", f.GetIndex(), err)
-	}
-	h := pipeline.FrameHeader{Tags: f.GetTags(), Index: int(f.GetIndex()), Stride: raw.Stride, Capture: pipeline.Capture{Format: raw.Format, Width: raw.Width, Height: raw.Height,
-		ExposureUS: f.GetExposureUs(), GainDB: f.GetGainDb(), BlackLevel: f.GetBlackLevel()}}
-	return pipeline.Frame{Header: h, Raw: raw}, nil
-}
-
 // FromPlane encodes a plane; rows are sent without gaps.
 func FromPlane(name string, p pipeline.NamedPlane, pack Pack) (*Plane, error) {
 	pix := p.Pixels

@@ -6,6 +6,7 @@ import (
 	"reflect"
 	"strings"
 	"testing"
+	"time"
 
 	"google.golang.org/protobuf/proto"
 
@@ -21,6 +22,14 @@ func fill(rng *rand.Rand, v reflect.Value) {
 		for i := range v.NumField() {
 			fill(rng, v.Field(i))
 		}
+	case reflect.Pointer:
+		if v.Type() == reflect.TypeFor[*raster.Plane]() {
+			return
+		}
+		v.Set(reflect.New(v.Type().Elem()))
+		fill(rng, v.Elem())
+	case reflect.Uint32:
+		v.SetUint(uint64(raster.Mono8))
 	case reflect.Slice:
 		v.Set(reflect.MakeSlice(v.Type(), 2, 2))
 		for i := range v.Len() {
@@ -79,13 +88,16 @@ func sampleItem(rng *rand.Rand) *pipeline.Item {
 			{Name: "clear", Spans: []raster.Span{{Y: 1, X0: 2, X1: 5}}, AreaMM2: 3, EquivalentDiameterMM: 2}, {Name: "rim", Spans: []raster.Span{{Y: 0, X0: 0, X1: 7}}}}),
 		Planes:       map[string]pipeline.NamedPlane{"snr": {Unit: "sigma", Pixels: plane, OriginX: 1, OriginY: 2, Step: 3}, "other": {Pixels: plane, Step: 1}},
 		Measurements: filled[[]pipeline.Measurement](rng), Proofs: filled[[]pipeline.Proof](rng), Defects: filled[[]pipeline.Defect](rng), Coverage: filled[pipeline.Coverage](rng)}
-	h0 := pipeline.FrameHeader{Tags: map[string]string{"tool": "7"}, View: "ring", Count: 1, Stride: raw.Stride,
-		Capture: pipeline.Capture{Format: raw.Format, Width: w, Height: h, ExposureUS: 900, GainDB: 2, BlackLevel: 6}}
+	item.Grid = &raster.Grid{CellPx: 4, Columns: 2, Rows: 1, Level: []float64{1, 2}, Noise: []float64{3, 4}, Inside: []int{5, 6}, Valid: []int{4, 6}, Filled: []bool{true, false}}
+	item.CoverageMap = &pipeline.CoverageMap{CellPx: 4, Columns: 2, Rows: 1, DigUM: []int{-1, 20}, ScratchUM: []int{0, 3}, NoisyShare: 0.1, UnseenShare: 0.2, SaturatedShare: 0.3}
+	degrees := 21.5
+	h0 := pipeline.FrameHeader{CameraID: "c1", FrameCounter: 1 << 40, SensorC: &degrees, Captured: time.Unix(12, 34).UTC(), Tags: map[string]string{"tool": "7"}, View: "ring", Count: 1, Stride: raw.Stride,
+		Capture: pipeline.Capture{Format: raw.Format, Width: w, Height: h, ExposureUS: 900, GainDB: 2, BlackLevel: 6, OffsetX: 1, OffsetY: 2, BinningX: 3, BinningY: 4}}
 	item.Frames = []pipeline.Frame{{Header: h0, Raw: raw}}
 	return item
 }
 
-var everything = []string{"raw", "snr", "other", ReadsRegion, ReadsDefects, ReadsBadPixels, ReadsSaturatedPixels}
+var everything = []string{"raw", "snr", "other", ReadsRegion, ReadsDefects, ReadsBadPixels, ReadsSaturatedPixels, ReadsGrid, ReadsCoverageMap}
 
 func TestItemRoundTrip(t *testing.T) {
 	rng := rand.New(rand.NewPCG(1, 2))
@@ -138,8 +150,23 @@ func TestOnlyWhatIsReadIsSent(t *testing.T) {
 func TestCalibrationRoundTrip(t *testing.T) {
 	dark := raster.NewPlane(3, 2)
 	dark.Set(2, 1, 5)
-	in := &pipeline.Calibration{Hash: "h", Dark: dark, Response: dark, BadPixels: []pipeline.PixelAt{{X: 1, Y: 2}},
-		Noise: pipeline.NoiseModel{GainDNPerE: 0.1, DarkDN: 2}, Scale: pipeline.Scale{UMPerPx: 10, UncertaintyUM: 0.1}}
+	in := filled[pipeline.Calibration](rand.New(rand.NewPCG(9, 9)))
+	in.Dark, in.Stray, in.Response, in.MadeAt, in.Scale.Source = dark, nil, dark, "", ""
+	checkCalibration(t, &in)
+	checkCalibration(t, &pipeline.Calibration{Hash: "h", Dark: dark, Response: dark, BadPixels: []pipeline.PixelAt{{X: 1, Y: 2}},
+		Noise: pipeline.NoiseModel{GainDNPerE: 0.1, DarkDN: 2}, Scale: pipeline.Scale{UMPerPx: 10, UncertaintyUM: 0.1}})
+	others, err := FromCalibrations(map[string]*pipeline.Calibration{"bar": &in, "none": nil})
+	if err != nil || len(others) != 1 || others["bar"].Dark != nil {
+		t.Fatalf("got %v, %v", others, err)
+	}
+	back, err := ToCalibrations(others, FromMessage)
+	if err != nil || back["bar"].Light != in.Light || !reflect.DeepEqual(back["bar"].Sizing, in.Sizing) {
+		t.Errorf("got %+v, %v", back, err)
+	}
+}
+
+func checkCalibration(t *testing.T, in *pipeline.Calibration) {
+	t.Helper()
 	m, err := FromCalibration(in, InMessage)
 	if err != nil {
 		t.Fatal(err)

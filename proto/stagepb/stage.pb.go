@@ -452,8 +452,14 @@ type Calibration struct {
 	Stray              *Plane                 `protobuf:"bytes,7,opt,name=stray,proto3" json:"stray,omitempty"`
 	Response           *Plane                 `protobuf:"bytes,8,opt,name=response,proto3" json:"response,omitempty"`
 	BadPixels          []*PixelAt             `protobuf:"bytes,9,rep,name=bad_pixels,json=badPixels,proto3" json:"bad_pixels,omitempty"`
-	unknownFields      protoimpl.UnknownFields
-	sizeCache          protoimpl.SizeCache
+	Camera             string                 `protobuf:"bytes,10,opt,name=camera,proto3" json:"camera,omitempty"`
+	Light              string                 `protobuf:"bytes,11,opt,name=light,proto3" json:"light,omitempty"`
+	Mode               string                 `protobuf:"bytes,12,opt,name=mode,proto3" json:"mode,omitempty"`
+	// What else was measured, as JSON: capture, distortion, sizing, sensor, reference,
+	// part_edge, fixed_pattern; keys as in a calibration's file, absent = not measured.
+	MoreJson      string `protobuf:"bytes,13,opt,name=more_json,json=moreJson,proto3" json:"more_json,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Calibration) Reset() {
@@ -547,6 +553,34 @@ func (x *Calibration) GetBadPixels() []*PixelAt {
 		return x.BadPixels
 	}
 	return nil
+}
+
+func (x *Calibration) GetCamera() string {
+	if x != nil {
+		return x.Camera
+	}
+	return ""
+}
+
+func (x *Calibration) GetLight() string {
+	if x != nil {
+		return x.Light
+	}
+	return ""
+}
+
+func (x *Calibration) GetMode() string {
+	if x != nil {
+		return x.Mode
+	}
+	return ""
+}
+
+func (x *Calibration) GetMoreJson() string {
+	if x != nil {
+		return x.MoreJson
+	}
+	return ""
 }
 
 // Planar maps pixels of a flat part to µm.
@@ -766,7 +800,9 @@ type OpenRequest struct {
 	Calibration  *Calibration           `protobuf:"bytes,3,opt,name=calibration,proto3" json:"calibration,omitempty"`
 	Geometry     *Geometry              `protobuf:"bytes,4,opt,name=geometry,proto3" json:"geometry,omitempty"`
 	// Files beside the recipe that an earlier answer asked for, by name.
-	Files         map[string][]byte `protobuf:"bytes,5,rep,name=files,proto3" json:"files,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
+	Files map[string][]byte `protobuf:"bytes,5,rep,name=files,proto3" json:"files,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
+	// Calibrations of all views of the recipe, by name, without their planes.
+	Calibrations  map[string]*Calibration `protobuf:"bytes,6,rep,name=calibrations,proto3" json:"calibrations,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -832,6 +868,13 @@ func (x *OpenRequest) GetGeometry() *Geometry {
 func (x *OpenRequest) GetFiles() map[string][]byte {
 	if x != nil {
 		return x.Files
+	}
+	return nil
+}
+
+func (x *OpenRequest) GetCalibrations() map[string]*Calibration {
+	if x != nil {
+		return x.Calibrations
 	}
 	return nil
 }
@@ -1061,15 +1104,25 @@ type Frame struct {
 	Width       int32  `protobuf:"varint,2,opt,name=width,proto3" json:"width,omitempty"`
 	Height      int32  `protobuf:"varint,3,opt,name=height,proto3" json:"height,omitempty"`
 	// Bytes between the starts of two rows.
-	Stride        int32             `protobuf:"varint,4,opt,name=stride,proto3" json:"stride,omitempty"`
-	ExposureUs    float64           `protobuf:"fixed64,5,opt,name=exposure_us,json=exposureUs,proto3" json:"exposure_us,omitempty"`
-	Index         int32             `protobuf:"varint,6,opt,name=index,proto3" json:"index,omitempty"`
-	Tags          map[string]string `protobuf:"bytes,7,rep,name=tags,proto3" json:"tags,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
-	GainDb        float64           `protobuf:"fixed64,8,opt,name=gain_db,json=gainDb,proto3" json:"gain_db,omitempty"`
-	BlackLevel    float64           `protobuf:"fixed64,9,opt,name=black_level,json=blackLevel,proto3" json:"black_level,omitempty"`
-	Pixels        *Pixels           `protobuf:"bytes,15,opt,name=pixels,proto3" json:"pixels,omitempty"`
-	unknownFields protoimpl.UnknownFields
-	sizeCache     protoimpl.SizeCache
+	Stride     int32             `protobuf:"varint,4,opt,name=stride,proto3" json:"stride,omitempty"`
+	ExposureUs float64           `protobuf:"fixed64,5,opt,name=exposure_us,json=exposureUs,proto3" json:"exposure_us,omitempty"`
+	Index      int32             `protobuf:"varint,6,opt,name=index,proto3" json:"index,omitempty"`
+	Tags       map[string]string `protobuf:"bytes,7,rep,name=tags,proto3" json:"tags,omitempty" protobuf_key:"bytes,1,opt,name=key" protobuf_val:"bytes,2,opt,name=value"`
+	GainDb     float64           `protobuf:"fixed64,8,opt,name=gain_db,json=gainDb,proto3" json:"gain_db,omitempty"`
+	BlackLevel float64           `protobuf:"fixed64,9,opt,name=black_level,json=blackLevel,proto3" json:"black_level,omitempty"`
+	CameraId   string            `protobuf:"bytes,10,opt,name=camera_id,json=cameraId,proto3" json:"camera_id,omitempty"`
+	// The camera's own; 0 = not given.
+	FrameCounter uint64 `protobuf:"varint,11,opt,name=frame_counter,json=frameCounter,proto3" json:"frame_counter,omitempty"`
+	// Nanoseconds since 1970 UTC; 0 = not given.
+	CapturedUnixNs int64    `protobuf:"varint,12,opt,name=captured_unix_ns,json=capturedUnixNs,proto3" json:"captured_unix_ns,omitempty"`
+	SensorC        *float64 `protobuf:"fixed64,13,opt,name=sensor_c,json=sensorC,proto3,oneof" json:"sensor_c,omitempty"`
+	OffsetX        int32    `protobuf:"varint,16,opt,name=offset_x,json=offsetX,proto3" json:"offset_x,omitempty"`
+	OffsetY        int32    `protobuf:"varint,17,opt,name=offset_y,json=offsetY,proto3" json:"offset_y,omitempty"`
+	BinningX       int32    `protobuf:"varint,18,opt,name=binning_x,json=binningX,proto3" json:"binning_x,omitempty"`
+	BinningY       int32    `protobuf:"varint,19,opt,name=binning_y,json=binningY,proto3" json:"binning_y,omitempty"`
+	Pixels         *Pixels  `protobuf:"bytes,15,opt,name=pixels,proto3" json:"pixels,omitempty"`
+	unknownFields  protoimpl.UnknownFields
+	sizeCache      protoimpl.SizeCache
 }
 
 func (x *Frame) Reset() {
@@ -1161,6 +1214,62 @@ func (x *Frame) GetGainDb() float64 {
 func (x *Frame) GetBlackLevel() float64 {
 	if x != nil {
 		return x.BlackLevel
+	}
+	return 0
+}
+
+func (x *Frame) GetCameraId() string {
+	if x != nil {
+		return x.CameraId
+	}
+	return ""
+}
+
+func (x *Frame) GetFrameCounter() uint64 {
+	if x != nil {
+		return x.FrameCounter
+	}
+	return 0
+}
+
+func (x *Frame) GetCapturedUnixNs() int64 {
+	if x != nil {
+		return x.CapturedUnixNs
+	}
+	return 0
+}
+
+func (x *Frame) GetSensorC() float64 {
+	if x != nil && x.SensorC != nil {
+		return *x.SensorC
+	}
+	return 0
+}
+
+func (x *Frame) GetOffsetX() int32 {
+	if x != nil {
+		return x.OffsetX
+	}
+	return 0
+}
+
+func (x *Frame) GetOffsetY() int32 {
+	if x != nil {
+		return x.OffsetY
+	}
+	return 0
+}
+
+func (x *Frame) GetBinningX() int32 {
+	if x != nil {
+		return x.BinningX
+	}
+	return 0
+}
+
+func (x *Frame) GetBinningY() int32 {
+	if x != nil {
+		return x.BinningY
 	}
 	return 0
 }
@@ -2108,6 +2217,209 @@ func (x *Coverage) GetMaskedPx() int64 {
 	return 0
 }
 
+// Grid is level and noise by cells, row by row.
+type Grid struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	CellPx        int32                  `protobuf:"varint,1,opt,name=cell_px,json=cellPx,proto3" json:"cell_px,omitempty"`
+	Columns       int32                  `protobuf:"varint,2,opt,name=columns,proto3" json:"columns,omitempty"`
+	Rows          int32                  `protobuf:"varint,3,opt,name=rows,proto3" json:"rows,omitempty"`
+	Level         []float64              `protobuf:"fixed64,4,rep,packed,name=level,proto3" json:"level,omitempty"`
+	Noise         []float64              `protobuf:"fixed64,5,rep,packed,name=noise,proto3" json:"noise,omitempty"`
+	Inside        []int32                `protobuf:"varint,6,rep,packed,name=inside,proto3" json:"inside,omitempty"`
+	Valid         []int32                `protobuf:"varint,7,rep,packed,name=valid,proto3" json:"valid,omitempty"`
+	Filled        []bool                 `protobuf:"varint,8,rep,packed,name=filled,proto3" json:"filled,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Grid) Reset() {
+	*x = Grid{}
+	mi := &file_stagepb_stage_proto_msgTypes[24]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Grid) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Grid) ProtoMessage() {}
+
+func (x *Grid) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[24]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Grid.ProtoReflect.Descriptor instead.
+func (*Grid) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
+}
+
+func (x *Grid) GetCellPx() int32 {
+	if x != nil {
+		return x.CellPx
+	}
+	return 0
+}
+
+func (x *Grid) GetColumns() int32 {
+	if x != nil {
+		return x.Columns
+	}
+	return 0
+}
+
+func (x *Grid) GetRows() int32 {
+	if x != nil {
+		return x.Rows
+	}
+	return 0
+}
+
+func (x *Grid) GetLevel() []float64 {
+	if x != nil {
+		return x.Level
+	}
+	return nil
+}
+
+func (x *Grid) GetNoise() []float64 {
+	if x != nil {
+		return x.Noise
+	}
+	return nil
+}
+
+func (x *Grid) GetInside() []int32 {
+	if x != nil {
+		return x.Inside
+	}
+	return nil
+}
+
+func (x *Grid) GetValid() []int32 {
+	if x != nil {
+		return x.Valid
+	}
+	return nil
+}
+
+func (x *Grid) GetFilled() []bool {
+	if x != nil {
+		return x.Filled
+	}
+	return nil
+}
+
+// CoverageMap says cell by cell what would have been found; 0 = outside the region,
+// -1 = nothing.
+type CoverageMap struct {
+	state          protoimpl.MessageState `protogen:"open.v1"`
+	CellPx         int32                  `protobuf:"varint,1,opt,name=cell_px,json=cellPx,proto3" json:"cell_px,omitempty"`
+	Columns        int32                  `protobuf:"varint,2,opt,name=columns,proto3" json:"columns,omitempty"`
+	Rows           int32                  `protobuf:"varint,3,opt,name=rows,proto3" json:"rows,omitempty"`
+	DigUm          []int32                `protobuf:"varint,4,rep,packed,name=dig_um,json=digUm,proto3" json:"dig_um,omitempty"`
+	ScratchUm      []int32                `protobuf:"varint,5,rep,packed,name=scratch_um,json=scratchUm,proto3" json:"scratch_um,omitempty"`
+	NoisyShare     float64                `protobuf:"fixed64,6,opt,name=noisy_share,json=noisyShare,proto3" json:"noisy_share,omitempty"`
+	UnseenShare    float64                `protobuf:"fixed64,7,opt,name=unseen_share,json=unseenShare,proto3" json:"unseen_share,omitempty"`
+	SaturatedShare float64                `protobuf:"fixed64,8,opt,name=saturated_share,json=saturatedShare,proto3" json:"saturated_share,omitempty"`
+	unknownFields  protoimpl.UnknownFields
+	sizeCache      protoimpl.SizeCache
+}
+
+func (x *CoverageMap) Reset() {
+	*x = CoverageMap{}
+	mi := &file_stagepb_stage_proto_msgTypes[25]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *CoverageMap) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*CoverageMap) ProtoMessage() {}
+
+func (x *CoverageMap) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[25]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use CoverageMap.ProtoReflect.Descriptor instead.
+func (*CoverageMap) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
+}
+
+func (x *CoverageMap) GetCellPx() int32 {
+	if x != nil {
+		return x.CellPx
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetColumns() int32 {
+	if x != nil {
+		return x.Columns
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetRows() int32 {
+	if x != nil {
+		return x.Rows
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetDigUm() []int32 {
+	if x != nil {
+		return x.DigUm
+	}
+	return nil
+}
+
+func (x *CoverageMap) GetScratchUm() []int32 {
+	if x != nil {
+		return x.ScratchUm
+	}
+	return nil
+}
+
+func (x *CoverageMap) GetNoisyShare() float64 {
+	if x != nil {
+		return x.NoisyShare
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetUnseenShare() float64 {
+	if x != nil {
+		return x.UnseenShare
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetSaturatedShare() float64 {
+	if x != nil {
+		return x.SaturatedShare
+	}
+	return 0
+}
+
 // Item is one view on its way, or the unit with its views.
 type Item struct {
 	state           protoimpl.MessageState `protogen:"open.v1"`
@@ -2124,13 +2436,15 @@ type Item struct {
 	SaturatedPixels *Mask                  `protobuf:"bytes,11,opt,name=saturated_pixels,json=saturatedPixels,proto3" json:"saturated_pixels,omitempty"`
 	Proofs          []*Proof               `protobuf:"bytes,12,rep,name=proofs,proto3" json:"proofs,omitempty"`
 	Truncated       bool                   `protobuf:"varint,13,opt,name=truncated,proto3" json:"truncated,omitempty"`
+	Grid            *Grid                  `protobuf:"bytes,14,opt,name=grid,proto3" json:"grid,omitempty"`
+	CoverageMap     *CoverageMap           `protobuf:"bytes,15,opt,name=coverage_map,json=coverageMap,proto3" json:"coverage_map,omitempty"`
 	unknownFields   protoimpl.UnknownFields
 	sizeCache       protoimpl.SizeCache
 }
 
 func (x *Item) Reset() {
 	*x = Item{}
-	mi := &file_stagepb_stage_proto_msgTypes[24]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2142,7 +2456,7 @@ func (x *Item) String() string {
 func (*Item) ProtoMessage() {}
 
 func (x *Item) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[24]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2155,7 +2469,7 @@ func (x *Item) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Item.ProtoReflect.Descriptor instead.
 func (*Item) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
 }
 
 func (x *Item) GetView() string {
@@ -2249,6 +2563,20 @@ func (x *Item) GetTruncated() bool {
 	return false
 }
 
+func (x *Item) GetGrid() *Grid {
+	if x != nil {
+		return x.Grid
+	}
+	return nil
+}
+
+func (x *Item) GetCoverageMap() *CoverageMap {
+	if x != nil {
+		return x.CoverageMap
+	}
+	return nil
+}
+
 // RunRequest runs an open stage on an item. It carries what the stage said it reads.
 type RunRequest struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
@@ -2262,7 +2590,7 @@ type RunRequest struct {
 
 func (x *RunRequest) Reset() {
 	*x = RunRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[25]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2274,7 +2602,7 @@ func (x *RunRequest) String() string {
 func (*RunRequest) ProtoMessage() {}
 
 func (x *RunRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[25]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2287,7 +2615,7 @@ func (x *RunRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunRequest.ProtoReflect.Descriptor instead.
 func (*RunRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
 }
 
 func (x *RunRequest) GetHandle() uint64 {
@@ -2331,14 +2659,16 @@ type RunResponse struct {
 	BadPixels       *Mask     `protobuf:"bytes,10,opt,name=bad_pixels,json=badPixels,proto3" json:"bad_pixels,omitempty"`
 	SaturatedPixels *Mask     `protobuf:"bytes,11,opt,name=saturated_pixels,json=saturatedPixels,proto3" json:"saturated_pixels,omitempty"`
 	// More defects were found than are told. It cannot be taken back.
-	Truncated     bool `protobuf:"varint,12,opt,name=truncated,proto3" json:"truncated,omitempty"`
+	Truncated     bool         `protobuf:"varint,12,opt,name=truncated,proto3" json:"truncated,omitempty"`
+	Grid          *Grid        `protobuf:"bytes,13,opt,name=grid,proto3" json:"grid,omitempty"`
+	CoverageMap   *CoverageMap `protobuf:"bytes,14,opt,name=coverage_map,json=coverageMap,proto3" json:"coverage_map,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *RunResponse) Reset() {
 	*x = RunResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[26]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2350,7 +2680,7 @@ func (x *RunResponse) String() string {
 func (*RunResponse) ProtoMessage() {}
 
 func (x *RunResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[26]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2363,7 +2693,7 @@ func (x *RunResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunResponse.ProtoReflect.Descriptor instead.
 func (*RunResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
 }
 
 func (x *RunResponse) GetRegion() *Region {
@@ -2450,6 +2780,20 @@ func (x *RunResponse) GetTruncated() bool {
 	return false
 }
 
+func (x *RunResponse) GetGrid() *Grid {
+	if x != nil {
+		return x.Grid
+	}
+	return nil
+}
+
+func (x *RunResponse) GetCoverageMap() *CoverageMap {
+	if x != nil {
+		return x.CoverageMap
+	}
+	return nil
+}
+
 // CloseRequest names what to close.
 type CloseRequest struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -2460,7 +2804,7 @@ type CloseRequest struct {
 
 func (x *CloseRequest) Reset() {
 	*x = CloseRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[27]
+	mi := &file_stagepb_stage_proto_msgTypes[29]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2472,7 +2816,7 @@ func (x *CloseRequest) String() string {
 func (*CloseRequest) ProtoMessage() {}
 
 func (x *CloseRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[27]
+	mi := &file_stagepb_stage_proto_msgTypes[29]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2485,7 +2829,7 @@ func (x *CloseRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseRequest.ProtoReflect.Descriptor instead.
 func (*CloseRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{29}
 }
 
 func (x *CloseRequest) GetHandle() uint64 {
@@ -2504,7 +2848,7 @@ type CloseResponse struct {
 
 func (x *CloseResponse) Reset() {
 	*x = CloseResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[28]
+	mi := &file_stagepb_stage_proto_msgTypes[30]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2516,7 +2860,7 @@ func (x *CloseResponse) String() string {
 func (*CloseResponse) ProtoMessage() {}
 
 func (x *CloseResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[28]
+	mi := &file_stagepb_stage_proto_msgTypes[30]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2529,7 +2873,7 @@ func (x *CloseResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseResponse.ProtoReflect.Descriptor instead.
 func (*CloseResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{30}
 }
 
 var File_stagepb_stage_proto protoreflect.FileDescriptor
@@ -2561,7 +2905,7 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\bproblems\x18\x02 \x03(\v2 .lapgate.stage.v1.SettingProblemR\bproblems\"%\n" +
 	"\aPixelAt\x12\f\n" +
 	"\x01x\x18\x01 \x01(\x05R\x01x\x12\f\n" +
-	"\x01y\x18\x02 \x01(\x05R\x01y\"\xf7\x02\n" +
+	"\x01y\x18\x02 \x01(\x05R\x01y\"\xd6\x03\n" +
 	"\vCalibration\x12\x12\n" +
 	"\x04hash\x18\x01 \x01(\tR\x04hash\x12\x1a\n" +
 	"\tum_per_px\x18\x02 \x01(\x01R\aumPerPx\x121\n" +
@@ -2573,7 +2917,12 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x05stray\x18\a \x01(\v2\x17.lapgate.stage.v1.PlaneR\x05stray\x123\n" +
 	"\bresponse\x18\b \x01(\v2\x17.lapgate.stage.v1.PlaneR\bresponse\x128\n" +
 	"\n" +
-	"bad_pixels\x18\t \x03(\v2\x19.lapgate.stage.v1.PixelAtR\tbadPixels\"\x95\x01\n" +
+	"bad_pixels\x18\t \x03(\v2\x19.lapgate.stage.v1.PixelAtR\tbadPixels\x12\x16\n" +
+	"\x06camera\x18\n" +
+	" \x01(\tR\x06camera\x12\x14\n" +
+	"\x05light\x18\v \x01(\tR\x05light\x12\x12\n" +
+	"\x04mode\x18\f \x01(\tR\x04mode\x12\x1b\n" +
+	"\tmore_json\x18\r \x01(\tR\bmoreJson\"\x95\x01\n" +
 	"\x06Planar\x12\x19\n" +
 	"\borigin_x\x18\x01 \x01(\x01R\aoriginX\x12\x19\n" +
 	"\borigin_y\x18\x02 \x01(\x01R\aoriginY\x12\x1a\n" +
@@ -2591,17 +2940,21 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x06planar\x18\x01 \x01(\v2\x18.lapgate.stage.v1.PlanarR\x06planar\x12<\n" +
 	"\n" +
 	"distortion\x18\x02 \x01(\v2\x1c.lapgate.stage.v1.DistortionR\n" +
-	"distortion\"\xb9\x02\n" +
+	"distortion\"\xee\x03\n" +
 	"\vOpenRequest\x12#\n" +
 	"\rsettings_json\x18\x01 \x01(\tR\fsettingsJson\x12\x12\n" +
 	"\x04view\x18\x02 \x01(\tR\x04view\x12?\n" +
 	"\vcalibration\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.CalibrationR\vcalibration\x126\n" +
 	"\bgeometry\x18\x04 \x01(\v2\x1a.lapgate.stage.v1.GeometryR\bgeometry\x12>\n" +
-	"\x05files\x18\x05 \x03(\v2(.lapgate.stage.v1.OpenRequest.FilesEntryR\x05files\x1a8\n" +
+	"\x05files\x18\x05 \x03(\v2(.lapgate.stage.v1.OpenRequest.FilesEntryR\x05files\x12S\n" +
+	"\fcalibrations\x18\x06 \x03(\v2/.lapgate.stage.v1.OpenRequest.CalibrationsEntryR\fcalibrations\x1a8\n" +
 	"\n" +
 	"FilesEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
-	"\x05value\x18\x02 \x01(\fR\x05value:\x028\x01\"\x7f\n" +
+	"\x05value\x18\x02 \x01(\fR\x05value:\x028\x01\x1a^\n" +
+	"\x11CalibrationsEntry\x12\x10\n" +
+	"\x03key\x18\x01 \x01(\tR\x03key\x123\n" +
+	"\x05value\x18\x02 \x01(\v2\x1d.lapgate.stage.v1.CalibrationR\x05value:\x028\x01\"\x7f\n" +
 	"\fOpenResponse\x12\x16\n" +
 	"\x06handle\x18\x01 \x01(\x04R\x06handle\x12\x1f\n" +
 	"\vwanted_file\x18\x02 \x01(\tR\n" +
@@ -2617,7 +2970,7 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x06Pixels\x127\n" +
 	"\x06shared\x18\x01 \x01(\v2\x1d.lapgate.stage.v1.SharedBytesH\x00R\x06shared\x12\x14\n" +
 	"\x04data\x18\x0f \x01(\fH\x00R\x04dataB\a\n" +
-	"\x05where\"\x83\x03\n" +
+	"\x05where\"\x8c\x05\n" +
 	"\x05Frame\x12!\n" +
 	"\fpixel_format\x18\x01 \x01(\rR\vpixelFormat\x12\x14\n" +
 	"\x05width\x18\x02 \x01(\x05R\x05width\x12\x16\n" +
@@ -2629,11 +2982,21 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x04tags\x18\a \x03(\v2!.lapgate.stage.v1.Frame.TagsEntryR\x04tags\x12\x17\n" +
 	"\again_db\x18\b \x01(\x01R\x06gainDb\x12\x1f\n" +
 	"\vblack_level\x18\t \x01(\x01R\n" +
-	"blackLevel\x120\n" +
+	"blackLevel\x12\x1b\n" +
+	"\tcamera_id\x18\n" +
+	" \x01(\tR\bcameraId\x12#\n" +
+	"\rframe_counter\x18\v \x01(\x04R\fframeCounter\x12(\n" +
+	"\x10captured_unix_ns\x18\f \x01(\x03R\x0ecapturedUnixNs\x12\x1e\n" +
+	"\bsensor_c\x18\r \x01(\x01H\x00R\asensorC\x88\x01\x01\x12\x19\n" +
+	"\boffset_x\x18\x10 \x01(\x05R\aoffsetX\x12\x19\n" +
+	"\boffset_y\x18\x11 \x01(\x05R\aoffsetY\x12\x1b\n" +
+	"\tbinning_x\x18\x12 \x01(\x05R\bbinningX\x12\x1b\n" +
+	"\tbinning_y\x18\x13 \x01(\x05R\bbinningY\x120\n" +
 	"\x06pixels\x18\x0f \x01(\v2\x18.lapgate.stage.v1.PixelsR\x06pixels\x1a7\n" +
 	"\tTagsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
-	"\x05value\x18\x02 \x01(\tR\x05value:\x028\x01\"\xf1\x01\n" +
+	"\x05value\x18\x02 \x01(\tR\x05value:\x028\x01B\v\n" +
+	"\t_sensor_c\"\xf1\x01\n" +
 	"\x05Plane\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x12\n" +
 	"\x04unit\x18\x02 \x01(\tR\x04unit\x12\x14\n" +
@@ -2724,7 +3087,27 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"background\x12\x14\n" +
 	"\x05noise\x18\x03 \x01(\x01R\x05noise\x12!\n" +
 	"\fsaturated_px\x18\x04 \x01(\x03R\vsaturatedPx\x12\x1b\n" +
-	"\tmasked_px\x18\x05 \x01(\x03R\bmaskedPx\"\x8c\x05\n" +
+	"\tmasked_px\x18\x05 \x01(\x03R\bmaskedPx\"\xbf\x01\n" +
+	"\x04Grid\x12\x17\n" +
+	"\acell_px\x18\x01 \x01(\x05R\x06cellPx\x12\x18\n" +
+	"\acolumns\x18\x02 \x01(\x05R\acolumns\x12\x12\n" +
+	"\x04rows\x18\x03 \x01(\x05R\x04rows\x12\x14\n" +
+	"\x05level\x18\x04 \x03(\x01R\x05level\x12\x14\n" +
+	"\x05noise\x18\x05 \x03(\x01R\x05noise\x12\x16\n" +
+	"\x06inside\x18\x06 \x03(\x05R\x06inside\x12\x14\n" +
+	"\x05valid\x18\a \x03(\x05R\x05valid\x12\x16\n" +
+	"\x06filled\x18\b \x03(\bR\x06filled\"\xf7\x01\n" +
+	"\vCoverageMap\x12\x17\n" +
+	"\acell_px\x18\x01 \x01(\x05R\x06cellPx\x12\x18\n" +
+	"\acolumns\x18\x02 \x01(\x05R\acolumns\x12\x12\n" +
+	"\x04rows\x18\x03 \x01(\x05R\x04rows\x12\x15\n" +
+	"\x06dig_um\x18\x04 \x03(\x05R\x05digUm\x12\x1d\n" +
+	"\n" +
+	"scratch_um\x18\x05 \x03(\x05R\tscratchUm\x12\x1f\n" +
+	"\vnoisy_share\x18\x06 \x01(\x01R\n" +
+	"noisyShare\x12!\n" +
+	"\funseen_share\x18\a \x01(\x01R\vunseenShare\x12'\n" +
+	"\x0fsaturated_share\x18\b \x01(\x01R\x0esaturatedShare\"\xfa\x05\n" +
 	"\x04Item\x12\x12\n" +
 	"\x04view\x18\x01 \x01(\tR\x04view\x12/\n" +
 	"\x06frames\x18\x02 \x03(\v2\x17.lapgate.stage.v1.FrameR\x06frames\x120\n" +
@@ -2740,12 +3123,14 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	" \x01(\v2\x16.lapgate.stage.v1.MaskR\tbadPixels\x12A\n" +
 	"\x10saturated_pixels\x18\v \x01(\v2\x16.lapgate.stage.v1.MaskR\x0fsaturatedPixels\x12/\n" +
 	"\x06proofs\x18\f \x03(\v2\x17.lapgate.stage.v1.ProofR\x06proofs\x12\x1c\n" +
-	"\ttruncated\x18\r \x01(\bR\ttruncated\"\x87\x01\n" +
+	"\ttruncated\x18\r \x01(\bR\ttruncated\x12*\n" +
+	"\x04grid\x18\x0e \x01(\v2\x16.lapgate.stage.v1.GridR\x04grid\x12@\n" +
+	"\fcoverage_map\x18\x0f \x01(\v2\x1d.lapgate.stage.v1.CoverageMapR\vcoverageMap\"\x87\x01\n" +
 	"\n" +
 	"RunRequest\x12\x16\n" +
 	"\x06handle\x18\x01 \x01(\x04R\x06handle\x12*\n" +
 	"\x04item\x18\x02 \x01(\v2\x16.lapgate.stage.v1.ItemR\x04item\x125\n" +
-	"\x06output\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.SharedBytesR\x06output\"\xdd\x04\n" +
+	"\x06output\x18\x03 \x01(\v2\x1d.lapgate.stage.v1.SharedBytesR\x06output\"\xcb\x05\n" +
 	"\vRunResponse\x120\n" +
 	"\x06region\x18\x01 \x01(\v2\x18.lapgate.stage.v1.RegionR\x06region\x126\n" +
 	"\bgeometry\x18\x02 \x01(\v2\x1a.lapgate.stage.v1.GeometryR\bgeometry\x12/\n" +
@@ -2760,7 +3145,9 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"bad_pixels\x18\n" +
 	" \x01(\v2\x16.lapgate.stage.v1.MaskR\tbadPixels\x12A\n" +
 	"\x10saturated_pixels\x18\v \x01(\v2\x16.lapgate.stage.v1.MaskR\x0fsaturatedPixels\x12\x1c\n" +
-	"\ttruncated\x18\f \x01(\bR\ttruncated\"&\n" +
+	"\ttruncated\x18\f \x01(\bR\ttruncated\x12*\n" +
+	"\x04grid\x18\r \x01(\v2\x16.lapgate.stage.v1.GridR\x04grid\x12@\n" +
+	"\fcoverage_map\x18\x0e \x01(\v2\x1d.lapgate.stage.v1.CoverageMapR\vcoverageMap\"&\n" +
 	"\fCloseRequest\x12\x16\n" +
 	"\x06handle\x18\x01 \x01(\x04R\x06handle\"\x0f\n" +
 	"\rCloseResponse*>\n" +
@@ -2790,7 +3177,7 @@ func file_stagepb_stage_proto_rawDescGZIP() []byte {
 }
 
 var file_stagepb_stage_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 31)
+var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 34)
 var file_stagepb_stage_proto_goTypes = []any{
 	(Scope)(0),                    // 0: lapgate.stage.v1.Scope
 	(*DescribeRequest)(nil),       // 1: lapgate.stage.v1.DescribeRequest
@@ -2817,13 +3204,16 @@ var file_stagepb_stage_proto_goTypes = []any{
 	(*Measurement)(nil),           // 22: lapgate.stage.v1.Measurement
 	(*Proof)(nil),                 // 23: lapgate.stage.v1.Proof
 	(*Coverage)(nil),              // 24: lapgate.stage.v1.Coverage
-	(*Item)(nil),                  // 25: lapgate.stage.v1.Item
-	(*RunRequest)(nil),            // 26: lapgate.stage.v1.RunRequest
-	(*RunResponse)(nil),           // 27: lapgate.stage.v1.RunResponse
-	(*CloseRequest)(nil),          // 28: lapgate.stage.v1.CloseRequest
-	(*CloseResponse)(nil),         // 29: lapgate.stage.v1.CloseResponse
-	nil,                           // 30: lapgate.stage.v1.OpenRequest.FilesEntry
-	nil,                           // 31: lapgate.stage.v1.Frame.TagsEntry
+	(*Grid)(nil),                  // 25: lapgate.stage.v1.Grid
+	(*CoverageMap)(nil),           // 26: lapgate.stage.v1.CoverageMap
+	(*Item)(nil),                  // 27: lapgate.stage.v1.Item
+	(*RunRequest)(nil),            // 28: lapgate.stage.v1.RunRequest
+	(*RunResponse)(nil),           // 29: lapgate.stage.v1.RunResponse
+	(*CloseRequest)(nil),          // 30: lapgate.stage.v1.CloseRequest
+	(*CloseResponse)(nil),         // 31: lapgate.stage.v1.CloseResponse
+	nil,                           // 32: lapgate.stage.v1.OpenRequest.FilesEntry
+	nil,                           // 33: lapgate.stage.v1.OpenRequest.CalibrationsEntry
+	nil,                           // 34: lapgate.stage.v1.Frame.TagsEntry
 }
 var file_stagepb_stage_proto_depIdxs = []int32{
 	0,  // 0: lapgate.stage.v1.DescribeResponse.scope:type_name -> lapgate.stage.v1.Scope
@@ -2836,50 +3226,56 @@ var file_stagepb_stage_proto_depIdxs = []int32{
 	9,  // 7: lapgate.stage.v1.Geometry.distortion:type_name -> lapgate.stage.v1.Distortion
 	7,  // 8: lapgate.stage.v1.OpenRequest.calibration:type_name -> lapgate.stage.v1.Calibration
 	10, // 9: lapgate.stage.v1.OpenRequest.geometry:type_name -> lapgate.stage.v1.Geometry
-	30, // 10: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
-	13, // 11: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
-	31, // 12: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
-	14, // 13: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
-	14, // 14: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
-	18, // 15: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
-	20, // 16: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
-	15, // 17: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
-	19, // 18: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
-	10, // 19: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
-	16, // 20: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
-	22, // 21: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
-	21, // 22: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
-	25, // 23: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
-	24, // 24: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
-	17, // 25: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
-	17, // 26: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
-	23, // 27: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
-	25, // 28: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
-	13, // 29: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
-	19, // 30: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
-	10, // 31: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
-	16, // 32: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
-	22, // 33: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
-	21, // 34: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
-	23, // 35: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
-	24, // 36: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
-	17, // 37: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
-	17, // 38: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
-	1,  // 39: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
-	3,  // 40: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
-	11, // 41: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
-	26, // 42: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
-	28, // 43: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
-	2,  // 44: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
-	5,  // 45: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
-	12, // 46: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
-	27, // 47: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
-	29, // 48: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
-	44, // [44:49] is the sub-list for method output_type
-	39, // [39:44] is the sub-list for method input_type
-	39, // [39:39] is the sub-list for extension type_name
-	39, // [39:39] is the sub-list for extension extendee
-	0,  // [0:39] is the sub-list for field type_name
+	32, // 10: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
+	33, // 11: lapgate.stage.v1.OpenRequest.calibrations:type_name -> lapgate.stage.v1.OpenRequest.CalibrationsEntry
+	13, // 12: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
+	34, // 13: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
+	14, // 14: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
+	14, // 15: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
+	18, // 16: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
+	20, // 17: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
+	15, // 18: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
+	19, // 19: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
+	10, // 20: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
+	16, // 21: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
+	22, // 22: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
+	21, // 23: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
+	27, // 24: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
+	24, // 25: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
+	17, // 26: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	17, // 27: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	23, // 28: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
+	25, // 29: lapgate.stage.v1.Item.grid:type_name -> lapgate.stage.v1.Grid
+	26, // 30: lapgate.stage.v1.Item.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
+	27, // 31: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
+	13, // 32: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
+	19, // 33: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
+	10, // 34: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
+	16, // 35: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
+	22, // 36: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
+	21, // 37: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
+	23, // 38: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
+	24, // 39: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
+	17, // 40: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	17, // 41: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	25, // 42: lapgate.stage.v1.RunResponse.grid:type_name -> lapgate.stage.v1.Grid
+	26, // 43: lapgate.stage.v1.RunResponse.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
+	7,  // 44: lapgate.stage.v1.OpenRequest.CalibrationsEntry.value:type_name -> lapgate.stage.v1.Calibration
+	1,  // 45: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
+	3,  // 46: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
+	11, // 47: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
+	28, // 48: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
+	30, // 49: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
+	2,  // 50: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
+	5,  // 51: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
+	12, // 52: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
+	29, // 53: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
+	31, // 54: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
+	50, // [50:55] is the sub-list for method output_type
+	45, // [45:50] is the sub-list for method input_type
+	45, // [45:45] is the sub-list for extension type_name
+	45, // [45:45] is the sub-list for extension extendee
+	0,  // [0:45] is the sub-list for field type_name
 }
 
 func init() { file_stagepb_stage_proto_init() }
@@ -2891,13 +3287,14 @@ func file_stagepb_stage_proto_init() {
 		(*Pixels_Shared)(nil),
 		(*Pixels_Data)(nil),
 	}
+	file_stagepb_stage_proto_msgTypes[14].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_stagepb_stage_proto_rawDesc), len(file_stagepb_stage_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   31,
+			NumMessages:   34,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
