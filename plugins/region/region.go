@@ -64,7 +64,7 @@ func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
 		st.find(item, raw)
 	case Circle:
 		x, y := st.centre(raw)
-		st.lay(item, raw, raster.Circle{X: x, Y: y, R: st.px(st.s.DiameterMM) / 2})
+		st.lay(item, raw, raster.Circle{X: x, Y: y, R: st.radiusPx(x, y, st.s.DiameterMM)})
 	case Polygon:
 		st.fill(item, polygonMask(raw.Width, raw.Height, st.s.Polygon), polygonArea(st.s.Polygon), polygonEdge(st.s.Polygon))
 	case MaskImage:
@@ -78,10 +78,31 @@ func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
 	return ctx.Err()
 }
 
-// umPerPx is the scale at the middle of the view.
-func (st *stage) umPerPx() float64 { _, _, s := st.geometry.ToStation(0, 0); return s }
+// directions is over how many directions a radius is averaged: a lens that distorts shows
+// a circle off its middle as an oval.
+const directions = 16
 
-func (st *stage) px(mm float64) float64 { return mm * 1000 / st.umPerPx() }
+// radiusPx returns the radius in px of a circle of a diameter in mm about (x, y).
+func (st *stage) radiusPx(x, y, diameterMM float64) float64 {
+	g, sum := st.geometry.WithOrigin(x, y), 0.
+	for k := range directions {
+		sin, cos := math.Sincos(2 * math.Pi * float64(k) / directions)
+		px, py := g.ToPixel(500*diameterMM*cos, 500*diameterMM*sin)
+		sum += math.Hypot(px-x, py-y)
+	}
+	return math.Round(1e9*sum/directions) / 1e9 // so that a whole radius is whole
+}
+
+// diameterMM is the inverse of radiusPx.
+func (st *stage) diameterMM(c raster.Circle) float64 {
+	g, sum := st.geometry.WithOrigin(c.X, c.Y), 0.
+	for k := range directions {
+		sin, cos := math.Sincos(2 * math.Pi * float64(k) / directions)
+		u, v, _ := g.ToStation(c.X+c.R*cos, c.Y+c.R*sin)
+		sum += math.Hypot(u, v)
+	}
+	return sum / directions / 500
+}
 
 func (st *stage) centre(raw *raster.Plane) (x, y float64) {
 	if st.s.CentreXPx == 0 && st.s.CentreYPx == 0 {
@@ -99,12 +120,13 @@ func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
 		search.Reach = float64(min(raw.Width, raw.Height)) / 4
 	}
 	// The search is wider than the tolerance, so that a part of the wrong size is measured.
-	search.RMin = max(st.px(s.DiameterMM-2*s.DiameterToleranceMM)/2, 2)
-	search.RMax = max(st.px(s.DiameterMM+2*s.DiameterToleranceMM)/2, search.RMin+1)
+	search.RMin = max(st.radiusPx(search.X, search.Y, s.DiameterMM-2*s.DiameterToleranceMM), 2)
+	search.RMax = max(st.radiusPx(search.X, search.Y, s.DiameterMM+2*s.DiameterToleranceMM), search.RMin+1)
 	fit, err := raster.FindCircle(raw, search)
 	proof := pipeline.Proof{Name: "part", Unit: "mm", Low: s.DiameterMM - s.DiameterToleranceMM, High: s.DiameterMM + s.DiameterToleranceMM}
 	if err != nil {
 		proof.Reason = "part not found: " + err.Error()
+		st.otherSize(&proof, raw, search)
 		item.Prove(proof)
 		st.leaveEmpty(item, raw)
 		return
@@ -112,6 +134,15 @@ func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
 	st.prove(item, proof, fit)
 	st.measure(item, fit)
 	st.lay(item, raw, fit.Circle)
+}
+
+// otherSize looks for a part of quite another size, so that the reason can name it.
+func (st *stage) otherSize(proof *pipeline.Proof, raw *raster.Plane, search raster.CircleSearch) {
+	search.RMin, search.RMax = max(0.6*st.px(st.s.DiameterMM)/2, 2), max(1.4*st.px(st.s.DiameterMM)/2, 3)
+	if fit, err := raster.FindCircle(raw, search); err == nil {
+		proof.Value = 2 * fit.R * st.umPerPx() / 1000
+		proof.Reason = fmt.Sprintf("found a diameter of %.3f mm, want %.3f to %.3f: another part", proof.Value, proof.Low, proof.High)
+	}
 }
 
 func (st *stage) leaveEmpty(item *pipeline.Item, raw *raster.Plane) {
@@ -122,7 +153,7 @@ func (st *stage) leaveEmpty(item *pipeline.Item, raw *raster.Plane) {
 
 func (st *stage) prove(item *pipeline.Item, proof pipeline.Proof, fit raster.CircleFit) {
 	s := st.s
-	proof.Value = 2 * fit.R * st.umPerPx() / 1000
+	proof.Value = st.diameterMM(fit.Circle)
 	share := float64(fit.Points) / raster.DefaultRays
 	switch {
 	case proof.Value < proof.Low || proof.Value > proof.High:
@@ -144,7 +175,7 @@ func (st *stage) prove(item *pipeline.Item, proof pipeline.Proof, fit raster.Cir
 }
 
 func (st *stage) measure(item *pipeline.Item, fit raster.CircleFit) {
-	item.Measure("part_diameter_mm", 2*fit.R*st.umPerPx()/1000, "mm")
+	item.Measure("part_diameter_mm", st.diameterMM(fit.Circle), "mm")
 	item.Measure("part_edge_points", float64(fit.Points), "")
 	item.Measure("part_edge_rms_px", fit.RMS, "px")
 	item.Measure("part_edge_width_px", fit.EdgeWidth, "px")
@@ -160,7 +191,7 @@ func (st *stage) lay(item *pipeline.Item, raw *raster.Plane, c raster.Circle) {
 	for _, z := range list {
 		outer, inner := z.outer(st.s), z.InnerDiameterMM
 		area := math.Pi / 4 * (outer*outer - inner*inner)
-		ro, ri := st.px(outer)/2, st.px(inner)/2
+		ro, ri := st.radiusPx(c.X, c.Y, outer), st.radiusPx(c.X, c.Y, inner)
 		zones = append(zones, pipeline.Zone{Name: z.Name, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi),
 			Spans: ringSpans(raw.Width, raw.Height, c.X, c.Y, ri, ro), EdgeDistancePx: ringEdge(c.X, c.Y, ri, ro)})
 	}
@@ -170,14 +201,14 @@ func (st *stage) lay(item *pipeline.Item, raw *raster.Plane, c raster.Circle) {
 
 // fill makes a region of one zone with the pixels of a mask.
 func (st *stage) fill(item *pipeline.Item, mask *raster.Mask, areaPx float64, edge func(x, y float64) float64) {
-	scale := st.umPerPx() / 1000
-	area := areaPx * scale * scale
 	spans := mask.Spans()
-	zone := pipeline.Zone{Name: "all", Spans: spans, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), EdgeDistancePx: edge}
 	s := raster.ShapeOf(spans)
 	if s.Area == 0 {
 		s.X, s.Y = float64(mask.Width-1)/2, float64(mask.Height-1)/2
 	}
+	_, _, scale := st.geometry.ToStation(s.X, s.Y)
+	area := areaPx * scale * scale / 1e6
+	zone := pipeline.Zone{Name: "all", Spans: spans, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), EdgeDistancePx: edge}
 	item.Region = pipeline.NewRegion(mask.Width, mask.Height, s.X, s.Y, 0, []pipeline.Zone{zone})
 	item.Geometry = st.geometry.WithOrigin(s.X, s.Y)
 }

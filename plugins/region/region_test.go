@@ -52,6 +52,30 @@ func disc12(s *Settings) {
 	s.Zones = []ZoneSettings{{Name: "clear", DiameterMM: 8}, {Name: "outer"}}
 }
 
+// Through a barrel the disc is a little smaller in px; it is measured and laid out as the
+// 12 mm it has, by the map, while the scale at the lens's centre alone would give 11.94.
+func TestDistortionIsAllowedFor(t *testing.T) {
+	lens := pipeline.Distortion{K1: -0.0166, CentreX: 160, CentreY: 150, NormPx: 219.3}
+	seen, _ := lens.Seen(160+120, 150)
+	radius := seen - 160
+	env := pipeline.Environment{View: "ring", Geometry: pipeline.Distorted{Planar: pipeline.Planar{UMPerPx: umPerPx}, Lens: lens}}
+	stage, _, err := Factory.New(settings(disc12), env)
+	if err != nil {
+		t.Fatal(err)
+	}
+	item := &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: part(2*radius*umPerPx/1000, 160, 150)}}, Geometry: env.Geometry}
+	if err := stage.Run(context.Background(), item); err != nil {
+		t.Fatal(err)
+	}
+	if d, _ := item.Number("part_diameter_mm"); math.Abs(d-12) > 0.01 || radius > 119.5 {
+		t.Errorf("diameter %.3f mm from a radius of %.2f px, want 12", d, radius)
+	}
+	inner, _ := lens.Seen(160+80, 150)
+	if d := item.Region.Zones[0].EdgeDistancePx(item.Region.CentreX, item.Region.CentreY); math.Abs(d-(inner-160)) > 0.05 {
+		t.Errorf("zone of 8 mm reaches to %.2f px, want %.2f", d, inner-160)
+	}
+}
+
 func TestPartIsFoundWithItsZones(t *testing.T) {
 	item, _ := run(t, part(12, 161.3, 148.6), settings(disc12), nil)
 	r := item.Region
