@@ -138,9 +138,13 @@ func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
 
 // otherSize looks for a part of quite another size, so that the reason can name it.
 func (st *stage) otherSize(proof *pipeline.Proof, raw *raster.Plane, search raster.CircleSearch) {
-	search.RMin, search.RMax = max(0.6*st.px(st.s.DiameterMM)/2, 2), max(1.4*st.px(st.s.DiameterMM)/2, 3)
+	whole := st.radiusPx(search.X, search.Y, st.s.DiameterMM)
+	search.RMin, search.RMax = max(0.6*whole, 2), max(1.4*whole, 3)
 	if fit, err := raster.FindCircle(raw, search); err == nil {
-		proof.Value = 2 * fit.R * st.umPerPx() / 1000
+		if d := st.diameterMM(fit.Circle); d >= proof.Low && d <= proof.High {
+			return
+		}
+		proof.Value = st.diameterMM(fit.Circle)
 		proof.Reason = fmt.Sprintf("found a diameter of %.3f mm, want %.3f to %.3f: another part", proof.Value, proof.Low, proof.High)
 	}
 }

@@ -111,7 +111,11 @@ func TestPartThatIsNotThere(t *testing.T) {
 			t.Errorf("%s: proof %+v, want a failed one and an empty region", name, p)
 		}
 	}
-	item, _ := run(t, part(12.15, 160, 150), settings(disc12), nil)
+	item, _ := run(t, part(9, 160, 150), settings(disc12), nil)
+	if p := item.Proofs[0]; p.OK || math.Abs(p.Value-9) > 0.01 || !strings.Contains(p.Reason, "another part") {
+		t.Errorf("another part: proof %+v", p)
+	}
+	item, _ = run(t, part(12.15, 160, 150), settings(disc12), nil)
 	if p := item.Proofs[0]; p.OK || math.Abs(p.Value-12.15) > 0.01 || !strings.Contains(p.Reason, "want 11.900 to 12.100") {
 		t.Errorf("too large: proof %+v", p)
 	}
