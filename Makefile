@@ -33,8 +33,8 @@ race: deps
 fuzz: deps ## every fuzz target for FUZZTIME
 	@.ci/fuzz $(or $(FUZZTIME),5s)
 
-demo: build ## the main job with embedded defaults; ONCE=1 stops after the report
-	build/lapgated demo --client build/lapgate --dir build/demo $(if $(ONCE),--once --report build/demo.json)
+demo: build ## the main job with embedded defaults; ONCE=1 stops after the report, UNITS=n shows fewer
+	build/lapgated demo --client build/lapgate --dir build/demo $(if $(ONCE),--once --report build/demo.json) $(if $(UNITS),--units $(UNITS))
 
 bench: build
 	go run ./cmd/bench --out build/bench.json

@@ -15,6 +15,7 @@ func (d *demo) printWhereToLook() {
 	fmt.Fprintf(d.out, `
 where to look next
   the files           %s: configs (scene, recipe, plan), frames, truth.jsonl, calibrations, verdicts, ledger.db
+  the volume plan     %s: costs at every quantity, crossovers, all assumptions
   yield by process    %s yield --by process --server %s
   a unit's story      %s unit D000001 --server %s
   tune a threshold    edit %s and save: the server takes it, or says why not
@@ -23,6 +24,6 @@ where to look next
 
 A verdict is not a certificate: acceptance follows the contract's drawing, standard and, where one is required, an accredited
 laboratory. Bright LED and laser lighting can hurt eyes (IEC 62471, IEC 60825). The reject gate is not a safety device.
-`, d.dir, d.client, server, d.client, server, d.path("configs/demo/recipes/disc-25.yaml"), d.path("configs/demo/recipes/disc-25.yaml"),
+`, d.dir, d.path("plan.html"), d.client, server, d.client, server, d.path("configs/demo/recipes/disc-25.yaml"), d.path("configs/demo/recipes/disc-25.yaml"),
 		d.path("calibrations/ring"), d.path("calibrations/bar"), d.path("frames/A/D000001_ring.pgm"), d.path("frames/A/D000001_bar.pgm"))
 }

@@ -36,6 +36,7 @@ type demoFigures struct {
 	HeldInterval    [2]float64          `json:"held_share_95"`
 	FramesPerS      float64             `json:"frames_per_s"`
 	wrong           []string            // units whose verdict disagrees
+	gate            gateCounts
 	pareto          []*inspectpb.ParetoRow
 }
 
@@ -118,6 +119,7 @@ func readLines[T any](path string) ([]T, error) {
 func (f *demoFigures) count(t render.Truth, verdict pipeline.Verdict) {
 	f.Units++
 	f.Verdicts[string(verdict)]++
+	f.gate.count(t.Conforming, verdict)
 	if t.NearLimit {
 		return
 	}
@@ -141,6 +143,27 @@ func (f *demoFigures) count(t render.Truth, verdict pipeline.Verdict) {
 	}
 }
 
+func (g *gateCounts) count(conforming bool, verdict pipeline.Verdict) {
+	switch {
+	case verdict == pipeline.Hold:
+	case conforming:
+		g.good++
+		if verdict == pipeline.Reject {
+			g.falselyRejected++
+		}
+	default:
+		g.bad++
+		if verdict == pipeline.Reject {
+			g.found++
+		}
+	}
+}
+
+// dial opens a connection to the demo's server.
+func (d *demo) dial() (*grpc.ClientConn, error) {
+	return grpc.NewClient(d.server.address(), grpc.WithTransportCredentials(insecure.NewCredentials()))
+}
+
 // confidence of the demo's intervals.
 const confidence = 0.95
 
@@ -160,7 +183,7 @@ func (f *demoFigures) intervals() error {
 
 // askYield asks the server, over gRPC, for the yield of each line and the Pareto.
 func (d *demo) askYield(f *demoFigures) error {
-	conn, err := grpc.NewClient(d.server.address(), grpc.WithTransportCredentials(insecure.NewCredentials()))
+	conn, err := d.dial()
 	if err != nil {
 		return err
 	}
@@ -223,6 +246,11 @@ func (d *demo) print(f demoFigures) error {
 	for _, u := range f.wrong {
 		fmt.Fprintf(w, "    %s\n", u)
 	}
+	err := d.plan(f)
+	if err != nil && d.units > 0 { // fewer units than the scene has may leave a process out
+		fmt.Fprintf(w, "\nno volume plan from so few units: %v\n", err)
+		err = nil
+	}
 	d.printWhereToLook()
-	return nil
+	return err
 }
