@@ -1,6 +1,7 @@
 package pipeline_test
 
 import (
+	"context"
 	"math"
 	"testing"
 
@@ -69,5 +70,29 @@ func TestSizingUndoesItsLaw(t *testing.T) {
 		if _, _, ok := s.DiameterUM(flux, 50); ok {
 			t.Errorf("flux %v: sized beyond what is known", flux)
 		}
+	}
+}
+
+// A recipe built with a calibration that has a map and a scale sees through both.
+func TestBuildTakesTheCalibrationsMap(t *testing.T) {
+	var seen pipeline.Geometry
+	look := failing("look", func(_ context.Context, i *pipeline.Item) error { seen = i.Geometry; return nil })
+	r := recipe("look")
+	r.Views[0].NoCalibration, r.Views[0].UMPerPx = false, 0
+	cal := &pipeline.Calibration{Hash: "sha256:x", Scale: pipeline.Scale{UMPerPx: 12}, Distortion: &barrel}
+	cat := catalogue(t, nil, look)
+	p, err := pipeline.Build(r, cat, pipeline.Options{Calibrations: map[string]*pipeline.Calibration{"ring": cal}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	p.RunView(context.Background(), pipeline.Identity{}, pipeline.View{Name: "ring"})
+	if d, ok := seen.(pipeline.Distorted); !ok || d.Lens != barrel || d.Planar.UMPerPx != 12 {
+		t.Errorf("got %+v", seen)
+	}
+	flat := *cal
+	flat.Distortion = nil
+	q, err := pipeline.Build(r, cat, pipeline.Options{Calibrations: map[string]*pipeline.Calibration{"ring": &flat}})
+	if err != nil || q.DetectionHash == p.DetectionHash {
+		t.Errorf("the map does not show in the detection hash (%v)", err)
 	}
 }

@@ -12,4 +12,10 @@
 // a diffuser is brighter by orders of magnitude. Few response frames add their own
 // noise: a correction from N frames leaves a spread of √(1 + 1/N) times the noise of
 // one frame.
+//
+// What else frames can tell, each where it was taken: a ramp of pairs the figures of EMVA
+// Standard 1288 (package emva); a dot target scale and distortion, and one with known
+// diameters the sizing curve (package dots); frames of a conforming part the width of its edge
+// and its diameter; a reference patch the light; sidecars the camera's temperature. The
+// pixels that stand out most are kept to tell the sensor by (package drift).
 package calibrate
