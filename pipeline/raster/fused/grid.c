@@ -1,0 +1,180 @@
+// Level and noise in cells: what raster.MeasureGrid makes of the moments of its cells.
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "correct.h"
+#include "parts.h"
+
+double pg_middle(double *v, int n) {
+	for (int i = 1; i < n; i++) {
+		double t = v[i];
+		int j = i;
+		for (; j > 0 && v[j - 1] > t; j--)
+			v[j] = v[j - 1];
+		v[j] = t;
+	}
+	return v[n / 2];
+}
+
+static double median(double *v, int n) {
+	double upper = pg_middle(v, n);
+	return (upper + v[(n - 1) / 2]) / 2;
+}
+
+static void swap(double *a, double *b) {
+	double low = *a < *b ? *a : *b, high = *a < *b ? *b : *a;
+	*a = low, *b = high;
+}
+
+// median9 by 19 exchanges (Paeth, Graphics Gems, 1990).
+static double median9(double *p) {
+	static const uint8_t pairs[19][2] = {{1, 2}, {4, 5}, {7, 8}, {0, 1}, {3, 4}, {6, 7}, {1, 2}, {4, 5}, {7, 8}, {0, 3},
+	                                     {5, 8}, {4, 7}, {3, 6}, {1, 4}, {2, 5}, {4, 7}, {4, 2}, {6, 4}, {4, 2}};
+	for (int i = 0; i < 19; i++)
+		swap(p + pairs[i][0], p + pairs[i][1]);
+	return p[4];
+}
+
+// at returns the cell dx columns and dy rows from (x, y), or −1 where there is none.
+static int64_t at(const pg_grid *g, int x, int y, int dx, int dy) {
+	x += dx, y += dy;
+	return x >= 0 && y >= 0 && x < g->columns && y < g->rows ? (int64_t)y * g->columns + x : -1;
+}
+
+static int neighbour(const pg_grid *g, const double *v, int x, int y, int dx, int dy, int slope, double *out) {
+	int64_t j = at(g, x, y, dx, dy);
+	if (j >= 0 && !g->filled[j]) {
+		*out = v[j];
+		return 1;
+	}
+	j = slope ? at(g, x, y, -dx, -dy) : -1;
+	if (j < 0 || g->filled[j])
+		return 0;
+	*out = 2 * v[(int64_t)y * g->columns + x] - v[j];
+	return 1;
+}
+
+// MEDIAN_STEP is raster's medianStep.
+#define MEDIAN_STEP 0.3
+
+static void medians(const pg_grid *g, double *dst, const double *v, int slope) {
+	double near[9];
+	for (int y = 0; y < g->rows; y++)
+		for (int x = 0; x < g->columns; x++) {
+			int64_t i = (int64_t)y * g->columns + x;
+			dst[i] = v[i];
+			if (g->filled[i])
+				continue;
+			int n = 0;
+			for (int k = 0; k < 9; k++)
+				n += neighbour(g, v, x, y, k % 3 - 1, k / 3 - 1, slope, near + n);
+			double m = n == 9 ? median9(near) : median(near, n);
+			if (!slope || fabs(v[i] - m) > MEDIAN_STEP * g->sigma[i])
+				dst[i] = m;
+		}
+}
+
+static int fill_cell(const pg_grid *g, int x, int y, const uint8_t *known) {
+	double n = 0, level = 0, noise = 0;
+	for (int k = 0; k < 9; k++) {
+		int dx = k % 3 - 1, dy = k / 3 - 1;
+		int64_t j = at(g, x, y, dx, dy), far = at(g, x, y, 2 * dx, 2 * dy);
+		if (j < 0 || !known[j])
+			continue;
+		double l = g->level[j];
+		if (far >= 0 && known[far])
+			l = 2 * l - g->level[far];
+		n++, level += l, noise += g->noise[j];
+	}
+	int64_t i = (int64_t)y * g->columns + x;
+	if (n > 0)
+		g->level[i] = level / n, g->noise[i] = noise / n;
+	return n > 0;
+}
+
+static void fill(const pg_grid *g, uint8_t *known, uint8_t *next) {
+	int64_t cells = (int64_t)g->columns * g->rows, left = 0;
+	for (int64_t i = 0; i < cells; i++) {
+		known[i] = !g->filled[i];
+		left += g->filled[i];
+	}
+	while (left > 0 && left < cells) {
+		memcpy(next, known, (size_t)cells);
+		for (int64_t i = 0; i < cells; i++)
+			if (!known[i] && fill_cell(g, (int)(i % g->columns), (int)(i / g->columns), known)) {
+				next[i] = 1;
+				left--;
+			}
+		memcpy(known, next, (size_t)cells);
+	}
+}
+
+int pg_smooth(const pg_frame *f, pg_grid *g) {
+	(void)f;
+	size_t cells = (size_t)g->columns * (size_t)g->rows;
+	uint8_t *known = malloc(2 * cells);
+	if (!known)
+		return PG_NO_MEMORY;
+	medians(g, g->level, g->mean, 1);
+	medians(g, g->noise, g->sigma, 0);
+	fill(g, known, known + cells);
+	free(known);
+	return PG_OK;
+}
+
+void pg_grain(const pg_frame *f, pg_grid *g, double share) {
+	double near[9];
+	int64_t cells = (int64_t)g->columns * g->rows;
+	for (int64_t i = 0; i < cells; i++) // the factor; mean and sigma stay for the next pass
+		g->block[i] = f->use_grain && g->block[i] >= 0 && g->noise[i] > 0 ? g->block[i] / (PG_GAIN * g->noise[i]) : -1;
+	for (int y = 0; y < g->rows; y++)
+		for (int x = 0; x < g->columns; x++) {
+			int n = 0;
+			for (int k = 0; k < 9; k++) {
+				int64_t j = at(g, x, y, k % 3 - 1, k / 3 - 1);
+				if (j >= 0 && g->block[j] >= 0)
+					near[n++] = g->block[j];
+			}
+			double *noise = g->noise + (int64_t)y * g->columns + x;
+			double factor = n == 0 ? 1 : share * (n == 9 ? median9(near) : median(near, n));
+			*noise *= factor > 1 ? factor : 1;
+			*noise = *noise > f->floor_dn ? *noise : f->floor_dn;
+		}
+}
+
+double pg_level(const pg_grid *g, int cell, double x, double y) {
+	double p[2] = {x, y}, q[2];
+	int i[2], n[2] = {g->columns, g->rows};
+	for (int k = 0; k < 2; k++) {
+		double c = (p[k] + 0.5) / cell - 0.5;
+		i[k] = n[k] == 1 || c < 0 ? 0 : c > n[k] - 2 ? n[k] - 2 : (int)c;
+		q[k] = n[k] == 1 ? 0 : c - i[k];
+	}
+	const double *top = g->level + (int64_t)i[1] * g->columns, *bottom = i[1] + 1 < g->rows ? top + g->columns : top;
+	int a = i[0], b = a + 1 < g->columns ? a + 1 : a;
+	return (1 - q[1]) * ((1 - q[0]) * top[a] + q[0] * top[b]) + q[1] * ((1 - q[0]) * bottom[a] + q[0] * bottom[b]);
+}
+
+void pg_count_cells(const pg_frame *f, pg_grid *g, int row0, int row1) {
+	for (int row = row0; row < row1; row++) {
+		int64_t *inside = g->inside + (int64_t)row * g->columns, *valid = g->valid + (int64_t)row * g->columns;
+		memset(inside, 0, sizeof(int64_t) * (size_t)g->columns);
+		int y1 = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
+		memset(valid, 0, sizeof(int64_t) * (size_t)g->columns);
+		for (int i = f->span_start[row * f->cell]; i < f->span_start[y1]; i++)
+			for (int x = f->spans[i].x0; x < f->spans[i].x1;) {
+				int end = (x / f->cell + 1) * f->cell;
+				end = end < f->spans[i].x1 ? end : f->spans[i].x1;
+				inside[x / f->cell] += end - x;
+				x = end;
+			}
+		for (int y = row * f->cell; f->bad_start && y < y1; y++)
+			for (int i = f->bad_start[y]; i < f->bad_start[y + 1]; i++)
+				for (int k = f->span_start[y]; k < f->span_start[y + 1]; k++)
+					if (f->bad_x[i] >= f->spans[k].x0 && f->bad_x[i] < f->spans[k].x1)
+						valid[f->bad_x[i] / f->cell]--;
+		for (int i = 0; i < g->columns; i++)
+			valid[i] += inside[i];
+	}
+}

@@ -1,0 +1,71 @@
+package fused
+
+// #include "objects.h"
+import "C"
+
+import (
+	"errors"
+	"unsafe"
+
+	"lapgate/pipeline/raster"
+)
+
+type cSpan = C.pg_span
+
+var errCount = errors.New("data: a count is higher than the pixel format allows; check pixel_format and byte order")
+
+// firstError turns what the kernels return into an error.
+func firstError(results ...C.int) error {
+	for _, r := range results {
+		switch r {
+		case C.PG_OK:
+		case C.PG_BAD_COUNT:
+			return errCount
+		default:
+			return errMemory
+		}
+	}
+	return nil
+}
+
+// pinned keeps a slice in place until the job ends and returns its first element's
+// address, nil for an empty one.
+func pinned[T any](j *job, s []T) unsafe.Pointer {
+	if len(s) == 0 {
+		return nil
+	}
+	p := unsafe.Pointer(unsafe.SliceData(s))
+	j.pin.Pin(p)
+	return p
+}
+
+// grid is a grid in memory that C may use.
+type grid struct {
+	c      *C.pg_grid
+	values []float64 // level, noise, mean, sigma, block
+	filled []uint8
+}
+
+func newGrid(j *job, columns, rows int) *grid {
+	n := columns * rows
+	g := &grid{c: &C.pg_grid{columns: C.int32_t(columns), rows: C.int32_t(rows)}, values: make([]float64, 5*n), filled: make([]uint8, n)}
+	part := func(k int) *C.double { return (*C.double)(pinned(j, g.values[k*n:(k+1)*n])) }
+	g.c.level, g.c.noise, g.c.mean, g.c.sigma, g.c.block = part(0), part(1), part(2), part(3), part(4)
+	g.c.inside, g.c.valid = (*C.int64_t)(pinned(j, j.inside)), (*C.int64_t)(pinned(j, j.valid))
+	g.c.filled = (*C.uint8_t)(pinned(j, g.filled))
+	j.pin.Pin(g.c)
+	return g
+}
+
+// raster returns the grid as the reference has it.
+func (j *job) rasterGrid() *raster.Grid {
+	g := j.grid
+	n := len(g.filled)
+	out := &raster.Grid{CellPx: j.s.Grid.CellPx, Columns: int(g.c.columns), Rows: int(g.c.rows),
+		Level: g.values[:n:n], Noise: g.values[n : 2*n : 2*n],
+		Inside: make([]int, n), Valid: make([]int, n), Filled: make([]bool, n)}
+	for i := range n {
+		out.Inside[i], out.Valid[i], out.Filled[i] = int(j.inside[i]), int(j.valid[i]), g.filled[i] != 0
+	}
+	return out
+}

@@ -1,0 +1,111 @@
+package fused
+
+// #include "objects.h"
+import "C"
+
+import (
+	"slices"
+	"sync"
+	"unsafe"
+
+	"lapgate/pipeline/raster"
+)
+
+// objects evaluates the candidates and measures the blobs.
+func (j *job) objects() (*Result, error) {
+	found := C.pg_blobs_new()
+	if found == nil {
+		return nil, errMemory
+	}
+	defer C.pg_blobs_free(found)
+	r := &Result{Grid: j.rasterGrid(), Floats: j.frame.use_float != 0, Passes: j.passes}
+	for _, b := range j.bands {
+		if err := firstError(C.pg_collect(found, b.c)); err != nil {
+			return nil, err
+		}
+		r.Saturated = appendSpans(r.Saturated, b.c.saturated.at, int64(b.c.saturated.count))
+	}
+	var snr *C.float
+	if j.s.SNR {
+		r.SNR = raster.NewPlane(j.c.width, j.c.height)
+		snr = (*C.float)(pinned(j, r.SNR.Pix))
+	}
+	if err := firstError(C.pg_find(j.frame, j.grid.c, found, C.int32_t(j.s.MinAreaPx), snr)); err != nil {
+		return nil, err
+	}
+	r.Truncated = j.strongest(found)
+	if err := firstError(C.pg_index(j.frame, found)); err != nil {
+		return nil, err
+	}
+	r.MemoryBytes = bytes(j.bands) + int64(C.pg_blobs_bytes(found)) + j.scratch
+	r.Blobs = make([]Blob, int(found.count))
+	return r, j.measure(found, r.Blobs)
+}
+
+func appendSpans(dst []raster.Span, runs *C.pg_run, n int64) []raster.Span {
+	dst = slices.Grow(dst, int(n))
+	for _, r := range unsafe.Slice(runs, n) {
+		dst = append(dst, raster.Span{Y: int(r.y), X0: int(r.x0), X1: int(r.x1)})
+	}
+	return dst
+}
+
+// strongest keeps the MaxBlobs blobs with the highest peaks, in their old order; it
+// reports whether there were more.
+func (j *job) strongest(found *C.pg_blobs) bool {
+	most := j.s.MaxBlobs
+	if most == 0 || int(found.count) <= most {
+		return false
+	}
+	blobs := unsafe.Slice(found.blobs, int(found.count))
+	peaks := make([]float32, len(blobs))
+	for i, b := range blobs {
+		peaks[i] = float32(b.peak)
+	}
+	slices.Sort(peaks)
+	least := peaks[len(peaks)-most]
+	keep, n := make([]uint8, len(blobs)), 0
+	for i, b := range blobs {
+		if float32(b.peak) >= least && n < most {
+			keep[i] = 1
+			n++
+		}
+	}
+	C.pg_keep(found, (*C.uint8_t)(unsafe.SliceData(keep)))
+	return true
+}
+
+// measure fills out on as many goroutines as there are bands.
+func (j *job) measure(found *C.pg_blobs, out []Blob) error {
+	workers := min(len(j.bands), max(len(out), 1))
+	results := make([]C.int, workers)
+	var wait sync.WaitGroup
+	for w := range workers {
+		wait.Go(func() {
+			for i := w; i < len(out) && results[w] == C.PG_OK; i += workers {
+				results[w] = j.measureOne(found, out, i)
+			}
+		})
+	}
+	wait.Wait()
+	return firstError(results...)
+}
+
+func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int) C.int {
+	var m C.pg_measure
+	if e := C.pg_measure_blob(j.frame, j.grid.c, found, C.int64_t(i), &m); e != C.PG_OK {
+		return e
+	}
+	b := unsafe.Slice(found.blobs, int(found.count))[i]
+	out[i] = Blob{Blemish: raster.Blemish{X: float64(m.x), Y: float64(m.y), AreaPx: int(b.area), HalfArea: float64(m.half_area),
+		Length: float64(m.length), Width: float64(m.width), Diameter: float64(m.diameter), Angle: float64(m.angle),
+		Height: float64(m.height), Flux: float64(m.flux), Peak: float64(m.peak), PeakSNR: float64(b.peak), SNR: float64(m.snr),
+		Dark: m.dark != 0, Long: m.is_long != 0, Coiled: m.coiled != 0, X0: int(b.x0), Y0: int(b.y0), X1: int(b.x1), Y1: int(b.y1),
+		PeakX: int(b.peak_x), PeakY: int(b.peak_y)}}
+	for k := range int(m.points) {
+		out[i].Path = append(out[i].Path, raster.Point{X: float64(m.path[2*k]), Y: float64(m.path[2*k+1])})
+	}
+	runs := (*C.pg_run)(unsafe.Add(unsafe.Pointer(found.runs.at), uintptr(b.first)*unsafe.Sizeof(C.pg_run{})))
+	out[i].Spans = appendSpans(nil, runs, int64(b.runs))
+	return C.PG_OK
+}

@@ -1,0 +1,285 @@
+// The streaming pass, in terms of the row kernels included before it. Rows go in groups
+// of four, from the top: values, moments, signal, block sums, the filter along x into a
+// ring of eight rows, the filter along y, thresholds, runs.
+#include <stdlib.h>
+#include <string.h>
+
+#include "grain.h"
+#include "parts.h"
+#include "spans.h"
+
+enum { GROUP = 4, SEGMENT = 32, PAD = 64 };
+
+typedef struct {
+	const pg_frame *f;
+	const pg_grid *g;
+	pg_grid *out;
+	pg_band *b;
+	int pitch;
+	T *value[GROUP], *ring[8], *filtered[GROUP];
+	T *signal, *samples, *top, *slope;
+	T *low, *high, *highest; // of segments
+	int node_row, shift, threshold_key;
+	T least, most;
+	double *stats; // number, sum, sum² of each cell
+	T *cell_low, *cell_high, *cell_mid;
+	pg_span *inner, *spare;
+} state;
+
+// hull is the x-range of the region in rows y0 to y1, rounded outwards to whole segments
+// and one more; empty when x0 >= x1.
+static void hull(const pg_frame *f, int y0, int y1, int *x0, int *x1) {
+	*x0 = f->width, *x1 = 0;
+	for (int y = y0; y < y1; y++) {
+		int n;
+		const pg_span *s = spans_of(f, y, &n);
+		if (n > 0) {
+			*x0 = s[0].x0 < *x0 ? s[0].x0 : *x0;
+			*x1 = s[n - 1].x1 > *x1 ? s[n - 1].x1 : *x1;
+		}
+	}
+	if (*x0 >= *x1)
+		return;
+	*x0 = *x0 < SEGMENT ? 0 : (*x0 / SEGMENT - 1) * SEGMENT;
+	*x1 = (*x1 / SEGMENT + 2) * SEGMENT;
+	*x1 = *x1 > f->width ? f->width : *x1;
+}
+
+// fill_gaps writes v to the pixels of row[x0 … x1) outside the region.
+static void fill_gaps(const pg_frame *f, T *row, int y, int x0, int x1, T v) {
+	int n, x = x0;
+	const pg_span *s = spans_of(f, y, &n);
+	for (int i = 0; i <= n; i++) {
+		int end = i < n ? s[i].x0 : x1;
+		for (; x < end; x++)
+			row[x] = v;
+		x = i < n && s[i].x1 > x ? s[i].x1 : x;
+	}
+}
+
+static void mark_bad(const pg_frame *f, T *row, int y, int x0, int x1, T v) {
+	if (f->bad_start)
+		for (int i = f->bad_start[y]; i < f->bad_start[y + 1]; i++)
+			if (f->bad_x[i] >= x0 && f->bad_x[i] < x1)
+				row[f->bad_x[i]] = v;
+}
+
+static void replace_bad(const pg_frame *f, T *row, int y, int x0, int x1) {
+	if (f->bad_start)
+		for (int i = f->bad_start[y]; i < f->bad_start[y + 1]; i++)
+			if (f->bad_x[i] >= x0 && f->bad_x[i] < x1)
+				row[f->bad_x[i]] = to_value(f, pg_replaced(f, f->bad_x[i], y));
+}
+
+static int note_saturated(const pg_frame *f, pg_band *b, int y, int x0, int x1) {
+	const uint8_t *row = pg_row(f, y);
+	for (int x = x0; x < x1; x++) {
+		uint32_t c = pg_count(f, row, x);
+		if (c > (uint32_t)f->max_count)
+			return PG_BAD_COUNT;
+		if (c == (uint32_t)f->max_count && pg_run_add(&b->saturated, y, x, x + 1, 0))
+			return PG_NO_MEMORY;
+	}
+	return PG_OK;
+}
+
+// load makes the values of four rows from y with OUTSIDE where they do not count. Rows
+// that are not to be kept are not searched for saturation.
+static int load(state *s, T **rows, int y, int x0, int x1, int keep) {
+	const pg_frame *f = s->f;
+	for (int k = 0; k < GROUP; k++) {
+		if (y + k >= f->height) {
+			for (int x = x0; x < x1; x++)
+				rows[k][x] = OUTSIDE;
+			continue;
+		}
+		int top = row_value(f, rows[k], s->b->counts, y + k, x0, x1);
+		if (top >= f->max_count && (keep || top > f->max_count)) {
+			int e = note_saturated(f, s->b, y + k, x0, x1);
+			if (e)
+				return e;
+		}
+		fill_gaps(f, rows[k], y + k, x0, x1, OUTSIDE);
+		mark_bad(f, rows[k], y + k, x0, x1, OUTSIDE);
+	}
+	return PG_OK;
+}
+
+// level_rows makes top and slope for the node rows around y.
+static void level_rows(state *s, int y) {
+	const pg_frame *f = s->f;
+	const pg_grid *g = s->g;
+	double fy;
+	int iy = pg_node(y, f->cell, g->rows, &fy);
+	if (iy == s->node_row)
+		return;
+	s->node_row = iy;
+	const double *a = g->level + (int64_t)iy * g->columns, *b = iy + 1 < g->rows ? a + g->columns : a;
+	double steepest = 0;
+	for (int i = 0; i < g->columns; i++) {
+		double d = (b[i] - a[i]) * f->scale;
+		steepest = d > steepest ? d : -d > steepest ? -d : steepest;
+	}
+	s->shift = 0; // slopes beyond the outer nodes may be three times as steep
+	while (s->shift < 4 && 3 * steepest * (4 << s->shift) < 30000)
+		s->shift++;
+	for (int x = 0; x < f->width;) {
+		double fx;
+		int ix = pg_node(x, f->cell, g->columns, &fx), jx = ix + 1 < g->columns ? ix + 1 : ix;
+		int end = ix < g->columns - 2 ? (ix + 1) * f->cell + (f->cell + 1) / 2 : f->width;
+		end = end > f->width ? f->width : end;
+		ramp(s->top, s->slope, x, end, a[ix], a[jx], b[ix], b[jx], fx, f->cell, f->scale, s->shift);
+		x = end;
+	}
+}
+
+// thresholds of the segments for rows y to y + 3: below those of every node around.
+static void thresholds(state *s, int y) {
+	const pg_frame *f = s->f;
+	const pg_grid *g = s->g;
+	double fraction;
+	int y0 = pg_node(y < 0 ? 0 : y, f->cell, g->rows, &fraction);
+	int y1 = pg_node(y + 3 < f->height ? y + 3 : f->height - 1, f->cell, g->rows, &fraction) + 1;
+	int key = y0 * 2 + (y1 - y0 > 1);
+	if (key == s->threshold_key)
+		return;
+	s->threshold_key = key;
+	y1 = y1 < g->rows ? y1 : g->rows - 1;
+	for (int j = 0; j * SEGMENT < f->width; j++) {
+		int x0 = pg_node(j * SEGMENT, f->cell, g->columns, &fraction);
+		int x1 = pg_node(j * SEGMENT + SEGMENT - 1, f->cell, g->columns, &fraction) + 1;
+		x1 = x1 < g->columns ? x1 : g->columns - 1;
+		double noise = 1e300;
+		for (int iy = y0; iy <= y1; iy++)
+			for (int ix = x0; ix <= x1; ix++)
+				noise = g->noise[(int64_t)iy * g->columns + ix] < noise ? g->noise[(int64_t)iy * g->columns + ix] : noise;
+		s->low[j] = threshold(pg_cautious(f, f->low, noise) * f->scale);
+		s->high[j] = threshold(pg_cautious(f, f->high, noise) * f->scale);
+	}
+}
+
+static void start_cells(state *s, int row) {
+	const pg_grid *g = s->g;
+	memset(s->stats, 0, sizeof(double) * 3 * (size_t)g->columns);
+	for (int i = 0; i < g->columns; i++) {
+		int64_t at = (int64_t)row * g->columns + i;
+		bounds_of(s->f, g->mean[at], s->f->clip * g->sigma[at], s->cell_low + i, s->cell_high + i, s->cell_mid + i);
+	}
+}
+
+static void add_moments(state *s, T **rows, int x0, int x1) {
+	const int cell = s->f->cell;
+	for (int x = x0; x < x1;) {
+		int i = x / cell, end = (i + 1) * cell < x + 64 ? (i + 1) * cell : x + 64;
+		end = end < x1 ? end : x1;
+		moments(rows[0], rows[1], rows[2], rows[3], x, end, s->cell_low[i], s->cell_high[i], s->cell_mid[i], s->stats + 3 * i);
+		x = end;
+	}
+}
+
+PG_KERNEL void along(T *restrict dst, const T *restrict v, int x0, int x1) {
+	for (int x = x0; x < x1; x++)
+		dst[x] = taps(v[x - 2], v[x - 1], v[x], v[x + 1], v[x + 2]);
+}
+
+// to_signal makes row y's signal of its values, with a zero where the region is not, and
+// the filter along x of it.
+static void to_signal(state *s, T *v, int y, int x0, int x1) {
+	const pg_frame *f = s->f;
+	T *out = s->ring[y & 7], *sig = s->signal;
+	replace_bad(f, v, y, x0, x1);
+	level_rows(s, y);
+	double fy;
+	pg_node(y, f->cell, s->g->rows, &fy);
+	row_signal(sig, v, s->top, s->slope, fy, s->shift, y, s->least, s->most, f->polarity < 0, x0, x1);
+	fill_gaps(f, sig, y, x0, x1, 0);
+	sig[x0 - 2] = sig[x0 - 1] = sig[x1] = sig[x1 + 1] = 0;
+	along(out, sig, x0, x1);
+}
+
+// take_samples keeps every fourth filtered value of row y, the second of four rows (see
+// Grid in raster), and OUTSIDE where one of its 5 × 5 pixels does not count.
+static void take_samples(state *s, const T *restrict filtered, int y) {
+	const pg_frame *f = s->f;
+	int n = f->width / GROUP, m = span_inner(f, y, &s->inner, &s->spare);
+	T *restrict row = s->samples + (int64_t)(y % f->cell / GROUP) * n;
+	for (int i = 0; i < n; i++)
+		row[i] = OUTSIDE;
+	for (int k = 0; k < m; k++) {
+		int a = (s->inner[k].x0 + 1) / GROUP, b = (s->inner[k].x1 + 1) / GROUP;
+		b = b < n ? b : n;
+		for (int i = a; i < b; i++)
+			row[i] = filtered[GROUP * i + 2];
+	}
+	for (int v = y - 2; f->bad_start && v <= y + 2; v++)
+		for (int i = v < 0 || v >= f->height ? 0 : f->bad_start[v]; v >= 0 && v < f->height && i < f->bad_start[v + 1]; i++) {
+			int j = f->bad_x[i] / GROUP; // reached by samples j and, from its edge, j − 1
+			if (j < n)
+				row[j] = OUTSIDE;
+			if (f->bad_x[i] % GROUP == 0 && j > 0)
+				row[j - 1] = OUTSIDE;
+		}
+}
+
+// CLEAN is the share of the pixels of a cell within 3 sigmas below which its clipping may
+// have further to go than one step: 0.9973 where there is nothing but noise.
+#define CLEAN 0.995
+
+// settle_cell repeats the clipping of one cell over all of its pixels until nothing
+// changes, from the moments it has.
+static void settle_cell(state *s, int64_t at) {
+	const pg_frame *f = s->f;
+	pg_grid *o = s->out;
+	int x0 = (int)(at % o->columns) * f->cell, y0 = (int)(at / o->columns) * f->cell;
+	int x1 = x0 + f->cell < f->width ? x0 + f->cell : f->width, y1 = y0 + f->cell < f->height ? y0 + f->cell : f->height;
+	T *cell = (T *)(void *)s->b->whole;
+	double last = -1, m[3];
+	for (int y = y0; y < y0 + f->cell; y++) {
+		T *row = cell + (int64_t)(y - y0) * f->cell - x0;
+		if (y < y1)
+			row_value(f, row, s->b->counts, y, x0, x1);
+		fill_gaps(f, row, y, x0, x1, OUTSIDE);
+		if (y < y1)
+			mark_bad(f, row, y, x0, x1, OUTSIDE);
+	}
+	for (int i = 0; i < CLIP_PASSES; i++) {
+		T low, high, mid;
+		bounds_of(f, o->mean[at], f->clip * o->sigma[at], &low, &high, &mid);
+		m[0] = m[1] = m[2] = 0;
+		for (int k = 0; k < f->cell; k += 4)
+			for (int x = 0; x < x1 - x0; x += 64) {
+				const T *r = cell + (int64_t)k * f->cell;
+				moments(r, r + f->cell, r + 2 * f->cell, r + 3 * f->cell, x, x + 64 < x1 - x0 ? x + 64 : x1 - x0, low, high, mid, m);
+			}
+		if (m[0] < 1 || m[0] == last)
+			return;
+		last = m[0];
+		double d = m[1] / m[0], v = m[2] / m[0] - d * d;
+		o->mean[at] = ((double)mid + d) / f->scale;
+		o->sigma[at] = (v > 0 ? __builtin_sqrt(v) : 0) / f->shrink / f->scale;
+	}
+}
+
+// finish_moments writes mean and sigma of the cells of grid row row.
+static int finish_moments(state *s, int row) {
+	int e = PG_OK;
+	for (int i = 0; i < s->out->columns && !e; i++) {
+		int64_t at = (int64_t)row * s->out->columns + i;
+		e = pg_cell_done(s->f, s->out, at, s->stats + 3 * i, (double)s->cell_mid[i] / s->f->scale, s->g);
+		if (!e && !s->out->filled[at] && s->stats[3 * i] < CLEAN * (double)s->out->valid[at])
+			settle_cell(s, at);
+	}
+	return e;
+}
+
+// finish_grain writes the sigma of the filtered samples of the cells of grid row row.
+static void finish_grain(state *s, int row) {
+	const pg_frame *f = s->f;
+	int n = f->width / GROUP, columns = f->cell / GROUP, bottom = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
+	int rows = (bottom - row * f->cell + 1) / GROUP;
+	for (int i = 0; i < s->out->columns; i++) {
+		int a = i * columns, b = a + columns < n ? a + columns : n;
+		s->out->block[(int64_t)row * s->out->columns + i] =
+		    f->use_grain && a < b ? sample_sigma(f, s->samples + a, n, rows, b - a, f->scale, f->floor_dn * PG_GAIN) : -1;
+	}
+}

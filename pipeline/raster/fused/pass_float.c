@@ -1,0 +1,16 @@
+// The pass in floats.
+#include "kernels_float.h"
+
+#include "pass_sample.h"
+
+int pg_sample_float(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int32_t row0, int32_t row1) {
+	return sample(f, g, b, blocks, row0, row1);
+}
+
+void pg_sample_grain_float(const pg_frame *f, pg_grid *g, const float *blocks, void *scratch, int32_t row) {
+	sample_grain(f, g, blocks, scratch, row);
+}
+
+int pg_pass_float(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, int32_t row0, int32_t row1) {
+	return pass(f, g, out, b, row0, row1);
+}

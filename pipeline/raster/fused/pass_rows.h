@@ -1,0 +1,178 @@
+// The rest of the pass: the filter along y, thresholds and runs, and the loops over rows.
+#include "pass_body.h"
+
+// down filters eight rows h along y to four rows out, and notes the highest value of each
+// segment, or with both the highest magnitude.
+PG_KERNEL void down(T *const *h, T *const *out, T *restrict highest, int both, int x0, int x1) {
+	const T *restrict i = h[0], *restrict j = h[1], *restrict k = h[2], *restrict l = h[3];
+	const T *restrict m = h[4], *restrict n = h[5], *restrict o = h[6], *restrict r = h[7];
+	T *restrict a = out[0], *restrict b = out[1], *restrict c = out[2], *restrict d = out[3];
+	for (int s = x0 / SEGMENT; s * SEGMENT < x1; s++) {
+		int end = (s + 1) * SEGMENT < x1 ? (s + 1) * SEGMENT : x1;
+		T top = 0, bottom = 0;
+		for (int x = s * SEGMENT; x < end; x++) {
+			T p = taps(i[x], j[x], k[x], l[x], m[x]), q = taps(j[x], k[x], l[x], m[x], n[x]);
+			T u = taps(k[x], l[x], m[x], n[x], o[x]), v = taps(l[x], m[x], n[x], o[x], r[x]);
+			a[x] = p;
+			b[x] = q;
+			c[x] = u;
+			d[x] = v;
+			T w = p > q ? p : q, z = u > v ? u : v;
+			w = w > z ? w : z;
+			top = top > w ? top : w;
+			w = p < q ? p : q, z = u < v ? u : v;
+			w = w < z ? w : z;
+			bottom = bottom < w ? bottom : w;
+		}
+		highest[s] = both && -bottom > top ? (T)-bottom : top;
+	}
+}
+
+static void vertical(state *s, int y, int x0, int x1) {
+	T *h[8];
+	for (int k = 0; k < 8; k++)
+		h[k] = s->ring[(y - 4 + k) & 7];
+	down(h, s->filtered, s->highest, s->f->polarity == 0, x0, x1);
+}
+
+// scan adds the runs of f[x0 … x1) at or above the threshold, divided by share.
+static int scan(state *s, const T *f, int y, int x0, int x1, int share) {
+	const int both = s->f->polarity == 0;
+	for (int x = x0; x < x1; x++) {
+		int j = x / SEGMENT, end = (j + 1) * SEGMENT < x1 ? (j + 1) * SEGMENT : x1;
+		T low = s->low[j], high = s->high[j];
+		for (; x < end; x++) {
+			BOUND v = (BOUND)((both && f[x] < 0 ? -f[x] : f[x]) * share);
+			if (v >= low && pg_run_add(&s->b->runs, y, x, x + 1, v >= high))
+				return PG_NO_MEMORY;
+		}
+		x--;
+	}
+	return PG_OK;
+}
+
+// scan_inner is scan that passes over segments without a pixel above the threshold.
+static int scan_inner(state *s, const T *restrict f, int y, int x0, int x1) {
+	for (int j = x0 / SEGMENT; j * SEGMENT < x1; j++) {
+		if (s->highest[j] < s->low[j])
+			continue;
+		int a = j * SEGMENT < x0 ? x0 : j * SEGMENT, e = (j + 1) * SEGMENT < x1 ? (j + 1) * SEGMENT : x1;
+		T top = 0, bottom = 0;
+		for (int x = a; x < e; x++) {
+			top = f[x] > top ? f[x] : top;
+			bottom = f[x] < bottom ? f[x] : bottom;
+		}
+		if ((top >= s->low[j] || (s->f->polarity == 0 && -bottom >= s->low[j])) && scan(s, f, y, a, e, 1))
+			return PG_NO_MEMORY;
+	}
+	return PG_OK;
+}
+
+// runs_of adds the runs of row y. Near the region's edge the reference scales the filter
+// by up to 1.95, so there everything above half of the threshold is a candidate.
+static int runs_of(state *s, const T *f, int y) {
+	int n, m = span_inner(s->f, y, &s->inner, &s->spare), k = 0;
+	const pg_span *p = spans_of(s->f, y, &n), *in = s->inner;
+	for (int i = 0; i < n; i++) {
+		int x = p[i].x0;
+		for (; k < m && in[k].x0 < p[i].x1; k++) {
+			if (scan(s, f, y, x, in[k].x0, 2) || scan_inner(s, f, y, in[k].x0, in[k].x1))
+				return PG_NO_MEMORY;
+			x = in[k].x1;
+		}
+		if (scan(s, f, y, x, p[i].x1, 2))
+			return PG_NO_MEMORY;
+	}
+	return PG_OK;
+}
+
+static void start(state *s, const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b) {
+	*s = (state){.f = f, .g = g, .out = out, .b = b, .node_row = -1, .threshold_key = -1};
+	s->pitch = pg_pitch(f->width);
+	size_t row = sizeof(T) * (size_t)s->pitch;
+	for (int k = 0; k < GROUP; k++) {
+		s->value[k] = (T *)(void *)(b->value + row * k) + PAD;
+		s->filtered[k] = (T *)(void *)(b->filtered + row * k) + PAD;
+	}
+	for (int k = 0; k < 8; k++)
+		s->ring[k] = (T *)(void *)(b->horizontal + row * k) + PAD;
+	s->signal = (T *)(void *)b->signal + PAD;
+	s->top = (T *)(void *)b->top + PAD;
+	s->slope = (T *)(void *)b->slope + PAD;
+	s->samples = (T *)(void *)b->grain;
+	s->highest = (T *)(void *)b->highest;
+	s->low = (T *)(void *)b->low;
+	s->high = (T *)(void *)b->high;
+	s->stats = b->stats;
+	s->cell_low = (T *)(void *)b->cells;
+	s->cell_high = s->cell_low + g->columns;
+	s->cell_mid = s->cell_high + g->columns;
+	s->inner = b->inner, s->spare = b->spare;
+	double least, most;
+	pg_limits(f, g, &least, &most);
+	s->least = (T)least, s->most = (T)most;
+}
+
+// group takes four rows from y through the pass; with keep they count for cells.
+static int group(state *s, int y, int keep) {
+	const pg_frame *f = s->f;
+	int x0, x1;
+	hull(f, y - GROUP, y + 2 * GROUP, &x0, &x1);
+	if (x0 >= x1 || y < 0 || y >= f->height) {
+		for (int k = 0; k < GROUP; k++)
+			memset(s->ring[(y + k) & 7] - PAD, 0, sizeof(T) * (size_t)s->pitch);
+		return PG_OK;
+	}
+	int e = load(s, s->value, y, x0, x1, keep);
+	if (e)
+		return e;
+	if (keep)
+		add_moments(s, s->value, x0, x1);
+	for (int k = 0; k < GROUP; k++)
+		if (y + k < f->height)
+			to_signal(s, s->value[k], y + k, x0, x1);
+		else
+			memset(s->ring[(y + k) & 7] - PAD, 0, sizeof(T) * (size_t)s->pitch);
+	return PG_OK;
+}
+
+// emit filters along y and adds the runs of the rows y − 2 to y + 1 that lie from first to
+// before last.
+static int emit(state *s, int y, int first, int last) {
+	int x0, x1;
+	hull(s->f, y - 2, y + 2, &x0, &x1);
+	if (x0 < x1) {
+		thresholds(s, y - 2);
+		vertical(s, y, x0, x1);
+	}
+	if (s->f->use_grain && y - 2 >= first && y - 2 < last)
+		take_samples(s, s->filtered[0], y - 2);
+	for (int k = 0; k < GROUP && x0 < x1; k++) {
+		int row = y - 2 + k;
+		if (row >= first && row < last && runs_of(s, s->filtered[k], row))
+			return PG_NO_MEMORY;
+	}
+	return PG_OK;
+}
+
+static int pass(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, int row0, int row1) {
+	state s;
+	start(&s, f, g, out, b);
+	b->runs.count = b->saturated.count = 0;
+	int first = row0 * f->cell, last = row1 * f->cell < f->height ? row1 * f->cell : f->height;
+	int e = group(&s, first - GROUP, 0), y = first;
+	for (; y < last && !e; y += GROUP) {
+		if (y % f->cell == 0)
+			start_cells(&s, y / f->cell);
+		e = group(&s, y, 1);
+		e = e ? e : emit(&s, y, first, last);
+		if (y % f->cell == 0 && y > first) // the last samples of the row above came with this group
+			finish_grain(&s, y / f->cell - 1);
+		if (!e && ((y + GROUP) % f->cell == 0 || y + GROUP >= last))
+			e = finish_moments(&s, y / f->cell);
+	}
+	e = e ? e : group(&s, y, 0);
+	e = e ? e : emit(&s, y, first, last);
+	finish_grain(&s, row1 - 1);
+	return e;
+}
