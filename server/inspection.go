@@ -111,9 +111,9 @@ func (s *Inspection) GetUnit(ctx context.Context, req *inspectpb.GetUnitRequest)
 // ListMismatches implements InspectionService.
 func (s *Inspection) ListMismatches(ctx context.Context, req *inspectpb.ListMismatchesRequest) (*inspectpb.ListMismatchesResponse, error) {
 	f := ledger.Filter{Part: req.Part, Line: req.Line, AnyPurpose: true}
-	page, err := s.deps.Ledger.Mismatches(ctx, f, ledger.Page{Limit: int(req.PageSize)})
+	page, err := s.deps.Ledger.Mismatches(ctx, f, ledger.Page{Limit: int(req.PageSize), After: req.PageToken})
 	if err != nil {
 		return nil, inspectpb.ToStatus(err)
 	}
-	return &inspectpb.ListMismatchesResponse{Inspections: records(page.List)}, nil
+	return &inspectpb.ListMismatchesResponse{Inspections: records(page.List), NextPageToken: page.Next}, nil
 }

@@ -52,12 +52,21 @@ func (f *outcomeFlags) list(c *cobra.Command) error {
 	list := []inspectionOf{}
 	err := ask(c.Context(), f.server, func(ctx context.Context, conn *grpc.ClientConn) error {
 		client := inspectpb.NewInspectionServiceClient(conn)
-		req := &inspectpb.ListMismatchesRequest{Part: f.part, Line: f.line}
-		r, err := client.ListMismatches(ctx, req)
-		if err == nil {
-			list, err = newInspections(r.GetInspections())
+		req := &inspectpb.ListMismatchesRequest{Part: f.part, Line: f.line, PageSize: pageSize}
+		for {
+			r, err := client.ListMismatches(ctx, req)
+			if err != nil {
+				return err
+			}
+			page, err := newInspections(r.GetInspections())
+			if err != nil {
+				return err
+			}
+			list = append(list, page...)
+			if req.PageToken = r.GetNextPageToken(); req.PageToken == "" {
+				return nil
+			}
 		}
-		return err
 	})
 	if err != nil {
 		return err

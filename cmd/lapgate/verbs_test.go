@@ -90,7 +90,10 @@ func (o *office) ReportOutcome(_ context.Context, r *inspectpb.ReportOutcomeRequ
 
 func (o *office) ListMismatches(_ context.Context, r *inspectpb.ListMismatchesRequest) (*inspectpb.ListMismatchesResponse, error) {
 	o.asked = r
-	return &inspectpb.ListMismatchesResponse{Inspections: []*inspectpb.InspectionRecord{showingRecord("12", 2, pipeline.Accept)}}, nil
+	if r.PageToken == "" {
+		return &inspectpb.ListMismatchesResponse{Inspections: []*inspectpb.InspectionRecord{showingRecord("12", 2, pipeline.Accept)}, NextPageToken: "2"}, nil
+	}
+	return &inspectpb.ListMismatchesResponse{Inspections: []*inspectpb.InspectionRecord{showingRecord("15", 3, pipeline.Reject)}}, nil
 }
 
 func rate(k, n int32) *inspectpb.Rate {
@@ -160,7 +163,7 @@ func TestVerbsForAPerson(t *testing.T) {
 		{"holds", []string{"11", "14", "coverage"}},
 		{"dispose 11 accept --person Ada --reason clean", []string{"inspection 11 of unit U1: accept by Ada"}},
 		{"outcome U1 --bin reject", []string{"unit U1, attempt 2: reject bin; the verdict was accept"}},
-		{"outcome --mismatches", []string{"12"}},
+		{"outcome --mismatches", []string{"12", "15"}},
 		{"recipes", []string{"mirror-25.yaml", "ring bar", "not loaded: mirror-40.yaml:3:7: unknown key"}},
 		{"recipes --hash sha256:ab", []string{"part: mirror-25\n"}},
 	} {

@@ -1445,6 +1445,7 @@ type ListMismatchesRequest struct {
 	Part          string                 `protobuf:"bytes,1,opt,name=part,proto3" json:"part,omitempty"`
 	Line          string                 `protobuf:"bytes,2,opt,name=line,proto3" json:"line,omitempty"`
 	PageSize      int32                  `protobuf:"varint,3,opt,name=page_size,json=pageSize,proto3" json:"page_size,omitempty"`
+	PageToken     string                 `protobuf:"bytes,4,opt,name=page_token,json=pageToken,proto3" json:"page_token,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1500,10 +1501,18 @@ func (x *ListMismatchesRequest) GetPageSize() int32 {
 	return 0
 }
 
+func (x *ListMismatchesRequest) GetPageToken() string {
+	if x != nil {
+		return x.PageToken
+	}
+	return ""
+}
+
 // ListMismatchesResponse lists units whose outcome differs from their verdict.
 type ListMismatchesResponse struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
 	Inspections   []*InspectionRecord    `protobuf:"bytes,1,rep,name=inspections,proto3" json:"inspections,omitempty"`
+	NextPageToken string                 `protobuf:"bytes,2,opt,name=next_page_token,json=nextPageToken,proto3" json:"next_page_token,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1543,6 +1552,13 @@ func (x *ListMismatchesResponse) GetInspections() []*InspectionRecord {
 		return x.Inspections
 	}
 	return nil
+}
+
+func (x *ListMismatchesResponse) GetNextPageToken() string {
+	if x != nil {
+		return x.NextPageToken
+	}
+	return ""
 }
 
 // HeartbeatRequest names the station that is alive.
@@ -1942,13 +1958,16 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\x04part\x18\x01 \x01(\tR\x04part\x12\x12\n" +
 	"\x04unit\x18\x02 \x01(\tR\x04unit\"Y\n" +
 	"\x0fGetUnitResponse\x12F\n" +
-	"\vinspections\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\vinspections\"\\\n" +
+	"\vinspections\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\vinspections\"{\n" +
 	"\x15ListMismatchesRequest\x12\x12\n" +
 	"\x04part\x18\x01 \x01(\tR\x04part\x12\x12\n" +
 	"\x04line\x18\x02 \x01(\tR\x04line\x12\x1b\n" +
-	"\tpage_size\x18\x03 \x01(\x05R\bpageSize\"`\n" +
+	"\tpage_size\x18\x03 \x01(\x05R\bpageSize\x12\x1d\n" +
+	"\n" +
+	"page_token\x18\x04 \x01(\tR\tpageToken\"\x88\x01\n" +
 	"\x16ListMismatchesResponse\x12F\n" +
-	"\vinspections\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\vinspections\"@\n" +
+	"\vinspections\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\vinspections\x12&\n" +
+	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"@\n" +
 	"\x10HeartbeatRequest\x12\x12\n" +
 	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
 	"\astation\x18\x02 \x01(\tR\astation\"\xa2\x01\n" +
