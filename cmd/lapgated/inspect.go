@@ -18,7 +18,6 @@ import (
 	"lapgate/pipeline/calibrate"
 	"lapgate/pipeline/raster"
 	"lapgate/pipeline/raster/files"
-	"lapgate/plugins/builtin"
 )
 
 // inspectFlags are the flags of inspect.
@@ -31,6 +30,7 @@ type inspectFlags struct {
 	asJSON       bool
 	gate         bool
 	unfused      bool
+	plugins      string
 }
 
 func (a *app) inspectCommand() *cobra.Command {
@@ -52,6 +52,7 @@ func (a *app) inspectCommand() *cobra.Command {
 	flags.BoolVar(&f.asJSON, "json", false, "one JSON document on stdout")
 	flags.BoolVar(&f.gate, "gate", false, "exit 0 for accept, 3 for reject, 4 for hold")
 	flags.BoolVar(&f.unfused, "unfused", false, "run every stage by itself, for comparison")
+	pluginsFlag(flags, &f.plugins)
 	return cmd
 }
 
@@ -59,7 +60,12 @@ func (a *app) inspect(f inspectFlags, args []string) error {
 	if f.recipe == "" {
 		return usageError{errors.New("--recipe: not given, want the recipe file")}
 	}
-	p, err := buildFrom(f)
+	set, err := openStages(context.Background(), f.plugins, a.quiet(), nil)
+	if err != nil {
+		return err
+	}
+	defer set.close()
+	p, err := buildFrom(f, set.catalogue)
 	if err != nil {
 		return err
 	}
@@ -88,11 +94,7 @@ func (a *app) inspect(f inspectFlags, args []string) error {
 	return printInspection(a.out, id, e, j)
 }
 
-func buildFrom(f inspectFlags) (*pipeline.Pipeline, error) {
-	cat, err := builtin.Catalogue()
-	if err != nil {
-		return nil, err
-	}
+func buildFrom(f inspectFlags, cat *pipeline.Catalogue) (*pipeline.Pipeline, error) {
 	recipe, err := configs.LoadRecipe(f.recipe, cat)
 	if err != nil {
 		return nil, err

@@ -10,6 +10,7 @@ import (
 	"path/filepath"
 	"runtime"
 	"strings"
+	"sync/atomic"
 	"time"
 
 	"google.golang.org/grpc"
@@ -18,7 +19,7 @@ import (
 
 	"lapgate/configs"
 	"lapgate/pipeline"
-	"lapgate/plugins/builtin"
+	"lapgate/plugins/outside"
 	"lapgate/server"
 	"lapgate/server/images"
 	"lapgate/server/intake"
@@ -37,8 +38,10 @@ type serving struct {
 	intake   *intake.Intake
 	book     *server.Book
 	keeper   *keeper
+	stages   *stageSet
 	grpc     *grpc.Server
 	health   *health.Server
+	told     atomic.Pointer[health.Server] // health, once plug-ins can be told of there
 	listener net.Listener
 	served   chan error
 }
@@ -56,10 +59,11 @@ func startServing(ctx context.Context, set configs.Server, log *slog.Logger) (*s
 }
 
 func (s *serving) open(ctx context.Context) error {
-	cat, err := builtin.Catalogue()
-	if err != nil {
+	var err error
+	if s.stages, err = openStages(ctx, s.settings.Plugins, s.log, s.tellStage); err != nil {
 		return err
 	}
+	cat := s.stages.catalogue
 	if s.ledger, err = ledger.Open(ctx, s.settings.Ledger); err != nil {
 		return fmt.Errorf("ledger %s: %w", s.settings.Ledger, err)
 	}
@@ -89,8 +93,26 @@ func (s *serving) open(ctx context.Context) error {
 		Check: func(file string, text []byte) error { _, err := decode(file, text); return err },
 		Gate:  gate, Stations: stations, People: server.People{List: people}},
 		server.GRPCOptions{MaxMessageBytes: int(min(s.settings.MaxBytesInFlight, 1<<30)), MaxStreams: maxStreams, Reflection: s.settings.Reflection})
+	s.told.Store(s.health)
+	for _, h := range s.stages.hosts {
+		s.tellStage(h.Status())
+	}
 	s.listener, err = listen(s.settings.Listen)
 	return err
+}
+
+// tellStage puts the state of a stage outside into the health service, as "stage." and
+// its type.
+func (s *serving) tellStage(st outside.Status) {
+	h := s.told.Load()
+	if h == nil {
+		return
+	}
+	state := healthpb.HealthCheckResponse_NOT_SERVING
+	if st.State == outside.Up {
+		state = healthpb.HealthCheckResponse_SERVING
+	}
+	h.SetServingStatus("stage."+st.Type, state)
 }
 
 // listen opens a TCP address, or a unix socket for unix:PATH.
@@ -170,6 +192,7 @@ func (s *serving) close() error {
 	if s.book != nil {
 		errs = append(errs, s.book.Close())
 	}
+	errs = append(errs, s.stages.close())
 	if s.ledger != nil {
 		errs = append(errs, s.ledger.Close())
 	}

@@ -1,42 +1,60 @@
 package main
 
 import (
+	"context"
 	"encoding/json"
 	"fmt"
 	"io"
+	"log/slog"
 	"strings"
 
 	"github.com/spf13/cobra"
 
 	"lapgate/configs"
 	"lapgate/pipeline"
-	"lapgate/plugins/builtin"
 )
 
 func (a *app) stagesCommand() *cobra.Command {
 	var asJSON bool
+	var plugins string
 	cmd := &cobra.Command{
 		Use:   "stages [TYPE]",
-		Short: "List the stages with their settings and defaults",
+		Short: "List the stages, inside and outside alike, with their settings and defaults",
 		Args:  cobra.MaximumNArgs(1),
-		RunE: func(_ *cobra.Command, args []string) error {
-			list, err := stageList(args)
-			if err != nil {
-				return err
-			}
-			if asJSON {
-				return printJSON(a.out, map[string]any{"stages": list})
-			}
-			for _, s := range list {
-				if err := s.print(a.out); err != nil {
-					return err
-				}
-			}
-			return nil
+		RunE: func(cmd *cobra.Command, args []string) error {
+			return a.listStages(cmd.Context(), plugins, args, asJSON)
 		},
 	}
 	cmd.Flags().BoolVar(&asJSON, "json", false, "one JSON document on stdout")
+	pluginsFlag(cmd.Flags(), &plugins)
+	cmd.AddCommand(a.tryCommand(), a.verifyCommand())
 	return cmd
+}
+
+func (a *app) listStages(ctx context.Context, plugins string, only []string, asJSON bool) error {
+	set, err := openStages(ctx, plugins, a.quiet(), nil)
+	if err != nil {
+		return err
+	}
+	defer set.close()
+	list, err := set.list(only)
+	if err != nil {
+		return err
+	}
+	if asJSON {
+		return printJSON(a.out, map[string]any{"stages": list})
+	}
+	for _, s := range list {
+		if err := s.print(a.out); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// quiet is a log for verbs that end by themselves: only what went wrong.
+func (a *app) quiet() *slog.Logger {
+	return slog.New(slog.NewTextHandler(a.err, &slog.HandlerOptions{Level: slog.LevelWarn}))
 }
 
 // stageFacts is what is printed of a stage.
@@ -48,15 +66,13 @@ type stageFacts struct {
 	Reads    []string        `json:"reads"`
 	Writes   []string        `json:"writes"`
 	Stateful bool            `json:"stateful"`
+	Runs     string          `json:"runs"` // inside, or the program of its process
 	Defaults json.RawMessage `json:"default_settings"`
 	yaml     string
 }
 
-func stageList(only []string) ([]stageFacts, error) {
-	cat, err := builtin.Catalogue()
-	if err != nil {
-		return nil, err
-	}
+func (s *stageSet) list(only []string) ([]stageFacts, error) {
+	cat := s.catalogue
 	types := cat.Types()
 	if len(only) > 0 {
 		types = only
@@ -75,14 +91,22 @@ func stageList(only []string) ([]stageFacts, error) {
 		if err != nil {
 			return nil, fmt.Errorf("stage %s: %w", t, err)
 		}
-		out = append(out, stageFacts{f.Type, f.Version, f.Summary, f.Scope, f.Reads, f.Writes, f.Stateful, asJSON, text})
+		out = append(out, stageFacts{f.Type, f.Version, f.Summary, f.Scope, f.Reads, f.Writes, f.Stateful, s.runs(t), asJSON, text})
 	}
 	return out, nil
 }
 
+// runs says where a stage runs.
+func (s *stageSet) runs(typ string) string {
+	if path, ok := s.paths[typ]; ok {
+		return path
+	}
+	return "inside"
+}
+
 func (s stageFacts) print(w io.Writer) error {
-	_, err := fmt.Fprintf(w, "%s (version %s, works on one %s)\n  %s\n  reads: %s\n  writes: %s\n  settings and defaults:\n%s\n",
-		s.Type, s.Version, s.Scope, s.Summary, orNone(s.Reads), orNone(s.Writes), indent(s.yaml, "    "))
+	_, err := fmt.Fprintf(w, "%s (version %s, works on one %s, runs %s)\n  %s\n  reads: %s\n  writes: %s\n  settings and defaults:\n%s\n",
+		s.Type, s.Version, s.Scope, s.Runs, s.Summary, orNone(s.Reads), orNone(s.Writes), indent(s.yaml, "    "))
 	return err
 }
 

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"os"
@@ -9,29 +10,31 @@ import (
 
 	"lapgate/configs"
 	"lapgate/pipeline"
-	"lapgate/plugins/builtin"
 )
 
 func (a *app) validateCommand() *cobra.Command {
 	var asJSON bool
+	var plugins string
 	cmd := &cobra.Command{
 		Use:   "validate FILE|FOLDER ...",
 		Short: "Check recipes and say file:line:column, what was found and what is allowed",
 		Args:  cobra.MinimumNArgs(1),
-		RunE:  func(_ *cobra.Command, args []string) error { return a.validate(args, asJSON) },
+		RunE:  func(cmd *cobra.Command, args []string) error { return a.validate(cmd.Context(), args, plugins, asJSON) },
 	}
 	cmd.Flags().BoolVar(&asJSON, "json", false, "one JSON document on stdout")
+	pluginsFlag(cmd.Flags(), &plugins)
 	return cmd
 }
 
-func (a *app) validate(paths []string, asJSON bool) error {
-	cat, err := builtin.Catalogue()
+func (a *app) validate(ctx context.Context, paths []string, plugins string, asJSON bool) error {
+	set, err := openStages(ctx, plugins, a.quiet(), nil)
 	if err != nil {
 		return err
 	}
+	defer set.close()
 	var all []configs.Problem
 	for _, p := range paths {
-		problems, err := validatePath(p, cat)
+		problems, err := validatePath(p, set.catalogue)
 		if err != nil {
 			return usageError{err}
 		}

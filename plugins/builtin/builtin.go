@@ -31,5 +31,8 @@ func Stages() []pipeline.Factory {
 	}
 }
 
-// Catalogue returns the catalogue of all stages. It cannot fail unless two have one type.
-func Catalogue() (*pipeline.Catalogue, error) { return pipeline.NewCatalogue(Stages(), nil) }
+// Catalogue returns the catalogue of all stages and those given beside them. It cannot
+// fail unless two have one type.
+func Catalogue(more ...pipeline.Factory) (*pipeline.Catalogue, error) {
+	return pipeline.NewCatalogue(append(Stages(), more...), nil)
+}

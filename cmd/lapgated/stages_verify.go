@@ -1,0 +1,133 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"path/filepath"
+
+	"github.com/spf13/cobra"
+
+	"lapgate/pipeline"
+	"lapgate/pipeline/raster"
+	"lapgate/plugins/builtin"
+	"lapgate/plugins/outside"
+	"lapgate/plugins/stagetest"
+)
+
+func (a *app) verifyCommand() *cobra.Command {
+	var asJSON bool
+	var args []string
+	cmd := &cobra.Command{
+		Use:   "verify PATH",
+		Short: "Start a plug-in that nobody here has seen, put it through the conformance suite and say what holds",
+		Args:  cobra.ExactArgs(1),
+		RunE:  func(cmd *cobra.Command, paths []string) error { return a.verify(cmd.Context(), paths[0], args, asJSON) },
+	}
+	cmd.Flags().StringArrayVar(&args, "arg", nil, "an argument for the program; repeat")
+	cmd.Flags().BoolVar(&asJSON, "json", false, "one JSON document on stdout")
+	return cmd
+}
+
+func (a *app) verify(ctx context.Context, path string, args []string, asJSON bool) error {
+	set := outside.DefaultSettings()
+	set.Name, set.Path, set.Args = filepath.Base(path), path, args
+	h, err := outside.Open(ctx, set, a.quiet())
+	if err != nil {
+		return err
+	}
+	defer h.Close()
+	cat, err := builtin.Catalogue()
+	if err != nil {
+		return err
+	}
+	f := h.Factory()
+	verdicts := stagetest.Verify(f, itemsFor(cat, f))
+	verdicts = append(verdicts, survived(h.Status()))
+	failed := 0
+	for _, v := range verdicts {
+		if !v.Pass && v.Skipped == "" {
+			failed++
+		}
+	}
+	if asJSON {
+		err = printJSON(a.out, map[string]any{"stage": f.Type, "version": f.Version, "summary": f.Summary, "bound_by": h.Status().Isolation, "verdicts": verdicts})
+	} else {
+		err = a.printVerdicts(f, verdicts)
+	}
+	if err == nil && failed > 0 {
+		err = fmt.Errorf("%s: %d of %d properties do not hold", path, failed, len(verdicts))
+	}
+	return err
+}
+
+// survived is the verdict on the process itself.
+func survived(s outside.Status) stagetest.Verdict {
+	v := stagetest.Verdict{Property: "survived", Wanted: "The process lived through all of this, and no answer of it had to be refused.", Pass: s.Restarts == 0 && s.State == outside.Up}
+	if !v.Pass {
+		v.Findings = []string{fmt.Sprintf("%s after %d restarts: %s", s.State, s.Restarts, s.LastError)}
+	}
+	return v
+}
+
+func (a *app) printVerdicts(f pipeline.Factory, verdicts []stagetest.Verdict) error {
+	fmt.Fprintf(a.out, "%s (version %s): %s\n", f.Type, f.Version, f.Summary)
+	for _, v := range verdicts {
+		word := "holds"
+		switch {
+		case v.Skipped != "":
+			word = "skipped (" + v.Skipped + ")"
+		case !v.Pass:
+			word = "DOES NOT HOLD"
+		}
+		fmt.Fprintf(a.out, "%-16s %s: %s\n", v.Property, word, v.Wanted)
+		for _, finding := range v.Findings {
+			fmt.Fprintf(a.out, "%16s %s\n", "", finding)
+		}
+	}
+	return nil
+}
+
+// itemsFor makes items as a stage gets them: after those inside stages, with their
+// defaults, that write what it reads.
+func itemsFor(cat *pipeline.Catalogue, f pipeline.Factory) stagetest.Maker {
+	before := needed(cat, f)
+	return func(raw raster.Raw) *pipeline.Item {
+		item := verifyItem(raw)
+		for _, t := range before {
+			if err := runBefore(cat, t, item); err != nil {
+				panic(fmt.Sprintf("stage %s before it: %v", t, err))
+			}
+		}
+		if f.Scope == pipeline.ScopeUnit {
+			for i := range item.Defects {
+				item.Defects[i].ID = i + 1
+			}
+			return &pipeline.Item{Views: []*pipeline.Item{item}, Defects: item.Defects}
+		}
+		return item
+	}
+}
+
+func runBefore(cat *pipeline.Catalogue, typ string, item *pipeline.Item) error {
+	f, err := cat.Factory(typ)
+	if err != nil {
+		return err
+	}
+	stage, _, err := f.New(nil, pipeline.Environment{View: item.View, Calibration: item.Calibration, Geometry: item.Geometry})
+	if err != nil {
+		return err
+	}
+	return stage.Run(context.Background(), item)
+}
+
+// verifyItem is a view with a calibration that is not flat.
+func verifyItem(raw raster.Raw) *pipeline.Item {
+	w, h := raw.Width, raw.Height
+	dark, response := raster.NewPlane(w, h), raster.NewPlane(w, h)
+	for i := range response.Pix {
+		dark.Pix[i] = float32(i % 3)
+		response.Pix[i] = 0.9 + 0.05*float32(i%5)
+	}
+	cal := &pipeline.Calibration{Hash: "verify", Dark: dark, Response: response, BadPixels: []pipeline.PixelAt{{X: 0, Y: 0}}}
+	return &pipeline.Item{View: "view", Frames: []pipeline.Frame{{Raw: raw}}, Calibration: cal, Geometry: pipeline.Planar{UMPerPx: 10}}
+}
