@@ -47,6 +47,7 @@ type section struct {
 func sections() []section {
 	return []section{
 		{name: "rendered", run: evaluateRendered},
+		{name: "sizing", run: evaluateSizing},
 		{name: "aircraft_glass_agdd", folder: "aircraft_glass_agdd", run: evaluateGlass, choose: chooseGlass},
 		{name: "magnetic_tile", folder: "magnetic_tile", run: evaluateTiles, choose: chooseTiles},
 		{name: "emva1288_ccd12", folder: "emva1288_ccd12", run: evaluateCamera},
