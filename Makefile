@@ -10,7 +10,7 @@ COMMIT  := $(shell git rev-parse --short=12 HEAD 2>/dev/null || echo unknown)
 LDFLAGS := -X main.version=$(VERSION) -X main.commit=$(COMMIT)
 DATA    ?= $(firstword $(wildcard ../shared/data ../../shared/data))
 
-.PHONY: all deps deps-check build test race fuzz demo bench evaluate crosscheck lint gen clean
+.PHONY: all deps deps-check build test race fuzz demo bench spoil evaluate crosscheck lint gen clean
 
 all: build
 
@@ -38,6 +38,9 @@ demo: build ## the main job with embedded defaults; ONCE=1 stops after the repor
 
 bench: build
 	go run ./cmd/bench --out build/bench.json
+
+spoil: deps ## what becomes of units that must not be accepted
+	go run ./cmd/spoil --out build/spoil.json
 
 evaluate: build
 	go run ./cmd/evaluate --data '$(DATA)' --out build/evaluate.json

@@ -44,5 +44,8 @@ func CoverageCause(e Evidence) string {
 			causes = append(causes, fmt.Sprintf("%.1f %% %s", 100*c.share, c.text))
 		}
 	}
+	if causes == nil {
+		return ""
+	}
 	return fmt.Sprintf(" (view %s: %s)", e.Views[worst].Name, strings.Join(causes, ", "))
 }
