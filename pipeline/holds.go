@@ -17,6 +17,7 @@ const (
 	ReasonAttempts    = "too many attempts"
 	ReasonOverdue     = "master overdue"
 	ReasonMaster      = "master failed"
+	ReasonMasterUnit  = "master shown as a unit"
 )
 
 // HoldReasons returns why evidence cannot be accepted whatever its limits say:

@@ -191,6 +191,7 @@ func TestAnOverdueMasterHoldsTheStation(t *testing.T) {
 	}
 	r.passMasters()
 	r.want(accept, "")(r.show("u5", 1, pipeline.Production, 0))
+	r.want(hold, "master shown as a unit: unit M-CLEAN is a master")(r.show("M-CLEAN", 1, pipeline.Production, 0))
 }
 
 // Restart, another recipe and a changed lamp make masters due; the units before are not

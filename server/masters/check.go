@@ -11,8 +11,16 @@ import (
 
 // Spec returns the master that a showing is of; ok is false where the recipe names none.
 func Spec(r *pipeline.Recipe, id pipeline.Identity) (m pipeline.MasterSpec, ok bool) {
-	i := slices.IndexFunc(r.Masters, func(m pipeline.MasterSpec) bool { return m.Unit == id.Unit })
-	if i < 0 || id.Purpose != pipeline.Master {
+	if id.Purpose != pipeline.Master {
+		return m, false
+	}
+	return named(r, id.Unit)
+}
+
+// named returns the master of a recipe that has this unit id.
+func named(r *pipeline.Recipe, unit string) (m pipeline.MasterSpec, ok bool) {
+	i := slices.IndexFunc(r.Masters, func(m pipeline.MasterSpec) bool { return m.Unit == unit })
+	if i < 0 {
 		return m, false
 	}
 	return r.Masters[i], true

@@ -2,6 +2,7 @@ package masters
 
 import (
 	"context"
+	"fmt"
 	"log/slog"
 	"sync"
 	"time"
@@ -40,6 +41,9 @@ func (g *Gate) Enter(ctx context.Context, id pipeline.Identity, r *pipeline.Reci
 	lock.RLock()
 	if !ships(id.Purpose) {
 		return nil, lock.RUnlock, nil
+	}
+	if m, named := named(r, id.Unit); named {
+		return []pipeline.Failure{{Reason: pipeline.ReasonMasterUnit, Detail: fmt.Sprintf("unit %s is a master of this recipe: it does not ship; show it with purpose master", m.Unit)}}, lock.RUnlock, nil
 	}
 	states, err := g.States(ctx, ledger.PlaceOf(id), r, conditions)
 	if err == nil {
