@@ -9,6 +9,7 @@ import (
 	"lapgate/plugins/classify"
 	"lapgate/plugins/coverage"
 	"lapgate/plugins/darkfield"
+	"lapgate/plugins/edge"
 	"lapgate/plugins/flatfield"
 	"lapgate/plugins/merge"
 	"lapgate/plugins/proof"
@@ -25,6 +26,7 @@ func Stages() []pipeline.Factory {
 		blobs.Factory,
 		areas.Factory,
 		coverage.Factory,
+		edge.Factory,
 		merge.Factory(),
 		classify.Factory(),
 		classify.ViewFactory(),
