@@ -19,6 +19,8 @@ type Store struct {
 	engine engine
 	writer *sql.DB
 	reader *sql.DB
+	// lastCheck is asked several times for each unit; preparing it takes longer than running it.
+	lastCheck *sql.Stmt
 }
 
 // engine is what differs between databases: how to open one and what its errors mean.
@@ -44,14 +46,24 @@ func Open(ctx context.Context, dsn string) (*Store, error) {
 		return nil, e.classify(err)
 	}
 	s := &Store{Now: time.Now, engine: e, writer: w, reader: r}
-	if err := s.migrate(ctx); err != nil {
+	err = s.migrate(ctx)
+	if err == nil {
+		s.lastCheck, err = r.PrepareContext(ctx, lastCheckQuery)
+	}
+	if err != nil {
 		return nil, errors.Join(e.classify(err), s.Close())
 	}
 	return s, nil
 }
 
 // Close closes the ledger. What was recorded is on disk already.
-func (s *Store) Close() error { return errors.Join(s.reader.Close(), s.writer.Close()) }
+func (s *Store) Close() error {
+	var err error
+	if s.lastCheck != nil {
+		err = s.lastCheck.Close()
+	}
+	return errors.Join(err, s.reader.Close(), s.writer.Close())
+}
 
 // Engine returns "sqlite" or "postgresql".
 func (s *Store) Engine() string { return s.engine.name }

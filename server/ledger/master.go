@@ -82,15 +82,13 @@ func insertCheck(ctx context.Context, tx *sql.Tx, in Inspection) error {
 // LastCheck returns the latest check of a master at a place that had the result, by the
 // recipe with this text hash or by any (empty), or an error of kind NotFoundKind.
 func (s *Store) LastCheck(ctx context.Context, p MasterPlace, master string, result CheckResult, recipe string) (MasterCheck, error) {
-	c, err := lastCheck(ctx, s.reader, p, master, result, recipe)
+	c, err := scanCheck(s.lastCheck.QueryRowContext(ctx, p.args(master, string(result), recipe)...))
 	return c, s.engine.classify(orMissing(err, "master %s: no %s on record for part %s on line %s, station %s", master, result, p.Part, p.Line, p.Station))
 }
 
-func lastCheck(ctx context.Context, q queryer, p MasterPlace, master string, result CheckResult, recipe string) (MasterCheck, error) {
-	return scanCheck(q.QueryRowContext(ctx, `SELECT `+checkColumns+` FROM master_checks WHERE `+wherePlace+
-		` AND master = $5 AND result = $6 AND (CAST($7 AS TEXT) = '' OR recipe = $7) ORDER BY at_us DESC, inspection_id DESC LIMIT 1`,
-		p.args(master, string(result), recipe)...))
-}
+// lastCheckQuery has the arguments of a place, the master, the result and a recipe or "".
+const lastCheckQuery = `SELECT ` + checkColumns + ` FROM master_checks WHERE ` + wherePlace +
+	` AND master = $5 AND result = $6 AND (CAST($7 AS TEXT) = '' OR recipe = $7) ORDER BY at_us DESC, inspection_id DESC LIMIT 1`
 
 func scanCheck(r row) (MasterCheck, error) {
 	var c MasterCheck

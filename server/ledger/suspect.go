@@ -59,7 +59,7 @@ func (s *Store) MarkSuspects(ctx context.Context, p MasterPlace, why Suspicion) 
 func markSuspects(ctx context.Context, tx *sql.Tx, p MasterPlace, why Suspicion) (int, error) {
 	args := p.args(why.Master, string(why.Cause), why.Why, micros(why.At), string(pipeline.Production), string(pipeline.Recheck))
 	since, more := `recipe = $11`, []any{why.Recipe}
-	switch pass, err := lastCheck(ctx, tx, p, why.Master, CheckPass, ""); {
+	switch pass, err := scanCheck(tx.QueryRowContext(ctx, lastCheckQuery, p.args(why.Master, string(CheckPass), "")...)); {
 	case err == nil:
 		since, more = `(judged_us > $11 OR counted_us > $12)`, []any{micros(pass.At), micros(pass.Counted)}
 	case !errors.Is(err, sql.ErrNoRows):
