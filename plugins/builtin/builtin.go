@@ -9,6 +9,7 @@ import (
 	"lapgate/plugins/classify"
 	"lapgate/plugins/coverage"
 	"lapgate/plugins/darkfield"
+	"lapgate/plugins/datum"
 	"lapgate/plugins/edge"
 	"lapgate/plugins/flatfield"
 	"lapgate/plugins/merge"
@@ -28,6 +29,7 @@ func Stages() []pipeline.Factory {
 		coverage.Factory,
 		edge.Factory,
 		merge.Factory(),
+		datum.Factory,
 		classify.Factory(),
 		classify.ViewFactory(),
 	}
