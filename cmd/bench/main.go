@@ -26,6 +26,7 @@ type options struct {
 }
 
 func main() {
+	serveIfAsked()
 	var o options
 	out := flag.String("out", "build/bench.json", "file to write")
 	flag.StringVar(&o.lapgated, "lapgated", "build/lapgated", "the server program")
@@ -45,6 +46,7 @@ func run(o options, out string) error {
 	}{
 		{"reference and OpenCV chains, 12 megapixels", benchChains},
 		{"gRPC round trip and latency", benchServer},
+		{"stages in processes of their own", benchOutside},
 	} {
 		fmt.Fprintf(os.Stderr, "bench: %s\n", part.name)
 		figures, err := part.measure(o)
