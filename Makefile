@@ -24,11 +24,10 @@ build: deps
 	CGO_ENABLED=0 GOOS=windows GOARCH=amd64 go build -ldflags '$(LDFLAGS)' -o build/lapgate.exe ./cmd/lapgate
 
 test: build
-	go vet ./...
 	go test ./...
 
-race: deps
-	go test -race -short ./pipeline/... ./plugins/... ./server/... ./configs/... ./cmd/lapgate/...
+race: deps ## where goroutines share something; the kernels of raster do not
+	go test -race -short ./pipeline ./plugins/builtin ./plugins/outside ./server ./server/intake ./server/images ./server/ledger ./server/masters ./configs ./cmd/lapgate/...
 
 fuzz: deps ## every fuzz target for FUZZTIME
 	@.ci/fuzz $(or $(FUZZTIME),5s)
