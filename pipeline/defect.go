@@ -1,5 +1,7 @@
 package pipeline
 
+import "math"
+
 // Kind is the sort of a surface imperfection.
 type Kind string
 
@@ -71,4 +73,30 @@ type Defect struct {
 type Ref struct {
 	View string `json:"view"`
 	ID   int    `json:"id"`
+}
+
+// Elongation is the length over the width; 0 where there is no width.
+func (d Defect) Elongation() float64 {
+	if d.WidthUM <= 0 {
+		return 0
+	}
+	return d.LengthUM / d.WidthUM
+}
+
+// Coil is the length along the course over the diagonal of the box around the defect: at
+// most about 1 for a straight one, more where it bends back or coils, as fibres do.
+func (d Defect) Coil() float64 {
+	diagonal := math.Hypot(float64(d.Box.X1-d.Box.X0), float64(d.Box.Y1-d.Box.Y0))
+	if diagonal == 0 {
+		return 0
+	}
+	return d.LengthPx / diagonal
+}
+
+// ReachUM is how far an edge chip reaches in from the edge; 0 for other kinds.
+func (d Defect) ReachUM() float64 {
+	if d.Kind != EdgeChip {
+		return 0
+	}
+	return d.WidthUM
 }
