@@ -67,16 +67,16 @@ func plainFalse(t *testing.T, f pipeline.Frame, u Unit) int {
 
 // takeArea clears the 8-connected area about pixel i and returns its middle.
 func takeArea(m *raster.Mask, i int) (x, y float64) {
-	todo, n := []int{i}, 0.0
+	open, n := []int{i}, 0.0
 	m.Bits[i] = false
-	for len(todo) > 0 {
-		px, py := todo[len(todo)-1]%m.Width, todo[len(todo)-1]/m.Width
-		todo = todo[:len(todo)-1]
+	for len(open) > 0 {
+		px, py := open[len(open)-1]%m.Width, open[len(open)-1]/m.Width
+		open = open[:len(open)-1]
 		x, y, n = x+float64(px), y+float64(py), n+1
 		for k := range 9 {
 			if nx, ny := px+k%3-1, py+k/3-1; m.At(nx, ny) {
 				m.Set(nx, ny, false)
-				todo = append(todo, ny*m.Width+nx)
+				open = append(open, ny*m.Width+nx)
 			}
 		}
 	}

@@ -117,9 +117,9 @@ func TestJudgementsOfOthersAreAddedBesideTheLines(t *testing.T) {
 		if err := s.Judge(ctx, a.ID, j); err != nil {
 			t.Fatal(err)
 		}
-		todo, err := s.Showings(ctx, Filter{NotJudgedBy: "sha256:new"}, Page{})
-		if err != nil || len(todo.List) != 1 || todo.List[0].Unit != "0002" {
-			t.Errorf("left to judge: %+v, %v", todo, err)
+		left, err := s.Showings(ctx, Filter{NotJudgedBy: "sha256:new"}, Page{})
+		if err != nil || len(left.List) != 1 || left.List[0].Unit != "0002" {
+			t.Errorf("left to judge: %+v, %v", left, err)
 		}
 		if got, err := s.Find(ctx, a.Identity); err != nil || got.Judgement.Verdict != pipeline.Reject {
 			t.Errorf("the line's verdict is now %s, %v", got.Judgement.Verdict, err)
