@@ -36,7 +36,14 @@ func observe(p *plan.Plan, src rand.Source, ya, yb, falseReject, miss float64) {
 	p.Inspections[0].Miss = plan.Share{Count: sample(80, miss)}
 }
 
-func spreadOf(t *testing.T, p *plan.Plan, near float64) (*spread, *plan.Knowledge) {
+// meeting follows where the two combinations of a plan meet.
+type meeting struct {
+	*follower
+	knowledge *plan.Knowledge
+	x         followed
+}
+
+func meetingOf(t *testing.T, p *plan.Plan, near float64) *meeting {
 	t.Helper()
 	k, err := plan.Know(p)
 	if err != nil {
@@ -46,7 +53,16 @@ func spreadOf(t *testing.T, p *plan.Plan, near float64) (*spread, *plan.Knowledg
 	if err != nil {
 		t.Fatal(err)
 	}
-	return &spread{model: m, a: [2]int{0, 0}, b: [2]int{1, 0}, near: near, from: 10, to: 1e6}, k
+	return &meeting{newFollower(m, [][2]int{{0, 0}, {1, 0}}, 10, 1e6), k, followed{0, 1, near}}
+}
+
+func (m *meeting) distribution(t *testing.T, seed uint64, draws int) *CrossingDistribution {
+	t.Helper()
+	at, err := m.follow(context.Background(), draw(m.knowledge, seed, draws), []followed{m.x}, []int{draws}, func() {})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return distribution(at[0], 0.90)
 }
 
 // In each of 2 000 worlds the true shares are drawn, counts are drawn from
@@ -63,15 +79,11 @@ func TestCrossoverIntervalCoverage(t *testing.T) {
 		falseReject, miss := .005+.03*even.Float64(), .02+.08*even.Float64()
 		p := twoWays()
 		setTruth(p, ya, yb, falseReject, miss)
-		s, k := spreadOf(t, p, 7000)
-		truth := k.World(k.Values())
-		at := s.in(&truth)
+		m := meetingOf(t, p, 7000)
+		truth := m.knowledge.World(m.knowledge.Values())
+		at := m.scene().enter(&truth).nearest(m.x)
 		observe(p, src, ya, yb, falseReject, miss)
-		s, k = spreadOf(t, p, 7000)
-		d, err := s.over(context.Background(), draw(k, uint64(world), draws), 0.90)
-		if err != nil {
-			t.Fatal(err)
-		}
+		d := meetingOf(t, p, 7000).distribution(t, uint64(world), draws)
 		without += 1 - d.Share
 		if math.IsNaN(at) || d.Share == 0 {
 			continue
@@ -94,11 +106,8 @@ func TestDeltaMethodAgreesForLargeCounts(t *testing.T) {
 	p.Processes[0].Yield = plan.Yield{Count: &plan.Count{K: 16000, N: 20000}}
 	p.Processes[1].Yield = plan.Yield{Count: &plan.Count{K: 18000, N: 20000}}
 	p.Inspections[0].FalseReject, p.Inspections[0].Miss = count(400, 20000), count(1000, 20000)
-	s, k := spreadOf(t, p, 7000)
-	d, err := s.over(context.Background(), draw(k, 3, 4000), 0.90)
-	if err != nil {
-		t.Fatal(err)
-	}
-	near(t, "sd by delta over sd of draws", s.delta(k)/d.SD, 1, 0.06)
+	m := meetingOf(t, p, 7000)
+	d := m.distribution(t, 3, 4000)
+	near(t, "sd by delta over sd of draws", m.deltas(m.knowledge, []followed{m.x})[0]/d.SD, 1, 0.06)
 	near(t, "share", d.Share, 1, 0)
 }

@@ -22,7 +22,7 @@ type Crossing struct {
 // which both are monotone every unit is looked at. complete is false when
 // budget evaluations did not suffice.
 func Crossings(a, b Curve, from, to float64, budget int) (found []Crossing, complete bool) {
-	s := &search{a: a, b: b, left: budget, scan: math.Max(a.MonotoneFrom, b.MonotoneFrom)}
+	s := &search{a: a, b: b, left: budget, within: 1e-10, scan: math.Max(a.MonotoneFrom, b.MonotoneFrom)}
 	low, high := s.at(math.Ceil(from)), s.at(math.Floor(to))
 	if low.quantity >= high.quantity {
 		return nil, true
@@ -35,6 +35,7 @@ type search struct {
 	a, b     Curve
 	scan     float64
 	left     int
+	within   float64 // share of a quantity to which a crossing is bisected
 	found    []Crossing
 	lastSign float64 // last sign that was not a tie
 }
@@ -87,7 +88,7 @@ func between(low, high float64) float64 {
 func (s *search) refine(low, high point, sign float64) Crossing {
 	for range 60 {
 		middle := s.at((low.quantity + high.quantity) / 2)
-		if high.quantity-low.quantity < 1e-10*high.quantity {
+		if high.quantity-low.quantity < s.within*high.quantity {
 			break
 		}
 		if middle.sign() == sign {
@@ -99,33 +100,3 @@ func (s *search) refine(low, high point, sign float64) Crossing {
 	step := math.Abs((high.a - high.b) - (low.a - low.b))
 	return Crossing{high.quantity, sign > 0, step > 1e-7*math.Max(1e-300, high.a)}
 }
-
-// nearestTurn is the crossing nearest a quantity in ratio, NaN if there is none
-// between from and to. It walks outwards on both sides in steps that grow from
-// 2 % of the quantity with the distance and bisects the first change of sign;
-// two changes within one step are not seen.
-func nearestTurn(a, b Curve, near, from, to float64) float64 {
-	s := &search{a: a, b: b, left: math.MaxInt}
-	start := s.at(near)
-	below, above := start, start
-	for step := 1.0; below.quantity > from || above.quantity < to; step++ {
-		ratio := math.Exp(0.02*step + 0.002*step*step)
-		if next := near * ratio; above.quantity < to {
-			p := s.at(math.Min(next, to))
-			if turned(above, p) {
-				return s.refine(above, p, p.sign()).Quantity
-			}
-			above = p
-		}
-		if next := near / ratio; below.quantity > from {
-			p := s.at(math.Max(next, from))
-			if turned(p, below) {
-				return s.refine(p, below, below.sign()).Quantity
-			}
-			below = p
-		}
-	}
-	return math.NaN()
-}
-
-func turned(low, high point) bool { return low.sign() != high.sign() && high.sign() != 0 }

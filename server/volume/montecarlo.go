@@ -19,7 +19,7 @@ func (e *evaluation) simulate(ctx context.Context) error {
 		for q := range costs {
 			e.band(&e.result.Quantities[q].Cells[c], costs[q])
 		}
-		e.progress(int(done.Add(1)), len(e.combos))
+		e.progress(int(done.Add(1)), 2*len(e.combos)) // the other half: crossovers
 	})
 	if err != nil {
 		return err

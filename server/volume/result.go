@@ -96,12 +96,16 @@ type Crossover struct {
 	WinnerTurn bool `json:"winner_turn"` // the cheapest combination of all changes here
 	Crossing
 	Cost         Money                 `json:"cost"`
-	Distribution *CrossingDistribution `json:"distribution,omitempty"` // for the first of a row of winner turns
+	Distribution *CrossingDistribution `json:"distribution,omitempty"`
 }
 
 // CrossingDistribution is where a crossover lies over the draws, given that
-// there is one.
+// the two combinations cross at all: in each draw the crossing nearest the
+// nominal one in ratio. Crossovers that do not open a turn of the cheapest
+// combination are followed through fewer draws. Without any crossing all but
+// Draws is 0.
 type CrossingDistribution struct {
+	Draws   int     `json:"draws"`
 	Share   float64 `json:"share_with_crossing"`
 	Low     float64 `json:"low"`
 	Median  float64 `json:"median"`
