@@ -96,6 +96,7 @@ func (c *recipeReader) recipe(w recipeFile) *pipeline.Recipe {
 	r.Unit = c.stages(w.Unit, "unit", pipeline.ScopeUnit)
 	r.MinCoverage = c.coverage(w.MinCoverage)
 	r.Judge = c.judge(w.Limits, r.MinCoverage)
+	c.edges(r)
 	r.Masters = c.masters(w)
 	return r
 }

@@ -187,3 +187,21 @@ func TestLoadRecipe(t *testing.T) {
 		t.Errorf("missing file: got %v", err)
 	}
 }
+
+// A limit on edge chips without a view that follows the edge would never be broken.
+func TestChipLimitNeedsAnEdge(t *testing.T) {
+	chip := goodRecipe + "\n  - {name: chip, kind: edge chip, each: reach_um, at_most: 200, unit: um}\n"
+	if _, err := DecodeRecipe("d.yaml", []byte(chip), nil); err == nil || !strings.Contains(err.Error(), `limit "chip": no view shows the part's edge`) {
+		t.Errorf("got %v", err)
+	}
+	r, err := DecodeRecipe("d.yaml", []byte(strings.NewReplacer("um_per_px: 10", "um_per_px: 50", "    stages:\n", "    stages:\n      - {type: edge}\n").Replace(chip)), nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, cals := range []map[string]*pipeline.Calibration{nil, {"ring": {PartEdge: &pipeline.PartEdge{WidthPx: 3}}}} {
+		w := CheckOptics(r, cals)
+		if len(w) != 1 || w[0].Name != "chip" || w[0].Refuse || !strings.Contains(w[0].Text, "4.0 px of view ring (50 um/px)") {
+			t.Errorf("got %+v, want one warning, that 200 um are 4 px; the scale of the other view is not known", w)
+		}
+	}
+}

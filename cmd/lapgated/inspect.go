@@ -15,7 +15,6 @@ import (
 
 	"lapgate/configs"
 	"lapgate/pipeline"
-	"lapgate/pipeline/calibrate"
 	"lapgate/pipeline/raster"
 	"lapgate/pipeline/raster/files"
 )
@@ -99,15 +98,9 @@ func buildFrom(f inspectFlags, cat *pipeline.Catalogue) (*pipeline.Pipeline, err
 	if err != nil {
 		return nil, err
 	}
-	cals := map[string]*pipeline.Calibration{}
-	for _, c := range f.calibrations {
-		view, dir, ok := strings.Cut(c, "=")
-		if !ok {
-			return nil, usageError{fmt.Errorf("--calibration: got %q, want VIEW=DIR", c)}
-		}
-		if cals[view], err = calibrate.Load(dir); err != nil {
-			return nil, usageError{fmt.Errorf("calibration of view %s: %w", view, err)}
-		}
+	cals, err := loadCalibrations(f.calibrations)
+	if err != nil {
+		return nil, err
 	}
 	return pipeline.Build(recipe, cat, pipeline.Options{Calibrations: cals, ReadFile: beside(f.recipe), ProgramVersion: programVersion(), Unfused: f.unfused})
 }

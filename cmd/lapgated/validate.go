@@ -15,38 +15,51 @@ import (
 func (a *app) validateCommand() *cobra.Command {
 	var asJSON bool
 	var plugins string
+	var calibrations []string
 	cmd := &cobra.Command{
 		Use:   "validate FILE|FOLDER ...",
 		Short: "Check recipes and say file:line:column, what was found and what is allowed",
 		Args:  cobra.MinimumNArgs(1),
-		RunE:  func(cmd *cobra.Command, args []string) error { return a.validate(cmd.Context(), args, plugins, asJSON) },
+		RunE: func(cmd *cobra.Command, args []string) error {
+			return a.validate(cmd.Context(), args, plugins, calibrations, asJSON)
+		},
 	}
+	cmd.Flags().StringArrayVar(&calibrations, "calibration", nil, "VIEW=DIR, the calibration folder of a view, to hold limits against what it resolves; repeat")
 	cmd.Flags().BoolVar(&asJSON, "json", false, "one JSON document on stdout")
 	pluginsFlag(cmd.Flags(), &plugins)
 	return cmd
 }
 
-func (a *app) validate(ctx context.Context, paths []string, plugins string, asJSON bool) error {
+func (a *app) validate(ctx context.Context, paths []string, plugins string, calibrations []string, asJSON bool) error {
 	set, err := openStages(ctx, plugins, a.quiet(), nil)
 	if err != nil {
 		return err
 	}
 	defer set.close()
+	cals, err := loadCalibrations(calibrations)
+	if err != nil {
+		return err
+	}
 	var all []configs.Problem
+	var warnings []opticsWarning
 	for _, p := range paths {
 		problems, err := validatePath(p, set.catalogue)
 		if err != nil {
 			return usageError{err}
 		}
 		all = append(all, problems...)
+		warnings = append(warnings, opticsWarnings(p, set.catalogue, cals)...)
 	}
 	if asJSON {
-		if err := printJSON(a.out, map[string]any{"problems": problemForms(all)}); err != nil {
+		if err := printJSON(a.out, map[string]any{"problems": problemForms(all), "warnings": append([]opticsWarning{}, warnings...)}); err != nil {
 			return err
 		}
 	} else {
 		for _, p := range all {
 			fmt.Fprintln(a.out, p.Error())
+		}
+		for _, w := range warnings {
+			fmt.Fprintf(a.out, "%s: warning: limit %q: %s\n", w.File, w.Limit, w.Text)
 		}
 	}
 	if len(all) > 0 {
