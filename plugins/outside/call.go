@@ -110,6 +110,9 @@ func (p *process) broken(message string) error {
 	if other {
 		return errGone
 	}
+	if p.underWay.Load() > 1 {
+		return pipeline.Fail(pipeline.Unready, "%w; %w", p.withLog(p.death()), errShared)
+	}
 	return pipeline.Fail(pipeline.Unready, "%w", p.withLog(p.death()))
 }
 
@@ -137,9 +140,13 @@ func (c *call) run(ctx context.Context) error {
 		return err
 	}
 	done := make(chan outcome, 1)
+	c.process.underWay.Add(1)
 	go func() {
 		defer cancel()
 		res, err := c.process.stub.Run(own, req)
+		if err == nil {
+			c.process.underWay.Add(-1)
+		}
 		done <- outcome{res, err}
 	}()
 	select {

@@ -45,6 +45,7 @@ type Host struct {
 	described *stagepb.DescribeResponse
 	factory   pipeline.Factory
 	over      chan struct{} // closed when the supervisor has ended
+	calls     sync.RWMutex  // a call that must be alone holds it for writing
 
 	mu       sync.Mutex // guards what follows
 	status   Status

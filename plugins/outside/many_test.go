@@ -62,20 +62,6 @@ func TestStageThatKeepsDying(t *testing.T) {
 		})
 	}
 	for i := range n {
-		if i%50 == 49 { // alone, so that its neighbour in flight does not die with it
-			close(units)
-			wg.Wait()
-			verdicts[i] = inspectTiny(t, p, i)
-			units = make(chan int)
-			for range 2 {
-				wg.Go(func() {
-					for i := range units {
-						verdicts[i] = inspectTiny(t, p, i)
-					}
-				})
-			}
-			continue
-		}
 		units <- i
 	}
 	close(units)
@@ -88,7 +74,10 @@ func TestStageThatKeepsDying(t *testing.T) {
 			t.Fatalf("unit %d: %+v", i, j.Reasons)
 		}
 	}
-	eventually(t, "the last restart", func() bool { return h.Status().Restarts == n/50 })
+	eventually(t, "the last restart", func() bool { return h.Status().State == Up })
+	if r := h.Status().Restarts; r < n/50 || r > 2*n/50 {
+		t.Errorf("%d restarts for %d deaths, want one each, or two where another unit was under way", r, n/50)
+	}
 }
 
 // inspectTiny inspects a unit of one tiny frame; every 50th makes the stage die.

@@ -163,25 +163,31 @@ func TestFilesBesideTheRecipe(t *testing.T) {
 	}
 }
 
-// While one unit hangs its stage, those beside it are given to the next process.
+// While one unit breaks its stage, in whatever way, those beside it are given to the next
+// process; only that one is held.
 func TestOthersGoOn(t *testing.T) {
-	s := settingsFor("hostile", "hang")
-	s.Deadline, s.MaxConcurrent = 700*time.Millisecond, 3
-	stage := newStage(t, open(t, s).Factory(), "{}")
-	var wg sync.WaitGroup
-	errs := make([]error, 9)
-	for i := range errs {
-		mark := byte(i)
-		if i == 4 {
-			mark = 255
-		}
-		wg.Go(func() { errs[i] = stage.Run(context.Background(), tiny(mark)) })
-	}
-	wg.Wait()
-	for i, err := range errs {
-		if (err != nil) != (i == 4) {
-			t.Errorf("unit %d: %v", i, err)
-		}
+	for _, how := range []string{"hang", "panic", "nan"} {
+		t.Run(how, func(t *testing.T) {
+			t.Parallel()
+			s := settingsFor("hostile", how)
+			s.Deadline, s.MaxConcurrent, s.Backoff = 700*time.Millisecond, 3, time.Millisecond
+			stage := newStage(t, open(t, s).Factory(), "{}")
+			var wg sync.WaitGroup
+			errs := make([]error, 9)
+			for i := range errs {
+				mark := byte(i)
+				if i == 4 {
+					mark = 255
+				}
+				wg.Go(func() { errs[i] = stage.Run(context.Background(), tiny(mark)) })
+			}
+			wg.Wait()
+			for i, err := range errs {
+				if (err != nil) != (i == 4) {
+					t.Errorf("unit %d: %v", i, err)
+				}
+			}
+		})
 	}
 }
 

@@ -32,7 +32,8 @@ type process struct {
 	input    *ring // nil: pixels travel in messages
 	output   *ring
 	slots    chan *slot
-	answered atomic.Bool // at least one call was answered well
+	answered atomic.Bool  // at least one call was answered well
+	underWay atomic.Int64 // calls that were sent and not answered
 
 	mu     sync.Mutex // guards what follows
 	cause  string     // why the host killed it; empty = it did not
@@ -184,6 +185,9 @@ func (p *process) doomed() bool {
 	defer p.mu.Unlock()
 	return p.cause != ""
 }
+
+// errShared says that a process ended with several units under way.
+var errShared = errors.New("with other units under way")
 
 // errGone says that a process ended before a call reached it, or because of another
 // call: the item can be given to the next process.

@@ -147,19 +147,29 @@ func (r *remote) Run(ctx context.Context, item *pipeline.Item) error {
 	if err := ctx.Err(); err != nil {
 		return err
 	}
+	var err error
 	for range maxTries {
-		err := r.try(ctx, item)
-		if !errors.Is(err, errGone) {
-			return r.named(err)
+		err = r.try(ctx, item, errors.Is(err, errShared))
+		if !errors.Is(err, errGone) && !errors.Is(err, errShared) {
+			break
 		}
 	}
-	return r.named(pipeline.Fail(pipeline.Unready, "%d processes in a row ended because of other units", maxTries))
+	return r.named(err)
 }
 
 // maxTries is how many processes an item is given to when they end because of others.
 const maxTries = 4
 
-func (r *remote) try(ctx context.Context, item *pipeline.Item) error {
+// try gives the item to the process that runs now. After one that ended with several
+// units under way, each of those has the next one to itself: the unit at fault is then
+// known, and only that is held.
+func (r *remote) try(ctx context.Context, item *pipeline.Item, alone bool) error {
+	lock, unlock := r.host.calls.RLock, r.host.calls.RUnlock
+	if alone {
+		lock, unlock = r.host.calls.Lock, r.host.calls.Unlock
+	}
+	lock()
+	defer unlock()
 	p, err := r.host.acquire(ctx)
 	if err != nil {
 		return err
