@@ -20,7 +20,7 @@ type volumeJob struct {
 	quantities                   []float64
 	solve                        string
 	between                      []string
-	json, csv                    bool
+	json, csv, crossovers        bool
 }
 
 // volumeCommand works out a plan file.
@@ -33,8 +33,8 @@ func volumeCommand() *cobra.Command {
 		Long: `Work out what a good unit costs at every quantity, for every way of making and inspecting it.
 
 Prints the yields used, the costs at the quantities asked for, the ranges where each
-combination is the cheapest, the crossovers and what more data would be worth. All costs
-are per good unit shipped. Yields named by a ledger filter are asked from the server,
+combination is the cheapest, the crossovers with their distribution over the draws and what
+more data would be worth. All costs are per good unit shipped. Yields named by a ledger filter are asked from the server,
 or read from --ledger-counts.
 
 --solve finds the value of one figure at which two combinations cost the same:
@@ -50,12 +50,13 @@ or read from --ledger-counts.
 	flags := cmd.Flags()
 	flags.BoolVar(&job.json, "json", false, "print the whole result as JSON")
 	flags.BoolVar(&job.csv, "csv", false, "print one line per quantity and combination as CSV")
+	flags.BoolVar(&job.crossovers, "csv-crossovers", false, "print one line per crossover, with its distribution over the draws, as CSV")
 	flags.StringVar(&job.report, "report", "", "write a report to this HTML file")
 	flags.StringVar(&job.counts, "ledger-counts", "", "file of verdict counts (YAML), instead of asking a server")
 	flags.Float64SliceVar(&job.quantities, "quantity", nil, "further quantity of good units shipped; may be repeated")
 	flags.StringVar(&job.solve, "solve", "", "figure to solve for, such as processes.replicated.yield")
 	flags.StringSliceVar(&job.between, "between", nil, "PROCESS/INSPECTION, given twice, for --solve")
-	cmd.MarkFlagsMutuallyExclusive("json", "csv")
+	cmd.MarkFlagsMutuallyExclusive("json", "csv", "csv-crossovers")
 	cmd.MarkFlagsRequiredTogether("solve", "between")
 	return cmd
 }
@@ -100,6 +101,8 @@ func (j *volumeJob) run(cmd *cobra.Command) error {
 		return writeJSON(cmd.OutOrStdout(), result)
 	case j.csv:
 		return writeVolumeCSV(cmd.OutOrStdout(), result)
+	case j.crossovers:
+		return writeCrossoversCSV(cmd.OutOrStdout(), result)
 	}
 	return printVolume(cmd.OutOrStdout(), result)
 }

@@ -94,22 +94,6 @@ func (p *volumePrinter) ranges() {
 	}
 }
 
-func (p *volumePrinter) crossovers() {
-	p.title("Crossovers of the cheapest combination, %s", volume.Basis)
-	p.line("good units\tcost\tbelow it\tabove it\tinterval\tdraws with one\tchanges")
-	shown := 0
-	for _, x := range p.r.Turns() {
-		shown += x.Changes
-		at := units(x.From)
-		if units(x.To) != at {
-			at += " to " + units(x.To)
-		}
-		p.line("%s\t%s\t%s\t%s\t%s to %s\t%.1f %%\t%d", at, money(x.Cost), p.r.Combinations[x.Below], p.r.Combinations[x.Above],
-			units(x.Low), units(x.High), 100*x.Share, x.Changes)
-	}
-	p.line("(%d further crossovers between combinations that are not the cheapest: see --json)", len(p.r.Crossovers)-shown)
-}
-
 func (p *volumePrinter) information() {
 	for _, info := range p.r.Information {
 		p.title("What more data is worth at %s good units, %s for all of them", units(info.Good), p.r.Currency)

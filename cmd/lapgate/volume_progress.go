@@ -43,7 +43,7 @@ func (p *volumeProgress) show(w io.Writer) {
 	case <-time.After(time.Second):
 	}
 	container := mpb.New(mpb.WithOutput(w))
-	bar := container.AddBar(max(1, p.total.Load()), mpb.PrependDecorators(decor.Name("combinations "), decor.CountersNoUnit("%d / %d")))
+	bar := container.AddBar(max(1, p.total.Load()), mpb.PrependDecorators(decor.Name("volume plan "), decor.Percentage()))
 	tick := time.NewTicker(100 * time.Millisecond)
 	defer tick.Stop()
 	for {

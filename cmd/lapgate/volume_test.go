@@ -9,6 +9,8 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
+
+	"lapgate/server/volume"
 )
 
 const (
@@ -61,7 +63,8 @@ func TestVolumeTableOfTheDemo(t *testing.T) {
 		t.Fatal(err)
 	}
 	for _, want := range []string{"At 2 600 good units", "At 777 good units", "412 accepted, 58 rejected, 6 held", "Crossovers",
-		"the least-cost setting lies in", "looser than the drawing's 200", "Cautions", "EUR per good unit shipped", "All-or-none"} {
+		"the least-cost setting lies in", "looser than the drawing's 200", "Cautions", "EUR per good unit shipped", "All-or-none",
+		"Crossovers of other combinations", "by delta", "of 200"} {
 		if !strings.Contains(out, want) {
 			t.Errorf("the table lacks %q", want)
 		}
@@ -102,6 +105,35 @@ func TestVolumeCSVHasALinePerCell(t *testing.T) {
 	}
 	if (len(rows)-1)%12 != 0 || len(rows) < 12*60 || rows[0][3] != "cost" {
 		t.Errorf("%d lines", len(rows))
+	}
+}
+
+// One line per crossover of the JSON, each with its distribution.
+func TestVolumeCSVOfCrossovers(t *testing.T) {
+	out, err := runVolume(t, fewer(t), "--ledger-counts", demoCounts, "--csv-crossovers")
+	if err != nil {
+		t.Fatal(err)
+	}
+	rows, err := csv.NewReader(strings.NewReader(out)).ReadAll()
+	if err != nil {
+		t.Fatal(err)
+	}
+	if out, err = runVolume(t, fewer(t), "--ledger-counts", demoCounts, "--json"); err != nil {
+		t.Fatal(err)
+	}
+	var result volume.Result
+	if err := json.Unmarshal([]byte(out), &result); err != nil {
+		t.Fatal(err)
+	}
+	if len(rows) != len(result.Crossovers)+1 || len(rows) < 100 {
+		t.Fatalf("%d lines of CSV, %d crossovers of JSON", len(rows), len(result.Crossovers))
+	}
+	for i, x := range result.Crossovers {
+		below, row := result.Combinations[x.Below()], rows[i+1]
+		if row[0] != number(x.Quantity) || row[2] != below.Process || row[3] != below.Inspection ||
+			row[8] != "200" || row[9] != number(x.Distribution.Share) || row[11] != number(x.Distribution.Median) {
+			t.Fatalf("line %d: %v, crossover %+v, distribution %+v", i+2, row, x, x.Distribution)
+		}
 	}
 }
 

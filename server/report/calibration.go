@@ -53,7 +53,7 @@ type sourceGroup struct {
 
 // WriteCalibration writes a calibration as one self-contained HTML page.
 func WriteCalibration(w io.Writer, m calibrate.Made) error {
-	page, err := template.New("calibration").Funcs(template.FuncMap{"short": func(s string) string { return s[:min(len(s), 16)] }}).Parse(calibrationPage)
+	page, err := parsePage("calibration", calibrationPage, template.FuncMap{"short": func(s string) string { return s[:min(len(s), 16)] }})
 	if err != nil {
 		return err
 	}

@@ -23,8 +23,8 @@ type volumeView struct {
 	Result     *volume.Result
 	Overview   template.HTML
 	Ranges     []volumeRange
-	Turns      []volumeTurn
-	Others     int
+	Turns      []crossoverRow
+	Others     []crossoverRow
 	Processes  []volumeProcess
 	Quantities []volumeQuantity
 	Parts      []volumePart
@@ -34,13 +34,6 @@ type volumeView struct {
 type volumeRange struct {
 	From, To, Best, Other, Colour string
 	Certain                       bool
-}
-
-type volumeTurn struct {
-	At, Below, Above, Cost, Low, High string
-	Share                             float64
-	Delta, SD                         string
-	Changes                           int
 }
 
 type volumeProcess struct {
@@ -72,7 +65,7 @@ type volumePart struct{ Name, Colour string }
 
 // WriteVolume writes an evaluated plan as one self-contained HTML page.
 func WriteVolume(w io.Writer, p *plan.Plan, r *volume.Result) error {
-	page, err := template.New("volume").Funcs(template.FuncMap{
+	page, err := parsePage("volume", volumePage, template.FuncMap{
 		"units": groupThousands, "percent": func(v float64) string { return fmt.Sprintf("%.1f %%", 100*v) },
 		"share": func(v float64) string { return fmt.Sprintf("%.3g %%", 100*v) },
 		"round": func(v float64) string { return fmt.Sprintf("%.0f", v) }, "money": volumeMoney,
@@ -80,7 +73,7 @@ func WriteVolume(w io.Writer, p *plan.Plan, r *volume.Result) error {
 		"path": func(s string) template.HTML {
 			return template.HTML(strings.ReplaceAll(template.HTMLEscapeString(s), ".", ".<wbr>"))
 		},
-	}).Parse(volumePage)
+	})
 	if err != nil {
 		return err
 	}
@@ -92,8 +85,7 @@ func WriteVolume(w io.Writer, p *plan.Plan, r *volume.Result) error {
 }
 
 func viewVolume(p *plan.Plan, r *volume.Result) (*volumeView, error) {
-	v := &volumeView{Plan: p, Result: r, Ranges: volumeRanges(r)}
-	v.Turns, v.Others = volumeTurns(r)
+	v := &volumeView{Plan: p, Result: r, Ranges: volumeRanges(r), Turns: turnRows(r), Others: otherRows(r)}
 	for i, name := range volumePartNames() {
 		v.Parts = append(v.Parts, volumePart{name, partColour(i)})
 	}
@@ -131,28 +123,6 @@ func volumeRanges(r *volume.Result) []volumeRange {
 		all = append(all, one)
 	}
 	return all
-}
-
-func volumeTurns(r *volume.Result) (turns []volumeTurn, others int) {
-	others = len(r.Crossovers)
-	for _, x := range r.Turns() {
-		others -= x.Changes
-		at := groupThousands(x.From)
-		if to := groupThousands(x.To); to != at {
-			at += " to " + to
-		}
-		turns = append(turns, volumeTurn{At: at, Changes: x.Changes, Below: r.Combinations[x.Below].String(),
-			Above: r.Combinations[x.Above].String(), Cost: volumeMoney(x.Cost), Low: groupThousands(x.Low), High: groupThousands(x.High),
-			Share: x.Share, SD: groupThousands(x.SD), Delta: deltaText(x.DeltaSD)})
-	}
-	return turns, others
-}
-
-func deltaText(sd volume.Money) string {
-	if math.IsNaN(float64(sd)) || math.IsInf(float64(sd), 0) {
-		return "–"
-	}
-	return groupThousands(float64(sd))
 }
 
 // viewQuantity orders the combinations from cheap to dear.

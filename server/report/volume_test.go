@@ -5,6 +5,7 @@ import (
 	"context"
 	"encoding/xml"
 	"errors"
+	"fmt"
 	"io"
 	"math"
 	"strings"
@@ -69,9 +70,18 @@ func TestVolumeReportHoldsItsFigures(t *testing.T) {
 	wanted := []string{"turned/every-unit", "replicated/none", "180 accepted, 20 rejected, 6 held", "corrected for the gate every-unit",
 		"A verdict is not a certificate", "estimates", "per good unit shipped", "At 2\u202f600 good units", "stays binding",
 		"not stated", "the ledger", "a quotation &lt;b&gt;bold&lt;/b&gt;", "volume plan", "looser than the drawing"}
+	others := 0
 	for _, turn := range r.Turns() {
 		wanted = append(wanted, groupThousands(turn.From))
 	}
+	for _, x := range r.Crossovers {
+		if !x.WinnerTurn {
+			wanted = append(wanted, "<td class=\"n\">"+groupThousands(x.Distribution.Low)+" to "+groupThousands(x.Distribution.High)+"</td>",
+				"% of "+groupThousands(float64(x.Distribution.Draws)))
+			others++
+		}
+	}
+	wanted = append(wanted, fmt.Sprintf("<summary>%d further crossovers", others))
 	for _, text := range wanted {
 		if !strings.Contains(strings.ToLower(page), strings.ToLower(text)) {
 			t.Errorf("the page lacks %q", text)
@@ -82,8 +92,8 @@ func TestVolumeReportHoldsItsFigures(t *testing.T) {
 			t.Errorf("the page reaches outside itself: %s", outside)
 		}
 	}
-	if len(r.Turns()) == 0 {
-		t.Error("no crossover in the test's plan")
+	if len(r.Turns()) == 0 || others == 0 {
+		t.Errorf("%d turns and %d other crossovers in the test's plan", len(r.Turns()), others)
 	}
 }
 
