@@ -22,7 +22,7 @@ int pg_pass(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, int32
 }
 
 int pg_sample_grain(const pg_frame *f, pg_grid *g, const float *blocks) {
-	void *scratch = malloc(sizeof(float) * (size_t)(pg_sample_blocks(f) + 1));
+	void *scratch = malloc(sizeof(float) * 2 * (size_t)(pg_sample_blocks(f) + 1));
 	if (!scratch)
 		return PG_NO_MEMORY;
 	for (int row = 0; row < g->rows; row++)

@@ -92,20 +92,13 @@ PG_KERNEL void ramp(T *restrict top, T *restrict slope, int x0, int x1, double a
 
 static void sample_moments(const T *restrict v, int n, float low, float high, int shift, double *restrict out) {
 	(void)shift;
+	out[0] = out[1] = out[2] = 0;
 	for (int x = 0; x < n; x++)
-		if (v[x] != OUTSIDE && v[x] >= low && v[x] <= high) {
+		if (v[x] >= low && v[x] <= high) {
 			out[0] += 1;
 			out[1] += v[x];
 			out[2] += v[x] * v[x];
 		}
-}
-
-static int count_between(const T *restrict v, int pitch, int rows, int columns, float low, float high) {
-	int n = 0;
-	for (int k = 0; k < rows; k++)
-		for (int x = 0; x < columns; x++)
-			n += v[(int64_t)k * pitch + x] != OUTSIDE && v[(int64_t)k * pitch + x] >= low && v[(int64_t)k * pitch + x] <= high;
-	return n;
 }
 
 static int by_value(const void *a, const void *b) {
@@ -113,20 +106,20 @@ static int by_value(const void *a, const void *b) {
 	return x < y ? -1 : x > y;
 }
 
-// middles looks at up to 4096 samples.
-static void middles(const T *v, int pitch, int rows, int columns, int n, double *median, double *deviation) {
-	float some[4096];
-	int step = n / 4096 + 1, count = 0, seen = 0;
-	for (int k = 0; k < rows; k++)
-		for (int x = 0; x < columns; x++)
-			if (v[(int64_t)k * pitch + x] != OUTSIDE && seen++ % step == 0)
-				some[count++] = v[(int64_t)k * pitch + x];
-	qsort(some, (size_t)count, sizeof(float), by_value);
-	*median = some[count / 2];
-	for (int i = 0; i < count; i++)
-		some[i] = (float)__builtin_fabs(some[i] - *median);
-	qsort(some, (size_t)count, sizeof(float), by_value);
-	*deviation = some[count / 2];
+// middles sorts v.
+static void middles(T *v, int n, double *median, double *deviation) {
+	qsort(v, (size_t)n, sizeof(float), by_value);
+	double m = v[n / 2];
+	int below = 0, above = 0; // the nearest n/2 + 1 to the median, from the median outwards
+	for (int k = 0; k < n / 2; k++) {
+		int left = n / 2 - below - 1, right = n / 2 + above + 1;
+		if (right >= n || (left >= 0 && m - v[left] < v[right] - m))
+			below++;
+		else
+			above++;
+	}
+	*median = m;
+	*deviation = __builtin_fmax(m - v[n / 2 - below], v[n / 2 + above] - m);
 }
 
 PG_INLINE T to_sample(const pg_frame *f, double dn) {

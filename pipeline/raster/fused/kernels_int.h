@@ -53,29 +53,34 @@ PG_INLINE int row_value(const pg_frame *f, T *restrict v, uint16_t *restrict tmp
 	return value_words(f, v, pg_unpack(f, tmp, y, x0, x1), o, g, x0, x1);
 }
 
+// inside is v − mid where v lies from low to high, and 0 elsewhere; *n counts down by one.
+PG_INLINE int16_t inside(int16_t v, int16_t low, int16_t high, int16_t mid, int16_t *n) {
+	int16_t in = (int16_t)((v < low ? 0 : -1) & (v > high ? 0 : -1));
+	*n = (int16_t)(*n + in);
+	return (int16_t)((int16_t)(v - mid) & in);
+}
+
 // moments adds number, sum and sum of squares about mid of the values from low to high
-// in four rows of at most 64 pixels; values within mid ± PG_REACH do not overflow.
+// in four rows of at most 64 pixels; values within mid ± PG_REACH do not overflow. One
+// sum of squares for each row: a compiler turns those into multiply-add steps.
 PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restrict c, const T *restrict d, int x0, int x1, T low,
                        T high, T mid, double *restrict out) {
-	int32_t n = 0, sum = 0, sum2 = 0;
-#define ADD(r)                                                          \
-	{                                                                   \
-		int16_t in = (int16_t) - ((r[x] >= low) & (r[x] <= high));      \
-		int16_t e = (int16_t)((int16_t)(r[x] - mid) & in);              \
-		n -= in;                                                        \
-		sum += e;                                                       \
-		sum2 += (int32_t)e * e;                                         \
-	}
+	int16_t n = 0;
+	int32_t sum = 0, p = 0, q = 0, r = 0, s = 0;
 	for (int x = x0; x < x1; x++) {
-		ADD(a)
-		ADD(b)
-		ADD(c)
-		ADD(d)
+		int16_t count = 0;
+		int16_t e = inside(a[x], low, high, mid, &count), f = inside(b[x], low, high, mid, &count);
+		int16_t g = inside(c[x], low, high, mid, &count), h = inside(d[x], low, high, mid, &count);
+		n = (int16_t)(n - count);
+		sum += (int16_t)(e + f + g + h);
+		p += (int32_t)e * e;
+		q += (int32_t)f * f;
+		r += (int32_t)g * g;
+		s += (int32_t)h * h;
 	}
-#undef ADD
 	out[0] += n;
 	out[1] += sum;
-	out[2] += sum2;
+	out[2] += (double)p + q + r + s;
 }
 
 // row_signal writes value − level within ±CLAMP. The level
@@ -136,55 +141,58 @@ PG_KERNEL void ramp(T *restrict top, T *restrict slope, int x0, int x1, double a
 	}
 }
 
-// sample_moments adds number, sum and sum of squares of the samples (shifted down by
+// sample_moments writes number, sum and sum of squares of n samples (shifted down by
 // shift) from low to high.
 PG_KERNEL void sample_moments(const T *restrict v, int n, int low, int high, int shift, double *restrict out) {
 	int32_t count = 0, sum = 0, sum2 = 0;
+	const int16_t l = (int16_t)low, h = (int16_t)high;
 	for (int x = 0; x < n; x++) {
 		int16_t d = (int16_t)(v[x] >> shift);
-		int16_t in = (int16_t) - ((v[x] != OUTSIDE) & (d >= low) & (d <= high));
+		int16_t in = (int16_t)((d < l ? 0 : -1) & (d > h ? 0 : -1));
 		d = (int16_t)(d & in);
 		count -= in;
 		sum += d;
 		sum2 += (int32_t)d * d;
 	}
-	out[0] += count;
-	out[1] += sum;
-	out[2] += sum2;
+	out[0] = count;
+	out[1] = sum;
+	out[2] = sum2;
 }
 
-// count_between counts the samples from low to high, none of them OUTSIDE.
-PG_KERNEL int count_between(const T *restrict v, int pitch, int rows, int columns, int low, int high) {
-	int n = 0;
-	int16_t a = (int16_t)(low < -32767 ? -32767 : low > 32767 ? 32767 : low), b = (int16_t)(high > 32767 ? 32767 : high < -32768 ? -32768 : high);
-	for (int k = 0; k < rows; k++)
-		for (int x = 0; x < columns; x++)
-			n += (v[(int64_t)k * pitch + x] >= a) & (v[(int64_t)k * pitch + x] <= b);
-	return n;
+// count_between counts the samples from low to high.
+PG_KERNEL int count_between(const T *restrict v, int n, int low, int high) {
+	const int16_t a = (int16_t)(low < -32767 ? -32767 : low), b = (int16_t)(high > 32767 ? 32767 : high);
+	int out = 0;
+	for (int x0 = 0; x0 < n; x0 += 4096) {
+		int16_t count = 0;
+		for (int x = x0; x < (n < x0 + 4096 ? n : x0 + 4096); x++)
+			count = (int16_t)(count - (int16_t)((v[x] < a ? 0 : -1) & (v[x] > b ? 0 : -1)));
+		out += count;
+	}
+	return out;
 }
 
 // middles finds the median of n samples and the median of their distances to it, both the
 // upper of the middle two.
-static void middles(const T *v, int pitch, int rows, int columns, int n, double *median, double *deviation) {
+static void middles(T *v, int n, double *median, double *deviation) {
 	int reach = 16;
-	while (reach < 32768 && (count_between(v, pitch, rows, columns, -32767, reach) <= n / 2 ||
-	                         count_between(v, pitch, rows, columns, -32767, -reach) > n / 2))
+	while (reach < 32768 && (count_between(v, n, -32767, reach) <= n / 2 || count_between(v, n, -32767, -reach) > n / 2))
 		reach *= 2;
 	int a = -reach, b = reach; // the median lies in a … b
 	while (a < b) {
 		int m = a + (b - a) / 2;
-		if (count_between(v, pitch, rows, columns, -32767, m) > n / 2)
+		if (count_between(v, n, -32767, m) > n / 2)
 			b = m;
 		else
 			a = m + 1;
 	}
 	*median = a;
 	int centre = a;
-	for (a = 0, b = 1; b < 65536 && count_between(v, pitch, rows, columns, centre - b, centre + b) <= n / 2;)
+	for (a = 0, b = 16; b < 65536 && count_between(v, n, centre - b, centre + b) <= n / 2;)
 		b *= 2;
 	while (a < b) {
 		int m = (a + b) / 2;
-		if (count_between(v, pitch, rows, columns, centre - m, centre + m) > n / 2)
+		if (count_between(v, n, centre - m, centre + m) > n / 2)
 			b = m;
 		else
 			a = m + 1;

@@ -80,13 +80,15 @@ func (j *job) measure(found *C.pg_blobs, out []Blob) error {
 	workers := min(len(j.bands), max(len(out), 1))
 	results := make([]C.int, workers)
 	var wait sync.WaitGroup
-	for w := range workers {
-		wait.Go(func() {
-			for i := w; i < len(out) && results[w] == C.PG_OK; i += workers {
-				results[w] = j.measureOne(found, out, i)
-			}
-		})
+	work := func(w int) {
+		for i := w; i < len(out) && results[w] == C.PG_OK; i += workers {
+			results[w] = j.measureOne(found, out, i)
+		}
 	}
+	for w := 1; w < workers; w++ {
+		wait.Go(func() { work(w) })
+	}
+	work(0)
 	wait.Wait()
 	return firstError(results...)
 }

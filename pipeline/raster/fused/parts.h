@@ -15,8 +15,8 @@ int pg_grow(pg_runs *r);
 // pg_run_add adds x0 … x1 in row y, joined to the last run where they touch. Returns
 // not 0 when there is no memory.
 PG_INLINE int pg_run_add(pg_runs *r, int y, int x0, int x1, int high) {
-	pg_run *last = r->at + r->count - 1;
-	if (r->count > 0 && last->y == y && last->x1 == x0) {
+	pg_run *last = r->count > 0 ? r->at + r->count - 1 : 0;
+	if (last && last->y == y && last->x1 == x0) {
 		last->x1 = x1;
 		last->high |= high;
 		return 0;

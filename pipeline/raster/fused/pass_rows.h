@@ -1,38 +1,45 @@
 // The rest of the pass: the filter along y, thresholds and runs, and the loops over rows.
 #include "pass_body.h"
 
-// down filters eight rows h along y to four rows out, and notes the highest value of each
-// segment, or with both the highest magnitude.
-PG_KERNEL void down(T *const *h, T *const *out, T *restrict highest, int both, int x0, int x1) {
-	const T *restrict i = h[0], *restrict j = h[1], *restrict k = h[2], *restrict l = h[3];
-	const T *restrict m = h[4], *restrict n = h[5], *restrict o = h[6], *restrict r = h[7];
-	T *restrict a = out[0], *restrict b = out[1], *restrict c = out[2], *restrict d = out[3];
+// highest returns the highest value of p, q, u and v between x0 and x1, or with both the
+// highest magnitude.
+PG_KERNEL void highest(const T *restrict p, const T *restrict q, const T *restrict u, const T *restrict v, T *restrict out, int both,
+                       int x0, int x1) {
 	for (int s = x0 / SEGMENT; s * SEGMENT < x1; s++) {
 		int end = (s + 1) * SEGMENT < x1 ? (s + 1) * SEGMENT : x1;
 		T top = 0, bottom = 0;
 		for (int x = s * SEGMENT; x < end; x++) {
-			T p = taps(i[x], j[x], k[x], l[x], m[x]), q = taps(j[x], k[x], l[x], m[x], n[x]);
-			T u = taps(k[x], l[x], m[x], n[x], o[x]), v = taps(l[x], m[x], n[x], o[x], r[x]);
-			a[x] = p;
-			b[x] = q;
-			c[x] = u;
-			d[x] = v;
-			T w = p > q ? p : q, z = u > v ? u : v;
+			T w = p[x] > q[x] ? p[x] : q[x], z = u[x] > v[x] ? u[x] : v[x];
 			w = w > z ? w : z;
 			top = top > w ? top : w;
-			w = p < q ? p : q, z = u < v ? u : v;
+		}
+		for (int x = s * SEGMENT; x < end && both; x++) {
+			T w = p[x] < q[x] ? p[x] : q[x], z = u[x] < v[x] ? u[x] : v[x];
 			w = w < z ? w : z;
 			bottom = bottom < w ? bottom : w;
 		}
-		highest[s] = both && -bottom > top ? (T)-bottom : top;
+		out[s] = -bottom > top ? (T)-bottom : top;
+	}
+}
+
+// down filters eight rows along y to four.
+PG_KERNEL void down(T *restrict a, T *restrict b, T *restrict c, T *restrict d, const T *restrict i, const T *restrict j,
+                    const T *restrict k, const T *restrict l, const T *restrict m, const T *restrict n, const T *restrict o,
+                    const T *restrict p, int x0, int x1) {
+	for (int x = x0; x < x1; x++) {
+		a[x] = taps(i[x], j[x], k[x], l[x], m[x]);
+		b[x] = taps(j[x], k[x], l[x], m[x], n[x]);
+		c[x] = taps(k[x], l[x], m[x], n[x], o[x]);
+		d[x] = taps(l[x], m[x], n[x], o[x], p[x]);
 	}
 }
 
 static void vertical(state *s, int y, int x0, int x1) {
-	T *h[8];
+	T *h[8], **f = s->filtered;
 	for (int k = 0; k < 8; k++)
 		h[k] = s->ring[(y - 4 + k) & 7];
-	down(h, s->filtered, s->highest, s->f->polarity == 0, x0, x1);
+	down(f[0], f[1], f[2], f[3], h[0], h[1], h[2], h[3], h[4], h[5], h[6], h[7], x0, x1);
+	highest(f[0], f[1], f[2], f[3], s->highest, s->f->polarity == 0, x0, x1);
 }
 
 // scan adds the runs of f[x0 … x1) at or above the threshold, divided by share.

@@ -126,7 +126,7 @@ static int sample(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int 
 }
 
 // sample_grain measures the sampled blocks of grid row row against the level; scratch
-// holds as many T as blocks has floats in a row.
+// holds twice as many T as blocks has floats in a row.
 static void sample_grain(const pg_frame *f, pg_grid *g, const float *blocks, T *scratch, int row) {
 	int y[PG_SAMPLES], n = pg_sample_rows(f, row, y), columns = f->width / GROUP;
 	const float *means = blocks + (int64_t)row * pg_sample_blocks(f);
@@ -138,7 +138,7 @@ static void sample_grain(const pg_frame *f, pg_grid *g, const float *blocks, T *
 	for (int i = 0; i < g->columns; i++) {
 		int64_t at = (int64_t)row * g->columns + i;
 		int a = i * (f->cell / GROUP), e = a + f->cell / GROUP < columns ? a + f->cell / GROUP : columns;
-		double sigma = a >= e ? -1 : sample_sigma(f, scratch + a, columns, n, e - a, SAMPLE_SCALE * f->scale, f->floor_dn / 4);
+		double sigma = a >= e ? -1 : sample_sigma(f, scratch + a, columns, n, e - a, scratch + (int64_t)n * columns, SAMPLE_SCALE * f->scale, f->floor_dn / 4);
 		g->block[at] = sigma < 0 ? -1 : 4 * PG_GAIN * sigma; // as the filter would leave white noise
 	}
 }
