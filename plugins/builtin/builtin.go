@@ -10,6 +10,7 @@ import (
 	"lapgate/plugins/coverage"
 	"lapgate/plugins/darkfield"
 	"lapgate/plugins/datum"
+	"lapgate/plugins/detect"
 	"lapgate/plugins/edge"
 	"lapgate/plugins/flatfield"
 	"lapgate/plugins/merge"
@@ -35,8 +36,11 @@ func Stages() []pipeline.Factory {
 	}
 }
 
+// Fusers returns the fusers of all rows of stages that one pass can replace.
+func Fusers() []pipeline.Fuser { return []pipeline.Fuser{detect.Fuser()} }
+
 // Catalogue returns the catalogue of all stages and those given beside them. It cannot
 // fail unless two have one type.
 func Catalogue(more ...pipeline.Factory) (*pipeline.Catalogue, error) {
-	return pipeline.NewCatalogue(append(Stages(), more...), nil)
+	return pipeline.NewCatalogue(append(Stages(), more...), Fusers())
 }
