@@ -37,13 +37,13 @@ inspections:
     kind: none
   - name: all
     kind: full
-    false_reject: {value: 0}
-    miss: {value: 0}
+    false_reject: {count: {k: 1, n: 100}}
+    miss: {count: {k: 3, n: 60}}
     station: {price: 10000, life_years: 5, cycle_time_s: 2, crew: 0, charge: by_use}
 `
 
 // The demo plan with yields from the server's own ledger: the process that the fed units
-// were made by has the counts that were fed.
+// were made by has the counts that were fed, corrected for the gate.
 func TestVolumePlanTakesYieldsFromTheLedger(t *testing.T) {
 	r := newRig(t, rigOptions{})
 	l := r.line()
@@ -61,15 +61,18 @@ func TestVolumePlanTakesYieldsFromTheLedger(t *testing.T) {
 	must(t, err)
 	var result struct {
 		Yields []struct {
-			Process  string  `json:"process"`
-			Measured float64 `json:"measured"`
-		} `json:"yields"`
+			Process        string
+			Measured, Used float64
+			Low, High      float64
+		}
 	}
 	must(t, json.Unmarshal([]byte(resp.ResultJson), &result))
-	for _, y := range result.Yields {
-		if y.Process == "turned" && math.Abs(y.Measured-0.75) > 1e-12 {
-			t.Errorf("turned: measured yield %g, want 3 of 4", y.Measured)
-		}
+	if len(result.Yields) != 2 || result.Yields[0].Process != "turned" {
+		t.Fatalf("yields %+v, want turned and moulded", result.Yields)
+	}
+	y, corrected := result.Yields[0], 1-(0.25-0.01)/(1-0.05-0.01) // Rogan and Gladen 1978
+	if math.Abs(y.Measured-0.75) > 1e-12 || math.Abs(y.Used-corrected) > 1e-12 || !(y.Low < y.Used && y.Used < y.High) {
+		t.Errorf("%+v, want 3 of 4 measured and %g used, inside its interval", y, corrected)
 	}
 	if len(resp.Combinations) < 2 || len(resp.Quantities) == 0 || len(resp.Quantities[0].Cells) != len(resp.Combinations) {
 		t.Errorf("%d combinations, %d quantities", len(resp.Combinations), len(resp.Quantities))

@@ -47,6 +47,7 @@ func run(o options, out string) error {
 		{"reference and OpenCV chains, 12 megapixels", benchChains},
 		{"gRPC round trip and latency", benchServer},
 		{"stages in processes of their own", benchOutside},
+		{"volume plan, 72 combinations", benchVolume},
 	} {
 		fmt.Fprintf(os.Stderr, "bench: %s\n", part.name)
 		figures, err := part.measure(o)

@@ -54,6 +54,11 @@ func TestErlangTable(t *testing.T) {
 		near(t, "Lq", queue, v[5], 1e-8)
 		near(t, "Wq", wait, v[6], 1e-8)
 	}
+	p, _ := ErlangC(3, 2)
+	wait, _ := WaitMMc(3, 2)
+	near(t, "B(3, 2)", ErlangB(3, 2), .210526, 1e-6)
+	near(t, "C(3, 2)", p, .444444, 1e-6)
+	near(t, "Wq(3, 2)", wait, .444444, 1e-6)
 }
 
 // Source: embedded chain, re-computed (T121 and the table of exact waits).
