@@ -48,7 +48,7 @@ func TestQuotedCrossoverIsExplainedByYield(t *testing.T) {
 	near(t, "cost there", float64(b.Values[0].Cost), 40+10000./2600, 1e-6)
 }
 
-// Source: standard crossover formula, re-computed (T116), per good unit.
+// Source: standard crossover formula, re-computed, per good unit.
 func TestCrossoverPerGoodUnit(t *testing.T) {
 	p := planOf(simple("a", 2000, 12, .80), simple("b", 50000, 3, .95))
 	got := onlyCrossing(t, p)

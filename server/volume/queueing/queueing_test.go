@@ -61,7 +61,7 @@ func TestErlangTable(t *testing.T) {
 	near(t, "Wq(3, 2)", wait, .444444, 1e-6)
 }
 
-// Source: embedded chain, re-computed (T121 and the table of exact waits).
+// Source: embedded chain, re-computed (table of exact waits).
 func TestWaitMDc(t *testing.T) {
 	for _, r := range []struct {
 		c       int

@@ -68,7 +68,7 @@ func TestNormalPlansMatchTable2A(t *testing.T) {
 	}
 }
 
-// Source: spot values of ISO 2859-1 (T093 to T098).
+// Source: spot values of ISO 2859-1.
 func TestNormalPlanSpotValues(t *testing.T) {
 	for _, c := range []struct {
 		lot  int
