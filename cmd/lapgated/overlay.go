@@ -21,7 +21,7 @@ func writeOverlay(path string, e pipeline.Evidence, j pipeline.Judgement, result
 			return err
 		}
 		views = append(views, report.OverlayView{Name: res.Item.View, Frame: frame, Region: res.Item.Region,
-			Defects: seenIn(e.Defects, res.Item), Broken: broken})
+			Defects: seenIn(e.Defects, res.Item), Broken: broken, Coverage: res.Item.CoverageMap})
 	}
 	f, err := os.Create(path)
 	if err != nil {

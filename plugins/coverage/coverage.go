@@ -45,9 +45,11 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	o := opticsOf(st.s, st.calibration, scale)
 	light := lightOf(item)
 	if st.s.SmallestDigUM > 0 {
+		m.DigLimitUM = st.limit(st.s.SmallestDigUM)
 		m.DigUM = cells(g, func(noise float64) (float64, bool) { return st.dig(o, light, noise) })
 	}
 	if st.s.ScratchWidthUM > 0 {
+		m.ScratchLimitUM = st.limit(st.s.ScratchWidthUM)
 		m.ScratchUM = cells(g, func(noise float64) (float64, bool) {
 			return o.scratchUM(light*st.s.ScratchContrastDN, st.s.KHigh, noise)
 		})
@@ -96,7 +98,7 @@ func cells(g *raster.Grid, smallest func(noise float64) (float64, bool)) []int {
 func (st stage) count(item *pipeline.Item, g *raster.Grid, m *pipeline.CoverageMap) {
 	blind := make([]bool, len(g.Level))
 	for i := range blind {
-		blind[i] = st.blind(m.DigUM, i, st.s.SmallestDigUM) || st.blind(m.ScratchUM, i, st.s.ScratchWidthUM)
+		blind[i] = !m.Inspected(i)
 	}
 	trusted := make([]bool, len(g.Level))
 	for i := range trusted {
@@ -130,10 +132,8 @@ func (st stage) count(item *pipeline.Item, g *raster.Grid, m *pipeline.CoverageM
 	}
 }
 
-// blind reports whether what the limits forbid could hide in cell i.
-func (st stage) blind(found []int, i int, forbidden float64) bool {
-	return found != nil && (found[i] <= 0 || float64(found[i]) > math.Ceil(forbidden/st.s.Margin))
-}
+// limit is the most that may be found every second time for the forbidden to be found.
+func (st stage) limit(forbiddenUM float64) int { return int(math.Ceil(forbiddenUM / st.s.Margin)) }
 
 // measure notes what is found in the middle one of the region's cells.
 func measure(item *pipeline.Item, name string, found []int) {

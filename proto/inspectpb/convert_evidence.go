@@ -98,7 +98,8 @@ func fromCoverageMap(m *pipeline.CoverageMap) *CoverageMap {
 		return nil
 	}
 	return &CoverageMap{CellPx: clamp32(m.CellPx), Columns: clamp32(m.Columns), Rows: clamp32(m.Rows), DigUm: each(m.DigUM, clamp32), ScratchUm: each(m.ScratchUM, clamp32),
-		NoisyShare: m.NoisyShare, UnseenShare: m.UnseenShare, SaturatedShare: m.SaturatedShare}
+		NoisyShare: m.NoisyShare, UnseenShare: m.UnseenShare, SaturatedShare: m.SaturatedShare,
+		DigLimitUm: clamp32(m.DigLimitUM), ScratchLimitUm: clamp32(m.ScratchLimitUM)}
 }
 
 func toCoverageMap(m *CoverageMap) *pipeline.CoverageMap {
@@ -107,5 +108,6 @@ func toCoverageMap(m *CoverageMap) *pipeline.CoverageMap {
 	}
 	whole := func(v int32) int { return int(v) }
 	return &pipeline.CoverageMap{CellPx: int(m.GetCellPx()), Columns: int(m.GetColumns()), Rows: int(m.GetRows()), DigUM: each(m.GetDigUm(), whole), ScratchUM: each(m.GetScratchUm(), whole),
-		NoisyShare: m.GetNoisyShare(), UnseenShare: m.GetUnseenShare(), SaturatedShare: m.GetSaturatedShare()}
+		NoisyShare: m.GetNoisyShare(), UnseenShare: m.GetUnseenShare(), SaturatedShare: m.GetSaturatedShare(),
+		DigLimitUM: int(m.GetDigLimitUm()), ScratchLimitUM: int(m.GetScratchLimitUm())}
 }

@@ -1459,6 +1459,8 @@ type CoverageMap struct {
 	NoisyShare     float64                `protobuf:"fixed64,6,opt,name=noisy_share,json=noisyShare,proto3" json:"noisy_share,omitempty"`
 	UnseenShare    float64                `protobuf:"fixed64,7,opt,name=unseen_share,json=unseenShare,proto3" json:"unseen_share,omitempty"`
 	SaturatedShare float64                `protobuf:"fixed64,8,opt,name=saturated_share,json=saturatedShare,proto3" json:"saturated_share,omitempty"`
+	DigLimitUm     int32                  `protobuf:"zigzag32,9,opt,name=dig_limit_um,json=digLimitUm,proto3" json:"dig_limit_um,omitempty"`
+	ScratchLimitUm int32                  `protobuf:"zigzag32,10,opt,name=scratch_limit_um,json=scratchLimitUm,proto3" json:"scratch_limit_um,omitempty"`
 	unknownFields  protoimpl.UnknownFields
 	sizeCache      protoimpl.SizeCache
 }
@@ -1545,6 +1547,20 @@ func (x *CoverageMap) GetUnseenShare() float64 {
 func (x *CoverageMap) GetSaturatedShare() float64 {
 	if x != nil {
 		return x.SaturatedShare
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetDigLimitUm() int32 {
+	if x != nil {
+		return x.DigLimitUm
+	}
+	return 0
+}
+
+func (x *CoverageMap) GetScratchLimitUm() int32 {
+	if x != nil {
+		return x.ScratchLimitUm
 	}
 	return 0
 }
@@ -1779,7 +1795,7 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\fcoverage_map\x18\f \x01(\v2\x1f.lapgate.inspect.v1.CoverageMapR\vcoverageMap\x1a?\n" +
 	"\x11MillisecondsEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
-	"\x05value\x18\x02 \x01(\x01R\x05value:\x028\x01\"\xf7\x01\n" +
+	"\x05value\x18\x02 \x01(\x01R\x05value:\x028\x01\"\xc3\x02\n" +
 	"\vCoverageMap\x12\x17\n" +
 	"\acell_px\x18\x01 \x01(\x05R\x06cellPx\x12\x18\n" +
 	"\acolumns\x18\x02 \x01(\x05R\acolumns\x12\x12\n" +
@@ -1790,7 +1806,11 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\vnoisy_share\x18\x06 \x01(\x01R\n" +
 	"noisyShare\x12!\n" +
 	"\funseen_share\x18\a \x01(\x01R\vunseenShare\x12'\n" +
-	"\x0fsaturated_share\x18\b \x01(\x01R\x0esaturatedShare\"\xce\x02\n" +
+	"\x0fsaturated_share\x18\b \x01(\x01R\x0esaturatedShare\x12 \n" +
+	"\fdig_limit_um\x18\t \x01(\x11R\n" +
+	"digLimitUm\x12(\n" +
+	"\x10scratch_limit_um\x18\n" +
+	" \x01(\x11R\x0escratchLimitUm\"\xce\x02\n" +
 	"\bEvidence\x126\n" +
 	"\x05views\x18\x01 \x03(\v2 .lapgate.inspect.v1.ViewEvidenceR\x05views\x124\n" +
 	"\adefects\x18\x02 \x03(\v2\x1a.lapgate.inspect.v1.DefectR\adefects\x12C\n" +

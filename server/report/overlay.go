@@ -33,6 +33,8 @@ type OverlayView struct {
 	Region  *pipeline.Region // nil = none found
 	Defects []pipeline.Defect
 	Broken  map[int]bool // ids of defects that a reason names
+	// Coverage hatches the cells in which what the limits forbid would not have been found.
+	Coverage *pipeline.CoverageMap // nil = not drawn
 }
 
 // WriteOverlay writes views beside each other as a PNG: the frame stretched between its
@@ -56,6 +58,9 @@ func drawView(img *image.RGBA, v OverlayView, x0 int) {
 	drawFrame(img, v.Frame, x0)
 	if v.Region != nil {
 		drawOutline(img, v.Region.Mask(), x0)
+	}
+	if v.Coverage != nil {
+		hatchBlind(img, v.Coverage, v.Frame, x0)
 	}
 	scale := max(1, v.Frame.Width/800)
 	for _, d := range v.Defects {
@@ -98,6 +103,20 @@ func drawOutline(img *image.RGBA, m *raster.Mask, x0 int) {
 		for x := range m.Width {
 			if m.At(x, y) && !(m.At(x-1, y) && m.At(x+1, y) && m.At(x, y-1) && m.At(x, y+1)) {
 				img.SetRGBA(x0+x, y, overlayRegion)
+			}
+		}
+	}
+}
+
+// hatchBlind draws every eighth diagonal of the cells that were not inspected.
+func hatchBlind(img *image.RGBA, m *pipeline.CoverageMap, frame *raster.Plane, x0 int) {
+	for y := range frame.Height {
+		for x := range frame.Width {
+			if (x+y)%8 != 0 {
+				continue
+			}
+			if i := y/m.CellPx*m.Columns + x/m.CellPx; m.Inside(i) && !m.Inspected(i) {
+				img.SetRGBA(x0+x, y, overlayReason)
 			}
 		}
 	}
