@@ -8,11 +8,12 @@ import (
 
 	"lapgate/plugins/builtin"
 	"lapgate/plugins/outside"
+	"lapgate/plugins/unwrap"
 )
 
 func main() {
 	var types []string
-	for _, f := range builtin.Stages() {
+	for _, f := range append(builtin.Stages(), unwrap.Factory()) {
 		if len(os.Args) == 2 && f.Type == os.Args[1] {
 			outside.Serve(f)
 		}
