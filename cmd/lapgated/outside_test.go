@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"image/png"
 	"os"
+	"os/exec"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -18,7 +19,9 @@ import (
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster/files"
+	"lapgate/plugins/deflectometry"
 	"lapgate/plugins/outside"
+	"lapgate/plugins/unwrap"
 	"lapgate/server/ledger"
 )
 
@@ -26,6 +29,11 @@ import (
 func TestMain(m *testing.M) {
 	if len(os.Args) == 2 && os.Args[1] == "serve-brittle" {
 		outside.Serve(brittle())
+	}
+	for _, f := range []pipeline.Factory{unwrap.Factory(), deflectometry.Factory()} {
+		if len(os.Args) == 2 && os.Args[1] == "serve-"+f.Type {
+			outside.Serve(f)
+		}
 	}
 	os.Exit(m.Run())
 }
@@ -302,5 +310,43 @@ func TestVerify(t *testing.T) {
 	}
 	if code, _, errOut := runVerb(t, "stages", "verify", "/bin/ls"); code != 1 || !strings.Contains(errOut, "stdout belongs to the handshake") {
 		t.Errorf("exit %d: %s", code, errOut)
+	}
+}
+
+// The demo recipes of the stages that ship as plug-ins find what their frames show.
+func TestDemoRecipesOfPlugins(t *testing.T) {
+	self, err := os.Executable()
+	if err != nil {
+		t.Fatal(err)
+	}
+	const demo = "../../plugins/outside/demo/"
+	fringes := []string{}
+	for i := range 8 {
+		fringes = append(fringes, fmt.Sprintf("fringes=%sfringes_%d.png", demo, i))
+	}
+	own := filepath.Join(t.TempDir(), "plugins.yaml")
+	text := fmt.Sprintf("format: 1\nplugins:\n  - {name: unwrap, path: %q, args: [serve-unwrap]}\n  - {name: deflectometry, path: %q, args: [serve-deflectometry]}\n", self, self)
+	if err := os.WriteFile(own, []byte(text), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	for recipe, c := range map[string]struct {
+		plugins, reason string
+		frames          []string
+	}{
+		"unwrap":  {own, "dig too large", []string{"ring=" + demo + "unwrap.png"}},
+		"fringes": {own, "dent", fringes},
+		"texture": {demo + "plugins.yaml", "orange peel", []string{"ring=" + demo + "texture.png"}},
+	} {
+		t.Run(recipe, func(t *testing.T) {
+			if recipe == "texture" && exec.Command("/usr/bin/python3", "-c", "import grpc, numpy, google.protobuf").Run() != nil {
+				t.Skip("python3-grpcio, python3-protobuf or python3-numpy is missing")
+			}
+			args := append([]string{"inspect", "--recipe", demo + recipe + ".yaml", "--plugins", c.plugins, "--json"}, c.frames...)
+			code, out, errOut := runVerb(t, args...)
+			var doc struct{ Verdict string }
+			if err := json.Unmarshal([]byte(out), &doc); code != 0 || err != nil || doc.Verdict != "reject" || !strings.Contains(out, c.reason) {
+				t.Errorf("exit %d, %v, got %s, want a reject for %q\n%s", code, err, doc.Verdict, c.reason, errOut)
+			}
+		})
 	}
 }

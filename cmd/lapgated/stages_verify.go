@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"path/filepath"
+	"slices"
 
 	"github.com/spf13/cobra"
 
@@ -14,34 +15,42 @@ import (
 	"lapgate/plugins/stagetest"
 )
 
+// verifyFlags are the flags of stages verify.
+type verifyFlags struct {
+	args   []string
+	with   []string
+	frames int
+	asJSON bool
+}
+
 func (a *app) verifyCommand() *cobra.Command {
-	var asJSON bool
-	var args []string
+	var f verifyFlags
 	cmd := &cobra.Command{
 		Use:   "verify PATH",
 		Short: "Start a plug-in that nobody here has seen, put it through the conformance suite and say what holds",
 		Args:  cobra.ExactArgs(1),
-		RunE:  func(cmd *cobra.Command, paths []string) error { return a.verify(cmd.Context(), paths[0], args, asJSON) },
+		RunE:  func(cmd *cobra.Command, paths []string) error { return a.verify(cmd.Context(), paths[0], f) },
 	}
-	cmd.Flags().StringArrayVar(&args, "arg", nil, "an argument for the program; repeat")
-	cmd.Flags().BoolVar(&asJSON, "json", false, "one JSON document on stdout")
+	cmd.Flags().StringArrayVar(&f.args, "arg", nil, "an argument for the program; repeat")
+	cmd.Flags().StringArrayVar(&f.with, "with", nil, "KEY=VALUE, a setting instead of its default; repeat")
+	cmd.Flags().IntVar(&f.frames, "frames", 1, "frames in the view that the stage gets")
+	cmd.Flags().BoolVar(&f.asJSON, "json", false, "one JSON document on stdout")
 	return cmd
 }
 
-func (a *app) verify(ctx context.Context, path string, args []string, asJSON bool) error {
+func (a *app) verify(ctx context.Context, path string, flags verifyFlags) error {
 	set := outside.DefaultSettings()
-	set.Name, set.Path, set.Args = filepath.Base(path), path, args
+	set.Name, set.Path, set.Args = filepath.Base(path), path, flags.args
 	h, err := outside.Open(ctx, set, a.quiet())
 	if err != nil {
 		return err
 	}
 	defer h.Close()
-	cat, err := builtin.Catalogue()
+	f, cat, err := flags.factory(h.Factory())
 	if err != nil {
 		return err
 	}
-	f := h.Factory()
-	verdicts := stagetest.Verify(f, itemsFor(cat, f))
+	verdicts := stagetest.Verify(f, itemsFor(cat, f, max(flags.frames, 1)))
 	verdicts = append(verdicts, survived(h.Status()))
 	failed := 0
 	for _, v := range verdicts {
@@ -49,7 +58,7 @@ func (a *app) verify(ctx context.Context, path string, args []string, asJSON boo
 			failed++
 		}
 	}
-	if asJSON {
+	if flags.asJSON {
 		err = printJSON(a.out, map[string]any{"stage": f.Type, "version": f.Version, "summary": f.Summary, "bound_by": h.Status().Isolation, "verdicts": verdicts})
 	} else {
 		err = a.printVerdicts(f, verdicts)
@@ -58,6 +67,31 @@ func (a *app) verify(ctx context.Context, path string, args []string, asJSON boo
 		err = fmt.Errorf("%s: %d of %d properties do not hold", path, failed, len(verdicts))
 	}
 	return err
+}
+
+// factory returns the stage with the settings of --with in place of its defaults, and a
+// catalogue that has it.
+func (v verifyFlags) factory(f pipeline.Factory) (pipeline.Factory, *pipeline.Catalogue, error) {
+	cat, err := builtin.Catalogue(f)
+	if err != nil { // it has the type of a stage inside, as such a stage served outside has
+		cat, err = builtin.Catalogue()
+	}
+	if err != nil || len(v.with) == 0 {
+		return f, cat, err
+	}
+	recipe, err := tryFlags{with: v.with, umPerPx: 10}.recipe(cat, f.Type, 1)
+	if err != nil {
+		return f, cat, err
+	}
+	specs := recipe.Unit
+	if f.Scope == pipeline.ScopeView {
+		specs = recipe.Views[0].Stages
+	}
+	inner, given := f.New, specs[len(specs)-1].Decode
+	f.New = func(_ pipeline.Decode, env pipeline.Environment) (pipeline.Stage, any, error) {
+		return inner(given, env)
+	}
+	return f, cat, nil
 }
 
 // survived is the verdict on the process itself.
@@ -89,10 +123,11 @@ func (a *app) printVerdicts(f pipeline.Factory, verdicts []stagetest.Verdict) er
 
 // itemsFor makes items as a stage gets them: after those inside stages, with their
 // defaults, that write what it reads.
-func itemsFor(cat *pipeline.Catalogue, f pipeline.Factory) stagetest.Maker {
+func itemsFor(cat *pipeline.Catalogue, f pipeline.Factory, frames int) stagetest.Maker {
 	before := needed(cat, f)
 	return func(raw raster.Raw) *pipeline.Item {
 		item := verifyItem(raw)
+		item.Frames = slices.Repeat(item.Frames, frames)
 		for _, t := range before {
 			if err := runBefore(cat, t, item); err != nil {
 				panic(fmt.Sprintf("stage %s before it: %v", t, err))

@@ -7,13 +7,14 @@ import (
 	"os"
 
 	"lapgate/plugins/builtin"
+	"lapgate/plugins/deflectometry"
 	"lapgate/plugins/outside"
 	"lapgate/plugins/unwrap"
 )
 
 func main() {
 	var types []string
-	for _, f := range append(builtin.Stages(), unwrap.Factory()) {
+	for _, f := range append(builtin.Stages(), unwrap.Factory(), deflectometry.Factory()) {
 		if len(os.Args) == 2 && f.Type == os.Args[1] {
 			outside.Serve(f)
 		}

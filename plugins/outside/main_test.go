@@ -13,6 +13,8 @@ import (
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
 	"lapgate/plugins/builtin"
+	"lapgate/plugins/deflectometry"
+	"lapgate/plugins/unwrap"
 )
 
 // TestMain runs this test program as a plug-in where its arguments say so.
@@ -30,7 +32,7 @@ func serveForTest(args []string) {
 	if args[0] == "hostile" {
 		serveHostile(args[1:])
 	}
-	for _, f := range append(builtin.Stages(), probeFactory()) {
+	for _, f := range append(builtin.Stages(), probeFactory(), unwrap.Factory(), deflectometry.Factory()) {
 		if f.Type == args[0] {
 			Serve(f)
 		}
