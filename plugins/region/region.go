@@ -40,6 +40,13 @@ func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
 	if st.geometry == nil {
 		return nil, pipeline.Invalid("region: the view has no scale; give um_per_px")
 	}
+	if s.MaxEdgeWidthRatio > 0 {
+		c := env.Calibration
+		if c == nil || c.PartEdge == nil || !(c.PartEdge.WidthPx > 0) {
+			return nil, pipeline.Invalid("max_edge_width_ratio: the calibration knows no edge of a conforming part; calibrate with one, or give max_edge_width_px")
+		}
+		st.s.MaxEdgeWidthPx = s.MaxEdgeWidthRatio * c.PartEdge.WidthPx
+	}
 	if s.Shape == MaskImage {
 		mask, sum, err := readMask(s.MaskFile, env.ReadFile)
 		if err != nil {

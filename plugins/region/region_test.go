@@ -129,6 +129,29 @@ func TestEdgeOutOfFocusFails(t *testing.T) {
 	}
 }
 
+// The allowed width may be stated relative to the edge of the calibration's part.
+func TestEdgeAgainstTheCalibration(t *testing.T) {
+	decode := settings(func(s *Settings) { disc12(s); s.MaxEdgeWidthRatio = 1.3 })
+	env := pipeline.Environment{Geometry: pipeline.Planar{UMPerPx: umPerPx}}
+	if _, _, err := Factory.New(decode, env); pipeline.KindOf(err) != pipeline.InvalidKind {
+		t.Errorf("without an edge in the calibration: got %v", err)
+	}
+	for width, want := range map[float64]bool{1: false, 2.5: true} {
+		env.Calibration = &pipeline.Calibration{PartEdge: &pipeline.PartEdge{WidthPx: width}}
+		st, _, err := Factory.New(decode, env)
+		if err != nil {
+			t.Fatal(err)
+		}
+		item := &pipeline.Item{Frames: []pipeline.Frame{{Raw: part(12, 160, 150)}}, Geometry: env.Geometry}
+		if err := st.Run(context.Background(), item); err != nil {
+			t.Fatal(err)
+		}
+		if p := item.Proofs[1]; p.Name != pipeline.ProofFocus || p.OK != want || p.High != 1.3*width {
+			t.Errorf("calibrated %g px: got %+v", width, p)
+		}
+	}
+}
+
 func TestPolygonRegion(t *testing.T) {
 	item, _ := run(t, part(12, 160, 150), settings(func(s *Settings) {
 		s.Shape, s.Polygon = Polygon, []Corner{{9.5, 19.5}, {49.5, 19.5}, {49.5, 39.5}, {9.5, 39.5}}

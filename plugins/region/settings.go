@@ -45,6 +45,9 @@ type Settings struct {
 	// MaxEdgeWidthPx is the largest 10–90 % width of the edge that is still in focus, in
 	// px. 0: not proven.
 	MaxEdgeWidthPx float64 `json:"max_edge_width_px" yaml:"max_edge_width_px"`
+	// MaxEdgeWidthRatio is the same as a ratio to the edge of the conforming part that the
+	// calibration was made with, which must then be there. 0: max_edge_width_px holds.
+	MaxEdgeWidthRatio float64 `json:"max_edge_width_ratio" yaml:"max_edge_width_ratio"`
 	// Polygon is the corners in px, in order; at least three for the polygon shape.
 	Polygon []Corner `json:"polygon" yaml:"polygon"`
 	// MaskFile is a PNG of the frame's size, beside the recipe: pixels that are not
@@ -121,7 +124,7 @@ func (s Settings) checkNumbers() error {
 		{"diameter_mm", s.DiameterMM, largest}, {"diameter_tolerance_mm", s.DiameterToleranceMM, largest},
 		{"centre_x_px", s.CentreXPx, largest}, {"centre_y_px", s.CentreYPx, largest}, {"search_px", s.SearchPx, largest},
 		{"min_edge_share", s.MinEdgeShare, 1}, {"max_edge_rms_px", s.MaxEdgeRMSPx, largest},
-		{"max_edge_width_px", s.MaxEdgeWidthPx, largest}, {"rim_mm", s.RimMM, largest},
+		{"max_edge_width_px", s.MaxEdgeWidthPx, largest}, {"max_edge_width_ratio", s.MaxEdgeWidthRatio, 100}, {"rim_mm", s.RimMM, largest},
 	}
 	for i, z := range s.Zones {
 		numbers = append(numbers, struct {
