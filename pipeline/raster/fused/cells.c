@@ -84,6 +84,7 @@ static char *lay_out(pg_band *b, char *at, int cell) {
 	b->stats = (double *)(void *)take(&at, 3 * sizeof(double) * columns);
 	b->whole = take(&at, t * (size_t)cell * (size_t)cell);
 	b->highest = take(&at, t * segments);
+	b->hits = (int32_t *)(void *)take(&at, sizeof(int32_t) * segments);
 	b->inner = (pg_span *)(void *)take(&at, spans);
 	b->spare = (pg_span *)(void *)take(&at, spans);
 	return at;
@@ -233,7 +234,7 @@ int pg_covers(const pg_frame *f, const pg_grid *g, const pg_grid *truth) {
 	for (int64_t i = 0; i < (int64_t)g->columns * g->rows; i++) {
 		if (truth->inside[i] == 0)
 			continue;
-		double used = pg_cautious(f, f->low, g->noise[i]), off = fabs(g->level[i] - truth->level[i]) + (f->use_float ? 0 : 0.5 / f->scale);
+		double used = pg_cautious(f, f->low, g->noise[i], g->slack), off = fabs(g->level[i] - truth->level[i]) + (f->use_float ? 0 : 0.5 / f->scale);
 		if (used > 1.01 * f->low * PG_GAIN * truth->noise[i] - off)
 			return 0;
 	}

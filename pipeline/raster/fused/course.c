@@ -25,7 +25,7 @@ static void start(line *l, const window *w, const shape *s) {
 	l->cos = cos(angle), l->sin = sin(angle);
 	EACH_FOOT(w, k, u) {
 		double t = ALONG(l, k, u);
-		l->t0 = fmin(l->t0, t), t1 = fmax(t1, t);
+		l->t0 = t < l->t0 ? t : l->t0, t1 = t > t1 ? t : t1;
 	}
 	l->bin = fmax(4, (t1 - l->t0) / PATH);
 	l->n = (int)((t1 - l->t0) / l->bin) + 1;
@@ -161,7 +161,7 @@ static int width_of(const line *l, double a, double b, double *width) {
 		if (t < a || t > b)
 			continue;
 		double slope = (across(l, t + 1, first, last) - across(l, t - 1, first, last)) / 2;
-		double o = (ACROSS(l, k, u) - across(l, t, first, last)) / hypot(1, slope);
+		double o = (ACROSS(l, k, u) - across(l, t, first, last)) / sqrt(1 + slope * slope);
 		if (fabs(o) > BINS)
 			continue;
 		for (int at = BINS / 2 + (int)floor(o / profile_step) - 1, i = at; i <= at + 3; i++) {

@@ -175,7 +175,11 @@ func (j *job) look(float bool) (bool, error) {
 	if err != nil {
 		return false, err
 	}
-	if err := firstError(C.pg_smooth(f, j.guess.c), C.pg_sample_grain(f, j.guess.c, p)); err != nil {
+	if err := firstError(C.pg_smooth(f, j.guess.c)); err != nil {
+		return false, err
+	}
+	C.pg_calm(f, j.guess.c)
+	if err := firstError(C.pg_sample_grain(f, j.guess.c, p)); err != nil {
 		return false, err
 	}
 	C.pg_grain(f, j.guess.c, grainShare)
@@ -186,6 +190,9 @@ func (j *job) look(float bool) (bool, error) {
 // measured on few blocks, and on means of 4 × 4 pixels, which see long waves up to a
 // tenth stronger than the matched filter does.
 const grainShare = 0.8
+
+// finalSlack is how far, in sigmas, the level of all pixels may move when it is measured again.
+const finalSlack = 0.05
 
 // maxPasses bounds how often the rows are passed.
 const maxPasses = 3
@@ -208,6 +215,7 @@ func (j *job) pass() error {
 			return nil
 		}
 		j.guess, j.grid = j.grid, j.guess
+		j.guess.c.slack = finalSlack
 		if j.frame.use_float == 0 && C.pg_fits(j.frame, j.guess.c) == 0 {
 			return nil
 		}

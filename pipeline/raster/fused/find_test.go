@@ -337,3 +337,18 @@ func TestMemoryGrowsWithTheWidth(t *testing.T) {
 		t.Errorf("%d bytes for 512 rows, %d for 2048: %.2f bytes a pixel", low, high, perPixel)
 	}
 }
+
+// The bound reads every byte of the frame, and those of the sampled rows twice.
+func TestReadSumsWhatItReads(t *testing.T) {
+	raw := raster.NewRaw(raster.Mono8, 64, 64)
+	c, err := NewCorrection(raw.Format, 64, 64, Planes{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for y := range 64 {
+		raw.Data[64*y] = 1
+	}
+	if got := c.Read(raw, usual()); got != 64+8 {
+		t.Errorf("sum %d, want 72: 64 rows and 8 sampled", got)
+	}
+}

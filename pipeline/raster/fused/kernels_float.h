@@ -25,6 +25,8 @@ PG_KERNEL int row_value(const pg_frame *f, T *restrict v, uint16_t *restrict tmp
 	return top;
 }
 
+static T replaced(const pg_frame *f, int x, int y) { return pg_replaced(f, x, y); }
+
 // moments sums in eight lanes, so that the order of the sums is the same however wide
 // the vectors are.
 PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restrict c, const T *restrict d, int x0, int x1, T low,

@@ -53,6 +53,34 @@ PG_INLINE int row_value(const pg_frame *f, T *restrict v, uint16_t *restrict tmp
 	return value_words(f, v, pg_unpack(f, tmp, y, x0, x1), o, g, x0, x1);
 }
 
+PG_INLINE T to_value(const pg_frame *f, double dn) {
+	double v = dn * f->scale + 32768.5;
+	return (int16_t)((v < 1.5 ? 1 : v > 65535 ? 65535 : (int32_t)v) - 32768);
+}
+
+// value_one is what row_value writes for one pixel.
+static int value_one(const pg_frame *f, int x, int y) {
+	int64_t at = (int64_t)y * f->width + x;
+	int16_t d = (int16_t)(pg_count(f, pg_row(f, y), x) * (uint32_t)f->factor);
+	d = f->offset ? (int16_t)(d - f->offset[at]) : d;
+	return f->gain ? (((int32_t)d * f->gain[at] >> 14) + 1) >> 1 : d;
+}
+
+// replaced is the median of the good ones of the eight neighbours of a bad pixel.
+static T replaced(const pg_frame *f, int x, int y) {
+	int near[8], n = 0;
+	for (int v = y - 1 < 0 ? 0 : y - 1; v <= y + 1 && v < f->height; v++)
+		for (int u = x - 1 < 0 ? 0 : x - 1; u <= x + 1 && u < f->width; u++) {
+			if ((u == x && v == y) || pg_is_bad(f, u, v))
+				continue;
+			int c = value_one(f, u, v), i = n++;
+			for (; i > 0 && near[i - 1] > c; i--)
+				near[i] = near[i - 1];
+			near[i] = c;
+		}
+	return n == 0 ? to_value(f, pg_replaced(f, x, y)) : (T)((near[n / 2] + near[(n - 1) / 2]) / 2);
+}
+
 // inside is v − mid where v lies from low to high, and 0 elsewhere; *n counts down by one.
 PG_INLINE int16_t inside(int16_t v, int16_t low, int16_t high, int16_t mid, int16_t *n) {
 	int16_t in = (int16_t)((v < low ? 0 : -1) & (v > high ? 0 : -1));
@@ -109,11 +137,6 @@ PG_KERNEL void row_signal(T *restrict s, const T *restrict v, const T *restrict 
 PG_INLINE T taps(T a, T b, T c, T d, T e) {
 	int16_t ae = (int16_t)(a + e), bd = (int16_t)(b + d);
 	return (int16_t)((int16_t)((ae >> 2) + bd + (c + (c >> 1)) + 3) >> 2);
-}
-
-PG_INLINE T to_value(const pg_frame *f, double dn) {
-	double v = dn * f->scale + 32768.5;
-	return (int16_t)((v < 1.5 ? 1 : v > 65535 ? 65535 : (int32_t)v) - 32768);
 }
 
 PG_INLINE int32_t threshold(double v) { return v < 1 ? 1 : v > 32766 ? 32766 : (int32_t)v; }

@@ -126,7 +126,8 @@ static double square_contour(const float c[4], float half) {
 	}
 	for (int k = 0; k < n; k++) {
 		int to = first ? (k + 1) % m : k;
-		total += hypot(leaves[k][0] - enters[to][0], leaves[k][1] - enters[to][1]);
+		double dx = leaves[k][0] - enters[to][0], dy = leaves[k][1] - enters[to][1];
+		total += sqrt(dx * dx + dy * dy);
 	}
 	return total;
 }
@@ -152,7 +153,7 @@ static sums above(const window *w, float half, double *contour) {
 // half_height returns the plateau's height and the shape of the region above half of it.
 static double half_height(const window *w, shape *s, double *contour) {
 	double height = 0;
-	EACH_FOOT(w, k, x) height = fmax(height, (double)w->smooth[w->at[k] + x]);
+	EACH_FOOT(w, k, x) height = w->smooth[w->at[k] + x] > height ? w->smooth[w->at[k] + x] : height;
 	for (int i = 0; i < 6; i++) {
 		double next = plateau(w, height / 2), moved = fabs(next - height);
 		int done = moved < 0.002 * height;
@@ -179,7 +180,7 @@ static void flux(const window *w, pg_measure *out) {
 				continue;
 			double v = w->signal[w->at[k] + u], n = noise[u - x];
 			out->flux += v;
-			out->peak = fmax(out->peak, v);
+			out->peak = v > out->peak ? v : out->peak;
 			variance += n * n;
 		}
 	}

@@ -43,13 +43,12 @@ PG_INLINE int pg_node(int p, int cell, int nodes, double *fraction) {
 }
 
 // How far the candidates' thresholds lie below the true ones: the noise measured on a
-// part of the rows may be NOISE_SLACK too high, the level LEVEL_SLACK sigmas.
+// part of the rows may be PG_NOISE_SLACK too high, the level the grid's slack in sigmas.
 #define PG_NOISE_SLACK 0.04
-#define PG_LEVEL_SLACK 0.15
 
 // pg_cautious is k sigmas of the filtered signal less the slack, DN.
-PG_INLINE double pg_cautious(const pg_frame *f, double k, double noise) {
-	return k * (1 - PG_NOISE_SLACK) * PG_GAIN * noise - PG_LEVEL_SLACK * noise - (f->use_float ? 0 : 1 / f->scale);
+PG_INLINE double pg_cautious(const pg_frame *f, double k, double noise, double slack) {
+	return k * (1 - PG_NOISE_SLACK) * PG_GAIN * noise - slack * noise - (f->use_float ? 0 : 1 / f->scale);
 }
 
 // pg_cell_exact measures a cell as the reference does; not 0 when there is no memory.

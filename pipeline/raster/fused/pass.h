@@ -57,6 +57,7 @@ typedef struct {
 	double *block;           // DN, clipped sigma of the filtered picture; < 0 = too few samples
 	int64_t *inside, *valid; // pixels of the region, and of these the good ones
 	uint8_t *filled;         // not measured
+	double slack;            // how many sigmas the level of a first look may be off
 } pg_grid;
 
 // Runs of pixels.
@@ -82,6 +83,7 @@ typedef struct {
 	float *sums;
 	double *stats;
 	pg_span *inner, *spare;
+	int32_t *hits;
 	pg_runs runs, saturated; // of these rows
 } pg_band;
 
@@ -98,6 +100,9 @@ int32_t pg_sample_blocks(const pg_frame *f);
 // measurement filled. pg_sample_grain then measures the sampled blocks, and pg_grain
 // multiplies the noise by the grain factor, but for a share of it, and applies the floor.
 int pg_smooth(const pg_frame *f, pg_grid *g);
+// pg_calm smoothes the levels of a first look over 3 × 3 cells where the whole frame is
+// smooth, and sets slack.
+void pg_calm(const pg_frame *f, pg_grid *g);
 int pg_sample_grain(const pg_frame *f, pg_grid *g, const float *blocks);
 void pg_grain(const pg_frame *f, pg_grid *g, double share);
 

@@ -24,6 +24,7 @@ typedef struct {
 	double *stats; // number, sum, sum² of each cell
 	T *cell_low, *cell_high, *cell_mid;
 	pg_span *inner, *spare;
+	int32_t *hits, hit_count; // segments with a value above the threshold in the four filtered rows
 } state;
 
 // hull is the x-range of the region in rows y0 to y1, rounded outwards to whole segments
@@ -68,16 +69,26 @@ static void replace_bad(const pg_frame *f, T *row, int y, int x0, int x1) {
 	if (f->bad_start)
 		for (int i = f->bad_start[y]; i < f->bad_start[y + 1]; i++)
 			if (f->bad_x[i] >= x0 && f->bad_x[i] < x1)
-				row[f->bad_x[i]] = to_value(f, pg_replaced(f, f->bad_x[i], y));
+				row[f->bad_x[i]] = replaced(f, f->bad_x[i], y);
+}
+
+// next_top returns the next x from x on whose count is the highest or above, or x1.
+static int next_top(const pg_frame *f, const uint8_t *row, int x, int x1) {
+	if (f->layout == PG_BYTES) {
+		const uint8_t *p = x < x1 ? memchr(row + x, 255, (size_t)(x1 - x)) : 0;
+		return p ? (int)(p - row) : x1;
+	}
+	while (x < x1 && pg_count(f, row, x) < (uint32_t)f->max_count)
+		x++;
+	return x;
 }
 
 static int note_saturated(const pg_frame *f, pg_band *b, int y, int x0, int x1) {
 	const uint8_t *row = pg_row(f, y);
-	for (int x = x0; x < x1; x++) {
-		uint32_t c = pg_count(f, row, x);
-		if (c > (uint32_t)f->max_count)
+	for (int x = next_top(f, row, x0, x1); x < x1; x = next_top(f, row, x + 1, x1)) {
+		if (pg_count(f, row, x) > (uint32_t)f->max_count)
 			return PG_BAD_COUNT;
-		if (c == (uint32_t)f->max_count && pg_run_add(&b->saturated, y, x, x + 1, 0))
+		if (pg_run_add(&b->saturated, y, x, x + 1, 0))
 			return PG_NO_MEMORY;
 	}
 	return PG_OK;
@@ -153,8 +164,8 @@ static void thresholds(state *s, int y) {
 		for (int iy = y0; iy <= y1; iy++)
 			for (int ix = x0; ix <= x1; ix++)
 				noise = g->noise[(int64_t)iy * g->columns + ix] < noise ? g->noise[(int64_t)iy * g->columns + ix] : noise;
-		s->low[j] = threshold(pg_cautious(f, f->low, noise) * f->scale);
-		s->high[j] = threshold(pg_cautious(f, f->high, noise) * f->scale);
+		s->low[j] = threshold(pg_cautious(f, f->low, noise, g->slack) * f->scale);
+		s->high[j] = threshold(pg_cautious(f, f->high, noise, g->slack) * f->scale);
 	}
 }
 

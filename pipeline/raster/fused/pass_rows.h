@@ -40,6 +40,11 @@ static void vertical(state *s, int y, int x0, int x1) {
 		h[k] = s->ring[(y - 4 + k) & 7];
 	down(f[0], f[1], f[2], f[3], h[0], h[1], h[2], h[3], h[4], h[5], h[6], h[7], x0, x1);
 	highest(f[0], f[1], f[2], f[3], s->highest, s->f->polarity == 0, x0, x1);
+	s->hit_count = 0;
+	for (int32_t j = x0 / SEGMENT; j * SEGMENT < x1; j++) {
+		s->hits[s->hit_count] = j;
+		s->hit_count += s->highest[j] >= s->low[j];
+	}
 }
 
 // scan adds the runs of f[x0 … x1) at or above the threshold, divided by share.
@@ -58,19 +63,29 @@ static int scan(state *s, const T *f, int y, int x0, int x1, int share) {
 	return PG_OK;
 }
 
-// scan_inner is scan that passes over segments without a pixel above the threshold.
-static int scan_inner(state *s, const T *restrict f, int y, int x0, int x1) {
-	for (int j = x0 / SEGMENT; j * SEGMENT < x1; j++) {
-		if (s->highest[j] < s->low[j])
+PG_KERNEL int reaches(const T *restrict f, int x0, int x1, T low, int both) {
+	T top = 0, bottom = 0;
+	for (int x = x0; x < x1; x++) {
+		top = f[x] > top ? f[x] : top;
+		bottom = f[x] < bottom ? f[x] : bottom;
+	}
+	return top >= low || (both && -bottom >= low);
+}
+
+// scan_inner is scan that looks only at segments with a pixel above the threshold, from
+// the list's entry *next on.
+static int scan_inner(state *s, const T *f, int y, int x0, int x1, int *next) {
+	for (; *next < s->hit_count; ++*next) {
+		int j = s->hits[*next];
+		if ((j + 1) * SEGMENT <= x0)
 			continue;
+		if (j * SEGMENT >= x1)
+			break;
 		int a = j * SEGMENT < x0 ? x0 : j * SEGMENT, e = (j + 1) * SEGMENT < x1 ? (j + 1) * SEGMENT : x1;
-		T top = 0, bottom = 0;
-		for (int x = a; x < e; x++) {
-			top = f[x] > top ? f[x] : top;
-			bottom = f[x] < bottom ? f[x] : bottom;
-		}
-		if ((top >= s->low[j] || (s->f->polarity == 0 && -bottom >= s->low[j])) && scan(s, f, y, a, e, 1))
+		if (reaches(f, a, e, s->low[j], s->f->polarity == 0) && scan(s, f, y, a, e, 1))
 			return PG_NO_MEMORY;
+		if ((j + 1) * SEGMENT > x1)
+			break; // the rest of the segment may lie in the next span
 	}
 	return PG_OK;
 }
@@ -78,12 +93,12 @@ static int scan_inner(state *s, const T *restrict f, int y, int x0, int x1) {
 // runs_of adds the runs of row y. Near the region's edge the reference scales the filter
 // by up to 1.95, so there everything above half of the threshold is a candidate.
 static int runs_of(state *s, const T *f, int y) {
-	int n, m = span_inner(s->f, y, &s->inner, &s->spare), k = 0;
+	int n, m = span_inner(s->f, y, &s->inner, &s->spare), k = 0, next = 0;
 	const pg_span *p = spans_of(s->f, y, &n), *in = s->inner;
 	for (int i = 0; i < n; i++) {
 		int x = p[i].x0;
 		for (; k < m && in[k].x0 < p[i].x1; k++) {
-			if (scan(s, f, y, x, in[k].x0, 2) || scan_inner(s, f, y, in[k].x0, in[k].x1))
+			if (scan(s, f, y, x, in[k].x0, 2) || scan_inner(s, f, y, in[k].x0, in[k].x1, &next))
 				return PG_NO_MEMORY;
 			x = in[k].x1;
 		}
@@ -114,7 +129,7 @@ static void start(state *s, const pg_frame *f, const pg_grid *g, pg_grid *out, p
 	s->cell_low = (T *)(void *)b->cells;
 	s->cell_high = s->cell_low + g->columns;
 	s->cell_mid = s->cell_high + g->columns;
-	s->inner = b->inner, s->spare = b->spare;
+	s->inner = b->inner, s->spare = b->spare, s->hits = b->hits;
 	double least, most;
 	pg_limits(f, g, &least, &most);
 	s->least = (T)least, s->most = (T)most;

@@ -88,7 +88,27 @@ static void grow(window *w, int64_t n) {
 	}
 }
 
+// whole_mean is binomial_mean where all nine pixels are usable; 0 in *ok where not.
+static inline float whole_mean(const window *w, int k, int x, int *ok) {
+	*ok = k > 0 && k + 1 < w->rows && x > w->x0[k] && x + 1 < w->x1[k] && x > w->x0[k - 1] && x + 1 < w->x1[k - 1] &&
+	      x > w->x0[k + 1] && x + 1 < w->x1[k + 1];
+	if (!*ok)
+		return 0;
+	const uint8_t *u = w->usable + w->at[k - 1] + x, *v = w->usable + w->at[k] + x, *t = w->usable + w->at[k + 1] + x;
+	*ok = u[-1] & u[0] & u[1] & v[-1] & v[0] & v[1] & t[-1] & t[0] & t[1];
+	const float *a = w->signal + w->at[k - 1] + x, *b = w->signal + w->at[k] + x, *c = w->signal + w->at[k + 1] + x;
+	float sum = a[-1];
+	sum += 2 * a[0], sum += a[1];
+	sum += 2 * b[-1], sum += 4 * b[0], sum += 2 * b[1];
+	sum += c[-1], sum += 2 * c[0], sum += c[1];
+	return sum / 16;
+}
+
 static float binomial_mean(const window *w, int k, int x) {
+	int ok;
+	float mean = whole_mean(w, k, x, &ok);
+	if (ok)
+		return mean;
 	float sum = 0, weights = 0;
 	for (int v = k > 0 ? k - 1 : 0; v <= k + 1 && v < w->rows; v++)
 		for (int u = x - 1; u <= x + 1; u++) {

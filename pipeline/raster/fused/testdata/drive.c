@@ -10,6 +10,7 @@
 #include "../objects.h"
 
 static uint64_t seed = 1;
+static int covered, tried;
 
 static uint32_t next(void) { // xorshift64* (Vigna 2016)
 	seed ^= seed >> 12, seed ^= seed << 25, seed ^= seed >> 27;
@@ -176,6 +177,8 @@ static int look(job *j) {
 	for (int i = 0; i < j->n && !e; i++)
 		e = pg_sample(&j->f, &j->guess, j->bands[i], j->blocks, i * j->grid.rows / j->n, (i + 1) * j->grid.rows / j->n);
 	e = e ? e : pg_smooth(&j->f, &j->guess);
+	if (!e)
+		pg_calm(&j->f, &j->guess);
 	e = e ? e : pg_sample_grain(&j->f, &j->guess, j->blocks);
 	if (!e)
 		pg_grain(&j->f, &j->guess, 0.8);
@@ -214,11 +217,11 @@ static int all(job *j) {
 		return 0;
 	e = e ? e : rows(j);
 	if (!e) {
+		covered += pg_covers(&j->f, &j->guess, &j->grid), tried++;
 		mix(j, j->grid.level, sizeof(double) * (size_t)(j->grid.columns * j->grid.rows));
 		mix(j, j->grid.noise, sizeof(double) * (size_t)(j->grid.columns * j->grid.rows));
 		for (int i = 0; i < j->n; i++)
 			mix(j, j->bands[i]->runs.at, sizeof(pg_run) * (size_t)j->bands[i]->runs.count);
-		pg_covers(&j->f, &j->guess, &j->grid);
 	}
 	return e ? e : objects(j);
 }
@@ -305,7 +308,9 @@ static int timing(int count) {
 			best[k] = fmin(best[k], t[k + 1] - t[k]);
 		best[3] = fmin(best[3], t[3] - t[0]);
 	}
-	printf("%.3f look %.3f rows %.3f objects %.3f blobs %d\n", best[3], best[0], best[1], best[2], (int)j.blobs->count);
+	covered = pg_covers(&j.f, &j.guess, &j.grid);
+	int64_t runs = j.bands[0]->runs.count;
+	printf("%.3f look %.3f rows %.3f objects %.3f blobs %d runs %d covered %d\n", best[3], best[0], best[1], best[2], (int)j.blobs->count, (int)runs, covered);
 	drop(&j);
 	return 0;
 }
