@@ -153,9 +153,14 @@ func TestHostileStage(t *testing.T) {
 		t.Run(how, func(t *testing.T) {
 			t.Parallel()
 			s := settingsFor("hostile", how)
-			s.Deadline, s.MaxRSSBytes, s.MaxConcurrent = 500*time.Millisecond, 300<<20, 1
-			if how == "leak" || how == "huge" {
-				s.Deadline = 20 * time.Second
+			s.Deadline, s.MaxConcurrent = 30*time.Second, 1
+			switch how {
+			case "hang":
+				s.Deadline = 500 * time.Millisecond
+			case "leak":
+				s.MaxRSSBytes = 300 << 20
+			case "huge":
+				s.MaxRSSBytes = 4 << 30
 			}
 			h := open(t, s)
 			stage := newStage(t, h.Factory(), "{}")

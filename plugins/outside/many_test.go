@@ -3,6 +3,7 @@ package outside
 import (
 	"context"
 	"math"
+	"os"
 	"strings"
 	"sync"
 	"testing"
@@ -42,10 +43,14 @@ func line(t *testing.T, f pipeline.Factory) *pipeline.Pipeline {
 
 // A stage that dies at every 50th unit: each unit gets one judgement, those at which it
 // died are held with its name, all others are accepted with the right answer.
+// LAPGATE_LONG=1 makes it 10 000 units.
 func TestStageThatKeepsDying(t *testing.T) {
-	n := 10_000
-	if testing.Short() {
-		n = 1000
+	n := 1500
+	switch {
+	case testing.Short():
+		n = 500
+	case os.Getenv("LAPGATE_LONG") != "":
+		n = 10_000
 	}
 	s := settingsFor("hostile", "panic")
 	s.RestartBudget, s.Backoff = n, time.Millisecond
