@@ -20,6 +20,7 @@ deps: ## install what is missing (Debian 12) and check the Go version
 build: deps
 	@mkdir -p build
 	go build -ldflags '$(LDFLAGS)' -o build/lapgated ./cmd/lapgated
+	go build -ldflags '$(LDFLAGS)' -o build/lapgate-stage ./cmd/stage
 	CGO_ENABLED=0 go build -ldflags '$(LDFLAGS)' -o build/lapgate ./cmd/lapgate
 	CGO_ENABLED=0 GOOS=windows GOARCH=amd64 go build -ldflags '$(LDFLAGS)' -o build/lapgate.exe ./cmd/lapgate
 
@@ -27,7 +28,7 @@ test: build
 	go test ./...
 
 race: deps ## where goroutines share something; the kernels of raster do not
-	go test -race -short ./pipeline ./plugins/builtin ./plugins/outside ./server ./server/intake ./server/images ./server/ledger ./server/masters ./configs ./cmd/lapgate/...
+	go test -race -short ./pipeline ./server ./server/intake ./server/images ./server/masters ./configs ./cmd/lapgate/...
 
 fuzz: deps ## every fuzz target for FUZZTIME
 	@.ci/fuzz $(or $(FUZZTIME),5s)
@@ -57,6 +58,7 @@ lint: deps
 
 gen: ## generated code from the .proto files
 	cd proto && go tool -modfile=tools/buf/go.mod buf generate
+	protoc --python_out=plugins/outside/python -I proto/stagepb stage.proto # Debian's protobuf-compiler
 
 clean:
 	rm -rf build
