@@ -26,11 +26,14 @@ type bench struct {
 	calibrations map[string]*pipeline.Calibration
 }
 
-func newBench(dir string) (*bench, error) {
+func newBench(dir string, seed uint64) (*bench, error) {
 	b := &bench{calibrations: map[string]*pipeline.Calibration{}}
 	var err error
 	if b.scene, _, err = configs.Load[render.Scene](filepath.Join(dir, "scene.yaml")); err != nil {
 		return nil, err
+	}
+	if seed != 0 {
+		b.scene.Seed = seed
 	}
 	if b.catalogue, err = builtin.Catalogue(); err != nil {
 		return nil, err

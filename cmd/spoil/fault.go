@@ -24,7 +24,7 @@ func spoiled(name, kind string, value float64, causes ...string) fault {
 }
 
 func dig(name string, mm float64) fault {
-	return fault{name: name, causes: []string{"dig too large", "too much dig area", "stain too large"}, add: func(u *render.Unit, r *rand.Rand) {
+	return fault{name: name, causes: []string{"dig too large", "dig hidden by a brighter one", "stain too large"}, add: func(u *render.Unit, r *rand.Rand) {
 		a, d := 2*math.Pi*r.Float64(), (3800-mm*500)*math.Sqrt(r.Float64())
 		u.Add(render.Object{Kind: pipeline.Dig, UUM: d * math.Cos(a), VUM: d * math.Sin(a), DiameterUM: mm * 1000, BrightnessDN: 35 + 75*r.Float64()})
 	}}

@@ -17,6 +17,7 @@ type options struct {
 	out     string // JSON; empty = none
 	only    string // name of one fault; empty = all
 	units   int
+	seed    uint64 // of the scene; 0 = the file's
 	workers int
 }
 
@@ -26,6 +27,7 @@ func main() {
 	flag.StringVar(&o.out, "out", "", "write the table as JSON to this file")
 	flag.StringVar(&o.only, "only", "", "show this fault only")
 	flag.IntVar(&o.units, "units", 200, "units of each fault")
+	flag.Uint64Var(&o.seed, "seed", 0, "seed of the scene; 0 = the file's")
 	flag.IntVar(&o.workers, "workers", 2, "faults that run at a time")
 	flag.Parse()
 	if err := run(o, os.Stdout, os.Stderr); err != nil {
@@ -37,7 +39,7 @@ func main() {
 // run shows all faults and prints the table; a fault that was accepted where it must not
 // be is an error after the table.
 func run(o options, out, progress io.Writer) error {
-	b, err := newBench(o.dir)
+	b, err := newBench(o.dir, o.seed)
 	if err != nil {
 		return err
 	}

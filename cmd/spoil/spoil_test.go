@@ -11,7 +11,7 @@ import (
 // A short run of the whole suite: nothing spoiled is accepted, every cause is named, and
 // what is right passes. Two of each with -short, eight without.
 func TestNothingSpoiledIsAccepted(t *testing.T) {
-	units := 8
+	units := 8 // about 40 s of one core
 	if testing.Short() {
 		units = 2
 	}

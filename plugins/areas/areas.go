@@ -106,12 +106,12 @@ func (st stage) leastUM(item *pipeline.Item) float64 {
 	return 2 * float64(st.s.CellPx) * scale
 }
 
-// filled reports whether a defect of the fine search lies in the middle of an area and is
-// at least half as wide: it is the same one, measured better.
+// filled reports whether a defect of the fine search lies in an area and has at least half
+// of its area: it is the same one, measured better. The bright edge of a stain is not.
 func filled(d pipeline.Defect, fine []pipeline.Defect) bool {
 	return slices.ContainsFunc(fine, func(f pipeline.Defect) bool {
 		b := d.Box
-		return f.Dark == d.Dark && f.DiameterUM >= d.DiameterUM/2 && f.XPx >= float64(b.X0) && f.XPx < float64(b.X1) && f.YPx >= float64(b.Y0) && f.YPx < float64(b.Y1)
+		return f.Dark == d.Dark && 2*f.AreaUM2 >= d.AreaUM2 && f.XPx >= float64(b.X0) && f.XPx < float64(b.X1) && f.YPx >= float64(b.Y0) && f.YPx < float64(b.Y1)
 	})
 }
 
