@@ -187,8 +187,9 @@ func fusedFigures(t map[string]*pair) map[string]figure {
 func heapFraction(f fusedScene) float64 {
 	var before, after runtime.MemStats
 	s := fused.Settings{Low: 3.5, High: 6, Polarity: fused.Bright, MinAreaPx: 1, Grid: raster.DefaultGrid()}
+	whole := fused.Whole(f.raw.Width, f.raw.Height)
 	runtime.ReadMemStats(&before)
-	r, err := f.correction.Find(f.raw, fused.Whole(f.raw.Width, f.raw.Height), s)
+	r, err := f.correction.Find(f.raw, whole, s)
 	runtime.ReadMemStats(&after)
 	if err != nil {
 		return math.NaN()

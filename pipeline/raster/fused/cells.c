@@ -6,14 +6,14 @@
 #include "correct.h"
 #include "parts.h"
 
-int pg_sample_int(const pg_frame *, pg_grid *, pg_band *, float *, int32_t, int32_t);
-int pg_sample_float(const pg_frame *, pg_grid *, pg_band *, float *, int32_t, int32_t);
-void pg_sample_grain_int(const pg_frame *, pg_grid *, const float *, void *, int32_t);
-void pg_sample_grain_float(const pg_frame *, pg_grid *, const float *, void *, int32_t);
+int pg_sample_int(const pg_frame *, pg_grid *, pg_band *, void *, int32_t, int32_t);
+int pg_sample_float(const pg_frame *, pg_grid *, pg_band *, void *, int32_t, int32_t);
+void pg_sample_grain_int(const pg_frame *, pg_grid *, const void *, void *, int32_t);
+void pg_sample_grain_float(const pg_frame *, pg_grid *, const void *, void *, int32_t);
 int pg_pass_int(const pg_frame *, const pg_grid *, pg_grid *, pg_band *, int32_t, int32_t);
 int pg_pass_float(const pg_frame *, const pg_grid *, pg_grid *, pg_band *, int32_t, int32_t);
 
-int pg_sample(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int32_t row0, int32_t row1) {
+int pg_sample(const pg_frame *f, pg_grid *g, pg_band *b, void *blocks, int32_t row0, int32_t row1) {
 	return (f->use_float ? pg_sample_float : pg_sample_int)(f, g, b, blocks, row0, row1);
 }
 
@@ -21,8 +21,8 @@ int pg_pass(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, int32
 	return (f->use_float ? pg_pass_float : pg_pass_int)(f, g, out, b, row0, row1);
 }
 
-int pg_sample_grain(const pg_frame *f, pg_grid *g, const float *blocks) {
-	void *scratch = malloc(sizeof(float) * 2 * (size_t)(pg_sample_blocks(f) + 1));
+int pg_sample_grain(const pg_frame *f, pg_grid *g, const void *blocks) {
+	void *scratch = malloc(2 * (size_t)pg_sample_blocks(f) + 1);
 	if (!scratch)
 		return PG_NO_MEMORY;
 	for (int row = 0; row < g->rows; row++)
@@ -34,7 +34,7 @@ int pg_sample_grain(const pg_frame *f, pg_grid *g, const float *blocks) {
 // sample_groups is one group of four rows for 32 rows of a cell.
 static int sample_groups(int cell) { return cell / 32 < 1 ? 1 : cell / 32 > PG_SAMPLES ? PG_SAMPLES : cell / 32; }
 
-int32_t pg_sample_blocks(const pg_frame *f) { return sample_groups(f->cell) * (f->width / 4); }
+int32_t pg_sample_blocks(const pg_frame *f) { return sample_groups(f->cell) * (f->width / 4) * (f->use_float ? 4 : 2); }
 
 int pg_sample_rows(const pg_frame *f, int row, int *y) {
 	int n = sample_groups(f->cell), found = 0;
@@ -49,7 +49,7 @@ int pg_sample_rows(const pg_frame *f, int row, int *y) {
 // Memory.
 
 int pg_grow(pg_runs *r) {
-	int64_t room = r->room < 4096 ? 4096 : 2 * r->room;
+	int64_t room = r->room < 4096 ? 4096 : r->room + r->room / 4;
 	pg_run *at = realloc(r->at, sizeof(pg_run) * (size_t)room);
 	if (!at)
 		return 1;
@@ -70,12 +70,12 @@ static char *lay_out(pg_band *b, char *at, int cell) {
 	size_t segments = (size_t)b->width / 32 + 2, spans = sizeof(pg_span) * ((size_t)b->width / 2 + 2);
 	b->value = take(&at, 4 * row);
 	b->signal = take(&at, row);
-	b->horizontal = take(&at, 8 * row);
+	size_t ring = 4 * (size_t)sample_groups(cell); // the sampled rows and the ring are never in use together
+	b->horizontal = b->samples = take(&at, (ring > 8 ? ring : 8) * row);
 	b->filtered = take(&at, 4 * row);
 	b->grain = take(&at, t * ((size_t)b->width / 4 + 1) * ((size_t)cell / 4 + 1));
 	b->top = take(&at, row);
 	b->slope = take(&at, row);
-	b->samples = take(&at, 4 * (size_t)sample_groups(cell) * row);
 	b->cells = take(&at, 3 * t * columns);
 	b->low = take(&at, t * segments);
 	b->high = take(&at, t * segments);
@@ -229,14 +229,19 @@ int pg_fits(const pg_frame *f, const pg_grid *g) {
 	       3 * fmax(down, across) * f->scale < 16000 && f->clip * widest * f->scale < PG_REACH && PG_GAIN * noise / n * f->scale > 1.2;
 }
 
-// pg_covers allows for a hundredth of the threshold.
-int pg_covers(const pg_frame *f, const pg_grid *g, const pg_grid *truth) {
+// pg_uncovered allows for a hundredth of the threshold.
+int32_t pg_uncovered(const pg_frame *f, const pg_grid *g, const pg_grid *truth, uint8_t *rows) {
+	int32_t n = 0;
+	memset(rows, 0, (size_t)g->rows);
 	for (int64_t i = 0; i < (int64_t)g->columns * g->rows; i++) {
 		if (truth->inside[i] == 0)
 			continue;
 		double used = pg_cautious(f, f->low, g->noise[i], g->slack), off = fabs(g->level[i] - truth->level[i]) + (f->use_float ? 0 : 0.5 / f->scale);
-		if (used > 1.01 * f->low * PG_GAIN * truth->noise[i] - off)
-			return 0;
+		if (used <= 1.01 * f->low * PG_GAIN * truth->noise[i] - off)
+			continue;
+		for (int64_t row = i / g->columns - 1; row <= i / g->columns + 1; row++)
+			if (row >= 0 && row < g->rows && !rows[row])
+				rows[row] = 1, n++;
 	}
-	return 1;
+	return n;
 }

@@ -68,7 +68,7 @@ static int worth_a_look(const pg_frame *f, const pg_runs *c, rows *out) {
 	int64_t i = 0;
 	for (int y = 0; y < f->height && !e; y++) {
 		out->start[y] = out->count;
-		for (; i < c->count && c->at[i].y == y && !e; i++)
+		for (; i < c->count && (int)c->at[i].y == y && !e; i++)
 			if (high[label[i]])
 				e = rows_add(out, y, c->at[i].x0, c->at[i].x1);
 		out->start[y + 1] = out->count;
@@ -273,13 +273,13 @@ static int evaluate(const pg_frame *f, const pg_grid *g, const rows *spans, line
 
 static void add_run(pg_blob *o, const pg_run *r, float peak, int x) {
 	if (o->runs++ == 0)
-		o->x0 = r->x0, o->x1 = r->x1, o->y0 = r->y;
+		o->x0 = r->x0, o->x1 = r->x1, o->y0 = (int32_t)r->y;
 	o->x0 = r->x0 < o->x0 ? r->x0 : o->x0;
 	o->x1 = r->x1 > o->x1 ? r->x1 : o->x1;
-	o->y1 = r->y + 1;
+	o->y1 = (int32_t)r->y + 1;
 	o->area += r->x1 - r->x0;
 	if (peak > o->peak)
-		o->peak = peak, o->peak_x = x, o->peak_y = r->y;
+		o->peak = peak, o->peak_x = x, o->peak_y = (int32_t)r->y;
 }
 
 // gather makes blobs of labelled runs and puts their runs together.

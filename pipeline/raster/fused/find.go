@@ -9,6 +9,7 @@ import (
 	"runtime"
 	"slices"
 	"sync"
+	"unsafe"
 
 	"lapgate/pipeline/raster"
 )
@@ -27,8 +28,8 @@ type Result struct {
 	Saturated   []raster.Span // pixels at the top of the format's range, in and just around the region
 	SNR         *raster.Plane // only with Settings.SNR
 	Floats      bool          // 16-bit integers did not do
-	Passes      int           // over the rows; more than 1 where the first look misjudged level or noise
-	MemoryBytes int64         // taken for this frame beside the frame, the correction and the result
+	RowsAgain   int           // grid rows passed twice, because the first look misjudged level or noise
+	MemoryBytes int64         // taken in C for this frame, beside the frame and the correction
 }
 
 // Whole returns the region that is all of a frame.
@@ -85,18 +86,16 @@ func explain(err error, raw raster.Raw) error {
 
 // job is one call of Find.
 type job struct {
-	c       *Correction
-	s       Settings
-	pin     runtime.Pinner
-	frame   *C.pg_frame
-	rows    int // of the grid
-	guess   *grid
-	grid    *grid
-	inside  []int64
-	valid   []int64
-	bands   []*band
-	passes  int
-	scratch int64
+	c      *Correction
+	s      Settings
+	pin    runtime.Pinner
+	frame  *C.pg_frame
+	rows   int // of the grid
+	guess  *grid
+	grid   *grid
+	inside []int64
+	valid  []int64
+	bands  []*band
 }
 
 func newJob(c *Correction, raw raster.Raw, region []raster.Span, s Settings) *job {
@@ -168,9 +167,8 @@ func (j *job) look(float bool) (bool, error) {
 		}
 		j.bands = append(j.bands, b)
 	}
-	blocks := make([]float32, int(C.pg_sample_blocks(f))*j.rows+1)
-	j.scratch = int64(4 * len(blocks))
-	p := (*C.float)(pinned(j, blocks))
+	blocks := make([]uint64, int(C.pg_sample_blocks(f))*j.rows/8+1)
+	p := pinned(j, blocks)
 	err := j.each(func(b *band, row0, row1 C.int32_t) C.int { return C.pg_sample(f, j.guess.c, b.c, p, row0, row1) })
 	if err != nil {
 		return false, err
@@ -191,58 +189,66 @@ func (j *job) look(float bool) (bool, error) {
 // tenth stronger than the matched filter does.
 const grainShare = 0.8
 
-// finalSlack is how far, in sigmas, the level of all pixels may move when it is measured again.
-const finalSlack = 0.05
-
-// maxPasses bounds how often the rows are passed.
-const maxPasses = 3
-
-// pass finds candidates and measures the grid on all pixels, again where the first look
-// was too far off.
+// pass finds candidates, and measures the grid on all pixels.
 func (j *job) pass() error {
-	for j.passes = 1; ; j.passes++ {
-		err := j.each(func(b *band, row0, row1 C.int32_t) C.int {
-			return C.pg_pass(j.frame, j.guess.c, j.grid.c, b.c, row0, row1)
-		})
-		if err != nil {
-			return err
+	err := j.each(func(b *band, row0, row1 C.int32_t) C.int {
+		return C.pg_pass(j.frame, j.guess.c, j.grid.c, b.c, row0, row1)
+	})
+	if err != nil {
+		return err
+	}
+	if err := firstError(C.pg_smooth(j.frame, j.grid.c)); err != nil {
+		return err
+	}
+	C.pg_grain(j.frame, j.grid.c, 1)
+	return nil
+}
+
+// again passes once more, with the levels and the noise of all pixels, over the grid rows
+// for which the first look was too far off, and replaces their candidates. It returns how
+// many rows that were.
+func (j *job) again(found *C.pg_blobs) (int, error) {
+	rows := make([]uint8, j.rows)
+	n := int(C.pg_uncovered(j.frame, j.guess.c, j.grid.c, (*C.uint8_t)(unsafe.SliceData(rows))))
+	cell := j.s.Grid.CellPx
+	for row := 0; row < j.rows; row++ {
+		first := row
+		for row < j.rows && rows[row] != 0 {
+			row++
 		}
-		if err := firstError(C.pg_smooth(j.frame, j.grid.c)); err != nil {
-			return err
+		if row == first {
+			continue
 		}
-		C.pg_grain(j.frame, j.grid.c, 1)
-		if j.passes == maxPasses || C.pg_covers(j.frame, j.guess.c, j.grid.c) != 0 {
-			return nil
+		b := j.bands[0].c // the guess is of no more use: its memory takes the moments measured once more
+		e := C.pg_pass(j.frame, j.grid.c, j.guess.c, b, C.int32_t(first), C.int32_t(row))
+		if e == C.PG_OK {
+			e = C.pg_replace(found, b, C.int32_t(first*cell), C.int32_t(row*cell))
 		}
-		j.guess, j.grid = j.grid, j.guess
-		j.guess.c.slack = finalSlack
-		if j.frame.use_float == 0 && C.pg_fits(j.frame, j.guess.c) == 0 {
-			return nil
+		if err := firstError(e); err != nil {
+			return n, err
 		}
 	}
+	return n, nil
 }
 
 // byRow returns the spans of a region merged and sorted, and where each row starts.
 func byRow(region []raster.Span, width, height int) ([]cSpan, []int32) {
 	start := make([]int32, height+1)
-	in := make([]raster.Span, 0, len(region))
-	for _, s := range region {
-		s.X0, s.X1 = max(s.X0, 0), min(s.X1, width)
-		if s.Y >= 0 && s.Y < height && s.X0 < s.X1 {
-			in = append(in, s)
-		}
-	}
 	order := func(a, b raster.Span) int {
 		if a.Y != b.Y {
 			return a.Y - b.Y
 		}
 		return a.X0 - b.X0
 	}
-	if !slices.IsSortedFunc(in, order) {
-		slices.SortFunc(in, order)
+	if !slices.IsSortedFunc(region, order) {
+		region = slices.SortedFunc(slices.Values(region), order)
 	}
-	out := make([]cSpan, 0, len(in))
-	for _, s := range in {
+	out := make([]cSpan, 0, len(region))
+	for _, s := range region {
+		s.X0, s.X1 = max(s.X0, 0), min(s.X1, width)
+		if s.Y < 0 || s.Y >= height || s.X0 >= s.X1 {
+			continue
+		}
 		if n := len(out) - 1; n >= 0 && int(out[n].y) == s.Y && int(out[n].x1) >= s.X0 {
 			out[n].x1 = max(out[n].x1, C.int32_t(s.X1))
 			continue

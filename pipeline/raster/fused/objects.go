@@ -18,12 +18,16 @@ func (j *job) objects() (*Result, error) {
 		return nil, errMemory
 	}
 	defer C.pg_blobs_free(found)
-	r := &Result{Grid: j.rasterGrid(), Floats: j.frame.use_float != 0, Passes: j.passes}
+	r := &Result{Grid: j.rasterGrid(), Floats: j.frame.use_float != 0}
 	for _, b := range j.bands {
 		if err := firstError(C.pg_collect(found, b.c)); err != nil {
 			return nil, err
 		}
 		r.Saturated = appendSpans(r.Saturated, b.c.saturated.at, int64(b.c.saturated.count))
+	}
+	var err error
+	if r.RowsAgain, err = j.again(found); err != nil {
+		return nil, err
 	}
 	var snr *C.float
 	if j.s.SNR {
@@ -37,15 +41,23 @@ func (j *job) objects() (*Result, error) {
 	if err := firstError(C.pg_index(j.frame, found)); err != nil {
 		return nil, err
 	}
-	r.MemoryBytes = bytes(j.bands) + int64(C.pg_blobs_bytes(found)) + j.scratch
+	r.MemoryBytes = int64(C.pg_blobs_bytes(found))
+	for _, b := range j.bands {
+		r.MemoryBytes += int64(C.pg_band_bytes(b.c))
+	}
 	r.Blobs = make([]Blob, int(found.count))
 	return r, j.measure(found, r.Blobs)
 }
 
 func appendSpans(dst []raster.Span, runs *C.pg_run, n int64) []raster.Span {
-	dst = slices.Grow(dst, int(n))
-	for _, r := range unsafe.Slice(runs, n) {
-		dst = append(dst, raster.Span{Y: int(r.y), X0: int(r.x0), X1: int(r.x1)})
+	if n == 0 {
+		return dst
+	}
+	spans := make([]cSpan, n)
+	C.pg_spans(runs, C.int64_t(n), unsafe.SliceData(spans))
+	dst = slices.Grow(dst, len(spans))
+	for _, s := range spans {
+		dst = append(dst, raster.Span{Y: int(s.y), X0: int(s.x0), X1: int(s.x1)})
 	}
 	return dst
 }

@@ -34,8 +34,12 @@ pg_blobs *pg_blobs_new(void);
 void pg_blobs_free(pg_blobs *b);
 int64_t pg_blobs_bytes(const pg_blobs *b);
 
-// pg_collect adds the candidates of a band; bands come from the top.
-int pg_collect(pg_blobs *b, const pg_band *band);
+// pg_collect takes the candidates of a band; bands come from the top.
+int pg_collect(pg_blobs *b, pg_band *band);
+// pg_spans writes runs as spans.
+void pg_spans(const pg_run *runs, int64_t n, pg_span *out);
+// pg_replace puts the candidates of a band in the place of those in rows y0 to y1.
+int pg_replace(pg_blobs *b, const pg_band *band, int32_t y0, int32_t y1);
 // pg_find evaluates the snr plane exactly around the candidates that may matter, labels
 // what is above the thresholds and keeps blobs of at least area pixels. With snr (width ×
 // height, zeroed) it evaluates the whole region and writes it there.

@@ -16,14 +16,14 @@ int pg_grow(pg_runs *r);
 // not 0 when there is no memory.
 PG_INLINE int pg_run_add(pg_runs *r, int y, int x0, int x1, int high) {
 	pg_run *last = r->count > 0 ? r->at + r->count - 1 : 0;
-	if (last && last->y == y && last->x1 == x0) {
-		last->x1 = x1;
-		last->high |= high;
+	if (last && (int)last->y == y && last->x1 == x0) {
+		last->x1 = (uint16_t)x1;
+		last->high |= high != 0;
 		return 0;
 	}
 	if (r->count == r->room && pg_grow(r))
 		return 1;
-	r->at[r->count++] = (pg_run){y, x0, x1, high};
+	r->at[r->count++] = (pg_run){.y = (uint32_t)y, .x0 = (uint16_t)x0, .x1 = (uint16_t)x1, .high = high != 0};
 	return 0;
 }
 

@@ -60,10 +60,10 @@ typedef struct {
 	double slack;            // how many sigmas the level of a first look may be off
 } pg_grid;
 
-// Runs of pixels.
+// Runs of pixels. Frames are at most 65 535 px wide and high.
 typedef struct {
-	int32_t y, x0, x1;
-	int32_t high; // holds a pixel above the high threshold
+	uint16_t x0, x1;
+	uint32_t y : 31, high : 1; // high: holds a pixel above the high threshold
 } pg_run;
 
 typedef struct {
@@ -92,8 +92,8 @@ void pg_band_free(pg_band *b);
 int64_t pg_band_bytes(const pg_band *b);
 
 // pg_sample measures the cells of grid rows row0 to row1 on some of their rows; blocks
-// receives the means of blocks, pg_sample_blocks(f) of them a grid row.
-int pg_sample(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int32_t row0, int32_t row1);
+// receives the means of blocks, pg_sample_blocks(f) bytes a grid row.
+int pg_sample(const pg_frame *f, pg_grid *g, pg_band *b, void *blocks, int32_t row0, int32_t row1);
 int32_t pg_sample_blocks(const pg_frame *f);
 
 // pg_smooth makes level and noise out of mean and sigma: medians, and cells without a
@@ -103,7 +103,7 @@ int pg_smooth(const pg_frame *f, pg_grid *g);
 // pg_calm smoothes the levels of a first look over 3 × 3 cells where the whole frame is
 // smooth, and sets slack.
 void pg_calm(const pg_frame *f, pg_grid *g);
-int pg_sample_grain(const pg_frame *f, pg_grid *g, const float *blocks);
+int pg_sample_grain(const pg_frame *f, pg_grid *g, const void *blocks);
 void pg_grain(const pg_frame *f, pg_grid *g, double share);
 
 // pg_fits reports whether 16-bit integers hold a frame with this grid.
@@ -113,7 +113,8 @@ int pg_fits(const pg_frame *f, const pg_grid *g);
 // of g, and measures the cells anew on all of their pixels into out.
 int pg_pass(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, int32_t row0, int32_t row1);
 
-// pg_covers reports whether the thresholds that g gave found all that the grid true calls for.
-int pg_covers(const pg_frame *f, const pg_grid *g, const pg_grid *truth);
+// pg_uncovered marks the grid rows in which the thresholds that g gave did not find all
+// that the grid truth calls for, and returns how many they are.
+int32_t pg_uncovered(const pg_frame *f, const pg_grid *g, const pg_grid *truth, uint8_t *rows);
 
 #endif

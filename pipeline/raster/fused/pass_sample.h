@@ -77,27 +77,26 @@ static int sample_cells(state *s, pg_grid *g, T **rows, int groups, int row, int
 	return PG_OK;
 }
 
-// sample_means writes the block means (DN) of four rows, NaN where a pixel does not count.
+// sample_means writes the block means of four rows, OUTSIDE where a pixel does not count.
 // sums and least hold a row each.
-PG_KERNEL void sample_means(const pg_frame *f, float *restrict dst, T **rows, float *restrict sums, T *restrict least, int x0, int x1) {
+PG_KERNEL void sample_means(const pg_frame *f, T *restrict dst, T **rows, float *restrict sums, T *restrict least, int x0, int x1) {
 	const T *restrict a = rows[0], *restrict b = rows[1], *restrict c = rows[2], *restrict d = rows[3];
-	const float unit = (float)(1 / (16 * f->scale));
 	for (int x = x0; x < x1; x++) {
 		T p = a[x] < b[x] ? a[x] : b[x], q = c[x] < d[x] ? c[x] : d[x];
 		least[x] = p < q ? p : q;
 		sums[x] = (float)a[x] + (float)b[x] + (float)c[x] + (float)d[x];
 	}
 	for (int i = 0; i < f->width / GROUP; i++)
-		dst[i] = __builtin_nanf("");
+		dst[i] = OUTSIDE;
 	for (int i = x0 / GROUP; i < x1 / GROUP; i++) {
 		const T *l = least + GROUP * i;
 		const float *s = sums + GROUP * i;
 		int out = (l[0] == OUTSIDE) | (l[1] == OUTSIDE) | (l[2] == OUTSIDE) | (l[3] == OUTSIDE);
-		dst[i] = out ? __builtin_nanf("") : (s[0] + s[1] + s[2] + s[3]) * unit;
+		dst[i] = out ? OUTSIDE : (T)((s[0] + s[1] + s[2] + s[3]) * (1.f / 16));
 	}
 }
 
-static int sample(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int row0, int row1) {
+static int sample(const pg_frame *f, pg_grid *g, pg_band *b, T *blocks, int row0, int row1) {
 	state s;
 	T *rows[4 * PG_SAMPLES];
 	pg_count_cells(f, g, row0, row1);
@@ -108,7 +107,7 @@ static int sample(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int 
 		int y[PG_SAMPLES], x0, x1, n = pg_sample_rows(f, row, y);
 		int bottom = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
 		hull(f, row * f->cell, bottom, &x0, &x1);
-		float *means = blocks + (int64_t)row * pg_sample_blocks(f);
+		T *means = blocks + (int64_t)row * pg_sample_blocks(f) / (int64_t)sizeof(T);
 		for (int k = 0; k < n; k++) {
 			if (x0 < x1) {
 				int e = load(&s, rows + 4 * k, y[k], x0, x1, 0);
@@ -126,14 +125,14 @@ static int sample(const pg_frame *f, pg_grid *g, pg_band *b, float *blocks, int 
 }
 
 // sample_grain measures the sampled blocks of grid row row against the level; scratch
-// holds twice as many T as blocks has floats in a row.
-static void sample_grain(const pg_frame *f, pg_grid *g, const float *blocks, T *scratch, int row) {
+// holds twice as many T as blocks in a row.
+static void sample_grain(const pg_frame *f, pg_grid *g, const T *blocks, T *scratch, int row) {
 	int y[PG_SAMPLES], n = pg_sample_rows(f, row, y), columns = f->width / GROUP;
-	const float *means = blocks + (int64_t)row * pg_sample_blocks(f);
+	const T *means = blocks + (int64_t)row * pg_sample_blocks(f) / (int64_t)sizeof(T);
 	for (int k = 0; k < n; k++)
 		for (int i = 0; i < columns; i++) {
-			float m = means[(int64_t)k * columns + i];
-			scratch[(int64_t)k * columns + i] = m != m ? OUTSIDE : to_sample(f, m - pg_level(g, f->cell, GROUP * i + 1.5, y[k] + 1.5));
+			T m = means[(int64_t)k * columns + i];
+			scratch[(int64_t)k * columns + i] = m == OUTSIDE ? OUTSIDE : to_sample(f, (double)m / f->scale - pg_level(g, f->cell, GROUP * i + 1.5, y[k] + 1.5));
 		}
 	for (int i = 0; i < g->columns; i++) {
 		int64_t at = (int64_t)row * g->columns + i;

@@ -41,12 +41,3 @@ func (p *pool) put(bands []*band) {
 		p.free.Put(b)
 	}
 }
-
-// bytes returns what the bands hold, in bytes.
-func bytes(bands []*band) int64 {
-	n := int64(0)
-	for _, b := range bands {
-		n += int64(C.pg_band_bytes(b.c))
-	}
-	return n
-}
