@@ -45,6 +45,7 @@ func run(o options, out string) error {
 		measure func(options) (map[string]figure, error)
 	}{
 		{"reference and OpenCV chains, 12 megapixels", benchChains},
+		{"the fused pass", benchFused},
 		{"gRPC round trip and latency", benchServer},
 		{"stages in processes of their own", benchOutside},
 		{"volume plan, 72 combinations", benchVolume},

@@ -94,14 +94,14 @@ func row(t *testing.T, c *pipeline.Calibration, fusers []pipeline.Fuser, needed 
 		}
 		stages, settings = append(stages, s), append(settings, set)
 	}
-	for _, f := range fusers {
-		s, err := f.New(settings, env, needed)
-		if err != nil || s == nil {
-			t.Fatalf("no fused stage: %v", err)
-		}
-		return []pipeline.Stage{s}
+	if len(fusers) == 0 {
+		return stages
 	}
-	return stages
+	s, err := fusers[0].New(settings, env, needed)
+	if err != nil || s == nil {
+		t.Fatalf("no fused stage: %v", err)
+	}
+	return []pipeline.Stage{s}
 }
 
 func run(t *testing.T, stages []pipeline.Stage, it *pipeline.Item, c *pipeline.Calibration) *pipeline.Item {
