@@ -85,14 +85,19 @@ func startServer(o options) (*benchedServer, error) {
 	if err != nil {
 		return nil, err
 	}
-	address := "unix:" + filepath.Join(dir, "socket")
+	free, err := net.Listen("tcp", "127.0.0.1:0")
+	if err != nil {
+		return nil, err
+	}
+	address := free.Addr().String()
+	free.Close()
 	s.cmd = exec.Command(program, "serve", "--listen", address, "--images", "", "--log-level", "warn", "--development")
 	s.cmd.Dir, s.cmd.Stderr = dir, os.Stderr
 	if err := s.cmd.Start(); err != nil {
 		return nil, err
 	}
 	for range 200 {
-		if c, err := net.Dial("unix", filepath.Join(dir, "socket")); err == nil {
+		if c, err := net.Dial("tcp", address); err == nil {
 			c.Close()
 			return s, s.connect(address)
 		}

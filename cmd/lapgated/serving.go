@@ -9,7 +9,6 @@ import (
 	"os"
 	"path/filepath"
 	"runtime"
-	"strings"
 	"sync/atomic"
 	"time"
 
@@ -97,7 +96,7 @@ func (s *serving) open(ctx context.Context) error {
 	for _, h := range s.stages.hosts {
 		s.tellStage(h.Status())
 	}
-	s.listener, err = listen(s.settings.Listen)
+	s.listener, err = net.Listen("tcp", s.settings.Listen)
 	return err
 }
 
@@ -113,14 +112,6 @@ func (s *serving) tellStage(st outside.Status) {
 		state = healthpb.HealthCheckResponse_SERVING
 	}
 	h.SetServingStatus("stage."+st.Type, state)
-}
-
-// listen opens a TCP address, or a unix socket for unix:PATH.
-func listen(address string) (net.Listener, error) {
-	if path, ok := strings.CutPrefix(address, "unix:"); ok {
-		return net.Listen("unix", strings.TrimPrefix(path, "//"))
-	}
-	return net.Listen("tcp", address)
 }
 
 func workers(s configs.Server) int {
