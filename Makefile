@@ -27,8 +27,8 @@ build: deps
 test: build
 	go test ./...
 
-race: deps ## where goroutines share something; the kernels of raster do not
-	go test -race -short ./pipeline ./server ./server/intake ./server/images ./server/masters ./configs ./cmd/lapgate/...
+race: deps ## where goroutines share something; kernels and the volume plan do not
+	go test -race -short -skip Volume ./pipeline ./server ./server/intake ./server/images ./server/masters ./configs ./cmd/lapgate/...
 
 fuzz: deps ## every fuzz target for FUZZTIME
 	@.ci/fuzz $(or $(FUZZTIME),5s)
