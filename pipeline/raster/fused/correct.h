@@ -71,6 +71,21 @@ PG_INLINE const uint16_t *pg_unpack(const pg_frame *f, uint16_t *restrict tmp, i
 	return tmp;
 }
 
+// pg_correct_int is pg_correct by the images in 16-bit integers, which take half of the
+// memory that those in floats do; rounded to 1/scale DN.
+PG_INLINE void pg_correct_int(const pg_frame *f, float *restrict v, uint16_t *restrict tmp, int y, int x0, int x1) {
+	const int64_t at = (int64_t)y * f->width;
+	const int16_t *o = f->offset ? f->offset + at : 0, *g = f->gain ? f->gain + at : 0;
+	const uint8_t *bytes = pg_row(f, y);
+	const uint16_t *words = f->layout == PG_BYTES ? 0 : pg_unpack(f, tmp, y, x0, x1);
+	const float unit = (float)(1 / f->scale);
+	for (int x = x0; x < x1; x++) {
+		int32_t d = (int32_t)(words ? words[x] : bytes[x]) * f->factor - (o ? o[x] : 0);
+		d = g ? ((d * g[x] >> 14) + 1) >> 1 : d;
+		v[x] = (float)d * unit;
+	}
+}
+
 // pg_correct writes the corrected counts (DN) of row y to v[x0 … x1); bad pixels are
 // not replaced yet. tmp holds a row.
 PG_INLINE void pg_correct(const pg_frame *f, float *restrict v, uint16_t *restrict tmp, int y, int x0, int x1) {

@@ -11,7 +11,7 @@ static const double profile_step = 0.5;
 // A long blob in coordinates along (t) and across (s) its long axis.
 typedef struct {
 	const window *w;
-	double x, y, cos, sin, bin, t0;
+	double x, y, cos, sin, bin, per_px, t0; // per_px: bins a pixel
 	int n;
 	double flux[PATH + 2], cross[PATH + 2];
 } line;
@@ -28,9 +28,10 @@ static void start(line *l, const window *w, const shape *s) {
 		l->t0 = t < l->t0 ? t : l->t0, t1 = t > t1 ? t : t1;
 	}
 	l->bin = fmax(4, (t1 - l->t0) / PATH);
-	l->n = (int)((t1 - l->t0) / l->bin) + 1;
+	l->per_px = 1 / l->bin;
+	l->n = (int)((t1 - l->t0) * l->per_px) + 1;
 	EACH_FOOT(w, k, u) {
-		int i = (int)((ALONG(l, k, u) - l->t0) / l->bin);
+		int i = (int)((ALONG(l, k, u) - l->t0) * l->per_px);
 		double v = w->signal[w->at[k] + u];
 		l->flux[i] += v;
 		l->cross[i] += v * ACROSS(l, k, u);
@@ -94,12 +95,28 @@ static int ends(line *l, double *a, double *b) {
 }
 
 static double across(const line *l, double t, int first, int last) {
-	double c = (t - l->t0) / l->bin - 0.5;
-	int k = (int)floor(c);
+	double c = (t - l->t0) * l->per_px - 0.5;
+	int k = c < 0 ? -1 : (int)c; // below 0 all is as first or before it
 	int top = last - 1 > first ? last - 1 : first;
 	k = k < first ? first : k > top ? top : k;
 	int n = k + 1 < last ? k + 1 : last;
-	return l->cross[k] + fmin(fmax(c - k, -1), 2) * (l->cross[n] - l->cross[k]);
+	double part = c - k;
+	part = part < -1 ? -1 : part > 2 ? 2 : part;
+	return l->cross[k] + part * (l->cross[n] - l->cross[k]);
+}
+
+// course_at returns the course's place across at t, and its slope over t ± 1.
+PG_INLINE double course_at(const line *l, double t, int first, int last, double *slope) {
+	double c = (t - l->t0) * l->per_px - 0.5;
+	int k = (int)c;
+	double part = c - k, step;
+	if (c < first || k >= last || part < l->per_px || part + l->per_px > 1) { // t ± 1 lie between other bins
+		*slope = (across(l, t + 1, first, last) - across(l, t - 1, first, last)) / 2;
+		return across(l, t, first, last);
+	}
+	step = l->cross[k + 1] - l->cross[k];
+	*slope = step * l->per_px;
+	return l->cross[k] + part * step;
 }
 
 static void inner(const line *l, double a, double b, int *first, int *last) {
@@ -160,12 +177,14 @@ static int width_of(const line *l, double a, double b, double *width) {
 		double t = ALONG(l, k, u);
 		if (t < a || t > b)
 			continue;
-		double slope = (across(l, t + 1, first, last) - across(l, t - 1, first, last)) / 2;
-		double o = (ACROSS(l, k, u) - across(l, t, first, last)) / sqrt(1 + slope * slope);
-		if (fabs(o) > BINS)
-			continue;
-		for (int at = BINS / 2 + (int)floor(o / profile_step) - 1, i = at; i <= at + 3; i++) {
-			double share = 1 - fabs((i - BINS / 2) * profile_step - o);
+		double slope, middle = course_at(l, t, first, last, &slope);
+		double o = (ACROSS(l, k, u) - middle) / sqrt(1 + slope * slope);
+		double places = o / profile_step + BINS / 2;
+		if (places < -4 || places > BINS + 4)
+			continue; // adds to no bin
+		int at = (int)(places + 8) - 9; // the bin below, rounded down, and one more
+		for (int i = at; i <= at + 3; i++) {
+			double far = (i - places) * profile_step, share = 1 - (far < 0 ? -far : far);
 			if (i >= 0 && i < BINS && share > 0)
 				sum[i] += share * (double)l->w->signal[l->w->at[k] + u], n[i] += share;
 		}

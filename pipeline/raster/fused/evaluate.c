@@ -129,6 +129,7 @@ typedef struct {
 	uint16_t *counts;
 	pg_span *a, *b;
 	rows need;
+	pg_patch *patch; // NULL: not kept
 } line;
 
 static const float weights[5] = {1.f / 16, 4.f / 16, 6.f / 16, 4.f / 16, 1.f / 16};
@@ -138,18 +139,52 @@ static void along(float *restrict dst, const float *restrict s, int x0, int x1) 
 		dst[x] = weights[0] * (s[x - 2] + s[x + 2]) + weights[1] * (s[x - 1] + s[x + 1]) + weights[2] * s[x];
 }
 
+// keep copies the signal of a span of row y to the patch.
+static int keep(pg_patch *p, const float *signal, pg_span s) {
+	int64_t n = s.x1 - s.x0;
+	if (p->used + n > INT32_MAX)
+		return PG_NO_MEMORY;
+	if (p->used + n > p->values_room) {
+		int64_t room = p->values_room + p->values_room / 4 + n + 16384;
+		float *v = realloc(p->values, sizeof(float) * (size_t)room);
+		if (!v)
+			return PG_NO_MEMORY;
+		p->values = v, p->values_room = room;
+	}
+	if (p->count == p->room) {
+		int64_t room = p->room + p->room / 4 + 1024;
+		pg_span *spans = realloc(p->spans, sizeof(pg_span) * (size_t)room);
+		p->spans = spans ? spans : p->spans;
+		int32_t *first = spans ? realloc(p->first, sizeof(int32_t) * (size_t)room) : 0;
+		if (!first)
+			return PG_NO_MEMORY;
+		p->first = first, p->room = room;
+	}
+	memcpy(p->values + p->used, signal + s.x0, sizeof(float) * (size_t)n);
+	p->first[p->count] = (int32_t)p->used;
+	p->spans[p->count++] = s;
+	p->used += n;
+	return PG_OK;
+}
+
 // filter_row makes the ring's row y where rows y − 2 to y + 2 of spans need it.
 static int filter_row(const pg_frame *f, const pg_grid *g, const rows *spans, line *l, int y) {
 	if (y < 0 || y >= f->height)
 		return PG_OK;
 	l->need.count = 0;
-	if (merged(&l->need, spans, f->height, y, 0))
+	if (merged(&l->need, spans, f->height, y, 2))
 		return PG_NO_MEMORY;
+	if (l->patch)
+		l->patch->start[2 * y] = (int32_t)l->patch->count;
 	for (int64_t i = 0; i < l->need.count; i++) {
 		pg_span p = l->need.at[i];
-		signal_row(f, g, l->signal, l->counts, y, p.x0 - 2, p.x1 + 2);
-		along(l->ring[y & 7], l->signal, p.x0, p.x1);
+		signal_row(f, g, l->signal, l->counts, y, p.x0, p.x1);
+		if (l->patch && keep(l->patch, l->signal, p))
+			return PG_NO_MEMORY;
+		along(l->ring[y & 7], l->signal, p.x0 + 2, p.x1 - 2);
 	}
+	if (l->patch)
+		l->patch->start[2 * y + 1] = (int32_t)l->patch->count;
 	return PG_OK;
 }
 
@@ -341,9 +376,15 @@ int pg_find(const pg_frame *f, const pg_grid *g, pg_blobs *b, int32_t area, floa
 	int32_t *label = 0;
 	void *block = 0;
 	int e = wanted(f, &b->candidates, snr != 0, &spans);
+	free(b->candidates.at);
+	b->candidates = (pg_runs){0};
 	e = e ? e : line_rows(f, &l, &block);
+	if (!snr && !e) {
+		b->patch.start = calloc((size_t)f->height, 2 * sizeof(int32_t));
+		l.patch = &b->patch;
+		e = b->patch.start ? PG_OK : PG_NO_MEMORY;
+	}
 	e = e ? e : evaluate(f, g, &spans, &l, &runs, &peaks, snr);
-	b->candidates.count = 0;
 	if (!e) {
 		label = malloc(sizeof(int32_t) * (size_t)(runs.count + 1));
 		e = label ? gather(f, b, &runs, peaks, label, pg_label(runs.at, runs.count, label), area) : PG_NO_MEMORY;

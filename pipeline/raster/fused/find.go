@@ -180,7 +180,9 @@ func (j *job) look(float bool) (bool, error) {
 	if err := firstError(C.pg_sample_grain(f, j.guess.c, p)); err != nil {
 		return false, err
 	}
-	C.pg_grain(f, j.guess.c, grainShare)
+	if err := firstError(C.pg_grain(f, j.guess.c, grainShare)); err != nil {
+		return false, err
+	}
 	return float || C.pg_fits(f, j.guess.c) != 0, nil
 }
 
@@ -200,8 +202,7 @@ func (j *job) pass() error {
 	if err := firstError(C.pg_smooth(j.frame, j.grid.c)); err != nil {
 		return err
 	}
-	C.pg_grain(j.frame, j.grid.c, 1)
-	return nil
+	return firstError(C.pg_grain(j.frame, j.grid.c, 1))
 }
 
 // again passes once more, with the levels and the noise of all pixels, over the grid rows

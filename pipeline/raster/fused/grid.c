@@ -22,20 +22,6 @@ static double median(double *v, int n) {
 	return (upper + v[(n - 1) / 2]) / 2;
 }
 
-static void swap(double *a, double *b) {
-	double low = *a < *b ? *a : *b, high = *a < *b ? *b : *a;
-	*a = low, *b = high;
-}
-
-// median9 by 19 exchanges (Paeth, Graphics Gems, 1990).
-static double median9(double *p) {
-	static const uint8_t pairs[19][2] = {{1, 2}, {4, 5}, {7, 8}, {0, 1}, {3, 4}, {6, 7}, {1, 2}, {4, 5}, {7, 8}, {0, 3},
-	                                     {5, 8}, {4, 7}, {3, 6}, {1, 4}, {2, 5}, {4, 7}, {4, 2}, {6, 4}, {4, 2}};
-	for (int i = 0; i < 19; i++)
-		swap(p + pairs[i][0], p + pairs[i][1]);
-	return p[4];
-}
-
 // at returns the cell dx columns and dy rows from (x, y), or −1 where there is none.
 static int64_t at(const pg_grid *g, int x, int y, int dx, int dy) {
 	x += dx, y += dy;
@@ -72,21 +58,59 @@ static int all_near(const pg_grid *g, const double *v, int x, int y, double *nea
 	return !filled;
 }
 
-static void medians(const pg_grid *g, double *dst, const double *v, int slope) {
+// median_row writes the medians of 3 × 3 values about the inner cells of row y, whether or
+// not they were measured; 19 exchanges each
+// (Paeth, Graphics Gems, 1990).
+PG_KERNEL void median_row(double *restrict dst, const double *restrict above, const double *restrict row, const double *restrict below,
+                          int columns) {
+	for (int x = 1; x + 1 < columns; x++) {
+		double p[9] = {above[x - 1], above[x], above[x + 1], row[x - 1], row[x], row[x + 1], below[x - 1], below[x], below[x + 1]};
+#define EXCHANGE(i, j)                                     \
+	{                                                      \
+		double low = p[i] < p[j] ? p[i] : p[j];            \
+		p[j] = p[i] < p[j] ? p[j] : p[i];                  \
+		p[i] = low;                                        \
+	}
+		EXCHANGE(1, 2) EXCHANGE(4, 5) EXCHANGE(7, 8) EXCHANGE(0, 1) EXCHANGE(3, 4) EXCHANGE(6, 7) EXCHANGE(1, 2)
+		EXCHANGE(4, 5) EXCHANGE(7, 8) EXCHANGE(0, 3) EXCHANGE(5, 8) EXCHANGE(4, 7) EXCHANGE(3, 6) EXCHANGE(1, 4)
+		EXCHANGE(2, 5) EXCHANGE(4, 7) EXCHANGE(4, 2) EXCHANGE(6, 4) EXCHANGE(4, 2)
+#undef EXCHANGE
+		dst[x] = p[4];
+	}
+}
+
+// three_rows finds whether all cells of rows y − 1 to y + 1 are known; unknown is not 0
+// where a cell is not.
+static int three_rows(const uint8_t *unknown, int columns, int rows, int y) {
+	if (y < 1 || y + 1 >= rows)
+		return 0;
+	return !memchr(unknown + (int64_t)(y - 1) * columns, 1, 3 * (size_t)columns);
+}
+
+static double near_median(const pg_grid *g, const double *v, int x, int y, int slope) {
 	double near[9];
-	for (int y = 0; y < g->rows; y++)
+	int n = 0;
+	for (int k = 0; k < 9; k++)
+		n += neighbour(g, v, x, y, k % 3 - 1, k / 3 - 1, slope, near + n);
+	return median(near, n);
+}
+
+static void medians(const pg_grid *g, double *dst, const double *v, int slope) {
+	for (int y = 0; y < g->rows; y++) {
+		const int64_t at = (int64_t)y * g->columns;
+		const int whole = three_rows(g->filled, g->columns, g->rows, y);
+		if (whole)
+			median_row(dst + at, v + at - g->columns, v + at, v + at + g->columns, g->columns);
 		for (int x = 0; x < g->columns; x++) {
-			int64_t i = (int64_t)y * g->columns + x;
-			dst[i] = v[i];
-			if (g->filled[i])
+			const int64_t i = at + x;
+			if (g->filled[i]) {
+				dst[i] = v[i];
 				continue;
-			int n = all_near(g, v, x, y, near) ? 9 : 0;
-			for (int k = n; k < 9; k++)
-				n += neighbour(g, v, x, y, k % 3 - 1, k / 3 - 1, slope, near + n);
-			double m = n == 9 ? median9(near) : median(near, n);
-			if (!slope || fabs(v[i] - m) > MEDIAN_STEP * g->sigma[i])
-				dst[i] = m;
+			}
+			double m = whole && x > 0 && x + 1 < g->columns ? dst[i] : near_median(g, v, x, y, slope);
+			dst[i] = !slope || fabs(v[i] - m) > MEDIAN_STEP * g->sigma[i] ? m : v[i];
 		}
+	}
 }
 
 static int fill_cell(const pg_grid *g, int x, int y, const uint8_t *known) {
@@ -170,24 +194,42 @@ void pg_calm(const pg_frame *f, pg_grid *g) {
 	g->slack = CALM_SLACK;
 }
 
-void pg_grain(const pg_frame *f, pg_grid *g, double share) {
+// factor_at is the median of the known factors around a cell, 1 where there is none.
+static double factor_at(const pg_grid *g, int x, int y) {
 	double near[9];
-	int64_t cells = (int64_t)g->columns * g->rows;
-	for (int64_t i = 0; i < cells; i++) // the factor; mean and sigma stay for the next pass
-		g->block[i] = f->use_grain && g->block[i] >= 0 && g->noise[i] > 0 ? g->block[i] / (PG_GAIN * g->noise[i]) : -1;
-	for (int y = 0; y < g->rows; y++)
+	int n = 0;
+	for (int k = 0; k < 9; k++) {
+		int64_t j = at(g, x, y, k % 3 - 1, k / 3 - 1);
+		if (j >= 0 && g->block[j] >= 0)
+			near[n++] = g->block[j];
+	}
+	return n > 0 ? median(near, n) : 1;
+}
+
+int pg_grain(const pg_frame *f, pg_grid *g, double share) {
+	size_t cells = (size_t)g->columns * (size_t)g->rows;
+	uint8_t *unknown = malloc(cells);
+	double *row = malloc(sizeof(double) * (size_t)g->columns);
+	int e = unknown && row ? PG_OK : PG_NO_MEMORY;
+	for (size_t i = 0; i < cells && !e; i++) { // the factor; mean and sigma stay for the next pass
+		unknown[i] = !(f->use_grain && g->block[i] >= 0 && g->noise[i] > 0);
+		g->block[i] = unknown[i] ? -1 : g->block[i] / (PG_GAIN * g->noise[i]);
+	}
+	for (int y = 0; y < g->rows && !e; y++) {
+		const double *b = g->block + (int64_t)y * g->columns;
+		double *noise = g->noise + (int64_t)y * g->columns;
+		int whole = three_rows(unknown, g->columns, g->rows, y);
+		if (whole)
+			median_row(row, b - g->columns, b, b + g->columns, g->columns);
 		for (int x = 0; x < g->columns; x++) {
-			int n = 0;
-			for (int k = 0; k < 9; k++) {
-				int64_t j = at(g, x, y, k % 3 - 1, k / 3 - 1);
-				if (j >= 0 && g->block[j] >= 0)
-					near[n++] = g->block[j];
-			}
-			double *noise = g->noise + (int64_t)y * g->columns + x;
-			double factor = n == 0 ? 1 : share * (n == 9 ? median9(near) : median(near, n));
-			*noise *= factor > 1 ? factor : 1;
-			*noise = *noise > f->floor_dn ? *noise : f->floor_dn;
+			double factor = share * (whole && x > 0 && x + 1 < g->columns ? row[x] : factor_at(g, x, y));
+			noise[x] *= factor > 1 ? factor : 1;
+			noise[x] = noise[x] > f->floor_dn ? noise[x] : f->floor_dn;
 		}
+	}
+	free(row);
+	free(unknown);
+	return e;
 }
 
 double pg_level(const pg_grid *g, int cell, double x, double y) {
@@ -203,25 +245,36 @@ double pg_level(const pg_grid *g, int cell, double x, double y) {
 	return (1 - q[1]) * ((1 - q[0]) * top[a] + q[0] * top[b]) + q[1] * ((1 - q[0]) * bottom[a] + q[0] * bottom[b]);
 }
 
+// count_span adds a span to the counts of its cells; whole cells between the two at its
+// ends go to more, as a difference of neighbours.
+static void count_span(const pg_frame *f, int64_t *inside, int64_t *more, pg_span s) {
+	int a = s.x0 / f->cell, b = (s.x1 - 1) / f->cell;
+	if (a == b) {
+		inside[a] += s.x1 - s.x0;
+		return;
+	}
+	inside[a] += (a + 1) * f->cell - s.x0;
+	inside[b] += s.x1 - b * f->cell;
+	more[a + 1]++, more[b]--;
+}
+
 void pg_count_cells(const pg_frame *f, pg_grid *g, int row0, int row1) {
 	for (int row = row0; row < row1; row++) {
-		int64_t *inside = g->inside + (int64_t)row * g->columns, *valid = g->valid + (int64_t)row * g->columns;
+		int64_t *inside = g->inside + (int64_t)row * g->columns, *valid = g->valid + (int64_t)row * g->columns, whole = 0;
 		memset(inside, 0, sizeof(int64_t) * (size_t)g->columns);
-		int y1 = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
 		memset(valid, 0, sizeof(int64_t) * (size_t)g->columns);
+		int y1 = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
 		for (int i = f->span_start[row * f->cell]; i < f->span_start[y1]; i++)
-			for (int x = f->spans[i].x0; x < f->spans[i].x1;) {
-				int end = (x / f->cell + 1) * f->cell;
-				end = end < f->spans[i].x1 ? end : f->spans[i].x1;
-				inside[x / f->cell] += end - x;
-				x = end;
-			}
+			count_span(f, inside, valid, f->spans[i]);
+		for (int i = 0; i < g->columns; i++) {
+			whole += valid[i];
+			inside[i] += whole * f->cell;
+			valid[i] = inside[i];
+		}
 		for (int y = row * f->cell; f->bad_start && y < y1; y++)
 			for (int i = f->bad_start[y]; i < f->bad_start[y + 1]; i++)
 				for (int k = f->span_start[y]; k < f->span_start[y + 1]; k++)
 					if (f->bad_x[i] >= f->spans[k].x0 && f->bad_x[i] < f->spans[k].x1)
 						valid[f->bad_x[i] / f->cell]--;
-		for (int i = 0; i < g->columns; i++)
-			valid[i] += inside[i];
 	}
 }

@@ -124,9 +124,6 @@ static void middles(T *v, int n, double *median, double *deviation) {
 	*deviation = __builtin_fmax(m - v[n / 2 - below], v[n / 2 + above] - m);
 }
 
-PG_INLINE T to_sample(const pg_frame *f, double dn) {
-	(void)f;
-	return (float)dn;
-}
+PG_INLINE T to_sample(float v) { return v; }
 #define SAMPLE_SCALE 1
 #define ROUNDING 0

@@ -195,38 +195,32 @@ PG_KERNEL int count_between(const T *restrict v, int n, int low, int high) {
 	return out;
 }
 
-// middles finds the median of n samples and the median of their distances to it, both the
-// upper of the middle two.
-static void middles(T *v, int n, double *median, double *deviation) {
-	int reach = 16;
-	while (reach < 32768 && (count_between(v, n, -32767, reach) <= n / 2 || count_between(v, n, -32767, -reach) > n / 2))
-		reach *= 2;
-	int a = -reach, b = reach; // the median lies in a … b
+// least_with returns the least t with more than n/2 of the samples below centre + t, or
+// when mirrored within centre ± t. It is looked for first at guess ± reach.
+static int least_with(const T *v, int n, int centre, int mirrored, int guess, int reach, int most) {
+	int a = guess - reach, b = guess + reach; // doubled until t lies between
+	for (; b < most && count_between(v, n, mirrored ? centre - b : -32767, centre + b) <= n / 2; reach *= 2)
+		a = b + 1, b += 2 * reach;
+	for (; a > -most && count_between(v, n, mirrored ? centre - a : -32767, centre + a) > n / 2; reach *= 2)
+		b = a, a -= 2 * reach;
 	while (a < b) {
 		int m = a + (b - a) / 2;
-		if (count_between(v, n, -32767, m) > n / 2)
+		if (count_between(v, n, mirrored ? centre - m : -32767, centre + m) > n / 2)
 			b = m;
 		else
 			a = m + 1;
 	}
-	*median = a;
-	int centre = a;
-	for (a = 0, b = 16; b < 65536 && count_between(v, n, centre - b, centre + b) <= n / 2;)
-		b *= 2;
-	while (a < b) {
-		int m = (a + b) / 2;
-		if (count_between(v, n, centre - m, centre + m) > n / 2)
-			b = m;
-		else
-			a = m + 1;
-	}
-	*deviation = a;
+	return a;
 }
 
-PG_INLINE T to_sample(const pg_frame *f, double dn) {
-	double v = dn * f->scale * SAMPLE_SCALE;
-	return (int16_t)(v < -32767 ? -32767 : v > 32767 ? 32767 : v);
+// middles finds the median of n samples and the median of their distances to it, both the
+// upper of the middle two; they are looked for first about what they hold.
+static void middles(T *v, int n, double *median, double *deviation) {
+	*median = least_with(v, n, 0, 0, (int)*median, 2, 32768);
+	*deviation = least_with(v, n, (int)*median, 1, (int)*deviation, 2, 65536);
 }
+
+PG_INLINE T to_sample(float v) { return (int16_t)(v < -32767.f ? -32767.f : v > 32767.f ? 32767.f : v); }
 
 // ROUNDING is the variance that rounding leaves in a filtered value: about 0.087 in each
 // direction, of the first one 70/256 behind the second.

@@ -33,6 +33,14 @@ int64_t pg_label(const pg_run *runs, int64_t n, int32_t *label) {
 
 pg_blobs *pg_blobs_new(void) { return calloc(1, sizeof(pg_blobs)); }
 
+static void drop_patch(pg_patch *p) {
+	free(p->spans);
+	free(p->start);
+	free(p->first);
+	free(p->values);
+	*p = (pg_patch){0};
+}
+
 static void drop_index(pg_blobs *b) {
 	free(b->row_start);
 	free(b->by_row);
@@ -43,6 +51,7 @@ static void drop_index(pg_blobs *b) {
 void pg_blobs_free(pg_blobs *b) {
 	if (b) {
 		drop_index(b);
+		drop_patch(&b->patch);
 		free(b->blobs);
 		free(b->candidates.at);
 		free(b->runs.at);
@@ -51,7 +60,8 @@ void pg_blobs_free(pg_blobs *b) {
 }
 
 int64_t pg_blobs_bytes(const pg_blobs *b) {
-	return (int64_t)sizeof(pg_run) * (b->candidates.room + b->runs.room) + (int64_t)sizeof(pg_blob) * b->room + 8 * b->runs.count;
+	return (int64_t)sizeof(pg_run) * (b->candidates.room + b->runs.room) + (int64_t)sizeof(pg_blob) * b->room + 8 * b->runs.count +
+	       16 * b->patch.room + 4 * b->patch.values_room;
 }
 
 int pg_collect(pg_blobs *b, pg_band *band) {

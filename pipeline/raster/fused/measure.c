@@ -43,24 +43,31 @@ static float least4(float a, float b, float c, float d) {
 	return a < c ? a : c;
 }
 
+// chamfer is the distance of a pixel by its neighbours in its own row (dx) and in row k.
+PG_INLINE float chamfer(const window *w, const float *d, int own, int k, int x, int dx) {
+	const float diagonal = 1.41421356f;
+	if (w->clear) { // every neighbour of a foot pixel is in a strip
+		const float *p = d + w->at[k] + x;
+		return least4(d[w->at[own] + x + dx] + 1, p[0] + 1, p[-1] + diagonal, p[1] + diagonal);
+	}
+	return least4(value(w, d, own, x + dx) + 1, value(w, d, k, x) + 1, value(w, d, k, x - 1) + diagonal, value(w, d, k, x + 1) + diagonal);
+}
+
 // depths writes each pixel's distance to the nearest one below half; returns the greatest.
 static float depths(const window *w, float half) {
-	const float diagonal = 1.41421356f;
 	float *d = w->depth, top = 0;
-	EACH_ROW(w, k) {
+	EACH_ROW(w, k)
 		memset(d + w->at[k] + w->x0[k], 0, sizeof(float) * (size_t)(w->x1[k] - w->x0[k]));
+	EACH_ROW(w, k)
 		for (int x = w->f0[k]; x < w->f1[k]; x++)
 			if (w->smooth[w->at[k] + x] >= half)
-				d[w->at[k] + x] = least4(value(w, d, k, x - 1) + 1, value(w, d, k - 1, x) + 1, value(w, d, k - 1, x - 1) + diagonal,
-				                         value(w, d, k - 1, x + 1) + diagonal);
-	}
+				d[w->at[k] + x] = chamfer(w, d, k, k - 1, x, -1);
 	for (int k = w->rows - 1; k >= 0; k--)
 		for (int x = w->f1[k] - 1; x >= w->f0[k]; x--) {
 			float *p = d + w->at[k] + x;
 			if (*p <= 0)
 				continue;
-			float m = least4(value(w, d, k, x + 1) + 1, value(w, d, k + 1, x) + 1, value(w, d, k + 1, x + 1) + diagonal,
-			                 value(w, d, k + 1, x - 1) + diagonal);
+			float m = chamfer(w, d, k, k + 1, x, 1);
 			*p = m < *p ? m : *p;
 			top = *p > top ? *p : top;
 		}
@@ -89,6 +96,13 @@ static void add_polygon(sums *m, double (*p)[2], int n) {
 		m->yy += cross * (a[1] * a[1] + a[1] * b[1] + b[1] * b[1]) / 12;
 		m->xy += cross * (a[0] * b[1] + 2 * a[0] * a[1] + 2 * b[0] * b[1] + b[0] * a[1]) / 24;
 	}
+}
+
+// add_whole adds the unit square at (x, y).
+PG_INLINE void add_whole(sums *m, double x, double y) {
+	m->a += 1;
+	m->x += x + 0.5, m->y += y + 0.5;
+	m->xx += x * x + x + 1. / 3, m->xy += (x + 0.5) * (y + 0.5), m->yy += y * y + y + 1. / 3;
 }
 
 // add_square adds the part at or above half of the unit square at (x, y).
@@ -132,6 +146,14 @@ static double square_contour(const float c[4], float half) {
 	return total;
 }
 
+// quiet reports whether the square at (x, k) is known to lie below half.
+PG_INLINE int quiet(const window *w, int k, int x, float half) {
+	if (!w->clear || x <= w->x0[k] || x <= w->x0[k + 1] || x + 1 >= w->x1[k] || x + 1 >= w->x1[k + 1])
+		return 0;
+	const float *p = w->smooth + w->at[k] + x, *q = w->smooth + w->at[k + 1] + x;
+	return p[0] < half && p[1] < half && q[0] < half && q[1] < half;
+}
+
 // above also returns the contour's length.
 static sums above(const window *w, float half, double *contour) {
 	sums m = {0};
@@ -141,9 +163,13 @@ static sums above(const window *w, float half, double *contour) {
 		int f0 = w->f0[k] < w->f0[k + 1] ? w->f0[k] : w->f0[k + 1], f1 = w->f1[k] > w->f1[k + 1] ? w->f1[k] : w->f1[k + 1];
 		a = f0 - 1 > a ? f0 - 1 : a, b = f1 + 1 < b ? f1 + 1 : b;
 		for (int x = a; x + 1 < b; x++) {
+			if (quiet(w, k, x, half))
+				continue;
 			float c[4] = {value(w, w->smooth, k, x), value(w, w->smooth, k, x + 1), value(w, w->smooth, k + 1, x + 1),
 			              value(w, w->smooth, k + 1, x)};
-			if (c[0] >= half || c[1] >= half || c[2] >= half || c[3] >= half)
+			if (c[0] >= half && c[1] >= half && c[2] >= half && c[3] >= half)
+				add_whole(&m, (double)x, (double)(w->y0 + k));
+			else if (c[0] >= half || c[1] >= half || c[2] >= half || c[3] >= half)
 				add_square(&m, c, half, (double)x, (double)(w->y0 + k)), *contour += square_contour(c, half);
 		}
 	}

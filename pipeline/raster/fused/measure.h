@@ -21,6 +21,7 @@ typedef struct {
 	const pg_run *runs; // the blob's
 	int64_t count;
 	double sign;
+	int clear; // the frame's edge cuts nothing off
 } window;
 
 typedef struct {

@@ -53,11 +53,16 @@ func appendSpans(dst []raster.Span, runs *C.pg_run, n int64) []raster.Span {
 	if n == 0 {
 		return dst
 	}
-	spans := make([]cSpan, n)
-	C.pg_spans(runs, C.int64_t(n), unsafe.SliceData(spans))
-	dst = slices.Grow(dst, len(spans))
-	for _, s := range spans {
-		dst = append(dst, raster.Span{Y: int(s.y), X0: int(s.x0), X1: int(s.x1)})
+	dst = slices.Grow(dst, int(n))
+	var some [64]cSpan
+	for done := int64(0); done < n; {
+		part := min(n-done, int64(len(some)))
+		first := (*C.pg_run)(unsafe.Add(unsafe.Pointer(runs), uintptr(done)*unsafe.Sizeof(C.pg_run{})))
+		C.pg_spans(first, C.int64_t(part), &some[0])
+		for _, s := range some[:part] {
+			dst = append(dst, raster.Span{Y: int(s.y), X0: int(s.x0), X1: int(s.x1)})
+		}
+		done += part
 	}
 	return dst
 }
@@ -116,6 +121,7 @@ func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int) C.int {
 		Height: float64(m.height), Flux: float64(m.flux), Peak: float64(m.peak), PeakSNR: float64(b.peak), SNR: float64(m.snr),
 		Dark: m.dark != 0, Long: m.is_long != 0, Coiled: m.coiled != 0, X0: int(b.x0), Y0: int(b.y0), X1: int(b.x1), Y1: int(b.y1),
 		PeakX: int(b.peak_x), PeakY: int(b.peak_y)}}
+	out[i].Path = slices.Grow(out[i].Path, int(m.points))
 	for k := range int(m.points) {
 		out[i].Path = append(out[i].Path, raster.Point{X: float64(m.path[2*k]), Y: float64(m.path[2*k+1])})
 	}

@@ -11,9 +11,20 @@ typedef struct {
 	float peak;
 } pg_blob;
 
+// The signal where it was evaluated: spans by row, and the floats of each in turn.
+typedef struct {
+	pg_span *spans;
+	int64_t count, room;
+	int32_t *start; // 2·height: first span of each row, and behind its last
+	int32_t *first; // of each span, into values
+	float *values;
+	int64_t used, values_room;
+} pg_patch;
+
 typedef struct {
 	int64_t count, room;
 	pg_blob *blobs;
+	pg_patch patch;
 	pg_runs candidates; // of all bands in order
 	pg_runs runs;       // of the blobs, blob by blob
 	int64_t *row_start; // height + 1: where a row's runs begin in by_row

@@ -104,7 +104,7 @@ int pg_smooth(const pg_frame *f, pg_grid *g);
 // smooth, and sets slack.
 void pg_calm(const pg_frame *f, pg_grid *g);
 int pg_sample_grain(const pg_frame *f, pg_grid *g, const void *blocks);
-void pg_grain(const pg_frame *f, pg_grid *g, double share);
+int pg_grain(const pg_frame *f, pg_grid *g, double share);
 
 // pg_fits reports whether 16-bit integers hold a frame with this grid.
 int pg_fits(const pg_frame *f, const pg_grid *g);

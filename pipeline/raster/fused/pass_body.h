@@ -288,9 +288,10 @@ static void finish_grain(state *s, int row) {
 	const pg_frame *f = s->f;
 	int n = f->width / GROUP, columns = f->cell / GROUP, bottom = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
 	int rows = (bottom - row * f->cell + 1) / GROUP;
+	double guess = 0;
 	for (int i = 0; i < s->out->columns; i++) {
 		int a = i * columns, b = a + columns < n ? a + columns : n;
 		s->out->block[(int64_t)row * s->out->columns + i] =
-		    f->use_grain && a < b ? sample_sigma(f, s->samples + a, n, rows, b - a, (T *)(void *)s->b->whole, f->scale, f->floor_dn * PG_GAIN) : -1;
+		    f->use_grain && a < b ? sample_sigma(f, s->samples + a, n, rows, b - a, (T *)(void *)s->b->whole, f->scale, f->floor_dn * PG_GAIN, &guess) : -1;
 	}
 }

@@ -124,20 +124,33 @@ static int sample(const pg_frame *f, pg_grid *g, pg_band *b, T *blocks, int row0
 	return PG_OK;
 }
 
+// less_level writes the means of blocks in rows y to y + 3 less the level, as samples.
+static void less_level(const pg_frame *f, const pg_grid *g, T *restrict dst, const T *restrict means, int y) {
+	const int columns = f->width / GROUP, wide = f->cell / GROUP;
+	for (int i = 0; i < columns;) { // between two nodes the level is a straight line
+		int c = (i - wide / 2) / wide + (i >= wide / 2 ? 1 : 0), end = c * wide + wide / 2;
+		end = end < columns && end > i ? end : columns;
+		float first = (float)pg_level(g, f->cell, GROUP * i + 1.5, y + 1.5);
+		float step = (float)(pg_level(g, f->cell, GROUP * i + 2.5, y + 1.5) - pg_level(g, f->cell, GROUP * i + 1.5, y + 1.5)) * GROUP;
+		const float unit = (float)(1 / f->scale), out = (float)f->scale * SAMPLE_SCALE;
+		for (int k = 0; k < end - i; k++)
+			dst[i + k] = means[i + k] == OUTSIDE ? OUTSIDE : to_sample(((float)means[i + k] * unit - first - step * (float)k) * out);
+		i = end;
+	}
+}
+
 // sample_grain measures the sampled blocks of grid row row against the level; scratch
 // holds twice as many T as blocks in a row.
 static void sample_grain(const pg_frame *f, pg_grid *g, const T *blocks, T *scratch, int row) {
 	int y[PG_SAMPLES], n = pg_sample_rows(f, row, y), columns = f->width / GROUP;
 	const T *means = blocks + (int64_t)row * pg_sample_blocks(f) / (int64_t)sizeof(T);
+	double guess = 0;
 	for (int k = 0; k < n; k++)
-		for (int i = 0; i < columns; i++) {
-			T m = means[(int64_t)k * columns + i];
-			scratch[(int64_t)k * columns + i] = m == OUTSIDE ? OUTSIDE : to_sample(f, (double)m / f->scale - pg_level(g, f->cell, GROUP * i + 1.5, y[k] + 1.5));
-		}
+		less_level(f, g, scratch + (int64_t)k * columns, means + (int64_t)k * columns, y[k]);
 	for (int i = 0; i < g->columns; i++) {
 		int64_t at = (int64_t)row * g->columns + i;
 		int a = i * (f->cell / GROUP), e = a + f->cell / GROUP < columns ? a + f->cell / GROUP : columns;
-		double sigma = a >= e ? -1 : sample_sigma(f, scratch + a, columns, n, e - a, scratch + (int64_t)n * columns, SAMPLE_SCALE * f->scale, f->floor_dn / 4);
+		double sigma = a >= e ? -1 : sample_sigma(f, scratch + a, columns, n, e - a, scratch + (int64_t)n * columns, SAMPLE_SCALE * f->scale, f->floor_dn / 4, &guess);
 		g->block[at] = sigma < 0 ? -1 : 4 * PG_GAIN * sigma; // as the filter would leave white noise
 	}
 }

@@ -60,10 +60,13 @@ static inline void signal_row(const pg_frame *f, const pg_grid *g, float *restri
 	}
 	for (int i = first; i < n && p[i].x0 < x1; i++) {
 		int a = p[i].x0 > x0 ? p[i].x0 : x0, b = p[i].x1 < x1 ? p[i].x1 : x1;
-		pg_correct(f, s, tmp, y, a, b);
+		if (f->use_float)
+			pg_correct(f, s, tmp, y, a, b);
+		else
+			pg_correct_int(f, s, tmp, y, a, b);
 		if (f->bad_start)
-			for (int k = f->bad_start[y]; k < f->bad_start[y + 1]; k++)
-				if (f->bad_x[k] >= a && f->bad_x[k] < b)
+			for (int k = f->bad_start[y]; k < f->bad_start[y + 1] && f->bad_x[k] < b; k++)
+				if (f->bad_x[k] >= a)
 					s[f->bad_x[k]] = pg_replaced(f, f->bad_x[k], y);
 		less_level(f, g, s, y, a, b);
 	}

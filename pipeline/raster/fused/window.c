@@ -3,6 +3,7 @@
 
 #include <math.h>
 #include <stdlib.h>
+#include <string.h>
 
 #include "correct.h"
 #include "signal.h"
@@ -38,8 +39,20 @@ static void mark(const window *w, uint8_t *dst, int y, int x0, int x1, uint8_t v
 	if (k < 0 || k >= w->rows)
 		return;
 	x0 = x0 > w->x0[k] ? x0 : w->x0[k], x1 = x1 < w->x1[k] ? x1 : w->x1[k];
-	for (int x = x0; x < x1; x++)
-		dst[w->at[k] + x] = v;
+	if (x0 < x1)
+		memset(dst + w->at[k] + x0, v, (size_t)(x1 - x0));
+}
+
+// from_patch copies the signal of x0 … x1 in row y where the patch has all of it.
+static int from_patch(const pg_patch *p, float *dst, int y, int x0, int x1) {
+	if (!p->start)
+		return 0;
+	for (int32_t i = p->start[2 * y]; i < p->start[2 * y + 1]; i++)
+		if (p->spans[i].x0 <= x0 && p->spans[i].x1 >= x1) {
+			memcpy(dst + x0, p->values + p->first[i] + (x0 - p->spans[i].x0), sizeof(float) * (size_t)(x1 - x0));
+			return 1;
+		}
+	return 0;
 }
 
 static void load(window *w, const pg_blobs *b, int64_t blob, uint16_t *tmp) {
@@ -53,7 +66,8 @@ static void load(window *w, const pg_blobs *b, int64_t blob, uint16_t *tmp) {
 			if (b->owner[b->by_row[i]] != blob && r->x1 > w->x0[k] && r->x0 < w->x1[k])
 				mark(w, w->usable, y, r->x0, r->x1, 0);
 		}
-		signal_row(w->f, w->g, w->signal + w->at[k], tmp, y, w->x0[k], w->x1[k]);
+		if (!from_patch(&b->patch, w->signal + w->at[k], y, w->x0[k], w->x1[k]))
+			signal_row(w->f, w->g, w->signal + w->at[k], tmp, y, w->x0[k], w->x1[k]);
 	}
 }
 
@@ -77,7 +91,7 @@ static void grow(window *w, int64_t n) {
 			mark(w, w->foot, w->runs[i].y + dy, w->runs[i].x0 - reach, w->runs[i].x1 + reach, 1);
 		}
 	for (int64_t i = 0; i < n; i++)
-		w->foot[i] = w->foot[i] && w->usable[i];
+		w->foot[i] = w->foot[i] & w->usable[i];
 	for (int k = 0; k < w->rows; k++) {
 		int a = w->x0[k], b = w->x1[k];
 		while (a < b && !w->foot[w->at[k] + a])
@@ -131,6 +145,7 @@ int window_cut(window *w, const pg_frame *f, const pg_grid *g, const pg_blobs *b
 	w->x0 = (int32_t *)(void *)(w->at + w->rows);
 	w->x1 = w->x0 + w->rows, w->f0 = w->x1 + w->rows, w->f1 = w->f0 + w->rows;
 	int64_t n = strips(w);
+	w->clear = o->x0 > MARGIN && o->y0 > MARGIN && o->x1 + MARGIN < f->width && o->y1 + MARGIN < f->height;
 	w->signal = calloc((size_t)n, 3 * sizeof(float) + 2);
 	if (!w->signal)
 		return PG_NO_MEMORY;

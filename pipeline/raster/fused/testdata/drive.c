@@ -72,16 +72,23 @@ static int64_t row_bytes(int layout, int w) {
 	return layout == PG_BYTES ? w : layout == PG_WORDS ? 2 * w : layout == PG_10P ? (10 * w + 7) / 8 : layout == PG_12P ? (12 * w + 7) / 8 : (w + 1) / 2 * 3;
 }
 
-// expose draws noise on haze with some spots.
-static void expose(pg_frame *f, double level, double noise, int spots, int stride) {
+static void spot(float *light, const pg_frame *f, double cx, double cy, double peak, double s) {
+	for (int y = (int)cy - 8 < 0 ? 0 : (int)cy - 8; y <= cy + 8 && y < f->height; y++)
+		for (int x = (int)cx - 8 < 0 ? 0 : (int)cx - 8; x <= cx + 8 && x < f->width; x++)
+			light[(int64_t)y * f->width + x] += (float)(peak * exp(-((x - cx) * (x - cx) + (y - cy) * (y - cy)) / (2 * s * s)));
+}
+
+// expose draws noise on haze with some spots and scratches.
+static void expose(pg_frame *f, double level, double noise, int spots, int scratches, int stride) {
 	uint8_t *data = room((size_t)stride * (size_t)f->height);
 	float *light = room(sizeof(float) * (size_t)f->width * (size_t)f->height);
-	for (int i = 0; i < spots; i++) {
-		int cx = below(f->width), cy = below(f->height);
-		double peak = noise * (1 + 30 * uniform()), s = 0.8 + 2 * uniform();
-		for (int y = cy - 8 < 0 ? 0 : cy - 8; y <= cy + 8 && y < f->height; y++)
-			for (int x = cx - 8 < 0 ? 0 : cx - 8; x <= cx + 8 && x < f->width; x++)
-				light[(int64_t)y * f->width + x] += (float)(peak * exp(-((x - cx) * (x - cx) + (y - cy) * (y - cy)) / (2 * s * s)));
+	for (int i = 0; i < spots; i++)
+		spot(light, f, below(f->width), below(f->height), noise * (1 + 30 * uniform()), 0.8 + 2 * uniform());
+	for (int i = 0; i < scratches; i++) {
+		double x = below(f->width), y = below(f->height), a = 3.14159 * uniform(), length = 60 + 440 * uniform();
+		for (double t = 0; t < length; t++)
+			if (x + t * cos(a) >= 0 && x + t * cos(a) < f->width && y + t * sin(a) < f->height)
+				spot(light, f, x + t * cos(a), y + t * sin(a), 5 * noise, 0.8);
 	}
 	for (int y = 0; y < f->height; y++)
 		for (int x = 0; x < f->width; x++) {
@@ -180,9 +187,7 @@ static int look(job *j) {
 	if (!e)
 		pg_calm(&j->f, &j->guess);
 	e = e ? e : pg_sample_grain(&j->f, &j->guess, j->blocks);
-	if (!e)
-		pg_grain(&j->f, &j->guess, 0.8);
-	return e;
+	return e ? e : pg_grain(&j->f, &j->guess, 0.8);
 }
 
 static int rows(job *j) {
@@ -190,9 +195,7 @@ static int rows(job *j) {
 	for (int i = 0; i < j->n && !e; i++)
 		e = pg_pass(&j->f, &j->guess, &j->grid, j->bands[i], i * j->grid.rows / j->n, (i + 1) * j->grid.rows / j->n);
 	e = e ? e : pg_smooth(&j->f, &j->grid);
-	if (!e)
-		pg_grain(&j->f, &j->grid, 1);
-	return e;
+	return e ? e : pg_grain(&j->f, &j->grid, 1);
 }
 
 static int objects(job *j) {
@@ -257,7 +260,7 @@ static int fuzz(int count) {
 		job j = {.digest = 1469598103934665603ull};
 		any_frame(&j.f);
 		double unit = j.f.max_count / 255.;
-		expose(&j.f, unit * 250 * uniform() * uniform(), unit * 8 * uniform() * uniform(), below(20), (int)row_bytes(j.f.layout, j.f.width) + below(9));
+		expose(&j.f, unit * 250 * uniform() * uniform(), unit * 8 * uniform() * uniform(), below(20), below(3), (int)row_bytes(j.f.layout, j.f.width) + below(9));
 		if (below(3))
 			calibrate(&j.f, unit * 6 * uniform(), below(2));
 		if (below(2))
@@ -281,7 +284,7 @@ static job scene(int width, int height, int max_count, double noise) {
 	job j = {.digest = 1469598103934665603ull};
 	j.f = (pg_frame){.width = width, .height = height, .layout = max_count > 255 ? PG_WORDS : PG_BYTES, .max_count = max_count, .cell = 64,
 	                 .polarity = 1, .use_grain = 1, .clip = 3, .floor_dn = 0.29, .min_share = 1. / 32, .low = 3.5, .high = 6};
-	expose(&j.f, 22 * (max_count / 255.), noise * (max_count / 255.), width * height / 85000, (max_count > 255 ? 2 : 1) * width);
+	expose(&j.f, 22 * (max_count / 255.), noise * (max_count / 255.), width * height / 85000, width * height / 600000, (max_count > 255 ? 2 : 1) * width);
 	calibrate(&j.f, 4 * (max_count / 255.), 1);
 	mark_bad(&j.f, 1.2e-4);
 	lay_region(&j.f, 0);
