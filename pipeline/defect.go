@@ -13,10 +13,19 @@ const (
 	Stain    Kind = "stain"
 	Particle Kind = "particle"
 	Fibre    Kind = "fibre"
+	Dent     Kind = "dent"     // shallow: seen by its slopes alone
+	Waviness Kind = "waviness" // several waves in a row, by their slopes
 )
 
 // Kinds lists the kinds in a fixed order.
-func Kinds() []Kind { return []Kind{Dig, Scratch, EdgeChip, Stain, Particle, Fibre} }
+func Kinds() []Kind { return append(ScatteringKinds(), Dent, Waviness) }
+
+// ScatteringKinds lists the kinds that a dark field or a silhouette shows.
+func ScatteringKinds() []Kind { return []Kind{Dig, Scratch, EdgeChip, Stain, Particle, Fibre} }
+
+// Scatters reports whether the kind is told by light. The others are told by slope, and
+// no rule over what light shows renames them or joins them with what it does show.
+func (k Kind) Scatters() bool { return k != Dent && k != Waviness }
 
 // MaxDefects is how many defects one unit's evidence keeps; beyond it the evidence is
 // truncated and cannot be accepted.
@@ -64,6 +73,7 @@ type Defect struct {
 	// for their outline to tell it; 0 = not sized by flux.
 	DiameterFluxUM            float64  `json:"diameter_flux_um"`
 	DiameterFluxUncertaintyUM float64  `json:"diameter_flux_uncertainty_um"` // standard, for one that scatters as the target's dots
+	SlopeMrad                 float64  `json:"slope_mrad"`                   // steepest slope against the part's own form; 0 = not measured
 	Path                      []Point  `json:"path"`                         // only for long defects: points along it
 	SeenIn                    []string `json:"seen_in"`                      // after a merge: the views that saw it
 	MergedFrom                []Ref    `json:"merged_from"`                  // after a merge: the defects it stands for

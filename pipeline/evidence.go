@@ -48,6 +48,9 @@ type ZoneEvidence struct {
 	Name                 string  `json:"name"`
 	AreaMM2              float64 `json:"area_mm2"`
 	EquivalentDiameterMM float64 `json:"equivalent_diameter_mm"`
+	// Of a zone about the part's centre; outer 0 = it is no circle.
+	OuterDiameterMM float64 `json:"outer_diameter_mm,omitempty"`
+	InnerDiameterMM float64 `json:"inner_diameter_mm,omitempty"`
 }
 
 // Failure is something that kept a view or unit from being inspected. It is a hold.

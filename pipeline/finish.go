@@ -101,7 +101,8 @@ func viewEvidence(r ViewResult) ViewEvidence {
 func regionEvidence(r *Region) RegionEvidence {
 	out := RegionEvidence{CentreX: r.CentreX, CentreY: r.CentreY, RadiusPx: r.RadiusPx}
 	for _, z := range r.Zones {
-		out.Zones = append(out.Zones, ZoneEvidence{Name: z.Name, AreaMM2: z.AreaMM2, EquivalentDiameterMM: z.EquivalentDiameterMM})
+		out.Zones = append(out.Zones, ZoneEvidence{Name: z.Name, AreaMM2: z.AreaMM2, EquivalentDiameterMM: z.EquivalentDiameterMM,
+			OuterDiameterMM: z.OuterDiameterMM, InnerDiameterMM: z.InnerDiameterMM})
 	}
 	return out
 }

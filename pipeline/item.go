@@ -41,6 +41,21 @@ type Proof struct {
 	Unit   string  `json:"unit"`
 	OK     bool    `json:"ok"`
 	Reason string  `json:"reason"` // why not OK; becomes the hold reason
+	// Beyond these it still holds but is on its way out; both 0 = no warnings.
+	WarnLow  float64 `json:"warn_low,omitempty"`
+	WarnHigh float64 `json:"warn_high,omitempty"`
+	Warning  string  `json:"warning,omitempty"` // what to look at before it is a hold; empty = no warning
+}
+
+// State of a proof: steady, warning or hold.
+func (p Proof) State() string {
+	switch {
+	case !p.OK:
+		return "hold"
+	case p.Warning != "":
+		return "warning"
+	}
+	return "steady"
 }
 
 // Coverage says how much of the region was inspected well enough.

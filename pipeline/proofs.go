@@ -7,6 +7,7 @@ const (
 	ProofLight    = "light"     // the lamp reached the calibrated level
 	ProofPart     = "part"      // a part of the right size lay there
 	ProofFocus    = "focus"     // its edge is sharp
+	ProofScale    = "scale"     // it looks as large as when calibrated
 	ProofLive     = "live data" // the frame is new and whole
 	ProofSettings = "settings"  // the camera was set as for the calibration
 	ProofPattern  = "pattern"   // the sensor's own marks are where the calibration has them

@@ -9,6 +9,8 @@ type Zone struct {
 	Spans                []raster.Span
 	AreaMM2              float64 // of the analytic shape
 	EquivalentDiameterMM float64 // of the circle of equal area
+	OuterDiameterMM      float64 // of a zone about the part's centre; 0 = it is no circle
+	InnerDiameterMM      float64
 	// EdgeDistancePx returns how far inside the zone's own edge a point is, in px
 	// (negative outside). Nil where the shape has no edge (whole frame).
 	EdgeDistancePx func(x, y float64) float64

@@ -91,7 +91,7 @@ func finiteFailure(stage string, item *Item) *Failure {
 
 func notFinite(stage string, item *Item) *Failure {
 	for _, d := range item.Defects {
-		if !finite(d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.DiameterFluxUM, d.DiameterFluxUncertaintyUM, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM) {
+		if !finite(d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.DiameterFluxUM, d.DiameterFluxUncertaintyUM, d.SlopeMrad, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.AngleDeg, d.EdgeDistanceUM) {
 			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("defect at (%.1f, %.1f) px has a measure that is no number", d.XPx, d.YPx)}
 		}
 	}
@@ -101,7 +101,7 @@ func notFinite(stage string, item *Item) *Failure {
 		}
 	}
 	for _, p := range item.Proofs {
-		if !finite(p.Value, p.Low, p.High) {
+		if !finite(p.Value, p.Low, p.High, p.WarnLow, p.WarnHigh) {
 			return &Failure{Reason: ReasonStageFailed, Stage: stage, Detail: fmt.Sprintf("proof %s holds a value that is no number", p.Name)}
 		}
 	}

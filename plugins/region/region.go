@@ -203,7 +203,7 @@ func (st *stage) lay(item *pipeline.Item, raw *raster.Plane, c raster.Circle) {
 		outer, inner := z.outer(st.s), z.InnerDiameterMM
 		area := math.Pi / 4 * (outer*outer - inner*inner)
 		ro, ri := st.radiusPx(c.X, c.Y, outer), st.radiusPx(c.X, c.Y, inner)
-		zones = append(zones, pipeline.Zone{Name: z.Name, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi),
+		zones = append(zones, pipeline.Zone{Name: z.Name, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), OuterDiameterMM: outer, InnerDiameterMM: inner,
 			Spans: ringSpans(raw.Width, raw.Height, c.X, c.Y, ri, ro), EdgeDistancePx: ringEdge(c.X, c.Y, ri, ro)})
 	}
 	item.Region = pipeline.NewRegion(raw.Width, raw.Height, c.X, c.Y, c.R, zones)

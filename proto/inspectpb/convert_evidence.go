@@ -56,14 +56,16 @@ func toFrameEvidence(f *FrameEvidence) (pipeline.FrameEvidence, error) {
 func fromRegion(r pipeline.RegionEvidence) *RegionEvidence {
 	return &RegionEvidence{CentreX: r.CentreX, CentreY: r.CentreY, RadiusPx: r.RadiusPx,
 		Zones: each(r.Zones, func(z pipeline.ZoneEvidence) *ZoneEvidence {
-			return &ZoneEvidence{Name: z.Name, AreaMm2: z.AreaMM2, EquivalentDiameterMm: z.EquivalentDiameterMM}
+			return &ZoneEvidence{Name: z.Name, AreaMm2: z.AreaMM2, EquivalentDiameterMm: z.EquivalentDiameterMM,
+				OuterDiameterMm: z.OuterDiameterMM, InnerDiameterMm: z.InnerDiameterMM}
 		})}
 }
 
 func toRegion(r *RegionEvidence) pipeline.RegionEvidence {
 	return pipeline.RegionEvidence{CentreX: r.GetCentreX(), CentreY: r.GetCentreY(), RadiusPx: r.GetRadiusPx(),
 		Zones: each(r.GetZones(), func(z *ZoneEvidence) pipeline.ZoneEvidence {
-			return pipeline.ZoneEvidence{Name: z.GetName(), AreaMM2: z.GetAreaMm2(), EquivalentDiameterMM: z.GetEquivalentDiameterMm()}
+			return pipeline.ZoneEvidence{Name: z.GetName(), AreaMM2: z.GetAreaMm2(), EquivalentDiameterMM: z.GetEquivalentDiameterMm(),
+				OuterDiameterMM: z.GetOuterDiameterMm(), InnerDiameterMM: z.GetInnerDiameterMm()}
 		})}
 }
 
@@ -78,11 +80,13 @@ func toCoverage(c *Coverage) pipeline.Coverage {
 }
 
 func fromProof(p pipeline.Proof) *Proof {
-	return &Proof{Name: p.Name, Value: p.Value, Low: p.Low, High: p.High, Unit: p.Unit, Ok: p.OK, Reason: p.Reason}
+	return &Proof{Name: p.Name, Value: p.Value, Low: p.Low, High: p.High, Unit: p.Unit, Ok: p.OK, Reason: p.Reason,
+		WarnLow: p.WarnLow, WarnHigh: p.WarnHigh, Warning: p.Warning}
 }
 
 func toProof(p *Proof) pipeline.Proof {
-	return pipeline.Proof{Name: p.GetName(), Value: p.GetValue(), Low: p.GetLow(), High: p.GetHigh(), Unit: p.GetUnit(), OK: p.GetOk(), Reason: p.GetReason()}
+	return pipeline.Proof{Name: p.GetName(), Value: p.GetValue(), Low: p.GetLow(), High: p.GetHigh(), Unit: p.GetUnit(), OK: p.GetOk(), Reason: p.GetReason(),
+		WarnLow: p.GetWarnLow(), WarnHigh: p.GetWarnHigh(), Warning: p.GetWarning()}
 }
 
 func fromMeasurement(m pipeline.Measurement) *Measurement {

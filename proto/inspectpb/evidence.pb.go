@@ -607,8 +607,10 @@ type Defect struct {
 	MergedFrom                []*DefectRef           `protobuf:"bytes,25,rep,name=merged_from,json=mergedFrom,proto3" json:"merged_from,omitempty"`
 	DiameterFluxUm            float64                `protobuf:"fixed64,26,opt,name=diameter_flux_um,json=diameterFluxUm,proto3" json:"diameter_flux_um,omitempty"`
 	DiameterFluxUncertaintyUm float64                `protobuf:"fixed64,27,opt,name=diameter_flux_uncertainty_um,json=diameterFluxUncertaintyUm,proto3" json:"diameter_flux_uncertainty_um,omitempty"`
-	unknownFields             protoimpl.UnknownFields
-	sizeCache                 protoimpl.SizeCache
+	// Steepest slope against the part's own form; 0 = not measured.
+	SlopeMrad     float64 `protobuf:"fixed64,28,opt,name=slope_mrad,json=slopeMrad,proto3" json:"slope_mrad,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Defect) Reset() {
@@ -830,6 +832,13 @@ func (x *Defect) GetDiameterFluxUncertaintyUm() float64 {
 	return 0
 }
 
+func (x *Defect) GetSlopeMrad() float64 {
+	if x != nil {
+		return x.SlopeMrad
+	}
+	return 0
+}
+
 // Measurement is a number that a stage took.
 type Measurement struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -893,14 +902,19 @@ func (x *Measurement) GetUnit() string {
 
 // Proof is one thing that a view must show before its defects count.
 type Proof struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Name          string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
-	Value         float64                `protobuf:"fixed64,2,opt,name=value,proto3" json:"value,omitempty"`
-	Low           float64                `protobuf:"fixed64,3,opt,name=low,proto3" json:"low,omitempty"`
-	High          float64                `protobuf:"fixed64,4,opt,name=high,proto3" json:"high,omitempty"`
-	Unit          string                 `protobuf:"bytes,5,opt,name=unit,proto3" json:"unit,omitempty"`
-	Ok            bool                   `protobuf:"varint,6,opt,name=ok,proto3" json:"ok,omitempty"`
-	Reason        string                 `protobuf:"bytes,7,opt,name=reason,proto3" json:"reason,omitempty"`
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Name   string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	Value  float64                `protobuf:"fixed64,2,opt,name=value,proto3" json:"value,omitempty"`
+	Low    float64                `protobuf:"fixed64,3,opt,name=low,proto3" json:"low,omitempty"`
+	High   float64                `protobuf:"fixed64,4,opt,name=high,proto3" json:"high,omitempty"`
+	Unit   string                 `protobuf:"bytes,5,opt,name=unit,proto3" json:"unit,omitempty"`
+	Ok     bool                   `protobuf:"varint,6,opt,name=ok,proto3" json:"ok,omitempty"`
+	Reason string                 `protobuf:"bytes,7,opt,name=reason,proto3" json:"reason,omitempty"`
+	// Beyond these it still holds but is on its way out; both 0 = no warnings.
+	WarnLow  float64 `protobuf:"fixed64,8,opt,name=warn_low,json=warnLow,proto3" json:"warn_low,omitempty"`
+	WarnHigh float64 `protobuf:"fixed64,9,opt,name=warn_high,json=warnHigh,proto3" json:"warn_high,omitempty"`
+	// What to look at before it is a hold; empty = no warning.
+	Warning       string `protobuf:"bytes,10,opt,name=warning,proto3" json:"warning,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -980,6 +994,27 @@ func (x *Proof) GetOk() bool {
 func (x *Proof) GetReason() string {
 	if x != nil {
 		return x.Reason
+	}
+	return ""
+}
+
+func (x *Proof) GetWarnLow() float64 {
+	if x != nil {
+		return x.WarnLow
+	}
+	return 0
+}
+
+func (x *Proof) GetWarnHigh() float64 {
+	if x != nil {
+		return x.WarnHigh
+	}
+	return 0
+}
+
+func (x *Proof) GetWarning() string {
+	if x != nil {
+		return x.Warning
 	}
 	return ""
 }
@@ -1136,8 +1171,11 @@ type ZoneEvidence struct {
 	Name                 string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
 	AreaMm2              float64                `protobuf:"fixed64,2,opt,name=area_mm2,json=areaMm2,proto3" json:"area_mm2,omitempty"`
 	EquivalentDiameterMm float64                `protobuf:"fixed64,3,opt,name=equivalent_diameter_mm,json=equivalentDiameterMm,proto3" json:"equivalent_diameter_mm,omitempty"`
-	unknownFields        protoimpl.UnknownFields
-	sizeCache            protoimpl.SizeCache
+	// Of a zone about the part's centre; outer 0 = it is no circle.
+	OuterDiameterMm float64 `protobuf:"fixed64,4,opt,name=outer_diameter_mm,json=outerDiameterMm,proto3" json:"outer_diameter_mm,omitempty"`
+	InnerDiameterMm float64 `protobuf:"fixed64,5,opt,name=inner_diameter_mm,json=innerDiameterMm,proto3" json:"inner_diameter_mm,omitempty"`
+	unknownFields   protoimpl.UnknownFields
+	sizeCache       protoimpl.SizeCache
 }
 
 func (x *ZoneEvidence) Reset() {
@@ -1187,6 +1225,20 @@ func (x *ZoneEvidence) GetAreaMm2() float64 {
 func (x *ZoneEvidence) GetEquivalentDiameterMm() float64 {
 	if x != nil {
 		return x.EquivalentDiameterMm
+	}
+	return 0
+}
+
+func (x *ZoneEvidence) GetOuterDiameterMm() float64 {
+	if x != nil {
+		return x.OuterDiameterMm
+	}
+	return 0
+}
+
+func (x *ZoneEvidence) GetInnerDiameterMm() float64 {
+	if x != nil {
+		return x.InnerDiameterMm
 	}
 	return 0
 }
@@ -1708,7 +1760,7 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\x02y1\x18\x04 \x01(\x05R\x02y1\"/\n" +
 	"\tDefectRef\x12\x12\n" +
 	"\x04view\x18\x01 \x01(\tR\x04view\x12\x0e\n" +
-	"\x02id\x18\x02 \x01(\x05R\x02id\"\xe0\x06\n" +
+	"\x02id\x18\x02 \x01(\x05R\x02id\"\xff\x06\n" +
 	"\x06Defect\x12\x0e\n" +
 	"\x02id\x18\x01 \x01(\x05R\x02id\x12\x12\n" +
 	"\x04kind\x18\x02 \x01(\tR\x04kind\x12\x12\n" +
@@ -1741,11 +1793,13 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\vmerged_from\x18\x19 \x03(\v2\x1d.lapgate.inspect.v1.DefectRefR\n" +
 	"mergedFrom\x12(\n" +
 	"\x10diameter_flux_um\x18\x1a \x01(\x01R\x0ediameterFluxUm\x12?\n" +
-	"\x1cdiameter_flux_uncertainty_um\x18\x1b \x01(\x01R\x19diameterFluxUncertaintyUm\"K\n" +
+	"\x1cdiameter_flux_uncertainty_um\x18\x1b \x01(\x01R\x19diameterFluxUncertaintyUm\x12\x1d\n" +
+	"\n" +
+	"slope_mrad\x18\x1c \x01(\x01R\tslopeMrad\"K\n" +
 	"\vMeasurement\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x12\n" +
-	"\x04unit\x18\x03 \x01(\tR\x04unit\"\x93\x01\n" +
+	"\x04unit\x18\x03 \x01(\tR\x04unit\"\xe5\x01\n" +
 	"\x05Proof\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x10\n" +
@@ -1753,7 +1807,11 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\x04high\x18\x04 \x01(\x01R\x04high\x12\x12\n" +
 	"\x04unit\x18\x05 \x01(\tR\x04unit\x12\x0e\n" +
 	"\x02ok\x18\x06 \x01(\bR\x02ok\x12\x16\n" +
-	"\x06reason\x18\a \x01(\tR\x06reason\"\x96\x01\n" +
+	"\x06reason\x18\a \x01(\tR\x06reason\x12\x19\n" +
+	"\bwarn_low\x18\b \x01(\x01R\awarnLow\x12\x1b\n" +
+	"\twarn_high\x18\t \x01(\x01R\bwarnHigh\x12\x18\n" +
+	"\awarning\x18\n" +
+	" \x01(\tR\awarning\"\x96\x01\n" +
 	"\bCoverage\x12\x14\n" +
 	"\x05share\x18\x01 \x01(\x01R\x05share\x12\x1e\n" +
 	"\n" +
@@ -1766,11 +1824,13 @@ const file_inspectpb_evidence_proto_rawDesc = "" +
 	"\x06reason\x18\x01 \x01(\tR\x06reason\x12\x12\n" +
 	"\x04view\x18\x02 \x01(\tR\x04view\x12\x14\n" +
 	"\x05stage\x18\x03 \x01(\tR\x05stage\x12\x16\n" +
-	"\x06detail\x18\x04 \x01(\tR\x06detail\"s\n" +
+	"\x06detail\x18\x04 \x01(\tR\x06detail\"\xcb\x01\n" +
 	"\fZoneEvidence\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x19\n" +
 	"\barea_mm2\x18\x02 \x01(\x01R\aareaMm2\x124\n" +
-	"\x16equivalent_diameter_mm\x18\x03 \x01(\x01R\x14equivalentDiameterMm\"\x9b\x01\n" +
+	"\x16equivalent_diameter_mm\x18\x03 \x01(\x01R\x14equivalentDiameterMm\x12*\n" +
+	"\x11outer_diameter_mm\x18\x04 \x01(\x01R\x0fouterDiameterMm\x12*\n" +
+	"\x11inner_diameter_mm\x18\x05 \x01(\x01R\x0finnerDiameterMm\"\x9b\x01\n" +
 	"\x0eRegionEvidence\x12\x19\n" +
 	"\bcentre_x\x18\x01 \x01(\x01R\acentreX\x12\x19\n" +
 	"\bcentre_y\x18\x02 \x01(\x01R\acentreY\x12\x1b\n" +

@@ -1015,7 +1015,9 @@ type InspectionRecord struct {
 	Outcomes     []*OutcomeRecord     `protobuf:"bytes,11,rep,name=outcomes,proto3" json:"outcomes,omitempty"`
 	Verdict      Verdict              `protobuf:"varint,12,opt,name=verdict,proto3,enum=lapgate.inspect.v1.Verdict" json:"verdict,omitempty"`
 	// Masters that put it in doubt, oldest first.
-	Suspicions    []*Suspicion `protobuf:"bytes,13,rep,name=suspicions,proto3" json:"suspicions,omitempty"`
+	Suspicions []*Suspicion `protobuf:"bytes,13,rep,name=suspicions,proto3" json:"suspicions,omitempty"`
+	// How it lies to the unit's showing before; missing = there was none, or none to compare.
+	Registration  *Registration `protobuf:"bytes,14,opt,name=registration,proto3" json:"registration,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1141,6 +1143,679 @@ func (x *InspectionRecord) GetSuspicions() []*Suspicion {
 	return nil
 }
 
+func (x *InspectionRecord) GetRegistration() *Registration {
+	if x != nil {
+		return x.Registration
+	}
+	return nil
+}
+
+// Registration says which defects of the showing before are still there.
+type Registration struct {
+	state                protoimpl.MessageState `protogen:"open.v1"`
+	PreviousInspectionId string                 `protobuf:"bytes,1,opt,name=previous_inspection_id,json=previousInspectionId,proto3" json:"previous_inspection_id,omitempty"`
+	PreviousAttempt      int32                  `protobuf:"varint,2,opt,name=previous_attempt,json=previousAttempt,proto3" json:"previous_attempt,omitempty"`
+	// false: too little in common to tell; every defect then counts as permanent.
+	Known bool `protobuf:"varint,3,opt,name=known,proto3" json:"known,omitempty"`
+	// By which this showing lies turned against the one before, from u towards v.
+	RotationDeg float64 `protobuf:"fixed64,4,opt,name=rotation_deg,json=rotationDeg,proto3" json:"rotation_deg,omitempty"`
+	ShiftUUm    float64 `protobuf:"fixed64,5,opt,name=shift_u_um,json=shiftUUm,proto3" json:"shift_u_um,omitempty"`
+	ShiftVUm    float64 `protobuf:"fixed64,6,opt,name=shift_v_um,json=shiftVUm,proto3" json:"shift_v_um,omitempty"`
+	// Root mean square distance of the pairs.
+	RmsUm float64 `protobuf:"fixed64,7,opt,name=rms_um,json=rmsUm,proto3" json:"rms_um,omitempty"`
+	// Defects that both showings have.
+	Pairs []*DefectPair `protobuf:"bytes,8,rep,name=pairs,proto3" json:"pairs,omitempty"`
+	// Defects of the showing before that are gone or moved.
+	Removable []int32 `protobuf:"varint,9,rep,packed,name=removable,proto3" json:"removable,omitempty"`
+	// Defects of this showing that were not there before.
+	Arrived []int32 `protobuf:"varint,10,rep,packed,name=arrived,proto3" json:"arrived,omitempty"`
+	// What the first attempt would have been by its permanent defects alone.
+	PermanentVerdict Verdict  `protobuf:"varint,11,opt,name=permanent_verdict,json=permanentVerdict,proto3,enum=lapgate.inspect.v1.Verdict" json:"permanent_verdict,omitempty"`
+	PermanentReasons []string `protobuf:"bytes,12,rep,name=permanent_reasons,json=permanentReasons,proto3" json:"permanent_reasons,omitempty"`
+	unknownFields    protoimpl.UnknownFields
+	sizeCache        protoimpl.SizeCache
+}
+
+func (x *Registration) Reset() {
+	*x = Registration{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Registration) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Registration) ProtoMessage() {}
+
+func (x *Registration) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Registration.ProtoReflect.Descriptor instead.
+func (*Registration) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{14}
+}
+
+func (x *Registration) GetPreviousInspectionId() string {
+	if x != nil {
+		return x.PreviousInspectionId
+	}
+	return ""
+}
+
+func (x *Registration) GetPreviousAttempt() int32 {
+	if x != nil {
+		return x.PreviousAttempt
+	}
+	return 0
+}
+
+func (x *Registration) GetKnown() bool {
+	if x != nil {
+		return x.Known
+	}
+	return false
+}
+
+func (x *Registration) GetRotationDeg() float64 {
+	if x != nil {
+		return x.RotationDeg
+	}
+	return 0
+}
+
+func (x *Registration) GetShiftUUm() float64 {
+	if x != nil {
+		return x.ShiftUUm
+	}
+	return 0
+}
+
+func (x *Registration) GetShiftVUm() float64 {
+	if x != nil {
+		return x.ShiftVUm
+	}
+	return 0
+}
+
+func (x *Registration) GetRmsUm() float64 {
+	if x != nil {
+		return x.RmsUm
+	}
+	return 0
+}
+
+func (x *Registration) GetPairs() []*DefectPair {
+	if x != nil {
+		return x.Pairs
+	}
+	return nil
+}
+
+func (x *Registration) GetRemovable() []int32 {
+	if x != nil {
+		return x.Removable
+	}
+	return nil
+}
+
+func (x *Registration) GetArrived() []int32 {
+	if x != nil {
+		return x.Arrived
+	}
+	return nil
+}
+
+func (x *Registration) GetPermanentVerdict() Verdict {
+	if x != nil {
+		return x.PermanentVerdict
+	}
+	return Verdict_VERDICT_UNSPECIFIED
+}
+
+func (x *Registration) GetPermanentReasons() []string {
+	if x != nil {
+		return x.PermanentReasons
+	}
+	return nil
+}
+
+// DefectPair is one defect in two showings, by its id in each.
+type DefectPair struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Previous      int32                  `protobuf:"varint,1,opt,name=previous,proto3" json:"previous,omitempty"`
+	This          int32                  `protobuf:"varint,2,opt,name=this,proto3" json:"this,omitempty"`
+	DistanceUm    float64                `protobuf:"fixed64,3,opt,name=distance_um,json=distanceUm,proto3" json:"distance_um,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *DefectPair) Reset() {
+	*x = DefectPair{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[15]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *DefectPair) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*DefectPair) ProtoMessage() {}
+
+func (x *DefectPair) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[15]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use DefectPair.ProtoReflect.Descriptor instead.
+func (*DefectPair) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{15}
+}
+
+func (x *DefectPair) GetPrevious() int32 {
+	if x != nil {
+		return x.Previous
+	}
+	return 0
+}
+
+func (x *DefectPair) GetThis() int32 {
+	if x != nil {
+		return x.This
+	}
+	return 0
+}
+
+func (x *DefectPair) GetDistanceUm() float64 {
+	if x != nil {
+		return x.DistanceUm
+	}
+	return 0
+}
+
+// ListAlarmsRequest filters; an empty field matches all.
+type ListAlarmsRequest struct {
+	state    protoimpl.MessageState `protogen:"open.v1"`
+	Line     string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station  string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	OpenOnly bool                   `protobuf:"varint,3,opt,name=open_only,json=openOnly,proto3" json:"open_only,omitempty"`
+	// At most 1000; 0 = 100.
+	PageSize      int32 `protobuf:"varint,4,opt,name=page_size,json=pageSize,proto3" json:"page_size,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListAlarmsRequest) Reset() {
+	*x = ListAlarmsRequest{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[16]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListAlarmsRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListAlarmsRequest) ProtoMessage() {}
+
+func (x *ListAlarmsRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[16]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListAlarmsRequest.ProtoReflect.Descriptor instead.
+func (*ListAlarmsRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{16}
+}
+
+func (x *ListAlarmsRequest) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *ListAlarmsRequest) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+func (x *ListAlarmsRequest) GetOpenOnly() bool {
+	if x != nil {
+		return x.OpenOnly
+	}
+	return false
+}
+
+func (x *ListAlarmsRequest) GetPageSize() int32 {
+	if x != nil {
+		return x.PageSize
+	}
+	return 0
+}
+
+// Alarm is something about a station that no single unit shows.
+type Alarm struct {
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	Line    string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	View    string                 `protobuf:"bytes,3,opt,name=view,proto3" json:"view,omitempty"`
+	// dirt or hot pixel.
+	Name string `protobuf:"bytes,4,opt,name=name,proto3" json:"name,omitempty"`
+	// Where in the camera's frame as received.
+	XPx float64 `protobuf:"fixed64,5,opt,name=x_px,json=xPx,proto3" json:"x_px,omitempty"`
+	YPx float64 `protobuf:"fixed64,6,opt,name=y_px,json=yPx,proto3" json:"y_px,omitempty"`
+	// The units that showed it first, oldest first.
+	Units  []string               `protobuf:"bytes,7,rep,name=units,proto3" json:"units,omitempty"`
+	Raised *timestamppb.Timestamp `protobuf:"bytes,8,opt,name=raised,proto3" json:"raised,omitempty"`
+	// Missing = it is still there.
+	Cleared       *timestamppb.Timestamp `protobuf:"bytes,9,opt,name=cleared,proto3" json:"cleared,omitempty"`
+	Text          string                 `protobuf:"bytes,10,opt,name=text,proto3" json:"text,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Alarm) Reset() {
+	*x = Alarm{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[17]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Alarm) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Alarm) ProtoMessage() {}
+
+func (x *Alarm) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[17]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Alarm.ProtoReflect.Descriptor instead.
+func (*Alarm) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{17}
+}
+
+func (x *Alarm) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *Alarm) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+func (x *Alarm) GetView() string {
+	if x != nil {
+		return x.View
+	}
+	return ""
+}
+
+func (x *Alarm) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *Alarm) GetXPx() float64 {
+	if x != nil {
+		return x.XPx
+	}
+	return 0
+}
+
+func (x *Alarm) GetYPx() float64 {
+	if x != nil {
+		return x.YPx
+	}
+	return 0
+}
+
+func (x *Alarm) GetUnits() []string {
+	if x != nil {
+		return x.Units
+	}
+	return nil
+}
+
+func (x *Alarm) GetRaised() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Raised
+	}
+	return nil
+}
+
+func (x *Alarm) GetCleared() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Cleared
+	}
+	return nil
+}
+
+func (x *Alarm) GetText() string {
+	if x != nil {
+		return x.Text
+	}
+	return ""
+}
+
+// ListAlarmsResponse lists alarms, newest first.
+type ListAlarmsResponse struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Alarms        []*Alarm               `protobuf:"bytes,1,rep,name=alarms,proto3" json:"alarms,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListAlarmsResponse) Reset() {
+	*x = ListAlarmsResponse{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[18]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListAlarmsResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListAlarmsResponse) ProtoMessage() {}
+
+func (x *ListAlarmsResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[18]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListAlarmsResponse.ProtoReflect.Descriptor instead.
+func (*ListAlarmsResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{18}
+}
+
+func (x *ListAlarmsResponse) GetAlarms() []*Alarm {
+	if x != nil {
+		return x.Alarms
+	}
+	return nil
+}
+
+// ListDriftRequest filters; an empty field matches all.
+type ListDriftRequest struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Line          string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station       string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListDriftRequest) Reset() {
+	*x = ListDriftRequest{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[19]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListDriftRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListDriftRequest) ProtoMessage() {}
+
+func (x *ListDriftRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[19]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListDriftRequest.ProtoReflect.Descriptor instead.
+func (*ListDriftRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{19}
+}
+
+func (x *ListDriftRequest) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *ListDriftRequest) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+// Drift is one reading of a view over the latest units of a station.
+type Drift struct {
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	Line    string                 `protobuf:"bytes,1,opt,name=line,proto3" json:"line,omitempty"`
+	Station string                 `protobuf:"bytes,2,opt,name=station,proto3" json:"station,omitempty"`
+	View    string                 `protobuf:"bytes,3,opt,name=view,proto3" json:"view,omitempty"`
+	// light, focus, scale or pattern.
+	Name string `protobuf:"bytes,4,opt,name=name,proto3" json:"name,omitempty"`
+	// The latest, 1 = as calibrated.
+	Latest *Proof                 `protobuf:"bytes,5,opt,name=latest,proto3" json:"latest,omitempty"`
+	Unit   string                 `protobuf:"bytes,6,opt,name=unit,proto3" json:"unit,omitempty"`
+	At     *timestamppb.Timestamp `protobuf:"bytes,7,opt,name=at,proto3" json:"at,omitempty"`
+	// Units looked at, alike in part, recipe and calibration.
+	Units int32 `protobuf:"varint,8,opt,name=units,proto3" json:"units,omitempty"`
+	// Change in an hour, where there is one that is none by chance; else 0.
+	PerHour float64 `protobuf:"fixed64,9,opt,name=per_hour,json=perHour,proto3" json:"per_hour,omitempty"`
+	// steady, warning or hold.
+	State string `protobuf:"bytes,10,opt,name=state,proto3" json:"state,omitempty"`
+	// Why it is no longer steady, or when it will meet which bound; empty = all is well.
+	Text          string `protobuf:"bytes,11,opt,name=text,proto3" json:"text,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Drift) Reset() {
+	*x = Drift{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[20]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Drift) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Drift) ProtoMessage() {}
+
+func (x *Drift) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[20]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Drift.ProtoReflect.Descriptor instead.
+func (*Drift) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{20}
+}
+
+func (x *Drift) GetLine() string {
+	if x != nil {
+		return x.Line
+	}
+	return ""
+}
+
+func (x *Drift) GetStation() string {
+	if x != nil {
+		return x.Station
+	}
+	return ""
+}
+
+func (x *Drift) GetView() string {
+	if x != nil {
+		return x.View
+	}
+	return ""
+}
+
+func (x *Drift) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *Drift) GetLatest() *Proof {
+	if x != nil {
+		return x.Latest
+	}
+	return nil
+}
+
+func (x *Drift) GetUnit() string {
+	if x != nil {
+		return x.Unit
+	}
+	return ""
+}
+
+func (x *Drift) GetAt() *timestamppb.Timestamp {
+	if x != nil {
+		return x.At
+	}
+	return nil
+}
+
+func (x *Drift) GetUnits() int32 {
+	if x != nil {
+		return x.Units
+	}
+	return 0
+}
+
+func (x *Drift) GetPerHour() float64 {
+	if x != nil {
+		return x.PerHour
+	}
+	return 0
+}
+
+func (x *Drift) GetState() string {
+	if x != nil {
+		return x.State
+	}
+	return ""
+}
+
+func (x *Drift) GetText() string {
+	if x != nil {
+		return x.Text
+	}
+	return ""
+}
+
+// ListDriftResponse lists readings by line, station and view.
+type ListDriftResponse struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Readings      []*Drift               `protobuf:"bytes,1,rep,name=readings,proto3" json:"readings,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *ListDriftResponse) Reset() {
+	*x = ListDriftResponse{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[21]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *ListDriftResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*ListDriftResponse) ProtoMessage() {}
+
+func (x *ListDriftResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[21]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use ListDriftResponse.ProtoReflect.Descriptor instead.
+func (*ListDriftResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{21}
+}
+
+func (x *ListDriftResponse) GetReadings() []*Drift {
+	if x != nil {
+		return x.Readings
+	}
+	return nil
+}
+
 // Suspicion is one master that puts an inspection in doubt.
 type Suspicion struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
@@ -1155,7 +1830,7 @@ type Suspicion struct {
 
 func (x *Suspicion) Reset() {
 	*x = Suspicion{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	mi := &file_inspectpb_inspection_proto_msgTypes[22]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1167,7 +1842,7 @@ func (x *Suspicion) String() string {
 func (*Suspicion) ProtoMessage() {}
 
 func (x *Suspicion) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[14]
+	mi := &file_inspectpb_inspection_proto_msgTypes[22]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1180,7 +1855,7 @@ func (x *Suspicion) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Suspicion.ProtoReflect.Descriptor instead.
 func (*Suspicion) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{14}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{22}
 }
 
 func (x *Suspicion) GetMaster() string {
@@ -1224,7 +1899,7 @@ type DispositionRecord struct {
 
 func (x *DispositionRecord) Reset() {
 	*x = DispositionRecord{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[15]
+	mi := &file_inspectpb_inspection_proto_msgTypes[23]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1236,7 +1911,7 @@ func (x *DispositionRecord) String() string {
 func (*DispositionRecord) ProtoMessage() {}
 
 func (x *DispositionRecord) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[15]
+	mi := &file_inspectpb_inspection_proto_msgTypes[23]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1249,7 +1924,7 @@ func (x *DispositionRecord) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use DispositionRecord.ProtoReflect.Descriptor instead.
 func (*DispositionRecord) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{15}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{23}
 }
 
 func (x *DispositionRecord) GetDisposition() Disposition {
@@ -1292,7 +1967,7 @@ type OutcomeRecord struct {
 
 func (x *OutcomeRecord) Reset() {
 	*x = OutcomeRecord{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[16]
+	mi := &file_inspectpb_inspection_proto_msgTypes[24]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1304,7 +1979,7 @@ func (x *OutcomeRecord) String() string {
 func (*OutcomeRecord) ProtoMessage() {}
 
 func (x *OutcomeRecord) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[16]
+	mi := &file_inspectpb_inspection_proto_msgTypes[24]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1317,7 +1992,7 @@ func (x *OutcomeRecord) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use OutcomeRecord.ProtoReflect.Descriptor instead.
 func (*OutcomeRecord) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{16}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{24}
 }
 
 func (x *OutcomeRecord) GetBin() Verdict {
@@ -1352,7 +2027,7 @@ type GetUnitRequest struct {
 
 func (x *GetUnitRequest) Reset() {
 	*x = GetUnitRequest{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[17]
+	mi := &file_inspectpb_inspection_proto_msgTypes[25]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1364,7 +2039,7 @@ func (x *GetUnitRequest) String() string {
 func (*GetUnitRequest) ProtoMessage() {}
 
 func (x *GetUnitRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[17]
+	mi := &file_inspectpb_inspection_proto_msgTypes[25]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1377,7 +2052,7 @@ func (x *GetUnitRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetUnitRequest.ProtoReflect.Descriptor instead.
 func (*GetUnitRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{17}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{25}
 }
 
 func (x *GetUnitRequest) GetPart() string {
@@ -1404,7 +2079,7 @@ type GetUnitResponse struct {
 
 func (x *GetUnitResponse) Reset() {
 	*x = GetUnitResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[18]
+	mi := &file_inspectpb_inspection_proto_msgTypes[26]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1416,7 +2091,7 @@ func (x *GetUnitResponse) String() string {
 func (*GetUnitResponse) ProtoMessage() {}
 
 func (x *GetUnitResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[18]
+	mi := &file_inspectpb_inspection_proto_msgTypes[26]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1429,7 +2104,7 @@ func (x *GetUnitResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use GetUnitResponse.ProtoReflect.Descriptor instead.
 func (*GetUnitResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{18}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{26}
 }
 
 func (x *GetUnitResponse) GetInspections() []*InspectionRecord {
@@ -1452,7 +2127,7 @@ type ListMismatchesRequest struct {
 
 func (x *ListMismatchesRequest) Reset() {
 	*x = ListMismatchesRequest{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[19]
+	mi := &file_inspectpb_inspection_proto_msgTypes[27]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1464,7 +2139,7 @@ func (x *ListMismatchesRequest) String() string {
 func (*ListMismatchesRequest) ProtoMessage() {}
 
 func (x *ListMismatchesRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[19]
+	mi := &file_inspectpb_inspection_proto_msgTypes[27]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1477,7 +2152,7 @@ func (x *ListMismatchesRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListMismatchesRequest.ProtoReflect.Descriptor instead.
 func (*ListMismatchesRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{19}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{27}
 }
 
 func (x *ListMismatchesRequest) GetPart() string {
@@ -1519,7 +2194,7 @@ type ListMismatchesResponse struct {
 
 func (x *ListMismatchesResponse) Reset() {
 	*x = ListMismatchesResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[20]
+	mi := &file_inspectpb_inspection_proto_msgTypes[28]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1531,7 +2206,7 @@ func (x *ListMismatchesResponse) String() string {
 func (*ListMismatchesResponse) ProtoMessage() {}
 
 func (x *ListMismatchesResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[20]
+	mi := &file_inspectpb_inspection_proto_msgTypes[28]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1544,7 +2219,7 @@ func (x *ListMismatchesResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListMismatchesResponse.ProtoReflect.Descriptor instead.
 func (*ListMismatchesResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{20}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{28}
 }
 
 func (x *ListMismatchesResponse) GetInspections() []*InspectionRecord {
@@ -1572,7 +2247,7 @@ type HeartbeatRequest struct {
 
 func (x *HeartbeatRequest) Reset() {
 	*x = HeartbeatRequest{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[21]
+	mi := &file_inspectpb_inspection_proto_msgTypes[29]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1584,7 +2259,7 @@ func (x *HeartbeatRequest) String() string {
 func (*HeartbeatRequest) ProtoMessage() {}
 
 func (x *HeartbeatRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[21]
+	mi := &file_inspectpb_inspection_proto_msgTypes[29]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1597,7 +2272,7 @@ func (x *HeartbeatRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use HeartbeatRequest.ProtoReflect.Descriptor instead.
 func (*HeartbeatRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{21}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{29}
 }
 
 func (x *HeartbeatRequest) GetLine() string {
@@ -1627,7 +2302,7 @@ type HeartbeatResponse struct {
 
 func (x *HeartbeatResponse) Reset() {
 	*x = HeartbeatResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[22]
+	mi := &file_inspectpb_inspection_proto_msgTypes[30]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1639,7 +2314,7 @@ func (x *HeartbeatResponse) String() string {
 func (*HeartbeatResponse) ProtoMessage() {}
 
 func (x *HeartbeatResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[22]
+	mi := &file_inspectpb_inspection_proto_msgTypes[30]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1652,7 +2327,7 @@ func (x *HeartbeatResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use HeartbeatResponse.ProtoReflect.Descriptor instead.
 func (*HeartbeatResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{22}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{30}
 }
 
 func (x *HeartbeatResponse) GetServerTime() *timestamppb.Timestamp {
@@ -1685,7 +2360,7 @@ type ListStationsRequest struct {
 
 func (x *ListStationsRequest) Reset() {
 	*x = ListStationsRequest{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[23]
+	mi := &file_inspectpb_inspection_proto_msgTypes[31]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1697,7 +2372,7 @@ func (x *ListStationsRequest) String() string {
 func (*ListStationsRequest) ProtoMessage() {}
 
 func (x *ListStationsRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[23]
+	mi := &file_inspectpb_inspection_proto_msgTypes[31]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1710,7 +2385,7 @@ func (x *ListStationsRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListStationsRequest.ProtoReflect.Descriptor instead.
 func (*ListStationsRequest) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{23}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{31}
 }
 
 // Station is a line and station that was heard of.
@@ -1721,16 +2396,20 @@ type Station struct {
 	// The latest heartbeat; missing = none since the server started.
 	Heartbeat *timestamppb.Timestamp `protobuf:"bytes,3,opt,name=heartbeat,proto3" json:"heartbeat,omitempty"`
 	// The latest inspection; missing = none since the server started.
-	Inspection    *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=inspection,proto3" json:"inspection,omitempty"`
-	State         StationState           `protobuf:"varint,5,opt,name=state,proto3,enum=lapgate.inspect.v1.StationState" json:"state,omitempty"`
-	Because       []string               `protobuf:"bytes,6,rep,name=because,proto3" json:"because,omitempty"`
+	Inspection *timestamppb.Timestamp `protobuf:"bytes,4,opt,name=inspection,proto3" json:"inspection,omitempty"`
+	State      StationState           `protobuf:"varint,5,opt,name=state,proto3,enum=lapgate.inspect.v1.StationState" json:"state,omitempty"`
+	Because    []string               `protobuf:"bytes,6,rep,name=because,proto3" json:"because,omitempty"`
+	// Open alarms, one sentence each. They hold no unit unless the server's settings say so.
+	Alarms []string `protobuf:"bytes,7,rep,name=alarms,proto3" json:"alarms,omitempty"`
+	// Readings that left their warning bounds or are on their way to a hold.
+	Warnings      []string `protobuf:"bytes,8,rep,name=warnings,proto3" json:"warnings,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Station) Reset() {
 	*x = Station{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[24]
+	mi := &file_inspectpb_inspection_proto_msgTypes[32]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1742,7 +2421,7 @@ func (x *Station) String() string {
 func (*Station) ProtoMessage() {}
 
 func (x *Station) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[24]
+	mi := &file_inspectpb_inspection_proto_msgTypes[32]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1755,7 +2434,7 @@ func (x *Station) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Station.ProtoReflect.Descriptor instead.
 func (*Station) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{24}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{32}
 }
 
 func (x *Station) GetLine() string {
@@ -1800,6 +2479,20 @@ func (x *Station) GetBecause() []string {
 	return nil
 }
 
+func (x *Station) GetAlarms() []string {
+	if x != nil {
+		return x.Alarms
+	}
+	return nil
+}
+
+func (x *Station) GetWarnings() []string {
+	if x != nil {
+		return x.Warnings
+	}
+	return nil
+}
+
 // ListStationsResponse lists stations by line and station.
 type ListStationsResponse struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1811,7 +2504,7 @@ type ListStationsResponse struct {
 
 func (x *ListStationsResponse) Reset() {
 	*x = ListStationsResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[25]
+	mi := &file_inspectpb_inspection_proto_msgTypes[33]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1823,7 +2516,7 @@ func (x *ListStationsResponse) String() string {
 func (*ListStationsResponse) ProtoMessage() {}
 
 func (x *ListStationsResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[25]
+	mi := &file_inspectpb_inspection_proto_msgTypes[33]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1836,7 +2529,7 @@ func (x *ListStationsResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListStationsResponse.ProtoReflect.Descriptor instead.
 func (*ListStationsResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{25}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{33}
 }
 
 func (x *ListStationsResponse) GetStations() []*Station {
@@ -1919,7 +2612,7 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"page_token\x18\x05 \x01(\tR\tpageToken\"w\n" +
 	"\x11ListHoldsResponse\x12:\n" +
 	"\x05holds\x18\x01 \x03(\v2$.lapgate.inspect.v1.InspectionRecordR\x05holds\x12&\n" +
-	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\xa1\x05\n" +
+	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"\xe7\x05\n" +
 	"\x10InspectionRecord\x12#\n" +
 	"\rinspection_id\x18\x01 \x01(\tR\finspectionId\x128\n" +
 	"\bidentity\x18\x02 \x01(\v2\x1c.lapgate.inspect.v1.IdentityR\bidentity\x12\x16\n" +
@@ -1939,7 +2632,67 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\averdict\x18\f \x01(\x0e2\x1b.lapgate.inspect.v1.VerdictR\averdict\x12=\n" +
 	"\n" +
 	"suspicions\x18\r \x03(\v2\x1d.lapgate.inspect.v1.SuspicionR\n" +
-	"suspicions\"w\n" +
+	"suspicions\x12D\n" +
+	"\fregistration\x18\x0e \x01(\v2 .lapgate.inspect.v1.RegistrationR\fregistration\"\xe0\x03\n" +
+	"\fRegistration\x124\n" +
+	"\x16previous_inspection_id\x18\x01 \x01(\tR\x14previousInspectionId\x12)\n" +
+	"\x10previous_attempt\x18\x02 \x01(\x05R\x0fpreviousAttempt\x12\x14\n" +
+	"\x05known\x18\x03 \x01(\bR\x05known\x12!\n" +
+	"\frotation_deg\x18\x04 \x01(\x01R\vrotationDeg\x12\x1c\n" +
+	"\n" +
+	"shift_u_um\x18\x05 \x01(\x01R\bshiftUUm\x12\x1c\n" +
+	"\n" +
+	"shift_v_um\x18\x06 \x01(\x01R\bshiftVUm\x12\x15\n" +
+	"\x06rms_um\x18\a \x01(\x01R\x05rmsUm\x124\n" +
+	"\x05pairs\x18\b \x03(\v2\x1e.lapgate.inspect.v1.DefectPairR\x05pairs\x12\x1c\n" +
+	"\tremovable\x18\t \x03(\x05R\tremovable\x12\x18\n" +
+	"\aarrived\x18\n" +
+	" \x03(\x05R\aarrived\x12H\n" +
+	"\x11permanent_verdict\x18\v \x01(\x0e2\x1b.lapgate.inspect.v1.VerdictR\x10permanentVerdict\x12+\n" +
+	"\x11permanent_reasons\x18\f \x03(\tR\x10permanentReasons\"]\n" +
+	"\n" +
+	"DefectPair\x12\x1a\n" +
+	"\bprevious\x18\x01 \x01(\x05R\bprevious\x12\x12\n" +
+	"\x04this\x18\x02 \x01(\x05R\x04this\x12\x1f\n" +
+	"\vdistance_um\x18\x03 \x01(\x01R\n" +
+	"distanceUm\"{\n" +
+	"\x11ListAlarmsRequest\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\x12\x1b\n" +
+	"\topen_only\x18\x03 \x01(\bR\bopenOnly\x12\x1b\n" +
+	"\tpage_size\x18\x04 \x01(\x05R\bpageSize\"\x97\x02\n" +
+	"\x05Alarm\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\x12\x12\n" +
+	"\x04view\x18\x03 \x01(\tR\x04view\x12\x12\n" +
+	"\x04name\x18\x04 \x01(\tR\x04name\x12\x11\n" +
+	"\x04x_px\x18\x05 \x01(\x01R\x03xPx\x12\x11\n" +
+	"\x04y_px\x18\x06 \x01(\x01R\x03yPx\x12\x14\n" +
+	"\x05units\x18\a \x03(\tR\x05units\x122\n" +
+	"\x06raised\x18\b \x01(\v2\x1a.google.protobuf.TimestampR\x06raised\x124\n" +
+	"\acleared\x18\t \x01(\v2\x1a.google.protobuf.TimestampR\acleared\x12\x12\n" +
+	"\x04text\x18\n" +
+	" \x01(\tR\x04text\"G\n" +
+	"\x12ListAlarmsResponse\x121\n" +
+	"\x06alarms\x18\x01 \x03(\v2\x19.lapgate.inspect.v1.AlarmR\x06alarms\"@\n" +
+	"\x10ListDriftRequest\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\"\xab\x02\n" +
+	"\x05Drift\x12\x12\n" +
+	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
+	"\astation\x18\x02 \x01(\tR\astation\x12\x12\n" +
+	"\x04view\x18\x03 \x01(\tR\x04view\x12\x12\n" +
+	"\x04name\x18\x04 \x01(\tR\x04name\x121\n" +
+	"\x06latest\x18\x05 \x01(\v2\x19.lapgate.inspect.v1.ProofR\x06latest\x12\x12\n" +
+	"\x04unit\x18\x06 \x01(\tR\x04unit\x12*\n" +
+	"\x02at\x18\a \x01(\v2\x1a.google.protobuf.TimestampR\x02at\x12\x14\n" +
+	"\x05units\x18\b \x01(\x05R\x05units\x12\x19\n" +
+	"\bper_hour\x18\t \x01(\x01R\aperHour\x12\x14\n" +
+	"\x05state\x18\n" +
+	" \x01(\tR\x05state\x12\x12\n" +
+	"\x04text\x18\v \x01(\tR\x04text\"J\n" +
+	"\x11ListDriftResponse\x125\n" +
+	"\breadings\x18\x01 \x03(\v2\x19.lapgate.inspect.v1.DriftR\breadings\"w\n" +
 	"\tSuspicion\x12\x16\n" +
 	"\x06master\x18\x01 \x01(\tR\x06master\x12\x14\n" +
 	"\x05cause\x18\x02 \x01(\tR\x05cause\x12\x10\n" +
@@ -1976,7 +2729,7 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"serverTime\x126\n" +
 	"\x05state\x18\x02 \x01(\x0e2 .lapgate.inspect.v1.StationStateR\x05state\x12\x18\n" +
 	"\abecause\x18\x03 \x03(\tR\abecause\"\x15\n" +
-	"\x13ListStationsRequest\"\xff\x01\n" +
+	"\x13ListStationsRequest\"\xb3\x02\n" +
 	"\aStation\x12\x12\n" +
 	"\x04line\x18\x01 \x01(\tR\x04line\x12\x18\n" +
 	"\astation\x18\x02 \x01(\tR\astation\x128\n" +
@@ -1985,7 +2738,9 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"inspection\x18\x04 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
 	"inspection\x126\n" +
 	"\x05state\x18\x05 \x01(\x0e2 .lapgate.inspect.v1.StationStateR\x05state\x12\x18\n" +
-	"\abecause\x18\x06 \x03(\tR\abecause\"\x8c\x01\n" +
+	"\abecause\x18\x06 \x03(\tR\abecause\x12\x16\n" +
+	"\x06alarms\x18\a \x03(\tR\x06alarms\x12\x1a\n" +
+	"\bwarnings\x18\b \x03(\tR\bwarnings\"\x8c\x01\n" +
 	"\x14ListStationsResponse\x127\n" +
 	"\bstations\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.StationR\bstations\x12;\n" +
 	"\vserver_time\x18\x02 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
@@ -1999,7 +2754,7 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\fStationState\x12\x1d\n" +
 	"\x19STATION_STATE_UNSPECIFIED\x10\x00\x12\x14\n" +
 	"\x10STATION_STATE_OK\x10\x01\x12\x19\n" +
-	"\x15STATION_STATE_HOLDING\x10\x022\xe5\x06\n" +
+	"\x15STATION_STATE_HOLDING\x10\x022\x9c\b\n" +
 	"\x11InspectionService\x12V\n" +
 	"\aInspect\x12\".lapgate.inspect.v1.InspectRequest\x1a#.lapgate.inspect.v1.InspectResponse(\x010\x01\x12^\n" +
 	"\vInspectUnit\x12&.lapgate.inspect.v1.InspectUnitRequest\x1a'.lapgate.inspect.v1.InspectUnitResponse\x12d\n" +
@@ -2009,7 +2764,10 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\aGetUnit\x12\".lapgate.inspect.v1.GetUnitRequest\x1a#.lapgate.inspect.v1.GetUnitResponse\x12g\n" +
 	"\x0eListMismatches\x12).lapgate.inspect.v1.ListMismatchesRequest\x1a*.lapgate.inspect.v1.ListMismatchesResponse\x12X\n" +
 	"\tHeartbeat\x12$.lapgate.inspect.v1.HeartbeatRequest\x1a%.lapgate.inspect.v1.HeartbeatResponse\x12a\n" +
-	"\fListStations\x12'.lapgate.inspect.v1.ListStationsRequest\x1a(.lapgate.inspect.v1.ListStationsResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
+	"\fListStations\x12'.lapgate.inspect.v1.ListStationsRequest\x1a(.lapgate.inspect.v1.ListStationsResponse\x12[\n" +
+	"\n" +
+	"ListAlarms\x12%.lapgate.inspect.v1.ListAlarmsRequest\x1a&.lapgate.inspect.v1.ListAlarmsResponse\x12X\n" +
+	"\tListDrift\x12$.lapgate.inspect.v1.ListDriftRequest\x1a%.lapgate.inspect.v1.ListDriftResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
 
 var (
 	file_inspectpb_inspection_proto_rawDescOnce sync.Once
@@ -2024,7 +2782,7 @@ func file_inspectpb_inspection_proto_rawDescGZIP() []byte {
 }
 
 var file_inspectpb_inspection_proto_enumTypes = make([]protoimpl.EnumInfo, 2)
-var file_inspectpb_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 26)
+var file_inspectpb_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 34)
 var file_inspectpb_inspection_proto_goTypes = []any{
 	(Disposition)(0),               // 0: lapgate.inspect.v1.Disposition
 	(StationState)(0),              // 1: lapgate.inspect.v1.StationState
@@ -2042,94 +2800,116 @@ var file_inspectpb_inspection_proto_goTypes = []any{
 	(*ListHoldsRequest)(nil),       // 13: lapgate.inspect.v1.ListHoldsRequest
 	(*ListHoldsResponse)(nil),      // 14: lapgate.inspect.v1.ListHoldsResponse
 	(*InspectionRecord)(nil),       // 15: lapgate.inspect.v1.InspectionRecord
-	(*Suspicion)(nil),              // 16: lapgate.inspect.v1.Suspicion
-	(*DispositionRecord)(nil),      // 17: lapgate.inspect.v1.DispositionRecord
-	(*OutcomeRecord)(nil),          // 18: lapgate.inspect.v1.OutcomeRecord
-	(*GetUnitRequest)(nil),         // 19: lapgate.inspect.v1.GetUnitRequest
-	(*GetUnitResponse)(nil),        // 20: lapgate.inspect.v1.GetUnitResponse
-	(*ListMismatchesRequest)(nil),  // 21: lapgate.inspect.v1.ListMismatchesRequest
-	(*ListMismatchesResponse)(nil), // 22: lapgate.inspect.v1.ListMismatchesResponse
-	(*HeartbeatRequest)(nil),       // 23: lapgate.inspect.v1.HeartbeatRequest
-	(*HeartbeatResponse)(nil),      // 24: lapgate.inspect.v1.HeartbeatResponse
-	(*ListStationsRequest)(nil),    // 25: lapgate.inspect.v1.ListStationsRequest
-	(*Station)(nil),                // 26: lapgate.inspect.v1.Station
-	(*ListStationsResponse)(nil),   // 27: lapgate.inspect.v1.ListStationsResponse
-	(*FrameHeader)(nil),            // 28: lapgate.inspect.v1.FrameHeader
-	(*FrameChunk)(nil),             // 29: lapgate.inspect.v1.FrameChunk
-	(*Identity)(nil),               // 30: lapgate.inspect.v1.Identity
-	(*Judgement)(nil),              // 31: lapgate.inspect.v1.Judgement
-	(*Defect)(nil),                 // 32: lapgate.inspect.v1.Defect
-	(*Failure)(nil),                // 33: lapgate.inspect.v1.Failure
-	(*Frame)(nil),                  // 34: lapgate.inspect.v1.Frame
-	(Verdict)(0),                   // 35: lapgate.inspect.v1.Verdict
-	(*timestamppb.Timestamp)(nil),  // 36: google.protobuf.Timestamp
-	(*Evidence)(nil),               // 37: lapgate.inspect.v1.Evidence
+	(*Registration)(nil),           // 16: lapgate.inspect.v1.Registration
+	(*DefectPair)(nil),             // 17: lapgate.inspect.v1.DefectPair
+	(*ListAlarmsRequest)(nil),      // 18: lapgate.inspect.v1.ListAlarmsRequest
+	(*Alarm)(nil),                  // 19: lapgate.inspect.v1.Alarm
+	(*ListAlarmsResponse)(nil),     // 20: lapgate.inspect.v1.ListAlarmsResponse
+	(*ListDriftRequest)(nil),       // 21: lapgate.inspect.v1.ListDriftRequest
+	(*Drift)(nil),                  // 22: lapgate.inspect.v1.Drift
+	(*ListDriftResponse)(nil),      // 23: lapgate.inspect.v1.ListDriftResponse
+	(*Suspicion)(nil),              // 24: lapgate.inspect.v1.Suspicion
+	(*DispositionRecord)(nil),      // 25: lapgate.inspect.v1.DispositionRecord
+	(*OutcomeRecord)(nil),          // 26: lapgate.inspect.v1.OutcomeRecord
+	(*GetUnitRequest)(nil),         // 27: lapgate.inspect.v1.GetUnitRequest
+	(*GetUnitResponse)(nil),        // 28: lapgate.inspect.v1.GetUnitResponse
+	(*ListMismatchesRequest)(nil),  // 29: lapgate.inspect.v1.ListMismatchesRequest
+	(*ListMismatchesResponse)(nil), // 30: lapgate.inspect.v1.ListMismatchesResponse
+	(*HeartbeatRequest)(nil),       // 31: lapgate.inspect.v1.HeartbeatRequest
+	(*HeartbeatResponse)(nil),      // 32: lapgate.inspect.v1.HeartbeatResponse
+	(*ListStationsRequest)(nil),    // 33: lapgate.inspect.v1.ListStationsRequest
+	(*Station)(nil),                // 34: lapgate.inspect.v1.Station
+	(*ListStationsResponse)(nil),   // 35: lapgate.inspect.v1.ListStationsResponse
+	(*FrameHeader)(nil),            // 36: lapgate.inspect.v1.FrameHeader
+	(*FrameChunk)(nil),             // 37: lapgate.inspect.v1.FrameChunk
+	(*Identity)(nil),               // 38: lapgate.inspect.v1.Identity
+	(*Judgement)(nil),              // 39: lapgate.inspect.v1.Judgement
+	(*Defect)(nil),                 // 40: lapgate.inspect.v1.Defect
+	(*Failure)(nil),                // 41: lapgate.inspect.v1.Failure
+	(*Frame)(nil),                  // 42: lapgate.inspect.v1.Frame
+	(Verdict)(0),                   // 43: lapgate.inspect.v1.Verdict
+	(*timestamppb.Timestamp)(nil),  // 44: google.protobuf.Timestamp
+	(*Evidence)(nil),               // 45: lapgate.inspect.v1.Evidence
+	(*Proof)(nil),                  // 46: lapgate.inspect.v1.Proof
 }
 var file_inspectpb_inspection_proto_depIdxs = []int32{
-	28, // 0: lapgate.inspect.v1.FrameStart.header:type_name -> lapgate.inspect.v1.FrameHeader
+	36, // 0: lapgate.inspect.v1.FrameStart.header:type_name -> lapgate.inspect.v1.FrameHeader
 	2,  // 1: lapgate.inspect.v1.InspectRequest.start:type_name -> lapgate.inspect.v1.FrameStart
-	29, // 2: lapgate.inspect.v1.InspectRequest.chunk:type_name -> lapgate.inspect.v1.FrameChunk
-	30, // 3: lapgate.inspect.v1.UnitVerdict.identity:type_name -> lapgate.inspect.v1.Identity
-	31, // 4: lapgate.inspect.v1.UnitVerdict.judgement:type_name -> lapgate.inspect.v1.Judgement
-	32, // 5: lapgate.inspect.v1.UnitVerdict.defects:type_name -> lapgate.inspect.v1.Defect
-	33, // 6: lapgate.inspect.v1.UnitVerdict.failures:type_name -> lapgate.inspect.v1.Failure
-	30, // 7: lapgate.inspect.v1.FrameRefused.identity:type_name -> lapgate.inspect.v1.Identity
+	37, // 2: lapgate.inspect.v1.InspectRequest.chunk:type_name -> lapgate.inspect.v1.FrameChunk
+	38, // 3: lapgate.inspect.v1.UnitVerdict.identity:type_name -> lapgate.inspect.v1.Identity
+	39, // 4: lapgate.inspect.v1.UnitVerdict.judgement:type_name -> lapgate.inspect.v1.Judgement
+	40, // 5: lapgate.inspect.v1.UnitVerdict.defects:type_name -> lapgate.inspect.v1.Defect
+	41, // 6: lapgate.inspect.v1.UnitVerdict.failures:type_name -> lapgate.inspect.v1.Failure
+	38, // 7: lapgate.inspect.v1.FrameRefused.identity:type_name -> lapgate.inspect.v1.Identity
 	4,  // 8: lapgate.inspect.v1.InspectResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
 	5,  // 9: lapgate.inspect.v1.InspectResponse.refused:type_name -> lapgate.inspect.v1.FrameRefused
-	34, // 10: lapgate.inspect.v1.InspectUnitRequest.frames:type_name -> lapgate.inspect.v1.Frame
+	42, // 10: lapgate.inspect.v1.InspectUnitRequest.frames:type_name -> lapgate.inspect.v1.Frame
 	4,  // 11: lapgate.inspect.v1.InspectUnitResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
-	30, // 12: lapgate.inspect.v1.ReportOutcomeRequest.identity:type_name -> lapgate.inspect.v1.Identity
-	35, // 13: lapgate.inspect.v1.ReportOutcomeRequest.bin:type_name -> lapgate.inspect.v1.Verdict
-	36, // 14: lapgate.inspect.v1.ReportOutcomeRequest.at:type_name -> google.protobuf.Timestamp
+	38, // 12: lapgate.inspect.v1.ReportOutcomeRequest.identity:type_name -> lapgate.inspect.v1.Identity
+	43, // 13: lapgate.inspect.v1.ReportOutcomeRequest.bin:type_name -> lapgate.inspect.v1.Verdict
+	44, // 14: lapgate.inspect.v1.ReportOutcomeRequest.at:type_name -> google.protobuf.Timestamp
 	0,  // 15: lapgate.inspect.v1.DisposeHoldRequest.disposition:type_name -> lapgate.inspect.v1.Disposition
 	15, // 16: lapgate.inspect.v1.DisposeHoldResponse.inspection:type_name -> lapgate.inspect.v1.InspectionRecord
 	15, // 17: lapgate.inspect.v1.ListHoldsResponse.holds:type_name -> lapgate.inspect.v1.InspectionRecord
-	30, // 18: lapgate.inspect.v1.InspectionRecord.identity:type_name -> lapgate.inspect.v1.Identity
-	36, // 19: lapgate.inspect.v1.InspectionRecord.captured:type_name -> google.protobuf.Timestamp
-	36, // 20: lapgate.inspect.v1.InspectionRecord.judged:type_name -> google.protobuf.Timestamp
-	37, // 21: lapgate.inspect.v1.InspectionRecord.evidence:type_name -> lapgate.inspect.v1.Evidence
-	31, // 22: lapgate.inspect.v1.InspectionRecord.judgements:type_name -> lapgate.inspect.v1.Judgement
-	17, // 23: lapgate.inspect.v1.InspectionRecord.dispositions:type_name -> lapgate.inspect.v1.DispositionRecord
-	18, // 24: lapgate.inspect.v1.InspectionRecord.outcomes:type_name -> lapgate.inspect.v1.OutcomeRecord
-	35, // 25: lapgate.inspect.v1.InspectionRecord.verdict:type_name -> lapgate.inspect.v1.Verdict
-	16, // 26: lapgate.inspect.v1.InspectionRecord.suspicions:type_name -> lapgate.inspect.v1.Suspicion
-	36, // 27: lapgate.inspect.v1.Suspicion.at:type_name -> google.protobuf.Timestamp
-	0,  // 28: lapgate.inspect.v1.DispositionRecord.disposition:type_name -> lapgate.inspect.v1.Disposition
-	36, // 29: lapgate.inspect.v1.DispositionRecord.at:type_name -> google.protobuf.Timestamp
-	35, // 30: lapgate.inspect.v1.OutcomeRecord.bin:type_name -> lapgate.inspect.v1.Verdict
-	36, // 31: lapgate.inspect.v1.OutcomeRecord.at:type_name -> google.protobuf.Timestamp
-	15, // 32: lapgate.inspect.v1.GetUnitResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
-	15, // 33: lapgate.inspect.v1.ListMismatchesResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
-	36, // 34: lapgate.inspect.v1.HeartbeatResponse.server_time:type_name -> google.protobuf.Timestamp
-	1,  // 35: lapgate.inspect.v1.HeartbeatResponse.state:type_name -> lapgate.inspect.v1.StationState
-	36, // 36: lapgate.inspect.v1.Station.heartbeat:type_name -> google.protobuf.Timestamp
-	36, // 37: lapgate.inspect.v1.Station.inspection:type_name -> google.protobuf.Timestamp
-	1,  // 38: lapgate.inspect.v1.Station.state:type_name -> lapgate.inspect.v1.StationState
-	26, // 39: lapgate.inspect.v1.ListStationsResponse.stations:type_name -> lapgate.inspect.v1.Station
-	36, // 40: lapgate.inspect.v1.ListStationsResponse.server_time:type_name -> google.protobuf.Timestamp
-	3,  // 41: lapgate.inspect.v1.InspectionService.Inspect:input_type -> lapgate.inspect.v1.InspectRequest
-	7,  // 42: lapgate.inspect.v1.InspectionService.InspectUnit:input_type -> lapgate.inspect.v1.InspectUnitRequest
-	9,  // 43: lapgate.inspect.v1.InspectionService.ReportOutcome:input_type -> lapgate.inspect.v1.ReportOutcomeRequest
-	11, // 44: lapgate.inspect.v1.InspectionService.DisposeHold:input_type -> lapgate.inspect.v1.DisposeHoldRequest
-	13, // 45: lapgate.inspect.v1.InspectionService.ListHolds:input_type -> lapgate.inspect.v1.ListHoldsRequest
-	19, // 46: lapgate.inspect.v1.InspectionService.GetUnit:input_type -> lapgate.inspect.v1.GetUnitRequest
-	21, // 47: lapgate.inspect.v1.InspectionService.ListMismatches:input_type -> lapgate.inspect.v1.ListMismatchesRequest
-	23, // 48: lapgate.inspect.v1.InspectionService.Heartbeat:input_type -> lapgate.inspect.v1.HeartbeatRequest
-	25, // 49: lapgate.inspect.v1.InspectionService.ListStations:input_type -> lapgate.inspect.v1.ListStationsRequest
-	6,  // 50: lapgate.inspect.v1.InspectionService.Inspect:output_type -> lapgate.inspect.v1.InspectResponse
-	8,  // 51: lapgate.inspect.v1.InspectionService.InspectUnit:output_type -> lapgate.inspect.v1.InspectUnitResponse
-	10, // 52: lapgate.inspect.v1.InspectionService.ReportOutcome:output_type -> lapgate.inspect.v1.ReportOutcomeResponse
-	12, // 53: lapgate.inspect.v1.InspectionService.DisposeHold:output_type -> lapgate.inspect.v1.DisposeHoldResponse
-	14, // 54: lapgate.inspect.v1.InspectionService.ListHolds:output_type -> lapgate.inspect.v1.ListHoldsResponse
-	20, // 55: lapgate.inspect.v1.InspectionService.GetUnit:output_type -> lapgate.inspect.v1.GetUnitResponse
-	22, // 56: lapgate.inspect.v1.InspectionService.ListMismatches:output_type -> lapgate.inspect.v1.ListMismatchesResponse
-	24, // 57: lapgate.inspect.v1.InspectionService.Heartbeat:output_type -> lapgate.inspect.v1.HeartbeatResponse
-	27, // 58: lapgate.inspect.v1.InspectionService.ListStations:output_type -> lapgate.inspect.v1.ListStationsResponse
-	50, // [50:59] is the sub-list for method output_type
-	41, // [41:50] is the sub-list for method input_type
-	41, // [41:41] is the sub-list for extension type_name
-	41, // [41:41] is the sub-list for extension extendee
-	0,  // [0:41] is the sub-list for field type_name
+	38, // 18: lapgate.inspect.v1.InspectionRecord.identity:type_name -> lapgate.inspect.v1.Identity
+	44, // 19: lapgate.inspect.v1.InspectionRecord.captured:type_name -> google.protobuf.Timestamp
+	44, // 20: lapgate.inspect.v1.InspectionRecord.judged:type_name -> google.protobuf.Timestamp
+	45, // 21: lapgate.inspect.v1.InspectionRecord.evidence:type_name -> lapgate.inspect.v1.Evidence
+	39, // 22: lapgate.inspect.v1.InspectionRecord.judgements:type_name -> lapgate.inspect.v1.Judgement
+	25, // 23: lapgate.inspect.v1.InspectionRecord.dispositions:type_name -> lapgate.inspect.v1.DispositionRecord
+	26, // 24: lapgate.inspect.v1.InspectionRecord.outcomes:type_name -> lapgate.inspect.v1.OutcomeRecord
+	43, // 25: lapgate.inspect.v1.InspectionRecord.verdict:type_name -> lapgate.inspect.v1.Verdict
+	24, // 26: lapgate.inspect.v1.InspectionRecord.suspicions:type_name -> lapgate.inspect.v1.Suspicion
+	16, // 27: lapgate.inspect.v1.InspectionRecord.registration:type_name -> lapgate.inspect.v1.Registration
+	17, // 28: lapgate.inspect.v1.Registration.pairs:type_name -> lapgate.inspect.v1.DefectPair
+	43, // 29: lapgate.inspect.v1.Registration.permanent_verdict:type_name -> lapgate.inspect.v1.Verdict
+	44, // 30: lapgate.inspect.v1.Alarm.raised:type_name -> google.protobuf.Timestamp
+	44, // 31: lapgate.inspect.v1.Alarm.cleared:type_name -> google.protobuf.Timestamp
+	19, // 32: lapgate.inspect.v1.ListAlarmsResponse.alarms:type_name -> lapgate.inspect.v1.Alarm
+	46, // 33: lapgate.inspect.v1.Drift.latest:type_name -> lapgate.inspect.v1.Proof
+	44, // 34: lapgate.inspect.v1.Drift.at:type_name -> google.protobuf.Timestamp
+	22, // 35: lapgate.inspect.v1.ListDriftResponse.readings:type_name -> lapgate.inspect.v1.Drift
+	44, // 36: lapgate.inspect.v1.Suspicion.at:type_name -> google.protobuf.Timestamp
+	0,  // 37: lapgate.inspect.v1.DispositionRecord.disposition:type_name -> lapgate.inspect.v1.Disposition
+	44, // 38: lapgate.inspect.v1.DispositionRecord.at:type_name -> google.protobuf.Timestamp
+	43, // 39: lapgate.inspect.v1.OutcomeRecord.bin:type_name -> lapgate.inspect.v1.Verdict
+	44, // 40: lapgate.inspect.v1.OutcomeRecord.at:type_name -> google.protobuf.Timestamp
+	15, // 41: lapgate.inspect.v1.GetUnitResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
+	15, // 42: lapgate.inspect.v1.ListMismatchesResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
+	44, // 43: lapgate.inspect.v1.HeartbeatResponse.server_time:type_name -> google.protobuf.Timestamp
+	1,  // 44: lapgate.inspect.v1.HeartbeatResponse.state:type_name -> lapgate.inspect.v1.StationState
+	44, // 45: lapgate.inspect.v1.Station.heartbeat:type_name -> google.protobuf.Timestamp
+	44, // 46: lapgate.inspect.v1.Station.inspection:type_name -> google.protobuf.Timestamp
+	1,  // 47: lapgate.inspect.v1.Station.state:type_name -> lapgate.inspect.v1.StationState
+	34, // 48: lapgate.inspect.v1.ListStationsResponse.stations:type_name -> lapgate.inspect.v1.Station
+	44, // 49: lapgate.inspect.v1.ListStationsResponse.server_time:type_name -> google.protobuf.Timestamp
+	3,  // 50: lapgate.inspect.v1.InspectionService.Inspect:input_type -> lapgate.inspect.v1.InspectRequest
+	7,  // 51: lapgate.inspect.v1.InspectionService.InspectUnit:input_type -> lapgate.inspect.v1.InspectUnitRequest
+	9,  // 52: lapgate.inspect.v1.InspectionService.ReportOutcome:input_type -> lapgate.inspect.v1.ReportOutcomeRequest
+	11, // 53: lapgate.inspect.v1.InspectionService.DisposeHold:input_type -> lapgate.inspect.v1.DisposeHoldRequest
+	13, // 54: lapgate.inspect.v1.InspectionService.ListHolds:input_type -> lapgate.inspect.v1.ListHoldsRequest
+	27, // 55: lapgate.inspect.v1.InspectionService.GetUnit:input_type -> lapgate.inspect.v1.GetUnitRequest
+	29, // 56: lapgate.inspect.v1.InspectionService.ListMismatches:input_type -> lapgate.inspect.v1.ListMismatchesRequest
+	31, // 57: lapgate.inspect.v1.InspectionService.Heartbeat:input_type -> lapgate.inspect.v1.HeartbeatRequest
+	33, // 58: lapgate.inspect.v1.InspectionService.ListStations:input_type -> lapgate.inspect.v1.ListStationsRequest
+	18, // 59: lapgate.inspect.v1.InspectionService.ListAlarms:input_type -> lapgate.inspect.v1.ListAlarmsRequest
+	21, // 60: lapgate.inspect.v1.InspectionService.ListDrift:input_type -> lapgate.inspect.v1.ListDriftRequest
+	6,  // 61: lapgate.inspect.v1.InspectionService.Inspect:output_type -> lapgate.inspect.v1.InspectResponse
+	8,  // 62: lapgate.inspect.v1.InspectionService.InspectUnit:output_type -> lapgate.inspect.v1.InspectUnitResponse
+	10, // 63: lapgate.inspect.v1.InspectionService.ReportOutcome:output_type -> lapgate.inspect.v1.ReportOutcomeResponse
+	12, // 64: lapgate.inspect.v1.InspectionService.DisposeHold:output_type -> lapgate.inspect.v1.DisposeHoldResponse
+	14, // 65: lapgate.inspect.v1.InspectionService.ListHolds:output_type -> lapgate.inspect.v1.ListHoldsResponse
+	28, // 66: lapgate.inspect.v1.InspectionService.GetUnit:output_type -> lapgate.inspect.v1.GetUnitResponse
+	30, // 67: lapgate.inspect.v1.InspectionService.ListMismatches:output_type -> lapgate.inspect.v1.ListMismatchesResponse
+	32, // 68: lapgate.inspect.v1.InspectionService.Heartbeat:output_type -> lapgate.inspect.v1.HeartbeatResponse
+	35, // 69: lapgate.inspect.v1.InspectionService.ListStations:output_type -> lapgate.inspect.v1.ListStationsResponse
+	20, // 70: lapgate.inspect.v1.InspectionService.ListAlarms:output_type -> lapgate.inspect.v1.ListAlarmsResponse
+	23, // 71: lapgate.inspect.v1.InspectionService.ListDrift:output_type -> lapgate.inspect.v1.ListDriftResponse
+	61, // [61:72] is the sub-list for method output_type
+	50, // [50:61] is the sub-list for method input_type
+	50, // [50:50] is the sub-list for extension type_name
+	50, // [50:50] is the sub-list for extension extendee
+	0,  // [0:50] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_inspection_proto_init() }
@@ -2153,7 +2933,7 @@ func file_inspectpb_inspection_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_inspection_proto_rawDesc), len(file_inspectpb_inspection_proto_rawDesc)),
 			NumEnums:      2,
-			NumMessages:   26,
+			NumMessages:   34,
 			NumExtensions: 0,
 			NumServices:   1,
 		},

@@ -28,6 +28,8 @@ const (
 	InspectionService_ListMismatches_FullMethodName = "/lapgate.inspect.v1.InspectionService/ListMismatches"
 	InspectionService_Heartbeat_FullMethodName      = "/lapgate.inspect.v1.InspectionService/Heartbeat"
 	InspectionService_ListStations_FullMethodName   = "/lapgate.inspect.v1.InspectionService/ListStations"
+	InspectionService_ListAlarms_FullMethodName     = "/lapgate.inspect.v1.InspectionService/ListAlarms"
+	InspectionService_ListDrift_FullMethodName      = "/lapgate.inspect.v1.InspectionService/ListDrift"
 )
 
 // InspectionServiceClient is the client API for InspectionService service.
@@ -58,6 +60,11 @@ type InspectionServiceClient interface {
 	Heartbeat(ctx context.Context, in *HeartbeatRequest, opts ...grpc.CallOption) (*HeartbeatResponse, error)
 	// ListStations lists the stations heard of since the server started.
 	ListStations(ctx context.Context, in *ListStationsRequest, opts ...grpc.CallOption) (*ListStationsResponse, error)
+	// ListAlarms lists the alarms of stations, newest first.
+	ListAlarms(ctx context.Context, in *ListAlarmsRequest, opts ...grpc.CallOption) (*ListAlarmsResponse, error)
+	// ListDrift says how light, focus, scale and fixed pattern of each view stand and where
+	// they are going.
+	ListDrift(ctx context.Context, in *ListDriftRequest, opts ...grpc.CallOption) (*ListDriftResponse, error)
 }
 
 type inspectionServiceClient struct {
@@ -161,6 +168,26 @@ func (c *inspectionServiceClient) ListStations(ctx context.Context, in *ListStat
 	return out, nil
 }
 
+func (c *inspectionServiceClient) ListAlarms(ctx context.Context, in *ListAlarmsRequest, opts ...grpc.CallOption) (*ListAlarmsResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListAlarmsResponse)
+	err := c.cc.Invoke(ctx, InspectionService_ListAlarms_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
+func (c *inspectionServiceClient) ListDrift(ctx context.Context, in *ListDriftRequest, opts ...grpc.CallOption) (*ListDriftResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(ListDriftResponse)
+	err := c.cc.Invoke(ctx, InspectionService_ListDrift_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // InspectionServiceServer is the server API for InspectionService service.
 // All implementations must embed UnimplementedInspectionServiceServer
 // for forward compatibility.
@@ -189,6 +216,11 @@ type InspectionServiceServer interface {
 	Heartbeat(context.Context, *HeartbeatRequest) (*HeartbeatResponse, error)
 	// ListStations lists the stations heard of since the server started.
 	ListStations(context.Context, *ListStationsRequest) (*ListStationsResponse, error)
+	// ListAlarms lists the alarms of stations, newest first.
+	ListAlarms(context.Context, *ListAlarmsRequest) (*ListAlarmsResponse, error)
+	// ListDrift says how light, focus, scale and fixed pattern of each view stand and where
+	// they are going.
+	ListDrift(context.Context, *ListDriftRequest) (*ListDriftResponse, error)
 	mustEmbedUnimplementedInspectionServiceServer()
 }
 
@@ -225,6 +257,12 @@ func (UnimplementedInspectionServiceServer) Heartbeat(context.Context, *Heartbea
 }
 func (UnimplementedInspectionServiceServer) ListStations(context.Context, *ListStationsRequest) (*ListStationsResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method ListStations not implemented")
+}
+func (UnimplementedInspectionServiceServer) ListAlarms(context.Context, *ListAlarmsRequest) (*ListAlarmsResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListAlarms not implemented")
+}
+func (UnimplementedInspectionServiceServer) ListDrift(context.Context, *ListDriftRequest) (*ListDriftResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method ListDrift not implemented")
 }
 func (UnimplementedInspectionServiceServer) mustEmbedUnimplementedInspectionServiceServer() {}
 func (UnimplementedInspectionServiceServer) testEmbeddedByValue()                           {}
@@ -398,6 +436,42 @@ func _InspectionService_ListStations_Handler(srv interface{}, ctx context.Contex
 	return interceptor(ctx, in, info, handler)
 }
 
+func _InspectionService_ListAlarms_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListAlarmsRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(InspectionServiceServer).ListAlarms(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: InspectionService_ListAlarms_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(InspectionServiceServer).ListAlarms(ctx, req.(*ListAlarmsRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
+func _InspectionService_ListDrift_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(ListDriftRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(InspectionServiceServer).ListDrift(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: InspectionService_ListDrift_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(InspectionServiceServer).ListDrift(ctx, req.(*ListDriftRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // InspectionService_ServiceDesc is the grpc.ServiceDesc for InspectionService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -436,6 +510,14 @@ var InspectionService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "ListStations",
 			Handler:    _InspectionService_ListStations_Handler,
+		},
+		{
+			MethodName: "ListAlarms",
+			Handler:    _InspectionService_ListAlarms_Handler,
+		},
+		{
+			MethodName: "ListDrift",
+			Handler:    _InspectionService_ListDrift_Handler,
 		},
 	},
 	Streams: []grpc.StreamDesc{

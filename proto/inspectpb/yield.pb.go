@@ -22,6 +22,62 @@ const (
 	_ = protoimpl.EnforceVersion(protoimpl.MaxVersion - 20)
 )
 
+// Coordinates of a map.
+type Coordinates int32
+
+const (
+	Coordinates_COORDINATES_UNSPECIFIED Coordinates = 0
+	// Micrometres from the part's centre, turned back by its angle, v up.
+	Coordinates_COORDINATES_PART Coordinates = 1
+	// Micrometres from the part's centre as it lay, v up.
+	Coordinates_COORDINATES_STATION Coordinates = 2
+	// Pixels of the frame as received, y down.
+	Coordinates_COORDINATES_CAMERA Coordinates = 3
+)
+
+// Enum value maps for Coordinates.
+var (
+	Coordinates_name = map[int32]string{
+		0: "COORDINATES_UNSPECIFIED",
+		1: "COORDINATES_PART",
+		2: "COORDINATES_STATION",
+		3: "COORDINATES_CAMERA",
+	}
+	Coordinates_value = map[string]int32{
+		"COORDINATES_UNSPECIFIED": 0,
+		"COORDINATES_PART":        1,
+		"COORDINATES_STATION":     2,
+		"COORDINATES_CAMERA":      3,
+	}
+)
+
+func (x Coordinates) Enum() *Coordinates {
+	p := new(Coordinates)
+	*p = x
+	return p
+}
+
+func (x Coordinates) String() string {
+	return protoimpl.X.EnumStringOf(x.Descriptor(), protoreflect.EnumNumber(x))
+}
+
+func (Coordinates) Descriptor() protoreflect.EnumDescriptor {
+	return file_inspectpb_yield_proto_enumTypes[0].Descriptor()
+}
+
+func (Coordinates) Type() protoreflect.EnumType {
+	return &file_inspectpb_yield_proto_enumTypes[0]
+}
+
+func (x Coordinates) Number() protoreflect.EnumNumber {
+	return protoreflect.EnumNumber(x)
+}
+
+// Deprecated: Use Coordinates.Descriptor instead.
+func (Coordinates) EnumDescriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{0}
+}
+
 // Filter selects inspections; an empty field matches all.
 type Filter struct {
 	state   protoimpl.MessageState `protogen:"open.v1"`
@@ -289,7 +345,10 @@ type Yield struct {
 	// Showings of the units, by units; 0 without units.
 	AttemptsPerUnit float64 `protobuf:"fixed64,13,opt,name=attempts_per_unit,json=attemptsPerUnit,proto3" json:"attempts_per_unit,omitempty"`
 	// Units that a later attempt accepted, of those held or rejected at their first.
-	PassByRetest  *Rate `protobuf:"bytes,14,opt,name=pass_by_retest,json=passByRetest,proto3" json:"pass_by_retest,omitempty"`
+	PassByRetest *Rate `protobuf:"bytes,14,opt,name=pass_by_retest,json=passByRetest,proto3" json:"pass_by_retest,omitempty"`
+	// Units whose first attempt would have been accepted by its permanent defects alone, of
+	// those in first_pass. What a later attempt did not show to be removable is permanent.
+	Permanent     *Rate `protobuf:"bytes,15,opt,name=permanent,proto3" json:"permanent,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -418,6 +477,13 @@ func (x *Yield) GetAttemptsPerUnit() float64 {
 func (x *Yield) GetPassByRetest() *Rate {
 	if x != nil {
 		return x.PassByRetest
+	}
+	return nil
+}
+
+func (x *Yield) GetPermanent() *Rate {
+	if x != nil {
+		return x.Permanent
 	}
 	return nil
 }
@@ -776,8 +842,12 @@ type ParetoRow struct {
 	Any             int32                  `protobuf:"varint,4,opt,name=any,proto3" json:"any,omitempty"`
 	Share           float64                `protobuf:"fixed64,5,opt,name=share,proto3" json:"share,omitempty"`
 	CumulativeShare float64                `protobuf:"fixed64,6,opt,name=cumulative_share,json=cumulativeShare,proto3" json:"cumulative_share,omitempty"`
-	unknownFields   protoimpl.UnknownFields
-	sizeCache       protoimpl.SizeCache
+	// First attempts with this reason, and those of them that do not have it by their
+	// permanent defects alone.
+	FirstAttempts int32 `protobuf:"varint,7,opt,name=first_attempts,json=firstAttempts,proto3" json:"first_attempts,omitempty"`
+	Removable     int32 `protobuf:"varint,8,opt,name=removable,proto3" json:"removable,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ParetoRow) Reset() {
@@ -848,6 +918,20 @@ func (x *ParetoRow) GetShare() float64 {
 func (x *ParetoRow) GetCumulativeShare() float64 {
 	if x != nil {
 		return x.CumulativeShare
+	}
+	return 0
+}
+
+func (x *ParetoRow) GetFirstAttempts() int32 {
+	if x != nil {
+		return x.FirstAttempts
+	}
+	return 0
+}
+
+func (x *ParetoRow) GetRemovable() int32 {
+	if x != nil {
+		return x.Removable
 	}
 	return 0
 }
@@ -1211,7 +1295,9 @@ type WatchResponse struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
 	Unit  *UnitRow               `protobuf:"bytes,1,opt,name=unit,proto3" json:"unit,omitempty"`
 	// Inspections that this watcher missed because it read too slowly.
-	Missed        int32 `protobuf:"varint,2,opt,name=missed,proto3" json:"missed,omitempty"`
+	Missed int32 `protobuf:"varint,2,opt,name=missed,proto3" json:"missed,omitempty"`
+	// Alarms that this inspection raised or cleared.
+	Alarms        []*Alarm `protobuf:"bytes,3,rep,name=alarms,proto3" json:"alarms,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -1258,6 +1344,13 @@ func (x *WatchResponse) GetMissed() int32 {
 		return x.Missed
 	}
 	return 0
+}
+
+func (x *WatchResponse) GetAlarms() []*Alarm {
+	if x != nil {
+		return x.Alarms
+	}
+	return nil
 }
 
 // GetLatencyRequest asks for latencies.
@@ -1444,11 +1537,376 @@ func (x *GetLatencyResponse) GetStations() []*Latency {
 	return nil
 }
 
+// GetDefectMapRequest asks for a map of one part.
+type GetDefectMapRequest struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// part must be given.
+	Filter      *Filter     `protobuf:"bytes,1,opt,name=filter,proto3" json:"filter,omitempty"`
+	Coordinates Coordinates `protobuf:"varint,2,opt,name=coordinates,proto3,enum=lapgate.inspect.v1.Coordinates" json:"coordinates,omitempty"`
+	// Empty = the defects after the merge, or, in camera coordinates, the only view.
+	View string `protobuf:"bytes,3,opt,name=view,proto3" json:"view,omitempty"`
+	// Empty = all kinds.
+	Kinds         []string `protobuf:"bytes,4,rep,name=kinds,proto3" json:"kinds,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *GetDefectMapRequest) Reset() {
+	*x = GetDefectMapRequest{}
+	mi := &file_inspectpb_yield_proto_msgTypes[20]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *GetDefectMapRequest) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*GetDefectMapRequest) ProtoMessage() {}
+
+func (x *GetDefectMapRequest) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[20]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use GetDefectMapRequest.ProtoReflect.Descriptor instead.
+func (*GetDefectMapRequest) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{20}
+}
+
+func (x *GetDefectMapRequest) GetFilter() *Filter {
+	if x != nil {
+		return x.Filter
+	}
+	return nil
+}
+
+func (x *GetDefectMapRequest) GetCoordinates() Coordinates {
+	if x != nil {
+		return x.Coordinates
+	}
+	return Coordinates_COORDINATES_UNSPECIFIED
+}
+
+func (x *GetDefectMapRequest) GetView() string {
+	if x != nil {
+		return x.View
+	}
+	return ""
+}
+
+func (x *GetDefectMapRequest) GetKinds() []string {
+	if x != nil {
+		return x.Kinds
+	}
+	return nil
+}
+
+// MapPoint is one defect.
+type MapPoint struct {
+	state        protoimpl.MessageState `protogen:"open.v1"`
+	InspectionId string                 `protobuf:"bytes,1,opt,name=inspection_id,json=inspectionId,proto3" json:"inspection_id,omitempty"`
+	Unit         string                 `protobuf:"bytes,2,opt,name=unit,proto3" json:"unit,omitempty"`
+	Kind         string                 `protobuf:"bytes,3,opt,name=kind,proto3" json:"kind,omitempty"`
+	Zone         string                 `protobuf:"bytes,4,opt,name=zone,proto3" json:"zone,omitempty"`
+	X            float64                `protobuf:"fixed64,5,opt,name=x,proto3" json:"x,omitempty"`
+	Y            float64                `protobuf:"fixed64,6,opt,name=y,proto3" json:"y,omitempty"`
+	// Diameter, or length of a scratch or fibre.
+	SizeUm        float64 `protobuf:"fixed64,7,opt,name=size_um,json=sizeUm,proto3" json:"size_um,omitempty"`
+	Verdict       Verdict `protobuf:"varint,8,opt,name=verdict,proto3,enum=lapgate.inspect.v1.Verdict" json:"verdict,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *MapPoint) Reset() {
+	*x = MapPoint{}
+	mi := &file_inspectpb_yield_proto_msgTypes[21]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *MapPoint) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*MapPoint) ProtoMessage() {}
+
+func (x *MapPoint) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[21]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use MapPoint.ProtoReflect.Descriptor instead.
+func (*MapPoint) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{21}
+}
+
+func (x *MapPoint) GetInspectionId() string {
+	if x != nil {
+		return x.InspectionId
+	}
+	return ""
+}
+
+func (x *MapPoint) GetUnit() string {
+	if x != nil {
+		return x.Unit
+	}
+	return ""
+}
+
+func (x *MapPoint) GetKind() string {
+	if x != nil {
+		return x.Kind
+	}
+	return ""
+}
+
+func (x *MapPoint) GetZone() string {
+	if x != nil {
+		return x.Zone
+	}
+	return ""
+}
+
+func (x *MapPoint) GetX() float64 {
+	if x != nil {
+		return x.X
+	}
+	return 0
+}
+
+func (x *MapPoint) GetY() float64 {
+	if x != nil {
+		return x.Y
+	}
+	return 0
+}
+
+func (x *MapPoint) GetSizeUm() float64 {
+	if x != nil {
+		return x.SizeUm
+	}
+	return 0
+}
+
+func (x *MapPoint) GetVerdict() Verdict {
+	if x != nil {
+		return x.Verdict
+	}
+	return Verdict_VERDICT_UNSPECIFIED
+}
+
+// MapZone is a zone of the limits about the part's centre, in the map's unit.
+type MapZone struct {
+	state         protoimpl.MessageState `protogen:"open.v1"`
+	Name          string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	CentreX       float64                `protobuf:"fixed64,2,opt,name=centre_x,json=centreX,proto3" json:"centre_x,omitempty"`
+	CentreY       float64                `protobuf:"fixed64,3,opt,name=centre_y,json=centreY,proto3" json:"centre_y,omitempty"`
+	OuterDiameter float64                `protobuf:"fixed64,4,opt,name=outer_diameter,json=outerDiameter,proto3" json:"outer_diameter,omitempty"`
+	InnerDiameter float64                `protobuf:"fixed64,5,opt,name=inner_diameter,json=innerDiameter,proto3" json:"inner_diameter,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *MapZone) Reset() {
+	*x = MapZone{}
+	mi := &file_inspectpb_yield_proto_msgTypes[22]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *MapZone) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*MapZone) ProtoMessage() {}
+
+func (x *MapZone) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[22]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use MapZone.ProtoReflect.Descriptor instead.
+func (*MapZone) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{22}
+}
+
+func (x *MapZone) GetName() string {
+	if x != nil {
+		return x.Name
+	}
+	return ""
+}
+
+func (x *MapZone) GetCentreX() float64 {
+	if x != nil {
+		return x.CentreX
+	}
+	return 0
+}
+
+func (x *MapZone) GetCentreY() float64 {
+	if x != nil {
+		return x.CentreY
+	}
+	return 0
+}
+
+func (x *MapZone) GetOuterDiameter() float64 {
+	if x != nil {
+		return x.OuterDiameter
+	}
+	return 0
+}
+
+func (x *MapZone) GetInnerDiameter() float64 {
+	if x != nil {
+		return x.InnerDiameter
+	}
+	return 0
+}
+
+// GetDefectMapResponse is the map.
+type GetDefectMapResponse struct {
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Points []*MapPoint            `protobuf:"bytes,1,rep,name=points,proto3" json:"points,omitempty"`
+	Zones  []*MapZone             `protobuf:"bytes,2,rep,name=zones,proto3" json:"zones,omitempty"`
+	// On the map.
+	Units int32 `protobuf:"varint,3,opt,name=units,proto3" json:"units,omitempty"`
+	// Units left out because their angle is not known, and the first 100 of their ids.
+	UnitsLeftOut int32    `protobuf:"varint,4,opt,name=units_left_out,json=unitsLeftOut,proto3" json:"units_left_out,omitempty"`
+	LeftOut      []string `protobuf:"bytes,5,rep,name=left_out,json=leftOut,proto3" json:"left_out,omitempty"`
+	// um or px.
+	Unit string `protobuf:"bytes,6,opt,name=unit,proto3" json:"unit,omitempty"`
+	// Of the frame, in camera coordinates.
+	WidthPx  int32 `protobuf:"varint,7,opt,name=width_px,json=widthPx,proto3" json:"width_px,omitempty"`
+	HeightPx int32 `protobuf:"varint,8,opt,name=height_px,json=heightPx,proto3" json:"height_px,omitempty"`
+	// There are more units or defects than a map holds; the newest are on it.
+	Truncated     bool `protobuf:"varint,9,opt,name=truncated,proto3" json:"truncated,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *GetDefectMapResponse) Reset() {
+	*x = GetDefectMapResponse{}
+	mi := &file_inspectpb_yield_proto_msgTypes[23]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *GetDefectMapResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*GetDefectMapResponse) ProtoMessage() {}
+
+func (x *GetDefectMapResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_yield_proto_msgTypes[23]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use GetDefectMapResponse.ProtoReflect.Descriptor instead.
+func (*GetDefectMapResponse) Descriptor() ([]byte, []int) {
+	return file_inspectpb_yield_proto_rawDescGZIP(), []int{23}
+}
+
+func (x *GetDefectMapResponse) GetPoints() []*MapPoint {
+	if x != nil {
+		return x.Points
+	}
+	return nil
+}
+
+func (x *GetDefectMapResponse) GetZones() []*MapZone {
+	if x != nil {
+		return x.Zones
+	}
+	return nil
+}
+
+func (x *GetDefectMapResponse) GetUnits() int32 {
+	if x != nil {
+		return x.Units
+	}
+	return 0
+}
+
+func (x *GetDefectMapResponse) GetUnitsLeftOut() int32 {
+	if x != nil {
+		return x.UnitsLeftOut
+	}
+	return 0
+}
+
+func (x *GetDefectMapResponse) GetLeftOut() []string {
+	if x != nil {
+		return x.LeftOut
+	}
+	return nil
+}
+
+func (x *GetDefectMapResponse) GetUnit() string {
+	if x != nil {
+		return x.Unit
+	}
+	return ""
+}
+
+func (x *GetDefectMapResponse) GetWidthPx() int32 {
+	if x != nil {
+		return x.WidthPx
+	}
+	return 0
+}
+
+func (x *GetDefectMapResponse) GetHeightPx() int32 {
+	if x != nil {
+		return x.HeightPx
+	}
+	return 0
+}
+
+func (x *GetDefectMapResponse) GetTruncated() bool {
+	if x != nil {
+		return x.Truncated
+	}
+	return false
+}
+
 var File_inspectpb_yield_proto protoreflect.FileDescriptor
 
 const file_inspectpb_yield_proto_rawDesc = "" +
 	"\n" +
-	"\x15inspectpb/yield.proto\x12\x12lapgate.inspect.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18inspectpb/evidence.proto\x1a\x15inspectpb/frame.proto\"\xa1\x02\n" +
+	"\x15inspectpb/yield.proto\x12\x12lapgate.inspect.v1\x1a\x1fgoogle/protobuf/timestamp.proto\x1a\x18inspectpb/evidence.proto\x1a\x15inspectpb/frame.proto\x1a\x1ainspectpb/inspection.proto\"\xa1\x02\n" +
 	"\x06Filter\x12\x12\n" +
 	"\x04part\x18\x01 \x01(\tR\x04part\x12\x18\n" +
 	"\aprocess\x18\x02 \x01(\tR\aprocess\x12\x10\n" +
@@ -1467,7 +1925,7 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x01n\x18\x02 \x01(\x05R\x01n\x12\x14\n" +
 	"\x05value\x18\x03 \x01(\x01R\x05value\x12E\n" +
 	"\x0fclopper_pearson\x18\x04 \x01(\v2\x1c.lapgate.inspect.v1.IntervalR\x0eclopperPearson\x124\n" +
-	"\x06wilson\x18\x05 \x01(\v2\x1c.lapgate.inspect.v1.IntervalR\x06wilson\"\x9d\x05\n" +
+	"\x06wilson\x18\x05 \x01(\v2\x1c.lapgate.inspect.v1.IntervalR\x06wilson\"\xd5\x05\n" +
 	"\x05Yield\x12:\n" +
 	"\x05group\x18\x01 \x03(\v2$.lapgate.inspect.v1.Yield.GroupEntryR\x05group\x12\x14\n" +
 	"\x05units\x18\x02 \x01(\x05R\x05units\x12 \n" +
@@ -1486,7 +1944,8 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\n" +
 	"first_held\x18\f \x01(\x05R\tfirstHeld\x12*\n" +
 	"\x11attempts_per_unit\x18\r \x01(\x01R\x0fattemptsPerUnit\x12>\n" +
-	"\x0epass_by_retest\x18\x0e \x01(\v2\x18.lapgate.inspect.v1.RateR\fpassByRetest\x1a8\n" +
+	"\x0epass_by_retest\x18\x0e \x01(\v2\x18.lapgate.inspect.v1.RateR\fpassByRetest\x126\n" +
+	"\tpermanent\x18\x0f \x01(\v2\x18.lapgate.inspect.v1.RateR\tpermanent\x1a8\n" +
 	"\n" +
 	"GroupEntry\x12\x10\n" +
 	"\x03key\x18\x01 \x01(\tR\x03key\x12\x14\n" +
@@ -1512,14 +1971,16 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x06points\x18\x01 \x03(\v2\x1f.lapgate.inspect.v1.SeriesPointR\x06points\"Z\n" +
 	"\x10GetParetoRequest\x122\n" +
 	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\x12\x12\n" +
-	"\x04most\x18\x02 \x01(\x05R\x04most\"\xc3\x01\n" +
+	"\x04most\x18\x02 \x01(\x05R\x04most\"\x88\x02\n" +
 	"\tParetoRow\x12\x16\n" +
 	"\x06reason\x18\x01 \x01(\tR\x06reason\x125\n" +
 	"\averdict\x18\x02 \x01(\x0e2\x1b.lapgate.inspect.v1.VerdictR\averdict\x12\x14\n" +
 	"\x05first\x18\x03 \x01(\x05R\x05first\x12\x10\n" +
 	"\x03any\x18\x04 \x01(\x05R\x03any\x12\x14\n" +
 	"\x05share\x18\x05 \x01(\x01R\x05share\x12)\n" +
-	"\x10cumulative_share\x18\x06 \x01(\x01R\x0fcumulativeShare\"h\n" +
+	"\x10cumulative_share\x18\x06 \x01(\x01R\x0fcumulativeShare\x12%\n" +
+	"\x0efirst_attempts\x18\a \x01(\x05R\rfirstAttempts\x12\x1c\n" +
+	"\tremovable\x18\b \x01(\x05R\tremovable\"h\n" +
 	"\x11GetParetoResponse\x12 \n" +
 	"\vinspections\x18\x01 \x01(\x05R\vinspections\x121\n" +
 	"\x04rows\x18\x02 \x03(\v2\x1d.lapgate.inspect.v1.ParetoRowR\x04rows\"\xd1\x01\n" +
@@ -1548,10 +2009,11 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x05units\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.UnitRowR\x05units\x12&\n" +
 	"\x0fnext_page_token\x18\x02 \x01(\tR\rnextPageToken\"B\n" +
 	"\fWatchRequest\x122\n" +
-	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\"X\n" +
+	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\"\x8b\x01\n" +
 	"\rWatchResponse\x12/\n" +
 	"\x04unit\x18\x01 \x01(\v2\x1b.lapgate.inspect.v1.UnitRowR\x04unit\x12\x16\n" +
-	"\x06missed\x18\x02 \x01(\x05R\x06missed\"G\n" +
+	"\x06missed\x18\x02 \x01(\x05R\x06missed\x121\n" +
+	"\x06alarms\x18\x03 \x03(\v2\x19.lapgate.inspect.v1.AlarmR\x06alarms\"G\n" +
 	"\x11GetLatencyRequest\x122\n" +
 	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\"\xa1\x01\n" +
 	"\aLatency\x12\x12\n" +
@@ -1563,7 +2025,42 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\x06p99_ms\x18\x06 \x01(\x01R\x05p99Ms\x12\x15\n" +
 	"\x06max_ms\x18\a \x01(\x01R\x05maxMs\"M\n" +
 	"\x12GetLatencyResponse\x127\n" +
-	"\bstations\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.LatencyR\bstations2\xa6\x04\n" +
+	"\bstations\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.LatencyR\bstations\"\xb6\x01\n" +
+	"\x13GetDefectMapRequest\x122\n" +
+	"\x06filter\x18\x01 \x01(\v2\x1a.lapgate.inspect.v1.FilterR\x06filter\x12A\n" +
+	"\vcoordinates\x18\x02 \x01(\x0e2\x1f.lapgate.inspect.v1.CoordinatesR\vcoordinates\x12\x12\n" +
+	"\x04view\x18\x03 \x01(\tR\x04view\x12\x14\n" +
+	"\x05kinds\x18\x04 \x03(\tR\x05kinds\"\xd7\x01\n" +
+	"\bMapPoint\x12#\n" +
+	"\rinspection_id\x18\x01 \x01(\tR\finspectionId\x12\x12\n" +
+	"\x04unit\x18\x02 \x01(\tR\x04unit\x12\x12\n" +
+	"\x04kind\x18\x03 \x01(\tR\x04kind\x12\x12\n" +
+	"\x04zone\x18\x04 \x01(\tR\x04zone\x12\f\n" +
+	"\x01x\x18\x05 \x01(\x01R\x01x\x12\f\n" +
+	"\x01y\x18\x06 \x01(\x01R\x01y\x12\x17\n" +
+	"\asize_um\x18\a \x01(\x01R\x06sizeUm\x125\n" +
+	"\averdict\x18\b \x01(\x0e2\x1b.lapgate.inspect.v1.VerdictR\averdict\"\xa1\x01\n" +
+	"\aMapZone\x12\x12\n" +
+	"\x04name\x18\x01 \x01(\tR\x04name\x12\x19\n" +
+	"\bcentre_x\x18\x02 \x01(\x01R\acentreX\x12\x19\n" +
+	"\bcentre_y\x18\x03 \x01(\x01R\acentreY\x12%\n" +
+	"\x0eouter_diameter\x18\x04 \x01(\x01R\routerDiameter\x12%\n" +
+	"\x0einner_diameter\x18\x05 \x01(\x01R\rinnerDiameter\"\xc0\x02\n" +
+	"\x14GetDefectMapResponse\x124\n" +
+	"\x06points\x18\x01 \x03(\v2\x1c.lapgate.inspect.v1.MapPointR\x06points\x121\n" +
+	"\x05zones\x18\x02 \x03(\v2\x1b.lapgate.inspect.v1.MapZoneR\x05zones\x12\x14\n" +
+	"\x05units\x18\x03 \x01(\x05R\x05units\x12$\n" +
+	"\x0eunits_left_out\x18\x04 \x01(\x05R\funitsLeftOut\x12\x19\n" +
+	"\bleft_out\x18\x05 \x03(\tR\aleftOut\x12\x12\n" +
+	"\x04unit\x18\x06 \x01(\tR\x04unit\x12\x19\n" +
+	"\bwidth_px\x18\a \x01(\x05R\awidthPx\x12\x1b\n" +
+	"\theight_px\x18\b \x01(\x05R\bheightPx\x12\x1c\n" +
+	"\ttruncated\x18\t \x01(\bR\ttruncated*q\n" +
+	"\vCoordinates\x12\x1b\n" +
+	"\x17COORDINATES_UNSPECIFIED\x10\x00\x12\x14\n" +
+	"\x10COORDINATES_PART\x10\x01\x12\x17\n" +
+	"\x13COORDINATES_STATION\x10\x02\x12\x16\n" +
+	"\x12COORDINATES_CAMERA\x10\x032\x89\x05\n" +
 	"\fYieldService\x12[\n" +
 	"\n" +
 	"GetSummary\x12%.lapgate.inspect.v1.GetSummaryRequest\x1a&.lapgate.inspect.v1.GetSummaryResponse\x12X\n" +
@@ -1572,7 +2069,8 @@ const file_inspectpb_yield_proto_rawDesc = "" +
 	"\tListUnits\x12$.lapgate.inspect.v1.ListUnitsRequest\x1a%.lapgate.inspect.v1.ListUnitsResponse\x12N\n" +
 	"\x05Watch\x12 .lapgate.inspect.v1.WatchRequest\x1a!.lapgate.inspect.v1.WatchResponse0\x01\x12[\n" +
 	"\n" +
-	"GetLatency\x12%.lapgate.inspect.v1.GetLatencyRequest\x1a&.lapgate.inspect.v1.GetLatencyResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
+	"GetLatency\x12%.lapgate.inspect.v1.GetLatencyRequest\x1a&.lapgate.inspect.v1.GetLatencyResponse\x12a\n" +
+	"\fGetDefectMap\x12'.lapgate.inspect.v1.GetDefectMapRequest\x1a(.lapgate.inspect.v1.GetDefectMapResponseB#Z!lapgate/proto/inspectpb;inspectpbb\x06proto3"
 
 var (
 	file_inspectpb_yield_proto_rawDescOnce sync.Once
@@ -1586,83 +2084,99 @@ func file_inspectpb_yield_proto_rawDescGZIP() []byte {
 	return file_inspectpb_yield_proto_rawDescData
 }
 
-var file_inspectpb_yield_proto_msgTypes = make([]protoimpl.MessageInfo, 21)
+var file_inspectpb_yield_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
+var file_inspectpb_yield_proto_msgTypes = make([]protoimpl.MessageInfo, 25)
 var file_inspectpb_yield_proto_goTypes = []any{
-	(*Filter)(nil),                // 0: lapgate.inspect.v1.Filter
-	(*Interval)(nil),              // 1: lapgate.inspect.v1.Interval
-	(*Rate)(nil),                  // 2: lapgate.inspect.v1.Rate
-	(*Yield)(nil),                 // 3: lapgate.inspect.v1.Yield
-	(*GetSummaryRequest)(nil),     // 4: lapgate.inspect.v1.GetSummaryRequest
-	(*GetSummaryResponse)(nil),    // 5: lapgate.inspect.v1.GetSummaryResponse
-	(*GetSeriesRequest)(nil),      // 6: lapgate.inspect.v1.GetSeriesRequest
-	(*SeriesPoint)(nil),           // 7: lapgate.inspect.v1.SeriesPoint
-	(*GetSeriesResponse)(nil),     // 8: lapgate.inspect.v1.GetSeriesResponse
-	(*GetParetoRequest)(nil),      // 9: lapgate.inspect.v1.GetParetoRequest
-	(*ParetoRow)(nil),             // 10: lapgate.inspect.v1.ParetoRow
-	(*GetParetoResponse)(nil),     // 11: lapgate.inspect.v1.GetParetoResponse
-	(*ListUnitsRequest)(nil),      // 12: lapgate.inspect.v1.ListUnitsRequest
-	(*UnitRow)(nil),               // 13: lapgate.inspect.v1.UnitRow
-	(*ListUnitsResponse)(nil),     // 14: lapgate.inspect.v1.ListUnitsResponse
-	(*WatchRequest)(nil),          // 15: lapgate.inspect.v1.WatchRequest
-	(*WatchResponse)(nil),         // 16: lapgate.inspect.v1.WatchResponse
-	(*GetLatencyRequest)(nil),     // 17: lapgate.inspect.v1.GetLatencyRequest
-	(*Latency)(nil),               // 18: lapgate.inspect.v1.Latency
-	(*GetLatencyResponse)(nil),    // 19: lapgate.inspect.v1.GetLatencyResponse
-	nil,                           // 20: lapgate.inspect.v1.Yield.GroupEntry
-	(Purpose)(0),                  // 21: lapgate.inspect.v1.Purpose
-	(*timestamppb.Timestamp)(nil), // 22: google.protobuf.Timestamp
-	(Verdict)(0),                  // 23: lapgate.inspect.v1.Verdict
-	(*Identity)(nil),              // 24: lapgate.inspect.v1.Identity
+	(Coordinates)(0),              // 0: lapgate.inspect.v1.Coordinates
+	(*Filter)(nil),                // 1: lapgate.inspect.v1.Filter
+	(*Interval)(nil),              // 2: lapgate.inspect.v1.Interval
+	(*Rate)(nil),                  // 3: lapgate.inspect.v1.Rate
+	(*Yield)(nil),                 // 4: lapgate.inspect.v1.Yield
+	(*GetSummaryRequest)(nil),     // 5: lapgate.inspect.v1.GetSummaryRequest
+	(*GetSummaryResponse)(nil),    // 6: lapgate.inspect.v1.GetSummaryResponse
+	(*GetSeriesRequest)(nil),      // 7: lapgate.inspect.v1.GetSeriesRequest
+	(*SeriesPoint)(nil),           // 8: lapgate.inspect.v1.SeriesPoint
+	(*GetSeriesResponse)(nil),     // 9: lapgate.inspect.v1.GetSeriesResponse
+	(*GetParetoRequest)(nil),      // 10: lapgate.inspect.v1.GetParetoRequest
+	(*ParetoRow)(nil),             // 11: lapgate.inspect.v1.ParetoRow
+	(*GetParetoResponse)(nil),     // 12: lapgate.inspect.v1.GetParetoResponse
+	(*ListUnitsRequest)(nil),      // 13: lapgate.inspect.v1.ListUnitsRequest
+	(*UnitRow)(nil),               // 14: lapgate.inspect.v1.UnitRow
+	(*ListUnitsResponse)(nil),     // 15: lapgate.inspect.v1.ListUnitsResponse
+	(*WatchRequest)(nil),          // 16: lapgate.inspect.v1.WatchRequest
+	(*WatchResponse)(nil),         // 17: lapgate.inspect.v1.WatchResponse
+	(*GetLatencyRequest)(nil),     // 18: lapgate.inspect.v1.GetLatencyRequest
+	(*Latency)(nil),               // 19: lapgate.inspect.v1.Latency
+	(*GetLatencyResponse)(nil),    // 20: lapgate.inspect.v1.GetLatencyResponse
+	(*GetDefectMapRequest)(nil),   // 21: lapgate.inspect.v1.GetDefectMapRequest
+	(*MapPoint)(nil),              // 22: lapgate.inspect.v1.MapPoint
+	(*MapZone)(nil),               // 23: lapgate.inspect.v1.MapZone
+	(*GetDefectMapResponse)(nil),  // 24: lapgate.inspect.v1.GetDefectMapResponse
+	nil,                           // 25: lapgate.inspect.v1.Yield.GroupEntry
+	(Purpose)(0),                  // 26: lapgate.inspect.v1.Purpose
+	(*timestamppb.Timestamp)(nil), // 27: google.protobuf.Timestamp
+	(Verdict)(0),                  // 28: lapgate.inspect.v1.Verdict
+	(*Identity)(nil),              // 29: lapgate.inspect.v1.Identity
+	(*Alarm)(nil),                 // 30: lapgate.inspect.v1.Alarm
 }
 var file_inspectpb_yield_proto_depIdxs = []int32{
-	21, // 0: lapgate.inspect.v1.Filter.purpose:type_name -> lapgate.inspect.v1.Purpose
-	22, // 1: lapgate.inspect.v1.Filter.from:type_name -> google.protobuf.Timestamp
-	22, // 2: lapgate.inspect.v1.Filter.to:type_name -> google.protobuf.Timestamp
-	1,  // 3: lapgate.inspect.v1.Rate.clopper_pearson:type_name -> lapgate.inspect.v1.Interval
-	1,  // 4: lapgate.inspect.v1.Rate.wilson:type_name -> lapgate.inspect.v1.Interval
-	20, // 5: lapgate.inspect.v1.Yield.group:type_name -> lapgate.inspect.v1.Yield.GroupEntry
-	2,  // 6: lapgate.inspect.v1.Yield.first_pass:type_name -> lapgate.inspect.v1.Rate
-	2,  // 7: lapgate.inspect.v1.Yield.final_if_holds_fail:type_name -> lapgate.inspect.v1.Rate
-	2,  // 8: lapgate.inspect.v1.Yield.final_if_holds_pass:type_name -> lapgate.inspect.v1.Rate
-	2,  // 9: lapgate.inspect.v1.Yield.pass_by_retest:type_name -> lapgate.inspect.v1.Rate
-	0,  // 10: lapgate.inspect.v1.GetSummaryRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	3,  // 11: lapgate.inspect.v1.GetSummaryResponse.total:type_name -> lapgate.inspect.v1.Yield
-	3,  // 12: lapgate.inspect.v1.GetSummaryResponse.groups:type_name -> lapgate.inspect.v1.Yield
-	0,  // 13: lapgate.inspect.v1.GetSeriesRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	22, // 14: lapgate.inspect.v1.SeriesPoint.start:type_name -> google.protobuf.Timestamp
-	2,  // 15: lapgate.inspect.v1.SeriesPoint.accept_rate:type_name -> lapgate.inspect.v1.Rate
-	7,  // 16: lapgate.inspect.v1.GetSeriesResponse.points:type_name -> lapgate.inspect.v1.SeriesPoint
-	0,  // 17: lapgate.inspect.v1.GetParetoRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	23, // 18: lapgate.inspect.v1.ParetoRow.verdict:type_name -> lapgate.inspect.v1.Verdict
-	10, // 19: lapgate.inspect.v1.GetParetoResponse.rows:type_name -> lapgate.inspect.v1.ParetoRow
-	0,  // 20: lapgate.inspect.v1.ListUnitsRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	23, // 21: lapgate.inspect.v1.ListUnitsRequest.verdict:type_name -> lapgate.inspect.v1.Verdict
-	24, // 22: lapgate.inspect.v1.UnitRow.identity:type_name -> lapgate.inspect.v1.Identity
-	23, // 23: lapgate.inspect.v1.UnitRow.verdict:type_name -> lapgate.inspect.v1.Verdict
-	22, // 24: lapgate.inspect.v1.UnitRow.captured:type_name -> google.protobuf.Timestamp
-	22, // 25: lapgate.inspect.v1.UnitRow.judged:type_name -> google.protobuf.Timestamp
-	13, // 26: lapgate.inspect.v1.ListUnitsResponse.units:type_name -> lapgate.inspect.v1.UnitRow
-	0,  // 27: lapgate.inspect.v1.WatchRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	13, // 28: lapgate.inspect.v1.WatchResponse.unit:type_name -> lapgate.inspect.v1.UnitRow
-	0,  // 29: lapgate.inspect.v1.GetLatencyRequest.filter:type_name -> lapgate.inspect.v1.Filter
-	18, // 30: lapgate.inspect.v1.GetLatencyResponse.stations:type_name -> lapgate.inspect.v1.Latency
-	4,  // 31: lapgate.inspect.v1.YieldService.GetSummary:input_type -> lapgate.inspect.v1.GetSummaryRequest
-	6,  // 32: lapgate.inspect.v1.YieldService.GetSeries:input_type -> lapgate.inspect.v1.GetSeriesRequest
-	9,  // 33: lapgate.inspect.v1.YieldService.GetPareto:input_type -> lapgate.inspect.v1.GetParetoRequest
-	12, // 34: lapgate.inspect.v1.YieldService.ListUnits:input_type -> lapgate.inspect.v1.ListUnitsRequest
-	15, // 35: lapgate.inspect.v1.YieldService.Watch:input_type -> lapgate.inspect.v1.WatchRequest
-	17, // 36: lapgate.inspect.v1.YieldService.GetLatency:input_type -> lapgate.inspect.v1.GetLatencyRequest
-	5,  // 37: lapgate.inspect.v1.YieldService.GetSummary:output_type -> lapgate.inspect.v1.GetSummaryResponse
-	8,  // 38: lapgate.inspect.v1.YieldService.GetSeries:output_type -> lapgate.inspect.v1.GetSeriesResponse
-	11, // 39: lapgate.inspect.v1.YieldService.GetPareto:output_type -> lapgate.inspect.v1.GetParetoResponse
-	14, // 40: lapgate.inspect.v1.YieldService.ListUnits:output_type -> lapgate.inspect.v1.ListUnitsResponse
-	16, // 41: lapgate.inspect.v1.YieldService.Watch:output_type -> lapgate.inspect.v1.WatchResponse
-	19, // 42: lapgate.inspect.v1.YieldService.GetLatency:output_type -> lapgate.inspect.v1.GetLatencyResponse
-	37, // [37:43] is the sub-list for method output_type
-	31, // [31:37] is the sub-list for method input_type
-	31, // [31:31] is the sub-list for extension type_name
-	31, // [31:31] is the sub-list for extension extendee
-	0,  // [0:31] is the sub-list for field type_name
+	26, // 0: lapgate.inspect.v1.Filter.purpose:type_name -> lapgate.inspect.v1.Purpose
+	27, // 1: lapgate.inspect.v1.Filter.from:type_name -> google.protobuf.Timestamp
+	27, // 2: lapgate.inspect.v1.Filter.to:type_name -> google.protobuf.Timestamp
+	2,  // 3: lapgate.inspect.v1.Rate.clopper_pearson:type_name -> lapgate.inspect.v1.Interval
+	2,  // 4: lapgate.inspect.v1.Rate.wilson:type_name -> lapgate.inspect.v1.Interval
+	25, // 5: lapgate.inspect.v1.Yield.group:type_name -> lapgate.inspect.v1.Yield.GroupEntry
+	3,  // 6: lapgate.inspect.v1.Yield.first_pass:type_name -> lapgate.inspect.v1.Rate
+	3,  // 7: lapgate.inspect.v1.Yield.final_if_holds_fail:type_name -> lapgate.inspect.v1.Rate
+	3,  // 8: lapgate.inspect.v1.Yield.final_if_holds_pass:type_name -> lapgate.inspect.v1.Rate
+	3,  // 9: lapgate.inspect.v1.Yield.pass_by_retest:type_name -> lapgate.inspect.v1.Rate
+	3,  // 10: lapgate.inspect.v1.Yield.permanent:type_name -> lapgate.inspect.v1.Rate
+	1,  // 11: lapgate.inspect.v1.GetSummaryRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	4,  // 12: lapgate.inspect.v1.GetSummaryResponse.total:type_name -> lapgate.inspect.v1.Yield
+	4,  // 13: lapgate.inspect.v1.GetSummaryResponse.groups:type_name -> lapgate.inspect.v1.Yield
+	1,  // 14: lapgate.inspect.v1.GetSeriesRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	27, // 15: lapgate.inspect.v1.SeriesPoint.start:type_name -> google.protobuf.Timestamp
+	3,  // 16: lapgate.inspect.v1.SeriesPoint.accept_rate:type_name -> lapgate.inspect.v1.Rate
+	8,  // 17: lapgate.inspect.v1.GetSeriesResponse.points:type_name -> lapgate.inspect.v1.SeriesPoint
+	1,  // 18: lapgate.inspect.v1.GetParetoRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	28, // 19: lapgate.inspect.v1.ParetoRow.verdict:type_name -> lapgate.inspect.v1.Verdict
+	11, // 20: lapgate.inspect.v1.GetParetoResponse.rows:type_name -> lapgate.inspect.v1.ParetoRow
+	1,  // 21: lapgate.inspect.v1.ListUnitsRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	28, // 22: lapgate.inspect.v1.ListUnitsRequest.verdict:type_name -> lapgate.inspect.v1.Verdict
+	29, // 23: lapgate.inspect.v1.UnitRow.identity:type_name -> lapgate.inspect.v1.Identity
+	28, // 24: lapgate.inspect.v1.UnitRow.verdict:type_name -> lapgate.inspect.v1.Verdict
+	27, // 25: lapgate.inspect.v1.UnitRow.captured:type_name -> google.protobuf.Timestamp
+	27, // 26: lapgate.inspect.v1.UnitRow.judged:type_name -> google.protobuf.Timestamp
+	14, // 27: lapgate.inspect.v1.ListUnitsResponse.units:type_name -> lapgate.inspect.v1.UnitRow
+	1,  // 28: lapgate.inspect.v1.WatchRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	14, // 29: lapgate.inspect.v1.WatchResponse.unit:type_name -> lapgate.inspect.v1.UnitRow
+	30, // 30: lapgate.inspect.v1.WatchResponse.alarms:type_name -> lapgate.inspect.v1.Alarm
+	1,  // 31: lapgate.inspect.v1.GetLatencyRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	19, // 32: lapgate.inspect.v1.GetLatencyResponse.stations:type_name -> lapgate.inspect.v1.Latency
+	1,  // 33: lapgate.inspect.v1.GetDefectMapRequest.filter:type_name -> lapgate.inspect.v1.Filter
+	0,  // 34: lapgate.inspect.v1.GetDefectMapRequest.coordinates:type_name -> lapgate.inspect.v1.Coordinates
+	28, // 35: lapgate.inspect.v1.MapPoint.verdict:type_name -> lapgate.inspect.v1.Verdict
+	22, // 36: lapgate.inspect.v1.GetDefectMapResponse.points:type_name -> lapgate.inspect.v1.MapPoint
+	23, // 37: lapgate.inspect.v1.GetDefectMapResponse.zones:type_name -> lapgate.inspect.v1.MapZone
+	5,  // 38: lapgate.inspect.v1.YieldService.GetSummary:input_type -> lapgate.inspect.v1.GetSummaryRequest
+	7,  // 39: lapgate.inspect.v1.YieldService.GetSeries:input_type -> lapgate.inspect.v1.GetSeriesRequest
+	10, // 40: lapgate.inspect.v1.YieldService.GetPareto:input_type -> lapgate.inspect.v1.GetParetoRequest
+	13, // 41: lapgate.inspect.v1.YieldService.ListUnits:input_type -> lapgate.inspect.v1.ListUnitsRequest
+	16, // 42: lapgate.inspect.v1.YieldService.Watch:input_type -> lapgate.inspect.v1.WatchRequest
+	18, // 43: lapgate.inspect.v1.YieldService.GetLatency:input_type -> lapgate.inspect.v1.GetLatencyRequest
+	21, // 44: lapgate.inspect.v1.YieldService.GetDefectMap:input_type -> lapgate.inspect.v1.GetDefectMapRequest
+	6,  // 45: lapgate.inspect.v1.YieldService.GetSummary:output_type -> lapgate.inspect.v1.GetSummaryResponse
+	9,  // 46: lapgate.inspect.v1.YieldService.GetSeries:output_type -> lapgate.inspect.v1.GetSeriesResponse
+	12, // 47: lapgate.inspect.v1.YieldService.GetPareto:output_type -> lapgate.inspect.v1.GetParetoResponse
+	15, // 48: lapgate.inspect.v1.YieldService.ListUnits:output_type -> lapgate.inspect.v1.ListUnitsResponse
+	17, // 49: lapgate.inspect.v1.YieldService.Watch:output_type -> lapgate.inspect.v1.WatchResponse
+	20, // 50: lapgate.inspect.v1.YieldService.GetLatency:output_type -> lapgate.inspect.v1.GetLatencyResponse
+	24, // 51: lapgate.inspect.v1.YieldService.GetDefectMap:output_type -> lapgate.inspect.v1.GetDefectMapResponse
+	45, // [45:52] is the sub-list for method output_type
+	38, // [38:45] is the sub-list for method input_type
+	38, // [38:38] is the sub-list for extension type_name
+	38, // [38:38] is the sub-list for extension extendee
+	0,  // [0:38] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_yield_proto_init() }
@@ -1672,18 +2186,20 @@ func file_inspectpb_yield_proto_init() {
 	}
 	file_inspectpb_evidence_proto_init()
 	file_inspectpb_frame_proto_init()
+	file_inspectpb_inspection_proto_init()
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_yield_proto_rawDesc), len(file_inspectpb_yield_proto_rawDesc)),
-			NumEnums:      0,
-			NumMessages:   21,
+			NumEnums:      1,
+			NumMessages:   25,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
 		GoTypes:           file_inspectpb_yield_proto_goTypes,
 		DependencyIndexes: file_inspectpb_yield_proto_depIdxs,
+		EnumInfos:         file_inspectpb_yield_proto_enumTypes,
 		MessageInfos:      file_inspectpb_yield_proto_msgTypes,
 	}.Build()
 	File_inspectpb_yield_proto = out.File

@@ -19,12 +19,13 @@ import (
 const _ = grpc.SupportPackageIsVersion9
 
 const (
-	YieldService_GetSummary_FullMethodName = "/lapgate.inspect.v1.YieldService/GetSummary"
-	YieldService_GetSeries_FullMethodName  = "/lapgate.inspect.v1.YieldService/GetSeries"
-	YieldService_GetPareto_FullMethodName  = "/lapgate.inspect.v1.YieldService/GetPareto"
-	YieldService_ListUnits_FullMethodName  = "/lapgate.inspect.v1.YieldService/ListUnits"
-	YieldService_Watch_FullMethodName      = "/lapgate.inspect.v1.YieldService/Watch"
-	YieldService_GetLatency_FullMethodName = "/lapgate.inspect.v1.YieldService/GetLatency"
+	YieldService_GetSummary_FullMethodName   = "/lapgate.inspect.v1.YieldService/GetSummary"
+	YieldService_GetSeries_FullMethodName    = "/lapgate.inspect.v1.YieldService/GetSeries"
+	YieldService_GetPareto_FullMethodName    = "/lapgate.inspect.v1.YieldService/GetPareto"
+	YieldService_ListUnits_FullMethodName    = "/lapgate.inspect.v1.YieldService/ListUnits"
+	YieldService_Watch_FullMethodName        = "/lapgate.inspect.v1.YieldService/Watch"
+	YieldService_GetLatency_FullMethodName   = "/lapgate.inspect.v1.YieldService/GetLatency"
+	YieldService_GetDefectMap_FullMethodName = "/lapgate.inspect.v1.YieldService/GetDefectMap"
 )
 
 // YieldServiceClient is the client API for YieldService service.
@@ -46,6 +47,8 @@ type YieldServiceClient interface {
 	Watch(ctx context.Context, in *WatchRequest, opts ...grpc.CallOption) (grpc.ServerStreamingClient[WatchResponse], error)
 	// GetLatency returns how long verdicts took, by line and station.
 	GetLatency(ctx context.Context, in *GetLatencyRequest, opts ...grpc.CallOption) (*GetLatencyResponse, error)
+	// GetDefectMap returns where the defects of many units lie, each unit by its last showing.
+	GetDefectMap(ctx context.Context, in *GetDefectMapRequest, opts ...grpc.CallOption) (*GetDefectMapResponse, error)
 }
 
 type yieldServiceClient struct {
@@ -125,6 +128,16 @@ func (c *yieldServiceClient) GetLatency(ctx context.Context, in *GetLatencyReque
 	return out, nil
 }
 
+func (c *yieldServiceClient) GetDefectMap(ctx context.Context, in *GetDefectMapRequest, opts ...grpc.CallOption) (*GetDefectMapResponse, error) {
+	cOpts := append([]grpc.CallOption{grpc.StaticMethod()}, opts...)
+	out := new(GetDefectMapResponse)
+	err := c.cc.Invoke(ctx, YieldService_GetDefectMap_FullMethodName, in, out, cOpts...)
+	if err != nil {
+		return nil, err
+	}
+	return out, nil
+}
+
 // YieldServiceServer is the server API for YieldService service.
 // All implementations must embed UnimplementedYieldServiceServer
 // for forward compatibility.
@@ -144,6 +157,8 @@ type YieldServiceServer interface {
 	Watch(*WatchRequest, grpc.ServerStreamingServer[WatchResponse]) error
 	// GetLatency returns how long verdicts took, by line and station.
 	GetLatency(context.Context, *GetLatencyRequest) (*GetLatencyResponse, error)
+	// GetDefectMap returns where the defects of many units lie, each unit by its last showing.
+	GetDefectMap(context.Context, *GetDefectMapRequest) (*GetDefectMapResponse, error)
 	mustEmbedUnimplementedYieldServiceServer()
 }
 
@@ -171,6 +186,9 @@ func (UnimplementedYieldServiceServer) Watch(*WatchRequest, grpc.ServerStreaming
 }
 func (UnimplementedYieldServiceServer) GetLatency(context.Context, *GetLatencyRequest) (*GetLatencyResponse, error) {
 	return nil, status.Error(codes.Unimplemented, "method GetLatency not implemented")
+}
+func (UnimplementedYieldServiceServer) GetDefectMap(context.Context, *GetDefectMapRequest) (*GetDefectMapResponse, error) {
+	return nil, status.Error(codes.Unimplemented, "method GetDefectMap not implemented")
 }
 func (UnimplementedYieldServiceServer) mustEmbedUnimplementedYieldServiceServer() {}
 func (UnimplementedYieldServiceServer) testEmbeddedByValue()                      {}
@@ -294,6 +312,24 @@ func _YieldService_GetLatency_Handler(srv interface{}, ctx context.Context, dec 
 	return interceptor(ctx, in, info, handler)
 }
 
+func _YieldService_GetDefectMap_Handler(srv interface{}, ctx context.Context, dec func(interface{}) error, interceptor grpc.UnaryServerInterceptor) (interface{}, error) {
+	in := new(GetDefectMapRequest)
+	if err := dec(in); err != nil {
+		return nil, err
+	}
+	if interceptor == nil {
+		return srv.(YieldServiceServer).GetDefectMap(ctx, in)
+	}
+	info := &grpc.UnaryServerInfo{
+		Server:     srv,
+		FullMethod: YieldService_GetDefectMap_FullMethodName,
+	}
+	handler := func(ctx context.Context, req interface{}) (interface{}, error) {
+		return srv.(YieldServiceServer).GetDefectMap(ctx, req.(*GetDefectMapRequest))
+	}
+	return interceptor(ctx, in, info, handler)
+}
+
 // YieldService_ServiceDesc is the grpc.ServiceDesc for YieldService service.
 // It's only intended for direct use with grpc.RegisterService,
 // and not to be introspected or modified (even as a copy)
@@ -320,6 +356,10 @@ var YieldService_ServiceDesc = grpc.ServiceDesc{
 		{
 			MethodName: "GetLatency",
 			Handler:    _YieldService_GetLatency_Handler,
+		},
+		{
+			MethodName: "GetDefectMap",
+			Handler:    _YieldService_GetDefectMap_Handler,
 		},
 	},
 	Streams: []grpc.StreamDesc{

@@ -36,14 +36,16 @@ func ToMeasurements(list []*Measurement) []pipeline.Measurement {
 // FromProofs encodes a list.
 func FromProofs(list []pipeline.Proof) []*Proof {
 	return each(list, func(p pipeline.Proof) *Proof {
-		return &Proof{Name: p.Name, Value: p.Value, Low: p.Low, High: p.High, Unit: p.Unit, Ok: p.OK, Reason: p.Reason}
+		return &Proof{Name: p.Name, Value: p.Value, Low: p.Low, High: p.High, Unit: p.Unit, Ok: p.OK, Reason: p.Reason,
+			WarnLow: p.WarnLow, WarnHigh: p.WarnHigh, Warning: p.Warning}
 	})
 }
 
 // ToProofs decodes a list.
 func ToProofs(list []*Proof) []pipeline.Proof {
 	return each(list, func(p *Proof) pipeline.Proof {
-		return pipeline.Proof{Name: p.GetName(), Value: p.GetValue(), Low: p.GetLow(), High: p.GetHigh(), Unit: p.GetUnit(), OK: p.GetOk(), Reason: p.GetReason()}
+		return pipeline.Proof{Name: p.GetName(), Value: p.GetValue(), Low: p.GetLow(), High: p.GetHigh(), Unit: p.GetUnit(), OK: p.GetOk(), Reason: p.GetReason(),
+			WarnLow: p.GetWarnLow(), WarnHigh: p.GetWarnHigh(), Warning: p.GetWarning()}
 	})
 }
 

@@ -738,19 +738,118 @@ func (x *Distortion) GetNormPx() float64 {
 	return 0
 }
 
+// Annulus maps the ring that a camera sees of a round part, looking along its axis, to
+// the part's surface: a bore, a rim or a cone. Heights lie evenly along the ring's radius.
+type Annulus struct {
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	CentreX float64                `protobuf:"fixed64,1,opt,name=centre_x,json=centreX,proto3" json:"centre_x,omitempty"`
+	CentreY float64                `protobuf:"fixed64,2,opt,name=centre_y,json=centreY,proto3" json:"centre_y,omitempty"`
+	// Radii of the ring's edges in px.
+	InnerPx float64 `protobuf:"fixed64,3,opt,name=inner_px,json=innerPx,proto3" json:"inner_px,omitempty"`
+	OuterPx float64 `protobuf:"fixed64,4,opt,name=outer_px,json=outerPx,proto3" json:"outer_px,omitempty"`
+	// Radii of the part at those edges in um; equal for a cylinder.
+	InnerUm float64 `protobuf:"fixed64,5,opt,name=inner_um,json=innerUm,proto3" json:"inner_um,omitempty"`
+	OuterUm float64 `protobuf:"fixed64,6,opt,name=outer_um,json=outerUm,proto3" json:"outer_um,omitempty"`
+	// Length along the surface from one edge to the other in um.
+	SlantUm       float64 `protobuf:"fixed64,7,opt,name=slant_um,json=slantUm,proto3" json:"slant_um,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Annulus) Reset() {
+	*x = Annulus{}
+	mi := &file_stagepb_stage_proto_msgTypes[9]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Annulus) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Annulus) ProtoMessage() {}
+
+func (x *Annulus) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[9]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Annulus.ProtoReflect.Descriptor instead.
+func (*Annulus) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{9}
+}
+
+func (x *Annulus) GetCentreX() float64 {
+	if x != nil {
+		return x.CentreX
+	}
+	return 0
+}
+
+func (x *Annulus) GetCentreY() float64 {
+	if x != nil {
+		return x.CentreY
+	}
+	return 0
+}
+
+func (x *Annulus) GetInnerPx() float64 {
+	if x != nil {
+		return x.InnerPx
+	}
+	return 0
+}
+
+func (x *Annulus) GetOuterPx() float64 {
+	if x != nil {
+		return x.OuterPx
+	}
+	return 0
+}
+
+func (x *Annulus) GetInnerUm() float64 {
+	if x != nil {
+		return x.InnerUm
+	}
+	return 0
+}
+
+func (x *Annulus) GetOuterUm() float64 {
+	if x != nil {
+		return x.OuterUm
+	}
+	return 0
+}
+
+func (x *Annulus) GetSlantUm() float64 {
+	if x != nil {
+		return x.SlantUm
+	}
+	return 0
+}
+
 // Geometry maps pixels to the part.
 type Geometry struct {
 	state  protoimpl.MessageState `protogen:"open.v1"`
 	Planar *Planar                `protobuf:"bytes,1,opt,name=planar,proto3" json:"planar,omitempty"`
 	// Absent = none; planar is then that of the pixels as seen.
-	Distortion    *Distortion `protobuf:"bytes,2,opt,name=distortion,proto3" json:"distortion,omitempty"`
+	Distortion *Distortion `protobuf:"bytes,2,opt,name=distortion,proto3" json:"distortion,omitempty"`
+	// Not absent: the part is round, and planar and distortion say nothing.
+	Annulus       *Annulus `protobuf:"bytes,3,opt,name=annulus,proto3" json:"annulus,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Geometry) Reset() {
 	*x = Geometry{}
-	mi := &file_stagepb_stage_proto_msgTypes[9]
+	mi := &file_stagepb_stage_proto_msgTypes[10]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -762,7 +861,7 @@ func (x *Geometry) String() string {
 func (*Geometry) ProtoMessage() {}
 
 func (x *Geometry) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[9]
+	mi := &file_stagepb_stage_proto_msgTypes[10]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -775,7 +874,7 @@ func (x *Geometry) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Geometry.ProtoReflect.Descriptor instead.
 func (*Geometry) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{9}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{10}
 }
 
 func (x *Geometry) GetPlanar() *Planar {
@@ -788,6 +887,13 @@ func (x *Geometry) GetPlanar() *Planar {
 func (x *Geometry) GetDistortion() *Distortion {
 	if x != nil {
 		return x.Distortion
+	}
+	return nil
+}
+
+func (x *Geometry) GetAnnulus() *Annulus {
+	if x != nil {
+		return x.Annulus
 	}
 	return nil
 }
@@ -809,7 +915,7 @@ type OpenRequest struct {
 
 func (x *OpenRequest) Reset() {
 	*x = OpenRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[10]
+	mi := &file_stagepb_stage_proto_msgTypes[11]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -821,7 +927,7 @@ func (x *OpenRequest) String() string {
 func (*OpenRequest) ProtoMessage() {}
 
 func (x *OpenRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[10]
+	mi := &file_stagepb_stage_proto_msgTypes[11]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -834,7 +940,7 @@ func (x *OpenRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use OpenRequest.ProtoReflect.Descriptor instead.
 func (*OpenRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{10}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{11}
 }
 
 func (x *OpenRequest) GetSettingsJson() string {
@@ -893,7 +999,7 @@ type OpenResponse struct {
 
 func (x *OpenResponse) Reset() {
 	*x = OpenResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[11]
+	mi := &file_stagepb_stage_proto_msgTypes[12]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -905,7 +1011,7 @@ func (x *OpenResponse) String() string {
 func (*OpenResponse) ProtoMessage() {}
 
 func (x *OpenResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[11]
+	mi := &file_stagepb_stage_proto_msgTypes[12]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -918,7 +1024,7 @@ func (x *OpenResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use OpenResponse.ProtoReflect.Descriptor instead.
 func (*OpenResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{11}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{12}
 }
 
 func (x *OpenResponse) GetHandle() uint64 {
@@ -957,7 +1063,7 @@ type SharedBytes struct {
 
 func (x *SharedBytes) Reset() {
 	*x = SharedBytes{}
-	mi := &file_stagepb_stage_proto_msgTypes[12]
+	mi := &file_stagepb_stage_proto_msgTypes[13]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -969,7 +1075,7 @@ func (x *SharedBytes) String() string {
 func (*SharedBytes) ProtoMessage() {}
 
 func (x *SharedBytes) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[12]
+	mi := &file_stagepb_stage_proto_msgTypes[13]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -982,7 +1088,7 @@ func (x *SharedBytes) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use SharedBytes.ProtoReflect.Descriptor instead.
 func (*SharedBytes) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{12}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{13}
 }
 
 func (x *SharedBytes) GetPath() string {
@@ -1027,7 +1133,7 @@ type Pixels struct {
 
 func (x *Pixels) Reset() {
 	*x = Pixels{}
-	mi := &file_stagepb_stage_proto_msgTypes[13]
+	mi := &file_stagepb_stage_proto_msgTypes[14]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1039,7 +1145,7 @@ func (x *Pixels) String() string {
 func (*Pixels) ProtoMessage() {}
 
 func (x *Pixels) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[13]
+	mi := &file_stagepb_stage_proto_msgTypes[14]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1052,7 +1158,7 @@ func (x *Pixels) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Pixels.ProtoReflect.Descriptor instead.
 func (*Pixels) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{13}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{14}
 }
 
 func (x *Pixels) GetWhere() isPixels_Where {
@@ -1127,7 +1233,7 @@ type Frame struct {
 
 func (x *Frame) Reset() {
 	*x = Frame{}
-	mi := &file_stagepb_stage_proto_msgTypes[14]
+	mi := &file_stagepb_stage_proto_msgTypes[15]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1139,7 +1245,7 @@ func (x *Frame) String() string {
 func (*Frame) ProtoMessage() {}
 
 func (x *Frame) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[14]
+	mi := &file_stagepb_stage_proto_msgTypes[15]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1152,7 +1258,7 @@ func (x *Frame) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Frame.ProtoReflect.Descriptor instead.
 func (*Frame) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{14}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{15}
 }
 
 func (x *Frame) GetPixelFormat() uint32 {
@@ -1300,7 +1406,7 @@ type Plane struct {
 
 func (x *Plane) Reset() {
 	*x = Plane{}
-	mi := &file_stagepb_stage_proto_msgTypes[15]
+	mi := &file_stagepb_stage_proto_msgTypes[16]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1312,7 +1418,7 @@ func (x *Plane) String() string {
 func (*Plane) ProtoMessage() {}
 
 func (x *Plane) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[15]
+	mi := &file_stagepb_stage_proto_msgTypes[16]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1325,7 +1431,7 @@ func (x *Plane) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Plane.ProtoReflect.Descriptor instead.
 func (*Plane) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{15}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{16}
 }
 
 func (x *Plane) GetName() string {
@@ -1403,7 +1509,7 @@ type Mask struct {
 
 func (x *Mask) Reset() {
 	*x = Mask{}
-	mi := &file_stagepb_stage_proto_msgTypes[16]
+	mi := &file_stagepb_stage_proto_msgTypes[17]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1415,7 +1521,7 @@ func (x *Mask) String() string {
 func (*Mask) ProtoMessage() {}
 
 func (x *Mask) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[16]
+	mi := &file_stagepb_stage_proto_msgTypes[17]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1428,7 +1534,7 @@ func (x *Mask) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Mask.ProtoReflect.Descriptor instead.
 func (*Mask) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{16}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{17}
 }
 
 func (x *Mask) GetWidth() int32 {
@@ -1466,7 +1572,7 @@ type Zone struct {
 
 func (x *Zone) Reset() {
 	*x = Zone{}
-	mi := &file_stagepb_stage_proto_msgTypes[17]
+	mi := &file_stagepb_stage_proto_msgTypes[18]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1478,7 +1584,7 @@ func (x *Zone) String() string {
 func (*Zone) ProtoMessage() {}
 
 func (x *Zone) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[17]
+	mi := &file_stagepb_stage_proto_msgTypes[18]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1491,7 +1597,7 @@ func (x *Zone) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Zone.ProtoReflect.Descriptor instead.
 func (*Zone) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{17}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{18}
 }
 
 func (x *Zone) GetName() string {
@@ -1537,7 +1643,7 @@ type Region struct {
 
 func (x *Region) Reset() {
 	*x = Region{}
-	mi := &file_stagepb_stage_proto_msgTypes[18]
+	mi := &file_stagepb_stage_proto_msgTypes[19]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1549,7 +1655,7 @@ func (x *Region) String() string {
 func (*Region) ProtoMessage() {}
 
 func (x *Region) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[18]
+	mi := &file_stagepb_stage_proto_msgTypes[19]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1562,7 +1668,7 @@ func (x *Region) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Region.ProtoReflect.Descriptor instead.
 func (*Region) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{18}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{19}
 }
 
 func (x *Region) GetCentreX() float64 {
@@ -1618,7 +1724,7 @@ type DefectRef struct {
 
 func (x *DefectRef) Reset() {
 	*x = DefectRef{}
-	mi := &file_stagepb_stage_proto_msgTypes[19]
+	mi := &file_stagepb_stage_proto_msgTypes[20]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1630,7 +1736,7 @@ func (x *DefectRef) String() string {
 func (*DefectRef) ProtoMessage() {}
 
 func (x *DefectRef) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[19]
+	mi := &file_stagepb_stage_proto_msgTypes[20]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1643,7 +1749,7 @@ func (x *DefectRef) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use DefectRef.ProtoReflect.Descriptor instead.
 func (*DefectRef) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{19}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{20}
 }
 
 func (x *DefectRef) GetView() string {
@@ -1700,13 +1806,15 @@ type Defect struct {
 	PartAngleKnown            bool                   `protobuf:"varint,34,opt,name=part_angle_known,json=partAngleKnown,proto3" json:"part_angle_known,omitempty"`
 	DiameterFluxUm            float64                `protobuf:"fixed64,35,opt,name=diameter_flux_um,json=diameterFluxUm,proto3" json:"diameter_flux_um,omitempty"`
 	DiameterFluxUncertaintyUm float64                `protobuf:"fixed64,36,opt,name=diameter_flux_uncertainty_um,json=diameterFluxUncertaintyUm,proto3" json:"diameter_flux_uncertainty_um,omitempty"`
-	unknownFields             protoimpl.UnknownFields
-	sizeCache                 protoimpl.SizeCache
+	// Steepest slope against the part's own form; 0 = not measured.
+	SlopeMrad     float64 `protobuf:"fixed64,37,opt,name=slope_mrad,json=slopeMrad,proto3" json:"slope_mrad,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Defect) Reset() {
 	*x = Defect{}
-	mi := &file_stagepb_stage_proto_msgTypes[20]
+	mi := &file_stagepb_stage_proto_msgTypes[21]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1718,7 +1826,7 @@ func (x *Defect) String() string {
 func (*Defect) ProtoMessage() {}
 
 func (x *Defect) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[20]
+	mi := &file_stagepb_stage_proto_msgTypes[21]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1731,7 +1839,7 @@ func (x *Defect) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Defect.ProtoReflect.Descriptor instead.
 func (*Defect) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{20}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{21}
 }
 
 func (x *Defect) GetKind() string {
@@ -1986,6 +2094,13 @@ func (x *Defect) GetDiameterFluxUncertaintyUm() float64 {
 	return 0
 }
 
+func (x *Defect) GetSlopeMrad() float64 {
+	if x != nil {
+		return x.SlopeMrad
+	}
+	return 0
+}
+
 // Measurement is a number that the stage took.
 type Measurement struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1998,7 +2113,7 @@ type Measurement struct {
 
 func (x *Measurement) Reset() {
 	*x = Measurement{}
-	mi := &file_stagepb_stage_proto_msgTypes[21]
+	mi := &file_stagepb_stage_proto_msgTypes[22]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2010,7 +2125,7 @@ func (x *Measurement) String() string {
 func (*Measurement) ProtoMessage() {}
 
 func (x *Measurement) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[21]
+	mi := &file_stagepb_stage_proto_msgTypes[22]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2023,7 +2138,7 @@ func (x *Measurement) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Measurement.ProtoReflect.Descriptor instead.
 func (*Measurement) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{21}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{22}
 }
 
 func (x *Measurement) GetName() string {
@@ -2049,21 +2164,26 @@ func (x *Measurement) GetUnit() string {
 
 // Proof is one thing that a view must show before its defects count.
 type Proof struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Name          string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
-	Value         float64                `protobuf:"fixed64,2,opt,name=value,proto3" json:"value,omitempty"`
-	Low           float64                `protobuf:"fixed64,3,opt,name=low,proto3" json:"low,omitempty"`
-	High          float64                `protobuf:"fixed64,4,opt,name=high,proto3" json:"high,omitempty"`
-	Unit          string                 `protobuf:"bytes,5,opt,name=unit,proto3" json:"unit,omitempty"`
-	Ok            bool                   `protobuf:"varint,6,opt,name=ok,proto3" json:"ok,omitempty"`
-	Reason        string                 `protobuf:"bytes,7,opt,name=reason,proto3" json:"reason,omitempty"`
+	state  protoimpl.MessageState `protogen:"open.v1"`
+	Name   string                 `protobuf:"bytes,1,opt,name=name,proto3" json:"name,omitempty"`
+	Value  float64                `protobuf:"fixed64,2,opt,name=value,proto3" json:"value,omitempty"`
+	Low    float64                `protobuf:"fixed64,3,opt,name=low,proto3" json:"low,omitempty"`
+	High   float64                `protobuf:"fixed64,4,opt,name=high,proto3" json:"high,omitempty"`
+	Unit   string                 `protobuf:"bytes,5,opt,name=unit,proto3" json:"unit,omitempty"`
+	Ok     bool                   `protobuf:"varint,6,opt,name=ok,proto3" json:"ok,omitempty"`
+	Reason string                 `protobuf:"bytes,7,opt,name=reason,proto3" json:"reason,omitempty"`
+	// Beyond these it still holds but is on its way out; both 0 = no warnings.
+	WarnLow  float64 `protobuf:"fixed64,8,opt,name=warn_low,json=warnLow,proto3" json:"warn_low,omitempty"`
+	WarnHigh float64 `protobuf:"fixed64,9,opt,name=warn_high,json=warnHigh,proto3" json:"warn_high,omitempty"`
+	// What to look at before it is a hold; empty = no warning.
+	Warning       string `protobuf:"bytes,10,opt,name=warning,proto3" json:"warning,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Proof) Reset() {
 	*x = Proof{}
-	mi := &file_stagepb_stage_proto_msgTypes[22]
+	mi := &file_stagepb_stage_proto_msgTypes[23]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2075,7 +2195,7 @@ func (x *Proof) String() string {
 func (*Proof) ProtoMessage() {}
 
 func (x *Proof) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[22]
+	mi := &file_stagepb_stage_proto_msgTypes[23]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2088,7 +2208,7 @@ func (x *Proof) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Proof.ProtoReflect.Descriptor instead.
 func (*Proof) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{22}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{23}
 }
 
 func (x *Proof) GetName() string {
@@ -2140,6 +2260,27 @@ func (x *Proof) GetReason() string {
 	return ""
 }
 
+func (x *Proof) GetWarnLow() float64 {
+	if x != nil {
+		return x.WarnLow
+	}
+	return 0
+}
+
+func (x *Proof) GetWarnHigh() float64 {
+	if x != nil {
+		return x.WarnHigh
+	}
+	return 0
+}
+
+func (x *Proof) GetWarning() string {
+	if x != nil {
+		return x.Warning
+	}
+	return ""
+}
+
 // Coverage says how much of the region was inspected well enough.
 type Coverage struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -2154,7 +2295,7 @@ type Coverage struct {
 
 func (x *Coverage) Reset() {
 	*x = Coverage{}
-	mi := &file_stagepb_stage_proto_msgTypes[23]
+	mi := &file_stagepb_stage_proto_msgTypes[24]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2166,7 +2307,7 @@ func (x *Coverage) String() string {
 func (*Coverage) ProtoMessage() {}
 
 func (x *Coverage) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[23]
+	mi := &file_stagepb_stage_proto_msgTypes[24]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2179,7 +2320,7 @@ func (x *Coverage) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Coverage.ProtoReflect.Descriptor instead.
 func (*Coverage) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{23}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
 }
 
 func (x *Coverage) GetShare() float64 {
@@ -2234,7 +2375,7 @@ type Grid struct {
 
 func (x *Grid) Reset() {
 	*x = Grid{}
-	mi := &file_stagepb_stage_proto_msgTypes[24]
+	mi := &file_stagepb_stage_proto_msgTypes[25]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2246,7 +2387,7 @@ func (x *Grid) String() string {
 func (*Grid) ProtoMessage() {}
 
 func (x *Grid) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[24]
+	mi := &file_stagepb_stage_proto_msgTypes[25]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2259,7 +2400,7 @@ func (x *Grid) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Grid.ProtoReflect.Descriptor instead.
 func (*Grid) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
 }
 
 func (x *Grid) GetCellPx() int32 {
@@ -2336,7 +2477,7 @@ type CoverageMap struct {
 
 func (x *CoverageMap) Reset() {
 	*x = CoverageMap{}
-	mi := &file_stagepb_stage_proto_msgTypes[25]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2348,7 +2489,7 @@ func (x *CoverageMap) String() string {
 func (*CoverageMap) ProtoMessage() {}
 
 func (x *CoverageMap) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[25]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2361,7 +2502,7 @@ func (x *CoverageMap) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CoverageMap.ProtoReflect.Descriptor instead.
 func (*CoverageMap) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
 }
 
 func (x *CoverageMap) GetCellPx() int32 {
@@ -2444,7 +2585,7 @@ type Item struct {
 
 func (x *Item) Reset() {
 	*x = Item{}
-	mi := &file_stagepb_stage_proto_msgTypes[26]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2456,7 +2597,7 @@ func (x *Item) String() string {
 func (*Item) ProtoMessage() {}
 
 func (x *Item) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[26]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2469,7 +2610,7 @@ func (x *Item) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Item.ProtoReflect.Descriptor instead.
 func (*Item) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
 }
 
 func (x *Item) GetView() string {
@@ -2590,7 +2731,7 @@ type RunRequest struct {
 
 func (x *RunRequest) Reset() {
 	*x = RunRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[27]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2602,7 +2743,7 @@ func (x *RunRequest) String() string {
 func (*RunRequest) ProtoMessage() {}
 
 func (x *RunRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[27]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2615,7 +2756,7 @@ func (x *RunRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunRequest.ProtoReflect.Descriptor instead.
 func (*RunRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
 }
 
 func (x *RunRequest) GetHandle() uint64 {
@@ -2668,7 +2809,7 @@ type RunResponse struct {
 
 func (x *RunResponse) Reset() {
 	*x = RunResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[28]
+	mi := &file_stagepb_stage_proto_msgTypes[29]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2680,7 +2821,7 @@ func (x *RunResponse) String() string {
 func (*RunResponse) ProtoMessage() {}
 
 func (x *RunResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[28]
+	mi := &file_stagepb_stage_proto_msgTypes[29]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2693,7 +2834,7 @@ func (x *RunResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunResponse.ProtoReflect.Descriptor instead.
 func (*RunResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{29}
 }
 
 func (x *RunResponse) GetRegion() *Region {
@@ -2804,7 +2945,7 @@ type CloseRequest struct {
 
 func (x *CloseRequest) Reset() {
 	*x = CloseRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[29]
+	mi := &file_stagepb_stage_proto_msgTypes[30]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2816,7 +2957,7 @@ func (x *CloseRequest) String() string {
 func (*CloseRequest) ProtoMessage() {}
 
 func (x *CloseRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[29]
+	mi := &file_stagepb_stage_proto_msgTypes[30]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2829,7 +2970,7 @@ func (x *CloseRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseRequest.ProtoReflect.Descriptor instead.
 func (*CloseRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{29}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{30}
 }
 
 func (x *CloseRequest) GetHandle() uint64 {
@@ -2848,7 +2989,7 @@ type CloseResponse struct {
 
 func (x *CloseResponse) Reset() {
 	*x = CloseResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[30]
+	mi := &file_stagepb_stage_proto_msgTypes[31]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2860,7 +3001,7 @@ func (x *CloseResponse) String() string {
 func (*CloseResponse) ProtoMessage() {}
 
 func (x *CloseResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[30]
+	mi := &file_stagepb_stage_proto_msgTypes[31]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2873,7 +3014,7 @@ func (x *CloseResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseResponse.ProtoReflect.Descriptor instead.
 func (*CloseResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{30}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{31}
 }
 
 var File_stagepb_stage_proto protoreflect.FileDescriptor
@@ -2935,12 +3076,21 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x02k2\x18\x02 \x01(\x01R\x02k2\x12\x19\n" +
 	"\bcentre_x\x18\x03 \x01(\x01R\acentreX\x12\x19\n" +
 	"\bcentre_y\x18\x04 \x01(\x01R\acentreY\x12\x17\n" +
-	"\anorm_px\x18\x05 \x01(\x01R\x06normPx\"z\n" +
+	"\anorm_px\x18\x05 \x01(\x01R\x06normPx\"\xc6\x01\n" +
+	"\aAnnulus\x12\x19\n" +
+	"\bcentre_x\x18\x01 \x01(\x01R\acentreX\x12\x19\n" +
+	"\bcentre_y\x18\x02 \x01(\x01R\acentreY\x12\x19\n" +
+	"\binner_px\x18\x03 \x01(\x01R\ainnerPx\x12\x19\n" +
+	"\bouter_px\x18\x04 \x01(\x01R\aouterPx\x12\x19\n" +
+	"\binner_um\x18\x05 \x01(\x01R\ainnerUm\x12\x19\n" +
+	"\bouter_um\x18\x06 \x01(\x01R\aouterUm\x12\x19\n" +
+	"\bslant_um\x18\a \x01(\x01R\aslantUm\"\xaf\x01\n" +
 	"\bGeometry\x120\n" +
 	"\x06planar\x18\x01 \x01(\v2\x18.lapgate.stage.v1.PlanarR\x06planar\x12<\n" +
 	"\n" +
 	"distortion\x18\x02 \x01(\v2\x1c.lapgate.stage.v1.DistortionR\n" +
-	"distortion\"\xee\x03\n" +
+	"distortion\x123\n" +
+	"\aannulus\x18\x03 \x01(\v2\x19.lapgate.stage.v1.AnnulusR\aannulus\"\xee\x03\n" +
 	"\vOpenRequest\x12#\n" +
 	"\rsettings_json\x18\x01 \x01(\tR\fsettingsJson\x12\x12\n" +
 	"\x04view\x18\x02 \x01(\tR\x04view\x12?\n" +
@@ -3025,7 +3175,7 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x06height\x18\x06 \x01(\x05R\x06height\"/\n" +
 	"\tDefectRef\x12\x12\n" +
 	"\x04view\x18\x01 \x01(\tR\x04view\x12\x0e\n" +
-	"\x02id\x18\x02 \x01(\x05R\x02id\"\xda\a\n" +
+	"\x02id\x18\x02 \x01(\x05R\x02id\"\xf9\a\n" +
 	"\x06Defect\x12\x12\n" +
 	"\x04kind\x18\x01 \x01(\tR\x04kind\x12\x11\n" +
 	"\x04x_px\x18\x02 \x01(\x01R\x03xPx\x12\x11\n" +
@@ -3067,11 +3217,13 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\tpart_v_um\x18! \x01(\x01R\apartVUm\x12(\n" +
 	"\x10part_angle_known\x18\" \x01(\bR\x0epartAngleKnown\x12(\n" +
 	"\x10diameter_flux_um\x18# \x01(\x01R\x0ediameterFluxUm\x12?\n" +
-	"\x1cdiameter_flux_uncertainty_um\x18$ \x01(\x01R\x19diameterFluxUncertaintyUm\"K\n" +
+	"\x1cdiameter_flux_uncertainty_um\x18$ \x01(\x01R\x19diameterFluxUncertaintyUm\x12\x1d\n" +
+	"\n" +
+	"slope_mrad\x18% \x01(\x01R\tslopeMrad\"K\n" +
 	"\vMeasurement\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x12\n" +
-	"\x04unit\x18\x03 \x01(\tR\x04unit\"\x93\x01\n" +
+	"\x04unit\x18\x03 \x01(\tR\x04unit\"\xe5\x01\n" +
 	"\x05Proof\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x14\n" +
 	"\x05value\x18\x02 \x01(\x01R\x05value\x12\x10\n" +
@@ -3079,7 +3231,11 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x04high\x18\x04 \x01(\x01R\x04high\x12\x12\n" +
 	"\x04unit\x18\x05 \x01(\tR\x04unit\x12\x0e\n" +
 	"\x02ok\x18\x06 \x01(\bR\x02ok\x12\x16\n" +
-	"\x06reason\x18\a \x01(\tR\x06reason\"\x96\x01\n" +
+	"\x06reason\x18\a \x01(\tR\x06reason\x12\x19\n" +
+	"\bwarn_low\x18\b \x01(\x01R\awarnLow\x12\x1b\n" +
+	"\twarn_high\x18\t \x01(\x01R\bwarnHigh\x12\x18\n" +
+	"\awarning\x18\n" +
+	" \x01(\tR\awarning\"\x96\x01\n" +
 	"\bCoverage\x12\x14\n" +
 	"\x05share\x18\x01 \x01(\x01R\x05share\x12\x1e\n" +
 	"\n" +
@@ -3177,7 +3333,7 @@ func file_stagepb_stage_proto_rawDescGZIP() []byte {
 }
 
 var file_stagepb_stage_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 34)
+var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 35)
 var file_stagepb_stage_proto_goTypes = []any{
 	(Scope)(0),                    // 0: lapgate.stage.v1.Scope
 	(*DescribeRequest)(nil),       // 1: lapgate.stage.v1.DescribeRequest
@@ -3189,93 +3345,95 @@ var file_stagepb_stage_proto_goTypes = []any{
 	(*Calibration)(nil),           // 7: lapgate.stage.v1.Calibration
 	(*Planar)(nil),                // 8: lapgate.stage.v1.Planar
 	(*Distortion)(nil),            // 9: lapgate.stage.v1.Distortion
-	(*Geometry)(nil),              // 10: lapgate.stage.v1.Geometry
-	(*OpenRequest)(nil),           // 11: lapgate.stage.v1.OpenRequest
-	(*OpenResponse)(nil),          // 12: lapgate.stage.v1.OpenResponse
-	(*SharedBytes)(nil),           // 13: lapgate.stage.v1.SharedBytes
-	(*Pixels)(nil),                // 14: lapgate.stage.v1.Pixels
-	(*Frame)(nil),                 // 15: lapgate.stage.v1.Frame
-	(*Plane)(nil),                 // 16: lapgate.stage.v1.Plane
-	(*Mask)(nil),                  // 17: lapgate.stage.v1.Mask
-	(*Zone)(nil),                  // 18: lapgate.stage.v1.Zone
-	(*Region)(nil),                // 19: lapgate.stage.v1.Region
-	(*DefectRef)(nil),             // 20: lapgate.stage.v1.DefectRef
-	(*Defect)(nil),                // 21: lapgate.stage.v1.Defect
-	(*Measurement)(nil),           // 22: lapgate.stage.v1.Measurement
-	(*Proof)(nil),                 // 23: lapgate.stage.v1.Proof
-	(*Coverage)(nil),              // 24: lapgate.stage.v1.Coverage
-	(*Grid)(nil),                  // 25: lapgate.stage.v1.Grid
-	(*CoverageMap)(nil),           // 26: lapgate.stage.v1.CoverageMap
-	(*Item)(nil),                  // 27: lapgate.stage.v1.Item
-	(*RunRequest)(nil),            // 28: lapgate.stage.v1.RunRequest
-	(*RunResponse)(nil),           // 29: lapgate.stage.v1.RunResponse
-	(*CloseRequest)(nil),          // 30: lapgate.stage.v1.CloseRequest
-	(*CloseResponse)(nil),         // 31: lapgate.stage.v1.CloseResponse
-	nil,                           // 32: lapgate.stage.v1.OpenRequest.FilesEntry
-	nil,                           // 33: lapgate.stage.v1.OpenRequest.CalibrationsEntry
-	nil,                           // 34: lapgate.stage.v1.Frame.TagsEntry
+	(*Annulus)(nil),               // 10: lapgate.stage.v1.Annulus
+	(*Geometry)(nil),              // 11: lapgate.stage.v1.Geometry
+	(*OpenRequest)(nil),           // 12: lapgate.stage.v1.OpenRequest
+	(*OpenResponse)(nil),          // 13: lapgate.stage.v1.OpenResponse
+	(*SharedBytes)(nil),           // 14: lapgate.stage.v1.SharedBytes
+	(*Pixels)(nil),                // 15: lapgate.stage.v1.Pixels
+	(*Frame)(nil),                 // 16: lapgate.stage.v1.Frame
+	(*Plane)(nil),                 // 17: lapgate.stage.v1.Plane
+	(*Mask)(nil),                  // 18: lapgate.stage.v1.Mask
+	(*Zone)(nil),                  // 19: lapgate.stage.v1.Zone
+	(*Region)(nil),                // 20: lapgate.stage.v1.Region
+	(*DefectRef)(nil),             // 21: lapgate.stage.v1.DefectRef
+	(*Defect)(nil),                // 22: lapgate.stage.v1.Defect
+	(*Measurement)(nil),           // 23: lapgate.stage.v1.Measurement
+	(*Proof)(nil),                 // 24: lapgate.stage.v1.Proof
+	(*Coverage)(nil),              // 25: lapgate.stage.v1.Coverage
+	(*Grid)(nil),                  // 26: lapgate.stage.v1.Grid
+	(*CoverageMap)(nil),           // 27: lapgate.stage.v1.CoverageMap
+	(*Item)(nil),                  // 28: lapgate.stage.v1.Item
+	(*RunRequest)(nil),            // 29: lapgate.stage.v1.RunRequest
+	(*RunResponse)(nil),           // 30: lapgate.stage.v1.RunResponse
+	(*CloseRequest)(nil),          // 31: lapgate.stage.v1.CloseRequest
+	(*CloseResponse)(nil),         // 32: lapgate.stage.v1.CloseResponse
+	nil,                           // 33: lapgate.stage.v1.OpenRequest.FilesEntry
+	nil,                           // 34: lapgate.stage.v1.OpenRequest.CalibrationsEntry
+	nil,                           // 35: lapgate.stage.v1.Frame.TagsEntry
 }
 var file_stagepb_stage_proto_depIdxs = []int32{
 	0,  // 0: lapgate.stage.v1.DescribeResponse.scope:type_name -> lapgate.stage.v1.Scope
 	4,  // 1: lapgate.stage.v1.CheckSettingsResponse.problems:type_name -> lapgate.stage.v1.SettingProblem
-	16, // 2: lapgate.stage.v1.Calibration.dark:type_name -> lapgate.stage.v1.Plane
-	16, // 3: lapgate.stage.v1.Calibration.stray:type_name -> lapgate.stage.v1.Plane
-	16, // 4: lapgate.stage.v1.Calibration.response:type_name -> lapgate.stage.v1.Plane
+	17, // 2: lapgate.stage.v1.Calibration.dark:type_name -> lapgate.stage.v1.Plane
+	17, // 3: lapgate.stage.v1.Calibration.stray:type_name -> lapgate.stage.v1.Plane
+	17, // 4: lapgate.stage.v1.Calibration.response:type_name -> lapgate.stage.v1.Plane
 	6,  // 5: lapgate.stage.v1.Calibration.bad_pixels:type_name -> lapgate.stage.v1.PixelAt
 	8,  // 6: lapgate.stage.v1.Geometry.planar:type_name -> lapgate.stage.v1.Planar
 	9,  // 7: lapgate.stage.v1.Geometry.distortion:type_name -> lapgate.stage.v1.Distortion
-	7,  // 8: lapgate.stage.v1.OpenRequest.calibration:type_name -> lapgate.stage.v1.Calibration
-	10, // 9: lapgate.stage.v1.OpenRequest.geometry:type_name -> lapgate.stage.v1.Geometry
-	32, // 10: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
-	33, // 11: lapgate.stage.v1.OpenRequest.calibrations:type_name -> lapgate.stage.v1.OpenRequest.CalibrationsEntry
-	13, // 12: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
-	34, // 13: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
-	14, // 14: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
-	14, // 15: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
-	18, // 16: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
-	20, // 17: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
-	15, // 18: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
-	19, // 19: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
-	10, // 20: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
-	16, // 21: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
-	22, // 22: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
-	21, // 23: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
-	27, // 24: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
-	24, // 25: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
-	17, // 26: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
-	17, // 27: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
-	23, // 28: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
-	25, // 29: lapgate.stage.v1.Item.grid:type_name -> lapgate.stage.v1.Grid
-	26, // 30: lapgate.stage.v1.Item.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
-	27, // 31: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
-	13, // 32: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
-	19, // 33: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
-	10, // 34: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
-	16, // 35: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
-	22, // 36: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
-	21, // 37: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
-	23, // 38: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
-	24, // 39: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
-	17, // 40: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
-	17, // 41: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
-	25, // 42: lapgate.stage.v1.RunResponse.grid:type_name -> lapgate.stage.v1.Grid
-	26, // 43: lapgate.stage.v1.RunResponse.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
-	7,  // 44: lapgate.stage.v1.OpenRequest.CalibrationsEntry.value:type_name -> lapgate.stage.v1.Calibration
-	1,  // 45: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
-	3,  // 46: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
-	11, // 47: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
-	28, // 48: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
-	30, // 49: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
-	2,  // 50: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
-	5,  // 51: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
-	12, // 52: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
-	29, // 53: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
-	31, // 54: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
-	50, // [50:55] is the sub-list for method output_type
-	45, // [45:50] is the sub-list for method input_type
-	45, // [45:45] is the sub-list for extension type_name
-	45, // [45:45] is the sub-list for extension extendee
-	0,  // [0:45] is the sub-list for field type_name
+	10, // 8: lapgate.stage.v1.Geometry.annulus:type_name -> lapgate.stage.v1.Annulus
+	7,  // 9: lapgate.stage.v1.OpenRequest.calibration:type_name -> lapgate.stage.v1.Calibration
+	11, // 10: lapgate.stage.v1.OpenRequest.geometry:type_name -> lapgate.stage.v1.Geometry
+	33, // 11: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
+	34, // 12: lapgate.stage.v1.OpenRequest.calibrations:type_name -> lapgate.stage.v1.OpenRequest.CalibrationsEntry
+	14, // 13: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
+	35, // 14: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
+	15, // 15: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
+	15, // 16: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
+	19, // 17: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
+	21, // 18: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
+	16, // 19: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
+	20, // 20: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
+	11, // 21: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
+	17, // 22: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
+	23, // 23: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
+	22, // 24: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
+	28, // 25: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
+	25, // 26: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
+	18, // 27: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	18, // 28: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	24, // 29: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
+	26, // 30: lapgate.stage.v1.Item.grid:type_name -> lapgate.stage.v1.Grid
+	27, // 31: lapgate.stage.v1.Item.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
+	28, // 32: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
+	14, // 33: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
+	20, // 34: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
+	11, // 35: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
+	17, // 36: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
+	23, // 37: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
+	22, // 38: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
+	24, // 39: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
+	25, // 40: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
+	18, // 41: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	18, // 42: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	26, // 43: lapgate.stage.v1.RunResponse.grid:type_name -> lapgate.stage.v1.Grid
+	27, // 44: lapgate.stage.v1.RunResponse.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
+	7,  // 45: lapgate.stage.v1.OpenRequest.CalibrationsEntry.value:type_name -> lapgate.stage.v1.Calibration
+	1,  // 46: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
+	3,  // 47: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
+	12, // 48: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
+	29, // 49: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
+	31, // 50: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
+	2,  // 51: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
+	5,  // 52: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
+	13, // 53: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
+	30, // 54: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
+	32, // 55: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
+	51, // [51:56] is the sub-list for method output_type
+	46, // [46:51] is the sub-list for method input_type
+	46, // [46:46] is the sub-list for extension type_name
+	46, // [46:46] is the sub-list for extension extendee
+	0,  // [0:46] is the sub-list for field type_name
 }
 
 func init() { file_stagepb_stage_proto_init() }
@@ -3283,18 +3441,18 @@ func file_stagepb_stage_proto_init() {
 	if File_stagepb_stage_proto != nil {
 		return
 	}
-	file_stagepb_stage_proto_msgTypes[13].OneofWrappers = []any{
+	file_stagepb_stage_proto_msgTypes[14].OneofWrappers = []any{
 		(*Pixels_Shared)(nil),
 		(*Pixels_Data)(nil),
 	}
-	file_stagepb_stage_proto_msgTypes[14].OneofWrappers = []any{}
+	file_stagepb_stage_proto_msgTypes[15].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_stagepb_stage_proto_rawDesc), len(file_stagepb_stage_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   34,
+			NumMessages:   35,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
