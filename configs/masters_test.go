@@ -42,7 +42,7 @@ func TestMastersThatCannotBe(t *testing.T) {
 		{"{unit: M, expect: accept}", "masters[0]: nothing says when the master is due"},
 		{"{unit: M, expect: accept, kind: dig, every_minutes: 9}", "masters[0]: a master that must be accepted has no defect to find"},
 		{"{unit: M, expect: reject, view: bar, kind: dig, every_minutes: 9}", `masters[0].view: got "bar", want one of ring`},
-		{"{unit: M, expect: reject, view: ring, kind: dent, every_minutes: 9}", `masters[0].kind: got "dent", want one of dig`},
+		{"{unit: M, expect: reject, view: ring, kind: dint, every_minutes: 9}", `masters[0].kind: got "dint", want one of dig`},
 		{"{unit: M, expect: reject, view: ring, kind: dig, measure: depth, every_minutes: 9}", `masters[0].measure: got "depth"`},
 		{"{unit: M, expect: reject, view: ring, kind: dig, at_least: 5, at_most: 4, every_minutes: 9}", "masters[0].at_least: it lies above at_most"},
 		{`{unit: M, expect: accept, due_at: ["6 am"]}`, `masters[0].due_at[0]: got "6 am", want a time of day`},

@@ -113,9 +113,17 @@ func tellDefects(w io.Writer, defects []pipeline.Defect) {
 			fmt.Fprintf(w, "  … and %d more defects; --json lists all\n", len(defects)-mostTold)
 			return
 		}
-		fmt.Fprintf(w, "  defect %d: %s%s, %.1f × %.1f µm at u %.0f, v %.0f µm, peak %.1f sigma%s\n", d.ID, d.Kind, named(" in ", d.Zone),
-			d.LengthUM, d.WidthUM, d.UUM, d.VUM, d.PeakSigma, named(", seen in ", strings.Join(d.SeenIn, " and ")))
+		fmt.Fprintf(w, "  defect %d: %s%s, %.1f × %.1f µm at u %.0f, v %.0f µm, %s%s\n", d.ID, d.Kind, named(" in ", d.Zone),
+			d.LengthUM, d.WidthUM, d.UUM, d.VUM, prominence(d), named(", seen in ", strings.Join(d.SeenIn, " and ")))
 	}
+}
+
+// prominence is how much a defect stands out: by its slope, or by its light.
+func prominence(d pipeline.Defect) string {
+	if d.SlopeMrad > 0 {
+		return fmt.Sprintf("slope %.3g mrad", d.SlopeMrad)
+	}
+	return fmt.Sprintf("peak %.1f sigma", d.PeakSigma)
 }
 
 func tellJudgement(w io.Writer, j pipeline.Judgement) {

@@ -34,7 +34,7 @@ func defectForm(d pipeline.Defect) map[string]any {
 		"edge_distance_um": d.EdgeDistanceUM, "area_px": d.AreaPx, "area_um2": d.AreaUM2, "length_um": d.LengthUM, "width_um": d.WidthUM,
 		"diameter_um":      d.DiameterUM,
 		"diameter_flux_um": d.DiameterFluxUM, "diameter_flux_uncertainty_um": d.DiameterFluxUncertaintyUM, "length_px": d.LengthPx, "width_px": d.WidthPx, "diameter_px": d.DiameterPx, "angle_deg": d.AngleDeg,
-		"flux": d.Flux, "peak_dn": d.PeakDN, "peak_sigma": d.PeakSigma, "snr": d.SNR, "dark": d.Dark, "saturated": d.Saturated, "seen_in": d.SeenIn}
+		"slope_mrad": d.SlopeMrad, "flux": d.Flux, "peak_dn": d.PeakDN, "peak_sigma": d.PeakSigma, "snr": d.SNR, "dark": d.Dark, "saturated": d.Saturated, "seen_in": d.SeenIn}
 	if len(d.Path) > 0 {
 		path := make([][2]float64, len(d.Path))
 		for i, p := range d.Path {
@@ -70,9 +70,9 @@ func printInspection(w io.Writer, id pipeline.Identity, e pipeline.Evidence, j p
 		return nil
 	}
 	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', tabwriter.AlignRight)
-	fmt.Fprintln(t, "id\tkind\tview\tzone\tu_um\tv_um\tlength_um\twidth_um\tdiameter_um\tpeak_sigma\tsnr\t")
+	fmt.Fprintln(t, "id\tkind\tview\tzone\tu_um\tv_um\tlength_um\twidth_um\tdiameter_um\tpeak_sigma\tsnr\tslope_mrad\t")
 	for _, d := range e.Defects {
-		fmt.Fprintf(t, "%d\t%s\t%s\t%s\t%.0f\t%.0f\t%.1f\t%.1f\t%.1f\t%.1f\t%.1f\t\n", d.ID, d.Kind, d.View, d.Zone, d.UUM, d.VUM, d.LengthUM, d.WidthUM, d.DiameterUM, d.PeakSigma, d.SNR)
+		fmt.Fprintf(t, "%d\t%s\t%s\t%s\t%.0f\t%.0f\t%.1f\t%.1f\t%.1f\t%.1f\t%.1f\t%.2f\t\n", d.ID, d.Kind, d.View, d.Zone, d.UUM, d.VUM, d.LengthUM, d.WidthUM, d.DiameterUM, d.PeakSigma, d.SNR, d.SlopeMrad)
 	}
 	return t.Flush()
 }

@@ -203,3 +203,24 @@ func TestCanonicalTellsLimitsApart(t *testing.T) {
 		}
 	}
 }
+
+// A limit on slope takes dents of the kind that is told by slope, and no dig whose slope
+// nobody measured.
+func TestLimitOnSlope(t *testing.T) {
+	e := evidence()
+	e.Defects = append(e.Defects, pipeline.Defect{ID: 3, Kind: pipeline.Dent, View: "fringes", Zone: "clear", DiameterUM: 600, SlopeMrad: 2, Place: pipeline.Place{XPx: 80, YPx: 60}})
+	steep := Spec{Name: "dent too steep", Each: "slope_mrad", AtMost: ptr(1), Unit: "mrad"}
+	v, reasons := judge(t, e, steep)
+	const want = "dent 3 at (80.0, 60.0) px of view fringes: slope_mrad is 2 mrad, at most 1 allowed (by +1)"
+	if v != pipeline.Reject || len(reasons) != 1 || reasons[0].Name != "dent too steep" || reasons[0].DefectID != 3 || reasons[0].Over != 1 || reasons[0].Text != want {
+		t.Errorf("got %s %+v, want a reject for %q", v, reasons, want)
+	}
+	steep.Kind = "dent"
+	if v, _ := judge(t, e, steep); v != pipeline.Reject {
+		t.Errorf("with kind dent: got %s", v)
+	}
+	steep.AtMost = ptr(2)
+	if v, r := judge(t, e, steep); v != pipeline.Accept {
+		t.Errorf("at the limit: got %s %v", v, r)
+	}
+}

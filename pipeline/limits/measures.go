@@ -22,6 +22,7 @@ func Measures() *rules.Record[pipeline.Defect] {
 		num("width_um", func(d *pipeline.Defect) float64 { return d.WidthUM }),
 		num("diameter_um", func(d *pipeline.Defect) float64 { return d.DiameterUM }),
 		num("diameter_flux_um", func(d *pipeline.Defect) float64 { return d.DiameterFluxUM }),
+		num("slope_mrad", func(d *pipeline.Defect) float64 { return d.SlopeMrad }),
 		num("elongation", func(d *pipeline.Defect) float64 { return d.Elongation() }),
 		num("coil", func(d *pipeline.Defect) float64 { return d.Coil() }),
 		num("reach_um", func(d *pipeline.Defect) float64 { return d.ReachUM() }),

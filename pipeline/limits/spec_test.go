@@ -18,7 +18,7 @@ func TestMistakes(t *testing.T) {
 		{Spec{Name: "a", Broken: "true", AtMost: ptr(1), Unit: "um"}, "limits[0].broken: a condition has no at_most or at_least; use value"},
 		{Spec{Name: "a", Each: "snr", AtMost: ptr(1)}, "limits[0].unit: not given; state the unit of the limit (um, um2, mm, 1 for a count)"},
 		{Spec{Name: "a", Each: "snr", AtMost: ptr(1), AtLeast: ptr(2), Unit: "1"}, "limits[0].at_least: got 2, want no more than at_most"},
-		{Spec{Name: "a", Each: "snr > 1", Kind: "pit"}, "limits[0].kind: got \"pit\", want one of dig, scratch, edge chip, stain, particle, fibre"},
+		{Spec{Name: "a", Each: "snr > 1", Kind: "pit"}, "limits[0].kind: got \"pit\", want one of dig, scratch, edge chip, stain, particle, fibre, dent, waviness"},
 		{Spec{Name: "a", Each: "snr > 1", Verdict: "accept"}, "limits[0].verdict: got \"accept\", want reject or hold"},
 		{Spec{Name: "a", Each: "snr > 1", Uncertainty: 2}, "limits[0].uncertainty: needs at_most or at_least"},
 		{Spec{Name: "a", Each: "snr", AtMost: ptr(1), Unit: "1", Uncertainty: -2}, "limits[0].uncertainty: got -2, want 0 or more"},

@@ -28,7 +28,7 @@ type Population struct {
 
 func (p Population) check(key string) error {
 	kinds := []string{}
-	for _, k := range pipeline.Kinds() {
+	for _, k := range pipeline.ScatteringKinds() {
 		kinds = append(kinds, string(k))
 	}
 	err := firstBad(oneOf(key+"kind", string(p.Kind), kinds...), within(key+"per_unit", p.PerUnit, 0, 1000),

@@ -67,7 +67,12 @@ func defects(item *pipeline.Item) []pipeline.Defect {
 	return out
 }
 
+// kind is that of the first rule that matches. What is told by slope keeps its kind: no
+// rule may make a dig of a dent, or the limit on dents would not see it.
 func (s *stage) kind(d *pipeline.Defect) (pipeline.Kind, error) {
+	if !d.Kind.Scatters() {
+		return d.Kind, nil
+	}
 	values := s.measures.Of(d)
 	for i, r := range s.rules {
 		is, err := r.when.Bool(values)

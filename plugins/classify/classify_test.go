@@ -127,3 +127,21 @@ func TestNamesAreThoseOfLimits(t *testing.T) {
 		t.Errorf("got %v\nwant %v", got, want)
 	}
 }
+
+// What is told by slope keeps its kind, whatever its shape.
+func TestDentsKeepTheirKind(t *testing.T) {
+	item := &pipeline.Item{Defects: []pipeline.Defect{{Kind: pipeline.Dent, LengthUM: 900, WidthUM: 100, SlopeMrad: 2}, {Kind: pipeline.Waviness, SlopeMrad: 1}}}
+	if err := run(t, Default, item); err != nil {
+		t.Fatal(err)
+	}
+	if item.Defects[0].Kind != pipeline.Dent || item.Defects[1].Kind != pipeline.Waviness {
+		t.Errorf("got %+v", item.Defects)
+	}
+	item = &pipeline.Item{Defects: []pipeline.Defect{{SlopeMrad: 2}, {}}}
+	if err := run(t, Settings{Rules: []Rule{{Kind: "dent", When: "slope_mrad > 1"}}, DefaultKind: "dig"}, item); err != nil {
+		t.Fatal(err)
+	}
+	if item.Defects[0].Kind != pipeline.Dent || item.Defects[1].Kind != pipeline.Dig {
+		t.Errorf("got %+v", item.Defects)
+	}
+}

@@ -74,6 +74,7 @@ func (g group) defect() pipeline.Defect {
 	d.MergedFrom, d.SeenIn = nil, nil
 	for _, s := range g {
 		d.MergedFrom = append(d.MergedFrom, pipeline.Ref{View: s.View, ID: s.ID})
+		d.SlopeMrad = max(d.SlopeMrad, s.SlopeMrad)
 		if !slices.Contains(d.SeenIn, s.View) {
 			d.SeenIn = append(d.SeenIn, s.View)
 		}

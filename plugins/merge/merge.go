@@ -84,7 +84,7 @@ func compareDefects(a, b pipeline.Defect) int {
 // same returns how far apart two defects of different views are, and whether they are
 // the same by the rules of the package's introduction.
 func (s Settings) same(a, b *seen) (float64, bool) {
-	if a.View == b.View || a.apart(b) > s.ToleranceUM {
+	if a.View == b.View || a.Kind.Scatters() != b.Kind.Scatters() || a.apart(b) > s.ToleranceUM {
 		return 0, false
 	}
 	if !a.long() && !b.long() {

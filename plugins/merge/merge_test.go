@@ -191,3 +191,21 @@ func TestSettings(t *testing.T) {
 		t.Errorf("without a file: got %v, %+v, %v", stage, used, err)
 	}
 }
+
+// A dent keeps its slope: it is not joined with a dig at its place, whose light is clearer,
+// and of two views that measured it the steeper slope stands.
+func TestSlopeIsNotLostInAMerge(t *testing.T) {
+	dent := func(x, slope, snr float64) pipeline.Defect {
+		d := dig(x, 100, 80, snr)
+		d.Kind, d.SlopeMrad = pipeline.Dent, slope
+		return d
+	}
+	got := merged(t, Default, view("fringes", dent(100, 2, 0)), view("ring", dig(100, 100, 80, 30)))
+	if len(got) != 2 || got[0].Kind == pipeline.Dent || got[1].SlopeMrad != 2 {
+		t.Errorf("got %+v, want the dig and the dent", got)
+	}
+	got = merged(t, Default, view("fringes", dent(100, 2, 0)), view("turned", dent(101, 3, 0)))
+	if len(got) != 1 || got[0].SlopeMrad != 3 {
+		t.Errorf("got %+v, want one dent of 3 mrad", got)
+	}
+}

@@ -54,7 +54,7 @@ func (a *checker) standsFor(is, was pipeline.Defect) bool {
 func (a *checker) unit() bool { return a.described.GetScope() == stagepb.Scope_SCOPE_UNIT }
 
 func (a *checker) defect(d *pipeline.Defect) error {
-	sizes := []float64{d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.LengthPx, d.WidthPx, d.DiameterPx, float64(d.AreaPx), d.DiameterFluxUM, d.DiameterFluxUncertaintyUM}
+	sizes := []float64{d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.LengthPx, d.WidthPx, d.DiameterPx, float64(d.AreaPx), d.DiameterFluxUM, d.DiameterFluxUncertaintyUM, d.SlopeMrad}
 	if !finite(sizes...) || !finite(d.XPx, d.YPx, d.UUM, d.VUM, d.PartUUM, d.PartVUM, d.AngleDeg, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.EdgeDistanceUM) {
 		return fmt.Errorf("a measure is no number")
 	}

@@ -56,12 +56,32 @@ func Render(t testing.TB, s render.Scene) *Rendered {
 			Noise: pipeline.NoiseModel{GainDNPerE: s.Camera.GainDNPerE, DarkDN: 0.5}, Scale: pipeline.Scale{UMPerPx: s.Camera.UMPerPx}}
 		for i, d := range dark.Pix {
 			if d > float32(s.Camera.BlackLevelDN)+10 {
-				c.BadPixels = append(c.BadPixels, pipeline.PixelAt{X: i % dark.Width, Y: i / dark.Width})
+				at := pipeline.PixelAt{X: i % dark.Width, Y: i / dark.Width}
+				c.BadPixels = append(c.BadPixels, at)
+				c.FixedPattern = append(c.FixedPattern, pipeline.PatternPixel{X: at.X, Y: at.Y, DarkDN: float64(d) - s.Camera.BlackLevelDN})
 			}
 		}
+		c.PartEdge = out.partEdge(v)
 		out.Calibrations[v.Name] = c
 	}
 	return out
+}
+
+// partEdge measures the outline of a part without defects; nil where no circle is found.
+func (r *Rendered) partEdge(v render.View) *pipeline.PartEdge {
+	u := r.Unit(0)
+	u.Objects, u.Spoilers, u.LampPower, u.DiameterMM = nil, nil, 1, r.Scene().Part.DiameterMM
+	raw, err := r.Item(&u, v.Name).Raw()
+	if err != nil {
+		r.t.Fatal(err)
+	}
+	c, radius := r.Scene().Camera, 500*u.DiameterMM/r.Scene().Camera.UMPerPx
+	fit, err := raster.FindCircle(raw, raster.CircleSearch{X: float64(c.Width-1) / 2, Y: float64(c.Height-1) / 2, Reach: float64(min(c.Width, c.Height)) / 4,
+		RMin: 0.95 * radius, RMax: 1.05 * radius, DarkInside: v.Light == render.LightBack, Ridge: v.Light != render.LightBack})
+	if err != nil || fit.EdgeWidth <= 0 {
+		return nil
+	}
+	return &pipeline.PartEdge{WidthPx: fit.EdgeWidth, DiameterPx: 2 * fit.R, Frames: 1}
 }
 
 func (r *Rendered) mean(kind, view string) *raster.Plane {

@@ -232,7 +232,7 @@ func (s suite) oddFrame(r *report, raw raster.Raw) {
 // checkNumbers refuses numbers that are not numbers, and shares outside 0 to 1.
 func checkNumbers(r *report, item *pipeline.Item) {
 	for _, d := range item.Defects {
-		for _, v := range []float64{d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.AngleDeg, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.EdgeDistanceUM} {
+		for _, v := range []float64{d.XPx, d.YPx, d.UUM, d.VUM, d.AreaUM2, d.LengthUM, d.WidthUM, d.DiameterUM, d.AngleDeg, d.Flux, d.PeakDN, d.PeakSigma, d.SNR, d.EdgeDistanceUM, d.SlopeMrad} {
 			if math.IsNaN(v) || math.IsInf(v, 0) {
 				r.wrong("defect %+v has a measure that is no number", d)
 			}

@@ -33,7 +33,7 @@ func defects(n int) []pipeline.Defect {
 	out := make([]pipeline.Defect, n)
 	for i := range out {
 		out[i] = pipeline.Defect{ID: i + 1, Kind: pipeline.Dig, View: "ring", Zone: "clear", AreaPx: 37 + i, AreaUM2: 2368.25,
-			LengthUM: 61.5, WidthUM: 52.25, DiameterUM: 54.91, Flux: 18211.5, PeakDN: 612.25, PeakSigma: 9.75, SNR: 21.25}
+			LengthUM: 61.5, WidthUM: 52.25, DiameterUM: 54.91, Flux: 18211.5, PeakDN: 612.25, PeakSigma: 9.75, SNR: 21.25, SlopeMrad: 1.75}
 	}
 	return out
 }
