@@ -22,6 +22,7 @@ import (
 	"lapgate/plugins/builtin"
 	"lapgate/proto/inspectpb"
 	"lapgate/server"
+	"lapgate/server/images"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
 	"lapgate/server/masters"
@@ -70,6 +71,14 @@ type rigOptions struct {
 	approval bool   // only approved recipes judge
 	people   []configs.Person
 	clock    *clock // nil = the real one
+	images   *images.Store
+}
+
+func (o rigOptions) keep() func(pipeline.Verdict, []pipeline.Frame, func()) []string {
+	if o.images == nil {
+		return nil
+	}
+	return o.images.Offer
 }
 
 // clock is a time that a test moves.
@@ -141,7 +150,7 @@ func (r *rig) serve(o rigOptions) {
 	var err error
 	r.intake, err = intake.New(intake.Settings{MaxBytesInFlight: o.maxBytes, MaxFrameBytes: 1 << 20, Workers: max(o.workers, 2),
 		ViewTimeout: time.Second, Now: o.clock.now, Log: quiet(), Gate: gate,
-		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v) }}, r.book, r.ledger)
+		Keep: o.keep(), Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v) }}, r.book, r.ledger)
 	must(t, err)
 	g, _ := server.NewGRPC(server.Deps{Intake: r.intake, Ledger: r.ledger, Book: r.book, Feed: feed, Log: quiet(), Now: o.clock.now,
 		Check: func(file string, text []byte) error { _, err := r.decode(file, text); return err },

@@ -8,27 +8,6 @@ import (
 	"lapgate/server/ledger"
 )
 
-// InspectUnit implements InspectionService.
-func (s *Inspection) InspectUnit(ctx context.Context, req *inspectpb.InspectUnitRequest) (*inspectpb.InspectUnitResponse, error) {
-	if len(req.Frames) == 0 {
-		return nil, inspectpb.ToStatus(pipeline.Invalid("frames: got none, want all frames of one showing"))
-	}
-	var headers []pipeline.FrameHeader
-	var data [][]byte
-	for _, f := range req.Frames {
-		h, err := inspectpb.ToFrameHeader(f.Header)
-		if err != nil {
-			return nil, inspectpb.ToStatus(err)
-		}
-		headers, data = append(headers, h), append(data, f.Data)
-	}
-	v, err := s.deps.Intake.Inspect(ctx, headers, data)
-	if err != nil {
-		return nil, inspectpb.ToStatus(err)
-	}
-	return &inspectpb.InspectUnitResponse{Verdict: unitVerdict(v)}, nil
-}
-
 // ReportOutcome implements InspectionService.
 func (s *Inspection) ReportOutcome(ctx context.Context, req *inspectpb.ReportOutcomeRequest) (*inspectpb.ReportOutcomeResponse, error) {
 	id, err := inspectpb.ToIdentity(req.Identity)

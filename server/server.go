@@ -71,13 +71,14 @@ func NewGRPC(d Deps, o GRPCOptions) (*grpc.Server, *health.Server) {
 		return status.Error(codes.Internal, "the server failed in this call; its log says how")
 	})
 	g := grpc.NewServer(
+		grpc.ForceServerCodecV2(inspectpb.Codec{}), // pixels are copied once, to where they stay
 		grpc.MaxRecvMsgSize(o.MaxMessageBytes),
 		grpc.MaxConcurrentStreams(uint32(o.MaxStreams)),
 		grpc.KeepaliveEnforcementPolicy(keepalive.EnforcementPolicy{MinTime: 10 * time.Second, PermitWithoutStream: true}),
 		grpc.ChainUnaryInterceptor(recovery.UnaryServerInterceptor(onPanic)),
 		grpc.ChainStreamInterceptor(recovery.StreamServerInterceptor(onPanic)),
 	)
-	inspectpb.RegisterInspectionServiceServer(g, &Inspection{deps: d})
+	g.RegisterService(inspectionService(), &Inspection{deps: d})
 	inspectpb.RegisterRecipeServiceServer(g, &Recipes{deps: d})
 	inspectpb.RegisterYieldServiceServer(g, &Yield{deps: d})
 	inspectpb.RegisterVolumeServiceServer(g, &Volume{deps: d})

@@ -23,14 +23,17 @@ func (s *Inspection) Inspect(grpcStream grpc.BidiStreamingServer[inspectpb.Inspe
 	st.idle = sync.NewCond(&st.mu)
 	defer st.abandon()
 	for {
-		req, err := grpcStream.Recv()
+		var in inspectpb.Incoming // as Recv, but the pixels stay where they came until they have a place
+		err := grpcStream.RecvMsg(&in)
 		if errors.Is(err, io.EOF) {
 			return st.wait()
 		}
 		if err != nil {
 			return err
 		}
-		if err := st.take(req); err != nil {
+		err = st.take(&in)
+		in.Free()
+		if err != nil {
 			return err
 		}
 	}
@@ -50,12 +53,12 @@ type stream struct {
 	failed  error           // a send failed: the client is gone
 }
 
-func (st *stream) take(req *inspectpb.InspectRequest) error {
-	switch m := req.Message.(type) {
+func (st *stream) take(in *inspectpb.Incoming) error {
+	switch m := in.Request.Message.(type) {
 	case *inspectpb.InspectRequest_Start:
 		return st.begin(m.Start)
 	case *inspectpb.InspectRequest_Chunk:
-		return st.chunk(m.Chunk)
+		return st.chunk(m.Chunk, in.Pieces())
 	}
 	return inspectpb.ToStatus(pipeline.Invalid("message: got neither start nor chunk"))
 }
@@ -80,7 +83,7 @@ func (st *stream) begin(start *inspectpb.FrameStart) error {
 	return nil
 }
 
-func (st *stream) chunk(c *inspectpb.FrameChunk) error {
+func (st *stream) chunk(c *inspectpb.FrameChunk, pieces [][]byte) error {
 	r, open := st.frames[c.Frame]
 	if !open {
 		if st.refused[c.Frame] {
@@ -88,7 +91,7 @@ func (st *stream) chunk(c *inspectpb.FrameChunk) error {
 		}
 		return inspectpb.ToStatus(pipeline.Invalid("frame: chunk of number %d, which was not started on this stream", c.Frame))
 	}
-	err := r.Add(c.Offset, c.Data)
+	err := r.Add(c.Offset, pieces...)
 	if err == nil && !r.Complete() {
 		return nil
 	}

@@ -102,8 +102,8 @@ func (s *showing) keep(record *ledger.Inspection) {
 		}
 	}
 	s.kept = true
-	bytes := s.bytes
-	for i, key := range s.intake.settings.Keep(record.Judgement.Verdict, frames, func() { s.intake.admission.give(bytes) }) {
+	buffers := s.buffers
+	for i, key := range s.intake.settings.Keep(record.Judgement.Verdict, frames, func() { giveBackAll(buffers) }) {
 		*places[i] = key
 	}
 }
@@ -205,7 +205,7 @@ func (s *showing) end(v Verdict, err error) {
 	answers := s.answers
 	s.mu.Unlock()
 	if !s.kept {
-		in.admission.give(s.bytes)
+		giveBackAll(s.buffers)
 	}
 	for _, answer := range answers {
 		answer(v, err)

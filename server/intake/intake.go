@@ -32,9 +32,11 @@ type Settings struct {
 	MaxBytesInFlight int64
 	MaxFrameBytes    int64
 	Workers          int
-	ViewTimeout      time.Duration // where the recipe gives none
-	Now              func() time.Time
-	Log              *slog.Logger
+	// Allocate makes the memory of a frame's pixels, which is then used again; nil = Go's own.
+	Allocate    func(n int) []byte
+	ViewTimeout time.Duration // where the recipe gives none
+	Now         func() time.Time
+	Log         *slog.Logger
 	// Recorded is told of every inspection that the ledger took; it must not block.
 	Recorded func(Verdict)
 	// Keep is given the frames of a judged showing and returns where each will be kept, or
@@ -56,12 +58,12 @@ type Gate interface {
 
 // Intake assembles showings and has them judged. It is safe for concurrent use.
 type Intake struct {
-	settings  Settings
-	recipes   Recipes
-	ledger    Ledger
-	admission *admission
-	pool      *pool
-	stopping  atomic.Bool
+	settings Settings
+	recipes  Recipes
+	ledger   Ledger
+	memory   *memory
+	pool     *pool
+	stopping atomic.Bool
 	// viewTimeout is where the recipe gives none, in nanoseconds.
 	viewTimeout atomic.Int64
 	units       keyedLock
@@ -84,24 +86,29 @@ func New(s Settings, recipes Recipes, ledger Ledger) (*Intake, error) {
 		s.Log = slog.Default()
 	}
 	in := &Intake{settings: s, recipes: recipes, ledger: ledger, pool: newPool(s.Workers), showings: map[string]*showing{},
-		admission: &admission{most: s.MaxBytesInFlight, frame: s.MaxFrameBytes}}
+		memory: newMemory(s.MaxBytesInFlight, s.MaxFrameBytes, s.Allocate)}
 	in.viewTimeout.Store(int64(s.ViewTimeout))
 	return in, nil
 }
 
 // Adjust changes limits while frames come in.
 func (in *Intake) Adjust(maxBytesInFlight int64, viewTimeout time.Duration) {
-	in.admission.mu.Lock()
-	in.admission.most = maxBytesInFlight
-	in.admission.mu.Unlock()
+	in.memory.bound(maxBytesInFlight)
 	in.viewTimeout.Store(int64(viewTimeout))
 }
 
 // BytesInFlight returns the bytes of frames held in memory.
-func (in *Intake) BytesInFlight() int64 { return in.admission.inFlight() }
+func (in *Intake) BytesInFlight() int64 { return in.memory.inFlight() }
+
+// Sent is a frame as it was sent: its pixels lie in pieces, one after the other, which
+// are only read.
+type Sent struct {
+	Header pipeline.FrameHeader
+	Pieces [][]byte
+}
 
 // Inspect judges all frames of one showing and waits for the verdict.
-func (in *Intake) Inspect(ctx context.Context, headers []pipeline.FrameHeader, data [][]byte) (Verdict, error) {
+func (in *Intake) Inspect(ctx context.Context, frames []Sent) (Verdict, error) {
 	type outcome struct {
 		v   Verdict
 		err error
@@ -109,9 +116,9 @@ func (in *Intake) Inspect(ctx context.Context, headers []pipeline.FrameHeader, d
 	done := make(chan outcome, 1)
 	client := new(byte)
 	answer := func(v Verdict, err error) { done <- outcome{v, err} }
-	for i, h := range headers {
-		err := in.offer(h, data[i], client, answer)
-		if err != nil && !in.Refuse(h, err, client, answer) {
+	for _, f := range frames {
+		err := in.offer(f, client, answer)
+		if err != nil && !in.Refuse(f.Header, err, client, answer) {
 			return Verdict{}, err
 		}
 	}
@@ -123,12 +130,12 @@ func (in *Intake) Inspect(ctx context.Context, headers []pipeline.FrameHeader, d
 	}
 }
 
-func (in *Intake) offer(h pipeline.FrameHeader, data []byte, client any, answer Answer) error {
-	r, err := in.Begin(h)
+func (in *Intake) offer(f Sent, client any, answer Answer) error {
+	r, err := in.Begin(f.Header)
 	if err != nil {
 		return err
 	}
-	if err = r.Add(0, data); err == nil {
+	if err = r.Add(0, f.Pieces...); err == nil {
 		err = r.Submit(client, answer)
 	}
 	if err != nil {

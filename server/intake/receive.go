@@ -6,7 +6,7 @@ import "lapgate/pipeline"
 // for concurrent use: a stream feeds it.
 type Receiver struct {
 	header pipeline.FrameHeader
-	buffer []byte
+	buffer *buffer // nil once it is another's
 	filled int
 	intake *Intake
 	done   bool
@@ -22,11 +22,11 @@ func (in *Intake) Begin(h pipeline.FrameHeader) (*Receiver, error) {
 	if in.stopping.Load() && !in.pending(h) {
 		return nil, stopping("the server is stopping; resend the unit to the next one")
 	}
-	n := h.PixelBytes()
-	if err := in.admission.take(int64(n)); err != nil {
+	b, err := in.memory.lend(h.PixelBytes())
+	if err != nil {
 		return nil, err
 	}
-	return &Receiver{header: h, buffer: make([]byte, n), intake: in}, nil
+	return &Receiver{header: h, buffer: b, intake: in}, nil
 }
 
 // checkHeader is FrameHeader.Check for a header whose unit or attempt the server may
@@ -49,21 +49,35 @@ func checkHeader(h pipeline.FrameHeader) error {
 	return h.Check()
 }
 
-// Add appends a chunk. Chunks come in order: a gap, an overlap or an overflow is an
-// Invalid error, after which the frame must be refused.
-func (r *Receiver) Add(offset uint64, data []byte) error {
+// Add copies a chunk, which may lie in several pieces, to its place in the frame. Chunks
+// come in order: a gap, an overlap or an overflow is an Invalid error, after which the
+// frame must be refused.
+func (r *Receiver) Add(offset uint64, pieces ...[]byte) error {
+	n := 0
+	for _, p := range pieces {
+		n += len(p)
+	}
+	if err := r.fits(offset, n); err != nil {
+		return err
+	}
+	for _, p := range pieces {
+		r.filled += copy(r.buffer.bytes[r.filled:], p)
+	}
+	r.done = r.filled == len(r.buffer.bytes)
+	return nil
+}
+
+func (r *Receiver) fits(offset uint64, n int) error {
 	switch {
-	case r.done:
-		return pipeline.Invalid("chunk: the frame was already complete; got %d bytes more", len(data))
-	case len(data) == 0:
+	case r.done || r.buffer == nil:
+		return pipeline.Invalid("chunk: the frame was already complete; got %d bytes more", n)
+	case n == 0:
 		return pipeline.Invalid("chunk: got no data at offset %d", offset)
 	case offset != uint64(r.filled):
 		return pipeline.Invalid("offset: got %d, want %d (chunks of a frame come in order, without gap or overlap)", offset, r.filled)
-	case len(data) > len(r.buffer)-r.filled:
-		return pipeline.Invalid("chunk: got %d bytes at offset %d, want at most %d (frame of %d bytes)", len(data), offset, len(r.buffer)-r.filled, len(r.buffer))
+	case n > len(r.buffer.bytes)-r.filled:
+		return pipeline.Invalid("chunk: got %d bytes at offset %d, want at most %d (frame of %d bytes)", n, offset, len(r.buffer.bytes)-r.filled, len(r.buffer.bytes))
 	}
-	r.filled += copy(r.buffer[r.filled:], data)
-	r.done = r.filled == len(r.buffer)
 	return nil
 }
 
@@ -78,7 +92,7 @@ func (r *Receiver) Header() pipeline.FrameHeader { return r.header }
 // goroutine. After an error the frame is not in the showing.
 func (r *Receiver) Submit(client any, answer Answer) error {
 	if !r.done {
-		return pipeline.Invalid("data: got %d bytes, want %d; the frame was cut short", r.filled, len(r.buffer))
+		return pipeline.Invalid("data: got %d bytes, want %d; the frame was cut short", r.filled, r.header.PixelBytes())
 	}
 	h := r.header
 	checked := h
@@ -86,19 +100,20 @@ func (r *Receiver) Submit(client any, answer Answer) error {
 		checked.Unit = "to-be-given"
 	}
 	checked.Attempt = max(checked.Attempt, 1)
-	frame, err := pipeline.NewFrame(checked, r.buffer)
+	frame, err := pipeline.NewFrame(checked, r.buffer.bytes)
 	if err != nil {
 		return err
 	}
 	frame.Header.Unit, frame.Header.Attempt = h.Unit, h.Attempt
+	b := r.buffer
 	r.buffer = nil
-	return r.intake.add(frame, client, answer)
+	return r.intake.add(frame, b, client, answer)
 }
 
 // Abandon gives back the memory of a frame that will not be submitted.
 func (r *Receiver) Abandon() {
 	if r.buffer != nil {
-		r.intake.admission.give(int64(len(r.buffer)))
+		r.buffer.giveBack()
 		r.buffer = nil
 	}
 }

@@ -2,6 +2,8 @@ package intake
 
 import (
 	"context"
+	"slices"
+	"strings"
 	"testing"
 	"time"
 
@@ -57,7 +59,7 @@ func FuzzReceiver(f *testing.F) {
 			r.header.CRC32C = pipeline.Checksum(want)
 		}
 		feedChunks(t, r, want, chunks)
-		if r.Complete() && string(r.buffer) != string(want) {
+		if r.Complete() && string(r.buffer.bytes) != string(want) {
 			t.Error("the frame's bytes are not where they belong")
 		}
 		if err := r.Submit(t, func(Verdict, error) { t.Error("answered without a recipe") }); err == nil {
@@ -121,5 +123,75 @@ func TestAdmissionCountsBytes(t *testing.T) {
 	}
 	if n := in.BytesInFlight(); n != 4*128*128 {
 		t.Errorf("%d bytes held, want %d", n, 4*128*128)
+	}
+}
+
+// A frame gets the memory of an earlier one; cut short, it is refused, so that nobody
+// sees the earlier one's pixels in it.
+func TestShortFrameShowsNoEarlierPixels(t *testing.T) {
+	in := newTestIntake(t)
+	h := pipeline.FrameHeader{
+		Identity: pipeline.Identity{Part: "disc", Unit: "u", Line: "A", Station: "s", Attempt: 1, Purpose: pipeline.Production},
+		Capture:  pipeline.Capture{Format: raster.Mono8, Width: 64, Height: 64},
+		View:     "ring", Count: 1, Stride: 64, Captured: time.Unix(1, 0),
+	}
+	first, err := in.Begin(h)
+	if err != nil {
+		t.Fatal(err)
+	}
+	secret := slices.Repeat([]byte{77}, 64*64)
+	h.CRC32C = pipeline.Checksum(secret)
+	if err := first.Add(0, secret[:1000], nil, secret[1000:]); err != nil || !first.Complete() {
+		t.Fatal(err)
+	}
+	memory := &first.buffer.bytes[0]
+	first.Abandon()
+	second, err := in.Begin(h)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if &second.buffer.bytes[0] != memory {
+		t.Error("the memory was not used again")
+	}
+	if err := second.Add(0, secret[:4000]); err != nil {
+		t.Fatal(err)
+	}
+	err = second.Submit(t, func(Verdict, error) { t.Error("answered") })
+	if err == nil || !strings.Contains(err.Error(), "cut short") || second.Complete() {
+		t.Errorf("a short frame whose missing bytes happen to be right: %v", err)
+	}
+	second.Abandon()
+	if in.BytesInFlight() != 0 || in.memory.kept != 64*64 {
+		t.Errorf("%d bytes held, %d kept", in.BytesInFlight(), in.memory.kept)
+	}
+}
+
+// Memory of sizes that nobody sends any more makes room; lent and kept stay below the bound.
+func TestMemoryStaysWithinItsBound(t *testing.T) {
+	made := 0
+	m := newMemory(1000, 400, func(n int) []byte { made++; return make([]byte, n) })
+	for n := 1; n <= 400; n++ {
+		a, errA := m.lend(n)
+		b, errB := m.lend(n)
+		if errA != nil || errB != nil || len(a.bytes) != n || len(b.bytes) != n {
+			t.Fatal(errA, errB)
+		}
+		a.giveBack()
+		b.giveBack()
+		b.giveBack() // twice is once
+		if m.lent != 0 || m.kept > m.most {
+			t.Fatalf("%d bytes lent, %d kept, want at most %d", m.lent, m.kept, m.most)
+		}
+	}
+	before := made
+	for range 10 {
+		a, err := m.lend(400)
+		if err != nil {
+			t.Fatal(err)
+		}
+		a.giveBack()
+	}
+	if made != before {
+		t.Errorf("%d new buffers for frames of one size", made-before)
 	}
 }

@@ -31,10 +31,10 @@ type showing struct {
 	results  []pipeline.ViewResult
 	running  int // views being run
 	lastCame time.Time
-	bytes    int64
-	closed   bool // complete, timed out or dropped: takes no more frames
-	ended    bool // answered
-	kept     bool // the image store gives the memory back
+	buffers  []*buffer // of the frames' pixels
+	closed   bool      // complete, timed out or dropped: takes no more frames
+	ended    bool      // answered
+	kept     bool      // the image store gives the memory back
 	dropped  error
 	spooled  bool
 }
@@ -42,12 +42,12 @@ type showing struct {
 // errEnded says that a showing was answered between finding it and using it.
 var errEnded = errors.New("the showing has ended")
 
-// add gives a frame to its showing, and opens one where there is none. Its bytes are
+// add gives a frame to its showing, and opens one where there is none. Its memory is
 // given back when it is refused.
-func (in *Intake) add(frame pipeline.Frame, client any, answer Answer) error {
-	err := in.withShowing(frame.Header, func(s *showing) error { return s.take(frame, client, answer) })
+func (in *Intake) add(frame pipeline.Frame, b *buffer, client any, answer Answer) error {
+	err := in.withShowing(frame.Header, func(s *showing) error { return s.take(frame, b, client, answer) })
 	if err != nil {
-		in.admission.give(int64(len(frame.Raw.Data)))
+		b.giveBack()
 	}
 	return err
 }
@@ -132,7 +132,7 @@ func (s *showing) timeout() time.Duration {
 // take adds a frame; when its view is whole the view is run, when all are whole the
 // showing is finished. A frame that is here already is a resend: its client is
 // answered with the others.
-func (s *showing) take(f pipeline.Frame, client any, answer Answer) error {
+func (s *showing) take(f pipeline.Frame, b *buffer, client any, answer Answer) error {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	h := f.Header
@@ -140,7 +140,7 @@ func (s *showing) take(f pipeline.Frame, client any, answer Answer) error {
 		return errEnded
 	}
 	if s.resent(h) {
-		s.intake.admission.give(int64(len(f.Raw.Data)))
+		b.giveBack()
 		s.answers[client] = answer
 		return nil
 	}
@@ -149,7 +149,7 @@ func (s *showing) take(f pipeline.Frame, client any, answer Answer) error {
 	}
 	s.frames[h.View] = append(s.frames[h.View], f)
 	s.answers[client] = answer
-	s.bytes += int64(len(f.Raw.Data))
+	s.buffers = append(s.buffers, b)
 	s.lastCame = s.intake.settings.Now()
 	s.spooled = s.spooled || h.Spooled
 	if len(s.frames[h.View]) == h.Count && s.earlier == nil {
