@@ -67,6 +67,16 @@ func (a *checker) region(r *pipeline.Region) error {
 const scaleTolerance = 0.01
 
 func (a *checker) geometry(g pipeline.Geometry) error {
+	if ring, ok := g.(pipeline.Annulus); ok {
+		err := ring.Check()
+		if err == nil {
+			err = ring.Agrees(a.item.Geometry)
+		}
+		if err != nil {
+			return fmt.Errorf("geometry: %w", err)
+		}
+		return nil
+	}
 	w, h := a.size()
 	x, y := float64(w-1)/2, float64(h-1)/2
 	if d, ok := g.(pipeline.Distorted); ok {

@@ -73,9 +73,9 @@ func (s Settings) Check() error {
 // Factory describes the stage.
 func Factory() pipeline.Factory {
 	return pipeline.Make(pipeline.Factory{
-		Type: "unwrap", Version: "1", Scope: pipeline.ScopeView,
+		Type: "unwrap", Version: "2", Scope: pipeline.ScopeView,
 		Summary: "Lays the ring view of a bore, rim or cone out flat, height over angle, and measures its defects in µm on that surface.",
 		Reads:   []string{pipeline.RawPlane},
-		Writes:  []string{"region", "defects", "coverage", FlatPlane, FlatSNRPlane, "measurements"},
+		Writes:  []string{"region", "geometry", "defects", "coverage", FlatPlane, FlatSNRPlane, "measurements"},
 	}, Default, func(s Settings, _ pipeline.Environment) (pipeline.Stage, error) { return stage{s}, nil })
 }

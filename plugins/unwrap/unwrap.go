@@ -23,7 +23,8 @@ type stage struct{ s Settings }
 // once: the half, beyond which one over the seam is measured short.
 const overlapShare = 2
 
-// Run implements pipeline.Stage. It makes the view's region itself: the ring.
+// Run implements pipeline.Stage. It makes the view's region itself, the ring, and its
+// geometry: later stages measure on the part too.
 func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	raw, err := item.Raw()
 	if err != nil {
@@ -33,7 +34,10 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	if r := a.OuterPx; a.CentreX-r < -0.5 || a.CentreY-r < -0.5 || a.CentreX+r > float64(raw.Width)-0.5 || a.CentreY+r > float64(raw.Height)-0.5 {
 		return pipeline.Invalid("outer_radius_px: the ring of radius %g px about (%g, %g) leaves the frame of %d × %d px", r, a.CentreX, a.CentreY, raw.Width, raw.Height)
 	}
-	g := a.layOut(overlapShare)
+	if err := a.Agrees(item.Geometry); err != nil {
+		return err
+	}
+	g := layOut(a, overlapShare)
 	flat := g.sample(raw)
 	mask := raster.NewMask(flat.Width, flat.Height)
 	for i := range mask.Bits {
@@ -54,19 +58,20 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	st.turn(snr)
 	item.SetPlane(FlatPlane, "DN", flat)
 	item.SetPlane(FlatSNRPlane, "sigma", snr)
-	item.Region = a.region(raw.Width, raw.Height)
-	item.Coverage = coverage(item.Region.Mask().Count(), raw, item, cells, a)
+	item.Geometry = a
+	item.Region = regionOf(a, raw.Width, raw.Height)
+	item.Coverage = coverage(item.Region.Mask().Count(), raw, item, cells)
 	st.find(item, g, signal, noise, snr, mask)
 	item.Measure("unwrapped_area_mm2", a.AreaMM2(), "mm2")
 	return ctx.Err()
 }
 
-func (st stage) annulus(raw *raster.Plane) Annulus {
+func (st stage) annulus(raw *raster.Plane) pipeline.Annulus {
 	x, y := st.s.CentreXPx, st.s.CentreYPx
 	if x == 0 && y == 0 {
 		x, y = float64(raw.Width-1)/2, float64(raw.Height-1)/2
 	}
-	return NewAnnulus(st.s, x, y)
+	return newAnnulus(st.s, x, y)
 }
 
 // turn makes defects of the polarity positive.
@@ -102,7 +107,7 @@ func bilinear(p *raster.Plane, column, row float64, g grid) float32 {
 }
 
 // region is the ring on the frame, with the area that it has on the part.
-func (a Annulus) region(width, height int) *pipeline.Region {
+func regionOf(a pipeline.Annulus, width, height int) *pipeline.Region {
 	var spans []raster.Span
 	mask := raster.NewMask(width, height)
 	for y := range height {
@@ -123,7 +128,7 @@ func (a Annulus) region(width, height int) *pipeline.Region {
 
 // coverage counts the share of cells of the flat picture whose level and noise were
 // seen, and the ring's saturated pixels.
-func coverage(pixels int, raw *raster.Plane, item *pipeline.Item, cells *raster.Grid, a Annulus) pipeline.Coverage {
+func coverage(pixels int, raw *raster.Plane, item *pipeline.Item, cells *raster.Grid) pipeline.Coverage {
 	seen, inside := 0, 0
 	for i := range cells.Filled {
 		inside += cells.Inside[i]

@@ -14,7 +14,7 @@ import (
 	"lapgate/plugins/stagetest"
 )
 
-func bore() Annulus { return NewAnnulus(Default, 399.5, 399.5) }
+func bore() pipeline.Annulus { return newAnnulus(Default, 399.5, 399.5) }
 
 func near(t *testing.T, what string, got, want, tolerance float64) {
 	t.Helper()
@@ -23,57 +23,12 @@ func near(t *testing.T, what string, got, want, tolerance float64) {
 	}
 }
 
-// Cylinder of radius R: a quarter turn is πR/2 of arc, the area 2πR·h; frustum of radii
-// R₁ and R₂: slant √(h² + (R₂−R₁)²), area π(R₁+R₂)·slant. Textbook mensuration.
-func TestAnnulusInClosedForm(t *testing.T) {
-	a := bore()
-	u, v, _ := a.ToStation(399.5, 399.5+250)
-	near(t, "arc of a quarter turn", u, math.Pi/2*10_000, 1e-6)
-	near(t, "middle height", v, 0, 1e-6)
-	near(t, "area of the cylinder", a.AreaMM2(), 2*math.Pi*10*10, 1e-9)
-	s := Default
-	s.OuterDiameterMM, s.HeightMM = 26, 4
-	cone := NewAnnulus(s, 100, 100)
-	near(t, "slant", cone.SlantUM, 5000, 1e-9)
-	near(t, "area of the frustum", cone.AreaMM2(), math.Pi*23*5, 1e-9)
-	_, v, _ = cone.ToStation(100+350, 100)
-	near(t, "outer edge", v, 2500, 1e-9)
-}
-
-// ToPixel is the inverse of ToStation, and the square of the scale is the surface that a
-// pixel covers: the Jacobian of the map, here by differences, for the cylinder.
-func TestAnnulusThereAndBack(t *testing.T) {
-	random := rand.New(rand.NewPCG(1, 2))
-	s := Default
-	s.OuterDiameterMM = 24
-	for _, a := range []Annulus{bore(), NewAnnulus(s, 399.5, 399.5)} {
-		for range 200 {
-			r, angle := 155+190*random.Float64(), 2*math.Pi*random.Float64()-math.Pi
-			x, y := a.CentreX+r*math.Cos(angle), a.CentreY+r*math.Sin(angle)
-			u, v, scale := a.ToStation(x, y)
-			bx, by := a.ToPixel(u, v)
-			near(t, "x", bx, x, 1e-9)
-			near(t, "y", by, y, 1e-9)
-			if a.InnerUM == a.OuterUM && math.Abs(angle) < 3 {
-				const h = 1e-4
-				ux, vx, _ := a.ToStation(x+h, y)
-				uy, vy, _ := a.ToStation(x, y+h)
-				near(t, "scale²", math.Abs((ux-u)*(vy-v)-(vx-v)*(uy-u))/(h*h), scale*scale, 1e-2*scale*scale)
-			}
-		}
-	}
-	moved := bore().WithOrigin(10, 20).(Annulus)
-	if moved.CentreX != 10 || moved.CentreY != 20 || moved.InnerPx != 150 {
-		t.Errorf("got %+v", moved)
-	}
-}
-
 // mark is something bright on the surface: true where it is, u and v in µm.
 type mark func(u, v float64) bool
 
 // frame draws marks on the bore as the camera sees them, each pixel of 3 × 3 points,
 // blurred no further, on 20 DN with noise of 1 DN.
-func frame(a Annulus, side int, marks ...mark) *pipeline.Item {
+func frame(a pipeline.Annulus, side int, marks ...mark) *pipeline.Item {
 	const sub = 3
 	random := rand.New(rand.NewPCG(3, 4))
 	counts := make([]uint16, side*side)
@@ -188,7 +143,7 @@ func TestDemoFrame(t *testing.T) {
 	const file = "../outside/demo/unwrap.png"
 	s := Default
 	s.InnerRadiusPx, s.OuterRadiusPx = 75, 175
-	a := NewAnnulus(s, 199.5, 199.5)
+	a := newAnnulus(s, 199.5, 199.5)
 	if *update {
 		if err := files.Write(file, frame(a, 400, disc(5000, 2000, 900), bar(-15000, 0, 5000, 400, 90)).Frames[0].Raw); err != nil {
 			t.Fatal(err)
@@ -228,7 +183,7 @@ func TestConforms(t *testing.T) {
 		}, env)
 	}
 	stagetest.Run(t, f, func(raw raster.Raw) *pipeline.Item {
-		return &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}, Geometry: pipeline.Planar{UMPerPx: 10}}
+		return &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}, Geometry: pipeline.Planar{UMPerPx: 200}}
 	})
 }
 

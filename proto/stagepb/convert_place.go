@@ -18,6 +18,9 @@ func FromGeometry(g pipeline.Geometry) (*Geometry, error) {
 		l := g.Lens
 		return &Geometry{Planar: fromPlanar(g.Planar),
 			Distortion: &Distortion{K1: l.K1, K2: l.K2, CentreX: l.CentreX, CentreY: l.CentreY, NormPx: l.NormPx}}, nil
+	case pipeline.Annulus:
+		return &Geometry{Annulus: &Annulus{CentreX: g.CentreX, CentreY: g.CentreY, InnerPx: g.InnerPx, OuterPx: g.OuterPx,
+			InnerUm: g.InnerUM, OuterUm: g.OuterUM, SlantUm: g.SlantUM}}, nil
 	}
 	return nil, fmt.Errorf("a geometry of type %T cannot be sent to a stage outside; put that stage before the one that makes it", g)
 }
@@ -26,6 +29,10 @@ func FromGeometry(g pipeline.Geometry) (*Geometry, error) {
 func ToGeometry(g *Geometry) pipeline.Geometry {
 	if g == nil {
 		return nil
+	}
+	if a := g.GetAnnulus(); a != nil {
+		return pipeline.Annulus{CentreX: a.GetCentreX(), CentreY: a.GetCentreY(), InnerPx: a.GetInnerPx(), OuterPx: a.GetOuterPx(),
+			InnerUM: a.GetInnerUm(), OuterUM: a.GetOuterUm(), SlantUM: a.GetSlantUm()}
 	}
 	p := g.GetPlanar()
 	planar := pipeline.Planar{OriginX: p.GetOriginX(), OriginY: p.GetOriginY(), UMPerPx: p.GetUmPerPx(), RotationDeg: p.GetRotationDeg(), Mirror: p.GetMirror()}

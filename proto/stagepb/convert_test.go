@@ -246,3 +246,17 @@ func TestUnalignedValues(t *testing.T) {
 		t.Errorf("got %v", got)
 	}
 }
+
+// A geometry comes back as the kind that it is, number for number.
+func TestGeometryRoundTrip(t *testing.T) {
+	rng := rand.New(rand.NewPCG(5, 6))
+	for _, want := range []pipeline.Geometry{filled[pipeline.Planar](rng), filled[pipeline.Distorted](rng), filled[pipeline.Annulus](rng)} {
+		m, err := FromGeometry(want)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if got := ToGeometry(overWire(t, m)); !reflect.DeepEqual(got, want) {
+			t.Errorf("got %#v, want %#v", got, want)
+		}
+	}
+}
