@@ -15,6 +15,9 @@ type Options struct {
 	ReadFile       func(name string) ([]byte, error)
 	ProgramVersion string
 	Unfused        bool // run every stage by itself, for comparison
+	// Earlier returns the headers of the latest frames of a view that the station showed
+	// before, oldest first; nil = nothing is on record.
+	Earlier func(view string, most int) ([]FrameHeader, error)
 }
 
 // Pipeline is a recipe ready to run. It is safe for concurrent use.
@@ -89,6 +92,9 @@ func (p *Pipeline) buildView(v RecipeView, cat *Catalogue, opt Options) (*viewLi
 		hash = cal.Hash
 	}
 	env := Environment{View: v.Name, Calibration: cal, Calibrations: opt.Calibrations, Geometry: geometry, ReadFile: opt.ReadFile}
+	if opt.Earlier != nil {
+		env.Earlier = func(most int) ([]FrameHeader, error) { return opt.Earlier(v.Name, most) }
+	}
 	stages, form, err := p.buildStages(v.Stages, ScopeView, cat, env)
 	if err != nil {
 		return nil, nil, fmt.Errorf("view %q: %w", v.Name, err)

@@ -37,6 +37,9 @@ type Environment struct {
 	Calibrations map[string]*Calibration           // of all views of the recipe, by name
 	Geometry     Geometry                          // scale, rotation and mirror of the view; origin unknown yet
 	ReadFile     func(name string) ([]byte, error) // files beside the recipe; nil = none
+	// Earlier returns the headers of the latest frames of this view that are on record at the
+	// station, most at most, oldest first; nil = nothing is on record.
+	Earlier func(most int) ([]FrameHeader, error)
 }
 
 // Factory makes a stage of one type and describes it.

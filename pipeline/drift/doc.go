@@ -1,3 +1,4 @@
 // Package drift holds light, focus, scale and fixed pattern of a view against its
-// calibration. It finds no defect and remembers no unit.
+// calibration, each with bounds for a warning and for a hold. It finds no defect and
+// remembers no unit.
 package drift

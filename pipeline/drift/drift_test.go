@@ -88,7 +88,11 @@ func calibration(t *testing.T) *pipeline.Calibration {
 func TestLightFollowsTheLamp(t *testing.T) {
 	c := calibration(t)
 	for power, want := range map[float64]State{1: Steady, 0.93: Warning, 0.8: Held, 0.02: Held, 1.08: Warning, 1.2: Held} {
-		r, err := Light(partFrame(t, power), c, LightBounds())
+		patch, err := NewPatch(c, c.Reference.Box)
+		if err != nil {
+			t.Fatal(err)
+		}
+		r, _, err := patch.Light(partFrame(t, power), 255, c, LightBounds())
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -112,8 +116,21 @@ func TestPatternTellsAMovedPicture(t *testing.T) {
 		copy(moved.Row(y)[2:], frame.Row(y)[:398])
 	}
 	r, ok = Pattern(moved, 255, c, PatternBounds())
-	if !ok || math.Abs(r.Value) > 0.2 || r.State != Held || !strings.Contains(r.Proof().Reason, "another camera") {
+	if !ok || math.Abs(r.Value) > 0.2 || r.State != Held {
 		t.Errorf("moved: got %+v, %v", r, ok)
+	}
+	if !strings.Contains(r.Cause, "(+2, +0) px") {
+		t.Errorf("moved: the cause is %q", r.Cause)
+	}
+	other := raster.NewPlane(400, 320) // mirrored: the marks are nowhere near
+	for y := range 320 {
+		for x, v := range frame.Row(y) {
+			other.Set(399-x, y, v)
+		}
+	}
+	r, ok = Pattern(other, 255, c, PatternBounds())
+	if !ok || r.State != Held || !strings.Contains(r.Proof().Reason, "another camera") {
+		t.Errorf("mirrored: got %+v, %v", r, ok)
 	}
 	c.FixedPattern = c.FixedPattern[:2]
 	if _, ok = Pattern(frame, 255, c, PatternBounds()); ok {
@@ -138,25 +155,55 @@ func TestFocusAndScale(t *testing.T) {
 	}
 }
 
-func TestApplyWritesProofAndMeasurements(t *testing.T) {
-	item := &pipeline.Item{}
-	reading(pipeline.ProofLight, 0.93, 0, LightBounds(), "low", "high").Apply(item)
-	reading(NameScale, 1.5, 0, ScaleBounds(), "low", "high").Apply(item)
-	if len(item.Proofs) != 2 || !item.Proofs[0].OK || item.Proofs[1].OK || !strings.Contains(item.Proofs[1].Reason, "high") {
-		t.Errorf("proofs %+v", item.Proofs)
-	}
-	if v, ok := item.Number("light warning"); !ok || v != 0.95 {
-		t.Errorf("warning at %v, %v", v, ok)
-	}
-	if _, ok := item.Number("scale warning"); ok {
-		t.Error("a hold is no warning")
+func TestProofsCarryWarnings(t *testing.T) {
+	for value, want := range map[float64]State{1: Steady, 0.93: Warning, 1.3: Held} {
+		p := reading(pipeline.ProofLight, value, 0, LightBounds(), "low", "high").Proof()
+		if p.State() != string(want) || (p.Warning != "") != (want == Warning) || (p.Reason != "") != (want == Held) || p.WarnLow != 0.95 || p.High != 1.15 {
+			t.Errorf("%v: got %+v, want %s", value, p, want)
+		}
 	}
 }
 
-func TestPatchOutsideTheFrameIsRefused(t *testing.T) {
+func TestTheWorseReadingCounts(t *testing.T) {
+	at := func(v float64) Reading { return reading(pipeline.ProofLight, v, 0, LightBounds(), "low", "high") }
+	for _, c := range [][3]float64{{1, 0.9, 0.9}, {0.8, 1.1, 0.8}, {1.01, 0.98, 0.98}} {
+		if got := Worse(at(c[0]), at(c[1])); got.Value != c[2] {
+			t.Errorf("of %v and %v: %v", c[0], c[1], got.Value)
+		}
+	}
+}
+
+func TestBoundsAreInOrder(t *testing.T) {
+	for _, b := range []Bounds{{}, LightBounds(), FocusBounds(), ScaleBounds(), PatternBounds()} {
+		if err := b.Check("light"); err != nil {
+			t.Error(err)
+		}
+	}
+	for _, b := range []Bounds{{0.9, 0.8, 1.1, 1.2}, {0.8, 1.01, 1.1, 1.2}, {0.8, 0.9, 1.1, 1.05}, {-1, 0.9, 1.1, 1.2}, {0.8, 0.9, 1.1, math.NaN()}} {
+		if err := b.Check("light"); err == nil || !strings.HasPrefix(err.Error(), "light: ") {
+			t.Errorf("%+v: got %v", b, err)
+		}
+	}
+}
+
+func TestPatchIsRefused(t *testing.T) {
 	c := calibration(t)
-	c.Reference.Box.X1 = 500
-	if _, err := Light(partFrame(t, 1), c, LightBounds()); pipeline.KindOf(err) != pipeline.InvalidKind {
-		t.Errorf("got %v", err)
+	for name, box := range map[string]pipeline.Box{"beyond": {X0: 12, Y0: 12, X1: 500, Y1: 44}, "nothing there": {X0: 80, Y0: 4, X1: 90, Y1: 14}} {
+		c.Stray = raster.NewPlane(400, 320)
+		if _, err := NewPatch(c, box); pipeline.KindOf(err) != pipeline.InvalidKind {
+			t.Errorf("%s: got %v", name, err)
+		}
+	}
+	c.Stray = nil
+	if _, err := NewPatch(c, pipeline.Box{X0: 1, Y0: 1, X1: 9, Y1: 9}); pipeline.KindOf(err) != pipeline.InvalidKind {
+		t.Errorf("no stray frames: got %v", err)
+	}
+	saturated := partFrame(t, 1)
+	for i := range saturated.Pix {
+		saturated.Pix[i] = 255
+	}
+	patch, _ := NewPatch(c, c.Reference.Box)
+	if r, _, err := patch.Light(saturated, 255, c, Bounds{0.1, 0.2, 9, 10}); err != nil || r.State != Held || !strings.Contains(r.Proof().Reason, "saturated") {
+		t.Errorf("saturated: %+v, %v", r, err)
 	}
 }

@@ -1,5 +1,5 @@
 // Package proof is the stage that proves of a view, before its defects count, that the
-// light was there, that the frame is new and whole, and that the camera looks where it
+// light was there, that the frames are new and whole, and that the camera looks where it
 // did when it was calibrated. It finds no part and no defect.
 //
 // light: the mean of (frame − dark) over a diffuse patch in the field that the lamp lights,
@@ -9,8 +9,11 @@
 // live data: no row, column or block of one value, no row twice, not bit for bit an earlier
 // frame of the station, no gap in the frame counter where its step is stated.
 //
-// pattern: the hot pixels of the calibration stand out of the frame where they should.
+// pattern: the calibration's pixels that stand out of their neighbours still do, by as much.
 //
-// What earlier frames looked like is kept in memory, per station and camera: after a
-// start there is nothing to compare the first frame with.
+// light and pattern have bounds for a warning inside those for a hold (package drift). Every
+// frame of a sequence is looked at, and the one furthest out is the proof.
+//
+// What earlier frames looked like is kept in memory, per station and camera. After a start
+// or a new recipe it is taken from what the server has on record.
 package proof

@@ -38,7 +38,7 @@ type showing struct {
 	attempt  int
 	index    int
 	counter  uint64
-	captured time.Time
+	captured int64 // ns since 1970
 }
 
 func newMemory(depth int) *memory { return &memory{depth: depth, at: map[string]*station{}} }
@@ -47,13 +47,14 @@ func newMemory(depth int) *memory { return &memory{depth: depth, at: map[string]
 // The same showing again is no repeat: it is inspected a second time.
 func (m *memory) look(f pipeline.Frame, step int) string {
 	h := f.Header
-	s := seen{size: len(f.Raw.Data), crc: h.CRC32C, showing: showing{unit: h.Unit, attempt: h.Attempt, index: h.Index, counter: h.FrameCounter, captured: h.Captured}}
+	s := seenOf(h)
+	s.size = len(f.Raw.Data)
 	if s.crc == 0 {
 		s.crc = pipeline.Checksum(f.Raw.Data)
 	}
 	m.mu.Lock()
 	defer m.mu.Unlock()
-	at := m.station(h.Station + "\x00" + h.CameraID)
+	at := m.station(stationKey(h))
 	for _, old := range at.ring {
 		if old.size != s.size || old.crc != s.crc {
 			continue
@@ -61,11 +62,29 @@ func (m *memory) look(f pipeline.Frame, step int) string {
 		if old.showing == s.showing {
 			return ""
 		}
-		return fmt.Sprintf("the frame is repeated: bit for bit the one of unit %s taken at %s", old.unit, old.captured.UTC().Format(time.RFC3339Nano))
+		return fmt.Sprintf("the frame is repeated: bit for bit the one of unit %s taken at %s", old.unit, time.Unix(0, old.captured).UTC().Format(time.RFC3339Nano))
 	}
 	at.keep(s, m.depth)
 	return at.count(h.FrameCounter, step)
 }
+
+func seenOf(h pipeline.FrameHeader) seen {
+	return seen{size: h.Stride * h.Height, crc: h.CRC32C, showing: showing{unit: h.Unit, attempt: h.Attempt, index: h.Index, counter: h.FrameCounter, captured: h.Captured.UnixNano()}}
+}
+
+// recall keeps frames that a station showed before the program started, oldest first. The
+// frame counter is not taken up: the camera went on while nobody looked.
+func (m *memory) recall(earlier []pipeline.FrameHeader) {
+	m.mu.Lock()
+	defer m.mu.Unlock()
+	for _, h := range earlier {
+		if h.CRC32C != 0 {
+			m.station(stationKey(h)).keep(seenOf(h), m.depth)
+		}
+	}
+}
+
+func stationKey(h pipeline.FrameHeader) string { return h.Station + "\x00" + h.CameraID }
 
 func (m *memory) station(key string) *station {
 	m.tick++

@@ -77,7 +77,7 @@ func TestCausesAreNamed(t *testing.T) {
 	spoilers := []render.Spoiler{{Kind: render.SpoilLamp}, {Kind: render.SpoilLamp, Value: 0.3}, {Kind: render.SpoilCap}, {Kind: render.SpoilLamp, Value: 1.5},
 		{Kind: render.SpoilBlackBand, Value: 0.1}, {Kind: render.SpoilShift, Value: 2}}
 	want := []struct{ proof, text string }{{"light", "lamp is off"}, {"light", "lamp is weak"}, {"light", "lens is capped"}, {"light", "too bright"},
-		{"live data", "lines were not transferred"}, {"pattern", "(+2, +0) px from there, so the read-out window moved"}}
+		{"live data", "lines were not transferred"}, {"pattern", "(+2, +0) px from where they were, so the read-out window moved"}}
 	r := stagetest.Render(t, scene(spoilers...))
 	for i, w := range want {
 		u := r.Unit(i + 1)
@@ -142,7 +142,7 @@ func TestPhotodiode(t *testing.T) {
 		s.PatchWidthPx, s.PatchHeightPx, s.PhotodiodeTag, s.PhotodiodeNominal = 0, 0, "photodiode", 2000
 	}
 	r := stagetest.Render(t, scene())
-	for value, want := range map[string]string{"1980": "", "900": "photodiode shows 45 %", "": "want the photodiode's number", "NaN": "want the photodiode's number"} {
+	for value, want := range map[string]string{"1980": "", "900": "the photodiode shows 45 %", "": "want the photodiode's number", "NaN": "want the photodiode's number"} {
 		u := r.Unit(0)
 		item := r.Item(&u, "ring")
 		item.Frames[0].Header.Tags = map[string]string{"photodiode": value}
@@ -150,6 +150,70 @@ func TestPhotodiode(t *testing.T) {
 		if p.OK != (want == "") || !strings.Contains(p.Reason, want) {
 			t.Errorf("%q: got %+v", value, p)
 		}
+	}
+}
+
+// The lamp gets weaker from unit to unit: steady, then warnings that say what to look at,
+// then holds.
+func TestALampThatDropsIsWarnedOfBeforeItHolds(t *testing.T) {
+	powers := []float64{1, 0.97, 0.93, 0.88, 0.83, 0.7}
+	want := []string{"steady", "steady", "warning", "warning", "hold", "hold"}
+	s := stagetest.SmallScene()
+	for i, power := range powers {
+		s.Spoilers = append(s.Spoilers, render.Spoiler{Unit: i, Kind: render.SpoilLamp, Value: power})
+	}
+	r := stagetest.Render(t, s)
+	st := stageFor(t, r, "ring", nil)
+	for i, power := range powers {
+		u := r.Unit(i)
+		p := prove(t, st, r.Item(&u, "ring"))[pipeline.ProofLight]
+		if p.State() != want[i] || p.Value < power-0.02 || p.Value > power+0.02 {
+			t.Errorf("lamp at %v: %s, %+v, want %s", power, p.State(), p, want[i])
+		}
+		if want[i] == "warning" && !strings.Contains(p.Warning, "the lamp is weak") {
+			t.Errorf("lamp at %v: the warning says %q", power, p.Warning)
+		}
+	}
+}
+
+// Of a sequence every frame is looked at, not the first alone.
+func TestTheWorstFrameOfASequenceCounts(t *testing.T) {
+	r := stagetest.Render(t, scene(render.Spoiler{Kind: render.SpoilLamp, Value: 0.3}))
+	good, dim := r.Unit(0), r.Unit(1)
+	item := r.Item(&good, "ring")
+	item.Frames = append(item.Frames, r.Item(&dim, "ring").Frames...)
+	p := prove(t, stageFor(t, r, "ring", nil), item)[pipeline.ProofLight]
+	if p.OK || !strings.Contains(p.Reason, "lamp is weak") {
+		t.Errorf("got %+v", p)
+	}
+}
+
+// A picture that was on record before the stage was made is a repeat too; the same showing
+// inspected again is none.
+func TestWhatIsOnRecordIsRemembered(t *testing.T) {
+	r := stagetest.Render(t, scene())
+	u := r.Unit(0)
+	before := r.Item(&u, "ring")
+	before.Frames[0].Header.CRC32C = pipeline.Checksum(before.Frames[0].Raw.Data)
+	before.Frames[0].Header.Stride, before.Frames[0].Header.Height = before.Frames[0].Raw.Stride, before.Frames[0].Raw.Height
+	env := r.Env("ring")
+	asked := 0
+	env.Earlier = func(most int) ([]pipeline.FrameHeader, error) {
+		asked = most
+		return []pipeline.FrameHeader{before.Frames[0].Header}, nil
+	}
+	st, _, err := Factory.New(settings(nil), env)
+	if err != nil || asked != Default.RepeatFrames {
+		t.Fatalf("asked for %d, %v", asked, err)
+	}
+	if p := prove(t, st, before.Fork())[pipeline.ProofLive]; !p.OK {
+		t.Errorf("the same showing: %+v", p)
+	}
+	next := r.Unit(1)
+	again := r.Item(&next, "ring")
+	again.Frames[0].Raw, again.Frames[0].Header.CRC32C = before.Frames[0].Raw, before.Frames[0].Header.CRC32C
+	if p := prove(t, st, again)[pipeline.ProofLive]; p.OK || !strings.Contains(p.Reason, "bit for bit the one of unit T001") {
+		t.Errorf("another unit: %+v", p)
 	}
 }
 
@@ -190,8 +254,8 @@ func TestPatchThatIsNotThere(t *testing.T) {
 func TestCheckNamesTheKey(t *testing.T) {
 	for key, change := range map[string]func(*Settings){
 		"patch_height_px": func(s *Settings) { s.PatchWidthPx = 3 }, "patch_x_px": func(s *Settings) { s.PatchXPx = -1 },
-		"min_light": func(s *Settings) { s.MinLight = 0 }, "max_light": func(s *Settings) { s.MaxLight = 0.9 }, "block_px": func(s *Settings) { s.BlockPx = 2 },
-		"photodiode_nominal": func(s *Settings) { s.PhotodiodeTag = "p" }, "min_pattern_share": func(s *Settings) { s.MinPatternShare = 2 },
+		"light": func(s *Settings) { s.Light.HoldAbove = 0.9 }, "block_px": func(s *Settings) { s.BlockPx = 2 },
+		"photodiode_nominal": func(s *Settings) { s.PhotodiodeTag = "p" }, "pattern": func(s *Settings) { s.Pattern.WarnBelow = 2 },
 	} {
 		s := Default
 		change(&s)

@@ -4,6 +4,7 @@ import (
 	"fmt"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/drift"
 )
 
 // Settings of the stage.
@@ -19,29 +20,31 @@ type Settings struct {
 	PhotodiodeTag string `json:"photodiode_tag" yaml:"photodiode_tag"`
 	// PhotodiodeNominal is that value when the calibration was made; above 0 with a tag.
 	PhotodiodeNominal float64 `json:"photodiode_nominal" yaml:"photodiode_nominal"`
-	// MinLight and MaxLight are the allowed light relative to the calibration.
-	MinLight float64 `json:"min_light" yaml:"min_light"`
-	MaxLight float64 `json:"max_light" yaml:"max_light"`
+	// Light is the light relative to the calibration: hold_below, warn_below, warn_above and
+	// hold_above. All 0: light is not proven by measure.
+	Light drift.Bounds `json:"light" yaml:"light"`
 	// LightTag names the header's tag that says which light was on; it must be the
 	// calibration's. Empty: not compared.
 	LightTag string `json:"light_tag" yaml:"light_tag"`
 	// BlockPx is the side of the blocks that must not be of one value, in px. 0: blocks are
 	// not looked at. Blocks at the top of the range are saturated, which is held elsewhere.
 	BlockPx int `json:"block_px" yaml:"block_px"`
-	// RepeatFrames is how many earlier frames of a station a frame must differ from. 0: none.
+	// RepeatFrames is how many earlier frames of a station and view a frame must differ from;
+	// after a start the server gives those on record. 0: none.
 	RepeatFrames int `json:"repeat_frames" yaml:"repeat_frames"`
 	// CounterStep is by how much the camera's frame counter goes up from one frame of this
 	// view to the next. 0: gaps are not looked for, as where a station's units are
 	// inspected at the same time and may overtake each other.
 	CounterStep int `json:"counter_step" yaml:"counter_step"`
-	// MinPatternShare is the share of the calibration's hot pixels, 0 to 1, that must stand
-	// out where they should. 0: not proven. With fewer than 8 hot pixels it never is.
-	MinPatternShare float64 `json:"min_pattern_share" yaml:"min_pattern_share"`
+	// Pattern is how much of the sensor's own pattern stands where the calibration has it, 1
+	// = all, with the same four bounds. All 0: not proven. Where the pattern is too faint to be
+	// told in the view's light it never is.
+	Pattern drift.Bounds `json:"pattern" yaml:"pattern"`
 }
 
-// Default allows a tenth and a half more or less light, compares with 256 frames and wants
-// 6 of 10 hot pixels in place.
-var Default = Settings{MinLight: 0.85, MaxLight: 1.15, BlockPx: 16, RepeatFrames: 256, MinPatternShare: 0.6}
+// Default warns at a twentieth and holds at 15 % of light lost or gained, and compares with
+// 256 frames.
+var Default = Settings{Light: drift.LightBounds(), BlockPx: 16, RepeatFrames: 256, Pattern: drift.PatternBounds()}
 
 const (
 	maxSidePx  = 1 << 16
@@ -65,16 +68,15 @@ func (s Settings) Check() error {
 		return fmt.Errorf("patch_height_px: got %d × %d px, want both above 0 or none", s.PatchWidthPx, s.PatchHeightPx)
 	case s.BlockPx > 0 && s.BlockPx < 4:
 		return fmt.Errorf("block_px: got %d, want 0 or 4 to 1024: smaller ones are of one value by chance", s.BlockPx)
-	case !(s.MinLight > 0 && s.MinLight <= 1):
-		return fmt.Errorf("min_light: got %g, want above 0 and at most 1", s.MinLight)
-	case !(s.MaxLight >= 1 && s.MaxLight <= 100):
-		return fmt.Errorf("max_light: got %g, want 1 to 100", s.MaxLight)
 	case s.PhotodiodeTag != "" && !(s.PhotodiodeNominal > 0 && s.PhotodiodeNominal <= 1e9):
 		return fmt.Errorf("photodiode_nominal: got %g, want above 0 for photodiode_tag %q", s.PhotodiodeNominal, s.PhotodiodeTag)
-	case !(s.MinPatternShare >= 0 && s.MinPatternShare <= 1):
-		return fmt.Errorf("min_pattern_share: got %g, want 0 to 1", s.MinPatternShare)
+	case s.PhotodiodeTag != "" && s.Light.Off():
+		return fmt.Errorf("light: got no bounds, want some for photodiode_tag %q", s.PhotodiodeTag)
 	}
-	return nil
+	if err := s.Light.Check("light"); err != nil {
+		return err
+	}
+	return s.Pattern.Check("pattern")
 }
 
 // box returns the patch of the settings or the calibration's; false where there is none.

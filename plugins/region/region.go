@@ -6,12 +6,13 @@ import (
 	"math"
 
 	"lapgate/pipeline"
+	"lapgate/pipeline/drift"
 	"lapgate/pipeline/raster"
 )
 
 // Factory describes the stage.
 var Factory = withMaskHash(pipeline.Make(pipeline.Factory{
-	Type: "region", Version: "1", Scope: pipeline.ScopeView,
+	Type: "region", Version: "2", Scope: pipeline.ScopeView,
 	Summary: "Finds the part on the frame as received and lays the drawing's zones over it.",
 	Reads:   []string{pipeline.RawPlane}, Writes: []string{"region", "geometry"},
 }, Default, build))
@@ -33,6 +34,8 @@ type stage struct {
 	s        Settings
 	geometry pipeline.Geometry
 	mask     *raster.Mask // for MaskImage
+	// calibration is there only where it knows the edge of a conforming part.
+	calibration *pipeline.Calibration
 }
 
 func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
@@ -40,12 +43,11 @@ func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
 	if st.geometry == nil {
 		return nil, pipeline.Invalid("region: the view has no scale; give um_per_px")
 	}
-	if s.MaxEdgeWidthRatio > 0 {
-		c := env.Calibration
-		if c == nil || c.PartEdge == nil || !(c.PartEdge.WidthPx > 0) {
-			return nil, pipeline.Invalid("max_edge_width_ratio: the calibration knows no edge of a conforming part; calibrate with one, or give max_edge_width_px")
-		}
-		st.s.MaxEdgeWidthPx = s.MaxEdgeWidthRatio * c.PartEdge.WidthPx
+	if s.Shape == FoundCircle && env.Calibration != nil && env.Calibration.PartEdge != nil {
+		st.calibration = env.Calibration
+	}
+	if s.NeedPartEdge && st.calibration == nil {
+		return nil, pipeline.Invalid("need_part_edge: the calibration knows no edge of a conforming part; calibrate with one (--part)")
 	}
 	if s.Shape == MaskImage {
 		mask, sum, err := readMask(s.MaskFile, env.ReadFile)
@@ -175,13 +177,27 @@ func (st *stage) prove(item *pipeline.Item, proof pipeline.Proof, fit raster.Cir
 		proof.OK = true
 	}
 	item.Prove(proof)
-	if s.MaxEdgeWidthPx > 0 {
-		focus := pipeline.Proof{Name: "focus", Value: fit.EdgeWidth, High: s.MaxEdgeWidthPx, Unit: "px"}
-		focus.OK = fit.EdgeWidth > 0 && fit.EdgeWidth <= s.MaxEdgeWidthPx
-		if !focus.OK {
-			focus.Reason = fmt.Sprintf("the part's edge is %.2f px wide (10–90 %%), want at most %.2f: check focus", fit.EdgeWidth, s.MaxEdgeWidthPx)
+	st.proveFocus(item, fit)
+	if st.calibration != nil && !s.Scale.Off() {
+		if r, err := drift.Scale(2*fit.R, 0, st.calibration, s.Scale); err == nil {
+			item.Prove(r.Proof())
 		}
-		item.Prove(focus)
+	}
+}
+
+// proveFocus holds the edge against the calibration's, and against the bound in px.
+func (st *stage) proveFocus(item *pipeline.Item, fit raster.CircleFit) {
+	most := st.s.MaxEdgeWidthPx
+	bound := pipeline.Proof{Name: pipeline.ProofFocus, Value: fit.EdgeWidth, High: most, Unit: "px", OK: most == 0 || fit.EdgeWidth > 0 && fit.EdgeWidth <= most}
+	if !bound.OK {
+		bound.Reason = fmt.Sprintf("the part's edge is %.2f px wide (10–90 %%), want at most %.2f: check focus", fit.EdgeWidth, most)
+	}
+	r, err := drift.Focus(fit.EdgeWidth, st.calibration, st.s.Focus)
+	switch {
+	case bound.OK && err == nil && !st.s.Focus.Off():
+		item.Prove(r.Proof())
+	case most > 0:
+		item.Prove(bound)
 	}
 }
 

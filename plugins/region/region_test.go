@@ -14,6 +14,8 @@ import (
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
+	"lapgate/pipeline/render"
+	"lapgate/plugins/stagetest"
 )
 
 const umPerPx = 50.
@@ -129,25 +131,56 @@ func TestEdgeOutOfFocusFails(t *testing.T) {
 	}
 }
 
-// The allowed width may be stated relative to the edge of the calibration's part.
-func TestEdgeAgainstTheCalibration(t *testing.T) {
-	decode := settings(func(s *Settings) { disc12(s); s.MaxEdgeWidthRatio = 1.3 })
-	env := pipeline.Environment{Geometry: pipeline.Planar{UMPerPx: umPerPx}}
+func TestTheCalibrationMustKnowTheEdgeWhereAsked(t *testing.T) {
+	decode := settings(func(s *Settings) { disc12(s); s.NeedPartEdge = true })
+	env := pipeline.Environment{Geometry: pipeline.Planar{UMPerPx: umPerPx}, Calibration: &pipeline.Calibration{}}
 	if _, _, err := Factory.New(decode, env); pipeline.KindOf(err) != pipeline.InvalidKind {
 		t.Errorf("without an edge in the calibration: got %v", err)
 	}
-	for width, want := range map[float64]bool{1: false, 2.5: true} {
-		env.Calibration = &pipeline.Calibration{PartEdge: &pipeline.PartEdge{WidthPx: width}}
-		st, _, err := Factory.New(decode, env)
+	env.Calibration.PartEdge = &pipeline.PartEdge{WidthPx: 2.5, DiameterPx: 240}
+	if _, _, err := Factory.New(decode, env); err != nil {
+		t.Error(err)
+	}
+}
+
+// Lens and camera move away from where they were calibrated, a little at each unit: focus
+// and scale go from steady over warning to hold, each by itself.
+func TestFocusAndScaleAreWarnedOfBeforeTheyHold(t *testing.T) {
+	s := stagetest.SmallScene()
+	blur := []float64{0.7, 1.2, 2, 3.5} // px; calibrated at 0.7
+	for i, sigma := range blur {
+		s.Spoilers = append(s.Spoilers, render.Spoiler{Unit: i, Kind: render.SpoilDefocus, Value: sigma})
+	}
+	size := []float64{6.01, 6.03, 6.07} // mm as the calibrated scale has them; 6.06 is 1 % closer
+	for i, mm := range size {
+		s.Spoilers = append(s.Spoilers, render.Spoiler{Unit: len(blur) + i, Kind: render.SpoilDiameter, Value: mm})
+	}
+	r := stagetest.Render(t, s)
+	for view, focus := range map[string]string{"ring": "steady steady warning hold", "back": "steady warning hold hold"} { // a silhouette shows it sooner
+		st, _, err := Factory.New(settings(func(s *Settings) {
+			s.Shape, s.DiameterMM, s.DiameterToleranceMM, s.Polarity, s.NeedPartEdge = FoundCircle, 6, 0.2, map[string]string{"ring": "rim", "back": "dark"}[view], true
+		}), r.Env(view))
 		if err != nil {
 			t.Fatal(err)
 		}
-		item := &pipeline.Item{Frames: []pipeline.Frame{{Raw: part(12, 160, 150)}}, Geometry: env.Geometry}
-		if err := st.Run(context.Background(), item); err != nil {
-			t.Fatal(err)
+		states := map[string][]string{}
+		for i := range len(blur) + len(size) {
+			u := r.Unit(i)
+			item := r.Item(&u, view)
+			if err := st.Run(context.Background(), item); err != nil {
+				t.Fatal(err)
+			}
+			for _, p := range item.Proofs {
+				states[p.Name] = append(states[p.Name], p.State())
+			}
 		}
-		if p := item.Proofs[1]; p.Name != pipeline.ProofFocus || p.OK != want || p.High != 1.3*width {
-			t.Errorf("calibrated %g px: got %+v", width, p)
+		for name, want := range map[string]string{
+			pipeline.ProofFocus: focus + " steady steady steady", pipeline.ProofScale: "steady steady steady steady steady warning hold",
+			pipeline.ProofPart: "steady steady steady steady steady steady steady",
+		} {
+			if got := strings.Join(states[name], " "); got != want {
+				t.Errorf("view %s, %s: %s, want %s", view, name, got, want)
+			}
 		}
 	}
 }

@@ -1,10 +1,13 @@
 package region
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"slices"
 	"strings"
+
+	"lapgate/pipeline/drift"
 )
 
 // The ways to say where the part is.
@@ -43,11 +46,18 @@ type Settings struct {
 	// MaxEdgeRMSPx is how much the edge points may scatter about the circle, in px. 0: 1.5.
 	MaxEdgeRMSPx float64 `json:"max_edge_rms_px" yaml:"max_edge_rms_px"`
 	// MaxEdgeWidthPx is the largest 10–90 % width of the edge that is still in focus, in
-	// px. 0: not proven.
+	// px, whatever the calibration says. 0: no such bound.
 	MaxEdgeWidthPx float64 `json:"max_edge_width_px" yaml:"max_edge_width_px"`
-	// MaxEdgeWidthRatio is the same as a ratio to the edge of the conforming part that the
-	// calibration was made with, which must then be there. 0: max_edge_width_px holds.
-	MaxEdgeWidthRatio float64 `json:"max_edge_width_ratio" yaml:"max_edge_width_ratio"`
+	// Focus is the width of the edge relative to that of the conforming part that the
+	// calibration was made with, as the same polarity shows it: hold_below, warn_below,
+	// warn_above and hold_above. All 0: not proven.
+	Focus drift.Bounds `json:"focus" yaml:"focus"`
+	// Scale is the diameter in px relative to that part's, with the same four bounds. They
+	// must leave room for what good parts differ by. All 0: not proven.
+	Scale drift.Bounds `json:"scale" yaml:"scale"`
+	// NeedPartEdge has the calibration know the edge of a conforming part. false: focus and
+	// scale are proven only where it does.
+	NeedPartEdge bool `json:"need_part_edge" yaml:"need_part_edge"`
 	// Polygon is the corners in px, in order; at least three for the polygon shape.
 	Polygon []Corner `json:"polygon" yaml:"polygon"`
 	// MaskFile is a PNG of the frame's size, beside the recipe: pixels that are not
@@ -80,7 +90,7 @@ type ZoneSettings struct {
 }
 
 // Default is the whole frame as one zone.
-var Default = Settings{Shape: WholeFrame, Polarity: "bright"}
+var Default = Settings{Shape: WholeFrame, Polarity: "bright", Focus: drift.FocusBounds(), Scale: drift.ScaleBounds()}
 
 // Check implements pipeline.Checker.
 func (s Settings) Check() error {
@@ -102,10 +112,15 @@ func (s Settings) Check() error {
 		return fmt.Errorf("polygon: got %d corners, want at least 3", len(s.Polygon))
 	case s.Shape == MaskImage && s.MaskFile == "":
 		return fmt.Errorf("mask_file: not given, want the name of a PNG beside the recipe")
+	case s.NeedPartEdge && s.Shape != FoundCircle:
+		return fmt.Errorf("need_part_edge: got true for shape %s, want it only for %s", s.Shape, FoundCircle)
 	case !s.round() && (len(s.Zones) > 0 || s.RimMM > 0):
 		return fmt.Errorf("zones: got zones or rim_mm for shape %s, want them only for %s and %s", s.Shape, FoundCircle, Circle)
 	case s.round() && 2*s.RimMM >= s.DiameterMM:
 		return fmt.Errorf("rim_mm: got %g, want less than half of diameter_mm (%g)", s.RimMM, s.DiameterMM)
+	}
+	if err := errors.Join(s.Focus.Check("focus"), s.Scale.Check("scale")); err != nil {
+		return err
 	}
 	return s.checkZones()
 }
@@ -124,7 +139,7 @@ func (s Settings) checkNumbers() error {
 		{"diameter_mm", s.DiameterMM, largest}, {"diameter_tolerance_mm", s.DiameterToleranceMM, largest},
 		{"centre_x_px", s.CentreXPx, largest}, {"centre_y_px", s.CentreYPx, largest}, {"search_px", s.SearchPx, largest},
 		{"min_edge_share", s.MinEdgeShare, 1}, {"max_edge_rms_px", s.MaxEdgeRMSPx, largest},
-		{"max_edge_width_px", s.MaxEdgeWidthPx, largest}, {"max_edge_width_ratio", s.MaxEdgeWidthRatio, 100}, {"rim_mm", s.RimMM, largest},
+		{"max_edge_width_px", s.MaxEdgeWidthPx, largest}, {"rim_mm", s.RimMM, largest},
 	}
 	for i, z := range s.Zones {
 		numbers = append(numbers, struct {
