@@ -35,7 +35,7 @@ func serverFlag(c *cobra.Command) *string {
 func connect(server string) (*grpc.ClientConn, error) {
 	return grpc.NewClient(server,
 		grpc.WithTransportCredentials(insecure.NewCredentials()),
-		grpc.WithDefaultCallOptions(grpc.MaxCallRecvMsgSize(maxAnswer)),
+		grpc.WithDefaultCallOptions(grpc.MaxCallRecvMsgSize(maxAnswer), grpc.ForceCodecV2(inspectpb.Codec{})),
 		grpc.WithConnectParams(grpc.ConnectParams{
 			Backoff:           backoff.Config{BaseDelay: 100 * time.Millisecond, Multiplier: 2, Jitter: 0.2, MaxDelay: 2 * time.Second},
 			MinConnectTimeout: 5 * time.Second,

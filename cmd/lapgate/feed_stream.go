@@ -12,7 +12,8 @@ import (
 // chunkBytes keeps a whole message below 1 MiB.
 const chunkBytes = 1_000_000
 
-// job is a frame on its way out.
+// job is a frame on its way out. Its pixels are sent from where they lie and must not be
+// altered any more.
 type job struct {
 	number uint32
 	header pipeline.FrameHeader
