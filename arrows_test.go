@@ -24,6 +24,7 @@ var arrows = map[string][]string{
 	"pipeline/raster":           {},
 	"pipeline/raster/files":     {"pipeline/raster"},
 	"pipeline/raster/fused":     {"pipeline/raster"},
+	"pipeline/raster/lines":     {"pipeline/raster"},
 	"pipeline/raster/cv":        {"pipeline/raster", gocv},
 	"pipeline/rules":            {cel},
 	"pipeline/limits":           {"pipeline", "pipeline/rules"},
@@ -32,7 +33,7 @@ var arrows = map[string][]string{
 	"pipeline/calibrate/emva":   {},
 	"pipeline/calibrate/dots":   {"pipeline", "pipeline/raster"},
 	"pipeline/drift":            {"pipeline", "pipeline/raster"},
-	"plugins/...":               {"pipeline", "pipeline/drift", "pipeline/raster", "pipeline/raster/fused", "pipeline/raster/cv", "pipeline/rules"},
+	"plugins/...":               {"pipeline", "pipeline/drift", "pipeline/raster", "pipeline/raster/fused", "pipeline/raster/lines", "pipeline/raster/cv", "pipeline/rules"},
 	"plugins/detect":            {"pipeline", "pipeline/raster/fused", "pipeline/raster", "plugins/flatfield", "plugins/darkfield", "plugins/blobs"},
 	"plugins/outside":           {"pipeline", "pipeline/raster", "proto/stagepb"},
 	"plugins/stagetest":         {"pipeline", "pipeline/raster", "pipeline/render"},
@@ -44,6 +45,7 @@ var arrows = map[string][]string{
 	"server/ledger":             {"pipeline"},
 	"server/images":             {"pipeline", "pipeline/raster", "pipeline/raster/files"},
 	"server/masters":            {"pipeline", "server/ledger", "server/yield"},
+	"server/retest":             {"pipeline", "server/ledger"},
 	"server/rejudge":            {"pipeline", "pipeline/limits", "server/ledger", "server/images"},
 	"server/yield":              {},
 	"server/study":              {"server/yield"},
@@ -132,7 +134,7 @@ func TestClientIsPureGo(t *testing.T) {
 		t.Fatalf("go list: %v\n%s", err, out)
 	}
 	for _, dep := range strings.Fields(string(out)) {
-		if dep == gocv || dep == "runtime/cgo" || dep == module+"/pipeline/raster/cv" || dep == module+"/pipeline/raster/fused" {
+		if dep == gocv || dep == "runtime/cgo" || dep == module+"/pipeline/raster/cv" || dep == module+"/pipeline/raster/fused" || dep == module+"/pipeline/raster/lines" {
 			t.Errorf("cmd/lapgate depends on %s", dep)
 		}
 	}

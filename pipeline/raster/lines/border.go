@@ -1,0 +1,75 @@
+package lines
+
+import (
+	"math"
+
+	"lapgate/pipeline/raster"
+)
+
+// border knows which pixels lie in the region.
+type border struct {
+	spans []raster.Span
+	start []int // of each row
+	width int
+}
+
+func newBorder(region []raster.Span, width, height int) border {
+	b := border{spans: region, start: make([]int, height+1), width: width}
+	for _, s := range region {
+		b.start[s.Y+1]++
+	}
+	for y := range height {
+		b.start[y+1] += b.start[y]
+	}
+	return b
+}
+
+func (b border) inside(x, y int) bool {
+	if y < 0 || y >= len(b.start)-1 {
+		return false
+	}
+	for _, s := range b.spans[b.start[y]:b.start[y+1]] {
+		if x >= s.X0 && x < s.X1 {
+			return true
+		}
+	}
+	return false
+}
+
+// Along the border is a line of which this share lies within rim px of where the region
+// ends on one side, or all of whose deeper part is shorter.
+const rimShare = 0.5
+
+// along reports whether a path runs along the border of the region and not into it.
+func (b border) along(path []raster.Point, rim float64) bool {
+	if rim <= 0 {
+		return false
+	}
+	near, all := 0, 0
+	for i := 1; i < len(path); i++ {
+		p, q := path[i-1], path[i]
+		n := int(math.Ceil(distance(p, q) / 4))
+		if n == 0 {
+			continue
+		}
+		dx, dy := (q.X-p.X)/distance(p, q), (q.Y-p.Y)/distance(p, q)
+		for k := range n {
+			t := (float64(k) + 0.5) / float64(n)
+			x, y := p.X+t*(q.X-p.X), p.Y+t*(q.Y-p.Y)
+			all++
+			if b.ends(x-rim*dy, y+rim*dx) || b.ends(x+rim*dy, y-rim*dx) {
+				near++
+			}
+		}
+	}
+	return all > 0 && float64(near) > rimShare*float64(all)
+}
+
+// ends reports whether the region does not hold a place; beyond the frame is no end of it.
+func (b border) ends(x, y float64) bool {
+	ix, iy := int(math.Round(x)), int(math.Round(y))
+	if ix < 0 || iy < 0 || ix >= b.width || iy >= len(b.start)-1 {
+		return false
+	}
+	return !b.inside(ix, iy)
+}

@@ -1,0 +1,167 @@
+// Drives the line search over random pictures, for sanitizers and for comparing builds:
+//   drive fuzz SEED ROUNDS
+//   drive digest
+//   drive time ROUNDS
+#define _POSIX_C_SOURCE 199309L
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <time.h>
+
+#include "../lines.h"
+
+static uint64_t state = 1;
+
+static uint64_t next(void) {
+	state ^= state << 13;
+	state ^= state >> 7;
+	state ^= state << 17;
+	return state;
+}
+
+static int below(int n) { return (int)(next() % (uint64_t)n); }
+
+static double uniform(void) { return (double)(next() >> 11) / 9007199254740992.; }
+
+static float normal(void) {
+	double v = -6;
+	for (int i = 0; i < 12; i++)
+		v += uniform();
+	return (float)v;
+}
+
+static uint64_t hash = 14695981039346656037u;
+
+static void mix(const void *p, size_t n) { // FNV-1a
+	for (const unsigned char *b = p; n > 0; n--)
+		hash = (hash ^ *b++) * 1099511628211u;
+}
+
+static void load(ln_work *w, int width, int height, int half, int odd) {
+	const int n = half ? 2 * width : width;
+	float *a = malloc(sizeof *a * (size_t)n), *b = malloc(sizeof *b * (size_t)n);
+	for (int y = 0; y < height; y++) {
+		for (int x = 0; x < n; x++) {
+			a[x] = normal() + (y == height / 2 ? 1.5f : 0);
+			b[x] = odd && below(50) == 0 ? (float[]){NAN, INFINITY, -INFINITY, 3e38f, -3e38f}[below(5)] : normal();
+		}
+		ln_quantise(w, y, odd ? b : a, b, half);
+	}
+	free(a);
+	free(b);
+}
+
+static void holes(ln_work *w, int width, int height) {
+	for (int i = below(40); i > 0; i--)
+		ln_erase(w, below(height + 4) - 2, below(width + 4) - 2, below(width + 40) - 20);
+	if (below(2)) // a disc
+		for (int y = 0; y < height; y++) {
+			double dy = (y - height / 2.) / (height / 2.), half = dy * dy < 1 ? sqrt(1 - dy * dy) * width / 2 : 0;
+			ln_erase(w, y, 0, (int)(width / 2. - half));
+			ln_erase(w, y, (int)(width / 2. + half), width);
+		}
+}
+
+static void around(ln_work *w, int width, int height, int rounds) {
+	int16_t weights[LN_FRACTIONS * LN_TAPS];
+	for (int i = 0; i < LN_FRACTIONS * LN_TAPS; i++)
+		weights[i] = (int16_t)below(LN_WEIGHT + 1);
+	for (int i = 0; i < rounds; i++) {
+		const int axis = below(2), length = axis ? width : height, wide = axis ? height : width;
+		ln_stretch s = {.axis = axis, .a = below(length + 4) - 2, .b = below(length + 4) - 2, .ca = uniform() * (wide + 8) - 4, .cb = uniform() * (wide + 8) - 4};
+		if (below(30) == 0)
+			s.ca = below(2) ? NAN : 1e300;
+		ln_total t = ln_sum(w, s, weights);
+		mix(&t, sizeof t);
+		if (s.b >= s.a) {
+			ln_total *p = malloc(sizeof *p * (size_t)(s.b - s.a + 1));
+			int n = ln_profile(w, s, weights, p);
+			mix(p, sizeof *p * (size_t)n);
+			free(p);
+		}
+		s = ln_settle(w, s, weights, below(3), 0.5, below(2) ? 1 : -1, &t);
+		mix(&t, sizeof t);
+		if (below(4) == 0)
+			ln_erase_along(w, s, below(6));
+	}
+}
+
+static void search(ln_work *w, int width, int height, double seed, int polarity) {
+	ln_clear(w);
+	for (int axis = 0; axis < 2; axis++) {
+		const int across = axis ? width : height, tiles = ln_tiles(axis ? height : width);
+		float *spread = malloc(sizeof *spread * (size_t)(2 * tiles * LN_BINS));
+		for (int first = 0; first == 0 || first + LN_ROWS <= across; first += 1 + LN_ROWS / 2 + below(LN_ROWS)) {
+			if (ln_strip(w, axis, first, seed, polarity, spread))
+				exit(1);
+			mix(spread, sizeof *spread * (size_t)(2 * tiles * LN_BINS));
+		}
+		free(spread);
+	}
+	int32_t n;
+	const ln_hit *h = ln_hits(w, &n);
+	for (int i = 0; i < n; i++) {
+		const int32_t v[] = {h[i].x, h[i].first, h[i].t, h[i].value, h[i].pixels, h[i].axis, h[i].flipped};
+		mix(v, sizeof v);
+		mix(&h[i].sigmas, sizeof h[i].sigmas);
+	}
+}
+
+static void one(int width, int height) {
+	ln_work *w = ln_work_new(width, height);
+	if (!w)
+		exit(1);
+	const int twice = 1 + below(2);
+	for (int i = 0; i < twice; i++) {
+		load(w, width, height, below(2), below(3) == 0);
+		if (below(2))
+			holes(w, width, height);
+		search(w, width, height, 3 + 3 * uniform(), below(3) - 1);
+		around(w, width, height, 40);
+	}
+	const int at = below(width) - LN_ROWS, n = 1 + below(LN_TILE < width + LN_ROWS - 1 - at - LN_ROWS ? LN_TILE : 16);
+	int16_t *sums = malloc(sizeof *sums * LN_ROWS * (size_t)n);
+	ln_sums(w, 0, height > LN_ROWS ? below(height - LN_ROWS + 1) : 0, below(2), at, n, sums);
+	mix(sums, sizeof *sums * LN_ROWS * (size_t)n);
+	free(sums);
+	if (ln_work_bytes(w) <= 0)
+		exit(1);
+	ln_work_free(w);
+}
+
+static void measure(int rounds) {
+	ln_work *w = ln_work_new(4000, 3000);
+	float *spread = malloc(sizeof *spread * 2 * 8 * LN_BINS);
+	double best = 1e9;
+	load(w, 4000, 3000, 0, 0);
+	for (int i = 0; i < rounds; i++) {
+		struct timespec a, b;
+		clock_gettime(CLOCK_THREAD_CPUTIME_ID, &a);
+		ln_clear(w);
+		for (int axis = 0; axis < 2; axis++)
+			for (int first = 0; first + LN_ROWS <= (axis ? 4000 : 3000); first += LN_ROWS)
+				if (ln_strip(w, axis, first, 4.7, 1, spread))
+					exit(1);
+		clock_gettime(CLOCK_THREAD_CPUTIME_ID, &b);
+		double ms = (double)(b.tv_sec - a.tv_sec) * 1e3 + (double)(b.tv_nsec - a.tv_nsec) / 1e6;
+		best = ms < best ? ms : best;
+	}
+	printf("%.3f ms\n", best);
+	free(spread);
+	ln_work_free(w);
+}
+
+int main(int argc, char **argv) {
+	if (argc > 2 && !strcmp(argv[1], "time")) {
+		measure(atoi(argv[2]));
+		return 0;
+	}
+	const int fuzz = argc > 3 && !strcmp(argv[1], "fuzz");
+	state = fuzz ? strtoull(argv[2], 0, 10) * 2654435761u + 1 : 77;
+	for (int i = fuzz ? atoi(argv[3]) : 12; i > 0; i--) {
+		one(1 + below(i % 4 ? 400 : 1800), 1 + below(300));
+		printf("%016llx\n", (unsigned long long)hash);
+	}
+	return 0;
+}

@@ -1,0 +1,54 @@
+// Memory of a search, and a tile of a strip on its way.
+#ifndef LAPGATE_WORK_H
+#define LAPGATE_WORK_H
+
+#include "tree.h"
+
+enum {
+	LN_PAD = LN_ROWS, // columns of 0 before a picture or strip
+	LN_MARGIN = 8,    // rows of 0 above and below it
+	LN_CELL = 8,
+	LN_SIDE = LN_TILE / LN_CELL,
+	LN_MOST_SUM = LN_ROWS * LN_MOST
+};
+
+// A picture of odd steps.
+typedef struct {
+	int8_t *at; // pixel (0, 0); around the picture there are 0
+	int64_t pitch;
+	int32_t width, height;
+} ln_plane;
+
+struct ln_work {
+	int64_t pitch, bytes; // of strips
+	int8_t *pixels;
+	ln_plane plane;
+	int8_t *turned, *ones; // strips of LN_ROWS rows: of columns, and of what counts
+	uint8_t *outside;      // pixels of each column of the strip that do not count
+	ln_tree *sums, *counts;
+	ln_hit *hits;
+	int32_t kept, room;
+	int32_t best[LN_SIDE * (LN_ROWS / LN_CELL)]; // of a tile's cells, the number of the hit; −1 = none
+};
+
+typedef struct {
+	ln_work *w;
+	int axis, first, flipped, x, width, polarity;
+	int holed; // some of its pixels do not count: the sums are judged by their number of pixels
+	double seed;
+	float *spread; // [LN_BINS]
+} ln_tile;
+
+// The white variance of a sum over one pixel, in steps²: of the noise and of its rounding.
+#define LN_WHITE (LN_UNIT * LN_UNIT + 1. / 3)
+
+// ln_spread measures the variance of the sums by slope over that of white noise.
+void ln_spread(const ln_tile *k);
+
+// ln_spread_at is the larger of the spreads measured about slope t.
+static inline double ln_spread_at(const ln_tile *k, int t) {
+	const float *b = k->spread + t / LN_BIN;
+	return t % LN_BIN && t / LN_BIN + 1 < LN_BINS && b[1] > b[0] ? b[1] : b[0];
+}
+
+#endif
