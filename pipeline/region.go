@@ -11,6 +11,7 @@ type Zone struct {
 	EquivalentDiameterMM float64 // of the circle of equal area
 	OuterDiameterMM      float64 // of a zone about the part's centre; 0 = it is no circle
 	InnerDiameterMM      float64
+	Outline              *Outline // nil = the edge is no simple shape, or there is none
 	// EdgeDistancePx returns how far inside the zone's own edge a point is, in px
 	// (negative outside). Nil where the shape has no edge (whole frame).
 	EdgeDistancePx func(x, y float64) float64

@@ -321,8 +321,8 @@ func TestDemoRecipesOfPlugins(t *testing.T) {
 	}
 	const demo = "../../plugins/outside/demo/"
 	fringes := []string{}
-	for i := range 8 {
-		fringes = append(fringes, fmt.Sprintf("fringes=%sfringes_%d.png", demo, i))
+	for i := range 16 {
+		fringes = append(fringes, fmt.Sprintf("fringes=%sfringes_%02d.png", demo, i))
 	}
 	own := filepath.Join(t.TempDir(), "plugins.yaml")
 	text := fmt.Sprintf("format: 1\nplugins:\n  - {name: unwrap, path: %q, args: [serve-unwrap]}\n  - {name: deflectometry, path: %q, args: [serve-deflectometry]}\n", self, self)
@@ -334,7 +334,7 @@ func TestDemoRecipesOfPlugins(t *testing.T) {
 		frames          []string
 	}{
 		"unwrap":  {own, "dig too large", []string{"ring=" + demo + "unwrap.png"}},
-		"fringes": {own, "dent", fringes},
+		"fringes": {own, "dent too steep", fringes},
 		"texture": {demo + "plugins.yaml", "orange peel", []string{"ring=" + demo + "texture.png"}},
 	} {
 		t.Run(recipe, func(t *testing.T) {

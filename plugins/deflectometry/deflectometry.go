@@ -11,6 +11,7 @@ package deflectometry
 
 import (
 	"context"
+	"fmt"
 	"math"
 	"slices"
 
@@ -75,10 +76,10 @@ func (st stage) frames(item *pipeline.Item) ([]*raster.Plane, error) {
 	return out, nil
 }
 
-// region returns the pixels to be looked at: all, where no stage has said which.
+// region returns the pixels to be looked at.
 func (st stage) region(item *pipeline.Item, p *raster.Plane) ([]bool, error) {
 	if item.Region == nil {
-		return slices.Repeat([]bool{true}, p.Width*p.Height), nil
+		return nil, pipeline.Invalid("view %q has no region; put the stage region earlier in the recipe", item.View)
 	}
 	m := item.Region.Mask()
 	if m.Width != p.Width || m.Height != p.Height {
@@ -139,24 +140,61 @@ func (st stage) report(item *pipeline.Item, slopes [][]float64, use []bool, widt
 	if inside > 0 {
 		item.Coverage.Share = float64(seen) / float64(inside)
 	}
-	total := make([]float64, len(use))
 	for d, name := range []string{SlopeXPlane, SlopeYPlane}[:len(slopes)] {
 		p, squares := raster.NewPlane(width, len(use)/width), 0.0
 		for i, u := range use {
-			if u {
-				p.Pix[i] = float32(slopes[d][i])
-				squares += slopes[d][i] * slopes[d][i]
-				total[i] = math.Hypot(total[i], slopes[d][i])
+			if !u {
+				slopes[d][i] = 0
+				continue
 			}
+			p.Pix[i] = float32(slopes[d][i])
+			squares += slopes[d][i] * slopes[d][i]
 		}
 		item.SetPlane(name, "mrad", p)
 		item.Measure(name+"_rms_mrad", math.Sqrt(squares/max(float64(seen), 1)), "mrad")
 	}
 	item.SetPlane(CurvaturePlane, "1/m", curvature(slopes, use, width, mmPerPx(item)))
-	item.Measure("slope_peak_mrad", slices.Max(total), "mrad")
+	all := newField(slopes, use, width)
+	item.Measure("slope_peak_mrad", slices.Max(all.total), "mrad")
 	if st.s.MaxSlopeMrad > 0 {
-		st.mark(item, total, width)
+		st.proveNoise(item, slopes, use, width)
+		st.mark(item, all)
 	}
+}
+
+// clearOfNoise is how many times the noise of one pixel's slope the threshold must be: half
+// the threshold, where a place is outlined, is then passed by noise in
+// 1 pixel of 20 at most, and never in many that touch.
+const clearOfNoise = 5
+
+// proveNoise holds a view whose slopes are too noisy for the threshold: a dent could hide
+// in them.
+func (st stage) proveNoise(item *pipeline.Item, slopes [][]float64, use []bool, width int) {
+	proof := pipeline.Proof{Name: "slope noise", Value: noiseOf(slopes, use, width), High: st.s.MaxSlopeMrad / clearOfNoise, Unit: "mrad"}
+	if proof.OK = proof.Value <= proof.High; !proof.OK {
+		proof.Reason = fmt.Sprintf("the slope of one pixel scatters by %.3g mrad, want at most a %dth of max_slope_mrad (%g): are the fringes bright, in focus and still?", proof.Value, clearOfNoise, st.s.MaxSlopeMrad)
+	}
+	item.Prove(proof)
+}
+
+// noiseOf is the standard deviation of one pixel's slope along one direction, from the
+// median difference of neighbours in a row: |N(0, 2σ²)| has the median 0.6745·√2·σ.
+func noiseOf(slopes [][]float64, use []bool, width int) float64 {
+	worst := 0.0
+	for _, s := range slopes {
+		var steps []float64
+		for i := 1; i < len(s); i++ {
+			if i%width != 0 && use[i] && use[i-1] {
+				steps = append(steps, math.Abs(s[i]-s[i-1]))
+			}
+		}
+		if len(steps) == 0 {
+			continue
+		}
+		slices.Sort(steps)
+		worst = max(worst, steps[len(steps)/2]/(0.6745*math.Sqrt2))
+	}
+	return worst
 }
 
 func mmPerPx(item *pipeline.Item) float64 {

@@ -95,12 +95,22 @@ type part struct {
 	slope         func(xMM, yMM float64) (sx, sy float64)
 }
 
+// whole is the region of a whole frame.
+func whole(width, height int) *pipeline.Region {
+	var spans []raster.Span
+	for y := range height {
+		spans = append(spans, raster.Span{Y: y, X0: 0, X1: width})
+	}
+	return pipeline.NewRegion(width, height, 0, 0, 0, []pipeline.Zone{{Name: "all", Spans: spans}})
+}
+
 // frames are what the camera sees of a part under the settings' fringes: the screen's
 // place grows with twice the part's, as in a plane mirror, and with the slope. A = 120,
 // B = 90 counts of 8 bits at the display, noise 1 DN.
 func (p part) frames(s Settings) *pipeline.Item {
 	random := rand.New(rand.NewPCG(3, 4))
-	item := &pipeline.Item{View: "fringes", Geometry: pipeline.Planar{UMPerPx: p.um, OriginX: float64(p.width-1) / 2, OriginY: float64(p.height-1) / 2}}
+	item := &pipeline.Item{View: "fringes", Geometry: pipeline.Planar{UMPerPx: p.um, OriginX: float64(p.width-1) / 2, OriginY: float64(p.height-1) / 2},
+		Region: whole(p.width, p.height)}
 	for direction := range s.Frames() / (s.Steps * len(s.PeriodsMM)) {
 		for _, period := range s.PeriodsMM {
 			for k := range s.Steps {
@@ -176,22 +186,118 @@ func TestPit(t *testing.T) {
 	near(t, "diameter", d.DiameterUM, 500, 20)
 	near(t, "x", d.XPx, 119.5, 0.5)
 	near(t, "y", d.YPx, 99.5, 0.5)
-	peak, _ := item.Number("dent_1_slope_mrad")
-	near(t, "edge slope", peak, 4, 0.25)
+	near(t, "edge slope", d.SlopeMrad, 4, 0.25)
+	if d.Kind != pipeline.Dent {
+		t.Errorf("kind %s", d.Kind)
+	}
 	near(t, "coverage", item.Coverage.Share, 1, 0)
 }
 
+// dents are Gaussian: h deep, s its standard deviation, at (x, y) in mm.
+func dents(hMM, sMM float64, places ...[2]float64) func(x, y float64) (float64, float64) {
+	return func(x, y float64) (float64, float64) {
+		sx, sy := 0.0, 0.0
+		for _, p := range places {
+			dx, dy := x-p[0], y-p[1]
+			e := hMM / (sMM * sMM) * math.Exp(-(dx*dx+dy*dy)/(2*sMM*sMM))
+			sx, sy = sx+dx*e, sy+dy*e
+		}
+		return sx, sy
+	}
+}
+
+// A Gaussian dent has its steepest slope, h/(s·√e), at a distance of s from its middle; the
+// slope r·e^((1−r²)/2) in units of that, r in units of s, is one half at r = 0.3187 and at
+// r = 1.9236 (Newton's method on the closed form). With fringes in one direction the two
+// flanks are the same one defect, as long; across, the slope falls to a half at √(2 ln 2).
+func TestGaussianDentIsOneDefect(t *testing.T) {
+	const h, sigma, outer = 0.0005, 0.15, 1.9236 // mm, mm
+	peak := 1000 * h / (sigma * math.Sqrt(math.E))
+	near(t, "closed form", peak, 2.0218, 1e-4)
+	for _, both := range []bool{true, false} {
+		for _, threshold := range []float64{0.5, 1, 1.8} {
+			s := Default
+			s.BothDirections, s.MaxSlopeMrad = both, threshold
+			item := part{240, 200, 10, dents(h, sigma, [2]float64{0.2, -0.1})}.frames(s)
+			run(t, s, item)
+			if len(item.Defects) != 1 || item.Defects[0].Kind != pipeline.Dent {
+				t.Fatalf("both directions %v, threshold %g: got %+v, want one dent", both, threshold, item.Defects)
+			}
+			d := item.Defects[0]
+			near(t, "slope", d.SlopeMrad, peak, 0.05*peak)
+			near(t, "x", d.XPx, 119.5+20, 0.5)
+			near(t, "y", d.YPx, 99.5-10, 0.5)
+			near(t, "box", float64(d.Box.X1-d.Box.X0), 2*outer*15, 3)
+			if both {
+				near(t, "diameter", d.DiameterUM, 2*outer*150, 25)
+			} else {
+				near(t, "length", d.LengthUM, 2*outer*150, 30) // by moments, as of an ellipse
+			}
+		}
+	}
+}
+
+// Dents whose flanks do not meet are as many defects, each with its slope.
+func TestDentsApart(t *testing.T) {
+	const h, sigma = 0.0005, 0.1
+	for _, both := range []bool{true, false} {
+		s := Default
+		s.BothDirections = both
+		item := part{300, 240, 10, dents(h, sigma, [2]float64{-0.8, -0.6}, [2]float64{0.1, -0.6}, [2]float64{0.8, 0.5})}.frames(s)
+		run(t, s, item)
+		if len(item.Defects) != 3 {
+			t.Fatalf("both directions %v: got %+v, want three dents", both, item.Defects)
+		}
+		for _, d := range item.Defects {
+			near(t, "slope", d.SlopeMrad, 1000*h/(sigma*math.Sqrt(math.E)), 0.2)
+		}
+	}
+}
+
 // A wave of height a·sin(2πx/λ) has a slope of 2πa/λ: 0.2 µm over 2 mm are 0.628 mrad,
-// root mean square 0.444.
+// root mean square 0.444. Over four waves it is one defect, and no dent.
 func TestWaviness(t *testing.T) {
+	slope := 2 * math.Pi * 0.0002 / 2 // rad
+	for _, turned := range []bool{false, true} {
+		s := Default
+		s.MaxSlopeMrad = 0.5
+		item := part{800, 120, 10, func(x, _ float64) (float64, float64) { return slope * math.Cos(2*math.Pi*x/2), 0 }}.frames(s)
+		if turned {
+			item = part{120, 800, 10, func(_, y float64) (float64, float64) { return 0, slope * math.Cos(2*math.Pi*y/2) }}.frames(s)
+		}
+		run(t, s, item)
+		along, across := "slope_x_rms_mrad", "slope_y_rms_mrad"
+		if turned {
+			along, across = across, along
+		}
+		rms, _ := item.Number(along)
+		near(t, "root mean square", rms, 0.4443, 0.02)
+		rms, _ = item.Number(across)
+		near(t, "across", rms, 0, 0.05)
+		if len(item.Defects) != 1 || item.Defects[0].Kind != pipeline.Waviness {
+			t.Fatalf("turned %v: got %+v, want one defect, waviness", turned, item.Defects)
+		}
+		near(t, "slope", item.Defects[0].SlopeMrad, 1000*slope, 100*slope) // taking the form off changes four waves by up to 0.095 of that
+		near(t, "area", item.Defects[0].AreaUM2/1e6, 8*1.2, 1.2)
+	}
+}
+
+// Where noise could hide a dent of the threshold, the view is not proven.
+func TestNoisySlopes(t *testing.T) {
 	s := Default
-	s.MaxSlopeMrad = 0
-	item := part{400, 40, 10, func(x, _ float64) (float64, float64) { return 2 * math.Pi * 0.0002 / 2 * math.Cos(2*math.Pi*x/2), 0 }}.frames(s)
+	item := part{120, 100, 10, pit(0.2, 0)}.frames(s)
 	run(t, s, item)
-	rms, _ := item.Number("slope_x_rms_mrad")
-	near(t, "root mean square", rms, 0.4443, 0.02)
-	across, _ := item.Number("slope_y_rms_mrad")
-	near(t, "across", across, 0, 0.05)
+	if len(item.Proofs) != 1 || !item.Proofs[0].OK {
+		t.Errorf("got %+v", item.Proofs)
+	}
+	// σ_φ = √(2/N)·σ_I/B with 1 DN of noise (and of rounding, 1/√12), B = 90: 0.0082 rad, a slope of 0.0260 mrad
+	near(t, "noise", item.Proofs[0].Value, 0.0260, 0.001)
+	s.MaxSlopeMrad = 0.06
+	noisy := part{120, 100, 10, pit(0.2, 0)}.frames(s)
+	run(t, s, noisy)
+	if len(noisy.Proofs) != 1 || noisy.Proofs[0].OK || !strings.Contains(noisy.Proofs[0].Reason, "want at most a 5th of max_slope_mrad (0.06)") {
+		t.Errorf("got %+v", noisy.Proofs)
+	}
 }
 
 // A display of gamma 2.2 puts harmonics into the phase; linearised, they are gone.
@@ -250,7 +356,7 @@ func TestWrongNumberOfFrames(t *testing.T) {
 
 func TestConforms(t *testing.T) {
 	stagetest.Run(t, Factory(), func(raw raster.Raw) *pipeline.Item {
-		item := &pipeline.Item{View: "fringes", Geometry: pipeline.Planar{UMPerPx: 10}}
+		item := &pipeline.Item{View: "fringes", Geometry: pipeline.Planar{UMPerPx: 10}, Region: whole(raw.Width, raw.Height)}
 		for range Default.Frames() {
 			item.Frames = append(item.Frames, pipeline.Frame{Raw: raw})
 		}
@@ -280,30 +386,28 @@ func TestCheckNamesTheKey(t *testing.T) {
 
 var update = flag.Bool("update", false, "rewrite the demo frames")
 
-// The demo frames are eight of one direction, of a mirror with a dent 0.6 mm wide and
-// 0.4 µm deep.
+// The demo frames are sixteen, of a mirror with a dent 0.6 mm wide and 0.4 µm deep.
 func TestDemoFrames(t *testing.T) {
 	s := Default
-	s.BothDirections = false
 	if *update {
 		for i, f := range (part{160, 120, 10, pit(0.6, 0.0004)}).frames(s).Frames {
-			if err := files.Write(fmt.Sprintf("../outside/demo/fringes_%d.png", i), f.Raw); err != nil {
+			if err := files.Write(fmt.Sprintf("../outside/demo/fringes_%02d.png", i), f.Raw); err != nil {
 				t.Fatal(err)
 			}
 		}
 	}
-	item := &pipeline.Item{View: "fringes", Geometry: pipeline.Planar{UMPerPx: 10}}
+	item := &pipeline.Item{View: "fringes", Geometry: pipeline.Planar{UMPerPx: 10}, Region: whole(160, 120)}
 	for i := range s.Frames() {
-		raw, err := files.Read(fmt.Sprintf("../outside/demo/fringes_%d.png", i), files.Options{})
+		raw, err := files.Read(fmt.Sprintf("../outside/demo/fringes_%02d.png", i), files.Options{})
 		if err != nil {
 			t.Fatal(err)
 		}
 		item.Frames = append(item.Frames, pipeline.Frame{Raw: raw})
 	}
 	run(t, s, item)
-	peak, _ := item.Number("slope_peak_mrad")
-	near(t, "edge slope", peak, 4*0.0004/0.6*1000, 0.25)
-	if len(item.Defects) == 0 {
-		t.Error("no dent was found")
+	if len(item.Defects) != 1 {
+		t.Fatalf("got %+v, want one dent", item.Defects)
 	}
+	near(t, "edge slope", item.Defects[0].SlopeMrad, 4*0.0004/0.6*1000, 0.25)
+	near(t, "diameter", item.Defects[0].DiameterUM, 600, 30)
 }

@@ -2,7 +2,6 @@ package deflectometry
 
 import (
 	"cmp"
-	"fmt"
 	"math"
 	"slices"
 
@@ -10,80 +9,115 @@ import (
 	"lapgate/pipeline/raster"
 )
 
-// told is how many defects have their slope among the measurements.
-const told = 20
-
-// dent is a connected place that is too steep, filled: in the middle of a dent the
-// slope is zero.
-type dent struct {
+// place is a steep place: all of it above half the threshold, and what of it is above half
+// its own peak, filled; in the middle of a dent the slope is zero.
+type place struct {
 	spans []raster.Span
+	half  []raster.Span
 	peak  float64 // mrad
 }
 
-// mark adds a defect for every place that is too steep, the steepest first. Its kind is
-// dig; its peak slope is the measurement dent_n_slope_mrad, n from 1.
-func (st stage) mark(item *pipeline.Item, slope []float64, width int) {
-	steep := raster.NewMask(width, len(slope)/width)
-	for i, v := range slope {
-		steep.Bits[i] = v > st.s.MaxSlopeMrad
-	}
-	var dents []dent
-	for _, spans := range raster.Components(steep) {
-		if raster.SpanArea(spans) >= st.s.MinAreaPx {
-			dents = append(dents, dent{filled(spans), peakOf(spans, slope, width)})
-		}
-	}
-	dents = outermost(dents)
-	slices.SortStableFunc(dents, func(a, b dent) int { return cmp.Compare(b.peak, a.peak) })
-	if len(dents) > pipeline.MaxDefects {
-		dents, item.Truncated = dents[:pipeline.MaxDefects], true
+// mark adds a defect for every steep place, the steepest first, with its peak slope.
+func (st stage) mark(item *pipeline.Item, f field) {
+	places := outermost(st.places(f))
+	slices.SortStableFunc(places, func(a, b place) int { return cmp.Compare(b.peak, a.peak) })
+	if len(places) > pipeline.MaxDefects {
+		places, item.Truncated = places[:pipeline.MaxDefects], true
 	}
 	defects := slices.Clone(item.Defects)
-	for i, d := range dents {
-		if i < told {
-			item.Measure(fmt.Sprintf("dent_%d_slope_mrad", i+1), d.peak, "mrad")
+	for _, p := range places {
+		d := defect(item, p)
+		if f.wavy(p) {
+			d.Kind = pipeline.Waviness
 		}
-		defects = append(defects, defect(item, d))
+		defects = append(defects, d)
 	}
 	item.Defects = defects
 }
 
-func peakOf(spans []raster.Span, slope []float64, width int) float64 {
-	peak := 0.0
-	for _, s := range spans {
-		peak = max(peak, slices.Max(slope[s.Y*width+s.X0:s.Y*width+s.X1]))
+// places returns those with enough pixels above the threshold.
+func (st stage) places(f field) []place {
+	low := st.s.MaxSlopeMrad / 2
+	pieces, of := f.pieces(low, st.s.MinAreaPx)
+	together := map[int][]raster.Span{}
+	for i, g := range f.joined(len(pieces), of, low) {
+		together[g] = append(together[g], pieces[i]...)
 	}
-	return peak
-}
-
-// filled joins the spans of each row into one.
-func filled(spans []raster.Span) []raster.Span {
-	rows := map[int]raster.Span{}
-	for _, s := range spans {
-		if r, ok := rows[s.Y]; ok {
-			s.X0, s.X1 = min(s.X0, r.X0), max(s.X1, r.X1)
+	var out []place
+	for i := range pieces { // in the order of the picture
+		spans, first := together[i]
+		if first && f.countAbove(spans, st.s.MaxSlopeMrad) >= st.s.MinAreaPx {
+			out = append(out, f.place(spans))
 		}
-		rows[s.Y] = s
 	}
-	var out []raster.Span
-	for _, r := range rows {
-		out = append(out, r)
-	}
-	slices.SortFunc(out, func(a, b raster.Span) int { return cmp.Compare(a.Y, b.Y) })
 	return out
 }
 
+func (f field) countAbove(spans []raster.Span, threshold float64) int {
+	n := 0
+	for _, s := range spans {
+		for _, v := range f.total[s.Y*f.width+s.X0 : s.Y*f.width+s.X1] {
+			if v > threshold {
+				n++
+			}
+		}
+	}
+	return n
+}
+
+func (f field) place(spans []raster.Span) place {
+	peak := 0.0
+	for _, s := range spans {
+		peak = max(peak, slices.Max(f.total[s.Y*f.width+s.X0:s.Y*f.width+s.X1]))
+	}
+	box := boxOf(spans)
+	mask := raster.NewMask(box.X1-box.X0, box.Y1-box.Y0)
+	for _, s := range spans {
+		for x := s.X0; x < s.X1; x++ {
+			mask.Set(x-box.X0, s.Y-box.Y0, f.total[s.Y*f.width+x] >= peak/2)
+		}
+	}
+	half := filled(mask)
+	for i := range half {
+		half[i].Y, half[i].X0, half[i].X1 = half[i].Y+box.Y0, half[i].X0+box.X0, half[i].X1+box.X0
+	}
+	return place{spans, half, peak}
+}
+
+// filled returns a mask with what lies between the first and the last pixel of each row
+// and of each column.
+func filled(m *raster.Mask) []raster.Span {
+	out := raster.NewMask(m.Width, m.Height)
+	fill := func(lines, length int, at func(line, k int) (x, y int)) {
+		for line := range lines {
+			first, last := length, -1
+			for k := range length {
+				if x, y := at(line, k); m.At(x, y) {
+					first, last = min(first, k), k
+				}
+			}
+			for k := first; k <= last; k++ {
+				x, y := at(line, k)
+				out.Set(x, y, true)
+			}
+		}
+	}
+	fill(m.Height, m.Width, func(line, k int) (x, y int) { return k, line })
+	fill(m.Width, m.Height, func(line, k int) (x, y int) { return line, k })
+	return out.Spans()
+}
+
 // outermost drops places that lie within another one, and gives that their peak.
-func outermost(dents []dent) []dent {
-	var out []dent
-	slices.SortStableFunc(dents, func(a, b dent) int { return cmp.Compare(raster.SpanArea(b.spans), raster.SpanArea(a.spans)) })
-	for _, d := range dents {
-		i := slices.IndexFunc(out, func(o dent) bool { return holds(o.spans, d.spans[0]) })
+func outermost(places []place) []place {
+	var out []place
+	slices.SortStableFunc(places, func(a, b place) int { return cmp.Compare(raster.SpanArea(b.half), raster.SpanArea(a.half)) })
+	for _, p := range places {
+		i := slices.IndexFunc(out, func(o place) bool { return holds(o.half, p.half[0]) })
 		if i < 0 {
-			out = append(out, d)
+			out = append(out, p)
 			continue
 		}
-		out[i].peak = max(out[i].peak, d.peak)
+		out[i].peak = max(out[i].peak, p.peak)
 	}
 	return out
 }
@@ -92,10 +126,52 @@ func holds(spans []raster.Span, s raster.Span) bool {
 	return slices.ContainsFunc(spans, func(o raster.Span) bool { return o.Y == s.Y && o.X0 <= s.X0 && s.X1 <= o.X1 })
 }
 
-func defect(item *pipeline.Item, d dent) pipeline.Defect {
-	s := raster.ShapeOf(d.spans)
-	out := pipeline.Defect{Kind: pipeline.Dig, View: item.View, Place: pipeline.Place{XPx: s.X, YPx: s.Y}, AreaPx: int(s.Area),
-		DiameterPx: s.Diameter(), LengthPx: s.Length, WidthPx: s.Width, AngleDeg: s.Angle, Box: boxOf(d.spans)}
+// Waves are told from a dent by how often the slope turns: a dent has one slope down and
+// one up, with a raised rim one more of each.
+const (
+	wavyTurns = 5    // slopes in a row, of alternating sign
+	wavyShare = 0.25 // of the lines through the place on which there are so many
+)
+
+func (f field) wavy(p place) bool {
+	b := boxOf(p.spans)
+	for i, a := range f.axes() {
+		l0, l1, k0, k1 := b.Y0, b.Y1, b.X0, b.X1
+		if i == 1 {
+			l0, l1, k0, k1 = b.X0, b.X1, b.Y0, b.Y1
+		}
+		wavy := 0
+		for line := l0; line < l1; line++ {
+			if a.turns(line, k0, k1, p.peak/2) >= wavyTurns {
+				wavy++
+			}
+		}
+		if float64(wavy) >= wavyShare*float64(l1-l0) {
+			return true
+		}
+	}
+	return false
+}
+
+// turns counts the slopes of alternating sign on a line that are steeper than low over two
+// pixels or more.
+func (a axis) turns(line, k0, k1 int, low float64) int {
+	n, sign := 0, 0.0
+	for k := k0 + 1; k < k1; k++ {
+		s, before := a.slope[a.at(line, k)], a.slope[a.at(line, k-1)]
+		if math.Abs(s) < low || math.Abs(before) < low || s*before < 0 || s*sign > 0 {
+			continue
+		}
+		n, sign = n+1, s
+	}
+	return n
+}
+
+// defect measures a place at half its own peak.
+func defect(item *pipeline.Item, p place) pipeline.Defect {
+	s := raster.ShapeOf(p.half)
+	out := pipeline.Defect{Kind: pipeline.Dent, View: item.View, Place: pipeline.Place{XPx: s.X, YPx: s.Y}, AreaPx: int(s.Area),
+		DiameterPx: s.Diameter(), LengthPx: s.Length, WidthPx: s.Width, AngleDeg: s.Angle, Box: boxOf(p.half), SlopeMrad: p.peak}
 	if item.Geometry != nil {
 		u, v, um := item.Geometry.ToStation(s.X, s.Y)
 		out.UUM, out.VUM = u, v
@@ -109,9 +185,10 @@ func defect(item *pipeline.Item, d dent) pipeline.Defect {
 }
 
 func boxOf(spans []raster.Span) pipeline.Box {
-	b := pipeline.Box{X0: math.MaxInt, Y0: spans[0].Y, Y1: spans[len(spans)-1].Y + 1}
+	b := pipeline.Box{X0: math.MaxInt, Y0: math.MaxInt}
 	for _, s := range spans {
 		b.X0, b.X1 = min(b.X0, s.X0), max(b.X1, s.X1)
+		b.Y0, b.Y1 = min(b.Y0, s.Y), max(b.Y1, s.Y+1)
 	}
 	return b
 }

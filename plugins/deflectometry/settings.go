@@ -23,9 +23,10 @@ type Settings struct {
 	// MinModulationDN is the smallest B of a pixel that counts as inspected; above 0.
 	MinModulationDN float64 `json:"min_modulation_dn"`
 	// MaxSlopeMrad is the slope, against the part's own form, above which a place is a
-	// defect. 0: none is.
+	// defect: a dent, or waviness where the slope turns five times or more. It must be five
+	// times the noise of one pixel's slope, or the view is held. 0: no place is a defect.
 	MaxSlopeMrad float64 `json:"max_slope_mrad"`
-	// MinAreaPx is the smallest number of such pixels that makes a defect.
+	// MinAreaPx is the smallest number of pixels so steep that makes a defect.
 	MinAreaPx int `json:"min_area_px"`
 }
 
@@ -77,7 +78,7 @@ func (s Settings) Frames() int {
 // Factory describes the stage.
 func Factory() pipeline.Factory {
 	return pipeline.Make(pipeline.Factory{
-		Type: "deflectometry", Version: "1", Scope: pipeline.ScopeView,
+		Type: "deflectometry", Version: "2", Scope: pipeline.ScopeView,
 		Summary: "Takes slopes and curvature of a mirror from phase-shifted fringes, and marks shallow dents and waviness by slope.",
 		Reads:   []string{pipeline.RawPlane, "region"},
 		Writes:  []string{SlopeXPlane, SlopeYPlane, CurvaturePlane, "defects", "coverage", "measurements"},

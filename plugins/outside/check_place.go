@@ -19,7 +19,7 @@ func (a *checker) place() error {
 		if err := a.region(region); err != nil {
 			return err
 		}
-		lendEdges(region)
+		lendEdges(region, a.res.GetRegion().GetZones())
 		a.m.region = region
 	}
 	if g := stagepb.ToGeometry(a.res.GetGeometry()); g != nil {
@@ -44,6 +44,9 @@ func (a *checker) region(r *pipeline.Region) error {
 	for _, z := range r.Zones {
 		if z.Name == "" || len(z.Name) > maxWord || !finite(z.AreaMM2, z.EquivalentDiameterMM) || z.AreaMM2 < 0 || z.EquivalentDiameterMM < 0 {
 			return fmt.Errorf("region: zone %q of %g mm², diameter %g mm, want a name and finite numbers", shorten(z.Name), z.AreaMM2, z.EquivalentDiameterMM)
+		}
+		if err := outlined(z); err != nil {
+			return fmt.Errorf("region: zone %q: %w", shorten(z.Name), err)
 		}
 	}
 	if a.failing() {

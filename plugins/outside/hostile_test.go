@@ -115,6 +115,12 @@ func misdeeds() map[string]misdeed {
 		"scale": func(_ *hostile, _ *stagepb.RunRequest, res *stagepb.RunResponse, _ []byte) {
 			res.Geometry = &stagepb.Geometry{Planar: &stagepb.Planar{UmPerPx: 0.01}}
 		},
+		"outline": func(_ *hostile, _ *stagepb.RunRequest, res *stagepb.RunResponse, _ []byte) {
+			res.Region = &stagepb.Region{Width: 24, Height: 16, Zones: []*stagepb.Zone{{Name: "all", Runs: []int32{8, 0, 24}, Outline: &stagepb.Outline{CentreX: 12, CentreY: 8, OuterPx: 3}}}}
+		},
+		"ring": func(_ *hostile, _ *stagepb.RunRequest, res *stagepb.RunResponse, _ []byte) {
+			res.Geometry = &stagepb.Geometry{Annulus: &stagepb.Annulus{CentreX: 11, CentreY: 7, InnerPx: 2, OuterPx: 6, InnerUm: 1, OuterUm: 1, SlantUm: 1}}
+		},
 	}
 }
 
@@ -148,7 +154,8 @@ func TestHostileStage(t *testing.T) {
 		"leak": "its resident memory reached", "write": "unexpected fault address", "fork": "its process ended in mid-call (exit status 0)",
 		"huge": "its answer is too large", "garbage": `plane "sum": got -3 × 1073741824 px`, "nan": `measurement "rms" is NaN`,
 		"generation": "it was written for another call", "elsewhere": "shared memory: got bytes", "region": "region: it has 3 px, want at least 4",
-		"scale": "the scale is 0.01 µm/px, before it was 10",
+		"scale": "the scale is 0.01 µm/px, before it was 10", "outline": "its pixel (0, 8) lies 9.0 px outside of its outline",
+		"ring": "the ring's diameters give 0.25 um of arc per px at its middle, the view's um_per_px is 10",
 	} {
 		t.Run(how, func(t *testing.T) {
 			t.Parallel()

@@ -15,6 +15,7 @@ import (
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
 	"lapgate/plugins/builtin"
+	"lapgate/plugins/region"
 	"lapgate/plugins/stagetest"
 )
 
@@ -233,5 +234,35 @@ func TestClosedHost(t *testing.T) {
 	}
 	if err := stage.Run(context.Background(), tiny(1)); err == nil || !strings.Contains(err.Error(), "the stage is closed") {
 		t.Errorf("got %v", err)
+	}
+}
+
+// Zones that a stage outside laid have the edge that they have inside, to the last bit:
+// circles, polygons, and no edge where there is none.
+func TestEdgesOfZonesOutside(t *testing.T) {
+	f := open(t, settingsFor("region")).Factory()
+	for _, settings := range []string{`{"shape":"circle","diameter_mm":1.2,"centre_x_px":99,"centre_y_px":90,"zones":[{"name":"clear","diameter_mm":0.8},{"name":"rim","diameter_mm":1.2,"inner_diameter_mm":0.8}]}`,
+		`{"shape":"polygon","polygon":[{"x_px":20,"y_px":20},{"x_px":150,"y_px":30},{"x_px":90,"y_px":150}]}`, `{}`} {
+		in, out := view(stagetest.Scene()), view(stagetest.Scene())
+		for _, r := range []struct {
+			f    pipeline.Factory
+			item *pipeline.Item
+		}{{region.Factory, in}, {f, out}} {
+			if err := newStage(t, r.f, settings).Run(context.Background(), r.item); err != nil {
+				t.Fatalf("%s: %v", settings, err)
+			}
+		}
+		for i, z := range in.Region.Zones {
+			o := out.Region.Zones[i]
+			if (z.EdgeDistancePx == nil) != (o.EdgeDistancePx == nil) || !reflect.DeepEqual(z.Outline, o.Outline) || z.OuterDiameterMM != o.OuterDiameterMM {
+				t.Errorf("%s: zone %s: %+v inside, %+v outside", settings, z.Name, z.Outline, o.Outline)
+				continue
+			}
+			for _, p := range [][2]float64{{99.5, 90.25}, {33.3, 40.1}, {140, 100}} {
+				if z.EdgeDistancePx != nil && z.EdgeDistancePx(p[0], p[1]) != o.EdgeDistancePx(p[0], p[1]) {
+					t.Errorf("%s: zone %s at %v: %g inside, %g outside", settings, z.Name, p, z.EdgeDistancePx(p[0], p[1]), o.EdgeDistancePx(p[0], p[1]))
+				}
+			}
+		}
 	}
 }

@@ -75,7 +75,7 @@ func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
 		x, y := st.centre(raw)
 		st.lay(item, raw, raster.Circle{X: x, Y: y, R: st.radiusPx(x, y, st.s.DiameterMM)})
 	case Polygon:
-		st.fill(item, polygonMask(raw.Width, raw.Height, st.s.Polygon), polygonArea(st.s.Polygon), polygonEdge(st.s.Polygon))
+		st.fill(item, polygonMask(raw.Width, raw.Height, st.s.Polygon), polygonArea(st.s.Polygon), outlineOf(st.s.Polygon))
 	case MaskImage:
 		if st.mask.Width != raw.Width || st.mask.Height != raw.Height {
 			return pipeline.Invalid("mask_file %s: got %d × %d px, the frame has %d × %d", st.s.MaskFile, st.mask.Width, st.mask.Height, raw.Width, raw.Height)
@@ -220,14 +220,14 @@ func (st *stage) lay(item *pipeline.Item, raw *raster.Plane, c raster.Circle) {
 		area := math.Pi / 4 * (outer*outer - inner*inner)
 		ro, ri := st.radiusPx(c.X, c.Y, outer), st.radiusPx(c.X, c.Y, inner)
 		zones = append(zones, pipeline.Zone{Name: z.Name, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), OuterDiameterMM: outer, InnerDiameterMM: inner,
-			Spans: ringSpans(raw.Width, raw.Height, c.X, c.Y, ri, ro), EdgeDistancePx: ringEdge(c.X, c.Y, ri, ro)})
+			Spans: ringSpans(raw.Width, raw.Height, c.X, c.Y, ri, ro)}.Edged(pipeline.Outline{CentreX: c.X, CentreY: c.Y, InnerPx: ri, OuterPx: ro}))
 	}
 	item.Region = pipeline.NewRegion(raw.Width, raw.Height, c.X, c.Y, c.R, zones)
 	item.Geometry = st.geometry.WithOrigin(c.X, c.Y)
 }
 
 // fill makes a region of one zone with the pixels of a mask.
-func (st *stage) fill(item *pipeline.Item, mask *raster.Mask, areaPx float64, edge func(x, y float64) float64) {
+func (st *stage) fill(item *pipeline.Item, mask *raster.Mask, areaPx float64, edge *pipeline.Outline) {
 	spans := mask.Spans()
 	s := raster.ShapeOf(spans)
 	if s.Area == 0 {
@@ -235,7 +235,10 @@ func (st *stage) fill(item *pipeline.Item, mask *raster.Mask, areaPx float64, ed
 	}
 	_, _, scale := st.geometry.ToStation(s.X, s.Y)
 	area := areaPx * scale * scale / 1e6
-	zone := pipeline.Zone{Name: "all", Spans: spans, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), EdgeDistancePx: edge}
+	zone := pipeline.Zone{Name: "all", Spans: spans, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi)}
+	if edge != nil {
+		zone = zone.Edged(*edge)
+	}
 	item.Region = pipeline.NewRegion(mask.Width, mask.Height, s.X, s.Y, 0, []pipeline.Zone{zone})
 	item.Geometry = st.geometry.WithOrigin(s.X, s.Y)
 }

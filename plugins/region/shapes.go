@@ -84,16 +84,6 @@ func appendSpan(out []raster.Span, y, x0, x1 int) []raster.Span {
 	return append(out, raster.Span{Y: y, X0: x0, X1: x1})
 }
 
-func ringEdge(cx, cy, ri, ro float64) func(x, y float64) float64 {
-	return func(x, y float64) float64 {
-		d := math.Hypot(x-cx, y-cy)
-		if ri == 0 {
-			return ro - d
-		}
-		return min(ro-d, d-ri)
-	}
-}
-
 // polygonMask holds the pixels whose centres lie in the polygon (even–odd rule).
 func polygonMask(width, height int, p []Corner) *raster.Mask {
 	m := raster.NewMask(width, height)
@@ -126,26 +116,10 @@ func polygonArea(p []Corner) float64 {
 	return math.Abs(sum) / 2
 }
 
-// polygonEdge returns the distance to the nearest side, negative outside.
-func polygonEdge(p []Corner) func(x, y float64) float64 {
-	return func(x, y float64) float64 {
-		best := math.Inf(1)
-		for i, a := range p {
-			b := p[(i+1)%len(p)]
-			best = min(best, sideDistance(a, b, x, y))
-		}
-		if inPolygon(p, x, y) {
-			return best
-		}
-		return -best
+func outlineOf(p []Corner) *pipeline.Outline {
+	o := &pipeline.Outline{}
+	for _, c := range p {
+		o.Corners = append(o.Corners, pipeline.Point{X: c.XPx, Y: c.YPx})
 	}
-}
-
-func sideDistance(a, b Corner, x, y float64) float64 {
-	dx, dy := b.XPx-a.XPx, b.YPx-a.YPx
-	t := 0.
-	if n := dx*dx + dy*dy; n > 0 {
-		t = min(max(((x-a.XPx)*dx+(y-a.YPx)*dy)/n, 0), 1)
-	}
-	return math.Hypot(x-a.XPx-t*dx, y-a.YPx-t*dy)
+	return o
 }

@@ -118,11 +118,8 @@ func regionOf(a pipeline.Annulus, width, height int) *pipeline.Region {
 		}
 	}
 	spans = mask.Spans()
-	zone := pipeline.Zone{Name: "ring", Spans: spans, AreaMM2: a.AreaMM2(), EquivalentDiameterMM: 2 * math.Sqrt(a.AreaMM2()/math.Pi),
-		EdgeDistancePx: func(x, y float64) float64 {
-			r := math.Hypot(x-a.CentreX, y-a.CentreY)
-			return min(r-a.InnerPx, a.OuterPx-r)
-		}}
+	zone := pipeline.Zone{Name: "ring", Spans: spans, AreaMM2: a.AreaMM2(), EquivalentDiameterMM: 2 * math.Sqrt(a.AreaMM2()/math.Pi)}.
+		Edged(pipeline.Outline{CentreX: a.CentreX, CentreY: a.CentreY, InnerPx: a.InnerPx, OuterPx: a.OuterPx})
 	return pipeline.NewRegion(width, height, a.CentreX, a.CentreY, a.OuterPx, []pipeline.Zone{zone})
 }
 

@@ -48,7 +48,7 @@ func fromPlanar(p pipeline.Planar) *Planar {
 	return &Planar{OriginX: p.OriginX, OriginY: p.OriginY, UmPerPx: p.UMPerPx, RotationDeg: p.RotationDeg, Mirror: p.Mirror}
 }
 
-// FromRegion encodes a region; nil is nil. The distance to a zone's edge is not carried.
+// FromRegion encodes a region; nil is nil. An edge travels where it is an outline.
 func FromRegion(r *pipeline.Region) *Region {
 	if r == nil {
 		return nil
@@ -56,14 +56,27 @@ func FromRegion(r *pipeline.Region) *Region {
 	m := r.Mask()
 	return &Region{CentreX: r.CentreX, CentreY: r.CentreY, RadiusPx: r.RadiusPx, Width: int32(m.Width), Height: int32(m.Height),
 		Zones: each(r.Zones, func(z pipeline.Zone) *Zone {
-			return &Zone{Name: z.Name, AreaMm2: z.AreaMM2, EquivalentDiameterMm: z.EquivalentDiameterMM, Runs: fromSpans(z.Spans)}
+			return &Zone{Name: z.Name, AreaMm2: z.AreaMM2, EquivalentDiameterMm: z.EquivalentDiameterMM, Runs: fromSpans(z.Spans),
+				OuterDiameterMm: z.OuterDiameterMM, InnerDiameterMm: z.InnerDiameterMM, Outline: fromOutline(z.Outline), NoEdge: z.EdgeDistancePx == nil}
 		})}
 }
 
 // maxZones is what a Region can hold.
 const maxZones = 255
 
-// ToRegion decodes a region; nil is nil. Its zones have no EdgeDistancePx.
+func fromOutline(o *pipeline.Outline) *Outline {
+	if o == nil {
+		return nil
+	}
+	return &Outline{CentreX: o.CentreX, CentreY: o.CentreY, InnerPx: o.InnerPx, OuterPx: o.OuterPx, CornersXy: fromPath(o.Corners)}
+}
+
+func toOutline(o *Outline) (pipeline.Outline, error) {
+	corners, err := toPath(o.GetCornersXy())
+	return pipeline.Outline{CentreX: o.GetCentreX(), CentreY: o.GetCentreY(), InnerPx: o.GetInnerPx(), OuterPx: o.GetOuterPx(), Corners: corners}, err
+}
+
+// ToRegion decodes a region; nil is nil. Only zones with an outline have EdgeDistancePx.
 func ToRegion(r *Region) (*pipeline.Region, error) {
 	if r == nil {
 		return nil, nil
@@ -81,7 +94,16 @@ func ToRegion(r *Region) (*pipeline.Region, error) {
 		if err != nil {
 			return nil, fmt.Errorf("region: zone %q: %w", z.GetName(), err)
 		}
-		zones = append(zones, pipeline.Zone{Name: z.GetName(), Spans: spans, AreaMM2: z.GetAreaMm2(), EquivalentDiameterMM: z.GetEquivalentDiameterMm()})
+		zone := pipeline.Zone{Name: z.GetName(), Spans: spans, AreaMM2: z.GetAreaMm2(), EquivalentDiameterMM: z.GetEquivalentDiameterMm(),
+			OuterDiameterMM: z.GetOuterDiameterMm(), InnerDiameterMM: z.GetInnerDiameterMm()}
+		if z.GetOutline() != nil {
+			o, err := toOutline(z.GetOutline())
+			if err != nil {
+				return nil, fmt.Errorf("region: zone %q: outline: %w", z.GetName(), err)
+			}
+			zone = zone.Edged(o)
+		}
+		zones = append(zones, zone)
 	}
 	return pipeline.NewRegion(width, height, r.GetCentreX(), r.GetCentreY(), r.GetRadiusPx(), zones), nil
 }

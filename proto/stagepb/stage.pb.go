@@ -1558,6 +1558,85 @@ func (x *Mask) GetRuns() []int32 {
 	return nil
 }
 
+// Outline is the edge of a zone: two circles about one centre, or a polygon.
+type Outline struct {
+	state   protoimpl.MessageState `protogen:"open.v1"`
+	CentreX float64                `protobuf:"fixed64,1,opt,name=centre_x,json=centreX,proto3" json:"centre_x,omitempty"`
+	CentreY float64                `protobuf:"fixed64,2,opt,name=centre_y,json=centreY,proto3" json:"centre_y,omitempty"`
+	// Radii in px; inner 0 = no hole, outer 0 = a polygon.
+	InnerPx float64 `protobuf:"fixed64,3,opt,name=inner_px,json=innerPx,proto3" json:"inner_px,omitempty"`
+	OuterPx float64 `protobuf:"fixed64,4,opt,name=outer_px,json=outerPx,proto3" json:"outer_px,omitempty"`
+	// x and y of each corner.
+	CornersXy     []float64 `protobuf:"fixed64,5,rep,packed,name=corners_xy,json=cornersXy,proto3" json:"corners_xy,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Outline) Reset() {
+	*x = Outline{}
+	mi := &file_stagepb_stage_proto_msgTypes[18]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Outline) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Outline) ProtoMessage() {}
+
+func (x *Outline) ProtoReflect() protoreflect.Message {
+	mi := &file_stagepb_stage_proto_msgTypes[18]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Outline.ProtoReflect.Descriptor instead.
+func (*Outline) Descriptor() ([]byte, []int) {
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{18}
+}
+
+func (x *Outline) GetCentreX() float64 {
+	if x != nil {
+		return x.CentreX
+	}
+	return 0
+}
+
+func (x *Outline) GetCentreY() float64 {
+	if x != nil {
+		return x.CentreY
+	}
+	return 0
+}
+
+func (x *Outline) GetInnerPx() float64 {
+	if x != nil {
+		return x.InnerPx
+	}
+	return 0
+}
+
+func (x *Outline) GetOuterPx() float64 {
+	if x != nil {
+		return x.OuterPx
+	}
+	return 0
+}
+
+func (x *Outline) GetCornersXy() []float64 {
+	if x != nil {
+		return x.CornersXy
+	}
+	return nil
+}
+
 // Zone is a named part of the region.
 type Zone struct {
 	state                protoimpl.MessageState `protogen:"open.v1"`
@@ -1565,14 +1644,21 @@ type Zone struct {
 	AreaMm2              float64                `protobuf:"fixed64,2,opt,name=area_mm2,json=areaMm2,proto3" json:"area_mm2,omitempty"`
 	EquivalentDiameterMm float64                `protobuf:"fixed64,3,opt,name=equivalent_diameter_mm,json=equivalentDiameterMm,proto3" json:"equivalent_diameter_mm,omitempty"`
 	// y, x0, x1 of each run of pixels, half open.
-	Runs          []int32 `protobuf:"varint,4,rep,packed,name=runs,proto3" json:"runs,omitempty"`
+	Runs []int32 `protobuf:"varint,4,rep,packed,name=runs,proto3" json:"runs,omitempty"`
+	// Of a zone about the part's centre; outer 0 = it is no circle.
+	OuterDiameterMm float64 `protobuf:"fixed64,5,opt,name=outer_diameter_mm,json=outerDiameterMm,proto3" json:"outer_diameter_mm,omitempty"`
+	InnerDiameterMm float64 `protobuf:"fixed64,6,opt,name=inner_diameter_mm,json=innerDiameterMm,proto3" json:"inner_diameter_mm,omitempty"`
+	// Absent: the host takes the distance to the edge from the pixels.
+	Outline *Outline `protobuf:"bytes,7,opt,name=outline,proto3" json:"outline,omitempty"`
+	// The zone has no edge that distances are measured from.
+	NoEdge        bool `protobuf:"varint,8,opt,name=no_edge,json=noEdge,proto3" json:"no_edge,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Zone) Reset() {
 	*x = Zone{}
-	mi := &file_stagepb_stage_proto_msgTypes[18]
+	mi := &file_stagepb_stage_proto_msgTypes[19]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1584,7 +1670,7 @@ func (x *Zone) String() string {
 func (*Zone) ProtoMessage() {}
 
 func (x *Zone) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[18]
+	mi := &file_stagepb_stage_proto_msgTypes[19]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1597,7 +1683,7 @@ func (x *Zone) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Zone.ProtoReflect.Descriptor instead.
 func (*Zone) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{18}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{19}
 }
 
 func (x *Zone) GetName() string {
@@ -1628,6 +1714,34 @@ func (x *Zone) GetRuns() []int32 {
 	return nil
 }
 
+func (x *Zone) GetOuterDiameterMm() float64 {
+	if x != nil {
+		return x.OuterDiameterMm
+	}
+	return 0
+}
+
+func (x *Zone) GetInnerDiameterMm() float64 {
+	if x != nil {
+		return x.InnerDiameterMm
+	}
+	return 0
+}
+
+func (x *Zone) GetOutline() *Outline {
+	if x != nil {
+		return x.Outline
+	}
+	return nil
+}
+
+func (x *Zone) GetNoEdge() bool {
+	if x != nil {
+		return x.NoEdge
+	}
+	return false
+}
+
 // Region is where limits hold.
 type Region struct {
 	state         protoimpl.MessageState `protogen:"open.v1"`
@@ -1643,7 +1757,7 @@ type Region struct {
 
 func (x *Region) Reset() {
 	*x = Region{}
-	mi := &file_stagepb_stage_proto_msgTypes[19]
+	mi := &file_stagepb_stage_proto_msgTypes[20]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1655,7 +1769,7 @@ func (x *Region) String() string {
 func (*Region) ProtoMessage() {}
 
 func (x *Region) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[19]
+	mi := &file_stagepb_stage_proto_msgTypes[20]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1668,7 +1782,7 @@ func (x *Region) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Region.ProtoReflect.Descriptor instead.
 func (*Region) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{19}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{20}
 }
 
 func (x *Region) GetCentreX() float64 {
@@ -1724,7 +1838,7 @@ type DefectRef struct {
 
 func (x *DefectRef) Reset() {
 	*x = DefectRef{}
-	mi := &file_stagepb_stage_proto_msgTypes[20]
+	mi := &file_stagepb_stage_proto_msgTypes[21]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1736,7 +1850,7 @@ func (x *DefectRef) String() string {
 func (*DefectRef) ProtoMessage() {}
 
 func (x *DefectRef) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[20]
+	mi := &file_stagepb_stage_proto_msgTypes[21]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1749,7 +1863,7 @@ func (x *DefectRef) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use DefectRef.ProtoReflect.Descriptor instead.
 func (*DefectRef) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{20}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{21}
 }
 
 func (x *DefectRef) GetView() string {
@@ -1814,7 +1928,7 @@ type Defect struct {
 
 func (x *Defect) Reset() {
 	*x = Defect{}
-	mi := &file_stagepb_stage_proto_msgTypes[21]
+	mi := &file_stagepb_stage_proto_msgTypes[22]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1826,7 +1940,7 @@ func (x *Defect) String() string {
 func (*Defect) ProtoMessage() {}
 
 func (x *Defect) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[21]
+	mi := &file_stagepb_stage_proto_msgTypes[22]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1839,7 +1953,7 @@ func (x *Defect) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Defect.ProtoReflect.Descriptor instead.
 func (*Defect) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{21}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{22}
 }
 
 func (x *Defect) GetKind() string {
@@ -2113,7 +2227,7 @@ type Measurement struct {
 
 func (x *Measurement) Reset() {
 	*x = Measurement{}
-	mi := &file_stagepb_stage_proto_msgTypes[22]
+	mi := &file_stagepb_stage_proto_msgTypes[23]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2125,7 +2239,7 @@ func (x *Measurement) String() string {
 func (*Measurement) ProtoMessage() {}
 
 func (x *Measurement) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[22]
+	mi := &file_stagepb_stage_proto_msgTypes[23]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2138,7 +2252,7 @@ func (x *Measurement) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Measurement.ProtoReflect.Descriptor instead.
 func (*Measurement) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{22}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{23}
 }
 
 func (x *Measurement) GetName() string {
@@ -2183,7 +2297,7 @@ type Proof struct {
 
 func (x *Proof) Reset() {
 	*x = Proof{}
-	mi := &file_stagepb_stage_proto_msgTypes[23]
+	mi := &file_stagepb_stage_proto_msgTypes[24]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2195,7 +2309,7 @@ func (x *Proof) String() string {
 func (*Proof) ProtoMessage() {}
 
 func (x *Proof) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[23]
+	mi := &file_stagepb_stage_proto_msgTypes[24]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2208,7 +2322,7 @@ func (x *Proof) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Proof.ProtoReflect.Descriptor instead.
 func (*Proof) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{23}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
 }
 
 func (x *Proof) GetName() string {
@@ -2295,7 +2409,7 @@ type Coverage struct {
 
 func (x *Coverage) Reset() {
 	*x = Coverage{}
-	mi := &file_stagepb_stage_proto_msgTypes[24]
+	mi := &file_stagepb_stage_proto_msgTypes[25]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2307,7 +2421,7 @@ func (x *Coverage) String() string {
 func (*Coverage) ProtoMessage() {}
 
 func (x *Coverage) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[24]
+	mi := &file_stagepb_stage_proto_msgTypes[25]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2320,7 +2434,7 @@ func (x *Coverage) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Coverage.ProtoReflect.Descriptor instead.
 func (*Coverage) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{24}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
 }
 
 func (x *Coverage) GetShare() float64 {
@@ -2375,7 +2489,7 @@ type Grid struct {
 
 func (x *Grid) Reset() {
 	*x = Grid{}
-	mi := &file_stagepb_stage_proto_msgTypes[25]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2387,7 +2501,7 @@ func (x *Grid) String() string {
 func (*Grid) ProtoMessage() {}
 
 func (x *Grid) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[25]
+	mi := &file_stagepb_stage_proto_msgTypes[26]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2400,7 +2514,7 @@ func (x *Grid) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Grid.ProtoReflect.Descriptor instead.
 func (*Grid) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{25}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
 }
 
 func (x *Grid) GetCellPx() int32 {
@@ -2477,7 +2591,7 @@ type CoverageMap struct {
 
 func (x *CoverageMap) Reset() {
 	*x = CoverageMap{}
-	mi := &file_stagepb_stage_proto_msgTypes[26]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2489,7 +2603,7 @@ func (x *CoverageMap) String() string {
 func (*CoverageMap) ProtoMessage() {}
 
 func (x *CoverageMap) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[26]
+	mi := &file_stagepb_stage_proto_msgTypes[27]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2502,7 +2616,7 @@ func (x *CoverageMap) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CoverageMap.ProtoReflect.Descriptor instead.
 func (*CoverageMap) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{26}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
 }
 
 func (x *CoverageMap) GetCellPx() int32 {
@@ -2585,7 +2699,7 @@ type Item struct {
 
 func (x *Item) Reset() {
 	*x = Item{}
-	mi := &file_stagepb_stage_proto_msgTypes[27]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2597,7 +2711,7 @@ func (x *Item) String() string {
 func (*Item) ProtoMessage() {}
 
 func (x *Item) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[27]
+	mi := &file_stagepb_stage_proto_msgTypes[28]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2610,7 +2724,7 @@ func (x *Item) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Item.ProtoReflect.Descriptor instead.
 func (*Item) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{27}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
 }
 
 func (x *Item) GetView() string {
@@ -2731,7 +2845,7 @@ type RunRequest struct {
 
 func (x *RunRequest) Reset() {
 	*x = RunRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[28]
+	mi := &file_stagepb_stage_proto_msgTypes[29]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2743,7 +2857,7 @@ func (x *RunRequest) String() string {
 func (*RunRequest) ProtoMessage() {}
 
 func (x *RunRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[28]
+	mi := &file_stagepb_stage_proto_msgTypes[29]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2756,7 +2870,7 @@ func (x *RunRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunRequest.ProtoReflect.Descriptor instead.
 func (*RunRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{28}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{29}
 }
 
 func (x *RunRequest) GetHandle() uint64 {
@@ -2809,7 +2923,7 @@ type RunResponse struct {
 
 func (x *RunResponse) Reset() {
 	*x = RunResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[29]
+	mi := &file_stagepb_stage_proto_msgTypes[30]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2821,7 +2935,7 @@ func (x *RunResponse) String() string {
 func (*RunResponse) ProtoMessage() {}
 
 func (x *RunResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[29]
+	mi := &file_stagepb_stage_proto_msgTypes[30]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2834,7 +2948,7 @@ func (x *RunResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use RunResponse.ProtoReflect.Descriptor instead.
 func (*RunResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{29}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{30}
 }
 
 func (x *RunResponse) GetRegion() *Region {
@@ -2945,7 +3059,7 @@ type CloseRequest struct {
 
 func (x *CloseRequest) Reset() {
 	*x = CloseRequest{}
-	mi := &file_stagepb_stage_proto_msgTypes[30]
+	mi := &file_stagepb_stage_proto_msgTypes[31]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2957,7 +3071,7 @@ func (x *CloseRequest) String() string {
 func (*CloseRequest) ProtoMessage() {}
 
 func (x *CloseRequest) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[30]
+	mi := &file_stagepb_stage_proto_msgTypes[31]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2970,7 +3084,7 @@ func (x *CloseRequest) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseRequest.ProtoReflect.Descriptor instead.
 func (*CloseRequest) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{30}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{31}
 }
 
 func (x *CloseRequest) GetHandle() uint64 {
@@ -2989,7 +3103,7 @@ type CloseResponse struct {
 
 func (x *CloseResponse) Reset() {
 	*x = CloseResponse{}
-	mi := &file_stagepb_stage_proto_msgTypes[31]
+	mi := &file_stagepb_stage_proto_msgTypes[32]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -3001,7 +3115,7 @@ func (x *CloseResponse) String() string {
 func (*CloseResponse) ProtoMessage() {}
 
 func (x *CloseResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_stagepb_stage_proto_msgTypes[31]
+	mi := &file_stagepb_stage_proto_msgTypes[32]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -3014,7 +3128,7 @@ func (x *CloseResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CloseResponse.ProtoReflect.Descriptor instead.
 func (*CloseResponse) Descriptor() ([]byte, []int) {
-	return file_stagepb_stage_proto_rawDescGZIP(), []int{31}
+	return file_stagepb_stage_proto_rawDescGZIP(), []int{32}
 }
 
 var File_stagepb_stage_proto protoreflect.FileDescriptor
@@ -3160,12 +3274,23 @@ const file_stagepb_stage_proto_rawDesc = "" +
 	"\x04Mask\x12\x14\n" +
 	"\x05width\x18\x01 \x01(\x05R\x05width\x12\x16\n" +
 	"\x06height\x18\x02 \x01(\x05R\x06height\x12\x12\n" +
-	"\x04runs\x18\x03 \x03(\x05R\x04runs\"\x7f\n" +
+	"\x04runs\x18\x03 \x03(\x05R\x04runs\"\x94\x01\n" +
+	"\aOutline\x12\x19\n" +
+	"\bcentre_x\x18\x01 \x01(\x01R\acentreX\x12\x19\n" +
+	"\bcentre_y\x18\x02 \x01(\x01R\acentreY\x12\x19\n" +
+	"\binner_px\x18\x03 \x01(\x01R\ainnerPx\x12\x19\n" +
+	"\bouter_px\x18\x04 \x01(\x01R\aouterPx\x12\x1d\n" +
+	"\n" +
+	"corners_xy\x18\x05 \x03(\x01R\tcornersXy\"\xa5\x02\n" +
 	"\x04Zone\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x19\n" +
 	"\barea_mm2\x18\x02 \x01(\x01R\aareaMm2\x124\n" +
 	"\x16equivalent_diameter_mm\x18\x03 \x01(\x01R\x14equivalentDiameterMm\x12\x12\n" +
-	"\x04runs\x18\x04 \x03(\x05R\x04runs\"\xb7\x01\n" +
+	"\x04runs\x18\x04 \x03(\x05R\x04runs\x12*\n" +
+	"\x11outer_diameter_mm\x18\x05 \x01(\x01R\x0fouterDiameterMm\x12*\n" +
+	"\x11inner_diameter_mm\x18\x06 \x01(\x01R\x0finnerDiameterMm\x123\n" +
+	"\aoutline\x18\a \x01(\v2\x19.lapgate.stage.v1.OutlineR\aoutline\x12\x17\n" +
+	"\ano_edge\x18\b \x01(\bR\x06noEdge\"\xb7\x01\n" +
 	"\x06Region\x12\x19\n" +
 	"\bcentre_x\x18\x01 \x01(\x01R\acentreX\x12\x19\n" +
 	"\bcentre_y\x18\x02 \x01(\x01R\acentreY\x12\x1b\n" +
@@ -3333,7 +3458,7 @@ func file_stagepb_stage_proto_rawDescGZIP() []byte {
 }
 
 var file_stagepb_stage_proto_enumTypes = make([]protoimpl.EnumInfo, 1)
-var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 35)
+var file_stagepb_stage_proto_msgTypes = make([]protoimpl.MessageInfo, 36)
 var file_stagepb_stage_proto_goTypes = []any{
 	(Scope)(0),                    // 0: lapgate.stage.v1.Scope
 	(*DescribeRequest)(nil),       // 1: lapgate.stage.v1.DescribeRequest
@@ -3354,23 +3479,24 @@ var file_stagepb_stage_proto_goTypes = []any{
 	(*Frame)(nil),                 // 16: lapgate.stage.v1.Frame
 	(*Plane)(nil),                 // 17: lapgate.stage.v1.Plane
 	(*Mask)(nil),                  // 18: lapgate.stage.v1.Mask
-	(*Zone)(nil),                  // 19: lapgate.stage.v1.Zone
-	(*Region)(nil),                // 20: lapgate.stage.v1.Region
-	(*DefectRef)(nil),             // 21: lapgate.stage.v1.DefectRef
-	(*Defect)(nil),                // 22: lapgate.stage.v1.Defect
-	(*Measurement)(nil),           // 23: lapgate.stage.v1.Measurement
-	(*Proof)(nil),                 // 24: lapgate.stage.v1.Proof
-	(*Coverage)(nil),              // 25: lapgate.stage.v1.Coverage
-	(*Grid)(nil),                  // 26: lapgate.stage.v1.Grid
-	(*CoverageMap)(nil),           // 27: lapgate.stage.v1.CoverageMap
-	(*Item)(nil),                  // 28: lapgate.stage.v1.Item
-	(*RunRequest)(nil),            // 29: lapgate.stage.v1.RunRequest
-	(*RunResponse)(nil),           // 30: lapgate.stage.v1.RunResponse
-	(*CloseRequest)(nil),          // 31: lapgate.stage.v1.CloseRequest
-	(*CloseResponse)(nil),         // 32: lapgate.stage.v1.CloseResponse
-	nil,                           // 33: lapgate.stage.v1.OpenRequest.FilesEntry
-	nil,                           // 34: lapgate.stage.v1.OpenRequest.CalibrationsEntry
-	nil,                           // 35: lapgate.stage.v1.Frame.TagsEntry
+	(*Outline)(nil),               // 19: lapgate.stage.v1.Outline
+	(*Zone)(nil),                  // 20: lapgate.stage.v1.Zone
+	(*Region)(nil),                // 21: lapgate.stage.v1.Region
+	(*DefectRef)(nil),             // 22: lapgate.stage.v1.DefectRef
+	(*Defect)(nil),                // 23: lapgate.stage.v1.Defect
+	(*Measurement)(nil),           // 24: lapgate.stage.v1.Measurement
+	(*Proof)(nil),                 // 25: lapgate.stage.v1.Proof
+	(*Coverage)(nil),              // 26: lapgate.stage.v1.Coverage
+	(*Grid)(nil),                  // 27: lapgate.stage.v1.Grid
+	(*CoverageMap)(nil),           // 28: lapgate.stage.v1.CoverageMap
+	(*Item)(nil),                  // 29: lapgate.stage.v1.Item
+	(*RunRequest)(nil),            // 30: lapgate.stage.v1.RunRequest
+	(*RunResponse)(nil),           // 31: lapgate.stage.v1.RunResponse
+	(*CloseRequest)(nil),          // 32: lapgate.stage.v1.CloseRequest
+	(*CloseResponse)(nil),         // 33: lapgate.stage.v1.CloseResponse
+	nil,                           // 34: lapgate.stage.v1.OpenRequest.FilesEntry
+	nil,                           // 35: lapgate.stage.v1.OpenRequest.CalibrationsEntry
+	nil,                           // 36: lapgate.stage.v1.Frame.TagsEntry
 }
 var file_stagepb_stage_proto_depIdxs = []int32{
 	0,  // 0: lapgate.stage.v1.DescribeResponse.scope:type_name -> lapgate.stage.v1.Scope
@@ -3384,56 +3510,57 @@ var file_stagepb_stage_proto_depIdxs = []int32{
 	10, // 8: lapgate.stage.v1.Geometry.annulus:type_name -> lapgate.stage.v1.Annulus
 	7,  // 9: lapgate.stage.v1.OpenRequest.calibration:type_name -> lapgate.stage.v1.Calibration
 	11, // 10: lapgate.stage.v1.OpenRequest.geometry:type_name -> lapgate.stage.v1.Geometry
-	33, // 11: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
-	34, // 12: lapgate.stage.v1.OpenRequest.calibrations:type_name -> lapgate.stage.v1.OpenRequest.CalibrationsEntry
+	34, // 11: lapgate.stage.v1.OpenRequest.files:type_name -> lapgate.stage.v1.OpenRequest.FilesEntry
+	35, // 12: lapgate.stage.v1.OpenRequest.calibrations:type_name -> lapgate.stage.v1.OpenRequest.CalibrationsEntry
 	14, // 13: lapgate.stage.v1.Pixels.shared:type_name -> lapgate.stage.v1.SharedBytes
-	35, // 14: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
+	36, // 14: lapgate.stage.v1.Frame.tags:type_name -> lapgate.stage.v1.Frame.TagsEntry
 	15, // 15: lapgate.stage.v1.Frame.pixels:type_name -> lapgate.stage.v1.Pixels
 	15, // 16: lapgate.stage.v1.Plane.pixels:type_name -> lapgate.stage.v1.Pixels
-	19, // 17: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
-	21, // 18: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
-	16, // 19: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
-	20, // 20: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
-	11, // 21: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
-	17, // 22: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
-	23, // 23: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
-	22, // 24: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
-	28, // 25: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
-	25, // 26: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
-	18, // 27: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
-	18, // 28: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
-	24, // 29: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
-	26, // 30: lapgate.stage.v1.Item.grid:type_name -> lapgate.stage.v1.Grid
-	27, // 31: lapgate.stage.v1.Item.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
-	28, // 32: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
-	14, // 33: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
-	20, // 34: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
-	11, // 35: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
-	17, // 36: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
-	23, // 37: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
-	22, // 38: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
-	24, // 39: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
-	25, // 40: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
-	18, // 41: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
-	18, // 42: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
-	26, // 43: lapgate.stage.v1.RunResponse.grid:type_name -> lapgate.stage.v1.Grid
-	27, // 44: lapgate.stage.v1.RunResponse.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
-	7,  // 45: lapgate.stage.v1.OpenRequest.CalibrationsEntry.value:type_name -> lapgate.stage.v1.Calibration
-	1,  // 46: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
-	3,  // 47: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
-	12, // 48: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
-	29, // 49: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
-	31, // 50: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
-	2,  // 51: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
-	5,  // 52: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
-	13, // 53: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
-	30, // 54: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
-	32, // 55: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
-	51, // [51:56] is the sub-list for method output_type
-	46, // [46:51] is the sub-list for method input_type
-	46, // [46:46] is the sub-list for extension type_name
-	46, // [46:46] is the sub-list for extension extendee
-	0,  // [0:46] is the sub-list for field type_name
+	19, // 17: lapgate.stage.v1.Zone.outline:type_name -> lapgate.stage.v1.Outline
+	20, // 18: lapgate.stage.v1.Region.zones:type_name -> lapgate.stage.v1.Zone
+	22, // 19: lapgate.stage.v1.Defect.merged_from:type_name -> lapgate.stage.v1.DefectRef
+	16, // 20: lapgate.stage.v1.Item.frames:type_name -> lapgate.stage.v1.Frame
+	21, // 21: lapgate.stage.v1.Item.region:type_name -> lapgate.stage.v1.Region
+	11, // 22: lapgate.stage.v1.Item.geometry:type_name -> lapgate.stage.v1.Geometry
+	17, // 23: lapgate.stage.v1.Item.planes:type_name -> lapgate.stage.v1.Plane
+	24, // 24: lapgate.stage.v1.Item.measurements:type_name -> lapgate.stage.v1.Measurement
+	23, // 25: lapgate.stage.v1.Item.defects:type_name -> lapgate.stage.v1.Defect
+	29, // 26: lapgate.stage.v1.Item.views:type_name -> lapgate.stage.v1.Item
+	26, // 27: lapgate.stage.v1.Item.coverage:type_name -> lapgate.stage.v1.Coverage
+	18, // 28: lapgate.stage.v1.Item.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	18, // 29: lapgate.stage.v1.Item.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	25, // 30: lapgate.stage.v1.Item.proofs:type_name -> lapgate.stage.v1.Proof
+	27, // 31: lapgate.stage.v1.Item.grid:type_name -> lapgate.stage.v1.Grid
+	28, // 32: lapgate.stage.v1.Item.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
+	29, // 33: lapgate.stage.v1.RunRequest.item:type_name -> lapgate.stage.v1.Item
+	14, // 34: lapgate.stage.v1.RunRequest.output:type_name -> lapgate.stage.v1.SharedBytes
+	21, // 35: lapgate.stage.v1.RunResponse.region:type_name -> lapgate.stage.v1.Region
+	11, // 36: lapgate.stage.v1.RunResponse.geometry:type_name -> lapgate.stage.v1.Geometry
+	17, // 37: lapgate.stage.v1.RunResponse.planes:type_name -> lapgate.stage.v1.Plane
+	24, // 38: lapgate.stage.v1.RunResponse.measurements:type_name -> lapgate.stage.v1.Measurement
+	23, // 39: lapgate.stage.v1.RunResponse.defects:type_name -> lapgate.stage.v1.Defect
+	25, // 40: lapgate.stage.v1.RunResponse.proofs:type_name -> lapgate.stage.v1.Proof
+	26, // 41: lapgate.stage.v1.RunResponse.coverage:type_name -> lapgate.stage.v1.Coverage
+	18, // 42: lapgate.stage.v1.RunResponse.bad_pixels:type_name -> lapgate.stage.v1.Mask
+	18, // 43: lapgate.stage.v1.RunResponse.saturated_pixels:type_name -> lapgate.stage.v1.Mask
+	27, // 44: lapgate.stage.v1.RunResponse.grid:type_name -> lapgate.stage.v1.Grid
+	28, // 45: lapgate.stage.v1.RunResponse.coverage_map:type_name -> lapgate.stage.v1.CoverageMap
+	7,  // 46: lapgate.stage.v1.OpenRequest.CalibrationsEntry.value:type_name -> lapgate.stage.v1.Calibration
+	1,  // 47: lapgate.stage.v1.StageService.Describe:input_type -> lapgate.stage.v1.DescribeRequest
+	3,  // 48: lapgate.stage.v1.StageService.CheckSettings:input_type -> lapgate.stage.v1.CheckSettingsRequest
+	12, // 49: lapgate.stage.v1.StageService.Open:input_type -> lapgate.stage.v1.OpenRequest
+	30, // 50: lapgate.stage.v1.StageService.Run:input_type -> lapgate.stage.v1.RunRequest
+	32, // 51: lapgate.stage.v1.StageService.Close:input_type -> lapgate.stage.v1.CloseRequest
+	2,  // 52: lapgate.stage.v1.StageService.Describe:output_type -> lapgate.stage.v1.DescribeResponse
+	5,  // 53: lapgate.stage.v1.StageService.CheckSettings:output_type -> lapgate.stage.v1.CheckSettingsResponse
+	13, // 54: lapgate.stage.v1.StageService.Open:output_type -> lapgate.stage.v1.OpenResponse
+	31, // 55: lapgate.stage.v1.StageService.Run:output_type -> lapgate.stage.v1.RunResponse
+	33, // 56: lapgate.stage.v1.StageService.Close:output_type -> lapgate.stage.v1.CloseResponse
+	52, // [52:57] is the sub-list for method output_type
+	47, // [47:52] is the sub-list for method input_type
+	47, // [47:47] is the sub-list for extension type_name
+	47, // [47:47] is the sub-list for extension extendee
+	0,  // [0:47] is the sub-list for field type_name
 }
 
 func init() { file_stagepb_stage_proto_init() }
@@ -3452,7 +3579,7 @@ func file_stagepb_stage_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_stagepb_stage_proto_rawDesc), len(file_stagepb_stage_proto_rawDesc)),
 			NumEnums:      1,
-			NumMessages:   35,
+			NumMessages:   36,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
