@@ -108,7 +108,7 @@ func sideBySide(n int, f func() error) func() error {
 func benchFused(o options) (map[string]figure, error) {
 	runtime.LockOSThread()
 	defer runtime.UnlockOSThread()
-	s := newScene()
+	s := *o.scene()
 	planes := fused.Planes{Dark: s.dark, Response: s.calibration().Response, Bad: s.bad}
 	eight, err := prepare(s.raw, planes)
 	if err != nil {

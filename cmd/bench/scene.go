@@ -3,6 +3,7 @@ package main
 import (
 	"math"
 	"math/rand/v2"
+	"sync"
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
@@ -18,6 +19,11 @@ type scene struct {
 }
 
 const sceneWidth, sceneHeight = 4000, 3000
+
+// sceneOnce returns a function that draws the scene when it is first called.
+func sceneOnce() func() *scene {
+	return sync.OnceValue(func() *scene { s := newScene(); return &s })
+}
 
 func newScene() scene {
 	rng := rand.New(rand.NewPCG(12, 12))

@@ -2,7 +2,6 @@ package main
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"time"
 
@@ -22,10 +21,10 @@ limits:
   - {name: dig too large, each: diameter_um, at_most: 1000000, unit: um}
 `
 
-// benchChains measures the readable reference and the tuned OpenCV chain on the same
+// benchReference measures the readable reference and the tuned OpenCV chain on the same
 // frame, in turns, one thread each: the best of each.
-func benchChains(o options) (map[string]figure, error) {
-	s := newScene()
+func benchReference(o options) (map[string]figure, error) {
+	s := *o.scene()
 	p, err := buildChain(s)
 	if err != nil {
 		return nil, err
@@ -99,5 +98,3 @@ func (b *best) time(f func() error) error {
 }
 
 func (b best) ms() figure { return figure{float64(b.d.Microseconds()) / 1000, "ms"} }
-
-var errNoVerdict = errors.New("the server ended the stream without a verdict")
