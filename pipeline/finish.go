@@ -2,7 +2,6 @@ package pipeline
 
 import (
 	"context"
-	"fmt"
 	"slices"
 	"sort"
 	"time"
@@ -113,7 +112,7 @@ func summarise(e *Evidence, unit *Item) {
 	for _, v := range unit.Views {
 		e.Coverage = min(e.Coverage, v.Coverage.Share)
 		e.Truncated = e.Truncated || v.Truncated
-		if v.Region != nil && float64(v.Coverage.SaturatedPx) > SaturatedShare*float64(v.Region.Mask().Count()) {
+		if v.Region != nil && float64(v.Coverage.SaturatedPx) > SaturatedShare*float64(v.Region.Inside().Count()) {
 			e.Saturated = true
 		}
 	}
@@ -123,15 +122,7 @@ func summarise(e *Evidence, unit *Item) {
 }
 
 func (p *Pipeline) judge(e Evidence, now time.Time) Judgement {
-	verdict, reasons := p.Recipe.Judge.Judge(e)
-	if holds := HoldReasons(e); verdict == Accept && len(holds) > 0 {
-		verdict, reasons = Hold, append(reasons, holds...)
-	}
-	if verdict == Accept && e.Coverage < p.Recipe.MinCoverage {
-		verdict = Hold
-		reasons = append(reasons, Reason{Name: ReasonCoverage, Verdict: Hold, Value: e.Coverage, Limit: p.Recipe.MinCoverage,
-			Over: e.Coverage - p.Recipe.MinCoverage, Text: fmt.Sprintf("inspected %.4f of the region, want %.4f%s", e.Coverage, p.Recipe.MinCoverage, CoverageCause(e))})
-	}
+	verdict, reasons := p.Recipe.Verdict(e)
 	return p.Stamp(Judgement{Verdict: verdict, Reasons: reasons, By: ByLine, At: now})
 }
 

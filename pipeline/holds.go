@@ -18,6 +18,7 @@ const (
 	ReasonOverdue     = "master overdue"
 	ReasonMaster      = "master failed"
 	ReasonMasterUnit  = "master shown as a unit"
+	ReasonDirt        = "dirt or hot pixel"
 )
 
 // HoldReasons returns why evidence cannot be accepted whatever its limits say:

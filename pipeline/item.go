@@ -32,6 +32,9 @@ type Measurement struct {
 	Unit  string  `json:"unit"`
 }
 
+// MeasuredPartAngle is the measurement of a unit whose angle a datum gave, in degrees.
+const MeasuredPartAngle = "part_angle_deg"
+
 // Proof is one thing that a view must show before its defects count.
 type Proof struct {
 	Name   string  `json:"name"` // light, part, focus, live data, settings

@@ -1,5 +1,7 @@
 package pipeline
 
+import "fmt"
+
 // Recipe is the file for one part number: views, stages and limits. It holds what
 // the engine needs; how it was written is the reader's business.
 type Recipe struct {
@@ -14,6 +16,21 @@ type Recipe struct {
 	MaxAttempts             int         // showings of a unit's surface; 0 = no limit
 	ViewTimeoutMS           int         // how long to wait for all views of a showing
 	Masters                 []MasterSpec
+}
+
+// Verdict judges evidence: the limits, then whatever keeps an accept back. It is a pure
+// function of both.
+func (r *Recipe) Verdict(e Evidence) (Verdict, []Reason) {
+	verdict, reasons := r.Judge.Judge(e)
+	if holds := HoldReasons(e); verdict == Accept && len(holds) > 0 {
+		verdict, reasons = Hold, append(reasons, holds...)
+	}
+	if verdict == Accept && e.Coverage < r.MinCoverage {
+		verdict = Hold
+		reasons = append(reasons, Reason{Name: ReasonCoverage, Verdict: Hold, Value: e.Coverage, Limit: r.MinCoverage,
+			Over: e.Coverage - r.MinCoverage, Text: fmt.Sprintf("inspected %.4f of the region, want %.4f%s", e.Coverage, r.MinCoverage, CoverageCause(e))})
+	}
+	return verdict, reasons
 }
 
 // RecipeView is one view of a recipe.

@@ -31,6 +31,9 @@ type RegisterSettings struct {
 	MaxShiftUM  float64 // how far the part's centre may be off between the showings
 	SizeRatio   float64 // of the diameters of a pair, at most; from 1
 	LeastPairs  int     // without which nothing is known; from 2
+	// TurnDeg is by how much the second showing lies turned against the first, where a
+	// datum tells; nil = it does not. A turn that is known needs no pairs.
+	TurnDeg *float64
 }
 
 // DefaultRegister allows 50 µm between the places, 100 between the centres, twice
@@ -45,8 +48,15 @@ const mostAnchors = 60
 // defect onto another of its size is tried; the one with most and closest pairs
 // (Σ 1 − (distance/tolerance)², the M-estimator of Torr and Zisserman 2000) is refined by least squares (the rigid motion of Kabsch 1976 in two
 // dimensions) until the pairs stay. Nothing is known with fewer than LeastPairs pairs, or
-// where another rotation gives as many.
+// where another rotation gives as many; unless a datum gives the rotation, or nothing at
+// all is left in the second showing.
 func Register(first, second []Defect, s RegisterSettings) Registration {
+	if len(first) > 0 && len(second) == 0 {
+		return motion{}.registration(first, nil)
+	}
+	if turn, ok := s.knownTurn(first, second); ok {
+		return registerTurned(first, second, s, turn)
+	}
 	var best, rival motion
 	for _, turn := range s.turns(first, second) {
 		m := motion{turn: turn}
@@ -77,14 +87,34 @@ const rivalTurn = 2 * math.Pi / 180
 
 func apart(a, b float64) float64 { return math.Abs(math.Remainder(a-b, 2*math.Pi)) }
 
-// turns lists the rotations to try: the one that the part's angles give where they are
-// known, else those that bring a strong defect onto one of its size.
-func (s RegisterSettings) turns(first, second []Defect) []float64 {
-	if a, ok := partTurn(first); ok {
-		if b, ok := partTurn(second); ok {
-			return []float64{b - a}
-		}
+// registerTurned lays the showings over each other by a turn that is known. With too few
+// pairs to refine it, pairs may lie as far apart as the centres may be off, so that a
+// defect is rather called permanent than removable.
+func registerTurned(first, second []Defect, s RegisterSettings, turn float64) Registration {
+	m := motion{turn: turn}
+	m.score(first, second, s, s.ToleranceUM+s.MaxShiftUM)
+	if len(m.pairs) < max(s.LeastPairs, 2) {
+		return m.registration(first, second)
 	}
+	m.refine(first, second, s)
+	if math.Hypot(m.u, m.v) > s.MaxShiftUM || apart(m.turn, turn) > rivalTurn {
+		return Registration{}
+	}
+	return m.registration(first, second)
+}
+
+// knownTurn is the rotation that a datum gives, in radians.
+func (s RegisterSettings) knownTurn(first, second []Defect) (float64, bool) {
+	if s.TurnDeg != nil {
+		return *s.TurnDeg * math.Pi / 180, true
+	}
+	a, ok := partTurn(first)
+	b, also := partTurn(second)
+	return b - a, ok && also
+}
+
+// turns lists the rotations to try: those that bring a strong defect onto one of its size.
+func (s RegisterSettings) turns(first, second []Defect) []float64 {
 	var out []float64
 	for _, a := range anchors(first) {
 		for _, b := range anchors(second) {
@@ -214,7 +244,7 @@ func (m *motion) fit(first, second []Defect) {
 
 func (m motion) registration(first, second []Defect) Registration {
 	r := Registration{Known: true, RotationDeg: math.Mod(m.turn*180/math.Pi+720, 360), ShiftUUM: m.u, ShiftVUM: m.v,
-		RMSUM: math.Sqrt(m.off / float64(len(m.pairs))), Pairs: m.pairs}
+		RMSUM: math.Sqrt(m.off / float64(max(len(m.pairs), 1))), Pairs: m.pairs}
 	stayed, known := map[int]bool{}, map[int]bool{}
 	for _, p := range m.pairs {
 		stayed[p.First], known[p.Second] = true, true

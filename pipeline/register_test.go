@@ -144,3 +144,17 @@ func TestRegistrationByTheDatum(t *testing.T) {
 		t.Errorf("got %+v, want 120°", r)
 	}
 }
+
+// A turn that is known needs no pairs, and nothing left needs no turn.
+func TestWhatIsGoneWithoutPairs(t *testing.T) {
+	turn := 90.0
+	known := pipeline.DefaultRegister
+	known.TurnDeg = &turn
+	first := []pipeline.Defect{at(1000, 0, 50), at(0, 2000, 60)}
+	if r := pipeline.Register(first, []pipeline.Defect{at(20, 1090, 50), at(500, 500, 60)}, known); !r.Known || !slices.Equal(r.Permanent, []int{0}) || !slices.Equal(r.Removable, []int{1}) || !slices.Equal(r.Arrived, []int{1}) {
+		t.Errorf("by the datum: %+v", r)
+	}
+	if r := pipeline.Register(first, nil, pipeline.DefaultRegister); !r.Known || !slices.Equal(r.Removable, []int{0, 1}) || r.RMSUM != 0 {
+		t.Errorf("nothing left: %+v", r)
+	}
+}

@@ -26,6 +26,7 @@ import (
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
 	"lapgate/server/masters"
+	"lapgate/server/retest"
 )
 
 // recipeText judges two views of 96 × 96 px by the real stages.
@@ -71,6 +72,8 @@ type rigOptions struct {
 	approval bool   // only approved recipes judge
 	people   []configs.Person
 	clock    *clock // nil = the real one
+	// calibrations by view; nil = the recipe needs none
+	calibrations map[string]*pipeline.Calibration
 	images   *images.Store
 }
 
@@ -121,8 +124,11 @@ func newRig(t *testing.T, o rigOptions) *rig {
 	r.ledger, err = ledger.Open(context.Background(), o.dsn)
 	must(t, err)
 	r.ledger.Now = o.clock.now
-	r.book = server.NewBook(func(rec *pipeline.Recipe, _, _ string) (*pipeline.Pipeline, func() bool, error) {
-		p, err := pipeline.Build(rec, cat, pipeline.Options{ProgramVersion: "test"})
+	r.book = server.NewBook(func(rec *pipeline.Recipe, line, station string) (*pipeline.Pipeline, func() bool, error) {
+		p, err := pipeline.Build(rec, cat, pipeline.Options{ProgramVersion: "test", Calibrations: o.calibrations,
+			Earlier: func(view string, most int) ([]pipeline.FrameHeader, error) {
+				return r.ledger.FramesBefore(context.Background(), line, station, view, most)
+			}})
 		return p, func() bool { return false }, err
 	})
 	if o.approval {
@@ -147,14 +153,15 @@ func (r *rig) save(text string) string {
 func (r *rig) serve(o rigOptions) {
 	t, feed, stations := r.t, server.NewFeed(), server.NewStations()
 	gate := &masters.Gate{Ledger: r.ledger, Started: o.clock.now(), Now: o.clock.now, Log: quiet()}
+	again := &retest.Keeper{Ledger: r.ledger, Decode: r.decode, Log: quiet()}
 	var err error
 	r.intake, err = intake.New(intake.Settings{MaxBytesInFlight: o.maxBytes, MaxFrameBytes: 1 << 20, Workers: max(o.workers, 2),
 		ViewTimeout: time.Second, Now: o.clock.now, Log: quiet(), Gate: gate,
-		Keep: o.keep(), Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v) }}, r.book, r.ledger)
+		Keep: o.keep(), Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v); again.Recorded(v.Inspection) }}, r.book, r.ledger)
 	must(t, err)
 	g, _ := server.NewGRPC(server.Deps{Intake: r.intake, Ledger: r.ledger, Book: r.book, Feed: feed, Log: quiet(), Now: o.clock.now,
 		Check: func(file string, text []byte) error { _, err := r.decode(file, text); return err },
-		Gate:  gate, Stations: stations, People: server.People{List: o.people}},
+		Gate:  gate, Stations: stations, People: server.People{List: o.people}, Retest: again},
 		server.GRPCOptions{MaxMessageBytes: 16 << 20, MaxStreams: 64, Reflection: true})
 	l, err := net.Listen("tcp", "127.0.0.1:0")
 	must(t, err)

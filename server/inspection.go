@@ -80,6 +80,9 @@ func (s *Inspection) GetUnit(ctx context.Context, req *inspectpb.GetUnitRequest)
 	if err := pipeline.CheckID("unit", req.Unit); err != nil {
 		return nil, inspectpb.ToStatus(err)
 	}
+	if err := s.deps.Retest.CatchUp(ctx); err != nil {
+		return nil, inspectpb.ToStatus(err)
+	}
 	story, err := s.deps.Ledger.Unit(ctx, req.Part, req.Unit)
 	if err != nil {
 		return nil, inspectpb.ToStatus(err)

@@ -30,11 +30,30 @@ func record(sh ledger.Showing) *inspectpb.InspectionRecord {
 	if d := sh.Disposition; d != nil {
 		out.Dispositions = []*inspectpb.DispositionRecord{disposition(*d)}
 	}
+	if r := sh.Registration; r != nil {
+		out.Registration = registration(*r)
+	}
 	for _, s := range sh.Suspicions {
 		out.Suspicions = append(out.Suspicions, &inspectpb.Suspicion{Master: s.Master, Cause: string(s.Cause), Why: s.Why, At: inspectpb.FromTime(s.At)})
 	}
 	for _, o := range sh.Outcomes {
 		out.Outcomes = append(out.Outcomes, &inspectpb.OutcomeRecord{Bin: inspectpb.FromVerdict(o.Bin), Confirmed: o.Confirmed, At: inspectpb.FromTime(o.At)})
+	}
+	return out
+}
+
+func registration(r ledger.Registration) *inspectpb.Registration {
+	out := &inspectpb.Registration{PreviousInspectionId: strconv.FormatInt(r.Against, 10), PreviousAttempt: int32(r.PreviousAttempt), Known: r.Known,
+		RotationDeg: r.RotationDeg, ShiftUUm: r.ShiftUUM, ShiftVUm: r.ShiftVUM, RmsUm: r.RMSUM,
+		PermanentVerdict: inspectpb.FromVerdict(r.Verdict), PermanentReasons: r.Reasons}
+	for _, p := range r.Pairs {
+		out.Pairs = append(out.Pairs, &inspectpb.DefectPair{Previous: int32(p.Previous), This: int32(p.This), DistanceUm: p.DistanceUM})
+	}
+	for _, id := range r.Removable {
+		out.Removable = append(out.Removable, int32(id))
+	}
+	for _, id := range r.Arrived {
+		out.Arrived = append(out.Arrived, int32(id))
 	}
 	return out
 }

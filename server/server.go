@@ -20,6 +20,7 @@ import (
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
 	"lapgate/server/masters"
+	"lapgate/server/retest"
 )
 
 // Deps are what the services stand on.
@@ -36,6 +37,8 @@ type Deps struct {
 	Gate     *masters.Gate // the one that intake asks
 	Stations *Stations
 	People   People
+	// Retest registers the showings of a unit; nil = none are.
+	Retest *retest.Keeper
 }
 
 // Inspection implements inspectpb.InspectionServiceServer.

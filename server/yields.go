@@ -41,6 +41,9 @@ func (s *Yield) GetSummary(ctx context.Context, req *inspectpb.GetSummaryRequest
 }
 
 func (s *Yield) yields(ctx context.Context, q ledger.Question) ([]*inspectpb.Yield, error) {
+	if err := s.deps.Retest.CatchUp(ctx); err != nil {
+		return nil, err
+	}
 	rows, err := s.deps.Ledger.Counts(ctx, q)
 	if err != nil {
 		return nil, err
@@ -78,11 +81,15 @@ func yieldOf(c ledger.Counts) (*inspectpb.Yield, error) {
 	if err != nil {
 		return nil, err
 	}
+	permanent, err := yield.NewRate(int(c.Permanent.Accept), int(c.First.Total()), confidence)
+	if err != nil {
+		return nil, err
+	}
 	return &inspectpb.Yield{Group: groupOf(c), Units: int32(c.Final.Total()), Inspections: int32(c.Showings.Total()),
 		Accepted: int32(c.Showings.Accept), Rejected: int32(c.Showings.Reject), Held: int32(c.Showings.Hold),
 		FirstPass: rate(first), FinalIfHoldsFail: rate(final.Low), FinalIfHoldsPass: rate(final.High), OpenHolds: int32(open),
 		FirstRejected: int32(c.First.Reject), FirstHeld: int32(c.First.Hold),
-		AttemptsPerUnit: float64(c.Attempts) / float64(max(c.Final.Total(), 1)), PassByRetest: rate(retest)}, nil
+		AttemptsPerUnit: float64(c.Attempts) / float64(max(c.Final.Total(), 1)), PassByRetest: rate(retest), Permanent: rate(permanent)}, nil
 }
 
 func groupOf(c ledger.Counts) map[string]string {
@@ -142,6 +149,9 @@ func (s *Yield) GetPareto(ctx context.Context, req *inspectpb.GetParetoRequest) 
 		return nil, inspectpb.ToStatus(err)
 	}
 	q := ledger.Question{Filter: f}
+	if err := s.deps.Retest.CatchUp(ctx); err != nil {
+		return nil, inspectpb.ToStatus(err)
+	}
 	reasons, err := s.deps.Ledger.Reasons(ctx, q)
 	if err != nil {
 		return nil, inspectpb.ToStatus(err)
@@ -167,7 +177,8 @@ func paretoRows(reasons []ledger.ReasonCounts) []*inspectpb.ParetoRow {
 	sum := 0.0
 	for _, r := range reasons {
 		sum += float64(r.Principal)
-		rows = append(rows, &inspectpb.ParetoRow{Reason: r.Reason, Verdict: inspectpb.FromVerdict(r.Verdict), First: int32(r.Principal), Any: int32(r.Showings)})
+		rows = append(rows, &inspectpb.ParetoRow{Reason: r.Reason, Verdict: inspectpb.FromVerdict(r.Verdict), First: int32(r.Principal), Any: int32(r.Showings),
+			FirstAttempts: int32(r.First), Removable: int32(r.Removable)})
 	}
 	slices.SortStableFunc(rows, func(a, b *inspectpb.ParetoRow) int {
 		if a.First != b.First {

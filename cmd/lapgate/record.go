@@ -22,6 +22,8 @@ type inspectionOf struct {
 	Dispositions []dispositionOf      `json:"dispositions"`
 	Outcomes     []outcomeOf          `json:"outcomes"`
 	Suspicions   []suspicionOf        `json:"suspicions"` // masters that put it in doubt
+	// Registration is how it lies to the showing before; null = there was none.
+	Registration *registrationOf `json:"registration"`
 }
 
 type dispositionOf struct {
@@ -50,6 +52,9 @@ func newInspection(r *inspectpb.InspectionRecord) (inspectionOf, error) {
 		return out, err
 	}
 	if out.Evidence, err = inspectpb.ToEvidence(r.GetEvidence()); err != nil {
+		return out, err
+	}
+	if out.Registration, err = newRegistration(r.GetRegistration()); err != nil {
 		return out, err
 	}
 	return out, out.addHistory(r)

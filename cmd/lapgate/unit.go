@@ -35,7 +35,7 @@ func unitCommand() *cobra.Command {
 			return writeJSON(c.OutOrStdout(), map[string]any{"unit": args[0], "inspections": list})
 		}
 		for _, i := range list {
-			tell(c.OutOrStdout(), i)
+			tell(c.OutOrStdout(), i, func(id int) string { return markOf(list, i, id) })
 		}
 		return nil
 	}
@@ -59,8 +59,8 @@ func unitStory(ctx context.Context, server, part, unit string) ([]inspectionOf, 
 	return list, err
 }
 
-// tell prints one inspection for a person.
-func tell(w io.Writer, i inspectionOf) {
+// tell prints one inspection for a person; mark is what later showings say of a defect.
+func tell(w io.Writer, i inspectionOf, mark func(id int) string) {
 	id := i.Identity
 	fmt.Fprintf(w, "%s  part %s%s  attempt %d  inspection %s: %s\n", id.Unit, id.Part, named(" revision ", id.Revision), id.Attempt, i.InspectionID, i.Verdict)
 	fmt.Fprintf(w, "  captured %s, judged %s, %.0f ms after the last frame%s\n", whenOf(i.Captured), whenOf(i.Judged), i.LatencyMS, late(i.Late))
@@ -74,7 +74,8 @@ func tell(w io.Writer, i inspectionOf) {
 	for _, v := range e.Views {
 		tellView(w, v)
 	}
-	tellDefects(w, e.Defects)
+	tellDefects(w, e.Defects, mark)
+	tellRegistration(w, i.Registration)
 	for _, j := range i.Judgements {
 		tellJudgement(w, j)
 	}
@@ -93,8 +94,13 @@ func tellView(w io.Writer, v pipeline.ViewEvidence) {
 	fmt.Fprintf(w, "  view %s: %s inspected, background %.1f DN, noise %.2f DN, %d defects\n", v.Name, percent(v.Coverage.Share),
 		v.Coverage.Background, v.Coverage.Noise, len(v.Defects))
 	for _, p := range v.Proofs {
-		if !p.OK {
+		switch {
+		case !p.OK:
 			fmt.Fprintf(w, "    not proven: %s: %s\n", p.Name, p.Reason)
+		case p.Warning != "":
+			fmt.Fprintf(w, "    warning: %s\n", p.Warning)
+		case p.WarnHigh > 0:
+			fmt.Fprintf(w, "    %s %.4g of what was calibrated (warning beyond %.4g to %.4g, hold beyond %.4g to %.4g)\n", p.Name, p.Value, p.WarnLow, p.WarnHigh, p.Low, p.High)
 		}
 	}
 	for _, f := range v.Frames {
@@ -107,14 +113,14 @@ func tellView(w io.Writer, v pipeline.ViewEvidence) {
 // mostTold is how many defects are listed for a person; --json has all.
 const mostTold = 20
 
-func tellDefects(w io.Writer, defects []pipeline.Defect) {
+func tellDefects(w io.Writer, defects []pipeline.Defect, mark func(id int) string) {
 	for n, d := range defects {
 		if n == mostTold {
 			fmt.Fprintf(w, "  … and %d more defects; --json lists all\n", len(defects)-mostTold)
 			return
 		}
-		fmt.Fprintf(w, "  defect %d: %s%s, %.1f × %.1f µm at u %.0f, v %.0f µm, %s%s\n", d.ID, d.Kind, named(" in ", d.Zone),
-			d.LengthUM, d.WidthUM, d.UUM, d.VUM, prominence(d), named(", seen in ", strings.Join(d.SeenIn, " and ")))
+		fmt.Fprintf(w, "  defect %d: %s%s, %.1f × %.1f µm at u %.0f, v %.0f µm, %s%s%s\n", d.ID, d.Kind, named(" in ", d.Zone),
+			d.LengthUM, d.WidthUM, d.UUM, d.VUM, prominence(d), named(", seen in ", strings.Join(d.SeenIn, " and ")), named(", ", mark(d.ID)))
 	}
 }
 

@@ -29,10 +29,13 @@ func yieldCommand() *cobra.Command {
 		Long: `Show counts and yield of inspections by time of capture. Only purpose production counts
 unless --purpose says otherwise. First pass: units accepted at their first attempt. Final
 yield is given twice: with open holds counted as bad, and as good. Passed by retest:
-units that a later attempt accepted, of those held or rejected at their first.
+units that a later attempt accepted, of those held or rejected at their first. By permanent
+defects: first pass with the defects left out that a later attempt, after air-blow or
+cleaning, proved gone or moved; what it did not prove counts as permanent.
 
 With --series: accepted of all verdicts per time bucket. With --pareto: the reasons, most
-frequent first; a unit with two reasons counts once under "first" and under both in "any".`,
+frequent first; a unit with two reasons counts once under "first" and under both in "any".
+Removable: first attempts that had the reason by defects that later went or moved.`,
 		Args: cobra.NoArgs,
 	}
 	server := serverFlag(c)

@@ -91,6 +91,7 @@ type yieldOf struct {
 	FinalIfHoldsPass rateOf            `json:"final_if_holds_pass"`
 	AttemptsPerUnit  float64           `json:"attempts_per_unit"`
 	PassByRetest     rateOf            `json:"pass_by_retest"` // of those held or rejected at first
+	Permanent        rateOf            `json:"permanent"`      // first pass by the permanent defects alone
 }
 
 func newYield(y *inspectpb.Yield) yieldOf {
@@ -101,7 +102,7 @@ func newYield(y *inspectpb.Yield) yieldOf {
 	return yieldOf{Group: group, Units: y.GetUnits(), Inspections: y.GetInspections(), Accepted: y.GetAccepted(), Rejected: y.GetRejected(),
 		Held: y.GetHeld(), OpenHolds: y.GetOpenHolds(), FirstRejected: y.GetFirstRejected(), FirstHeld: y.GetFirstHeld(), FirstPass: newRate(y.GetFirstPass()),
 		FinalIfHoldsFail: newRate(y.GetFinalIfHoldsFail()), FinalIfHoldsPass: newRate(y.GetFinalIfHoldsPass()),
-		AttemptsPerUnit: y.GetAttemptsPerUnit(), PassByRetest: newRate(y.GetPassByRetest())}
+		AttemptsPerUnit: y.GetAttemptsPerUnit(), PassByRetest: newRate(y.GetPassByRetest()), Permanent: newRate(y.GetPermanent())}
 }
 
 func summaryDisplay(r *inspectpb.GetSummaryResponse, by []string) display {
@@ -112,14 +113,16 @@ func summaryDisplay(r *inspectpb.GetSummaryResponse, by []string) display {
 	}
 	d := display{document: map[string]any{"total": total, "groups": groups}}
 	d.head = append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open_holds",
-		"first_pass", "first_pass_low", "first_pass_high", "final_if_holds_fail", "final_if_holds_pass", "attempts_per_unit", "pass_by_retest")
-	eyeHead := append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open", "first pass", "final, holds bad", "final, holds good", "attempts per unit", "passed by retest")
+		"first_pass", "first_pass_low", "first_pass_high", "final_if_holds_fail", "final_if_holds_pass", "attempts_per_unit", "pass_by_retest",
+		"permanent", "permanent_low", "permanent_high")
+	eyeHead := append(append([]string{}, by...), "units", "inspections", "accepted", "rejected", "held", "open", "first pass", "by permanent defects", "final, holds bad", "final, holds good", "attempts per unit", "passed by retest")
 	list := append(groups, total)
 	for i, y := range list {
 		keys := groupCells(y, by, i == len(list)-1)
 		counts := numbers(y.Units, y.Inspections, y.Accepted, y.Rejected, y.Held, y.OpenHolds)
-		d.rows = append(d.rows, join(keys, counts, y.FirstPass.cells(), y.FinalIfHoldsFail.cells()[:1], y.FinalIfHoldsPass.cells()[:1], []string{real64(y.AttemptsPerUnit)}, y.PassByRetest.cells()[:1]))
-		d.forEye = append(d.forEye, join(keys, counts, []string{y.FirstPass.forEye(), y.FinalIfHoldsFail.forEye(), y.FinalIfHoldsPass.forEye(),
+		d.rows = append(d.rows, join(keys, counts, y.FirstPass.cells(), y.FinalIfHoldsFail.cells()[:1], y.FinalIfHoldsPass.cells()[:1], []string{real64(y.AttemptsPerUnit)}, y.PassByRetest.cells()[:1],
+			y.Permanent.cells()))
+		d.forEye = append(d.forEye, join(keys, counts, []string{y.FirstPass.forEye(), y.Permanent.forEye(), y.FinalIfHoldsFail.forEye(), y.FinalIfHoldsPass.forEye(),
 			fmt.Sprintf("%.3f", y.AttemptsPerUnit), y.PassByRetest.forEye()}))
 	}
 	return d.withEyeHead(eyeHead)
@@ -174,21 +177,23 @@ type paretoRow struct {
 	Any             int32            `json:"any"`
 	Share           float64          `json:"share"`
 	CumulativeShare float64          `json:"cumulative_share"`
+	FirstAttempts   int32            `json:"first_attempts"` // with this reason
+	Removable       int32            `json:"removable"`      // of those: gone with the removable defects
 }
 
 func paretoDisplay(r *inspectpb.GetParetoResponse) display {
 	rows := []paretoRow{}
-	d := display{head: []string{"reason", "verdict", "first", "any", "share", "cumulative_share"}}
+	d := display{head: []string{"reason", "verdict", "first", "any", "share", "cumulative_share", "first_attempts", "removable"}}
 	for _, p := range r.GetRows() {
 		verdict, _ := inspectpb.ToVerdict(p.GetVerdict()) // a reason of both kinds has none
-		row := paretoRow{p.GetReason(), verdict, p.GetFirst(), p.GetAny(), p.GetShare(), p.GetCumulativeShare()}
+		row := paretoRow{p.GetReason(), verdict, p.GetFirst(), p.GetAny(), p.GetShare(), p.GetCumulativeShare(), p.GetFirstAttempts(), p.GetRemovable()}
 		rows = append(rows, row)
 		start := join([]string{row.Reason, string(row.Verdict)}, numbers(row.First, row.Any))
-		d.rows = append(d.rows, join(start, []string{real64(row.Share), real64(row.CumulativeShare)}))
-		d.forEye = append(d.forEye, join(start, []string{percent(row.Share), percent(row.CumulativeShare)}))
+		d.rows = append(d.rows, join(start, []string{real64(row.Share), real64(row.CumulativeShare)}, numbers(row.FirstAttempts, row.Removable)))
+		d.forEye = append(d.forEye, join(start, []string{percent(row.Share), percent(row.CumulativeShare), fmt.Sprintf("%d of %d", row.Removable, row.FirstAttempts)}))
 	}
 	d.document = map[string]any{"inspections": r.GetInspections(), "rows": rows}
-	return d.withEyeHead([]string{"reason", "verdict", "first", "any", "share", "cumulative"})
+	return d.withEyeHead([]string{"reason", "verdict", "first", "any", "share", "cumulative", "removable, of first attempts"})
 }
 
 func numbers(list ...int32) []string {

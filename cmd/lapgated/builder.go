@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"fmt"
 	"os"
 	"path/filepath"
@@ -9,6 +10,7 @@ import (
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/calibrate"
+	"lapgate/server/ledger"
 )
 
 // recipeBuilder makes pipelines with the calibrations of a line and station: those in
@@ -16,6 +18,19 @@ import (
 type recipeBuilder struct {
 	catalogue    *pipeline.Catalogue
 	calibrations string
+	ledger       *ledger.Store
+}
+
+// ledgerTimeout bounds what a build asks of the ledger.
+const ledgerTimeout = 10 * time.Second
+
+// earlier returns what a station showed before, as the ledger has it.
+func (b recipeBuilder) earlier(line, station string) func(view string, most int) ([]pipeline.FrameHeader, error) {
+	return func(view string, most int) ([]pipeline.FrameHeader, error) {
+		ctx, cancel := context.WithTimeout(context.Background(), ledgerTimeout)
+		defer cancel()
+		return b.ledger.FramesBefore(ctx, line, station, view, most)
+	}
 }
 
 // lookAgain is how often a pipeline's calibration folders are looked at for a change.
@@ -37,7 +52,8 @@ func (b recipeBuilder) build(r *pipeline.Recipe, line, station string) (*pipelin
 		}
 		dirs = append(dirs, dir)
 	}
-	p, err := pipeline.Build(r, b.catalogue, pipeline.Options{Calibrations: cals, ReadFile: beside(r.File), ProgramVersion: programVersion()})
+	p, err := pipeline.Build(r, b.catalogue, pipeline.Options{Calibrations: cals, ReadFile: beside(r.File), ProgramVersion: programVersion(),
+		Earlier: b.earlier(line, station)})
 	return p, staleness(dirs), err
 }
 

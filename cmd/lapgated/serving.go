@@ -24,6 +24,7 @@ import (
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
 	"lapgate/server/masters"
+	"lapgate/server/retest"
 )
 
 // maxStreams is how many calls one connection may have open.
@@ -43,6 +44,8 @@ type serving struct {
 	told     atomic.Pointer[health.Server] // health, once plug-ins can be told of there
 	listener net.Listener
 	served   chan error
+
+	stopKeepingUp func() // nil = not started
 }
 
 // startServing opens the ledger, loads the recipes and listens. It stops by stop.
@@ -69,7 +72,7 @@ func (s *serving) open(ctx context.Context) error {
 	if s.keeper, err = newKeeper(s.settings.Images, images.Settings{Policy: images.Policy(s.settings.KeepImages), QuotaBytes: s.settings.ImagesQuotaBytes}, s.log); err != nil {
 		return err
 	}
-	builder := recipeBuilder{catalogue: cat, calibrations: s.settings.Calibrations}
+	builder := recipeBuilder{catalogue: cat, calibrations: s.settings.Calibrations, ledger: s.ledger}
 	s.book = server.NewBook(builder.build)
 	people, err := configs.LoadPeople(s.settings.People)
 	if err != nil {
@@ -78,10 +81,12 @@ func (s *serving) open(ctx context.Context) error {
 	decode := func(file string, text []byte) (*pipeline.Recipe, error) { return configs.DecodeRecipe(file, text, cat) }
 	s.requireApproval(ctx, decode)
 	feed, stations := server.NewFeed(), server.NewStations()
+	again := &retest.Keeper{Ledger: s.ledger, Decode: decode, Log: s.log}
+	s.startKeepingUp(ctx, again)
 	gate := &masters.Gate{Ledger: s.ledger, Started: time.Now(), Now: time.Now, Log: s.log}
 	s.intake, err = intake.New(intake.Settings{MaxBytesInFlight: s.settings.MaxBytesInFlight, MaxFrameBytes: s.settings.MaxFrameBytes,
 		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Keep: s.keeper.keep, Gate: gate,
-		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v) }}, s.book, s.ledger)
+		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v); again.Recorded(v.Inspection) }}, s.book, s.ledger)
 	if err != nil {
 		return err
 	}
@@ -90,7 +95,7 @@ func (s *serving) open(ctx context.Context) error {
 	}
 	s.grpc, s.health = server.NewGRPC(server.Deps{Intake: s.intake, Ledger: s.ledger, Book: s.book, Feed: feed, Log: s.log, Now: time.Now,
 		Check: func(file string, text []byte) error { _, err := decode(file, text); return err },
-		Gate:  gate, Stations: stations, People: server.People{List: people}},
+		Gate:  gate, Stations: stations, People: server.People{List: people}, Retest: again},
 		server.GRPCOptions{MaxMessageBytes: int(min(s.settings.MaxBytesInFlight, 1<<30)), MaxStreams: maxStreams, Reflection: s.settings.Reflection})
 	s.told.Store(s.health)
 	for _, h := range s.stages.hosts {
@@ -98,6 +103,31 @@ func (s *serving) open(ctx context.Context) error {
 	}
 	s.listener, err = net.Listen("tcp", s.settings.Listen)
 	return err
+}
+
+// keepUpEvery is how often showings that wait to be held against the one before are.
+const keepUpEvery = 5 * time.Second
+
+// startKeepingUp runs keepUp until close.
+func (s *serving) startKeepingUp(ctx context.Context, again *retest.Keeper) {
+	ctx, cancel := context.WithCancel(ctx)
+	done := make(chan struct{})
+	go func() { s.keepUp(ctx, again); close(done) }()
+	s.stopKeepingUp = func() { cancel(); <-done }
+}
+
+// keepUp has retests registered also while nobody asks for them.
+func (s *serving) keepUp(ctx context.Context, again *retest.Keeper) {
+	for {
+		if err := again.CatchUp(ctx); err != nil && ctx.Err() == nil {
+			s.log.Warn("retests are not registered", "error", err)
+		}
+		select {
+		case <-ctx.Done():
+			return
+		case <-time.After(keepUpEvery):
+		}
+	}
 }
 
 // tellStage puts the state of a stage outside into the health service, as "stage." and
@@ -184,6 +214,9 @@ func (s *serving) close() error {
 		errs = append(errs, s.book.Close())
 	}
 	errs = append(errs, s.stages.close())
+	if s.stopKeepingUp != nil {
+		s.stopKeepingUp()
+	}
 	if s.ledger != nil {
 		errs = append(errs, s.ledger.Close())
 	}

@@ -83,7 +83,7 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	}
 	item.Defects = out
 	if known {
-		item.Measure("part_angle_deg", angle, "deg")
+		item.Measure(pipeline.MeasuredPartAngle, angle, "deg")
 	}
 	return ctx.Err()
 }

@@ -52,7 +52,11 @@ func Render(t testing.TB, s render.Scene) *Rendered {
 		for i := range response.Pix {
 			response.Pix[i] = max(response.Pix[i]/float32(sum), 0.1)
 		}
-		c := &pipeline.Calibration{Camera: s.Camera.ID, Light: v.Light, Hash: "rendered " + v.Name, Dark: dark, Stray: stray, Response: response,
+		shot, err := r.CalibrationFrame(render.FrameDark, v.Name, 0)
+		if err != nil {
+			t.Fatal(err)
+		}
+		c := &pipeline.Calibration{Camera: s.Camera.ID, Light: v.Light, Capture: shot.Header.Capture, Hash: "rendered " + v.Name, Dark: dark, Stray: stray, Response: response,
 			Noise: pipeline.NoiseModel{GainDNPerE: s.Camera.GainDNPerE, DarkDN: 0.5}, Scale: pipeline.Scale{UMPerPx: s.Camera.UMPerPx}}
 		for i, d := range dark.Pix {
 			if d > float32(s.Camera.BlackLevelDN)+10 {

@@ -71,6 +71,9 @@ type Counts struct {
 	// RetestAccepts are units of First that were not accepted there and were by the line at
 	// a later attempt, by the first attempt's verdict; Accept is always 0.
 	RetestAccepts Tally
+	// Permanent are the units of First by what their first attempt is worth when the defects
+	// that a later showing proved removable are left out; all others count as permanent.
+	Permanent Tally
 }
 
 // Counts answers a question, one row per group that holds anything, in order of time and
@@ -80,8 +83,8 @@ func (s *Store) Counts(ctx context.Context, q Question) ([]Counts, error) {
 	var v pipeline.Verdict
 	var n verdictCounts
 	a := answer{table: `rollup_verdicts`, keys: []string{`i.verdict`},
-		sums: []string{`showings`, `first_pass`, `final`, `attempts`, `binned`, `first_binned`, `retest_accepts`},
-		into: []any{&v, &n.showings, &n.first, &n.final, &n.attempts, &n.binned, &n.firstBinned, &n.retestAccepts}}
+		sums: []string{`showings`, `first_pass`, `final`, `attempts`, `binned`, `first_binned`, `retest_accepts`, `permanent`},
+		into: []any{&v, &n.showings, &n.first, &n.final, &n.attempts, &n.binned, &n.firstBinned, &n.retestAccepts, &n.permanent}}
 	err := s.ask(ctx, q, a, func(g Group) {
 		if len(out) == 0 || !out[len(out)-1].Group.equal(g) {
 			out = append(out, Counts{Group: g})
@@ -93,6 +96,7 @@ func (s *Store) Counts(ctx context.Context, q Question) ([]Counts, error) {
 
 func (c *Counts) add(v pipeline.Verdict, n verdictCounts) {
 	c.Attempts += n.attempts
+	c.Permanent.set(v, n.permanent)
 	switch v {
 	case pipeline.Accept:
 		c.Showings.Accept, c.First.Accept, c.Final.Accept = n.showings, n.first, n.final
@@ -110,6 +114,17 @@ func (c *Counts) add(v pipeline.Verdict, n verdictCounts) {
 	}
 }
 
+func (t *Tally) set(v pipeline.Verdict, n int64) {
+	switch v {
+	case pipeline.Accept:
+		t.Accept = n
+	case pipeline.Reject:
+		t.Reject = n
+	case pipeline.Hold:
+		t.Hold = n
+	}
+}
+
 // ReasonCounts says how often a reason was given. Showings over all reasons add up to
 // more than were shown where one had several; Principal counts each showing once, under
 // its first reason.
@@ -121,6 +136,7 @@ type ReasonCounts struct {
 	Principal      int64
 	First          int64 // Showings, first attempts only
 	FirstPrincipal int64 // Principal, first attempts only
+	Removable      int64 // of First: those without this reason by their permanent defects alone
 }
 
 // Reasons answers a question by reason.
@@ -128,8 +144,8 @@ func (s *Store) Reasons(ctx context.Context, q Question) ([]ReasonCounts, error)
 	var out []ReasonCounts
 	var n ReasonCounts
 	a := answer{table: `rollup_reasons`, keys: []string{`i.verdict`, `i.reason`},
-		sums: []string{`showings`, `principal`, `first_showings`, `first_principal`},
-		into: []any{&n.Verdict, &n.Reason, &n.Showings, &n.Principal, &n.First, &n.FirstPrincipal}}
+		sums: []string{`showings`, `principal`, `first_showings`, `first_principal`, `removable`},
+		into: []any{&n.Verdict, &n.Reason, &n.Showings, &n.Principal, &n.First, &n.FirstPrincipal, &n.Removable}}
 	err := s.ask(ctx, q, a, func(g Group) {
 		n.Group = g
 		out = append(out, n)

@@ -29,6 +29,8 @@ type Showing struct {
 	Disposition *Disposition
 	Outcomes    []Outcome
 	Suspicions  []Suspicion // in the story of a unit alone
+	// Registration is how it lies to the showing before, in the story of a unit alone.
+	Registration *Registration
 }
 
 // Showings is one page of a list, newest first.

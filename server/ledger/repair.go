@@ -62,18 +62,18 @@ func replaceBucket(ctx context.Context, tx *sql.Tx, b dirtyBucket, t *tally) err
 func insertTally(ctx context.Context, tx *sql.Tx, bucketUS int64, t *tally) error {
 	for k, n := range t.verdicts {
 		_, err := tx.ExecContext(ctx, `INSERT INTO rollup_verdicts (bucket_us, part, surface, process, lot, line, station, recipe, purpose, verdict,
-			showings, first_pass, final, attempts, binned, first_binned, retest_accepts)
-			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16, $17)`,
-			append(k.args(bucketUS), n.showings, n.first, n.final, n.attempts, n.binned, n.firstBinned, n.retestAccepts)...)
+			showings, first_pass, final, attempts, binned, first_binned, retest_accepts, permanent)
+			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16, $17, $18)`,
+			append(k.args(bucketUS), n.showings, n.first, n.final, n.attempts, n.binned, n.firstBinned, n.retestAccepts, n.permanent)...)
 		if err != nil {
 			return err
 		}
 	}
 	for k, n := range t.reasons {
 		_, err := tx.ExecContext(ctx, `INSERT INTO rollup_reasons (bucket_us, part, surface, process, lot, line, station, recipe, purpose, verdict,
-			reason, showings, principal, first_showings, first_principal)
-			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15)`,
-			append(k.args(bucketUS), k.reason, n.showings, n.principal, n.first, n.firstPrincipal)...)
+			reason, showings, principal, first_showings, first_principal, removable)
+			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12, $13, $14, $15, $16)`,
+			append(k.args(bucketUS), k.reason, n.showings, n.principal, n.first, n.firstPrincipal, n.removable)...)
 		if err != nil {
 			return err
 		}
@@ -109,26 +109,29 @@ func (s *Store) count(ctx context.Context, t *tally) error {
 const countQuery = `SELECT i.id, i.part, i.lot, i.unit, i.surface, i.station, i.purpose, i.process, i.line, i.recipe,
 	i.attempt, i.counted_us, i.verdict, COALESCE(d.decision, ''),
 	COALESCE((SELECT o.bin FROM outcomes o WHERE o.inspection_id = i.id ORDER BY o.seq DESC LIMIT 1), ''),
-	COALESCE(j.reasons, '[]')
+	COALESCE(j.reasons, '[]'), COALESCE(g.permanent_verdict, ''), COALESCE(g.permanent_reasons, '[]')
 	FROM (SELECT DISTINCT part, lot, unit, surface, station, purpose FROM inspections WHERE counted_us >= $1 AND counted_us < $2) u
 	JOIN inspections i ON i.part = u.part AND i.lot = u.lot AND i.unit = u.unit AND i.surface = u.surface
 		AND i.station = u.station AND i.purpose = u.purpose
 	LEFT JOIN judgements j ON j.inspection_id = i.id AND j.seq = 0 AND i.verdict <> 'accept'
 	LEFT JOIN dispositions d ON d.inspection_id = i.id
+	LEFT JOIN registrations g ON g.inspection_id = i.id
 	ORDER BY i.part, i.lot, i.unit, i.surface, i.station, i.purpose, i.attempt, i.counted_us, i.id`
 
 func scanRaw(r *sql.Rows) (rawShowing, error) {
 	var raw rawShowing
-	var reasons string
+	var reasons, permanent string
 	u, c := &raw.unit, &raw.cell
 	err := r.Scan(&raw.id, &u.part, &u.lot, &u.unit, &u.surface, &u.station, &u.purpose, &c.process, &c.line, &c.recipe,
-		&raw.attempt, &raw.countedUS, &raw.verdict, &raw.decision, &raw.bin, &reasons)
+		&raw.attempt, &raw.countedUS, &raw.verdict, &raw.decision, &raw.bin, &reasons, &raw.permanent, &permanent)
 	if err != nil {
 		return raw, err
 	}
 	c.part, c.lot, c.surface, c.station, c.purpose = u.part, u.lot, u.surface, u.station, u.purpose
-	raw.reasons, err = reasonNames(reasons)
-	return raw, err
+	if raw.reasons, err = reasonNames(reasons); err != nil {
+		return raw, err
+	}
+	return raw, fromJSON("permanent reasons", permanent, &raw.permanentReasons)
 }
 
 // reasonNames returns the names of a judgement's reasons, each once, in order.

@@ -48,6 +48,9 @@ func (s *Store) tell(ctx context.Context, sh *Showing) error {
 	if sh.Disposition, err = s.dispositionOf(ctx, sh.ID); err != nil {
 		return err
 	}
+	if sh.Registration, err = s.registrationOf(ctx, sh.ID); err != nil {
+		return err
+	}
 	if sh.Suspicions, err = s.suspicionsOf(ctx, sh.ID); err != nil {
 		return err
 	}

@@ -30,6 +30,7 @@ type verdictCounts struct {
 	// retestAccepts are first attempts with this verdict, not accept, that a later attempt
 	// of the unit was accepted after
 	retestAccepts int64
+	permanent     int64 // first attempts that would have this verdict by their permanent defects alone
 }
 
 type cellReason struct {
@@ -39,6 +40,7 @@ type cellReason struct {
 
 type reasonCounts struct {
 	showings, principal, first, firstPrincipal int64
+	removable                                  int64 // of first: without this reason by their permanent defects alone
 }
 
 // rawShowing is what counting needs to know of a showing.
@@ -52,6 +54,9 @@ type rawShowing struct {
 	decision  Decision
 	bin       pipeline.Verdict
 	reasons   []string // names, each once, in order
+	// What a later showing says of the unit's first one; empty = nothing.
+	permanent        pipeline.Verdict
+	permanentReasons []string
 }
 
 // lastWord is the verdict, or what a person made of it.
@@ -92,6 +97,26 @@ func (t *tally) add(unit []rawShowing) {
 	for i, r := range unit {
 		if t.holds(r) {
 			t.addShowing(r, i == 0 && r.attempt == 1)
+		}
+	}
+	if t.holds(entry) && entry.attempt == 1 {
+		t.addPermanent(entry, unit)
+	}
+}
+
+// addPermanent counts the first showing by its permanent defects alone: as the latest
+// showing that knows says, or else all of its defects are permanent.
+func (t *tally) addPermanent(entry rawShowing, unit []rawShowing) {
+	verdict, reasons := entry.verdict, entry.reasons
+	for _, r := range unit {
+		if r.permanent != "" {
+			verdict, reasons = r.permanent, r.permanentReasons
+		}
+	}
+	t.verdict(entry.cell, verdict).permanent++
+	for _, name := range entry.reasons {
+		if !slices.Contains(reasons, name) {
+			t.reason(cellReason{cellVerdict{entry.cell, entry.verdict}, name}).removable++
 		}
 	}
 }
