@@ -1,6 +1,10 @@
 package pipeline
 
-import "lapgate/pipeline/raster"
+import (
+	"sync"
+
+	"lapgate/pipeline/raster"
+)
 
 // Zone is a named part of the region with limits of its own: an analytic shape and
 // the pixels in it, as row spans.
@@ -23,40 +27,46 @@ type Region struct {
 	CentreX, CentreY float64 // px
 	RadiusPx         float64 // 0 where the part's outline is no circle
 	Zones            []Zone
-	mask             *raster.Mask
-	owner            []uint8 // zone number + 1 of each pixel, 0 outside
+	width, height    int
+	inside           raster.Rows
+	zones            []raster.Rows
+	mask             func() *raster.Mask
 }
 
-// NewRegion returns a region over a frame of width × height pixels. At most 255 zones.
+// NewRegion returns a region over a frame of width × height pixels.
 func NewRegion(width, height int, centreX, centreY, radiusPx float64, zones []Zone) *Region {
-	r := &Region{CentreX: centreX, CentreY: centreY, RadiusPx: radiusPx, Zones: zones,
-		mask: raster.NewMask(width, height), owner: make([]uint8, width*height)}
-	for i := len(zones) - 1; i >= 0; i-- {
-		r.mask.FillSpans(zones[i].Spans)
-		r.own(zones[i].Spans, uint8(i+1))
+	r := &Region{CentreX: centreX, CentreY: centreY, RadiusPx: radiusPx, Zones: zones, width: width, height: height}
+	var all []raster.Span
+	for _, z := range zones {
+		r.zones = append(r.zones, raster.NewRows(z.Spans, width, height))
+		all = append(all, r.zones[len(r.zones)-1].Spans()...)
 	}
+	r.inside = raster.NewRows(all, width, height)
+	r.mask = sync.OnceValue(func() *raster.Mask {
+		m := raster.NewMask(width, height)
+		m.FillSpans(r.inside.Spans())
+		return m
+	})
 	return r
 }
 
-func (r *Region) own(spans []raster.Span, n uint8) {
-	for _, s := range spans {
-		if s.Y < 0 || s.Y >= r.mask.Height {
-			continue
-		}
-		for x := max(s.X0, 0); x < min(s.X1, r.mask.Width); x++ {
-			r.owner[s.Y*r.mask.Width+x] = n
-		}
-	}
-}
+// Size returns width and height of the frame, in px.
+func (r *Region) Size() (width, height int) { return r.width, r.height }
 
-// Mask returns the pixels of all zones together. It must not be changed.
-func (r *Region) Mask() *raster.Mask { return r.mask }
+// Inside returns the pixels of all zones together.
+func (r *Region) Inside() raster.Rows { return r.inside }
+
+// Mask returns the pixels of all zones together as a mask, which takes time and memory by
+// the area of the frame when it is first asked for. It must not be changed.
+func (r *Region) Mask() *raster.Mask { return r.mask() }
 
 // ZoneAt returns the zone that owns the pixel nearest to (x, y).
 func (r *Region) ZoneAt(x, y float64) (Zone, bool) {
 	ix, iy := int(x+0.5), int(y+0.5)
-	if !r.mask.At(ix, iy) {
-		return Zone{}, false
+	for i, rows := range r.zones {
+		if rows.At(ix, iy) {
+			return r.Zones[i], true
+		}
 	}
-	return r.Zones[r.owner[iy*r.mask.Width+ix]-1], true
+	return Zone{}, false
 }

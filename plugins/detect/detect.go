@@ -110,31 +110,20 @@ func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
 	case item.Geometry == nil:
 		return pipeline.Invalid("view %q has no geometry", item.View)
 	}
-	raw, mask := item.Frames[0].Raw, item.Region.Mask()
-	if mask.Width != raw.Width || mask.Height != raw.Height {
-		return pipeline.Invalid("region: got %d × %d px, the picture has %d × %d", mask.Width, mask.Height, raw.Width, raw.Height)
+	raw := item.Frames[0].Raw
+	if width, height := item.Region.Size(); width != raw.Width || height != raw.Height {
+		return pipeline.Invalid("region: got %d × %d px, the picture has %d × %d", width, height, raw.Width, raw.Height)
 	}
 	c, err := st.correctionFor(raw)
 	if err != nil {
 		return &pipeline.Error{Kind: pipeline.InvalidKind, Err: err}
 	}
 	bands := max(runtime.GOMAXPROCS(0)/int(st.working.Add(1)), 1)
-	r, err := c.Find(raw, regionSpans(item.Region), st.settings(bands))
+	r, err := c.Find(raw, item.Region.Inside().Spans(), st.settings(bands))
 	st.working.Add(-1)
 	if err != nil {
 		return &pipeline.Error{Kind: pipeline.InvalidKind, Err: err}
 	}
 	st.fill(item, r)
 	return ctx.Err()
-}
-
-func regionSpans(r *pipeline.Region) []raster.Span {
-	if len(r.Zones) == 1 {
-		return r.Zones[0].Spans
-	}
-	var out []raster.Span
-	for _, z := range r.Zones {
-		out = append(out, z.Spans...)
-	}
-	return out
 }

@@ -15,7 +15,7 @@ func (st *stage) fill(item *pipeline.Item, r *fused.Result) {
 	item.BadMask = st.bad
 	st.mu.Unlock()
 	item.Grid, item.SaturatedAt = r.Grid, nil
-	width, height := item.Region.Mask().Width, item.Region.Mask().Height
+	width, height := item.Region.Size()
 	if len(r.Saturated) > 0 {
 		item.SaturatedAt = raster.NewMask(width, height)
 		item.SaturatedAt.FillSpans(r.Saturated)
@@ -81,7 +81,7 @@ func cover(item *pipeline.Item, r *fused.Result) pipeline.Coverage {
 	c.MaskedPx = inside - seen
 	for _, s := range r.Saturated {
 		for x := s.X0; x < s.X1; x++ {
-			if !item.Region.Mask().At(x, s.Y) {
+			if !item.Region.Inside().At(x, s.Y) {
 				continue
 			}
 			c.SaturatedPx++

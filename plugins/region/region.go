@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"sync"
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/drift"
@@ -36,6 +37,9 @@ type stage struct {
 	mask     *raster.Mask // for MaskImage
 	// calibration is there only where it knows the edge of a conforming part.
 	calibration *pipeline.Calibration
+
+	mu   sync.Mutex // guards last
+	last place      // of a shape that lies in the same place of every frame
 }
 
 func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
@@ -64,26 +68,19 @@ func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
 
 // Run implements pipeline.Stage.
 func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
-	raw, err := item.Raw()
+	if st.s.Shape == FoundCircle {
+		raw, err := item.Raw()
+		if err != nil {
+			return err
+		}
+		st.find(item, raw)
+		return ctx.Err()
+	}
+	p, err := st.fixed(item)
 	if err != nil {
 		return err
 	}
-	switch st.s.Shape {
-	case FoundCircle:
-		st.find(item, raw)
-	case Circle:
-		x, y := st.centre(raw)
-		st.lay(item, raw, raster.Circle{X: x, Y: y, R: st.radiusPx(x, y, st.s.DiameterMM)})
-	case Polygon:
-		st.fill(item, polygonMask(raw.Width, raw.Height, st.s.Polygon), polygonArea(st.s.Polygon), outlineOf(st.s.Polygon))
-	case MaskImage:
-		if st.mask.Width != raw.Width || st.mask.Height != raw.Height {
-			return pipeline.Invalid("mask_file %s: got %d × %d px, the frame has %d × %d", st.s.MaskFile, st.mask.Width, st.mask.Height, raw.Width, raw.Height)
-		}
-		st.fill(item, st.mask, float64(st.mask.Count()), nil)
-	default:
-		st.fill(item, wholeMask(raw.Width, raw.Height), float64(raw.Width*raw.Height), nil)
-	}
+	item.Region, item.Geometry = p.region, p.geometry
 	return ctx.Err()
 }
 
@@ -113,9 +110,9 @@ func (st *stage) diameterMM(c raster.Circle) float64 {
 	return sum / directions / 500
 }
 
-func (st *stage) centre(raw *raster.Plane) (x, y float64) {
+func (st *stage) centre(width, height int) (x, y float64) {
 	if st.s.CentreXPx == 0 && st.s.CentreYPx == 0 {
-		return float64(raw.Width-1) / 2, float64(raw.Height-1) / 2
+		return float64(width-1) / 2, float64(height-1) / 2
 	}
 	return st.s.CentreXPx, st.s.CentreYPx
 }
@@ -124,7 +121,7 @@ func (st *stage) centre(raw *raster.Plane) (x, y float64) {
 func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
 	s := st.s
 	search := raster.CircleSearch{DarkInside: s.Polarity == "dark", Ridge: s.Polarity == "rim", MaxRMS: s.MaxEdgeRMSPx, Reach: s.SearchPx}
-	search.X, search.Y = st.centre(raw)
+	search.X, search.Y = st.centre(raw.Width, raw.Height)
 	if search.Reach == 0 {
 		search.Reach = float64(min(raw.Width, raw.Height)) / 4
 	}
@@ -142,7 +139,8 @@ func (st *stage) find(item *pipeline.Item, raw *raster.Plane) {
 	}
 	st.prove(item, proof, fit)
 	st.measure(item, fit)
-	st.lay(item, raw, fit.Circle)
+	p := st.lay(raw.Width, raw.Height, fit.Circle)
+	item.Region, item.Geometry = p.region, p.geometry
 }
 
 // otherSize looks for a part of quite another size, so that the reason can name it.
@@ -159,7 +157,7 @@ func (st *stage) otherSize(proof *pipeline.Proof, raw *raster.Plane, search rast
 }
 
 func (st *stage) leaveEmpty(item *pipeline.Item, raw *raster.Plane) {
-	x, y := st.centre(raw)
+	x, y := st.centre(raw.Width, raw.Height)
 	item.Region = pipeline.NewRegion(raw.Width, raw.Height, x, y, 0, nil)
 	item.Geometry = st.geometry.WithOrigin(x, y)
 }
@@ -206,39 +204,4 @@ func (st *stage) measure(item *pipeline.Item, fit raster.CircleFit) {
 	item.Measure("part_edge_points", float64(fit.Points), "")
 	item.Measure("part_edge_rms_px", fit.RMS, "px")
 	item.Measure("part_edge_width_px", fit.EdgeWidth, "px")
-}
-
-// lay puts the zones over a circle.
-func (st *stage) lay(item *pipeline.Item, raw *raster.Plane, c raster.Circle) {
-	list := st.s.Zones
-	if len(list) == 0 {
-		list = []ZoneSettings{{Name: "all"}}
-	}
-	var zones []pipeline.Zone
-	for _, z := range list {
-		outer, inner := z.outer(st.s), z.InnerDiameterMM
-		area := math.Pi / 4 * (outer*outer - inner*inner)
-		ro, ri := st.radiusPx(c.X, c.Y, outer), st.radiusPx(c.X, c.Y, inner)
-		zones = append(zones, pipeline.Zone{Name: z.Name, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi), OuterDiameterMM: outer, InnerDiameterMM: inner,
-			Spans: ringSpans(raw.Width, raw.Height, c.X, c.Y, ri, ro)}.Edged(pipeline.Outline{CentreX: c.X, CentreY: c.Y, InnerPx: ri, OuterPx: ro}))
-	}
-	item.Region = pipeline.NewRegion(raw.Width, raw.Height, c.X, c.Y, c.R, zones)
-	item.Geometry = st.geometry.WithOrigin(c.X, c.Y)
-}
-
-// fill makes a region of one zone with the pixels of a mask.
-func (st *stage) fill(item *pipeline.Item, mask *raster.Mask, areaPx float64, edge *pipeline.Outline) {
-	spans := mask.Spans()
-	s := raster.ShapeOf(spans)
-	if s.Area == 0 {
-		s.X, s.Y = float64(mask.Width-1)/2, float64(mask.Height-1)/2
-	}
-	_, _, scale := st.geometry.ToStation(s.X, s.Y)
-	area := areaPx * scale * scale / 1e6
-	zone := pipeline.Zone{Name: "all", Spans: spans, AreaMM2: area, EquivalentDiameterMM: math.Sqrt(4 * area / math.Pi)}
-	if edge != nil {
-		zone = zone.Edged(*edge)
-	}
-	item.Region = pipeline.NewRegion(mask.Width, mask.Height, s.X, s.Y, 0, []pipeline.Zone{zone})
-	item.Geometry = st.geometry.WithOrigin(s.X, s.Y)
 }

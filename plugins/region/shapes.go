@@ -50,14 +50,6 @@ func decodeMask(name string, data []byte) (*raster.Mask, error) {
 	return mask, nil
 }
 
-func wholeMask(width, height int) *raster.Mask {
-	m := raster.NewMask(width, height)
-	for i := range m.Bits {
-		m.Bits[i] = true
-	}
-	return m
-}
-
 // ringSpans returns the pixels whose centres lie from ri (exclusive, unless 0) to ro px from (cx, cy).
 func ringSpans(width, height int, cx, cy, ri, ro float64) []raster.Span {
 	var out []raster.Span
