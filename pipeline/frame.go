@@ -110,10 +110,21 @@ func (h FrameHeader) raw() raster.Raw {
 func (h FrameHeader) PixelBytes() int { return h.raw().Size() }
 
 // Checksum returns the CRC-32C (Castagnoli, RFC 3720 appendix B.4) of pixel bytes.
-func Checksum(data []byte) uint32 { return crc32.Checksum(data, crc32.MakeTable(crc32.Castagnoli)) }
+func Checksum(data []byte) uint32 { return AddChecksum(0, data) }
+
+// AddChecksum returns the checksum of bytes whose checksum is sum, followed by data.
+func AddChecksum(sum uint32, data []byte) uint32 {
+	return crc32.Update(sum, crc32.MakeTable(crc32.Castagnoli), data)
+}
 
 // NewFrame puts header and pixel bytes together and checks size and checksum.
 func NewFrame(h FrameHeader, data []byte) (Frame, error) {
+	return NewSummedFrame(h, data, Checksum(data))
+}
+
+// NewSummedFrame is NewFrame for pixel bytes whose checksum is known, as where it was taken
+// while they came in.
+func NewSummedFrame(h FrameHeader, data []byte, sum uint32) (Frame, error) {
 	if err := h.Check(); err != nil {
 		return Frame{}, err
 	}
@@ -122,7 +133,7 @@ func NewFrame(h FrameHeader, data []byte) (Frame, error) {
 	if err := raw.Check(); err != nil {
 		return Frame{}, &Error{Kind: InvalidKind, Err: err}
 	}
-	if sum := Checksum(data); sum != h.CRC32C {
+	if sum != h.CRC32C {
 		return Frame{}, Invalid("crc32c: got 0x%08x over the pixels received, header says 0x%08x; resend the frame", sum, h.CRC32C)
 	}
 	return Frame{Header: h, Raw: raw}, nil

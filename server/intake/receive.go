@@ -8,6 +8,7 @@ type Receiver struct {
 	header pipeline.FrameHeader
 	buffer *buffer // nil once it is another's
 	filled int
+	sum    uint32 // checksum of what is filled
 	intake *Intake
 	done   bool
 }
@@ -61,7 +62,10 @@ func (r *Receiver) Add(offset uint64, pieces ...[]byte) error {
 		return err
 	}
 	for _, p := range pieces {
-		r.filled += copy(r.buffer.bytes[r.filled:], p)
+		place := r.buffer.bytes[r.filled : r.filled+len(p)]
+		copy(place, p)
+		r.sum = pipeline.AddChecksum(r.sum, place) // while it is near: the frame is not read once more for it
+		r.filled += len(p)
 	}
 	r.done = r.filled == len(r.buffer.bytes)
 	return nil
@@ -100,7 +104,7 @@ func (r *Receiver) Submit(client any, answer Answer) error {
 		checked.Unit = "to-be-given"
 	}
 	checked.Attempt = max(checked.Attempt, 1)
-	frame, err := pipeline.NewFrame(checked, r.buffer.bytes)
+	frame, err := pipeline.NewSummedFrame(checked, r.buffer.bytes, r.sum)
 	if err != nil {
 		return err
 	}
