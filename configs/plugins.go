@@ -19,6 +19,7 @@ type Plugin struct {
 	MaxRSSMB       int               `yaml:"max_rss_mb"` // resident memory of the process and its children. 0 = 1024
 	RestartBudget  *int              // restarts within the window; one more and the stage is down. Not given = 5
 	RestartWindowS int               // 0 = 600
+	CoolDownS      int               // after which a stage that is down is tried again. 0 = 600
 	BackoffMS      int               // before the second restart in a row; doubles from there. 0 = 100
 	StartTimeoutMS int               // from launch to handshake. 0 = 10000
 	SlotMB         int               // shared memory for what one call reads, and as much for what it writes. 0 = 512
@@ -81,7 +82,7 @@ func checkPlugins(w pluginsFile, src Source) Problems {
 			value, most int
 		}{
 			{"deadline_ms", p.DeadlineMS, 3_600_000}, {"max_concurrent", p.MaxConcurrent, 64}, {"max_rss_mb", p.MaxRSSMB, 1 << 20},
-			{"restart_window_s", p.RestartWindowS, 86_400}, {"backoff_ms", p.BackoffMS, 60_000}, {"start_timeout_ms", p.StartTimeoutMS, 600_000}, {"slot_mb", p.SlotMB, 1 << 16},
+			{"restart_window_s", p.RestartWindowS, 86_400}, {"cool_down_s", p.CoolDownS, 86_400}, {"backoff_ms", p.BackoffMS, 60_000}, {"start_timeout_ms", p.StartTimeoutMS, 600_000}, {"slot_mb", p.SlotMB, 1 << 16},
 		} {
 			wrong(n.value < 0 || n.value > n.most, at+"."+n.key, fmt.Sprintf("got %d", n.value), fmt.Sprintf("0 to %d; 0 = the default", n.most))
 		}

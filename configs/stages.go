@@ -72,7 +72,7 @@ func (c *recipeReader) checkStage(spec pipeline.StageSpec, at string, scope pipe
 		c.wrong(true, at+".type", found, "one of "+strings.Join(c.catalogue.Types(), ", "))
 		return
 	}
-	c.wrong(f.Scope != scope, at+".type", fmt.Sprintf("stage %q works on one %s", spec.Type, f.Scope),
+	c.wrong(f.Scope != "" && f.Scope != scope, at+".type", fmt.Sprintf("stage %q works on one %s", spec.Type, f.Scope),
 		fmt.Sprintf("it among the %s stages", f.Scope))
 	if f.Defaults == nil {
 		return

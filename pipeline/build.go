@@ -143,7 +143,7 @@ func (p *Pipeline) buildStages(specs []StageSpec, scope Scope, cat *Catalogue, e
 		if err != nil {
 			return nil, nil, fmt.Errorf("%sstages[%d]: %w", prefix(s.Where), i, err)
 		}
-		if f.Scope != scope {
+		if f.Scope != "" && f.Scope != scope { // "" = a stage that has not started yet
 			return nil, nil, Invalid("%sstages[%d]: stage %q works on one %s; move it there", prefix(s.Where), i, s.Type, f.Scope)
 		}
 		stage, settings, err := f.New(s.Decode, env)

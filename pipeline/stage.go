@@ -47,7 +47,7 @@ type Factory struct {
 	Type     string
 	Version  string
 	Summary  string // one sentence
-	Scope    Scope
+	Scope    Scope    // empty = not known yet: a stage outside that has not started
 	Reads    []string // planes and properties it needs
 	Writes   []string // planes and properties it makes
 	Stateful bool

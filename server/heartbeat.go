@@ -35,7 +35,7 @@ func (s *Inspection) ListStations(ctx context.Context, _ *inspectpb.ListStations
 		return nil, inspectpb.ToStatus(err)
 	}
 	all := because(list)
-	out := &inspectpb.ListStationsResponse{ServerTime: inspectpb.FromTime(s.deps.Now())}
+	out := &inspectpb.ListStationsResponse{ServerTime: inspectpb.FromTime(s.deps.Now()), OutsideStages: s.deps.outsideStages()}
 	for _, at := range s.deps.Stations.list() {
 		why := all[at.place]
 		out.Stations = append(out.Stations, &inspectpb.Station{Line: at.line, Station: at.station, Heartbeat: inspectpb.FromTime(at.heartbeat),

@@ -39,6 +39,8 @@ type Deps struct {
 	People   People
 	// Retest registers the showings of a unit; nil = none are.
 	Retest *retest.Keeper
+	// OutsideStages returns the stages in processes of their own; nil = there are none.
+	OutsideStages func() []OutsideStage
 }
 
 // Inspection implements inspectpb.InspectionServiceServer.

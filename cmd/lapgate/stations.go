@@ -63,8 +63,31 @@ func stationsDisplay(r *inspectpb.ListStationsResponse) (display, error) {
 		d.rows = append(d.rows, join([]string{one.Line, one.Station, zulu(one.Heartbeat), zulu(one.Inspection)}, end))
 		d.forEye = append(d.forEye, join([]string{one.Line, one.Station, ago(one.Heartbeat, now), ago(one.Inspection, now)}, end))
 	}
-	d.document = map[string]any{"server_time": now, "stations": list}
+	stages := outsideStages(r.GetOutsideStages())
+	d.document = map[string]any{"server_time": now, "stations": list, "outside_stages": stages}
+	for _, s := range stages {
+		if s.State != "up" {
+			d.after = append(d.after, fmt.Sprintf("stage %s is %s (%s), units that need it are held: %s", s.Type, s.State, ago(s.Since, now), s.Cause))
+		}
+	}
 	return d.withEyeHead([]string{"line", "station", "last heartbeat", "last inspection", "state", "because"}), nil
+}
+
+// stageOf is a stage in a process of its own.
+type stageOf struct {
+	Type     string     `json:"type"`
+	State    string     `json:"state"`
+	Cause    string     `json:"cause"`
+	Restarts int32      `json:"restarts"`
+	Since    *time.Time `json:"since"`
+}
+
+func outsideStages(list []*inspectpb.OutsideStage) []stageOf {
+	out := []stageOf{}
+	for _, s := range list {
+		out = append(out, stageOf{s.GetType(), s.GetState(), s.GetCause(), s.GetRestarts(), timeOf(s.GetSince())})
+	}
+	return out
 }
 
 // ago writes how long before the server's now something was.

@@ -20,6 +20,7 @@ type display struct {
 	head     []string
 	rows     [][]string // for a program: bare numbers
 	forEye   [][]string // for a person, the head first
+	after    []string   // sentences below the table, for a person
 }
 
 func (d display) write(w io.Writer, asJSON, asCSV bool) error {
@@ -37,7 +38,13 @@ func (d display) write(w io.Writer, asJSON, asCSV bool) error {
 	for _, r := range d.forEye {
 		fmt.Fprintln(t, strings.Join(r, "\t"))
 	}
-	return t.Flush()
+	if err := t.Flush(); err != nil {
+		return err
+	}
+	for _, line := range d.after {
+		fmt.Fprintln(w, line)
+	}
+	return nil
 }
 
 // rateOf is k of n; value and bounds are missing where n is 0.

@@ -16,7 +16,7 @@ import (
 // recipeBuilder makes pipelines with the calibrations of a line and station: those in
 // CALIBRATIONS/LINE/STATION/VIEW, else CALIBRATIONS/LINE/VIEW, else CALIBRATIONS/VIEW.
 type recipeBuilder struct {
-	catalogue    *pipeline.Catalogue
+	stages       *stageSet
 	calibrations string
 	ledger       *ledger.Store
 }
@@ -52,9 +52,14 @@ func (b recipeBuilder) build(r *pipeline.Recipe, line, station string) (*pipelin
 		}
 		dirs = append(dirs, dir)
 	}
-	p, err := pipeline.Build(r, b.catalogue, pipeline.Options{Calibrations: cals, ReadFile: beside(r.File), ProgramVersion: programVersion(),
+	cat, revision := b.stages.now()
+	p, err := pipeline.Build(r, cat, pipeline.Options{Calibrations: cals, ReadFile: beside(r.File), ProgramVersion: programVersion(),
 		Earlier: b.earlier(line, station)})
-	return p, staleness(dirs), err
+	changed := staleness(dirs)
+	return p, func() bool {
+		_, now := b.stages.now()
+		return now != revision || changed()
+	}, err
 }
 
 func (b recipeBuilder) folder(line, station, view string) (string, error) {

@@ -17,6 +17,7 @@ import (
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
 	"lapgate/pipeline/raster/files"
+	"lapgate/plugins/outside"
 )
 
 // inspectFlags are the flags of inspect.
@@ -59,12 +60,12 @@ func (a *app) inspect(f inspectFlags, args []string) error {
 	if f.recipe == "" {
 		return usageError{errors.New("--recipe: not given, want the recipe file")}
 	}
-	set, err := openStages(context.Background(), f.plugins, a.quiet(), nil)
+	set, err := openStages(context.Background(), f.plugins, a.quiet(), outside.Open, nil)
 	if err != nil {
 		return err
 	}
 	defer set.close()
-	p, err := buildFrom(f, set.catalogue)
+	p, err := buildFrom(f, set.current())
 	if err != nil {
 		return err
 	}

@@ -350,3 +350,53 @@ func TestDemoRecipesOfPlugins(t *testing.T) {
 		})
 	}
 }
+
+// A server whose plug-in does not start goes on: it says so wherever it is asked, holds the
+// units that need the stage with the cause, and judges them once the program is mended.
+func TestStageThatStartsLaterAtTheLine(t *testing.T) {
+	s := newSite(t, 0)
+	s.write("recipes/disc.yaml", strings.Replace(processRecipe, "{type: region}", "{type: brittle, breaks_at: 254}, {type: region}", 1))
+	raw := dotFrame(1)
+	raw.Data[0] = 1
+	s.check(files.Write(s.path("frames/u00001_ring.pgm"), raw))
+	s.write("plugins.yaml", "format: 1\nplugins:\n  - {name: brittle, path: stage.sh, backoff_ms: 50}\n")
+	code, out, errOut := runVerb(t, "stages", "brittle", "--plugins", s.path("plugins.yaml"))
+	if code != 0 || !strings.Contains(out, "brittle (runs "+s.path("stage.sh")+") IS DOWN") || !strings.Contains(out, "no such file") {
+		t.Errorf("stages: exit %d, %s%s", code, out, errOut)
+	}
+	code, out, errOut = runVerb(t, "validate", s.path("recipes/disc.yaml"), "--plugins", s.path("plugins.yaml"))
+	if code != 1 || !strings.Contains(errOut, "the settings of stage brittle are not checked: it is down") {
+		t.Errorf("validate: exit %d, %s%s", code, out, errOut)
+	}
+	s.flags = []string{"--plugins", s.path("plugins.yaml")}
+	s.serve()
+	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
+	defer cancel()
+	s.check(s.feedCommand(ctx, "first.jsonl").Run())
+	if v := s.answered("first.jsonl"); len(v) != 1 || v[0]["verdict"] != "hold" || !strings.Contains(fmt.Sprint(v[0]), "the stage is down: it has not started yet") {
+		t.Errorf("verdicts %v, want a hold that names the cause", v)
+	}
+	stations := func() string {
+		out, err := exec.Command(filepath.Join(s.bin, "lapgate"), "stations", "--server", s.address).CombinedOutput()
+		if err != nil {
+			t.Fatalf("%v\n%s", err, out)
+		}
+		return string(out)
+	}
+	if text := stations(); !strings.Contains(text, "stage brittle is down (") || !strings.Contains(text, "no such file") {
+		t.Errorf("stations:\n%s", text)
+	}
+	self, err := os.Executable()
+	s.check(err)
+	s.check(os.WriteFile(s.path("stage.sh"), []byte(fmt.Sprintf("#!/bin/sh\nexec %q serve-brittle\n", self)), 0o755))
+	for range 100 {
+		if !strings.Contains(stations(), "stage brittle is down") {
+			break
+		}
+		time.Sleep(50 * time.Millisecond)
+	}
+	s.check(s.feedCommand(ctx, "second.jsonl", "--attempt", "2").Run())
+	if v := s.answered("second.jsonl"); len(v) != 1 || v[0]["verdict"] != "accept" {
+		t.Errorf("verdicts %v, want an accept once the stage is up", v)
+	}
+}

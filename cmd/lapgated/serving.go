@@ -62,23 +62,24 @@ func startServing(ctx context.Context, set configs.Server, log *slog.Logger) (*s
 
 func (s *serving) open(ctx context.Context) error {
 	var err error
-	if s.stages, err = openStages(ctx, s.settings.Plugins, s.log, s.tellStage); err != nil {
+	if s.stages, err = openStages(ctx, s.settings.Plugins, s.log, outside.OpenLater, s.tellStage); err != nil {
 		return err
 	}
-	cat := s.stages.catalogue
 	if s.ledger, err = ledger.Open(ctx, s.settings.Ledger); err != nil {
 		return fmt.Errorf("ledger %s: %w", s.settings.Ledger, err)
 	}
 	if s.keeper, err = newKeeper(s.settings.Images, images.Settings{Policy: images.Policy(s.settings.KeepImages), QuotaBytes: s.settings.ImagesQuotaBytes}, s.log); err != nil {
 		return err
 	}
-	builder := recipeBuilder{catalogue: cat, calibrations: s.settings.Calibrations, ledger: s.ledger}
+	builder := recipeBuilder{stages: s.stages, calibrations: s.settings.Calibrations, ledger: s.ledger}
 	s.book = server.NewBook(builder.build)
 	people, err := configs.LoadPeople(s.settings.People)
 	if err != nil {
 		return err
 	}
-	decode := func(file string, text []byte) (*pipeline.Recipe, error) { return configs.DecodeRecipe(file, text, cat) }
+	decode := func(file string, text []byte) (*pipeline.Recipe, error) {
+		return configs.DecodeRecipe(file, text, s.stages.current())
+	}
 	s.requireApproval(ctx, decode)
 	feed, stations := server.NewFeed(), server.NewStations()
 	again := &retest.Keeper{Ledger: s.ledger, Decode: decode, Log: s.log}
@@ -95,7 +96,7 @@ func (s *serving) open(ctx context.Context) error {
 	}
 	s.grpc, s.health = server.NewGRPC(server.Deps{Intake: s.intake, Ledger: s.ledger, Book: s.book, Feed: feed, Log: s.log, Now: time.Now,
 		Check: func(file string, text []byte) error { _, err := decode(file, text); return err },
-		Gate:  gate, Stations: stations, People: server.People{List: people}, Retest: again},
+		Gate:  gate, Stations: stations, People: server.People{List: people}, Retest: again, OutsideStages: s.stages.states},
 		server.GRPCOptions{MaxMessageBytes: int(min(s.settings.MaxBytesInFlight, 1<<30)), MaxStreams: maxStreams, Reflection: s.settings.Reflection})
 	s.told.Store(s.health)
 	for _, h := range s.stages.hosts {
@@ -183,6 +184,9 @@ func (s *serving) adopt(ctx context.Context, path string, r *pipeline.Recipe) {
 		s.book.Refuse(path, err)
 		s.log.Error("recipe refused; the last good one stays in force", "file", path, "error", err)
 		return
+	}
+	for _, text := range s.stages.unchecked(r) {
+		s.log.Warn("recipe in force, but not wholly checked", "file", path, "what", text)
 	}
 	s.tellRecipe(path, r)
 }

@@ -12,6 +12,7 @@ import (
 
 	"lapgate/configs"
 	"lapgate/pipeline"
+	"lapgate/plugins/outside"
 )
 
 func (a *app) stagesCommand() *cobra.Command {
@@ -32,7 +33,7 @@ func (a *app) stagesCommand() *cobra.Command {
 }
 
 func (a *app) listStages(ctx context.Context, plugins string, only []string, asJSON bool) error {
-	set, err := openStages(ctx, plugins, a.quiet(), nil)
+	set, err := openStages(ctx, plugins, a.silent(), outside.OpenLater, nil)
 	if err != nil {
 		return err
 	}
@@ -57,6 +58,9 @@ func (a *app) quiet() *slog.Logger {
 	return slog.New(slog.NewTextHandler(a.err, &slog.HandlerOptions{Level: slog.LevelWarn}))
 }
 
+// silent is a log for verbs that tell themselves what went wrong.
+func (a *app) silent() *slog.Logger { return slog.New(slog.DiscardHandler) }
+
 // stageFacts is what is printed of a stage.
 type stageFacts struct {
 	Type     string          `json:"type"`
@@ -66,13 +70,15 @@ type stageFacts struct {
 	Reads    []string        `json:"reads"`
 	Writes   []string        `json:"writes"`
 	Stateful bool            `json:"stateful"`
-	Runs     string          `json:"runs"` // inside, or the program of its process
+	Runs     string          `json:"runs"`  // inside, or the program of its process
+	State    outside.State   `json:"state"` // of its process; up where it runs inside
+	Cause    string          `json:"cause"` // why it is not up
 	Defaults json.RawMessage `json:"default_settings"`
 	yaml     string
 }
 
 func (s *stageSet) list(only []string) ([]stageFacts, error) {
-	cat := s.catalogue
+	cat := s.current()
 	types := cat.Types()
 	if len(only) > 0 {
 		types = only
@@ -83,28 +89,33 @@ func (s *stageSet) list(only []string) ([]stageFacts, error) {
 		if err != nil {
 			return nil, err
 		}
-		text, err := configs.Show(f.Defaults)
-		if err != nil {
-			return nil, fmt.Errorf("stage %s: %w", t, err)
+		facts := stageFacts{Type: f.Type, Version: f.Version, Summary: f.Summary, Scope: f.Scope, Reads: f.Reads, Writes: f.Writes, Stateful: f.Stateful,
+			Runs: "inside", State: outside.Up, Defaults: json.RawMessage("null")}
+		if h, path := s.host(t); h != nil {
+			st := h.Status()
+			facts.Runs, facts.State = path, st.State
+			if st.State != outside.Up {
+				facts.Cause = st.LastError
+			}
 		}
-		asJSON, err := configs.ShowJSON(f.Defaults)
-		if err != nil {
-			return nil, fmt.Errorf("stage %s: %w", t, err)
+		if f.Defaults != nil {
+			if facts.yaml, err = configs.Show(f.Defaults); err == nil {
+				facts.Defaults, err = configs.ShowJSON(f.Defaults)
+			}
+			if err != nil {
+				return nil, fmt.Errorf("stage %s: %w", t, err)
+			}
 		}
-		out = append(out, stageFacts{f.Type, f.Version, f.Summary, f.Scope, f.Reads, f.Writes, f.Stateful, s.runs(t), asJSON, text})
+		out = append(out, facts)
 	}
 	return out, nil
 }
 
-// runs says where a stage runs.
-func (s *stageSet) runs(typ string) string {
-	if path, ok := s.paths[typ]; ok {
-		return path
-	}
-	return "inside"
-}
-
 func (s stageFacts) print(w io.Writer) error {
+	if s.State != outside.Up {
+		_, err := fmt.Fprintf(w, "%s (runs %s) IS %s\n%s\n", s.Type, s.Runs, strings.ToUpper(string(s.State)), indent(s.Cause, "  "))
+		return err
+	}
 	_, err := fmt.Fprintf(w, "%s (version %s, works on one %s, runs %s)\n  %s\n  reads: %s\n  writes: %s\n  settings and defaults:\n%s\n",
 		s.Type, s.Version, s.Scope, s.Runs, s.Summary, orNone(s.Reads), orNone(s.Writes), indent(s.yaml, "    "))
 	return err

@@ -16,6 +16,7 @@ import (
 	"lapgate/configs"
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
+	"lapgate/plugins/outside"
 	"lapgate/server/report"
 )
 
@@ -52,16 +53,16 @@ func (a *app) tryCommand() *cobra.Command {
 }
 
 func (a *app) try(ctx context.Context, f tryFlags, typ string, frames []string) error {
-	set, err := openStages(ctx, f.plugins, a.quiet(), nil)
+	set, err := openStages(ctx, f.plugins, a.quiet(), outside.Open, nil)
 	if err != nil {
 		return err
 	}
 	defer set.close()
-	recipe, err := f.recipe(set.catalogue, typ, len(frames))
+	recipe, err := f.recipe(set.current(), typ, len(frames))
 	if err != nil {
 		return err
 	}
-	p, err := pipeline.Build(recipe, set.catalogue, pipeline.Options{ReadFile: beside("."), ProgramVersion: programVersion(), Unfused: true})
+	p, err := pipeline.Build(recipe, set.current(), pipeline.Options{ReadFile: beside("."), ProgramVersion: programVersion(), Unfused: true})
 	if err != nil {
 		return err
 	}

@@ -10,6 +10,7 @@ import (
 
 	"lapgate/configs"
 	"lapgate/pipeline"
+	"lapgate/plugins/outside"
 )
 
 func (a *app) validateCommand() *cobra.Command {
@@ -31,7 +32,7 @@ func (a *app) validateCommand() *cobra.Command {
 }
 
 func (a *app) validate(ctx context.Context, paths []string, plugins string, calibrations []string, asJSON bool) error {
-	set, err := openStages(ctx, plugins, a.quiet(), nil)
+	set, err := openStages(ctx, plugins, a.silent(), outside.OpenLater, nil)
 	if err != nil {
 		return err
 	}
@@ -42,16 +43,18 @@ func (a *app) validate(ctx context.Context, paths []string, plugins string, cali
 	}
 	var all []configs.Problem
 	var warnings []opticsWarning
+	unchecked := []string{}
 	for _, p := range paths {
-		problems, err := validatePath(p, set.catalogue)
+		problems, err := validatePath(p, set.current())
 		if err != nil {
 			return usageError{err}
 		}
 		all = append(all, problems...)
-		warnings = append(warnings, opticsWarnings(p, set.catalogue, cals)...)
+		warnings = append(warnings, opticsWarnings(p, set.current(), cals)...)
+		unchecked = append(unchecked, set.uncheckedIn(p)...)
 	}
 	if asJSON {
-		if err := printJSON(a.out, map[string]any{"problems": problemForms(all), "warnings": append([]opticsWarning{}, warnings...)}); err != nil {
+		if err := printJSON(a.out, map[string]any{"problems": problemForms(all), "warnings": append([]opticsWarning{}, warnings...), "unchecked": unchecked}); err != nil {
 			return err
 		}
 	} else {
@@ -62,8 +65,14 @@ func (a *app) validate(ctx context.Context, paths []string, plugins string, cali
 			fmt.Fprintf(a.out, "%s: warning: limit %q: %s\n", w.File, w.Limit, w.Text)
 		}
 	}
+	for _, text := range unchecked {
+		fmt.Fprintln(a.err, text)
+	}
 	if len(all) > 0 {
 		return usageError{fmt.Errorf("%d problems", len(all))}
+	}
+	if len(unchecked) > 0 {
+		return fmt.Errorf("no problem found in what could be checked; %d stages were not", len(unchecked))
 	}
 	fmt.Fprintln(a.err, "no problem found")
 	return nil

@@ -21,12 +21,8 @@ type opticsWarning struct {
 // opticsWarnings looks at one recipe, or at every recipe of a folder; those with problems
 // are told elsewhere.
 func opticsWarnings(path string, cat *pipeline.Catalogue, cals map[string]*pipeline.Calibration) []opticsWarning {
-	files := []string{path}
-	if info, err := os.Stat(path); err == nil && info.IsDir() {
-		files, _ = filepath.Glob(filepath.Join(path, "*.y*ml")) // the pattern is well formed
-	}
 	var out []opticsWarning
-	for _, f := range files {
+	for _, f := range recipesAt(path) {
 		r, err := configs.LoadRecipe(f, cat)
 		if err != nil {
 			continue
@@ -36,6 +32,26 @@ func opticsWarnings(path string, cat *pipeline.Catalogue, cals map[string]*pipel
 		}
 	}
 	return out
+}
+
+// uncheckedIn is unchecked for one recipe, or for every recipe of a folder.
+func (s *stageSet) uncheckedIn(path string) []string {
+	var out []string
+	for _, f := range recipesAt(path) {
+		if r, err := configs.LoadRecipe(f, s.current()); err == nil {
+			out = append(out, s.unchecked(r)...)
+		}
+	}
+	return out
+}
+
+// recipesAt returns a file, or those of a folder.
+func recipesAt(path string) []string {
+	if info, err := os.Stat(path); err != nil || !info.IsDir() {
+		return []string{path}
+	}
+	files, _ := filepath.Glob(filepath.Join(path, "*.y*ml")) // the pattern is well formed
+	return files
 }
 
 // loadCalibrations reads VIEW=DIR flags.

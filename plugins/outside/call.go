@@ -173,7 +173,7 @@ func (c *call) request(ctx context.Context) (*stagepb.RunRequest, error) {
 	if err != nil {
 		return nil, err
 	}
-	item, err := stagepb.FromItem(c.item, c.remote.host.described.GetReads(), c.process.packer(c.slot))
+	item, err := stagepb.FromItem(c.item, c.remote.program.described.GetReads(), c.process.packer(c.slot))
 	if err != nil {
 		return nil, err
 	}
@@ -186,11 +186,11 @@ func (c *call) finish(o outcome) error {
 	if o.err != nil {
 		return c.process.failure(o.err)
 	}
-	a := &checker{described: c.remote.host.described, minRegionShare: c.process.set.MinRegionShare, item: c.item, fetch: c.process.fetcher(c.slot)}
+	a := &checker{described: c.remote.program.described, minRegionShare: c.process.set.MinRegionShare, item: c.item, fetch: c.process.fetcher(c.slot)}
 	m, err := a.check(o.response)
 	if err != nil {
 		return c.process.killFor("its answer was refused: " + err.Error())
 	}
 	c.process.answered.Store(true)
-	return m.apply(c.item, c.remote.host.described.GetType())
+	return m.apply(c.item, c.remote.program.described.GetType())
 }

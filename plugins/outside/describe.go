@@ -54,24 +54,20 @@ func (p *process) ping() {
 	}
 }
 
-// makeFactory returns the stage's factory, with settings of a type made for them.
-func (h *Host) makeFactory() (pipeline.Factory, error) {
-	d := h.described
-	settings, err := newSettingsType(d.GetSettingsSchemaJson(), d.GetDefaultSettingsJson())
-	if err != nil {
-		return pipeline.Factory{}, fmt.Errorf("settings: %w", err)
-	}
+// factoryOf returns the factory of a program, with settings of a type made for them.
+func (h *Host) factoryOf(made *program) pipeline.Factory {
+	d := made.described
 	scope := pipeline.ScopeView
 	if d.GetScope() == stagepb.Scope_SCOPE_UNIT {
 		scope = pipeline.ScopeUnit
 	}
 	f := pipeline.Factory{Type: d.GetType(), Version: d.GetVersion(), Summary: d.GetSummary(), Scope: scope, Reads: d.GetReads(), Writes: d.GetWrites(),
-		Stateful: d.GetStateful(), Defaults: settings.defaults()}
+		Stateful: d.GetStateful(), Defaults: made.settings.defaults()}
 	f.Check = func(values any) error { _, err := h.effective(context.Background(), values); return err }
 	f.New = func(decode pipeline.Decode, env pipeline.Environment) (pipeline.Stage, any, error) {
-		return h.newStage(settings, decode, env)
+		return h.newStage(made, decode, env)
 	}
-	return f, nil
+	return f
 }
 
 // effective has the stage check settings and returns them as it will use them. While

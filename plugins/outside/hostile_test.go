@@ -241,7 +241,7 @@ func TestStageThatDoesNotStartAgain(t *testing.T) {
 	}
 	eventually(t, "the stage is down", func() bool { return h.Status().State == Down })
 	err := stage.Run(context.Background(), tiny(1))
-	for _, want := range []string{"the stage is down: its 3 restarts within 10m0s are spent", "mend the plug-in and restart the server", `printed "started again" on stdout`} {
+	for _, want := range []string{"the stage is down: its 3 restarts within 10m0s are spent", "mend the plug-in: it is tried again when its program changes, and after 10m0s", `printed "started again" on stdout`} {
 		if err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("got %v, want %q", err, want)
 		}

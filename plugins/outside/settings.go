@@ -20,6 +20,7 @@ type Settings struct {
 	RestartBudget  int               // restarts within RestartWindow; one more and the stage is down
 	RestartWindow  time.Duration     //
 	Backoff        time.Duration     // before the second restart in a row; doubles from there
+	CoolDown       time.Duration     // after which a stage that is down is tried again
 	StartTimeout   time.Duration     // from launch to handshake
 	SlotBytes      int64             // shared memory for what one call reads, and as much for what it writes; taken as it is used
 	BytesOnly      bool              // pixels travel in messages
@@ -31,7 +32,7 @@ type Settings struct {
 
 // DefaultSettings returns what a stage gets that says nothing else.
 func DefaultSettings() Settings {
-	return Settings{Deadline: 5 * time.Second, MaxConcurrent: 2, MaxRSSBytes: 1 << 30, RestartBudget: 5, RestartWindow: 10 * time.Minute,
+	return Settings{Deadline: 5 * time.Second, MaxConcurrent: 2, MaxRSSBytes: 1 << 30, RestartBudget: 5, RestartWindow: 10 * time.Minute, CoolDown: 10 * time.Minute,
 		Backoff: 100 * time.Millisecond, StartTimeout: 10 * time.Second, SlotBytes: 512 << 20, MinRegionShare: 0.01}
 }
 
@@ -48,8 +49,8 @@ func (s *Settings) check() error {
 		return pipeline.Invalid("deadline: got %v, want above 0", s.Deadline)
 	case s.MaxConcurrent < 1 || s.MaxConcurrent > 64:
 		return pipeline.Invalid("max_concurrent: got %d, want 1 to 64", s.MaxConcurrent)
-	case s.RestartBudget < 0 || s.RestartWindow <= 0 || s.Backoff < 0 || s.StartTimeout <= 0:
-		return pipeline.Invalid("restart budget %d in %v, back-off %v, start time-out %v: want none below 0, and times above 0", s.RestartBudget, s.RestartWindow, s.Backoff, s.StartTimeout)
+	case s.RestartBudget < 0 || s.RestartWindow <= 0 || s.CoolDown <= 0 || s.Backoff < 0 || s.StartTimeout <= 0:
+		return pipeline.Invalid("restart budget %d in %v, cool-down %v, back-off %v, start time-out %v: want none below 0, and times above 0", s.RestartBudget, s.RestartWindow, s.CoolDown, s.Backoff, s.StartTimeout)
 	case s.SlotBytes < 1<<12 || s.SlotBytes > 1<<36:
 		return pipeline.Invalid("slot: got %d bytes, want 4 KiB to 64 GiB", s.SlotBytes)
 	case !(s.MinRegionShare > 0 && s.MinRegionShare <= 1):

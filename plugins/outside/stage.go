@@ -18,7 +18,8 @@ import (
 // process that takes the place of one that died.
 type remote struct {
 	host     *Host
-	settings string // JSON
+	program  *program // by whose description it was built
+	settings string   // JSON
 	env      pipeline.Environment
 
 	mu      sync.Mutex // guards what follows
@@ -30,8 +31,8 @@ type remote struct {
 
 // newStage decodes and checks settings and opens the stage. A stage that is down or
 // restarts is opened when a unit needs it, and that unit is held until it can be.
-func (h *Host) newStage(settings settingsType, decode pipeline.Decode, env pipeline.Environment) (pipeline.Stage, any, error) {
-	values, err := settings.decoded(decode)
+func (h *Host) newStage(made *program, decode pipeline.Decode, env pipeline.Environment) (pipeline.Stage, any, error) {
+	values, err := made.settings.decoded(decode)
 	if err != nil {
 		return nil, nil, err
 	}
@@ -45,14 +46,14 @@ func (h *Host) newStage(settings settingsType, decode pipeline.Decode, env pipel
 			return nil, nil, err
 		}
 	}
-	r := &remote{host: h, settings: text, env: env}
+	r := &remote{host: h, program: made, settings: text, env: env}
 	if err := r.tryOpen(); err != nil {
 		return nil, nil, err
 	}
 	if r.settled != "" {
 		text = r.settled
 	}
-	if values, err = settings.value(text); err != nil {
+	if values, err = made.settings.value(text); err != nil {
 		return nil, nil, fmt.Errorf("stage %s: its effective settings: %w", h.set.Name, err)
 	}
 	return r, values, nil
@@ -61,7 +62,7 @@ func (h *Host) newStage(settings settingsType, decode pipeline.Decode, env pipel
 // tryOpen reports only what the recipe or calibration is to blame for.
 func (r *remote) tryOpen() error {
 	p, _, _ := r.host.now()
-	if p == nil {
+	if p == nil || r.host.known() != r.program {
 		return nil
 	}
 	ctx, cancel := context.WithTimeout(context.Background(), r.host.set.Deadline)
@@ -111,7 +112,7 @@ func (r *remote) open(ctx context.Context, p *process, s *slot) (*stagepb.OpenRe
 	if req.Geometry, err = stagepb.FromGeometry(r.env.Geometry); err != nil {
 		return nil, err
 	}
-	if reads(r.host.described, stagepb.ReadsCalibration) {
+	if reads(r.program.described, stagepb.ReadsCalibration) {
 		if req.Calibration, err = stagepb.FromCalibration(r.env.Calibration, p.packer(s)); err != nil {
 			return nil, err
 		}
@@ -173,6 +174,9 @@ func (r *remote) try(ctx context.Context, item *pipeline.Item, alone bool) error
 	p, err := r.host.acquire(ctx)
 	if err != nil {
 		return err
+	}
+	if r.host.known() != r.program {
+		return pipeline.Fail(pipeline.Unready, "its program has changed, and the recipe is built anew; show the unit again")
 	}
 	s, err := p.take(ctx)
 	if err != nil {

@@ -2493,18 +2493,100 @@ func (x *Station) GetWarnings() []string {
 	return nil
 }
 
+// OutsideStage is a stage in a process of its own.
+type OutsideStage struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	Type  string                 `protobuf:"bytes,1,opt,name=type,proto3" json:"type,omitempty"`
+	// up, restarting or down; units that need one that is down are held.
+	State string `protobuf:"bytes,2,opt,name=state,proto3" json:"state,omitempty"`
+	// Why it was restarted last, or is down.
+	Cause string `protobuf:"bytes,3,opt,name=cause,proto3" json:"cause,omitempty"`
+	// Since the server started.
+	Restarts      int32                  `protobuf:"varint,4,opt,name=restarts,proto3" json:"restarts,omitempty"`
+	Since         *timestamppb.Timestamp `protobuf:"bytes,5,opt,name=since,proto3" json:"since,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *OutsideStage) Reset() {
+	*x = OutsideStage{}
+	mi := &file_inspectpb_inspection_proto_msgTypes[33]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *OutsideStage) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*OutsideStage) ProtoMessage() {}
+
+func (x *OutsideStage) ProtoReflect() protoreflect.Message {
+	mi := &file_inspectpb_inspection_proto_msgTypes[33]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use OutsideStage.ProtoReflect.Descriptor instead.
+func (*OutsideStage) Descriptor() ([]byte, []int) {
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{33}
+}
+
+func (x *OutsideStage) GetType() string {
+	if x != nil {
+		return x.Type
+	}
+	return ""
+}
+
+func (x *OutsideStage) GetState() string {
+	if x != nil {
+		return x.State
+	}
+	return ""
+}
+
+func (x *OutsideStage) GetCause() string {
+	if x != nil {
+		return x.Cause
+	}
+	return ""
+}
+
+func (x *OutsideStage) GetRestarts() int32 {
+	if x != nil {
+		return x.Restarts
+	}
+	return 0
+}
+
+func (x *OutsideStage) GetSince() *timestamppb.Timestamp {
+	if x != nil {
+		return x.Since
+	}
+	return nil
+}
+
 // ListStationsResponse lists stations by line and station.
 type ListStationsResponse struct {
-	state         protoimpl.MessageState `protogen:"open.v1"`
-	Stations      []*Station             `protobuf:"bytes,1,rep,name=stations,proto3" json:"stations,omitempty"`
-	ServerTime    *timestamppb.Timestamp `protobuf:"bytes,2,opt,name=server_time,json=serverTime,proto3" json:"server_time,omitempty"`
+	state      protoimpl.MessageState `protogen:"open.v1"`
+	Stations   []*Station             `protobuf:"bytes,1,rep,name=stations,proto3" json:"stations,omitempty"`
+	ServerTime *timestamppb.Timestamp `protobuf:"bytes,2,opt,name=server_time,json=serverTime,proto3" json:"server_time,omitempty"`
+	// The stages in processes of their own, as the server's list names them.
+	OutsideStages []*OutsideStage `protobuf:"bytes,3,rep,name=outside_stages,json=outsideStages,proto3" json:"outside_stages,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
 
 func (x *ListStationsResponse) Reset() {
 	*x = ListStationsResponse{}
-	mi := &file_inspectpb_inspection_proto_msgTypes[33]
+	mi := &file_inspectpb_inspection_proto_msgTypes[34]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -2516,7 +2598,7 @@ func (x *ListStationsResponse) String() string {
 func (*ListStationsResponse) ProtoMessage() {}
 
 func (x *ListStationsResponse) ProtoReflect() protoreflect.Message {
-	mi := &file_inspectpb_inspection_proto_msgTypes[33]
+	mi := &file_inspectpb_inspection_proto_msgTypes[34]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -2529,7 +2611,7 @@ func (x *ListStationsResponse) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use ListStationsResponse.ProtoReflect.Descriptor instead.
 func (*ListStationsResponse) Descriptor() ([]byte, []int) {
-	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{33}
+	return file_inspectpb_inspection_proto_rawDescGZIP(), []int{34}
 }
 
 func (x *ListStationsResponse) GetStations() []*Station {
@@ -2542,6 +2624,13 @@ func (x *ListStationsResponse) GetStations() []*Station {
 func (x *ListStationsResponse) GetServerTime() *timestamppb.Timestamp {
 	if x != nil {
 		return x.ServerTime
+	}
+	return nil
+}
+
+func (x *ListStationsResponse) GetOutsideStages() []*OutsideStage {
+	if x != nil {
+		return x.OutsideStages
 	}
 	return nil
 }
@@ -2740,11 +2829,18 @@ const file_inspectpb_inspection_proto_rawDesc = "" +
 	"\x05state\x18\x05 \x01(\x0e2 .lapgate.inspect.v1.StationStateR\x05state\x12\x18\n" +
 	"\abecause\x18\x06 \x03(\tR\abecause\x12\x16\n" +
 	"\x06alarms\x18\a \x03(\tR\x06alarms\x12\x1a\n" +
-	"\bwarnings\x18\b \x03(\tR\bwarnings\"\x8c\x01\n" +
+	"\bwarnings\x18\b \x03(\tR\bwarnings\"\x9c\x01\n" +
+	"\fOutsideStage\x12\x12\n" +
+	"\x04type\x18\x01 \x01(\tR\x04type\x12\x14\n" +
+	"\x05state\x18\x02 \x01(\tR\x05state\x12\x14\n" +
+	"\x05cause\x18\x03 \x01(\tR\x05cause\x12\x1a\n" +
+	"\brestarts\x18\x04 \x01(\x05R\brestarts\x120\n" +
+	"\x05since\x18\x05 \x01(\v2\x1a.google.protobuf.TimestampR\x05since\"\xd5\x01\n" +
 	"\x14ListStationsResponse\x127\n" +
 	"\bstations\x18\x01 \x03(\v2\x1b.lapgate.inspect.v1.StationR\bstations\x12;\n" +
 	"\vserver_time\x18\x02 \x01(\v2\x1a.google.protobuf.TimestampR\n" +
-	"serverTime*\x89\x01\n" +
+	"serverTime\x12G\n" +
+	"\x0eoutside_stages\x18\x03 \x03(\v2 .lapgate.inspect.v1.OutsideStageR\routsideStages*\x89\x01\n" +
 	"\vDisposition\x12\x1b\n" +
 	"\x17DISPOSITION_UNSPECIFIED\x10\x00\x12\x16\n" +
 	"\x12DISPOSITION_ACCEPT\x10\x01\x12\x16\n" +
@@ -2782,7 +2878,7 @@ func file_inspectpb_inspection_proto_rawDescGZIP() []byte {
 }
 
 var file_inspectpb_inspection_proto_enumTypes = make([]protoimpl.EnumInfo, 2)
-var file_inspectpb_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 34)
+var file_inspectpb_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 35)
 var file_inspectpb_inspection_proto_goTypes = []any{
 	(Disposition)(0),               // 0: lapgate.inspect.v1.Disposition
 	(StationState)(0),              // 1: lapgate.inspect.v1.StationState
@@ -2819,97 +2915,100 @@ var file_inspectpb_inspection_proto_goTypes = []any{
 	(*HeartbeatResponse)(nil),      // 32: lapgate.inspect.v1.HeartbeatResponse
 	(*ListStationsRequest)(nil),    // 33: lapgate.inspect.v1.ListStationsRequest
 	(*Station)(nil),                // 34: lapgate.inspect.v1.Station
-	(*ListStationsResponse)(nil),   // 35: lapgate.inspect.v1.ListStationsResponse
-	(*FrameHeader)(nil),            // 36: lapgate.inspect.v1.FrameHeader
-	(*FrameChunk)(nil),             // 37: lapgate.inspect.v1.FrameChunk
-	(*Identity)(nil),               // 38: lapgate.inspect.v1.Identity
-	(*Judgement)(nil),              // 39: lapgate.inspect.v1.Judgement
-	(*Defect)(nil),                 // 40: lapgate.inspect.v1.Defect
-	(*Failure)(nil),                // 41: lapgate.inspect.v1.Failure
-	(*Frame)(nil),                  // 42: lapgate.inspect.v1.Frame
-	(Verdict)(0),                   // 43: lapgate.inspect.v1.Verdict
-	(*timestamppb.Timestamp)(nil),  // 44: google.protobuf.Timestamp
-	(*Evidence)(nil),               // 45: lapgate.inspect.v1.Evidence
-	(*Proof)(nil),                  // 46: lapgate.inspect.v1.Proof
+	(*OutsideStage)(nil),           // 35: lapgate.inspect.v1.OutsideStage
+	(*ListStationsResponse)(nil),   // 36: lapgate.inspect.v1.ListStationsResponse
+	(*FrameHeader)(nil),            // 37: lapgate.inspect.v1.FrameHeader
+	(*FrameChunk)(nil),             // 38: lapgate.inspect.v1.FrameChunk
+	(*Identity)(nil),               // 39: lapgate.inspect.v1.Identity
+	(*Judgement)(nil),              // 40: lapgate.inspect.v1.Judgement
+	(*Defect)(nil),                 // 41: lapgate.inspect.v1.Defect
+	(*Failure)(nil),                // 42: lapgate.inspect.v1.Failure
+	(*Frame)(nil),                  // 43: lapgate.inspect.v1.Frame
+	(Verdict)(0),                   // 44: lapgate.inspect.v1.Verdict
+	(*timestamppb.Timestamp)(nil),  // 45: google.protobuf.Timestamp
+	(*Evidence)(nil),               // 46: lapgate.inspect.v1.Evidence
+	(*Proof)(nil),                  // 47: lapgate.inspect.v1.Proof
 }
 var file_inspectpb_inspection_proto_depIdxs = []int32{
-	36, // 0: lapgate.inspect.v1.FrameStart.header:type_name -> lapgate.inspect.v1.FrameHeader
+	37, // 0: lapgate.inspect.v1.FrameStart.header:type_name -> lapgate.inspect.v1.FrameHeader
 	2,  // 1: lapgate.inspect.v1.InspectRequest.start:type_name -> lapgate.inspect.v1.FrameStart
-	37, // 2: lapgate.inspect.v1.InspectRequest.chunk:type_name -> lapgate.inspect.v1.FrameChunk
-	38, // 3: lapgate.inspect.v1.UnitVerdict.identity:type_name -> lapgate.inspect.v1.Identity
-	39, // 4: lapgate.inspect.v1.UnitVerdict.judgement:type_name -> lapgate.inspect.v1.Judgement
-	40, // 5: lapgate.inspect.v1.UnitVerdict.defects:type_name -> lapgate.inspect.v1.Defect
-	41, // 6: lapgate.inspect.v1.UnitVerdict.failures:type_name -> lapgate.inspect.v1.Failure
-	38, // 7: lapgate.inspect.v1.FrameRefused.identity:type_name -> lapgate.inspect.v1.Identity
+	38, // 2: lapgate.inspect.v1.InspectRequest.chunk:type_name -> lapgate.inspect.v1.FrameChunk
+	39, // 3: lapgate.inspect.v1.UnitVerdict.identity:type_name -> lapgate.inspect.v1.Identity
+	40, // 4: lapgate.inspect.v1.UnitVerdict.judgement:type_name -> lapgate.inspect.v1.Judgement
+	41, // 5: lapgate.inspect.v1.UnitVerdict.defects:type_name -> lapgate.inspect.v1.Defect
+	42, // 6: lapgate.inspect.v1.UnitVerdict.failures:type_name -> lapgate.inspect.v1.Failure
+	39, // 7: lapgate.inspect.v1.FrameRefused.identity:type_name -> lapgate.inspect.v1.Identity
 	4,  // 8: lapgate.inspect.v1.InspectResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
 	5,  // 9: lapgate.inspect.v1.InspectResponse.refused:type_name -> lapgate.inspect.v1.FrameRefused
-	42, // 10: lapgate.inspect.v1.InspectUnitRequest.frames:type_name -> lapgate.inspect.v1.Frame
+	43, // 10: lapgate.inspect.v1.InspectUnitRequest.frames:type_name -> lapgate.inspect.v1.Frame
 	4,  // 11: lapgate.inspect.v1.InspectUnitResponse.verdict:type_name -> lapgate.inspect.v1.UnitVerdict
-	38, // 12: lapgate.inspect.v1.ReportOutcomeRequest.identity:type_name -> lapgate.inspect.v1.Identity
-	43, // 13: lapgate.inspect.v1.ReportOutcomeRequest.bin:type_name -> lapgate.inspect.v1.Verdict
-	44, // 14: lapgate.inspect.v1.ReportOutcomeRequest.at:type_name -> google.protobuf.Timestamp
+	39, // 12: lapgate.inspect.v1.ReportOutcomeRequest.identity:type_name -> lapgate.inspect.v1.Identity
+	44, // 13: lapgate.inspect.v1.ReportOutcomeRequest.bin:type_name -> lapgate.inspect.v1.Verdict
+	45, // 14: lapgate.inspect.v1.ReportOutcomeRequest.at:type_name -> google.protobuf.Timestamp
 	0,  // 15: lapgate.inspect.v1.DisposeHoldRequest.disposition:type_name -> lapgate.inspect.v1.Disposition
 	15, // 16: lapgate.inspect.v1.DisposeHoldResponse.inspection:type_name -> lapgate.inspect.v1.InspectionRecord
 	15, // 17: lapgate.inspect.v1.ListHoldsResponse.holds:type_name -> lapgate.inspect.v1.InspectionRecord
-	38, // 18: lapgate.inspect.v1.InspectionRecord.identity:type_name -> lapgate.inspect.v1.Identity
-	44, // 19: lapgate.inspect.v1.InspectionRecord.captured:type_name -> google.protobuf.Timestamp
-	44, // 20: lapgate.inspect.v1.InspectionRecord.judged:type_name -> google.protobuf.Timestamp
-	45, // 21: lapgate.inspect.v1.InspectionRecord.evidence:type_name -> lapgate.inspect.v1.Evidence
-	39, // 22: lapgate.inspect.v1.InspectionRecord.judgements:type_name -> lapgate.inspect.v1.Judgement
+	39, // 18: lapgate.inspect.v1.InspectionRecord.identity:type_name -> lapgate.inspect.v1.Identity
+	45, // 19: lapgate.inspect.v1.InspectionRecord.captured:type_name -> google.protobuf.Timestamp
+	45, // 20: lapgate.inspect.v1.InspectionRecord.judged:type_name -> google.protobuf.Timestamp
+	46, // 21: lapgate.inspect.v1.InspectionRecord.evidence:type_name -> lapgate.inspect.v1.Evidence
+	40, // 22: lapgate.inspect.v1.InspectionRecord.judgements:type_name -> lapgate.inspect.v1.Judgement
 	25, // 23: lapgate.inspect.v1.InspectionRecord.dispositions:type_name -> lapgate.inspect.v1.DispositionRecord
 	26, // 24: lapgate.inspect.v1.InspectionRecord.outcomes:type_name -> lapgate.inspect.v1.OutcomeRecord
-	43, // 25: lapgate.inspect.v1.InspectionRecord.verdict:type_name -> lapgate.inspect.v1.Verdict
+	44, // 25: lapgate.inspect.v1.InspectionRecord.verdict:type_name -> lapgate.inspect.v1.Verdict
 	24, // 26: lapgate.inspect.v1.InspectionRecord.suspicions:type_name -> lapgate.inspect.v1.Suspicion
 	16, // 27: lapgate.inspect.v1.InspectionRecord.registration:type_name -> lapgate.inspect.v1.Registration
 	17, // 28: lapgate.inspect.v1.Registration.pairs:type_name -> lapgate.inspect.v1.DefectPair
-	43, // 29: lapgate.inspect.v1.Registration.permanent_verdict:type_name -> lapgate.inspect.v1.Verdict
-	44, // 30: lapgate.inspect.v1.Alarm.raised:type_name -> google.protobuf.Timestamp
-	44, // 31: lapgate.inspect.v1.Alarm.cleared:type_name -> google.protobuf.Timestamp
+	44, // 29: lapgate.inspect.v1.Registration.permanent_verdict:type_name -> lapgate.inspect.v1.Verdict
+	45, // 30: lapgate.inspect.v1.Alarm.raised:type_name -> google.protobuf.Timestamp
+	45, // 31: lapgate.inspect.v1.Alarm.cleared:type_name -> google.protobuf.Timestamp
 	19, // 32: lapgate.inspect.v1.ListAlarmsResponse.alarms:type_name -> lapgate.inspect.v1.Alarm
-	46, // 33: lapgate.inspect.v1.Drift.latest:type_name -> lapgate.inspect.v1.Proof
-	44, // 34: lapgate.inspect.v1.Drift.at:type_name -> google.protobuf.Timestamp
+	47, // 33: lapgate.inspect.v1.Drift.latest:type_name -> lapgate.inspect.v1.Proof
+	45, // 34: lapgate.inspect.v1.Drift.at:type_name -> google.protobuf.Timestamp
 	22, // 35: lapgate.inspect.v1.ListDriftResponse.readings:type_name -> lapgate.inspect.v1.Drift
-	44, // 36: lapgate.inspect.v1.Suspicion.at:type_name -> google.protobuf.Timestamp
+	45, // 36: lapgate.inspect.v1.Suspicion.at:type_name -> google.protobuf.Timestamp
 	0,  // 37: lapgate.inspect.v1.DispositionRecord.disposition:type_name -> lapgate.inspect.v1.Disposition
-	44, // 38: lapgate.inspect.v1.DispositionRecord.at:type_name -> google.protobuf.Timestamp
-	43, // 39: lapgate.inspect.v1.OutcomeRecord.bin:type_name -> lapgate.inspect.v1.Verdict
-	44, // 40: lapgate.inspect.v1.OutcomeRecord.at:type_name -> google.protobuf.Timestamp
+	45, // 38: lapgate.inspect.v1.DispositionRecord.at:type_name -> google.protobuf.Timestamp
+	44, // 39: lapgate.inspect.v1.OutcomeRecord.bin:type_name -> lapgate.inspect.v1.Verdict
+	45, // 40: lapgate.inspect.v1.OutcomeRecord.at:type_name -> google.protobuf.Timestamp
 	15, // 41: lapgate.inspect.v1.GetUnitResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
 	15, // 42: lapgate.inspect.v1.ListMismatchesResponse.inspections:type_name -> lapgate.inspect.v1.InspectionRecord
-	44, // 43: lapgate.inspect.v1.HeartbeatResponse.server_time:type_name -> google.protobuf.Timestamp
+	45, // 43: lapgate.inspect.v1.HeartbeatResponse.server_time:type_name -> google.protobuf.Timestamp
 	1,  // 44: lapgate.inspect.v1.HeartbeatResponse.state:type_name -> lapgate.inspect.v1.StationState
-	44, // 45: lapgate.inspect.v1.Station.heartbeat:type_name -> google.protobuf.Timestamp
-	44, // 46: lapgate.inspect.v1.Station.inspection:type_name -> google.protobuf.Timestamp
+	45, // 45: lapgate.inspect.v1.Station.heartbeat:type_name -> google.protobuf.Timestamp
+	45, // 46: lapgate.inspect.v1.Station.inspection:type_name -> google.protobuf.Timestamp
 	1,  // 47: lapgate.inspect.v1.Station.state:type_name -> lapgate.inspect.v1.StationState
-	34, // 48: lapgate.inspect.v1.ListStationsResponse.stations:type_name -> lapgate.inspect.v1.Station
-	44, // 49: lapgate.inspect.v1.ListStationsResponse.server_time:type_name -> google.protobuf.Timestamp
-	3,  // 50: lapgate.inspect.v1.InspectionService.Inspect:input_type -> lapgate.inspect.v1.InspectRequest
-	7,  // 51: lapgate.inspect.v1.InspectionService.InspectUnit:input_type -> lapgate.inspect.v1.InspectUnitRequest
-	9,  // 52: lapgate.inspect.v1.InspectionService.ReportOutcome:input_type -> lapgate.inspect.v1.ReportOutcomeRequest
-	11, // 53: lapgate.inspect.v1.InspectionService.DisposeHold:input_type -> lapgate.inspect.v1.DisposeHoldRequest
-	13, // 54: lapgate.inspect.v1.InspectionService.ListHolds:input_type -> lapgate.inspect.v1.ListHoldsRequest
-	27, // 55: lapgate.inspect.v1.InspectionService.GetUnit:input_type -> lapgate.inspect.v1.GetUnitRequest
-	29, // 56: lapgate.inspect.v1.InspectionService.ListMismatches:input_type -> lapgate.inspect.v1.ListMismatchesRequest
-	31, // 57: lapgate.inspect.v1.InspectionService.Heartbeat:input_type -> lapgate.inspect.v1.HeartbeatRequest
-	33, // 58: lapgate.inspect.v1.InspectionService.ListStations:input_type -> lapgate.inspect.v1.ListStationsRequest
-	18, // 59: lapgate.inspect.v1.InspectionService.ListAlarms:input_type -> lapgate.inspect.v1.ListAlarmsRequest
-	21, // 60: lapgate.inspect.v1.InspectionService.ListDrift:input_type -> lapgate.inspect.v1.ListDriftRequest
-	6,  // 61: lapgate.inspect.v1.InspectionService.Inspect:output_type -> lapgate.inspect.v1.InspectResponse
-	8,  // 62: lapgate.inspect.v1.InspectionService.InspectUnit:output_type -> lapgate.inspect.v1.InspectUnitResponse
-	10, // 63: lapgate.inspect.v1.InspectionService.ReportOutcome:output_type -> lapgate.inspect.v1.ReportOutcomeResponse
-	12, // 64: lapgate.inspect.v1.InspectionService.DisposeHold:output_type -> lapgate.inspect.v1.DisposeHoldResponse
-	14, // 65: lapgate.inspect.v1.InspectionService.ListHolds:output_type -> lapgate.inspect.v1.ListHoldsResponse
-	28, // 66: lapgate.inspect.v1.InspectionService.GetUnit:output_type -> lapgate.inspect.v1.GetUnitResponse
-	30, // 67: lapgate.inspect.v1.InspectionService.ListMismatches:output_type -> lapgate.inspect.v1.ListMismatchesResponse
-	32, // 68: lapgate.inspect.v1.InspectionService.Heartbeat:output_type -> lapgate.inspect.v1.HeartbeatResponse
-	35, // 69: lapgate.inspect.v1.InspectionService.ListStations:output_type -> lapgate.inspect.v1.ListStationsResponse
-	20, // 70: lapgate.inspect.v1.InspectionService.ListAlarms:output_type -> lapgate.inspect.v1.ListAlarmsResponse
-	23, // 71: lapgate.inspect.v1.InspectionService.ListDrift:output_type -> lapgate.inspect.v1.ListDriftResponse
-	61, // [61:72] is the sub-list for method output_type
-	50, // [50:61] is the sub-list for method input_type
-	50, // [50:50] is the sub-list for extension type_name
-	50, // [50:50] is the sub-list for extension extendee
-	0,  // [0:50] is the sub-list for field type_name
+	45, // 48: lapgate.inspect.v1.OutsideStage.since:type_name -> google.protobuf.Timestamp
+	34, // 49: lapgate.inspect.v1.ListStationsResponse.stations:type_name -> lapgate.inspect.v1.Station
+	45, // 50: lapgate.inspect.v1.ListStationsResponse.server_time:type_name -> google.protobuf.Timestamp
+	35, // 51: lapgate.inspect.v1.ListStationsResponse.outside_stages:type_name -> lapgate.inspect.v1.OutsideStage
+	3,  // 52: lapgate.inspect.v1.InspectionService.Inspect:input_type -> lapgate.inspect.v1.InspectRequest
+	7,  // 53: lapgate.inspect.v1.InspectionService.InspectUnit:input_type -> lapgate.inspect.v1.InspectUnitRequest
+	9,  // 54: lapgate.inspect.v1.InspectionService.ReportOutcome:input_type -> lapgate.inspect.v1.ReportOutcomeRequest
+	11, // 55: lapgate.inspect.v1.InspectionService.DisposeHold:input_type -> lapgate.inspect.v1.DisposeHoldRequest
+	13, // 56: lapgate.inspect.v1.InspectionService.ListHolds:input_type -> lapgate.inspect.v1.ListHoldsRequest
+	27, // 57: lapgate.inspect.v1.InspectionService.GetUnit:input_type -> lapgate.inspect.v1.GetUnitRequest
+	29, // 58: lapgate.inspect.v1.InspectionService.ListMismatches:input_type -> lapgate.inspect.v1.ListMismatchesRequest
+	31, // 59: lapgate.inspect.v1.InspectionService.Heartbeat:input_type -> lapgate.inspect.v1.HeartbeatRequest
+	33, // 60: lapgate.inspect.v1.InspectionService.ListStations:input_type -> lapgate.inspect.v1.ListStationsRequest
+	18, // 61: lapgate.inspect.v1.InspectionService.ListAlarms:input_type -> lapgate.inspect.v1.ListAlarmsRequest
+	21, // 62: lapgate.inspect.v1.InspectionService.ListDrift:input_type -> lapgate.inspect.v1.ListDriftRequest
+	6,  // 63: lapgate.inspect.v1.InspectionService.Inspect:output_type -> lapgate.inspect.v1.InspectResponse
+	8,  // 64: lapgate.inspect.v1.InspectionService.InspectUnit:output_type -> lapgate.inspect.v1.InspectUnitResponse
+	10, // 65: lapgate.inspect.v1.InspectionService.ReportOutcome:output_type -> lapgate.inspect.v1.ReportOutcomeResponse
+	12, // 66: lapgate.inspect.v1.InspectionService.DisposeHold:output_type -> lapgate.inspect.v1.DisposeHoldResponse
+	14, // 67: lapgate.inspect.v1.InspectionService.ListHolds:output_type -> lapgate.inspect.v1.ListHoldsResponse
+	28, // 68: lapgate.inspect.v1.InspectionService.GetUnit:output_type -> lapgate.inspect.v1.GetUnitResponse
+	30, // 69: lapgate.inspect.v1.InspectionService.ListMismatches:output_type -> lapgate.inspect.v1.ListMismatchesResponse
+	32, // 70: lapgate.inspect.v1.InspectionService.Heartbeat:output_type -> lapgate.inspect.v1.HeartbeatResponse
+	36, // 71: lapgate.inspect.v1.InspectionService.ListStations:output_type -> lapgate.inspect.v1.ListStationsResponse
+	20, // 72: lapgate.inspect.v1.InspectionService.ListAlarms:output_type -> lapgate.inspect.v1.ListAlarmsResponse
+	23, // 73: lapgate.inspect.v1.InspectionService.ListDrift:output_type -> lapgate.inspect.v1.ListDriftResponse
+	63, // [63:74] is the sub-list for method output_type
+	52, // [52:63] is the sub-list for method input_type
+	52, // [52:52] is the sub-list for extension type_name
+	52, // [52:52] is the sub-list for extension extendee
+	0,  // [0:52] is the sub-list for field type_name
 }
 
 func init() { file_inspectpb_inspection_proto_init() }
@@ -2933,7 +3032,7 @@ func file_inspectpb_inspection_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_inspectpb_inspection_proto_rawDesc), len(file_inspectpb_inspection_proto_rawDesc)),
 			NumEnums:      2,
-			NumMessages:   34,
+			NumMessages:   35,
 			NumExtensions: 0,
 			NumServices:   1,
 		},
