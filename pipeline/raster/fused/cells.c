@@ -73,7 +73,8 @@ static char *lay_out(pg_band *b, char *at, int cell) {
 	size_t ring = 4 * (size_t)sample_groups(cell); // the sampled rows and the ring are never in use together
 	b->horizontal = b->samples = take(&at, (ring > 8 ? ring : 8) * row);
 	b->filtered = take(&at, 4 * row);
-	b->grain = take(&at, t * ((size_t)b->width / 4 + 1) * ((size_t)cell / 4 + 1));
+	b->grain = take(&at, t * columns * ((size_t)cell / 4) * ((size_t)cell / 4));
+	b->torn = (uint8_t *)take(&at, columns);
 	b->top = take(&at, row);
 	b->slope = take(&at, row);
 	b->cells = take(&at, 3 * t * columns);

@@ -25,6 +25,27 @@ PG_INLINE uint32_t pg_count(const pg_frame *f, const uint8_t *row, int x) {
 
 PG_INLINE const uint8_t *pg_row(const pg_frame *f, int y) { return f->data + (int64_t)y * f->stride; }
 
+// A row of memory that 64 px take step bytes of, to be asked for before it is used.
+typedef struct {
+	uintptr_t at; // 0: none
+	int step;
+} pg_stream;
+
+PG_INLINE void pg_ask(const pg_stream *s, int x) {
+	const uintptr_t at = s->at + (uintptr_t)(x * s->step >> 6); // two lines hold at least 64 px
+	__builtin_prefetch((const void *)at, 0, 2);
+	__builtin_prefetch((const void *)(at + 64), 0, 2);
+}
+
+// pg_streams are frame, offset and gain of row y.
+static inline void pg_streams(const pg_frame *f, int y, pg_stream *out) {
+	const int row = f->layout == PG_BYTES ? 64 : f->layout == PG_10P ? 80 : f->layout == PG_WORDS ? 128 : 96, map = 2 * 64;
+	const int none = y < 0 || y >= f->height || f->use_float;
+	out[0] = (pg_stream){none ? 0 : (uintptr_t)pg_row(f, y), row};
+	out[1] = (pg_stream){none || !f->offset ? 0 : (uintptr_t)(f->offset + (int64_t)y * f->width), map};
+	out[2] = (pg_stream){none || !f->gain ? 0 : (uintptr_t)(f->gain + (int64_t)y * f->width), map};
+}
+
 PG_INLINE void pg_pair12(const uint8_t *restrict p, uint16_t *restrict d, int n, int packed) {
 	for (int i = 0; i < n; i++) {
 		uint16_t a = p[3 * i], b = p[3 * i + 1], c = p[3 * i + 2];

@@ -22,6 +22,7 @@ type Correction struct {
 	width, height         int
 	dark, stray, response []float32
 	badStart, badX        []int32 // columns of bad pixels by row
+	badNear               []uint8 // which of a bad pixel's neighbours are good, see pass.h
 	offset, gain          []int16 // nil = none, or the float path only
 	factor                int     // counts are multiplied by it
 	scale                 float64 // units of a corrected integer per DN
@@ -83,7 +84,33 @@ func (c *Correction) listBad(m *raster.Mask) {
 	}
 	if len(c.badX) > 0 {
 		c.badStart = start
+		c.listNear(m)
 	}
+}
+
+func (c *Correction) listNear(m *raster.Mask) {
+	c.badNear = make([]uint8, 0, len(c.badX))
+	for y := range c.height {
+		for _, x := range c.badX[c.badStart[y]:c.badStart[y+1]] {
+			c.badNear = append(c.badNear, goodAround(m, int(x), y))
+		}
+	}
+}
+
+func goodAround(m *raster.Mask, x, y int) uint8 {
+	var near, bit uint8 = 0, 1
+	for v := y - 1; v <= y+1; v++ {
+		for u := x - 1; u <= x+1; u++ {
+			if u == x && v == y {
+				continue
+			}
+			if u >= 0 && v >= 0 && u < m.Width && v < m.Height && !m.Row(v)[u] {
+				near |= bit
+			}
+			bit <<= 1
+		}
+	}
+	return near
 }
 
 func (c *Correction) isBad(i int) bool {

@@ -168,7 +168,7 @@ static int keep(pg_patch *p, const float *signal, pg_span s) {
 }
 
 // filter_row makes the ring's row y where rows y − 2 to y + 2 of spans need it.
-static int filter_row(const pg_frame *f, const pg_grid *g, const rows *spans, line *l, int y) {
+PG_WHOLE int filter_row(const pg_frame *f, const pg_grid *g, const rows *spans, line *l, int y) {
 	if (y < 0 || y >= f->height)
 		return PG_OK;
 	l->need.count = 0;
@@ -278,10 +278,33 @@ static int note_peaks(const line *l, const pg_runs *runs, int64_t first, float *
 	return PG_OK;
 }
 
+// snr_span evaluates x0 … x1 of row y to l->out; inner spans as for rescale.
+PG_WHOLE void snr_span(const pg_frame *f, const pg_grid *g, line *l, int inner, int y, int x0, int x1) {
+	down(f, l, y, x0, x1);
+	rescale(f, l, inner, y, x0, x1);
+	noise_row(f, g, l->noise, y, x0, x1);
+	to_snr(f, l, x0, x1);
+}
+
+enum { ROWS_AHEAD = 8 };
+
+// ask_row asks for the memory that the spans of row y will need.
+static void ask_row(const pg_frame *f, const rows *spans, int y) {
+	pg_stream s[3];
+	if (y >= f->height || spans->start[y] == spans->start[y + 1])
+		return;
+	pg_streams(f, y + 2, s);
+	for (int64_t i = spans->start[y]; i < spans->start[y + 1]; i++)
+		for (int x = spans->at[i].x0 - 4; x < spans->at[i].x1 + 4; x += 64)
+			for (int k = 0; k < 3; k++)
+				pg_ask(s + k, x < 0 ? 0 : x);
+}
+
 static int evaluate(const pg_frame *f, const pg_grid *g, const rows *spans, line *l, pg_runs *runs, float **peaks, float *snr) {
 	int64_t room = 0;
 	int next = 0; // first row that the ring does not hold yet
 	for (int y = 0; y < f->height; y++) {
+		ask_row(f, spans, y + ROWS_AHEAD);
 		if (spans->start[y] == spans->start[y + 1])
 			continue;
 		for (next = next > y - 2 ? next : y - 2; next <= y + 2; next++)
@@ -291,10 +314,7 @@ static int evaluate(const pg_frame *f, const pg_grid *g, const rows *spans, line
 		int64_t first = runs->count;
 		for (int64_t i = spans->start[y]; i < spans->start[y + 1]; i++) {
 			int x0 = spans->at[i].x0, x1 = spans->at[i].x1;
-			down(f, l, y, x0, x1);
-			rescale(f, l, inner, y, x0, x1);
-			noise_row(f, g, l->noise, y, x0, x1);
-			to_snr(f, l, x0, x1);
+			snr_span(f, g, l, inner, y, x0, x1);
 			if (snr)
 				memcpy(snr + (int64_t)y * f->width + x0, l->out + x0, sizeof(float) * (size_t)(x1 - x0));
 			if (above(f, l, runs, y, x0, x1))

@@ -106,6 +106,7 @@ func newJob(c *Correction, raw raster.Raw, region []raster.Span, s Settings) *jo
 	f.layout = layouts[c.format]
 	f.offset, f.gain = (*C.int16_t)(pinned(j, c.offset)), (*C.int16_t)(pinned(j, c.gain))
 	f.dark, f.stray, f.response = (*C.float)(pinned(j, c.dark)), (*C.float)(pinned(j, c.stray)), (*C.float)(pinned(j, c.response))
+	f.bad_near = (*C.uint8_t)(pinned(j, c.badNear))
 	f.bad_start, f.bad_x = (*C.int32_t)(pinned(j, c.badStart)), (*C.int32_t)(pinned(j, c.badX))
 	spans, start := byRow(region, c.width, c.height)
 	f.spans, f.span_start = (*C.pg_span)(pinned(j, spans)), (*C.int32_t)(pinned(j, start))

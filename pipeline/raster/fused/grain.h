@@ -6,14 +6,14 @@
 enum { LEAST_SAMPLES = 24, CLIP_PASSES = 8 };
 
 // pack copies the samples that count, row by row, and returns how many they are.
-static int pack(T *restrict packed, const T *restrict v, int pitch, int rows, int columns) {
+static int pack(T *packed, const T *v, int pitch, int rows, int columns) {
 	int n = 0;
 	for (int k = 0; k < rows; k++, v += pitch) {
 		T least = v[0];
 		for (int x = 1; x < columns; x++)
 			least = v[x] < least ? v[x] : least;
 		if (least != OUTSIDE) {
-			memcpy(packed + n, v, sizeof(T) * (size_t)columns);
+			memmove(packed + n, v, sizeof(T) * (size_t)columns);
 			n += columns;
 			continue;
 		}
@@ -27,10 +27,11 @@ static int pack(T *restrict packed, const T *restrict v, int pitch, int rows, in
 
 // sample_sigma returns the clipped sigma (DN) of rows × columns samples of unit units per
 // DN, or −1 when fewer than LEAST_SAMPLES count: raster's clipper.moments, with floor in
-// DN. packed holds as many. guess is the median of the distances to the median of a cell
-// like it, and becomes that of this one.
-static double sample_sigma(const pg_frame *f, const T *v, int pitch, int rows, int columns, T *packed, double unit, double floor, double *guess) {
-	int n = pack(packed, v, pitch, rows, columns);
+// DN. packed holds as many, or is NULL where all of them count. guess is the median of the
+// distances to the median of a cell like it, and becomes that of this one.
+static double sample_sigma(const pg_frame *f, T *v, int pitch, int rows, int columns, T *packed, double unit, double floor, double *guess) {
+	int n = packed || pitch != columns ? pack(packed ? packed : v, v, pitch, rows, columns) : rows * columns;
+	packed = packed ? packed : v;
 	if (n < LEAST_SAMPLES)
 		return -1;
 	double mean = 0, sigma = *guess, last = -1, m[3];

@@ -25,7 +25,10 @@ PG_KERNEL int row_value(const pg_frame *f, T *restrict v, uint16_t *restrict tmp
 	return top;
 }
 
-static T replaced(const pg_frame *f, int x, int y) { return pg_replaced(f, x, y); }
+static T replaced(const pg_frame *f, int x, int y, unsigned good) {
+	(void)good;
+	return pg_replaced(f, x, y);
+}
 
 // moments sums in eight lanes, so that the order of the sums is the same however wide
 // the vectors are.
@@ -58,9 +61,9 @@ PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restri
 }
 
 PG_KERNEL void row_signal(T *restrict s, const T *restrict v, const T *restrict top, const T *restrict slope,
-                          double fraction, int shift, int y, T least, T most, int negate, int x0, int x1) {
+                          double fraction, int shift, int y, T least, T most, int negate, int x0, int x1, const pg_stream *next) {
 	const float fy = (float)fraction, sign = negate ? -1.f : 1.f;
-	(void)shift, (void)y, (void)least, (void)most;
+	(void)shift, (void)y, (void)least, (void)most, (void)next;
 	for (int x = x0; x < x1; x++)
 		s[x] = sign * (v[x] - (top[x] + fy * slope[x]));
 }

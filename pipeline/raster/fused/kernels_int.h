@@ -67,17 +67,17 @@ static int value_one(const pg_frame *f, int x, int y) {
 }
 
 // replaced is the median of the good ones of the eight neighbours of a bad pixel.
-static T replaced(const pg_frame *f, int x, int y) {
+static T replaced(const pg_frame *f, int x, int y, unsigned good) {
+	static const int8_t dx[8] = {-1, 0, 1, -1, 1, -1, 0, 1}, dy[8] = {-1, -1, -1, 0, 0, 1, 1, 1};
 	int near[8], n = 0;
-	for (int v = y - 1 < 0 ? 0 : y - 1; v <= y + 1 && v < f->height; v++)
-		for (int u = x - 1 < 0 ? 0 : x - 1; u <= x + 1 && u < f->width; u++) {
-			if ((u == x && v == y) || pg_is_bad(f, u, v))
-				continue;
-			int c = value_one(f, u, v), i = n++;
-			for (; i > 0 && near[i - 1] > c; i--)
-				near[i] = near[i - 1];
-			near[i] = c;
-		}
+	for (int k = 0; k < 8; k++) {
+		if (!(good >> k & 1))
+			continue;
+		int c = value_one(f, x + dx[k], y + dy[k]), i = n++;
+		for (; i > 0 && near[i - 1] > c; i--)
+			near[i] = near[i - 1];
+		near[i] = c;
+	}
 	return n == 0 ? to_value(f, pg_replaced(f, x, y)) : (T)((near[n / 2] + near[(n - 1) / 2]) / 2);
 }
 
@@ -114,22 +114,39 @@ PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restri
 // row_signal writes value − level within ±CLAMP. The level
 // is top + slope·fy; slope carries shift + 1 more bits and fy 14, and round differs from
 // row to row, so that rounding does not add up under the filter.
-PG_KERNEL void row_signal(T *restrict s, const T *restrict v, const T *restrict top, const T *restrict slope,
-                          double fraction, int shift, int y, T least, T most, int negate, int x0, int x1) {
-	const int16_t fy = (int16_t)(fraction * 16384 + (fraction < 0 ? -0.5 : 0.5));
-	static const int16_t order[4] = {1, 5, 3, 7};
-	const int16_t round = (int16_t)(order[y & 3] << shift >> 3);
+PG_INLINE void signal_part(T *restrict s, const T *restrict v, const T *restrict top, const T *restrict slope, int16_t fy, int16_t round,
+                           int shift, T least, T most, int negate, int x0, int x1) {
 	for (int x = x0; x < x1; x++) {
 		int16_t step = (int16_t)((((int32_t)slope[x] * fy >> 14) + 1) >> 1);
 		int16_t level = (int16_t)(top[x] + (int16_t)((int16_t)(step + round) >> shift));
 		int16_t w = v[x] > most ? most : v[x];
 		w = w < least ? least : w;
-		int16_t d = (int16_t)(w - level);
+		int16_t d = (int16_t)(negate ? level - w : w - level);
 		d = d > CLAMP ? CLAMP : d;
-		d = d < -CLAMP ? -CLAMP : d;
-		d = negate ? (int16_t)-d : d;
-		s[x] = d;
+		s[x] = d < -CLAMP ? -CLAMP : d;
 	}
+}
+
+#define SIGNAL_PART(SHIFT, NEGATE) \
+	case SHIFT * 2 + NEGATE: \
+		signal_part(s, v, top, slope, fy, round, SHIFT, least, most, NEGATE, from, from + 64); \
+		break;
+
+PG_KERNEL void row_signal(T *restrict s, const T *restrict v, const T *restrict top, const T *restrict slope, double fraction,
+                          int shift, int y, T least, T most, int negate, int x0, int x1, const pg_stream *next) {
+	const int16_t fy = (int16_t)(fraction * 16384 + (fraction < 0 ? -0.5 : 0.5));
+	static const int16_t order[4] = {1, 5, 3, 7};
+	const int16_t round = (int16_t)(order[y & 3] << shift >> 3);
+	int from = x0;
+	for (; from + 64 <= x1; from += 64) {
+		pg_ask(next, from);
+		pg_ask(next + 1, from);
+		switch (shift * 2 + (negate != 0)) {
+			SIGNAL_PART(0, 0) SIGNAL_PART(0, 1) SIGNAL_PART(1, 0) SIGNAL_PART(1, 1) SIGNAL_PART(2, 0)
+			SIGNAL_PART(2, 1) SIGNAL_PART(3, 0) SIGNAL_PART(3, 1) SIGNAL_PART(4, 0) SIGNAL_PART(4, 1)
+		}
+	}
+	signal_part(s, v, top, slope, fy, round, shift, least, most, negate, from, x1);
 }
 
 // taps is the binomial filter (a + e + 4(b + d) + 6c)/16, rounded; all terms within

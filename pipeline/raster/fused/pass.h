@@ -20,6 +20,7 @@
 #endif
 #define PG_INLINE static inline __attribute__((always_inline))
 #define PG_KERNEL PG_CLONES static __attribute__((noinline))
+#define PG_WHOLE PG_CLONES static __attribute__((noinline, flatten)) // with all that it calls
 
 // How counts lie in memory.
 enum { PG_BYTES, PG_WORDS, PG_10P, PG_12P, PG_12PACKED };
@@ -43,6 +44,7 @@ typedef struct {
 	// (counts − dark − stray) / response, in DN; NULL = none
 	const float *dark, *stray, *response;
 	const int32_t *bad_start, *bad_x;  // bad pixels by row: bad_start[height + 1]; NULL = none
+	const uint8_t *bad_near;           // which of a bad pixel's neighbours are good: bits 0 to 7, row by row
 	const int32_t *span_start;         // region spans by row: span_start[height + 1]
 	const pg_span *spans;              // sorted, not touching within a row
 	int32_t cell, polarity, use_grain; // polarity 1 bright, −1 dark, 0 both
@@ -80,6 +82,7 @@ typedef struct {
 	int64_t bytes;
 	uint16_t *counts; // an unpacked row
 	char *value, *signal, *horizontal, *filtered, *grain, *top, *slope, *samples, *cells, *low, *high, *highest, *whole;
+	uint8_t *torn; // cells in which a sample is missing
 	float *sums;
 	double *stats;
 	pg_span *inner, *spare;

@@ -69,7 +69,7 @@ static void replace_bad(const pg_frame *f, T *row, int y, int x0, int x1) {
 	if (f->bad_start)
 		for (int i = f->bad_start[y]; i < f->bad_start[y + 1]; i++)
 			if (f->bad_x[i] >= x0 && f->bad_x[i] < x1)
-				row[f->bad_x[i]] = replaced(f, f->bad_x[i], y);
+				row[f->bad_x[i]] = replaced(f, f->bad_x[i], y, f->bad_near[i]);
 }
 
 // next_top returns the next x from x on whose count is the highest or above, or x1.
@@ -178,11 +178,13 @@ static void start_cells(state *s, int row) {
 	}
 }
 
-static void add_moments(state *s, T **rows, int x0, int x1) {
+static void add_moments(state *s, T **rows, int x0, int x1, const pg_stream *next) {
 	const int cell = s->f->cell;
 	for (int x = x0; x < x1;) {
 		int i = x / cell, end = (i + 1) * cell < x + 64 ? (i + 1) * cell : x + 64;
 		end = end < x1 ? end : x1;
+		for (int k = 0; k < 6; k++)
+			pg_ask(next + k, x);
 		moments(rows[0], rows[1], rows[2], rows[3], x, end, s->cell_low[i], s->cell_high[i], s->cell_mid[i], s->stats + 3 * i);
 		x = end;
 	}
@@ -195,40 +197,57 @@ PG_KERNEL void along(T *restrict dst, const T *restrict v, int x0, int x1) {
 
 // to_signal makes row y's signal of its values, with a zero where the region is not, and
 // the filter along x of it.
-static void to_signal(state *s, T *v, int y, int x0, int x1) {
+static void to_signal(state *s, T *v, int y, int x0, int x1, const pg_stream *next) {
 	const pg_frame *f = s->f;
 	T *out = s->ring[y & 7], *sig = s->signal;
 	replace_bad(f, v, y, x0, x1);
 	level_rows(s, y);
 	double fy;
 	pg_node(y, f->cell, s->g->rows, &fy);
-	row_signal(sig, v, s->top, s->slope, fy, s->shift, y, s->least, s->most, f->polarity < 0, x0, x1);
+	row_signal(sig, v, s->top, s->slope, fy, s->shift, y, s->least, s->most, f->polarity < 0, x0, x1, next);
 	fill_gaps(f, sig, y, x0, x1, 0);
 	sig[x0 - 2] = sig[x0 - 1] = sig[x1] = sig[x1 + 1] = 0;
 	along(out, sig, x0, x1);
+}
+
+// gather keeps every fourth value of a row, the third of four: as row k of the samples of
+// each cell, side of them a row; n in all.
+PG_KERNEL void gather(T *restrict samples, const T *restrict filtered, int n, int side, int k) {
+	for (int i = 0; i < n; i += side) {
+		T *restrict row = samples + (int64_t)(i + k) * side;
+		for (int x = 0; x < (i + side < n ? side : n - i); x++)
+			row[x] = filtered[GROUP * (i + x) + 2];
+	}
+}
+
+// drop_samples takes the samples from a to before b of row k out.
+static void drop_samples(state *s, int a, int b, int k) {
+	const int side = s->f->cell / GROUP;
+	for (int i = a; i < b; i++) {
+		s->samples[(int64_t)(i / side * side + k) * side + i % side] = OUTSIDE;
+		s->b->torn[i / side] = 1;
+	}
 }
 
 // take_samples keeps every fourth filtered value of row y, the second of four rows (see
 // Grid in raster), and OUTSIDE where one of its 5 × 5 pixels does not count.
 static void take_samples(state *s, const T *restrict filtered, int y) {
 	const pg_frame *f = s->f;
-	int n = f->width / GROUP, m = span_inner(f, y, &s->inner, &s->spare);
-	T *restrict row = s->samples + (int64_t)(y % f->cell / GROUP) * n;
-	for (int i = 0; i < n; i++)
-		row[i] = OUTSIDE;
-	for (int k = 0; k < m; k++) {
-		int a = (s->inner[k].x0 + 1) / GROUP, b = (s->inner[k].x1 + 1) / GROUP;
-		b = b < n ? b : n;
-		for (int i = a; i < b; i++)
-			row[i] = filtered[GROUP * i + 2];
+	const int n = f->width / GROUP, m = span_inner(f, y, &s->inner, &s->spare), k = y % f->cell / GROUP;
+	int last = 0;
+	if (k == 0)
+		memset(s->b->torn, 0, (size_t)s->b->columns);
+	gather(s->samples, filtered, n, f->cell / GROUP, k);
+	for (int i = 0; i < m; i++) {
+		int a = (s->inner[i].x0 + 1) / GROUP, b = (s->inner[i].x1 + 1) / GROUP;
+		drop_samples(s, last, a < n ? a : n, k);
+		last = b;
 	}
+	drop_samples(s, last, n, k);
 	for (int v = y - 2; f->bad_start && v <= y + 2; v++)
 		for (int i = v < 0 || v >= f->height ? 0 : f->bad_start[v]; v >= 0 && v < f->height && i < f->bad_start[v + 1]; i++) {
 			int j = f->bad_x[i] / GROUP; // reached by samples j and, from its edge, j − 1
-			if (j < n)
-				row[j] = OUTSIDE;
-			if (f->bad_x[i] % GROUP == 0 && j > 0)
-				row[j - 1] = OUTSIDE;
+			drop_samples(s, f->bad_x[i] % GROUP == 0 && j > 0 ? j - 1 : j, j < n ? j + 1 : n, k);
 		}
 }
 
@@ -286,12 +305,14 @@ static int finish_moments(state *s, int row) {
 // finish_grain writes the sigma of the filtered samples of the cells of grid row row.
 static void finish_grain(state *s, int row) {
 	const pg_frame *f = s->f;
-	int n = f->width / GROUP, columns = f->cell / GROUP, bottom = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
+	int n = f->width / GROUP, side = f->cell / GROUP, bottom = (row + 1) * f->cell < f->height ? (row + 1) * f->cell : f->height;
 	int rows = (bottom - row * f->cell + 1) / GROUP;
 	double guess = 0;
 	for (int i = 0; i < s->out->columns; i++) {
-		int a = i * columns, b = a + columns < n ? a + columns : n;
+		T *v = s->samples + (int64_t)i * side * side;
+		int wide = i * side + side < n ? side : n - i * side;
+		T *spare = (T *)(void *)s->b->whole;
 		s->out->block[(int64_t)row * s->out->columns + i] =
-		    f->use_grain && a < b ? sample_sigma(f, s->samples + a, n, rows, b - a, (T *)(void *)s->b->whole, f->scale, f->floor_dn * PG_GAIN, &guess) : -1;
+		    f->use_grain && wide > 0 ? sample_sigma(f, v, side, rows, wide, s->b->torn[i] ? spare : 0, f->scale, f->floor_dn * PG_GAIN, &guess) : -1;
 	}
 }

@@ -63,13 +63,40 @@ static int scan(state *s, const T *f, int y, int x0, int x1, int share) {
 	return PG_OK;
 }
 
-PG_KERNEL int reaches(const T *restrict f, int x0, int x1, T low, int both) {
-	T top = 0, bottom = 0;
-	for (int x = x0; x < x1; x++) {
-		top = f[x] > top ? f[x] : top;
-		bottom = f[x] < bottom ? f[x] : bottom;
+// marks returns a bit for each pixel of a segment that reaches low, or with both its
+// magnitude.
+PG_KERNEL uint32_t marks(const T *restrict f, T low, int both) {
+	uint8_t at[SEGMENT];
+	uint32_t bits = 0;
+	for (int x = 0; x < SEGMENT; x++)
+		at[x] = f[x] >= low;
+	for (int x = 0; x < SEGMENT && both; x++)
+		at[x] |= f[x] <= -low;
+	for (int k = 0; k < SEGMENT; k += 8) { // the lowest bits of eight bytes, gathered by one product
+		uint64_t eight = 0;
+		for (int i = 0; i < 8; i++)
+			eight |= (uint64_t)at[k + i] << (8 * i);
+		bits |= (uint32_t)(eight * 0x0102040810204080ull >> 56) << k;
 	}
-	return top >= low || (both && -bottom >= low);
+	return bits;
+}
+
+// scan_segment is scan of a whole segment, with a share of 1.
+static int scan_segment(state *s, const T *f, int y, int j) {
+	const T high = s->high[j];
+	uint32_t bits = marks(f + j * SEGMENT, s->low[j], s->f->polarity == 0);
+	for (int x = j * SEGMENT; bits;) {
+		int skip = __builtin_ctz(bits), end, top = 0;
+		bits >>= skip, x += skip;
+		end = x + (~bits ? __builtin_ctz(~bits) : SEGMENT);
+		bits = end - x < SEGMENT ? bits >> (end - x) : 0;
+		for (int u = x; u < end; u++)
+			top |= (BOUND)(f[u] < 0 ? -f[u] : f[u]) >= high;
+		if (pg_run_add(&s->b->runs, y, x, end, top))
+			return PG_NO_MEMORY;
+		x = end;
+	}
+	return PG_OK;
 }
 
 // scan_inner is scan that looks only at segments with a pixel above the threshold, from
@@ -82,7 +109,7 @@ static int scan_inner(state *s, const T *f, int y, int x0, int x1, int *next) {
 		if (j * SEGMENT >= x1)
 			break;
 		int a = j * SEGMENT < x0 ? x0 : j * SEGMENT, e = (j + 1) * SEGMENT < x1 ? (j + 1) * SEGMENT : x1;
-		if (reaches(f, a, e, s->low[j], s->f->polarity == 0) && scan(s, f, y, a, e, 1))
+		if (e - a == SEGMENT ? scan_segment(s, f, y, j) : scan(s, f, y, a, e, 1))
 			return PG_NO_MEMORY;
 		if ((j + 1) * SEGMENT > x1)
 			break; // the rest of the segment may lie in the next span
@@ -148,11 +175,14 @@ static int group(state *s, int y, int keep) {
 	int e = load(s, s->value, y, x0, x1, keep);
 	if (e)
 		return e;
+	pg_stream next[4 * GROUP] = {0}; // of the next four rows: the last two while the signal is made
+	for (int k = 0; k < GROUP; k++)
+		pg_streams(f, y + GROUP + k, next + (k < 2 ? 3 * k : 4 * k - 2));
 	if (keep)
-		add_moments(s, s->value, x0, x1);
+		add_moments(s, s->value, x0, x1, next);
 	for (int k = 0; k < GROUP; k++)
 		if (y + k < f->height)
-			to_signal(s, s->value[k], y + k, x0, x1);
+			to_signal(s, s->value[k], y + k, x0, x1, next + 6 + 2 * k);
 		else
 			memset(s->ring[(y + k) & 7] - PAD, 0, sizeof(T) * (size_t)s->pitch);
 	return PG_OK;

@@ -7,6 +7,7 @@
 #include <string.h>
 #include <time.h>
 
+#include "../correct.h"
 #include "../objects.h"
 
 static uint64_t seed = 1;
@@ -129,6 +130,18 @@ static void mark_bad(pg_frame *f, double share) {
 		start[y + 1] = n;
 	}
 	f->bad_start = start, f->bad_x = x;
+	uint8_t *near = room((size_t)n);
+	for (int y = 0; y < f->height; y++)
+		for (int32_t i = start[y]; i < start[y + 1]; i++)
+			for (int v = y - 1, bit = 1; v <= y + 1; v++)
+				for (int u = x[i] - 1; u <= x[i] + 1; u++) {
+					if (u == x[i] && v == y)
+						continue;
+					if (u >= 0 && v >= 0 && u < f->width && v < f->height && !pg_is_bad(f, u, v))
+						near[i] |= (uint8_t)bit;
+					bit <<= 1;
+				}
+	f->bad_near = near;
 }
 
 // lay_region makes up to spans spans a row; 0: all of the frame.
@@ -233,7 +246,7 @@ static int all(job *j) {
 }
 
 static void drop(job *j) {
-	const void *p[] = {j->f.data, j->f.dark, j->f.stray, j->f.response, j->f.offset, j->f.gain, j->f.bad_start, j->f.bad_x, j->f.spans, j->f.span_start,
+	const void *p[] = {j->f.data, j->f.dark, j->f.stray, j->f.response, j->f.offset, j->f.gain, j->f.bad_start, j->f.bad_x, j->f.bad_near, j->f.spans, j->f.span_start,
 	                   j->guess.level, j->grid.level, j->guess.filled, j->grid.filled, j->guess.inside, j->blocks, j->snr};
 	for (size_t i = 0; i < sizeof(p) / sizeof(p[0]); i++)
 		free((void *)(uintptr_t)p[i]);
