@@ -45,10 +45,11 @@ func line(t *testing.T, f pipeline.Factory) *pipeline.Pipeline {
 // died are held with its name, all others are accepted with the right answer.
 // LAPGATE_LONG=1 makes it 10 000 units.
 func TestStageThatKeepsDying(t *testing.T) {
-	n := 1500
+	t.Parallel()
+	n := 600
 	switch {
 	case testing.Short():
-		n = 500
+		n = 200
 	case os.Getenv("LAPGATE_LONG") != "":
 		n = 10_000
 	}

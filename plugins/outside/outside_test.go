@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"context"
 	"errors"
+	"fmt"
 	"image"
 	"image/png"
 	"reflect"
@@ -30,6 +31,23 @@ func view(raw raster.Raw) *pipeline.Item {
 	cal := &pipeline.Calibration{Hash: "test", Dark: dark, Response: response, BadPixels: []pipeline.PixelAt{{X: 0, Y: 0}, {X: 75, Y: 60}}}
 	return &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}, Calibration: cal,
 		Geometry: pipeline.Distorted{Planar: pipeline.Planar{UMPerPx: 10}, Lens: pipeline.Distortion{K1: -0.01, CentreX: 100, CentreY: 90, NormPx: 120}}}
+}
+
+// maker returns a function that makes items as stage i of the built-in ones gets them. What
+// the stages before it made of a frame is made once: stages change none of it, which the
+// suite itself looks at.
+func maker(t *testing.T, i int) func(raster.Raw) *pipeline.Item {
+	var mu sync.Mutex
+	made := map[string]*pipeline.Item{}
+	return func(raw raster.Raw) *pipeline.Item {
+		mu.Lock()
+		defer mu.Unlock()
+		key := fmt.Sprint(raw.Format, raw.Width, raw.Height) + string(raw.Data)
+		if made[key] == nil {
+			made[key] = before(t, raw, i)
+		}
+		return made[key].Fork()
+	}
 }
 
 // before returns an item as stage i of the built-in ones gets it.
@@ -87,7 +105,7 @@ func TestBuiltinStagesOutside(t *testing.T) {
 			if testing.Short() && i%4 != 1 { // the suite itself takes its time
 				return
 			}
-			stagetest.Run(t, outside, func(raw raster.Raw) *pipeline.Item { return before(t, raw, i) })
+			stagetest.Run(t, outside, maker(t, i))
 			if s := h.Status(); s.Restarts != 0 {
 				t.Errorf("restarted: %+v", s)
 			}
@@ -201,7 +219,7 @@ func TestOthersGoOn(t *testing.T) {
 // A caller that leaves is let go at once, and the stage is not disturbed.
 func TestCallerLeaves(t *testing.T) {
 	s := settingsFor("hostile", "hang")
-	s.MaxConcurrent, s.Deadline = 1, time.Second
+	s.MaxConcurrent, s.Deadline = 1, 400*time.Millisecond
 	h := open(t, s)
 	stage := newStage(t, h.Factory(), "{}")
 	ctx, cancel := context.WithTimeout(context.Background(), 50*time.Millisecond)

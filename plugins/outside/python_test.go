@@ -40,6 +40,7 @@ func pythonStage(t *testing.T, text string) Settings {
 // The plug-in of the guide, as it stands there, is short, passes the suite, and finds
 // what is drawn.
 func TestGuide(t *testing.T) {
+	t.Parallel()
 	guide, err := os.ReadFile("GUIDE.md")
 	if err != nil {
 		t.Fatal(err)
@@ -109,6 +110,7 @@ lap.serve(type="looks", version="1", summary="Looks at a frame.", reads=["raw", 
 // Python sees the counts of every pixel format as they are, and those of whole bytes
 // without a copy; planes come back; an exception is the unit's, not the process's.
 func TestPythonSeesTheFrame(t *testing.T) {
+	t.Parallel()
 	h := open(t, pythonStage(t, looks))
 	stage := newStage(t, h.Factory(), `{"n":4}`)
 	for _, format := range raster.PixelFormats() {

@@ -43,6 +43,7 @@ func openLater(t *testing.T, s Settings) *Host {
 // A stage whose program does not start is down and holds, and whatever names it can be
 // built; once the program is there it starts, and what is built then runs it.
 func TestStageThatStartsLater(t *testing.T) {
+	t.Parallel()
 	s := settingsFor("probe")
 	s.Path, s.Args, s.Backoff = filepath.Join(t.TempDir(), "stage"), nil, 20*time.Millisecond
 	h := openLater(t, s)
@@ -90,6 +91,7 @@ func (h *Host) unknownFactory() pipeline.Factory {
 
 // A program that turns out to be another stage than it was listed as is not taken.
 func TestStageThatIsAnotherLater(t *testing.T) {
+	t.Parallel()
 	s := settingsFor("sums")
 	s.Path, s.Args, s.Backoff = filepath.Join(t.TempDir(), "stage"), nil, 20*time.Millisecond
 	h := openLater(t, s)
@@ -102,6 +104,7 @@ func TestStageThatIsAnotherLater(t *testing.T) {
 // A stage that is down because its budget is spent comes back after the cool-down, with
 // its whole budget.
 func TestCoolDown(t *testing.T) {
+	t.Parallel()
 	s := settingsFor("hostile", "panic")
 	s.RestartBudget, s.Backoff, s.CoolDown = 1, time.Millisecond, 400*time.Millisecond
 	h := open(t, s)
@@ -123,6 +126,7 @@ func TestCoolDown(t *testing.T) {
 // A mended program is taken as soon as it is there, in another version too; what was built
 // for the one before asks to be built anew.
 func TestMendedProgram(t *testing.T) {
+	t.Parallel()
 	dir := t.TempDir()
 	s := settingsFor("probe")
 	s.Path, s.Args, s.RestartBudget = filepath.Join(dir, "stage"), nil, 0

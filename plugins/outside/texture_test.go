@@ -17,6 +17,16 @@ import (
 
 var update = flag.Bool("update", false, "rewrite the demo frames")
 
+// TestTexture shares one process: a Python program takes its time to start.
+func TestTexture(t *testing.T) {
+	t.Parallel()
+	h := texture(t)
+	for name, test := range map[string]func(*testing.T, *Host){"of a wave": textureOfAWave, "orange peel": textureMarksOrangePeel,
+		"conforms": textureConforms, "holds": textureHoldsWhatItCannotSee} {
+		t.Run(name, func(t *testing.T) { test(t, h) })
+	}
+}
+
 func texture(t *testing.T) *Host {
 	t.Helper()
 	s := pythonStage(t, "")
@@ -44,8 +54,8 @@ const textureSettings = `{"tile_px":128,"lay_min_um":40,"lay_max_um":250,"peel_m
 
 // A plane wave A·cos(k·r) has the root mean square A/√2 and one direction; counts are in
 // sixteenths of a DN here. Waves of one band do not show in the other.
-func TestTextureOfAWave(t *testing.T) {
-	stage := newStage(t, texture(t).Factory(), textureSettings)
+func textureOfAWave(t *testing.T, h *Host) {
+	stage := newStage(t, h.Factory(), textureSettings)
 	wave := func(amplitude, wavelengthUM, angleDeg float64) func(x, y float64) float64 {
 		s, c := math.Sincos(angleDeg * math.Pi / 180) // the lines run along this angle
 		return func(x, y float64) float64 {
@@ -98,7 +108,7 @@ func demoPeel() *pipeline.Item {
 
 // Where orange peel passes its limit there is one stain, in the right third; the demo
 // frame is that surface.
-func TestTextureMarksOrangePeel(t *testing.T) {
+func textureMarksOrangePeel(t *testing.T, h *Host) {
 	item := demoPeel()
 	const file = "demo/texture.png"
 	if *update {
@@ -119,7 +129,7 @@ func TestTextureMarksOrangePeel(t *testing.T) {
 		t.Fatal(err)
 	}
 	item.Frames[0].Raw = raw
-	stage := newStage(t, texture(t).Factory(), strings.Replace(textureSettings, `"max_peel_percent":0`, `"max_peel_percent":2`, 1))
+	stage := newStage(t, h.Factory(), strings.Replace(textureSettings, `"max_peel_percent":0`, `"max_peel_percent":2`, 1))
 	if err := stage.Run(context.Background(), item); err != nil {
 		t.Fatal(err)
 	}
@@ -134,8 +144,8 @@ func TestTextureMarksOrangePeel(t *testing.T) {
 	}
 }
 
-func TestTextureConforms(t *testing.T) {
-	f := texture(t).Factory()
+func textureConforms(t *testing.T, h *Host) {
+	f := h.Factory()
 	stagetest.Run(t, f, func(raw raster.Raw) *pipeline.Item {
 		return &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}, Geometry: pipeline.Planar{UMPerPx: 10}}
 	})
@@ -151,10 +161,10 @@ func TestTextureConforms(t *testing.T) {
 }
 
 // The whole picture is a hold where nothing of the region could be looked at.
-func TestTextureHoldsWhatItCannotSee(t *testing.T) {
+func textureHoldsWhatItCannotSee(t *testing.T, h *Host) {
 	item := surface(1, func(x, y float64) float64 { return 0 })
 	item.Region = pipeline.NewRegion(512, 384, 0, 0, 0, []pipeline.Zone{{Name: "strip", Spans: []raster.Span{{Y: 3, X0: 0, X1: 512}}}})
-	if err := newStage(t, texture(t).Factory(), textureSettings).Run(context.Background(), item); err != nil {
+	if err := newStage(t, h.Factory(), textureSettings).Run(context.Background(), item); err != nil {
 		t.Fatal(err)
 	}
 	if len(item.Proofs) != 1 || item.Proofs[0].OK || !strings.Contains(item.Proofs[0].Reason, "texture was not inspected") {
