@@ -65,6 +65,9 @@ func pixelStatistics() pipeline.Factory {
 		})
 }
 
+// A frame of 12 megapixels.
+const benchWidth, benchHeight = 4000, 3000
+
 // sparse is how many pixels a stage skips whose calls are compared for their transport.
 const sparse = 64
 
@@ -79,12 +82,17 @@ func benchOutside(o options) (map[string]figure, error) {
 	if err != nil {
 		return nil, err
 	}
-	sharedHost, err := hosted(false)
+	arena, err := outside.NewArena(benchWidth * benchHeight)
+	if err != nil {
+		return nil, err
+	}
+	defer arena.Close()
+	sharedHost, err := hosted(false, arena)
 	if err != nil {
 		return nil, err
 	}
 	defer sharedHost.Close()
-	bytesHost, err := hosted(true)
+	bytesHost, err := hosted(true, nil)
 	if err != nil {
 		return nil, err
 	}
@@ -100,7 +108,8 @@ func benchOutside(o options) (map[string]figure, error) {
 		}
 		stages = append(stages, stage)
 	}
-	ms, err := bests(repeats, stages...)
+	raw := raster.Raw{Format: raster.Mono8, Width: benchWidth, Height: benchHeight, Stride: benchWidth, Data: arena.Allocate(benchWidth * benchHeight)}
+	ms, err := bests(raw, repeats, stages...)
 	if err != nil {
 		return nil, err
 	}
@@ -122,20 +131,19 @@ func statistics(f pipeline.Factory, every int) (pipeline.Stage, error) {
 	return stage, err
 }
 
-func hosted(bytesOnly bool) (*outside.Host, error) {
+func hosted(bytesOnly bool, frames *outside.Arena) (*outside.Host, error) {
 	s := outside.DefaultSettings()
 	self, err := os.Executable()
 	if err != nil {
 		return nil, err
 	}
-	s.Name, s.Path, s.Args, s.BytesOnly, s.RestartBudget = "pixel statistics", self, []string{serveWord}, bytesOnly, 1000
+	s.Name, s.Path, s.Args, s.BytesOnly, s.RestartBudget, s.Frames = "pixel statistics", self, []string{serveWord}, bytesOnly, 1000, frames
 	return outside.Open(context.Background(), s, slog.New(slog.NewTextHandler(io.Discard, nil)))
 }
 
 // bests runs the stages in turn, so that the machine's other work meets all alike, and
 // returns the shortest time of each in ms.
-func bests(repeats int, stages ...pipeline.Stage) ([]float64, error) {
-	raw := raster.NewRaw(raster.Mono8, 4000, 3000)
+func bests(raw raster.Raw, repeats int, stages ...pipeline.Stage) ([]float64, error) {
 	for i := range raw.Data {
 		raw.Data[i] = byte(i * 7 % 251)
 	}

@@ -39,6 +39,7 @@ type serving struct {
 	book     *server.Book
 	keeper   *keeper
 	stages   *stageSet
+	frames   *outside.Arena // what frames are received in; nil = no stage outside reads any
 	grpc     *grpc.Server
 	health   *health.Server
 	told     atomic.Pointer[health.Server] // health, once plug-ins can be told of there
@@ -62,7 +63,12 @@ func startServing(ctx context.Context, set configs.Server, log *slog.Logger) (*s
 
 func (s *serving) open(ctx context.Context) error {
 	var err error
-	if s.stages, err = openStages(ctx, s.settings.Plugins, s.log, outside.OpenLater, s.tellStage); err != nil {
+	if s.settings.Plugins != "" {
+		if s.frames, err = outside.NewArena(s.settings.MaxBytesInFlight); err != nil {
+			return err
+		}
+	}
+	if s.stages, err = openStages(ctx, s.settings.Plugins, s.log, s.openLater, s.tellStage); err != nil {
 		return err
 	}
 	if s.ledger, err = ledger.Open(ctx, s.settings.Ledger); err != nil {
@@ -86,7 +92,7 @@ func (s *serving) open(ctx context.Context) error {
 	s.startKeepingUp(ctx, again)
 	gate := &masters.Gate{Ledger: s.ledger, Started: time.Now(), Now: time.Now, Log: s.log}
 	s.intake, err = intake.New(intake.Settings{MaxBytesInFlight: s.settings.MaxBytesInFlight, MaxFrameBytes: s.settings.MaxFrameBytes,
-		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Keep: s.keeper.keep, Gate: gate,
+		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Keep: s.keeper.keep, Allocate: s.allocator(), Gate: gate,
 		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v); again.Recorded(v.Inspection) }}, s.book, s.ledger)
 	if err != nil {
 		return err
@@ -129,6 +135,20 @@ func (s *serving) keepUp(ctx context.Context, again *retest.Keeper) {
 		case <-time.After(keepUpEvery):
 		}
 	}
+}
+
+// openLater opens a stage outside that sees frames where they were received.
+func (s *serving) openLater(ctx context.Context, set outside.Settings, log *slog.Logger) (*outside.Host, error) {
+	set.Frames = s.frames
+	return outside.OpenLater(ctx, set, log)
+}
+
+// allocator is where frames are received; nil = Go's own memory.
+func (s *serving) allocator() func(int) []byte {
+	if s.frames == nil {
+		return nil
+	}
+	return s.frames.Allocate
 }
 
 // tellStage puts the state of a stage outside into the health service, as "stage." and

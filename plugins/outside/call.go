@@ -29,13 +29,16 @@ func (p *process) take(ctx context.Context) (*slot, error) {
 // giveBack ends a call. Nobody may look at the slot's memory any more.
 func (p *process) giveBack(s *slot) { p.slots <- s }
 
-// packer copies what a stage reads into the slot.
+// packer copies what a stage reads into the slot, unless it lies in the arena.
 func (p *process) packer(s *slot) stagepb.Pack {
 	if p.input == nil {
 		return stagepb.InMessage
 	}
 	used, mem := 0, p.input.slotAt(s.index)
 	return func(data []byte) (*stagepb.Pixels, error) {
+		if at, ok := p.set.Frames.offset(data); ok {
+			return shared(arenaPath, at, len(data), s.generation), nil
+		}
 		if len(data) > len(mem)-used {
 			return nil, pipeline.Invalid("what the stage reads of this item needs more than the %d MB of a slot; raise slot_mb", len(mem)>>20)
 		}

@@ -25,6 +25,7 @@ const (
 	// The memory files as the stage's process inherits them.
 	inputPath  = "/proc/self/fd/3"
 	outputPath = "/proc/self/fd/4"
+	arenaPath  = "/proc/self/fd/5"
 )
 
 func handshake() plugin.HandshakeConfig {

@@ -16,6 +16,7 @@ import (
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
 	"lapgate/plugins/builtin"
+	"lapgate/plugins/flatfield"
 	"lapgate/plugins/region"
 	"lapgate/plugins/stagetest"
 )
@@ -122,6 +123,44 @@ func TestBytesGiveTheSame(t *testing.T) {
 	runFactory(t, open(t, settingsFor("flatfield")).Factory(), b)
 	if len(a.Planes) == 0 || stagetest.Digest(a) != stagetest.Digest(b) {
 		t.Error("bytes and shared memory differ")
+	}
+}
+
+// A frame in the arena is sent without a copy: one that no slot could hold passes, and gives
+// what any other does. When the arena is full, frames lie elsewhere and pass too.
+func TestFramesInTheArena(t *testing.T) {
+	const side = 100
+	arena, err := NewArena(side * side)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer arena.Close()
+	s := settingsFor("flatfield")
+	s.Frames = arena
+	h := open(t, s)
+	narrow := settingsFor("probe")
+	narrow.Frames, narrow.SlotBytes = arena, 4096
+	probe := newStage(t, open(t, narrow).Factory(), "{}")
+	for i := range 3 {
+		raw := raster.NewRaw(raster.Mono8, side, side)
+		raw.Data = arena.Allocate(side * side)
+		copy(raw.Data, stagetest.Scene().Data)
+		if _, in := arena.offset(raw.Data[7:]); in != (i == 0) {
+			t.Errorf("frame %d: in the arena %v", i, in)
+		}
+		a, b := view(raw), view(raw)
+		runFactory(t, flatfield.Factory, a)
+		runFactory(t, h.Factory(), b)
+		for _, item := range []*pipeline.Item{a, b} {
+			_, _ = item.Raw()
+		}
+		if len(b.Planes) == 0 || stagetest.Digest(a) != stagetest.Digest(b) {
+			t.Errorf("frame %d: inside and outside differ", i)
+		}
+		item := &pipeline.Item{View: "ring", Frames: []pipeline.Frame{{Raw: raw}}}
+		if err := probe.Run(context.Background(), item); (err == nil) != (i == 0) {
+			t.Errorf("frame %d, slots of 4096 bytes: %v", i, err)
+		}
 	}
 }
 

@@ -76,6 +76,9 @@ func (p *process) start() error {
 	var extra []*os.File
 	if p.input != nil {
 		extra = []*os.File{p.input.file, p.output.file}
+		if p.set.Frames.bytes() > 0 {
+			extra = append(extra, p.set.Frames.ring.file)
+		}
 	}
 	p.launched = newLaunched(p.set, dir, extra)
 	limit := maxMessage
@@ -253,7 +256,7 @@ func (p *process) watchMemory() {
 			return
 		case <-tick.C:
 		}
-		frames := 2 * int64(p.set.MaxConcurrent) * p.set.SlotBytes
+		frames := 2*int64(p.set.MaxConcurrent)*p.set.SlotBytes + p.set.Frames.bytes()
 		if n := residentBytes(p.launched.cmd.Process.Pid, frames); n > p.set.MaxRSSBytes {
 			p.kill(fmt.Sprintf("its resident memory reached %d MB, allowed are %d MB; it was killed", n>>20, p.set.MaxRSSBytes>>20))
 			return

@@ -24,6 +24,7 @@ type Settings struct {
 	StartTimeout   time.Duration     // from launch to handshake
 	SlotBytes      int64             // shared memory for what one call reads, and as much for what it writes; taken as it is used
 	BytesOnly      bool              // pixels travel in messages
+	Frames         *Arena            // frames in it are not copied; nil = every frame is
 	MinRegionShare float64           // of the frame, for a region where there was none before
 	Changed        func(Status)      // told at every change of state; nil = nobody is
 
