@@ -51,7 +51,7 @@ var arrows = map[string][]string{
 	"server/study":              {"server/yield"},
 	"server/volume":             {"server/yield", "server/study", "server/volume/..."},
 	"server/volume/...":         {"server/yield", "server/volume/..."},
-	"server/alarm":              {"server/yield", "server/ledger", "pipeline/rules"},
+	"server/alarm":              {"pipeline", "server/yield", "server/ledger", "pipeline/rules"},
 	"server/export":             {"server/yield", "server/ledger", "pipeline/rules"},
 	"server/report":             {"pipeline", "pipeline/calibrate", "pipeline/calibrate/emva", "pipeline/calibrate/dots", "pipeline/raster", "pipeline/raster/files", "pipeline/limits", "server/yield", "server/study", "server/volume", "server/volume/..."},
 	"server/web":                {"proto/inspectpb"},

@@ -30,6 +30,9 @@ type Server struct {
 	MaxFrameBytes    int64  `yaml:"max_frame_bytes" help:"Bytes of one frame, at most. It cannot be 0."`
 	Workers          int    `yaml:"workers" help:"Frames worked on at once. 0 = as many as there are processors."`
 	ViewTimeoutMS    int    `yaml:"view_timeout_ms" help:"Milliseconds to wait for all views of a showing, where the recipe does not say; then the unit is held. It cannot be 0."`
+	DirtUnits        int    `yaml:"dirt_units" help:"Successive units of a station with a defect at the same place of a view's camera that raise the alarm \"dirt or hot pixel\"; as many without one clear it. 0 = no such alarm."`
+	DirtPx           int    `yaml:"dirt_px" help:"Pixels that such places may lie apart. It cannot be 0."`
+	HoldOnDirt       bool   `yaml:"hold_on_dirt" help:"Holds the units of a station while such an alarm is open. false = the alarm changes no verdict."`
 	LogLevel         string `yaml:"log_level" help:"What is logged: debug, info, warn or error, and what is worse. It cannot be empty."`
 	LogFormat        string `yaml:"log_format" help:"How it is logged: json (one object a line) or text (for a person at a terminal). It cannot be empty."`
 	Development      bool   `yaml:"development" help:"Lets every good recipe judge as soon as it is saved, without approval; not for units that ship. false = a second person approves each recipe."`
@@ -43,7 +46,7 @@ type Server struct {
 func DefaultServer() Server {
 	return Server{
 		Listen: "127.0.0.1:7391", Ledger: "lapgate.db", Recipes: "recipes", Calibrations: "calibrations", Images: "images", KeepImages: "rejects_and_holds", ImagesQuotaBytes: 100 << 30,
-		MaxBytesInFlight: 1 << 30, MaxFrameBytes: 128 << 20, ViewTimeoutMS: 2000, LogLevel: "info", LogFormat: "json", Reflection: true, ShutdownGraceMS: 5000,
+		MaxBytesInFlight: 1 << 30, MaxFrameBytes: 128 << 20, ViewTimeoutMS: 2000, DirtUnits: 5, DirtPx: 3, LogLevel: "info", LogFormat: "json", Reflection: true, ShutdownGraceMS: 5000,
 	}
 }
 
@@ -74,6 +77,9 @@ func (s Server) check() []Problem {
 	wrong(s.MaxBytesInFlight < max(s.MaxFrameBytes, 1), "max_bytes_in_flight", s.MaxBytesInFlight, fmt.Sprintf("max_frame_bytes (%d) or more", s.MaxFrameBytes))
 	wrong(s.Workers < 0 || s.Workers > 1024, "workers", s.Workers, "0 to 1024")
 	wrong(s.ViewTimeoutMS < 1 || s.ViewTimeoutMS > 3_600_000, "view_timeout_ms", s.ViewTimeoutMS, "1 to 3600000")
+	wrong(s.DirtUnits < 0 || s.DirtUnits == 1 || s.DirtUnits > 1000, "dirt_units", s.DirtUnits, "0 (no alarm) or 2 to 1000")
+	wrong(s.DirtPx < 1 || s.DirtPx > 1000, "dirt_px", s.DirtPx, "1 to 1000")
+	wrong(s.HoldOnDirt && s.DirtUnits == 0, "hold_on_dirt", s.HoldOnDirt, "false while dirt_units is 0")
 	wrong(s.ShutdownGraceMS < 0 || s.ShutdownGraceMS > 3_600_000, "shutdown_grace_ms", s.ShutdownGraceMS, "0 to 3600000")
 	wrong(!slices.Contains(logLevels(), s.LogLevel), "log_level", strconv.Quote(s.LogLevel), "one of "+strings.Join(logLevels(), ", "))
 	wrong(!slices.Contains(logFormats(), s.LogFormat), "log_format", strconv.Quote(s.LogFormat), "one of "+strings.Join(logFormats(), ", "))

@@ -22,6 +22,7 @@ import (
 	"lapgate/plugins/builtin"
 	"lapgate/proto/inspectpb"
 	"lapgate/server"
+	"lapgate/server/alarm"
 	"lapgate/server/images"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
@@ -72,9 +73,10 @@ type rigOptions struct {
 	approval bool   // only approved recipes judge
 	people   []configs.Person
 	clock    *clock // nil = the real one
+	alarms   alarm.Settings
 	// calibrations by view; nil = the recipe needs none
 	calibrations map[string]*pipeline.Calibration
-	images   *images.Store
+	images       *images.Store
 }
 
 func (o rigOptions) keep() func(pipeline.Verdict, []pipeline.Frame, func()) []string {
@@ -153,15 +155,21 @@ func (r *rig) save(text string) string {
 func (r *rig) serve(o rigOptions) {
 	t, feed, stations := r.t, server.NewFeed(), server.NewStations()
 	gate := &masters.Gate{Ledger: r.ledger, Started: o.clock.now(), Now: o.clock.now, Log: quiet()}
+	watch := &alarm.Watch{Ledger: r.ledger, Inner: gate, Now: o.clock.now, Log: quiet(), Settings: o.alarms}
 	again := &retest.Keeper{Ledger: r.ledger, Decode: r.decode, Log: quiet()}
 	var err error
 	r.intake, err = intake.New(intake.Settings{MaxBytesInFlight: o.maxBytes, MaxFrameBytes: 1 << 20, Workers: max(o.workers, 2),
-		ViewTimeout: time.Second, Now: o.clock.now, Log: quiet(), Gate: gate,
-		Keep: o.keep(), Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v); again.Recorded(v.Inspection) }}, r.book, r.ledger)
+		ViewTimeout: time.Second, Now: o.clock.now, Log: quiet(), Gate: watch,
+		Keep: o.keep(), Recorded: func(v intake.Verdict) {
+			watch.Recorded(v.Inspection)
+			feed.Send(v)
+			stations.Inspected(v)
+			again.Recorded(v.Inspection)
+		}}, r.book, r.ledger)
 	must(t, err)
 	g, _ := server.NewGRPC(server.Deps{Intake: r.intake, Ledger: r.ledger, Book: r.book, Feed: feed, Log: quiet(), Now: o.clock.now,
 		Check: func(file string, text []byte) error { _, err := r.decode(file, text); return err },
-		Gate:  gate, Stations: stations, People: server.People{List: o.people}, Retest: again},
+		Gate:  gate, Stations: stations, People: server.People{List: o.people}, Retest: again, Alarms: watch},
 		server.GRPCOptions{MaxMessageBytes: 16 << 20, MaxStreams: 64, Reflection: true})
 	l, err := net.Listen("tcp", "127.0.0.1:0")
 	must(t, err)

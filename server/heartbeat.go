@@ -38,8 +38,12 @@ func (s *Inspection) ListStations(ctx context.Context, _ *inspectpb.ListStations
 	out := &inspectpb.ListStationsResponse{ServerTime: inspectpb.FromTime(s.deps.Now()), OutsideStages: s.deps.outsideStages()}
 	for _, at := range s.deps.Stations.list() {
 		why := all[at.place]
-		out.Stations = append(out.Stations, &inspectpb.Station{Line: at.line, Station: at.station, Heartbeat: inspectpb.FromTime(at.heartbeat),
-			Inspection: inspectpb.FromTime(at.inspection), State: stationState(why), Because: why})
+		row := &inspectpb.Station{Line: at.line, Station: at.station, Heartbeat: inspectpb.FromTime(at.heartbeat),
+			Inspection: inspectpb.FromTime(at.inspection), State: stationState(why), Because: why}
+		if row.Alarms, row.Warnings, err = s.deps.troubles(ctx, at.place); err != nil {
+			return nil, inspectpb.ToStatus(err)
+		}
+		out.Stations = append(out.Stations, row)
 	}
 	return out, nil
 }

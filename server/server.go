@@ -17,6 +17,7 @@ import (
 	"google.golang.org/grpc/status"
 
 	"lapgate/proto/inspectpb"
+	"lapgate/server/alarm"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
 	"lapgate/server/masters"
@@ -39,6 +40,8 @@ type Deps struct {
 	People   People
 	// Retest registers the showings of a unit; nil = none are.
 	Retest *retest.Keeper
+	// Alarms watches stations over many units; nil = nothing does.
+	Alarms *alarm.Watch
 	// OutsideStages returns the stages in processes of their own; nil = there are none.
 	OutsideStages func() []OutsideStage
 }
@@ -68,6 +71,10 @@ type GRPCOptions struct {
 	Reflection      bool // let clients list the services
 }
 
+// readBytes is what is read from a connection at once: frames come in chunks of just under
+// 1 MiB. The windows of HTTP/2 are left to gRPC, which measures what the connection bears.
+const readBytes = 256 << 10
+
 // NewGRPC returns a gRPC server with all services, standard health and, if wanted,
 // reflection. A panic in a call is logged with its stack and answered as Internal.
 func NewGRPC(d Deps, o GRPCOptions) (*grpc.Server, *health.Server) {
@@ -78,6 +85,7 @@ func NewGRPC(d Deps, o GRPCOptions) (*grpc.Server, *health.Server) {
 	g := grpc.NewServer(
 		grpc.ForceServerCodecV2(inspectpb.Codec{}), // pixels are copied once, to where they stay
 		grpc.MaxRecvMsgSize(o.MaxMessageBytes),
+		grpc.ReadBufferSize(readBytes),
 		grpc.MaxConcurrentStreams(uint32(o.MaxStreams)),
 		grpc.KeepaliveEnforcementPolicy(keepalive.EnforcementPolicy{MinTime: 10 * time.Second, PermitWithoutStream: true}),
 		grpc.ChainUnaryInterceptor(recovery.UnaryServerInterceptor(onPanic)),

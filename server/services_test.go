@@ -207,7 +207,8 @@ func TestWatch(t *testing.T) {
 	defer cancel()
 	w, err := r.yield.Watch(ctx, &inspectpb.WatchRequest{Filter: &inspectpb.Filter{Line: "B"}})
 	must(t, err)
-	time.Sleep(100 * time.Millisecond) // the call has to arrive first
+	_, err = w.Header() // the call has to arrive first
+	must(t, err)
 	r.feed(2, "A")
 	r.feed(2, "B")
 	for range 2 {

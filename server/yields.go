@@ -227,6 +227,9 @@ func (s *Yield) Watch(req *inspectpb.WatchRequest, stream grpc.ServerStreamingSe
 	}
 	w, stop := s.deps.Feed.watch()
 	defer stop()
+	if err := stream.SendHeader(nil); err != nil { // from here on nothing is missed
+		return err
+	}
 	for {
 		select {
 		case <-stream.Context().Done():
@@ -238,7 +241,8 @@ func (s *Yield) Watch(req *inspectpb.WatchRequest, stream grpc.ServerStreamingSe
 			if !picks(f, v.Inspection) {
 				continue
 			}
-			err := stream.Send(&inspectpb.WatchResponse{Unit: unitRow(v.Inspection), Missed: int32(s.deps.Feed.takeMissed(w))})
+			err := stream.Send(&inspectpb.WatchResponse{Unit: unitRow(v.Inspection), Missed: int32(s.deps.Feed.takeMissed(w)),
+				Alarms: alarms(s.deps.Alarms.By(v.ID))})
 			if err != nil {
 				return err
 			}

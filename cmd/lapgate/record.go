@@ -120,6 +120,7 @@ type rowOf struct {
 	LatencyMS float64          `json:"latency_ms"`
 	Recipe    string           `json:"recipe"`
 	Missed    int32            `json:"missed,omitempty"` // inspections not shown before this one
+	Alarms    []alarmOf        `json:"alarms,omitempty"` // that it raised or cleared
 }
 
 func newRow(r *inspectpb.UnitRow) (rowOf, error) {

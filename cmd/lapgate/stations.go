@@ -20,6 +20,8 @@ type stationOf struct {
 	Inspection *time.Time `json:"inspection"`
 	State      string     `json:"state"` // ok or holding
 	Because    []string   `json:"because"`
+	Alarms     []string   `json:"alarms"`   // open ones
+	Warnings   []string   `json:"warnings"` // readings that drift
 }
 
 func stationsCommand() *cobra.Command {
@@ -51,15 +53,15 @@ func stationsCommand() *cobra.Command {
 func stationsDisplay(r *inspectpb.ListStationsResponse) (display, error) {
 	now := r.GetServerTime().AsTime()
 	list := []stationOf{}
-	d := display{head: []string{"line", "station", "heartbeat", "inspection", "state", "because"}}
+	d := display{head: []string{"line", "station", "heartbeat", "inspection", "state", "because", "alarms", "warnings"}}
 	for _, s := range r.GetStations() {
 		state, err := inspectpb.ToStationState(s.GetState())
 		if err != nil {
 			return d, err
 		}
-		one := stationOf{s.GetLine(), s.GetStation(), timeOf(s.GetHeartbeat()), timeOf(s.GetInspection()), state, orEmpty(s.GetBecause())}
+		one := stationOf{s.GetLine(), s.GetStation(), timeOf(s.GetHeartbeat()), timeOf(s.GetInspection()), state, orEmpty(s.GetBecause()), orEmpty(s.GetAlarms()), orEmpty(s.GetWarnings())}
 		list = append(list, one)
-		end := []string{one.State, strings.Join(one.Because, "; ")}
+		end := []string{one.State, strings.Join(one.Because, "; "), strings.Join(one.Alarms, "; "), strings.Join(one.Warnings, "; ")}
 		d.rows = append(d.rows, join([]string{one.Line, one.Station, zulu(one.Heartbeat), zulu(one.Inspection)}, end))
 		d.forEye = append(d.forEye, join([]string{one.Line, one.Station, ago(one.Heartbeat, now), ago(one.Inspection, now)}, end))
 	}
@@ -70,7 +72,7 @@ func stationsDisplay(r *inspectpb.ListStationsResponse) (display, error) {
 			d.after = append(d.after, fmt.Sprintf("stage %s is %s (%s), units that need it are held: %s", s.Type, s.State, ago(s.Since, now), s.Cause))
 		}
 	}
-	return d.withEyeHead([]string{"line", "station", "last heartbeat", "last inspection", "state", "because"}), nil
+	return d.withEyeHead([]string{"line", "station", "last heartbeat", "last inspection", "state", "because", "alarms", "warnings"}), nil
 }
 
 // stageOf is a stage in a process of its own.

@@ -59,6 +59,7 @@ func watchAll(stream grpc.ServerStreamingClient[inspectpb.WatchResponse], w io.W
 			return err
 		}
 		row.Missed = r.GetMissed()
+		row.Alarms = newAlarms(r.GetAlarms())
 		if err := printRow(w, row, asJSON); err != nil {
 			return err
 		}
@@ -73,6 +74,9 @@ func printRow(w io.Writer, row rowOf, asJSON bool) error {
 		}
 		_, err = w.Write(append(text, '\n'))
 		return err
+	}
+	for _, a := range row.Alarms {
+		fmt.Fprintf(w, "%s  alarm  line %s  station %s  %s: %s\n", whenOf(row.Judged), a.Line, a.Station, a.standing(), a.Text)
 	}
 	if row.Missed > 0 {
 		fmt.Fprintf(w, "(%d inspections missed)\n", row.Missed)

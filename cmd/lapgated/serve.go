@@ -100,6 +100,7 @@ func waiting(old, now configs.Server) []string {
 		{"calibrations", old.Calibrations != now.Calibrations}, {"images", old.Images != now.Images},
 		{"max_frame_bytes", old.MaxFrameBytes != now.MaxFrameBytes}, {"workers", old.Workers != now.Workers},
 		{"plugins", old.Plugins != now.Plugins}, {"development", old.Development != now.Development}, {"log_format", old.LogFormat != now.LogFormat},
+		{"dirt_units", old.DirtUnits != now.DirtUnits}, {"dirt_px", old.DirtPx != now.DirtPx}, {"hold_on_dirt", old.HoldOnDirt != now.HoldOnDirt},
 		{"people", old.People != now.People}, {"reflection", old.Reflection != now.Reflection},
 	} {
 		if f.different {

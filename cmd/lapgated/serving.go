@@ -20,6 +20,7 @@ import (
 	"lapgate/pipeline"
 	"lapgate/plugins/outside"
 	"lapgate/server"
+	"lapgate/server/alarm"
 	"lapgate/server/images"
 	"lapgate/server/intake"
 	"lapgate/server/ledger"
@@ -91,9 +92,16 @@ func (s *serving) open(ctx context.Context) error {
 	again := &retest.Keeper{Ledger: s.ledger, Decode: decode, Log: s.log}
 	s.startKeepingUp(ctx, again)
 	gate := &masters.Gate{Ledger: s.ledger, Started: time.Now(), Now: time.Now, Log: s.log}
+	watch := &alarm.Watch{Ledger: s.ledger, Inner: gate, Now: time.Now, Log: s.log, Settings: alarm.Settings{Units: s.settings.DirtUnits,
+		TolerancePx: float64(s.settings.DirtPx), Hold: s.settings.HoldOnDirt, DriftEvery: driftEvery}}
 	s.intake, err = intake.New(intake.Settings{MaxBytesInFlight: s.settings.MaxBytesInFlight, MaxFrameBytes: s.settings.MaxFrameBytes,
-		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Keep: s.keeper.keep, Allocate: s.allocator(), Gate: gate,
-		Recorded: func(v intake.Verdict) { feed.Send(v); stations.Inspected(v); again.Recorded(v.Inspection) }}, s.book, s.ledger)
+		Workers: workers(s.settings), ViewTimeout: viewTimeout(s.settings), Log: s.log, Keep: s.keeper.keep, Allocate: s.allocator(), Gate: watch,
+		Recorded: func(v intake.Verdict) {
+			watch.Recorded(v.Inspection)
+			feed.Send(v)
+			stations.Inspected(v)
+			again.Recorded(v.Inspection)
+		}}, s.book, s.ledger)
 	if err != nil {
 		return err
 	}
@@ -102,7 +110,7 @@ func (s *serving) open(ctx context.Context) error {
 	}
 	s.grpc, s.health = server.NewGRPC(server.Deps{Intake: s.intake, Ledger: s.ledger, Book: s.book, Feed: feed, Log: s.log, Now: time.Now,
 		Check: func(file string, text []byte) error { _, err := decode(file, text); return err },
-		Gate:  gate, Stations: stations, People: server.People{List: people}, Retest: again, OutsideStages: s.stages.states},
+		Gate:  gate, Stations: stations, People: server.People{List: people}, Retest: again, Alarms: watch, OutsideStages: s.stages.states},
 		server.GRPCOptions{MaxMessageBytes: int(min(s.settings.MaxBytesInFlight, 1<<30)), MaxStreams: maxStreams, Reflection: s.settings.Reflection})
 	s.told.Store(s.health)
 	for _, h := range s.stages.hosts {
@@ -111,6 +119,9 @@ func (s *serving) open(ctx context.Context) error {
 	s.listener, err = net.Listen("tcp", s.settings.Listen)
 	return err
 }
+
+// driftEvery is how old an answer about the drift of a station may be.
+const driftEvery = 10 * time.Second
 
 // keepUpEvery is how often showings that wait to be held against the one before are.
 const keepUpEvery = 5 * time.Second

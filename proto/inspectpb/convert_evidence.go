@@ -79,6 +79,12 @@ func toCoverage(c *Coverage) pipeline.Coverage {
 		SaturatedPx: int(c.GetSaturatedPx()), MaskedPx: int(c.GetMaskedPx())}
 }
 
+// FromProof encodes a proof.
+func FromProof(p pipeline.Proof) *Proof { return fromProof(p) }
+
+// ToProof decodes a proof.
+func ToProof(p *Proof) pipeline.Proof { return toProof(p) }
+
 func fromProof(p pipeline.Proof) *Proof {
 	return &Proof{Name: p.Name, Value: p.Value, Low: p.Low, High: p.High, Unit: p.Unit, Ok: p.OK, Reason: p.Reason,
 		WarnLow: p.WarnLow, WarnHigh: p.WarnHigh, Warning: p.Warning}
