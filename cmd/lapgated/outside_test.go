@@ -265,7 +265,7 @@ func TestTryWritesPictures(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		if img, err := png.Decode(f); err != nil || img.Bounds().Dx() != 64 {
+		if img, err := png.Decode(f); err != nil || img.Bounds().Dx() != 8*64 {
 			t.Errorf("%s: %v", file, err)
 		}
 		f.Close()

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io"
 	"maps"
 	"os"
 	"path/filepath"
@@ -37,7 +38,8 @@ func (a *app) tryCommand() *cobra.Command {
 		Use:   "try TYPE FRAME ... [--with KEY=VALUE ...]",
 		Short: "Run one stage on a frame, after the stages it reads from, and write what it made as pictures",
 		Long: "Run one stage on a frame (or the frames of a sequence), after the stages that write what it reads, with their defaults.\n" +
-			"Each plane that the stage made becomes a PNG, stretched between its 0.5 and 99.9 percentile; overlay.png shows region and defects.",
+			"Each plane that the stage made becomes a PNG, stretched between its 0.5 and 99.9 percentile, with a key below; small ones are enlarged.\n" +
+			"overlay.png shows region and defects on the frame, or on the stage's first plane where the view is a sequence.",
 		Args: cobra.MinimumNArgs(2),
 		RunE: func(cmd *cobra.Command, args []string) error { return a.try(cmd.Context(), f, args[0], args[1:]) },
 	}
@@ -82,7 +84,11 @@ func (a *app) try(ctx context.Context, f tryFlags, typ string, frames []string) 
 			return pipeline.Invalid("stage %s: %s: %s", failed.Stage, failed.Reason, failed.Detail)
 		}
 	}
-	written, err := f.pictures(results[0].Item, e)
+	factory, err := set.current().Factory(typ)
+	if err != nil {
+		return err
+	}
+	written, err := f.pictures(results[0].Item, e, factory)
 	if err != nil {
 		return err
 	}
@@ -156,30 +162,47 @@ func needed(cat *pipeline.Catalogue, f pipeline.Factory) []string {
 }
 
 // pictures writes every plane and the overlay and returns the files.
-func (f tryFlags) pictures(item *pipeline.Item, e pipeline.Evidence) ([]string, error) {
+func (f tryFlags) pictures(item *pipeline.Item, e pipeline.Evidence, stage pipeline.Factory) ([]string, error) {
 	if err := os.MkdirAll(f.dir, 0o755); err != nil {
 		return nil, err
 	}
 	var written []string
-	write := func(name string, v report.OverlayView) error {
+	create := func(name string, write func(io.Writer) error) error {
 		path := filepath.Join(f.dir, name+".png")
 		out, err := os.Create(path)
 		if err != nil {
 			return err
 		}
 		written = append(written, path)
-		return errors.Join(report.WriteOverlay(out, []report.OverlayView{v}), out.Close())
+		return errors.Join(write(out), out.Close())
 	}
 	for _, name := range slices.Sorted(maps.Keys(item.Planes)) {
-		if err := write(name, report.OverlayView{Name: name, Frame: item.Planes[name].Pixels}); err != nil {
+		if err := create(name, func(w io.Writer) error { return writePlane(w, name, item.Planes[name]) }); err != nil {
 			return nil, err
 		}
 	}
-	frame, err := item.Raw()
+	name, picture, err := background(item, stage)
 	if err != nil {
 		return nil, err
 	}
-	return written, write("overlay", report.OverlayView{Name: item.View, Frame: frame, Region: fitting(item.Region, frame), Defects: e.Defects})
+	k := enlargement(picture.Width, picture.Height)
+	v := report.OverlayView{Name: name, Frame: enlarged(picture, k), Region: enlargedRegion(fitting(item.Region, picture), k), Defects: enlargedDefects(e.Defects, k)}
+	return written, create("overlay", func(w io.Writer) error { return report.WriteOverlay(w, []report.OverlayView{v}) })
+}
+
+// background is what region and defects are drawn on: the frame, or, of a sequence, whose
+// frames show little by themselves, the first plane of its size that the stage says it writes.
+func background(item *pipeline.Item, stage pipeline.Factory) (string, *raster.Plane, error) {
+	frame, err := item.Raw()
+	if err != nil || len(item.Frames) == 1 {
+		return item.View, frame, err
+	}
+	for _, name := range stage.Writes {
+		if p, ok := item.Planes[name]; ok && p.Step == 1 && p.Pixels.SameSize(frame) {
+			return name, p.Pixels, nil
+		}
+	}
+	return item.View, frame, nil
 }
 
 // fitting returns a region that has the size of the frame; nil otherwise.

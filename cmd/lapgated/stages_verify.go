@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"path/filepath"
 	"slices"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -19,6 +20,7 @@ import (
 type verifyFlags struct {
 	args   []string
 	with   []string
+	env    []string
 	frames int
 	asJSON bool
 }
@@ -33,6 +35,7 @@ func (a *app) verifyCommand() *cobra.Command {
 	}
 	cmd.Flags().StringArrayVar(&f.args, "arg", nil, "an argument for the program; repeat")
 	cmd.Flags().StringArrayVar(&f.with, "with", nil, "KEY=VALUE, a setting instead of its default; repeat")
+	cmd.Flags().StringArrayVar(&f.env, "env", nil, "KEY=VALUE in the program's environment; repeat")
 	cmd.Flags().IntVar(&f.frames, "frames", 1, "frames in the view that the stage gets")
 	cmd.Flags().BoolVar(&f.asJSON, "json", false, "one JSON document on stdout")
 	return cmd
@@ -41,6 +44,14 @@ func (a *app) verifyCommand() *cobra.Command {
 func (a *app) verify(ctx context.Context, path string, flags verifyFlags) error {
 	set := outside.DefaultSettings()
 	set.Name, set.Path, set.Args = filepath.Base(path), path, flags.args
+	set.Env = map[string]string{}
+	for _, e := range flags.env {
+		key, value, ok := strings.Cut(e, "=")
+		if !ok {
+			return usageError{fmt.Errorf("--env: got %q, want KEY=VALUE", e)}
+		}
+		set.Env[key] = value
+	}
 	h, err := outside.Open(ctx, set, a.quiet())
 	if err != nil {
 		return err

@@ -100,6 +100,7 @@ def run(item, s):
     if f.flat[0] == 13:
         raise ValueError("thirteen")
     item.write("doubled", 2.0 * f, "DN")
+    item.measure("um_per_px", item.um_per_px)
     item.measure("region_px", -1 if item.region is None else item.region.sum())
     item.prove("level", f.mean(), 0, 1e9, "DN")
 
@@ -138,6 +139,15 @@ func TestPythonSeesTheFrame(t *testing.T) {
 		if err != nil || plane.At(12, 4) != 2*float32(counts[64]) || len(item.Proofs) != 1 || !item.Proofs[0].OK {
 			t.Errorf("%s: plane %v, %v, proofs %+v", format, plane, err, item.Proofs)
 		}
+	}
+	ring := tiny(1)
+	ring.Geometry = pipeline.Annulus{CentreX: 11.5, CentreY: 7.5, InnerPx: 3, OuterPx: 7, InnerUM: 40, OuterUM: 60, SlantUM: 50}
+	if err := stage.Run(context.Background(), ring); err != nil {
+		t.Fatal(err)
+	}
+	_, _, want := ring.Geometry.ToStation(11.5+5, 7.5)
+	if got, _ := ring.Number("um_per_px"); math.Abs(got-want) > 1e-12 {
+		t.Errorf("scale of a ring: %g, want %g", got, want)
 	}
 	err := stage.Run(context.Background(), tiny(13))
 	if err == nil || !strings.Contains(err.Error(), "ValueError: thirteen") || h.Status().Restarts != 0 {

@@ -143,8 +143,12 @@ class Item:
 
     @property
     def um_per_px(self):
-        """µm that a pixel covers at the middle of the view; 0 = not known."""
-        return self.message.geometry.planar.um_per_px
+        """µm that a pixel covers at the middle of the view, or of its ring; 0 = not known."""
+        if not self.message.geometry.HasField("annulus"):
+            return self.message.geometry.planar.um_per_px
+        a = self.message.geometry.annulus  # √(along · across) of the middle, as in areas
+        around = (a.inner_um + a.outer_um) / (a.inner_px + a.outer_px)
+        return float(np.sqrt(around * a.slant_um / (a.outer_px - a.inner_px)))
 
     @property
     def region(self):
