@@ -37,6 +37,7 @@ func serveHostile(args []string) {
 	case "sleeps":
 		time.Sleep(time.Minute)
 	case "child":
+		keepFromChildren()
 		if err := exec.Command("/bin/sleep", "300").Start(); err != nil {
 			panic(err)
 		}

@@ -9,12 +9,15 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
+
+	"golang.org/x/sys/unix"
 )
 
 // hostForTest hosts a stage until it is killed. It prints how the stage is bound to it.
 func hostForTest(args []string) {
 	set := settingsFor(args[1:]...)
 	set.noNamespace = args[0] == "signal"
+	set.Frames, _ = NewArena(1 << 20)
 	h, err := Open(context.Background(), set, nil)
 	if err != nil {
 		fmt.Println(err)
@@ -47,8 +50,9 @@ func TestKilledHost(t *testing.T) {
 				t.Fatalf("got %q, %v", line, err)
 			}
 			wantDirect, all := 1, descendants(host.Process.Pid)
-			if len(all) != 2 || memoryFiles(all) == 0 {
-				t.Errorf("processes %v with %d memory files, want the stage and its child", all, memoryFiles(all))
+			memory := memoryFiles(host.Process.Pid)
+			if len(all) != 2 || len(memory) != 3 || len(memoryFiles(all[0])) != 3 {
+				t.Errorf("processes %v, memory files %v of the host and %v of the stage; want the stage and its child, and input, output and frames", all, memory, memoryFiles(all[0]))
 			}
 			if strings.Contains(line, "its own PID namespace") {
 				wantDirect = 2
@@ -58,6 +62,7 @@ func TestKilledHost(t *testing.T) {
 			host.Process.Kill()
 			host.Wait()
 			eventually(t, "the stage's processes are gone", func() bool { return len(all) == 0 || countGone(all[:wantDirect]) == wantDirect })
+			eventually(t, "nobody has the memory files open", func() bool { return !heldBy(memory) })
 			for _, pid := range all[wantDirect:] { // the child that only a namespace reaches
 				if p, err := os.FindProcess(pid); err == nil {
 					p.Kill()
@@ -86,18 +91,32 @@ func descendants(pid int) []int {
 	return out
 }
 
-// memoryFiles counts the memory files that processes have open.
-func memoryFiles(pids []int) int {
-	n := 0
-	for _, pid := range pids {
-		files, _ := filepath.Glob(fmt.Sprintf("/proc/%d/fd/*", pid))
-		for _, f := range files {
-			if to, _ := os.Readlink(f); strings.HasPrefix(to, "/memfd:lapgate") {
-				n++
+// memoryFiles returns the memory files that a process has open, by inode.
+func memoryFiles(pid int) map[uint64]bool {
+	out := map[uint64]bool{}
+	files, _ := filepath.Glob(fmt.Sprintf("/proc/%d/fd/*", pid))
+	for _, f := range files {
+		var info unix.Stat_t
+		if to, _ := os.Readlink(f); strings.HasPrefix(to, "/memfd:lapgate") && unix.Stat(f, &info) == nil {
+			out[info.Ino] = true
+		}
+	}
+	return out
+}
+
+// heldBy reports whether any process has one of the memory files open.
+func heldBy(memory map[uint64]bool) bool {
+	pids, _ := filepath.Glob("/proc/[0-9]*")
+	for _, p := range pids {
+		var pid int
+		fmt.Sscan(filepath.Base(p), &pid)
+		for inode := range memoryFiles(pid) {
+			if memory[inode] {
+				return true
 			}
 		}
 	}
-	return n
+	return false
 }
 
 func countGone(pids []int) int {

@@ -17,6 +17,7 @@ import (
 // all that main does; it does not return. The stage is the one that runs inside, with
 // the same factory; what it prints on stderr is its log.
 func Serve(factory pipeline.Factory) {
+	keepFromChildren()
 	s, err := newService(factory)
 	if err != nil {
 		fmt.Fprintf(os.Stderr, "stage %s cannot be served: %v\n", factory.Type, err)
