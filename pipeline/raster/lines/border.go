@@ -6,34 +6,10 @@ import (
 	"lapgate/pipeline/raster"
 )
 
-// border knows which pixels lie in the region.
+// border is the region of a picture of some size.
 type border struct {
-	spans []raster.Span
-	start []int // of each row
-	width int
-}
-
-func newBorder(region []raster.Span, width, height int) border {
-	b := border{spans: region, start: make([]int, height+1), width: width}
-	for _, s := range region {
-		b.start[s.Y+1]++
-	}
-	for y := range height {
-		b.start[y+1] += b.start[y]
-	}
-	return b
-}
-
-func (b border) inside(x, y int) bool {
-	if y < 0 || y >= len(b.start)-1 {
-		return false
-	}
-	for _, s := range b.spans[b.start[y]:b.start[y+1]] {
-		if x >= s.X0 && x < s.X1 {
-			return true
-		}
-	}
-	return false
+	raster.Rows
+	width, height int
 }
 
 // Along the border is a line of which this share lies within rim px of where the region
@@ -68,8 +44,8 @@ func (b border) along(path []raster.Point, rim float64) bool {
 // ends reports whether the region does not hold a place; beyond the frame is no end of it.
 func (b border) ends(x, y float64) bool {
 	ix, iy := int(math.Round(x)), int(math.Round(y))
-	if ix < 0 || iy < 0 || ix >= b.width || iy >= len(b.start)-1 {
+	if ix < 0 || iy < 0 || ix >= b.width || iy >= b.height {
 		return false
 	}
-	return !b.inside(ix, iy)
+	return !b.At(ix, iy)
 }

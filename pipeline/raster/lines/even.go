@@ -8,17 +8,13 @@ import (
 // evenBlock is over how many positions the evidence of a line is taken together.
 const evenBlock = 4
 
-// trimmedShare is the share of the strongest blocks that a line must do without, and
-// trimmedMean what their loss takes from the mean of a normal variable, φ(z)/(1 − share)
-// with Q(z) = share: 0.3477/0.7.
-const (
-	trimmedShare = 0.3
-	trimmedMean  = 0.4967
-)
+// A trim is the share of the strongest blocks that a line must do without, what their loss
+// takes from the mean of a normal variable, φ(z)/(1 − share) with Q(z) = share, and the
+// share of the line's sigmas that must stay. An even line keeps √(1 − share); of a chain of
+// spots hardly anything stays.
+type trim struct{ share, mean, least float64 }
 
-// leastEven is the share of a line's sigmas that must stay without its strongest blocks.
-// An even line keeps √0.7 = 0.84; of a chain of spots hardly anything stays.
-const leastEven = 0.5
+var trims = [...]trim{{0.3, 0.4967, 0.5}, {0.5, 0.7979, 0.3}}
 
 // leastRest is how many sigmas must stay.
 const leastRest = 3.5
@@ -26,13 +22,14 @@ const leastRest = 3.5
 // even reports whether the evidence is spread over the line.
 func (f *finder) even(p piece) bool {
 	v := f.profile(p.stretch)
+	least := evenBlock * p.weight / float64(4*len(v)) // a quarter of the mean
 	var z []float64
 	for i := 0; i < len(v); i += evenBlock {
 		var t total
 		for _, one := range v[i:min(i+evenBlock, len(v))] {
 			t = t.plus(one)
 		}
-		if t.weight > evenBlock/4. {
+		if t.weight > least {
 			z = append(z, t.sigmas(p.sign))
 		}
 	}
@@ -41,9 +38,14 @@ func (f *finder) even(p piece) bool {
 	}
 	all := mean(z) * math.Sqrt(float64(len(z)))
 	slices.Sort(z)
-	rest := z[:len(z)-int(trimmedShare*float64(len(z)))]
-	left := (mean(rest) + trimmedMean) * math.Sqrt(float64(len(rest)))
-	return left >= leastEven*all && left >= leastRest*math.Sqrt(p.variance)
+	for _, cut := range trims {
+		rest := z[:len(z)-int(cut.share*float64(len(z)))]
+		left := (mean(rest) + cut.mean) * math.Sqrt(float64(len(rest)))
+		if left < cut.least*all || cut == trims[0] && left < leastRest*math.Sqrt(p.scatter.over(p.positions())) {
+			return false
+		}
+	}
+	return true
 }
 
 func mean(v []float64) float64 {

@@ -145,8 +145,8 @@ int32_t ln_tiles(int32_t length) { return (length + LN_ROWS - 1 + LN_TILE - 1) /
 #define HOLES 0.02
 
 // holes sets holed, and reports whether no pixel of the tile counts.
-static int holes(ln_tile *k, int length) {
-	const int x1 = k->x + k->width + LN_ROWS, from = k->x > 0 ? k->x : 0, to = x1 < length ? x1 : length;
+static int holes(ln_tile *k) {
+	const int x1 = k->x + k->width + LN_ROWS, from = k->x > 0 ? k->x : 0, to = x1 < k->length ? x1 : k->length;
 	int64_t out = 0;
 	for (int x = from; x < to; x++)
 		out += k->w->outside[x];
@@ -164,7 +164,7 @@ static strip rows_of(ln_work *w, int axis, int first) {
 // tile searches both directions of a tile.
 static int tile(ln_tile *k, strip rows, strip ones, float *spread, int tiles) {
 	for (k->flipped = 0; k->flipped < 2; k->flipped++) {
-		k->spread = spread + k->flipped * tiles * LN_BINS;
+		k->spread = spread + k->flipped * tiles * LN_LEVELS * LN_BINS;
 		halves(k->w->sums, rows, k);
 		if (k->holed)
 			halves(k->w->counts, ones, k);
@@ -182,16 +182,16 @@ int ln_strip(ln_work *w, int32_t axis, int32_t first, double seed, int32_t polar
 	const strip rows = rows_of(w, axis, first), ones = {w->ones + LN_PAD, w->pitch};
 	int counted = 0;
 	ln_outside(w->outside, rows.at, rows.pitch, length);
-	for (int i = 0; i < 2 * tiles * LN_BINS; i++)
+	for (int i = 0; i < 2 * tiles * LN_LEVELS * LN_BINS; i++)
 		spread[i] = 1;
 	for (int i = 0; i < tiles; i++) {
-		ln_tile k = {.w = w, .axis = axis, .first = first, .x = 1 - LN_ROWS + i * wide, .seed = seed, .polarity = polarity};
+		ln_tile k = {.w = w, .axis = axis, .first = first, .length = length, .x = 1 - LN_ROWS + i * wide, .seed = seed, .polarity = polarity};
 		k.width = all - i * wide < wide ? all - i * wide : wide;
-		if (holes(&k, length))
+		if (holes(&k))
 			continue;
 		if (k.holed && !counted++)
 			ln_count(w->ones + LN_PAD, rows.at, rows.pitch, w->pitch, length);
-		if (tile(&k, rows, ones, spread + i * LN_BINS, tiles))
+		if (tile(&k, rows, ones, spread + i * LN_LEVELS * LN_BINS, tiles))
 			return 1;
 	}
 	return 0;

@@ -46,7 +46,7 @@ const mostSeeds = 100000
 
 // Find looks for lines in the region of a plane of unit noise and mean 0: its pixels over
 // their noise. Pixels of bad (nil = none), and those that are no numbers, do not count.
-func (f *Finder) Find(p *raster.Plane, region []raster.Span, bad *raster.Mask, s Settings) (*Result, error) {
+func (f *Finder) Find(p *raster.Plane, region raster.Rows, bad *raster.Mask, s Settings) (*Result, error) {
 	if err := s.Check(); err != nil {
 		return nil, err
 	}
@@ -68,9 +68,8 @@ func (f *Finder) Find(p *raster.Plane, region []raster.Span, bad *raster.Mask, s
 		}
 	}
 	defer f.free.Put(w)
-	region = inOrder(region, p.Width, p.Height)
-	w.load(p, region, bad, s.Half)
-	one := finder{work: w, weights: newWeights(thickness), s: s.inPixels(), plane: p, bad: bad, region: newBorder(region, p.Width, p.Height)}
+	w.load(p, region.Spans(), bad, s.Half)
+	one := finder{work: w, weights: newWeights(thickness), s: s.inPixels(), plane: p, bad: bad, region: border{region, p.Width, p.Height}}
 	return one.find()
 }
 
@@ -88,6 +87,7 @@ type finder struct {
 	weights *weights
 	s       Settings // lengths in pixels of the picture searched
 	spread  *spread
+	rings   *rings // nil = no concentric lay
 	plane   *raster.Plane
 	bad     *raster.Mask
 	region  border
@@ -99,6 +99,7 @@ func (f *finder) find() (*Result, error) {
 		return nil, err
 	}
 	f.spread = spread
+	f.rings = f.findRings()
 	slices.SortFunc(hits, func(a, b C.ln_hit) int {
 		return cmp.Or(cmp.Compare(b.sigmas, a.sigmas), cmp.Compare(a.axis, b.axis), cmp.Compare(a.first, b.first),
 			cmp.Compare(a.flipped, b.flipped), cmp.Compare(a.x, b.x), cmp.Compare(a.t, b.t))
@@ -118,14 +119,32 @@ func (f *finder) find() (*Result, error) {
 	return r, nil
 }
 
+// leastNow is the share of the seed's sigmas that a line through a strip must have between
+// pixels, before its ends are moved.
+const leastNow = 0.85
+
+// scatter is that of the line sums at the place and slope of a stretch.
+func (f *finder) scatter(k stretch) scatter {
+	s := f.spread.along(k)
+	if f.rings != nil {
+		s = s.most(f.rings.along(k))
+	}
+	return s
+}
+
 // try refines a hit and judges what comes out.
+
 func (f *finder) try(h C.ln_hit, tried map[[5]int32]bool) (course, bool) {
 	k, sign := f.strip(h), 1
 	if h.value < 0 {
 		sign = -1
 	}
-	now := f.sum(k) // what was found before no longer counts
-	if now.sigmas(sign) < 0.8*f.s.Seed*math.Sqrt(f.spread.over(k)) || beenNear(tried, h) {
+	need := f.s.Seed * math.Sqrt(f.scatter(k).over(k.positions()))
+	if f.sum(k).sigmas(sign) < leastNow*need || beenNear(tried, h) { // what was found before no longer counts
+		return course{}, false
+	}
+	k, now := f.settle(k, 2, 0.75, sign)
+	if now.sigmas(sign) < need {
 		return course{}, false
 	}
 	p := f.refine(k, sign)
@@ -165,7 +184,7 @@ func beenNear(tried map[[5]int32]bool, h C.ln_hit) bool {
 // report measures the courses and keeps those that are lines of the settings.
 func (f *finder) report(r *Result, courses []course) {
 	for _, c := range courses {
-		if c.sigmas() < f.s.Threshold || c.length() < f.s.MinLength || f.region.along(f.path(c), f.rim()) {
+		if c.sigmas() < f.s.need(f.scale()*c.length()) || c.length() < f.s.MinLength || f.region.along(f.path(c), f.rim()) {
 			continue
 		}
 		if l, ok := f.measure(c); ok {

@@ -22,12 +22,16 @@ func (c course) length() float64 {
 	return sum
 }
 
-// sigmas takes the pieces together, each against its own spread.
+// sigmas takes the pieces together, each against what lines of the whole length scatter at
+// its place.
 func (c course) sigmas() float64 {
-	sum, variance := 0., 0.
+	sum, variance, positions := 0., 0., 0.
+	for _, p := range c.pieces {
+		positions += p.positions()
+	}
 	for _, p := range c.pieces {
 		sum += float64(c.sign) * p.sum
-		variance += p.weight * p.variance
+		variance += p.weight * p.scatter.over(positions)
 	}
 	if variance <= 0 {
 		return 0
@@ -51,15 +55,18 @@ func (c course) reversed() course {
 
 func distance(p, q raster.Point) float64 { return math.Hypot(p.X-q.X, p.Y-q.Y) }
 
-// A line is followed in steps of stepPx, whose far end may lie up to swingPx beside where
-// the line's bend would lead. A step counts with stepSigmas, after a gap with freshSigmas.
-const (
-	stepPx      = 32
-	swingPx     = 6
-	swingStep   = 0.5
-	stepSigmas  = 3
-	freshSigmas = 4.2
+// A stride is a step by which a line is followed: its far end may lie up to swing px beside
+// where the line's bend would lead, and it must stand out by some sigmas.
+type stride struct{ px, swing, sigmas float64 }
+
+// The first stride is the usual one, and after a gap it must stand out more; the others
+// find what is left where the line ends.
+var (
+	strides = [...]stride{{32, 6, 3.8}, {16, 3, 3.4}, {8, 1.5, 3}}
+	fresh   = stride{32, 6, 4.4}
 )
+
+const swingStep = 0.5
 
 // follow goes on from both ends of a straight piece.
 func (f *finder) follow(p piece) course {
@@ -76,69 +83,86 @@ type walk struct {
 	at           raster.Point
 	angle, curve float64 // rad, rad/px
 	gap          float64
+	bends        bool // it was followed beyond the straight piece
 }
 
 func (f *finder) followEnd(c *course) {
 	n := len(c.points)
 	from, to := c.points[n-2], c.points[n-1]
 	w := walk{at: to, angle: math.Atan2(to.Y-from.Y, to.X-from.X)}
-	most := (f.work.width + f.work.height) / stepPx * 4
+	most := (f.work.width + f.work.height) / 8
 	for range most {
-		p, far, ok := f.step(w, c.sign)
+		p, far, ok := f.next(w, c.sign)
 		if !ok {
-			w.gap += stepPx
+			w = w.ahead()
 			if w.gap > f.s.JoinGap {
 				return
 			}
-			w = w.ahead()
 			continue
 		}
 		if w.gap > 0 {
 			c.points = append(c.points, w.at)
 		}
+		length := distance(w.at, far)
 		turned := math.Remainder(math.Atan2(far.Y-w.at.Y, far.X-w.at.X)-w.angle, 2*math.Pi)
 		c.points, c.pieces = append(c.points, far), append(c.pieces, p)
-		w.curve = 0.5*w.curve + 0.5*turned/stepPx
-		w.angle += turned
-		w.at, w.gap = far, 0
+		if length > strides[0].px/2 {
+			w.curve = 0.5*w.curve + 0.5*turned/length
+			w.angle += turned
+		}
+		w.at, w.gap, w.bends = far, 0, true
 		f.erase(p.stretch, 0) // so that it does not come back onto itself
 	}
 }
 
 // ahead goes on without evidence.
 func (w walk) ahead() walk {
-	w.angle += w.curve * stepPx
+	px := strides[0].px
+	w.angle += w.curve * px
 	sin, cos := math.Sincos(w.angle)
-	w.at = raster.Point{X: w.at.X + stepPx*cos, Y: w.at.Y + stepPx*sin}
+	w.at = raster.Point{X: w.at.X + px*cos, Y: w.at.Y + px*sin}
+	w.gap += px
 	return w
 }
 
+// next finds the best next step of the longest stride that counts.
+func (f *finder) next(w walk, sign int) (p piece, far raster.Point, ok bool) {
+	if w.gap > 0 {
+		return f.step(w, fresh, sign)
+	}
+	for _, s := range strides {
+		if s != strides[0] && !w.bends {
+			break // the end of a straight piece is known
+		}
+		if p, far, ok = f.step(w, s, sign); ok {
+			return p, far, true
+		}
+	}
+	return p, far, false
+}
+
 // step finds the best next step; ok is false where none counts.
-func (f *finder) step(w walk, sign int) (piece, raster.Point, bool) {
-	sin, cos := math.Sincos(w.angle + w.curve*stepPx)
+func (f *finder) step(w walk, s stride, sign int) (piece, raster.Point, bool) {
+	sin, cos := math.Sincos(w.angle + w.curve*s.px)
 	var best piece
 	var end raster.Point
 	most := 0.
-	for d := -float64(swingPx); d <= swingPx; d += swingStep {
-		far := raster.Point{X: w.at.X + stepPx*cos - d*sin, Y: w.at.Y + stepPx*sin + d*cos}
+	for d := -s.swing; d <= s.swing; d += swingStep {
+		far := raster.Point{X: w.at.X + s.px*cos - d*sin, Y: w.at.Y + s.px*sin + d*cos}
 		k, ok := between(w.at, far)
 		if !ok {
 			continue
 		}
 		if t := f.sum(k); t.sigmas(sign) > most {
 			most, end = t.sigmas(sign), far
-			best = piece{k, t, sign, 1}
+			best = piece{k, t, sign, scatter{}}
 		}
 	}
-	if most == 0 {
+	if most < s.sigmas {
 		return best, end, false
 	}
-	best.variance = f.spread.over(best.stretch)
-	need := float64(stepSigmas)
-	if w.gap > 0 {
-		need = freshSigmas
-	}
-	if best.sigmas() < need || !f.fills(best) {
+	best.scatter = f.scatter(best.stretch)
+	if best.sigmas() < s.sigmas || !f.fills(best) {
 		return best, end, false
 	}
 	return f.cutEnd(best, w.at, end)
@@ -148,7 +172,7 @@ func (f *finder) step(w walk, sign int) (piece, raster.Point, bool) {
 func (f *finder) fills(p piece) bool {
 	middle := (p.a + p.b) / 2
 	first, second := f.sum(p.resized(p.a, middle)), f.sum(p.resized(middle+1, p.b))
-	return min(first.sigmas(p.sign), second.sigmas(p.sign)) > 0.2*p.total.sigmas(p.sign)
+	return min(first.sigmas(p.sign), second.sigmas(p.sign)) > 0.35*p.total.sigmas(p.sign)
 }
 
 // cutEnd keeps of a step what belongs to the line, should it end within.

@@ -21,6 +21,7 @@ enum {
 	LN_LEAST = 32,  // pixels that a sum must have
 	LN_BIN = 4,     // slopes that share a spread
 	LN_BINS = LN_ROWS / LN_BIN,
+	LN_LEVELS = 2,  // lengths of line whose spread is measured: LN_ROWS and half of it
 	LN_TILE = 704   // widest tile: the tree then stays in a second-level cache
 };
 
@@ -55,7 +56,7 @@ int32_t ln_tiles(int32_t length);
 // ln_strip sums along all lines through the strip that starts at row (axis 0) or column
 // (axis 1) first and ends in the picture, or is the only one, and keeps those above seed sigmas: polarity 1 of bright, −1 of dark
 // lines, 0 of both, the strongest of every 8 × 8 neighbours. spread receives the variance
-// of the sums over that of white noise, [flipped][tile][slope / LN_BIN]. Returns not 0
+// of the sums over that of white noise, [flipped][tile][LN_LEVELS][slope / LN_BIN]. Returns not 0
 // when there is no memory.
 int ln_strip(ln_work *w, int32_t axis, int32_t first, double seed, int32_t polarity, float *spread);
 
@@ -69,8 +70,9 @@ void ln_sums(ln_work *w, int32_t axis, int32_t first, int32_t flipped, int32_t x
 
 // A stretch of a line for sums across it: from cross ca at position a to cb at b along
 // its axis (0: along y, cross in x; 1: along x, cross in y). A position counts with four
-// pixels, from the one before floor(cross) on, with weights of 16 fractions of a pixel.
-enum { LN_TAPS = 4, LN_FRACTIONS = 16, LN_WEIGHT = 64 };
+// pixels, from the one before floor(cross) on, with weights of 16 fractions of a pixel: of
+// each fraction the weights of the pixels, and the sum of their squares.
+enum { LN_TAPS = 4, LN_SQUARES = LN_TAPS, LN_ENTRY, LN_FRACTIONS = 16, LN_WEIGHT = 64 };
 
 typedef struct {
 	int32_t axis, a, b;
@@ -87,8 +89,8 @@ ln_total ln_sum(const ln_work *w, ln_stretch s, const int16_t *weights);
 // ln_profile writes what ln_sum adds at each position, b − a + 1 of them.
 int ln_profile(const ln_work *w, ln_stretch s, const int16_t *weights, ln_total *out);
 
-// ln_settle moves both ends across by up to reach steps and returns the stretch with the
-// highest sign·sum/√weight.
+// ln_settle moves both ends across by up to reach steps, first the same way and then
+// against each other, and returns the stretch with the highest sign·sum/√weight.
 ln_stretch ln_settle(const ln_work *w, ln_stretch s, const int16_t *weights, int32_t reach, double step, int32_t sign, ln_total *best);
 
 // ln_erase_along makes the pixels within reach across a stretch not count.

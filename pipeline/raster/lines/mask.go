@@ -2,7 +2,6 @@ package lines
 
 import (
 	"bytes"
-	"slices"
 	"unsafe"
 
 	"lapgate/pipeline/raster"
@@ -20,32 +19,11 @@ func indexTrue(row []bool, x int) int {
 	return -1
 }
 
-// inOrder returns the spans that lie in a picture, sorted by row and column.
-func inOrder(region []raster.Span, width, height int) []raster.Span {
-	out := make([]raster.Span, 0, len(region))
-	for _, s := range region {
-		s.X0, s.X1 = max(s.X0, 0), min(s.X1, width)
-		if s.Y >= 0 && s.Y < height && s.X0 < s.X1 {
-			out = append(out, s)
-		}
-	}
-	order := func(a, b raster.Span) int {
-		if a.Y != b.Y {
-			return a.Y - b.Y
-		}
-		return a.X0 - b.X0
-	}
-	if !slices.IsSortedFunc(out, order) {
-		slices.SortFunc(out, order)
-	}
-	return out
-}
-
 // Whole returns the region that is all of a picture.
-func Whole(width, height int) []raster.Span {
+func Whole(width, height int) raster.Rows {
 	out := make([]raster.Span, height)
 	for y := range out {
 		out[y] = raster.Span{Y: y, X1: width}
 	}
-	return out
+	return raster.NewRows(out, width, height)
 }

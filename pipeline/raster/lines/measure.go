@@ -2,6 +2,7 @@ package lines
 
 import (
 	"math"
+	"slices"
 
 	"lapgate/pipeline/raster"
 )
@@ -44,12 +45,22 @@ func (f *finder) measure(c course) (Line, bool) {
 	}
 	a, b := l.Path[0], l.Path[len(l.Path)-1]
 	l.Angle = fold(math.Atan2(b.Y-a.Y, b.X-a.X) * 180 / math.Pi)
-	across, along := f.profiles(l.Path, float64(c.sign))
+	_, along := f.profiles(l.Path, float64(c.sign), math.Inf(1))
+	if len(along) == 0 {
+		return l, false
+	}
+	across, _ := f.profiles(l.Path, float64(c.sign), spotHeight+3*median(along))
 	l.Width, l.Contrast, l.Flux = fullWidth(across)
 	l.Flux *= l.Length
 	l.Peak = strongest(along)
 	return l, l.Width > 0 && l.Length >= leastRatio*l.Width
 }
+
+// spotHeight is how high, beyond three times a line's median, a pixel beside it counts at
+// most: a spot that the line crosses must not widen it.
+const spotHeight = 5
+
+func median(v []float64) float64 { return middle(slices.Clone(v)) }
 
 // fold brings an angle between −90 and 90 degrees.
 func fold(angle float64) float64 {
@@ -62,9 +73,9 @@ func fold(angle float64) float64 {
 	return angle
 }
 
-// profiles returns the mean across the path, from −reach to reach, and the mean over 3 px
-// across at each px along it.
-func (f *finder) profiles(path []raster.Point, sign float64) (across, along []float64) {
+// profiles returns the mean across the path, from −reach to reach, and the mean over 2 px
+// across at each px along it; no value counts as more than most.
+func (f *finder) profiles(path []raster.Point, sign, most float64) (across, along []float64) {
 	n := int(2*profileReach/profileStep) + 1
 	sum, count := make([]float64, n), make([]float64, n)
 	for i := 1; i < len(path); i++ {
@@ -82,10 +93,11 @@ func (f *finder) profiles(path []raster.Point, sign float64) (across, along []fl
 				if !ok {
 					continue
 				}
-				sum[k] += sign * v
+				v = min(sign*v, most)
+				sum[k] += v
 				count[k]++
 				if math.Abs(o) <= 1 {
-					middle, pixels = middle+sign*v, pixels+1
+					middle, pixels = middle+v, pixels+1
 				}
 			}
 			if pixels > 0 {
@@ -101,11 +113,10 @@ func (f *finder) profiles(path []raster.Point, sign float64) (across, along []fl
 	return sum, along
 }
 
-// sample interpolates the plane; values that are not near those of a faint line say
-// little, and are cut off.
+// sample interpolates the plane; ok is false where a pixel does not count.
 func (f *finder) sample(x, y float64) (float64, bool) {
 	ix, iy := int(math.Floor(x)), int(math.Floor(y))
-	if ix < 0 || iy < 0 || ix+1 >= f.plane.Width || iy+1 >= f.plane.Height || !f.region.inside(ix, iy) || !f.region.inside(ix+1, iy+1) {
+	if ix < 0 || iy < 0 || ix+1 >= f.plane.Width || iy+1 >= f.plane.Height || !f.region.At(ix, iy) || !f.region.At(ix+1, iy+1) {
 		return 0, false
 	}
 	if f.bad != nil && (f.bad.At(ix, iy) || f.bad.At(ix+1, iy) || f.bad.At(ix, iy+1) || f.bad.At(ix+1, iy+1)) {

@@ -9,12 +9,17 @@ import "math"
 type piece struct {
 	stretch
 	total
-	sign     int
-	variance float64 // of its sum over that of white noise
+	sign    int
+	scatter scatter // of lines at its place and slope
 }
 
+// positions is the number of pixels along its longer side.
+func (k stretch) positions() float64 { return float64(k.b-k.a+1) * max(1, math.Abs(k.slope())) }
+
 // sigmas is the piece's sum over its spread at its place, slope and length.
-func (p piece) sigmas() float64 { return p.total.sigmas(p.sign) / math.Sqrt(p.variance) }
+func (p piece) sigmas() float64 {
+	return p.total.sigmas(p.sign) / math.Sqrt(p.scatter.over(p.positions()))
+}
 
 const (
 	leastPositions = 16 // of a refined line
@@ -44,16 +49,50 @@ func (f *finder) along(axis int) int {
 
 // refine moves both ends of a line along and across to where its sum stands out most.
 func (f *finder) refine(k stretch, sign int) piece {
-	k, t := f.settle(k, 2, 0.75, sign)
-	p := piece{k, t, sign, f.spread.over(k)}
-	step := 0.5
+	p := f.polish(k, sign, 2, 0.5)
+	if p.sigmas() < f.s.Threshold-promising {
+		return p
+	}
 	for range mostRounds {
+		longer, ok := f.lengthen(p)
+		if !ok {
+			break
+		}
+		p = longer
+	}
+	return p
+}
+
+// promising is how many sigmas below the threshold a line is worth a longer look.
+const promising = 0.6
+
+// lengthen looks for the line beyond a stretch where noise hides it, further across than
+// its angle was known before.
+func (f *finder) lengthen(p piece) (piece, bool) {
+	best := p
+	for _, by := range [][2]int{{firstReach, 0}, {0, firstReach}} {
+		a, b := f.inside(p.stretch, p.a-by[0], p.b+by[1])
+		if a == p.a && b == p.b || b-a < leastPositions {
+			continue
+		}
+		if q := f.polish(p.resized(a, b), p.sign, 4, 0.75); q.sigmas() > best.sigmas()+0.1 {
+			best = q
+		}
+	}
+	return best, best.stretch != p.stretch
+}
+
+// polish moves both ends across, at first by up to reach steps of the given size, and along,
+// in turns and in ever smaller steps.
+func (f *finder) polish(k stretch, sign, reach int, step float64) piece {
+	k, t := f.settle(k, reach, step, sign)
+	p := piece{k, t, sign, f.scatter(k)}
+	step = 0.5
+	for i := range mostRounds {
 		before, was := p.sigmas(), p.stretch
-		excess, level := f.excess(p)
-		grown := f.extend(p.stretch, sign, excess, level)
-		k, t := f.settle(grown, 2, step, sign)
-		p = piece{k, t, sign, f.spread.over(k)}
-		if p.sigmas() < before+0.02 && step <= 0.125 || p.sigmas() < 4 {
+		k, t := f.settle(f.extend(p).upright(), 2, step, sign)
+		p = piece{k, t, sign, f.scatter(k)}
+		if p.sigmas() < before+0.02 && step <= 0.125 || p.sigmas() < hopeless(i) {
 			break
 		}
 		if near(was, p.stretch) || p.sigmas() < before+0.1 {
@@ -63,32 +102,32 @@ func (f *finder) refine(k stretch, sign int) piece {
 	return p
 }
 
+// hopeless is how many sigmas a line has after some rounds that nothing will come of.
+func hopeless(round int) float64 {
+	if round < 2 {
+		return 4
+	}
+	return 5.2
+}
+
 func near(p, q stretch) bool {
-	return max(p.a-q.a, q.a-p.a, p.b-q.b, q.b-p.b) < 4
+	return p.axis == q.axis && max(p.a-q.a, q.a-p.a, p.b-q.b, q.b-p.b) < 4
 }
 
-// excess returns how the variance grows: level·(1 + excess·positions).
-func (f *finder) excess(p piece) (excess, level float64) {
-	if p.variance <= 1 {
-		return 0, p.variance
-	}
-	return (p.variance - 1) / float64(p.b-p.a+1), 1
-}
-
-// extend returns the part of the line through k, longer or shorter than it, that stands
-// out most.
-func (f *finder) extend(k stretch, sign int, excess, level float64) stretch {
-	reach := max(firstReach, (k.b-k.a)/2)
-	a, b := f.inside(k, k.a-reach, k.b+reach)
+// extend returns the part of the line through a piece, longer or shorter than it, that
+// stands out most.
+func (f *finder) extend(p piece) stretch {
+	reach := max(firstReach, (p.b-p.a)/2)
+	a, b := f.inside(p.stretch, p.a-reach, p.b+reach)
 	if b-a < leastPositions {
-		return k
+		return p.stretch
 	}
-	long := k.resized(a, b)
+	long := p.resized(a, b)
 	v := f.profile(long)
 	if len(v) < leastPositions {
-		return k
+		return p.stretch
 	}
-	first, last := bestPart(v, sign, excess, level)
+	first, last := bestPart(v, p.sign, p.scatter)
 	return long.resized(a+first, a+last)
 }
 
@@ -109,7 +148,7 @@ func (f *finder) inside(k stretch, a, b int) (int, int) {
 
 // bestPart returns the first and the last position of the part with the highest sum over
 // its spread: first among bounds some positions apart, then all about those.
-func bestPart(v []total, sign int, excess, level float64) (first, last int) {
+func bestPart(v []total, sign int, noise scatter) (first, last int) {
 	n := len(v)
 	s, w := make([]float64, n+1), make([]float64, n+1)
 	for i, t := range v {
@@ -117,11 +156,11 @@ func bestPart(v []total, sign int, excess, level float64) (first, last int) {
 	}
 	value := func(i, j int) float64 {
 		if weight := w[j] - w[i]; j-i >= leastPositions && weight > 0 {
-			return (s[j] - s[i]) / math.Sqrt(level*weight*(1+excess*float64(j-i)))
+			return (s[j] - s[i]) / math.Sqrt(weight*noise.over(float64(j-i)))
 		}
 		return math.Inf(-1)
 	}
-	step := max(4, n/64)
+	step := max(4, n/48)
 	i, j := 0, n
 	best := value(0, n)
 	for a := 0; a < n; a += step {

@@ -3,6 +3,8 @@ package lines
 import (
 	"fmt"
 	"math"
+
+	"lapgate/pipeline/raster"
 )
 
 // Polarity says which lines are looked for.
@@ -25,10 +27,12 @@ type Settings struct {
 	JoinGap   float64 // px of the picture over which a line may be broken
 	Rim       float64 // px from the region's border within which a line along it does not count
 	MaxLines  int     // keep only the strongest
+	// Centre is that of the part, px: lay may be concentric about it. Nil = unknown.
+	Centre *raster.Point
 }
 
 // Default finds a line of 300 × 1 px in white noise at three quarters of a sigma.
-var Default = Settings{Polarity: Bright, Seed: 4.7, Threshold: 6.6, MinLength: 40, JoinGap: 40, Rim: 6, MaxLines: 2000}
+var Default = Settings{Polarity: Bright, Seed: 4, Threshold: 6.9, MinLength: 40, JoinGap: 40, Rim: 6, MaxLines: 2000}
 
 // Check says what is wrong with the settings.
 func (s Settings) Check() error {
@@ -51,10 +55,20 @@ func (s Settings) Check() error {
 	return nil
 }
 
+// need returns the sigmas that a line of some length (px of the picture) must reach: more
+// for a short one, since noise makes as many lines of every octave of length, while what a
+// short scratch lacks in length, it must have in height to be seen at all.
+func (s Settings) need(length float64) float64 {
+	return s.Threshold + 0.5*max(0, math.Log2(150/length))
+}
+
 // inPixels returns the settings with lengths in pixels of the picture searched.
 func (s Settings) inPixels() Settings {
 	if s.Half {
 		s.MinLength, s.JoinGap, s.Rim = s.MinLength/2, s.JoinGap/2, math.Ceil(s.Rim/2)
+		if s.Centre != nil {
+			s.Centre = &raster.Point{X: (s.Centre.X - 0.5) / 2, Y: (s.Centre.Y - 0.5) / 2}
+		}
 	}
 	return s
 }

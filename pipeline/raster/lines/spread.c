@@ -37,26 +37,61 @@ LN_KERNEL int64_t total(const int16_t *restrict a, const int16_t *restrict b, in
 // it to some 3 %.
 #define NEAR_WHITE 0.1
 
-// variance returns the variance of the sums with slope 2t per pixel; what lies far out,
-// as defects do, hardly counts.
-static double variance(const ln_tile *k, int t) {
-	const int16_t *a = k->w->sums->half[0][t], *b = k->w->sums->half[1][t] + t;
-	double n = (double)k->width * LN_ROWS;
-	if (k->holed)
-		n = (double)total(k->w->counts->half[0][t], k->w->counts->half[1][t] + t, k->width);
-	if (n < 64 * LN_LEAST)
+// A set of sums to be measured: of lines of some slope over the whole strip (b not NULL) or
+// over a half of it, with the numbers of pixels if some do not count.
+typedef struct {
+	const int16_t *a, *b, *na, *nb;
+	int width, pixels; // columns, and pixels of each sum
+} sums;
+
+static const int16_t none[LN_PITCH];
+
+// variance returns the variance of the sums per pixel; what lies far out, as defects do,
+// hardly counts.
+static double variance(const sums *s) {
+	if (s->width < LN_LEAST)
 		return LN_WHITE;
-	double v = (double)squares(a, b, k->width, LN_MOST_SUM) / n;
+	const int16_t *b = s->b ? s->b : none;
+	const double n = s->na ? (double)total(s->na, s->nb ? s->nb : none, s->width) : (double)s->width * s->pixels;
+	if (n < LN_LEAST * s->pixels / 2.)
+		return LN_WHITE;
+	double v = (double)squares(s->a, b, s->width, LN_MOST_SUM) / n;
 	for (int i = 0; i < 4 && v > LN_WHITE * (1 + NEAR_WHITE); i++) {
-		double cap = CUT * __builtin_sqrt(v * LN_ROWS);
-		v = (double)squares(a, b, k->width, cap < LN_MOST_SUM ? (int)cap : LN_MOST_SUM) / (n * LEFT);
+		double cap = CUT * __builtin_sqrt(v * s->pixels);
+		v = (double)squares(s->a, b, s->width, cap < LN_MOST_SUM ? (int)cap : LN_MOST_SUM) / (n * LEFT);
 	}
 	return v;
 }
 
+static float relative(double v) {
+	v /= LN_WHITE;
+	return v > 1 - NEAR_WHITE && v < 1 + NEAR_WHITE ? 1.f : v > 0.05 ? (float)v : 0.05f;
+}
+
+// whole returns the sums of lines of slope 2t that do not leave the picture sideways, half
+// those over the upper half alone.
+static sums whole(const ln_tile *k, int t) {
+	const ln_tree *s = k->w->sums, *c = k->w->counts;
+	const int from = k->x < 0 ? -k->x : 0, beyond = k->x + k->width + 2 * t - k->length;
+	sums out = {.a = s->half[0][t] + from, .b = s->half[1][t] + from + t, .width = k->width - from - (beyond > 0 ? beyond : 0), .pixels = LN_ROWS};
+	if (k->holed) {
+		out.na = c->half[0][t] + from;
+		out.nb = c->half[1][t] + from + t;
+	}
+	return out;
+}
+
+static sums half(const ln_tile *k, int t) {
+	sums out = whole(k, t);
+	out.b = out.nb = 0;
+	out.pixels = LN_ROWS / 2;
+	return out;
+}
+
 void ln_spread(const ln_tile *k) {
 	for (int b = 0; b < LN_BINS; b++) {
-		double v = variance(k, b * (LN_BIN / 2)) / LN_WHITE;
-		k->spread[b] = v > 1 - NEAR_WHITE && v < 1 + NEAR_WHITE ? 1.f : v > 0.05 ? (float)v : 0.05f;
+		const sums all = whole(k, b * (LN_BIN / 2)), upper = half(k, b * (LN_BIN / 2));
+		k->spread[b] = relative(variance(&all));
+		k->spread[LN_BINS + b] = relative(variance(&upper));
 	}
 }

@@ -6,18 +6,36 @@ import "C"
 import "math"
 
 const (
-	rows = C.LN_ROWS
-	bins = C.LN_BINS
+	rows   = C.LN_ROWS
+	bins   = C.LN_BINS
+	levels = C.LN_LEVELS
 )
 
-// spread is the variance of the line sums over that of white noise, by place and slope.
+// scatter is the variance of line sums over that of white noise: of lines through a whole
+// strip, and through half of one.
+type scatter [levels]float64
+
+func (s scatter) most(o scatter) scatter { return scatter{max(s[0], o[0]), max(s[1], o[1])} }
+
+// over is that of lines of some number of positions. What a strip's sums scatter beyond
+// white noise is taken to go on along the line, as lay does, so that it grows with the
+// length. A line that crosses lay at a small angle is like lay over half of a strip at most.
+func (s scatter) over(positions float64) float64 {
+	if s[0] <= 1 && s[1] <= 1 {
+		return max(s[0], s[1])
+	}
+	long, short := 1+(s[0]-1)*positions/rows, 1+(s[1]-1)*min(positions*2/rows, rows/(2*positions))
+	return max(long, short, min(s[0], 1))
+}
+
+// spread is the scatter of the line sums by place and slope.
 type spread struct{ axes [2]axisSpread }
 
 // axisSpread is that of the strips of rows (axis 0) or columns (axis 1).
 type axisSpread struct {
 	length, tiles int
 	first         []int     // where the strips start
-	values        []float32 // [strip][flipped][tile][bin]
+	values        []float32 // [strip][flipped][tile][level][bin]
 }
 
 func newSpread(width, height int) *spread {
@@ -43,13 +61,13 @@ func newAxisSpread(length, across int) axisSpread {
 	return a
 }
 
-func (a *axisSpread) size() int { return 2 * a.tiles * bins }
+func (a *axisSpread) size() int { return 2 * a.tiles * levels * bins }
 
 func (a *axisSpread) of(strip int) []float32 { return a.values[strip*a.size() : (strip+1)*a.size()] }
 
-// at returns the spread about a line that has the cross position c at position m along the
+// at returns the scatter about a line that has the cross position c at position m along the
 // axis and the slope given, |slope| <= 1: the largest of the neighbouring slopes.
-func (a *axisSpread) at(m, c, slope float64) float64 {
+func (a *axisSpread) at(m, c, slope float64) scatter {
 	strip := 0
 	for strip+1 < len(a.first) && math.Abs(float64(a.first[strip+1])+rows/2-m) < math.Abs(float64(a.first[strip])+rows/2-m) {
 		strip++
@@ -60,29 +78,37 @@ func (a *axisSpread) at(m, c, slope float64) float64 {
 		flipped, t = 1, -t
 		x = c + slope*(float64(a.first[strip]+rows-1)-m)
 	}
-	all := a.length + rows - 1
-	wide := (all + a.tiles - 1) / a.tiles
+	wide := (a.length + rows - 1 + a.tiles - 1) / a.tiles
 	tile := min(max((int(x)+rows-1)/wide, 0), a.tiles-1)
-	v := a.of(strip)[(flipped*a.tiles+tile)*bins:][:bins]
-	bin := min(int(t)/C.LN_BIN, bins-1)
-	return float64(max(v[max(bin-1, 0)], v[bin], v[min(bin+1, bins-1)]))
+	var out scatter
+	for level := range out {
+		v := a.of(strip)[((flipped*a.tiles+tile)*levels+level)*bins:][:bins]
+		bin := min(int(t)/C.LN_BIN, bins-1)
+		out[level] = float64(max(v[max(bin-1, 0)], v[bin], v[min(bin+1, bins-1)]))
+	}
+	return out
 }
 
-// over returns the variance of the sum along a stretch over that of white noise. What a
-// strip's sums scatter beyond white noise is taken to go on along the line, as lay does,
-// so that it grows with the length.
-func (s *spread) over(k stretch) float64 {
-	a := &s.axes[k.axis]
+// along is the mean scatter along a stretch.
+func (s *spread) along(k stretch) scatter {
 	slope := k.slope()
 	n := (k.b - k.a + rows) / rows
-	sum := 0.
+	var out scatter
 	for i := range n {
 		m := float64(k.a) + (float64(i)+0.5)*float64(k.b-k.a)/float64(n)
-		sum += a.at(m, k.ca+slope*(m-float64(k.a)), slope)
+		one := s.near(k.axis, m, k.ca+slope*(m-float64(k.a)), slope)
+		for level, v := range one {
+			out[level] += v / float64(n)
+		}
 	}
-	v := sum / float64(n)
-	if v <= 1 {
-		return v
+	return out
+}
+
+// near is the scatter about a point of a line by its own axis, or the other one where it is
+// steeper than that one's strips have it.
+func (s *spread) near(axis int, m, c, slope float64) scatter {
+	if math.Abs(slope) > 1 {
+		return s.axes[1-axis].at(c, m, 1/slope)
 	}
-	return 1 + (v-1)*float64(k.b-k.a+1)/rows
+	return s.axes[axis].at(m, c, slope)
 }

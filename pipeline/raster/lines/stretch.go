@@ -73,6 +73,18 @@ func between(p, q raster.Point) (k stretch, ok bool) {
 	return k, true
 }
 
+// upright returns the stretch along the axis to which its direction is nearer.
+func (k stretch) upright() stretch {
+	if math.Abs(k.slope()) <= 1.02 {
+		return k
+	}
+	p, q := k.ends()
+	if turned, ok := between(p, q); ok {
+		return turned
+	}
+	return k
+}
+
 // total is what sums along a line make: Σ weight·value, in sigmas, and Σ weight².
 type total struct{ sum, weight float64 }
 

@@ -26,12 +26,14 @@ static course start(const ln_work *w, const ln_stretch *s) {
 // add adds what position i has.
 LN_INLINE void add(const course *c, const int16_t *weights, int i, int32_t *sum, int32_t *square) {
 	const int64_t cross = c->cross + i * c->slope;
-	const int16_t *k = weights + (cross >> 12 & (LN_FRACTIONS - 1)) * LN_TAPS;
+	const int16_t *k = weights + (cross >> 12 & (LN_FRACTIONS - 1)) * LN_ENTRY;
 	const int8_t *q = c->at + i * c->along + ((cross >> 16) - 1) * c->across;
-	for (int j = 0; j < LN_TAPS; j++, q += c->across) {
-		*sum += k[j] * *q;
-		*square += *q ? k[j] * k[j] : 0;
-	}
+	const int q0 = q[0], q1 = q[c->across], q2 = q[2 * c->across], q3 = q[3 * c->across];
+	*sum += k[0] * q0 + k[1] * q1 + k[2] * q2 + k[3] * q3;
+	*square += k[LN_SQUARES];
+	if (q0 && q1 && q2 && q3)
+		return;
+	*square -= (q0 ? 0 : k[0] * k[0]) + (q1 ? 0 : k[1] * k[1]) + (q2 ? 0 : k[2] * k[2]) + (q3 ? 0 : k[3] * k[3]);
 }
 
 static ln_total total(double sum, double square) {
@@ -61,22 +63,32 @@ int ln_profile(const ln_work *w, ln_stretch s, const int16_t *weights, ln_total 
 	return c.n;
 }
 
+// try sums along s and keeps it where it stands out more than the best so far.
+static void try(const ln_work *w, ln_stretch s, const int16_t *weights, int sign, double *most, ln_stretch *out, ln_total *best) {
+	const ln_total t = ln_sum(w, s, weights);
+	const double v = t.weight > 0 ? sign * t.sum / __builtin_sqrt(t.weight) : -1e30;
+	if (v <= *most)
+		return;
+	*most = v;
+	*out = s;
+	*best = t;
+}
+
 ln_stretch ln_settle(const ln_work *w, ln_stretch s, const int16_t *weights, int32_t reach, double step, int32_t sign, ln_total *best) {
 	ln_stretch out = s;
 	double most = -1e30;
-	for (int i = -reach; i <= reach; i++)
-		for (int j = -reach; j <= reach; j++) {
-			ln_stretch k = s;
+	*best = (ln_total){0, 0};
+	try(w, s, weights, sign, &most, &out, best);
+	for (int turn = 0; turn < 2; turn++) { // both ends the same way, then against each other
+		const ln_stretch from = out;
+		for (int i = -reach; i <= reach; i++) {
+			ln_stretch k = from;
 			k.ca += i * step;
-			k.cb += j * step;
-			const ln_total t = ln_sum(w, k, weights);
-			const double v = t.weight > 0 ? sign * t.sum / __builtin_sqrt(t.weight) : -1e30;
-			if (v > most) {
-				most = v;
-				out = k;
-				*best = t;
-			}
+			k.cb += turn ? -i * step : i * step;
+			if (i)
+				try(w, k, weights, sign, &most, &out, best);
 		}
+	}
 	return out;
 }
 

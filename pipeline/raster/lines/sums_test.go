@@ -73,9 +73,9 @@ func TestKernelEqualsDirectSums(t *testing.T) {
 		t.Fatal(err)
 	}
 	w.load(p, region, bad, false)
-	in := newBorder(region, width, height)
+	in := raster.NewRows(region, width, height)
 	pixel := func(x, y int) int {
-		if !in.inside(x, y) || bad.At(x, y) || x < 0 || x >= width {
+		if !in.At(x, y) || bad.At(x, y) || x < 0 || x >= width {
 			return 0
 		}
 		return steps(p.At(x, y))
@@ -116,7 +116,7 @@ func TestHalves(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	w.load(p, Whole(40, 34), bad, true)
+	w.load(p, Whole(40, 34).Spans(), bad, true)
 	got := w.sums(1, 0, false, 0, 18)
 	for y := range 18 {
 		want := 0

@@ -33,16 +33,17 @@ struct ln_work {
 
 typedef struct {
 	ln_work *w;
-	int axis, first, flipped, x, width, polarity;
+	int axis, first, length, flipped, x, width, polarity;
 	int holed; // some of its pixels do not count: the sums are judged by their number of pixels
 	double seed;
-	float *spread; // [LN_BINS]
+	float *spread; // [LN_LEVELS][LN_BINS]
 } ln_tile;
 
 // The white variance of a sum over one pixel, in steps²: of the noise and of its rounding.
 #define LN_WHITE (LN_UNIT * LN_UNIT + 1. / 3)
 
-// ln_spread measures the variance of the sums by slope over that of white noise.
+// ln_spread measures the variance of the sums by slope over that of white noise: of those
+// over the strip, and of those over half of it.
 void ln_spread(const ln_tile *k);
 
 // ln_spread_at is the larger of the spreads measured about slope t.

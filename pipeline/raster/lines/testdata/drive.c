@@ -64,9 +64,13 @@ static void holes(ln_work *w, int width, int height) {
 }
 
 static void around(ln_work *w, int width, int height, int rounds) {
-	int16_t weights[LN_FRACTIONS * LN_TAPS];
-	for (int i = 0; i < LN_FRACTIONS * LN_TAPS; i++)
-		weights[i] = (int16_t)below(LN_WEIGHT + 1);
+	int16_t weights[LN_FRACTIONS * LN_ENTRY] = {0};
+	for (int i = 0; i < LN_FRACTIONS; i++)
+		for (int k = 0; k < LN_TAPS; k++) {
+			int16_t *at = weights + i * LN_ENTRY;
+			at[k] = (int16_t)below(LN_WEIGHT + 1);
+			at[LN_SQUARES] = (int16_t)(at[LN_SQUARES] + at[k] * at[k]);
+		}
 	for (int i = 0; i < rounds; i++) {
 		const int axis = below(2), length = axis ? width : height, wide = axis ? height : width;
 		ln_stretch s = {.axis = axis, .a = below(length + 4) - 2, .b = below(length + 4) - 2, .ca = uniform() * (wide + 8) - 4, .cb = uniform() * (wide + 8) - 4};
@@ -91,11 +95,11 @@ static void search(ln_work *w, int width, int height, double seed, int polarity)
 	ln_clear(w);
 	for (int axis = 0; axis < 2; axis++) {
 		const int across = axis ? width : height, tiles = ln_tiles(axis ? height : width);
-		float *spread = malloc(sizeof *spread * (size_t)(2 * tiles * LN_BINS));
+		float *spread = malloc(sizeof *spread * (size_t)(2 * tiles * LN_LEVELS * LN_BINS));
 		for (int first = 0; first == 0 || first + LN_ROWS <= across; first += 1 + LN_ROWS / 2 + below(LN_ROWS)) {
 			if (ln_strip(w, axis, first, seed, polarity, spread))
 				exit(1);
-			mix(spread, sizeof *spread * (size_t)(2 * tiles * LN_BINS));
+			mix(spread, sizeof *spread * (size_t)(2 * tiles * LN_LEVELS * LN_BINS));
 		}
 		free(spread);
 	}
@@ -132,7 +136,7 @@ static void one(int width, int height) {
 
 static void measure(int rounds) {
 	ln_work *w = ln_work_new(4000, 3000);
-	float *spread = malloc(sizeof *spread * 2 * 8 * LN_BINS);
+	float *spread = malloc(sizeof *spread * 2 * 8 * LN_LEVELS * LN_BINS);
 	double best = 1e9;
 	load(w, 4000, 3000, 0, 0);
 	for (int i = 0; i < rounds; i++) {
