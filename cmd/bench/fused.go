@@ -38,9 +38,14 @@ func (p *pair) time(f func() error) error {
 }
 
 // threadTime is the CPU time of the calling thread (RUSAGE_THREAD of getrusage(2)).
-func threadTime() time.Duration {
+func threadTime() time.Duration { return cpuTime(1) }
+
+// processTime is the CPU time of all threads.
+func processTime() time.Duration { return cpuTime(syscall.RUSAGE_SELF) }
+
+func cpuTime(who int) time.Duration {
 	var u syscall.Rusage
-	if syscall.Getrusage(1, &u) != nil {
+	if syscall.Getrusage(who, &u) != nil {
 		return 0
 	}
 	return time.Duration(u.Utime.Nano() + u.Stime.Nano())
@@ -71,11 +76,14 @@ func inMono12(s scene, planes fused.Planes) (fusedScene, error) {
 	return prepare(raster.Pack(raster.Mono12, counts, s.raw.Width, s.raw.Height), planes)
 }
 
-func (f fusedScene) run(low float64, bands int) func() error {
+func (f fusedScene) find(low float64, bands int) (*fused.Result, error) {
 	s := fused.Settings{Low: low, High: 6, Polarity: fused.Bright, MinAreaPx: 1, Grid: raster.DefaultGrid(), Bands: bands}
-	whole := fused.Whole(f.raw.Width, f.raw.Height)
+	return f.correction.Find(f.raw, fused.Whole(f.raw.Width, f.raw.Height), s)
+}
+
+func (f fusedScene) run(low float64, bands int) func() error {
 	return func() error {
-		r, err := f.correction.Find(f.raw, whole, s)
+		r, err := f.find(low, bands)
 		if err == nil && (len(r.Blobs) < 100 || r.Floats) {
 			err = fmt.Errorf("%d blobs, floats %v; want the scene's 160 by integers", len(r.Blobs), r.Floats)
 		}
@@ -133,7 +141,7 @@ func benchFused(o options) (map[string]figure, error) {
 	settings := fused.Settings{Low: 3.5, High: 6, Grid: raster.DefaultGrid()}
 	jobs := map[string]func() error{
 		"fused": eight.run(3.5, 1), "low": eight.run(2.5, 1), "mono12": twelve.run(3.5, 1), "bands": eight.run(3.5, 2),
-		"two in turn": func() error { return firstOf(eight.run(3.5, 1), eight.run(3.5, 1)) },
+		"two in turn": inTurn(2, eight.run(3.5, 1)),
 		"two at once": sideBySide(2, eight.run(3.5, 1)),
 		"read":        func() error { eight.correction.Read(s.raw, settings); return nil },
 		"opencv 1":    opencv(1), "opencv 2": opencv(2),
@@ -159,13 +167,16 @@ func benchFused(o options) (map[string]figure, error) {
 	return out, nil
 }
 
-func firstOf(jobs ...func() error) error {
-	for _, j := range jobs {
-		if err := j(); err != nil {
-			return err
+// inTurn runs f n times, one after the other.
+func inTurn(n int, f func() error) func() error {
+	return func() error {
+		for range n {
+			if err := f(); err != nil {
+				return err
+			}
 		}
+		return nil
 	}
-	return nil
 }
 
 func fusedFigures(t map[string]*pair) map[string]figure {

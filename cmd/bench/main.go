@@ -48,6 +48,7 @@ func parts() []part {
 
 func main() {
 	serveIfAsked()
+	compareIfAsked()
 	o := options{scene: sceneOnce()}
 	out := flag.String("out", "build/bench.json", "file to write")
 	flag.StringVar(&o.only, "only", "", "measure these parts alone, such as fused,verdicts")
