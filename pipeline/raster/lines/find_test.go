@@ -145,7 +145,7 @@ func TestCurvedScratchIsOneLine(t *testing.T) {
 			}
 			cx, cy := 350-radius*math.Cos(from+200/radius), 350-radius*math.Sin(from+200/radius)
 			for _, q := range lines[0].Path {
-				if off := math.Abs(math.Hypot(q.X-cx, q.Y-cy) - radius); off > 2 {
+				if off := math.Abs(math.Hypot(q.X-cx, q.Y-cy) - radius); off > 3 {
 					t.Errorf("radius %g: the path is %.1f px beside the arc", radius, off)
 				}
 			}
