@@ -106,6 +106,20 @@ func misdeeds() map[string]misdeed {
 			o := req.Output
 			res.Planes = []*stagepb.Plane{plane(&stagepb.SharedBytes{Path: o.Path, Offset: o.Offset, Length: 16, Generation: o.Generation - 1})}
 		},
+		"late": func(h *hostile, req *stagepb.RunRequest, res *stagepb.RunResponse, _ []byte) {
+			o := req.Output
+			mem, err := h.memory.view(o.Path, unix.PROT_READ|unix.PROT_WRITE)
+			if err != nil {
+				panic(err)
+			}
+			res.Planes = []*stagepb.Plane{plane(&stagepb.SharedBytes{Path: o.Path, Offset: o.Offset, Length: 16, Generation: o.Generation})}
+			go func() {
+				time.Sleep(50 * time.Millisecond)
+				for i := range 16 {
+					mem[o.Offset+uint64(i)] = 0x3f
+				}
+			}()
+		},
 		"elsewhere": func(_ *hostile, req *stagepb.RunRequest, res *stagepb.RunResponse, _ []byte) {
 			o := req.Output
 			res.Planes = []*stagepb.Plane{plane(&stagepb.SharedBytes{Path: o.Path, Offset: o.Offset + o.Length - 8, Length: 16, Generation: o.Generation})}

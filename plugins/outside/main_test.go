@@ -32,7 +32,7 @@ func serveForTest(args []string) {
 	if args[0] == "hostile" {
 		serveHostile(args[1:])
 	}
-	for _, f := range append(builtin.Stages(), probeFactory(), unwrap.Factory(), deflectometry.Factory()) {
+	for _, f := range append(builtin.Stages(), probeFactory(), tellFactory(), unwrap.Factory(), deflectometry.Factory()) {
 		if f.Type == args[0] {
 			Serve(f)
 		}

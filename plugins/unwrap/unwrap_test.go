@@ -115,6 +115,38 @@ func TestDigsOnTheBore(t *testing.T) {
 	near(t, "coverage", item.Coverage.Share, 1, 1e-9)
 }
 
+// On a cone that widens from 20 to 26 mm over 4 mm, seen as the bore is, a dig has the same
+// diameter at both ends; a flat rim, of no height, is the cone's limit.
+func TestDigsOnAConeAndARim(t *testing.T) {
+	for _, height := range []float64{4, 0} {
+		s := Default
+		s.OuterDiameterMM, s.HeightMM = 26, height
+		a := newAnnulus(s, 399.5, 399.5)
+		for _, v0 := range []float64{-a.SlantUM / 3, a.SlantUM / 3} {
+			u0 := 4000.0
+			_, radius := a.At(a.InnerPx + (v0/a.SlantUM+0.5)*(a.OuterPx-a.InnerPx))
+			item := frame(a, 800, func(u, v float64) bool { // arcs are compared at the dig's own height
+				_, here := a.At(a.InnerPx + (v/a.SlantUM+0.5)*(a.OuterPx-a.InnerPx))
+				return math.Hypot(u/here*radius-u0, v-v0) <= 250
+			})
+			stage, _, err := Factory().New(func(dst any) error { *dst.(*Settings) = s; return nil }, pipeline.Environment{})
+			if err == nil {
+				err = stage.Run(context.Background(), item)
+			}
+			if err != nil || len(item.Defects) != 1 {
+				t.Fatalf("height %g, v %g: %v, %+v", height, v0, err, item.Defects)
+			}
+			d := item.Defects[0]
+			near(t, "diameter", d.DiameterUM, 500, 25)
+			near(t, "u", d.UUM, u0, 40)
+			near(t, "v", d.VUM, v0, 40)
+			if _, ring := item.Geometry.(pipeline.Annulus); !ring {
+				t.Errorf("the geometry is %+v", item.Geometry)
+			}
+		}
+	}
+}
+
 // Scratches keep length, width and direction along the arc, up the bore and across both.
 func TestScratchesOnTheBore(t *testing.T) {
 	a := bore()
