@@ -165,14 +165,7 @@ func TestStageDownAtTheLine(t *testing.T) {
 	}
 	s.flags = []string{"--plugins", pluginsFileOf(t, s.dir, 1), "--workers", "1"}
 	s.serve()
-	conn, err := grpc.NewClient(s.address, grpc.WithTransportCredentials(insecure.NewCredentials()))
-	s.check(err)
-	defer conn.Close()
-	state := func() healthpb.HealthCheckResponse_ServingStatus {
-		res, err := healthpb.NewHealthClient(conn).Check(context.Background(), &healthpb.HealthCheckRequest{Service: "stage.brittle"})
-		s.check(err)
-		return res.Status
-	}
+	state := func() healthpb.HealthCheckResponse_ServingStatus { return s.health("stage.brittle") }
 	if state() != healthpb.HealthCheckResponse_SERVING {
 		t.Errorf("before: %v", state())
 	}
@@ -191,6 +184,17 @@ func TestStageDownAtTheLine(t *testing.T) {
 	}
 	s.kill()
 	s.compare(12)
+}
+
+// health asks the server's health service.
+func (s *site) health(service string) healthpb.HealthCheckResponse_ServingStatus {
+	s.t.Helper()
+	conn, err := grpc.NewClient(s.address, grpc.WithTransportCredentials(insecure.NewCredentials()))
+	s.check(err)
+	defer conn.Close()
+	res, err := healthpb.NewHealthClient(conn).Check(context.Background(), &healthpb.HealthCheckRequest{Service: service})
+	s.check(err)
+	return res.Status
 }
 
 func runVerb(t *testing.T, args ...string) (code int, out, errOut string) {
@@ -386,6 +390,9 @@ func TestStageThatStartsLaterAtTheLine(t *testing.T) {
 	if text := stations(); !strings.Contains(text, "stage brittle is down (") || !strings.Contains(text, "no such file") {
 		t.Errorf("stations:\n%s", text)
 	}
+	if h := s.health("stage.brittle"); h != healthpb.HealthCheckResponse_NOT_SERVING {
+		t.Errorf("health %v", h)
+	}
 	self, err := os.Executable()
 	s.check(err)
 	s.check(os.WriteFile(s.path("stage.sh"), []byte(fmt.Sprintf("#!/bin/sh\nexec %q serve-brittle\n", self)), 0o755))
@@ -394,6 +401,9 @@ func TestStageThatStartsLaterAtTheLine(t *testing.T) {
 			break
 		}
 		time.Sleep(50 * time.Millisecond)
+	}
+	if h := s.health("stage.brittle"); h != healthpb.HealthCheckResponse_SERVING {
+		t.Errorf("health %v", h)
 	}
 	s.check(s.feedCommand(ctx, "second.jsonl", "--attempt", "2").Run())
 	if v := s.answered("second.jsonl"); len(v) != 1 || v[0]["verdict"] != "accept" {
