@@ -83,6 +83,6 @@ func rootCommand() *cobra.Command {
 	root.SetVersionTemplate("{{.Version}}\n")
 	root.AddCommand(feedCommand(), yieldCommand(), watchCommand(), unitCommand(), holdsCommand(), disposeCommand(),
 		outcomeCommand(), recipesCommand(), renderCommand(), volumeCommand())
-	root.AddCommand(approveCommand(), approvalsCommand(), mastersCommand(), suspectsCommand(), stationsCommand(), changeCommand(), latencyCommand(), alarmsCommand(), driftCommand())
+	root.AddCommand(approveCommand(), approvalsCommand(), mastersCommand(), suspectsCommand(), stationsCommand(), changeCommand(), latencyCommand(), alarmsCommand(), driftCommand(), mapCommand())
 	return root
 }
