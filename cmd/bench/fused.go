@@ -147,7 +147,7 @@ func benchFused(o options) (map[string]figure, error) {
 		"opencv 1":    opencv(1), "opencv 2": opencv(2),
 	}
 	times := map[string]*pair{}
-	for range max(repeats(o, 30), 10) {
+	for range o.rounds(30) {
 		for name, job := range jobs {
 			if times[name] == nil {
 				times[name] = &pair{}
@@ -159,6 +159,9 @@ func benchFused(o options) (map[string]figure, error) {
 	}
 	out := fusedFigures(times)
 	out["heap_per_frame_fraction"] = figure{heapFraction(eight), ""}
+	if o.short { // compiling takes longer than all the rest
+		return out, nil
+	}
 	if ratio, err := portableOverNative(o); err != nil {
 		fmt.Fprintf(os.Stderr, "bench: portable_vs_native left out: %v\n", err)
 	} else {

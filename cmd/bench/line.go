@@ -17,6 +17,14 @@ var errNoVerdict = errors.New("the server ended the stream without a verdict")
 // chunkBytes keeps a chunk's message below 1 MiB.
 const chunkBytes = 1_000_000
 
+// shot is a frame with its checksum.
+type shot struct {
+	raw raster.Raw
+	sum uint32
+}
+
+func shotOf(raw raster.Raw) shot { return shot{raw, pipeline.Checksum(raw.Data)} }
+
 // benchLine is a stream to the server that shows one part after the other.
 type benchLine struct {
 	stream grpc.BidiStreamingClient[inspectpb.InspectRequest, inspectpb.InspectResponse]
@@ -24,9 +32,10 @@ type benchLine struct {
 	number uint32
 }
 
-// send sends a frame as the only one of the next unit.
-func (l *benchLine) send(raw raster.Raw, sum uint32) error {
+// send sends the next of the frames as the only one of the next unit.
+func (l *benchLine) send(shots ...shot) error {
 	l.number++
+	raw, sum := shots[int(l.number)%len(shots)].raw, shots[int(l.number)%len(shots)].sum
 	h := pipeline.FrameHeader{
 		Identity: pipeline.Identity{Part: l.part, Unit: fmt.Sprintf("u%d", l.number), Line: "A", Station: "A1", Attempt: 1, Purpose: pipeline.Production},
 		Capture:  pipeline.Capture{Format: raw.Format, Width: raw.Width, Height: raw.Height, ExposureUS: 1000}, View: "ring", Count: 1, Stride: raw.Stride,
@@ -56,9 +65,9 @@ func (l *benchLine) receive(leastDefects int) error {
 }
 
 // show sends one frame and waits for its verdict.
-func (l *benchLine) show(raw raster.Raw, sum uint32, leastDefects int) (time.Duration, error) {
+func (l *benchLine) show(leastDefects int, shots ...shot) (time.Duration, error) {
 	start := time.Now()
-	if err := l.send(raw, sum); err != nil {
+	if err := l.send(shots...); err != nil {
 		return 0, err
 	}
 	err := l.receive(leastDefects)
@@ -67,14 +76,14 @@ func (l *benchLine) show(raw raster.Raw, sum uint32, leastDefects int) (time.Dur
 
 // pipelined sends n frames with up to ahead of them unanswered, and returns the time from
 // the first byte sent to the last verdict.
-func (l *benchLine) pipelined(raw raster.Raw, sum uint32, n, ahead, leastDefects int) (time.Duration, error) {
+func (l *benchLine) pipelined(n, ahead, leastDefects int, shots ...shot) (time.Duration, error) {
 	start := time.Now()
 	room, sent := make(chan struct{}, ahead), make(chan error, 1)
 	go func() {
 		var err error
 		for range n {
 			room <- struct{}{}
-			if err = l.send(raw, sum); err != nil {
+			if err = l.send(shots...); err != nil {
 				break
 			}
 		}

@@ -29,6 +29,14 @@ type options struct {
 	scene    func() *scene // the same in all parts
 }
 
+// rounds is how often what is compared runs in turns: n times, in a short run 4.
+func (o options) rounds(n int) int {
+	if o.short {
+		return 4
+	}
+	return n
+}
+
 // part is something to be measured.
 type part struct {
 	name    string // for --only

@@ -30,43 +30,52 @@ func newScene() scene { return drawScene(sceneWidth, sceneHeight) }
 // drawScene draws the scene, or a smaller one with as many objects for its area.
 func drawScene(width, height int) scene {
 	rng := rand.New(rand.NewPCG(12, 12))
-	s := scene{raw: raster.NewRaw(raster.Mono8, width, height), dark: raster.NewPlane(width, height),
-		gain: raster.NewPlane(width, height), bad: raster.NewMask(width, height)}
+	s := scene{dark: raster.NewPlane(width, height), gain: raster.NewPlane(width, height), bad: raster.NewMask(width, height)}
+	for i := range s.dark.Pix {
+		s.dark.Pix[i] = float32(4 + 0.3*rng.NormFloat64())
+		s.gain.Pix[i] = float32(1 + 0.01*rng.NormFloat64())
+	}
+	for range s.share(1470) {
+		s.bad.Set(rng.IntN(width), rng.IntN(height), true)
+	}
+	s.raw = s.frame(12)
+	return s
+}
+
+// frame draws another part before the same camera.
+func (s scene) frame(seed uint64) raster.Raw {
+	rng := rand.New(rand.NewPCG(seed, 13))
+	width, height := s.dark.Width, s.dark.Height
 	light := raster.NewPlane(width, height)
 	for y := range height {
 		for x := range width {
 			dx, dy := float64(x)/float64(width)-0.5, float64(y)/float64(height)-0.5
 			light.Set(x, y, float32(33-30*(dx*dx+dy*dy)))
-			s.dark.Set(x, y, float32(4+0.3*rng.NormFloat64()))
-			s.gain.Set(x, y, float32(1+0.01*rng.NormFloat64()))
 		}
 	}
 	s.blobs(light, rng)
-	for y := range height {
-		for x := range width {
-			v := float64(light.At(x, y)/s.gain.At(x, y)+s.dark.At(x, y)) + 1.6*rng.NormFloat64()
-			s.raw.Data[y*width+x] = byte(min(max(math.Round(v), 0), 255))
+	raw := raster.NewRaw(raster.Mono8, width, height)
+	for i, l := range light.Pix {
+		v := float64(l/s.gain.Pix[i]+s.dark.Pix[i]) + 1.6*rng.NormFloat64()
+		raw.Data[i] = byte(min(max(math.Round(v), 0), 255))
+		if s.bad.Bits[i] {
+			raw.Data[i] = 255
 		}
 	}
-	for range s.share(1470) {
-		x, y := rng.IntN(width), rng.IntN(height)
-		s.bad.Set(x, y, true)
-		s.raw.Data[y*width+x] = 255
-	}
-	return s
+	return raw
 }
 
 // share is how many of n in the whole scene lie in one of its size.
 func (s scene) share(n int) int {
-	return n * s.raw.Width * s.raw.Height / (sceneWidth * sceneHeight)
+	return n * s.dark.Width * s.dark.Height / (sceneWidth * sceneHeight)
 }
 
 func (s scene) blobs(light *raster.Plane, rng *rand.Rand) {
-	width, height := float64(s.raw.Width), float64(s.raw.Height)
+	width, height := float64(light.Width), float64(light.Height)
 	spot := func(cx, cy, sigma, peak float64) {
 		r := int(4*sigma) + 1
-		for y := max(int(cy)-r, 0); y <= min(int(cy)+r, s.raw.Height-1); y++ {
-			for x := max(int(cx)-r, 0); x <= min(int(cx)+r, s.raw.Width-1); x++ {
+		for y := max(int(cy)-r, 0); y <= min(int(cy)+r, light.Height-1); y++ {
+			for x := max(int(cx)-r, 0); x <= min(int(cx)+r, light.Width-1); x++ {
 				dx, dy := float64(x)-cx, float64(y)-cy
 				light.Pix[y*light.Stride+x] += float32(peak * math.Exp(-(dx*dx+dy*dy)/(2*sigma*sigma)))
 			}

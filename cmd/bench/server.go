@@ -68,7 +68,7 @@ func startServer(o options) (*benchedServer, error) {
 	}
 	address := free.Addr().String()
 	free.Close()
-	s.cmd = exec.Command(program, "serve", "--listen", address, "--images", "", "--log-level", "warn", "--development")
+	s.cmd = exec.Command(program, "serve", "--listen", address, "--images", "", "--log-level", "error", "--development")
 	s.cmd.Dir, s.cmd.Stderr = dir, os.Stderr
 	if err := s.cmd.Start(); err != nil {
 		return s, err

@@ -7,7 +7,6 @@ import (
 	"slices"
 	"time"
 
-	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
 	"lapgate/pipeline/raster/cv"
 	"lapgate/pipeline/raster/fused"
@@ -18,7 +17,6 @@ const (
 	sceneDefects   = 100 // at least that many of the scene's 160 must be in a verdict
 	pipelinedRun   = 8   // frames in one go, sent or through the pass alone
 	pipelinedAhead = 3   // of them under way at once
-	latencyUnits   = 2000
 )
 
 // benchVerdicts sends frames to the real server program over a loopback socket: from the
@@ -62,7 +60,7 @@ func (s *benchedServer) large(o options) (map[string]figure, error) {
 	}
 	defer chain.Close()
 	cv.SetThreads(1)
-	sum := pipeline.Checksum(scene.raw.Data)
+	shots := []shot{shotOf(scene.raw), shotOf(scene.frame(13))} // not twice the same: that raises an alarm of dirt on the lens
 	var alone, opencv, trip, stream best
 	jobs := []struct {
 		of  *best
@@ -70,13 +68,13 @@ func (s *benchedServer) large(o options) (map[string]figure, error) {
 	}{
 		{&alone, inTurn(pipelinedRun, pass.run(3.5, 1))},
 		{&opencv, func() error { _, err := chain.Run(scene.raw); return err }},
-		{&trip, func() error { _, err := line.show(scene.raw, sum, sceneDefects); return err }},
+		{&trip, func() error { _, err := line.show(sceneDefects, shots...); return err }},
 		{&stream, func() error {
-			_, err := line.pipelined(scene.raw, sum, pipelinedRun, pipelinedAhead, sceneDefects)
+			_, err := line.pipelined(pipelinedRun, pipelinedAhead, sceneDefects, shots...)
 			return err
 		}},
 	}
-	for range max(repeats(o, 20), 10) {
+	for range o.rounds(20) {
 		for _, j := range jobs {
 			if err := j.of.time(j.run); err != nil {
 				return nil, err
@@ -101,12 +99,12 @@ func (s *benchedServer) small(o options) ([]float64, error) {
 	go func() { reports <- s.askReports(ctx) }()
 	rng := rand.New(rand.NewPCG(5, 5))
 	var took []float64
-	for range latencyUnits {
+	for range o.units() {
 		raw := raster.NewRaw(raster.Mono8, 640, 480)
 		for k := range raw.Data {
 			raw.Data[k] = byte(20 + 1.6*rng.NormFloat64())
 		}
-		d, err := line.show(raw, pipeline.Checksum(raw.Data), 0)
+		d, err := line.show(0, shotOf(raw))
 		if err != nil {
 			stop()
 			return nil, err
@@ -138,6 +136,14 @@ func (s *benchedServer) askReports(ctx context.Context) error {
 		}
 	}
 	return nil
+}
+
+// units is over how many units latencies are taken.
+func (o options) units() int {
+	if o.short {
+		return 300
+	}
+	return 2000
 }
 
 // percentile is the smallest value that p per cent of the values do not exceed.
