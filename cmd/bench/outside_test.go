@@ -2,6 +2,8 @@ package main
 
 import (
 	"os"
+	"os/exec"
+	"path/filepath"
 	"testing"
 )
 
@@ -11,7 +13,11 @@ func TestMain(m *testing.M) {
 }
 
 func TestOutsideFigures(t *testing.T) {
-	f, err := benchOutside(options{short: true})
+	dir := t.TempDir()
+	if out, err := exec.Command("go", "build", "-o", filepath.Join(dir, "lapgate-stage"), "lapgate/cmd/stage").CombinedOutput(); err != nil {
+		t.Fatalf("%v\n%s", err, out)
+	}
+	f, err := benchOutside(options{short: true, lapgated: filepath.Join(dir, "lapgated")})
 	if err != nil {
 		t.Fatal(err)
 	}

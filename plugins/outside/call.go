@@ -92,7 +92,7 @@ func (p *process) failure(err error) error {
 		return p.killFor(fmt.Sprintf("no answer within %v; it was killed", p.set.Deadline))
 	case codes.ResourceExhausted:
 		return p.killFor("its answer is too large: " + s.Message())
-	case codes.Unavailable:
+	case codes.Unavailable, codes.Canceled: // nobody cancels a call: its connection was closed
 		return p.broken(s.Message())
 	default:
 		return p.killFor(fmt.Sprintf("its answer was refused: %s: %s", s.Code(), s.Message()))

@@ -28,6 +28,7 @@ type launched struct {
 	cmd    *exec.Cmd
 	stdout io.ReadCloser
 	stderr io.ReadCloser
+	said   chan struct{} // closed when nothing more comes on stderr
 	exited chan struct{} // closed when the process has ended
 	ended  string        // how, once exited is closed
 
@@ -37,7 +38,7 @@ type launched struct {
 var _ runner.Runner = (*launched)(nil)
 
 func newLaunched(set Settings, dir string, extra []*os.File) *launched {
-	return &launched{set: set, dir: dir, extra: extra, exited: make(chan struct{})}
+	return &launched{set: set, dir: dir, extra: extra, said: make(chan struct{}), exited: make(chan struct{})}
 }
 
 // prepare returns the command of one attempt to start.
@@ -103,8 +104,24 @@ func (l *launched) Stdout() io.ReadCloser {
 	}{io.TeeReader(l.stdout, &l.first), l.stdout}
 }
 
-// Stderr implements runner.Runner.
-func (l *launched) Stderr() io.ReadCloser { return l.stderr }
+// Stderr implements runner.Runner. Its last words have been taken in when said is closed.
+func (l *launched) Stderr() io.ReadCloser { return &untilEnd{ReadCloser: l.stderr, end: l.said} }
+
+// untilEnd is a reader that closes a channel when it is asked for more at its end.
+type untilEnd struct {
+	io.ReadCloser
+	end  chan struct{}
+	once sync.Once
+}
+
+// Read implements io.Reader.
+func (u *untilEnd) Read(p []byte) (int, error) {
+	n, err := u.ReadCloser.Read(p)
+	if n == 0 && err != nil {
+		u.once.Do(func() { close(u.end) })
+	}
+	return n, err
+}
 
 // Name implements runner.Runner.
 func (l *launched) Name() string { return l.set.Path }

@@ -204,7 +204,10 @@ func (p *process) death() string {
 	case <-time.After(time.Second):
 		return "its process does not answer"
 	}
-	time.Sleep(20 * time.Millisecond) // the last lines are on their way
+	select { // a child of the process may keep stderr open
+	case <-p.launched.said:
+	case <-time.After(20 * time.Millisecond):
+	}
 	p.mu.Lock()
 	defer p.mu.Unlock()
 	if p.cause != "" {
