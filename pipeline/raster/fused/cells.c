@@ -73,6 +73,7 @@ static char *lay_out(pg_band *b, char *at, int cell) {
 	size_t ring = 4 * (size_t)sample_groups(cell); // the sampled rows and the ring are never in use together
 	b->horizontal = b->samples = take(&at, (ring > 8 ? ring : 8) * row);
 	b->filtered = take(&at, 4 * row);
+	b->sums = (float *)(void *)b->filtered; // of the first look, which filters nothing
 	b->grain = take(&at, t * columns * ((size_t)cell / 4) * ((size_t)cell / 4));
 	b->torn = (uint8_t *)take(&at, columns);
 	b->top = take(&at, row);
@@ -81,7 +82,6 @@ static char *lay_out(pg_band *b, char *at, int cell) {
 	b->low = take(&at, t * segments);
 	b->high = take(&at, t * segments);
 	b->counts = (uint16_t *)(void *)take(&at, 2 * (size_t)pg_pitch(b->width));
-	b->sums = (float *)(void *)take(&at, 4 * (size_t)pg_pitch(b->width));
 	b->stats = (double *)(void *)take(&at, 3 * sizeof(double) * columns);
 	b->whole = take(&at, t * (size_t)cell * (size_t)cell);
 	b->highest = take(&at, t * segments);
@@ -110,6 +110,11 @@ void pg_band_free(pg_band *b) {
 		free(b->saturated.at);
 		free(b);
 	}
+}
+
+char *pg_band_room(pg_band *b, int64_t bytes) {
+	const int64_t head = (sizeof(pg_band) + 63) / 64 * 64;
+	return b->bytes - head < bytes ? 0 : (char *)b + head;
 }
 
 int64_t pg_band_bytes(const pg_band *b) {

@@ -130,6 +130,7 @@ typedef struct {
 	pg_span *a, *b;
 	rows need;
 	pg_patch *patch; // NULL: not kept
+	int64_t lent, bytes; // by the band for these rows, or taken for them beside it
 } line;
 
 static const float weights[5] = {1.f / 16, 4.f / 16, 6.f / 16, 4.f / 16, 1.f / 16};
@@ -139,13 +140,17 @@ static void along(float *restrict dst, const float *restrict s, int x0, int x1) 
 		dst[x] = weights[0] * (s[x - 2] + s[x + 2]) + weights[1] * (s[x - 1] + s[x + 1]) + weights[2] * s[x];
 }
 
-// keep copies the signal of a span of row y to the patch.
+// PATCH_SHARE of the frame's pixels at most are kept; what lies beyond is evaluated anew
+// where it is measured.
+#define PATCH_SHARE (1. / 1024)
+
+// keep copies the signal of a span of row y to the patch, as long as there is room.
 static int keep(pg_patch *p, const float *signal, pg_span s) {
 	int64_t n = s.x1 - s.x0;
-	if (p->used + n > INT32_MAX)
-		return PG_NO_MEMORY;
+	if (p->used + n > p->most)
+		return PG_OK;
 	if (p->used + n > p->values_room) {
-		int64_t room = p->values_room + p->values_room / 4 + n + 16384;
+		int64_t room = p->values_room + p->values_room / 8 + n + 4096;
 		float *v = realloc(p->values, sizeof(float) * (size_t)room);
 		if (!v)
 			return PG_NO_MEMORY;
@@ -371,13 +376,17 @@ static int gather(const pg_frame *f, pg_blobs *b, const pg_runs *runs, const flo
 	return e;
 }
 
-// line_rows carves the buffers of l out of one block; *block is to be freed.
-static int line_rows(const pg_frame *f, line *l, void **block) {
-	size_t n = (size_t)f->width + 16;
-	char *p = calloc(n, 11 * sizeof(float) + 2 + sizeof(pg_span));
-	*block = p;
+// line_rows carves the buffers of l out of the band's memory, which is free by now, or
+// where that is too small out of a block that is to be freed.
+static int line_rows(const pg_frame *f, pg_band *band, line *l, void **block) {
+	const size_t n = ((size_t)f->width + 31) / 16 * 16, bytes = n * (11 * sizeof(float) + 2 + sizeof(pg_span));
+	char *p = pg_band_room(band, (int64_t)bytes);
+	l->lent = p ? (int64_t)bytes : 0, l->bytes = p ? 0 : (int64_t)bytes;
+	if (!p)
+		p = *block = malloc(bytes);
 	if (!p)
 		return PG_NO_MEMORY;
+	memset(p, 0, bytes);
 	float *r = (float *)(void *)p + 8;
 	l->signal = r, l->out = r + n, l->noise = r + 2 * n;
 	for (size_t k = 0; k < 8; k++)
@@ -388,33 +397,51 @@ static int line_rows(const pg_frame *f, line *l, void **block) {
 	return PG_OK;
 }
 
-int pg_find(const pg_frame *f, const pg_grid *g, pg_blobs *b, int32_t area, float *snr) {
+// give_back leaves the band's memory as the next pass wants it: zero beside the rows.
+static void give_back(pg_band *band, const line *l, void *block) {
+	if (l->lent > 0)
+		memset(pg_band_room(band, l->lent), 0, (size_t)l->lent);
+	free(block);
+}
+
+// taken notes how much memory a step of the search takes at most.
+static void taken(pg_blobs *b, int64_t bytes) {
+	bytes += pg_blobs_bytes(b);
+	b->peak = bytes > b->peak ? bytes : b->peak;
+}
+
+int pg_find(const pg_frame *f, const pg_grid *g, pg_band *band, pg_blobs *b, int32_t area, float *snr) {
 	rows spans = {.start = calloc((size_t)f->height + 1, sizeof(int64_t))};
 	line l = {0};
 	pg_runs runs = {0};
 	float *peaks = 0;
 	int32_t *label = 0;
 	void *block = 0;
+	taken(b, 2 * 8 * (int64_t)f->height + 5 * b->candidates.count); // what labels them
 	int e = wanted(f, &b->candidates, snr != 0, &spans);
+	taken(b, (int64_t)sizeof(pg_span) * 2 * spans.room);
 	free(b->candidates.at);
 	b->candidates = (pg_runs){0};
-	e = e ? e : line_rows(f, &l, &block);
+	e = e ? e : line_rows(f, band, &l, &block);
 	if (!snr && !e) {
 		b->patch.start = calloc((size_t)f->height, 2 * sizeof(int32_t));
 		l.patch = &b->patch;
+		b->patch.most = (int64_t)(PATCH_SHARE * f->width * f->height);
 		e = b->patch.start ? PG_OK : PG_NO_MEMORY;
 	}
 	e = e ? e : evaluate(f, g, &spans, &l, &runs, &peaks, snr);
+	taken(b, (int64_t)sizeof(pg_span) * (spans.room + l.need.room) + 8 * (int64_t)f->height + 20 * runs.room + l.bytes);
+	free(spans.at);
+	free(spans.start);
+	free(l.need.at);
+	give_back(band, &l, block);
 	if (!e) {
 		label = malloc(sizeof(int32_t) * (size_t)(runs.count + 1));
 		e = label ? gather(f, b, &runs, peaks, label, pg_label(runs.at, runs.count, label), area) : PG_NO_MEMORY;
 	}
+	taken(b, 20 * runs.room);
 	free(label);
 	free(peaks);
-	free(block);
-	free(l.need.at);
 	free(runs.at);
-	free(spans.at);
-	free(spans.start);
 	return e;
 }

@@ -1,5 +1,6 @@
 package fused
 
+// #include <stdlib.h>
 // #include "objects.h"
 import "C"
 
@@ -29,7 +30,7 @@ type Result struct {
 	SNR         *raster.Plane // only with Settings.SNR
 	Floats      bool          // 16-bit integers did not do
 	RowsAgain   int           // grid rows passed twice, because the first look misjudged level or noise
-	MemoryBytes int64         // taken in C for this frame, beside the frame and the correction
+	MemoryBytes int64         // most taken in C at a time for this frame, beside the frame and the correction
 }
 
 // Whole returns the region that is all of a frame.
@@ -58,6 +59,10 @@ func (c *Correction) Find(raw raster.Raw, region []raster.Span, s Settings) (*Re
 	}
 	j := newJob(c, raw, region, s)
 	defer j.pin.Unpin()
+	if err := j.takeGuess(); err != nil {
+		return nil, err
+	}
+	defer j.dropGuess()
 	float := !c.integer
 	fits, err := j.look(float)
 	if err == nil && !fits {
@@ -86,16 +91,18 @@ func explain(err error, raw raster.Raw) error {
 
 // job is one call of Find.
 type job struct {
-	c      *Correction
-	s      Settings
-	pin    runtime.Pinner
-	frame  *C.pg_frame
-	rows   int // of the grid
-	guess  *grid
-	grid   *grid
-	inside []int64
-	valid  []int64
-	bands  []*band
+	c          *Correction
+	s          Settings
+	pin        runtime.Pinner
+	frame      *C.pg_frame
+	rows       int // of the grid
+	guess      *grid
+	grid       *grid
+	inside     []int64
+	valid      []int64
+	bands      []*band
+	guessBytes int64 // taken in C for the grid of the first look
+	blockBytes int64 // taken in C for the first look, and given back after it
 }
 
 func newJob(c *Correction, raw raster.Raw, region []raster.Span, s Settings) *job {
@@ -120,7 +127,9 @@ func newJob(c *Correction, raw raster.Raw, region []raster.Span, s Settings) *jo
 	columns, rows := (c.width+cell-1)/cell, (c.height+cell-1)/cell
 	j.rows = rows
 	j.inside, j.valid = make([]int64, columns*rows), make([]int64, columns*rows)
-	j.guess, j.grid = newGrid(j, columns, rows), newGrid(j, columns, rows)
+	values := make([]float64, 5*columns*rows)
+	j.pin.Pin(unsafe.SliceData(values))
+	j.grid = newGrid(j, columns, rows, values)
 	j.pin.Pin(f)
 	return j
 }
@@ -168,8 +177,12 @@ func (j *job) look(float bool) (bool, error) {
 		}
 		j.bands = append(j.bands, b)
 	}
-	blocks := make([]uint64, int(C.pg_sample_blocks(f))*j.rows/8+1)
-	p := pinned(j, blocks)
+	j.blockBytes = int64(C.pg_sample_blocks(f)) * int64(j.rows)
+	p := C.calloc(C.size_t(j.blockBytes+1), 1)
+	if p == nil {
+		return false, errMemory
+	}
+	defer C.free(p)
 	err := j.each(func(b *band, row0, row1 C.int32_t) C.int { return C.pg_sample(f, j.guess.c, b.c, p, row0, row1) })
 	if err != nil {
 		return false, err

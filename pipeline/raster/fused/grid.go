@@ -1,5 +1,6 @@
 package fused
 
+// #include <stdlib.h>
 // #include "objects.h"
 import "C"
 
@@ -46,15 +47,36 @@ type grid struct {
 	filled []uint8
 }
 
-func newGrid(j *job, columns, rows int) *grid {
+// newGrid returns a grid over values that stay in place: level, noise, mean, sigma, block.
+func newGrid(j *job, columns, rows int, values []float64) *grid {
 	n := columns * rows
-	g := &grid{c: &C.pg_grid{columns: C.int32_t(columns), rows: C.int32_t(rows)}, values: make([]float64, 5*n), filled: make([]uint8, n)}
-	part := func(k int) *C.double { return (*C.double)(pinned(j, g.values[k*n:(k+1)*n])) }
+	g := &grid{c: &C.pg_grid{columns: C.int32_t(columns), rows: C.int32_t(rows)}, values: values, filled: make([]uint8, n)}
+	part := func(k int) *C.double { return (*C.double)(unsafe.SliceData(g.values[k*n : (k+1)*n])) }
 	g.c.level, g.c.noise, g.c.mean, g.c.sigma, g.c.block = part(0), part(1), part(2), part(3), part(4)
 	g.c.inside, g.c.valid = (*C.int64_t)(pinned(j, j.inside)), (*C.int64_t)(pinned(j, j.valid))
 	g.c.filled = (*C.uint8_t)(pinned(j, g.filled))
 	j.pin.Pin(g.c)
 	return g
+}
+
+// takeGuess makes the grid of the first look in memory of C, as it is not needed to the
+// end.
+func (j *job) takeGuess() error {
+	columns, rows := int(j.grid.c.columns), int(j.grid.c.rows)
+	p := C.calloc(C.size_t(5*columns*rows), C.sizeof_double)
+	if p == nil {
+		return errMemory
+	}
+	j.guessBytes = int64(5 * columns * rows * C.sizeof_double)
+	j.guess = newGrid(j, columns, rows, unsafe.Slice((*float64)(p), 5*columns*rows))
+	return nil
+}
+
+func (j *job) dropGuess() {
+	if j.guess != nil {
+		C.free(unsafe.Pointer(unsafe.SliceData(j.guess.values)))
+		j.guess = nil
+	}
 }
 
 // raster returns the grid as the reference has it.

@@ -29,19 +29,21 @@ func (j *job) objects() (*Result, error) {
 	if r.RowsAgain, err = j.again(found); err != nil {
 		return nil, err
 	}
+	first := j.guessBytes + max(j.blockBytes, int64(C.pg_blobs_bytes(found))) // taken up to here
+	j.dropGuess()
 	var snr *C.float
 	if j.s.SNR {
 		r.SNR = raster.NewPlane(j.c.width, j.c.height)
 		snr = (*C.float)(pinned(j, r.SNR.Pix))
 	}
-	if err := firstError(C.pg_find(j.frame, j.grid.c, found, C.int32_t(j.s.MinAreaPx), snr)); err != nil {
+	if err := firstError(C.pg_find(j.frame, j.grid.c, j.bands[0].c, found, C.int32_t(j.s.MinAreaPx), snr)); err != nil {
 		return nil, err
 	}
 	r.Truncated = j.strongest(found)
 	if err := firstError(C.pg_index(j.frame, found)); err != nil {
 		return nil, err
 	}
-	r.MemoryBytes = int64(C.pg_blobs_bytes(found))
+	r.MemoryBytes = max(first, int64(found.peak), int64(C.pg_blobs_bytes(found)))
 	for _, b := range j.bands {
 		r.MemoryBytes += int64(C.pg_band_bytes(b.c))
 	}
@@ -98,8 +100,9 @@ func (j *job) measure(found *C.pg_blobs, out []Blob) error {
 	results := make([]C.int, workers)
 	var wait sync.WaitGroup
 	work := func(w int) {
+		m := new(C.pg_measure)
 		for i := w; i < len(out) && results[w] == C.PG_OK; i += workers {
-			results[w] = j.measureOne(found, out, i)
+			results[w] = j.measureOne(found, out, i, m)
 		}
 	}
 	for w := 1; w < workers; w++ {
@@ -110,9 +113,8 @@ func (j *job) measure(found *C.pg_blobs, out []Blob) error {
 	return firstError(results...)
 }
 
-func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int) C.int {
-	var m C.pg_measure
-	if e := C.pg_measure_blob(j.frame, j.grid.c, found, C.int64_t(i), &m); e != C.PG_OK {
+func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int, m *C.pg_measure) C.int {
+	if e := C.pg_measure_blob(j.frame, j.grid.c, found, C.int64_t(i), m); e != C.PG_OK {
 		return e
 	}
 	b := unsafe.Slice(found.blobs, int(found.count))[i]

@@ -18,7 +18,7 @@ typedef struct {
 	int32_t *start; // 2·height: first span of each row, and behind its last
 	int32_t *first; // of each span, into values
 	float *values;
-	int64_t used, values_room;
+	int64_t used, values_room, most;
 } pg_patch;
 
 typedef struct {
@@ -30,6 +30,7 @@ typedef struct {
 	int64_t *row_start; // height + 1: where a row's runs begin in by_row
 	int32_t *by_row;    // runs sorted by row and column
 	int32_t *owner;     // blob of each run
+	int64_t peak;       // bytes that were taken at a time
 } pg_blobs;
 
 enum { PG_PATH = 72 };
@@ -43,7 +44,7 @@ typedef struct {
 
 pg_blobs *pg_blobs_new(void);
 void pg_blobs_free(pg_blobs *b);
-int64_t pg_blobs_bytes(const pg_blobs *b);
+int64_t pg_blobs_bytes(const pg_blobs *b); // taken now
 
 // pg_collect takes the candidates of a band; bands come from the top.
 int pg_collect(pg_blobs *b, pg_band *band);
@@ -53,8 +54,9 @@ void pg_spans(const pg_run *runs, int64_t n, pg_span *out);
 int pg_replace(pg_blobs *b, const pg_band *band, int32_t y0, int32_t y1);
 // pg_find evaluates the snr plane exactly around the candidates that may matter, labels
 // what is above the thresholds and keeps blobs of at least area pixels. With snr (width ×
-// height, zeroed) it evaluates the whole region and writes it there.
-int pg_find(const pg_frame *f, const pg_grid *g, pg_blobs *b, int32_t area, float *snr);
+// height, zeroed) it evaluates the whole region and writes it there. The band's memory is
+// used for rows; its runs must have been collected.
+int pg_find(const pg_frame *f, const pg_grid *g, pg_band *band, pg_blobs *b, int32_t area, float *snr);
 // pg_keep drops the blobs whose entry is 0.
 void pg_keep(pg_blobs *b, const uint8_t *keep);
 // pg_index sorts the kept runs by row; pg_measure_blob needs it.

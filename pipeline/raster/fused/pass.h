@@ -93,6 +93,8 @@ typedef struct {
 pg_band *pg_band_new(int32_t width, int32_t cell, int32_t is_float);
 void pg_band_free(pg_band *b);
 int64_t pg_band_bytes(const pg_band *b);
+// pg_band_room is the memory of the rows, or NULL where that is less than bytes.
+char *pg_band_room(pg_band *b, int64_t bytes);
 
 // pg_sample measures the cells of grid rows row0 to row1 on some of their rows; blocks
 // receives the means of blocks, pg_sample_blocks(f) bytes a grid row.

@@ -220,7 +220,7 @@ static int objects(job *j) {
 		e = pg_pass(&j->f, &j->grid, &j->guess, j->bands[0], 0, 1);
 		e = e ? e : pg_replace(j->blobs, j->bands[0], 0, j->f.cell);
 	}
-	e = e ? e : pg_find(&j->f, &j->grid, j->blobs, 1, j->snr);
+	e = e ? e : pg_find(&j->f, &j->grid, j->bands[0], j->blobs, 1, j->snr);
 	e = e ? e : pg_index(&j->f, j->blobs);
 	for (int64_t i = 0; i < j->blobs->count && !e; i++) {
 		e = pg_measure_blob(&j->f, &j->grid, j->blobs, i, &m);
