@@ -22,14 +22,24 @@ func near(t *testing.T, what string, got, want, tolerance float64) {
 	}
 }
 
-func pixels(values ...float64) []*raster.Plane {
+// planes makes a sequence of planes.
+func planes(list ...*raster.Plane) sequence {
+	q := sequence{width: list[0].Width, height: list[0].Height}
+	for _, p := range list {
+		q.rows = append(q.rows, func(dst []float32, y int) { copy(dst, p.Row(y)) })
+	}
+	return q
+}
+
+// pixels makes a sequence of frames of one pixel.
+func pixels(values ...float64) sequence {
 	var out []*raster.Plane
 	for _, v := range values {
 		p := raster.NewPlane(1, 1)
 		p.Pix[0] = float32(v)
 		out = append(out, p)
 	}
-	return out
+	return planes(out...)
 }
 
 func straight(v float32) float64 { return float64(v) }
@@ -37,12 +47,12 @@ func straight(v float32) float64 { return float64(v) }
 // Worked example of N-step phase shifting, φ = 0.7, A = 100, B = 50 (textbook formulas,
 // numbers recomputed from the model).
 func TestPhaseOfTheWorkedExample(t *testing.T) {
-	for _, frames := range [][]*raster.Plane{
+	for _, frames := range []sequence{
 		pixels(138.242109, 67.789116, 61.757891, 132.210884), pixels(138.242109, 52.983501, 108.774389),
 	} {
 		f := solve(frames, straight)
 		near(t, "phase", f.phase[0], 0.7, 1e-6)
-		near(t, "modulation", f.modulation[0], 50, 1e-4)
+		near(t, "modulation", float64(f.modulation[0]), 50, 1e-4)
 	}
 }
 
@@ -58,7 +68,7 @@ func TestPhaseNoise(t *testing.T) {
 		}
 	}
 	sum := 0.0
-	for _, p := range solve(frames, straight).phase {
+	for _, p := range solve(planes(frames...), straight).phase {
 		sum += (p - 0.7) * (p - 0.7)
 	}
 	near(t, "standard deviation", math.Sqrt(sum/n), 0.0282843, 4*0.0282843/math.Sqrt(2*n))
@@ -69,11 +79,11 @@ func TestPhaseNoise(t *testing.T) {
 func TestSlopeOfAPhase(t *testing.T) {
 	s := Default
 	s.PeriodsMM, s.BothDirections = []float64{20}, false
-	var frames []*raster.Plane
+	var values []float64
 	for k := range 4 {
-		frames = append(frames, pixels(100+50*math.Cos(0.1+math.Pi/2*float64(k)))...)
+		values = append(values, 100+50*math.Cos(0.1+math.Pi/2*float64(k)))
 	}
-	got := stage{s}.slope(frames, []bool{true}, 255)
+	got := stage{s}.slope(pixels(values...), []bool{true}, 255)
 	near(t, "slope", got[0], 0.318310, 1e-5)
 }
 
@@ -82,9 +92,15 @@ func TestFringeOrder(t *testing.T) {
 	for _, want := range []float64{-40, -3.2, 0, 7.9, 49.9} {
 		coarse := want / 16
 		fine := math.Remainder(want, 2*math.Pi)
-		phase, doubt := refine([]float64{coarse + 0.05}, []float64{fine}, 16)
+		phase, use := []float64{fine}, []bool{true}
+		refine([]float64{coarse + 0.05}, phase, 16, use) // off by 0.8/2π of an order
 		near(t, "phase", phase[0], want, 1e-9)
-		near(t, "doubt", doubt[0], 0.8/(2*math.Pi), 1e-9)
+		if !use[0] {
+			t.Errorf("%g: out of use", want)
+		}
+		if refine([]float64{coarse + 0.15}, []float64{fine}, 16, use); use[0] { // by 2.4/2π
+			t.Errorf("%g: in use, though the order is in doubt", want)
+		}
 	}
 }
 

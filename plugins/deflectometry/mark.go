@@ -57,7 +57,7 @@ func (f field) countAbove(spans []raster.Span, threshold float64) int {
 	n := 0
 	for _, s := range spans {
 		for _, v := range f.total[s.Y*f.width+s.X0 : s.Y*f.width+s.X1] {
-			if v > threshold {
+			if float64(v) > threshold {
 				n++
 			}
 		}
@@ -68,13 +68,13 @@ func (f field) countAbove(spans []raster.Span, threshold float64) int {
 func (f field) place(spans []raster.Span) place {
 	peak := 0.0
 	for _, s := range spans {
-		peak = max(peak, slices.Max(f.total[s.Y*f.width+s.X0:s.Y*f.width+s.X1]))
+		peak = max(peak, float64(slices.Max(f.total[s.Y*f.width+s.X0:s.Y*f.width+s.X1])))
 	}
 	box := boxOf(spans)
 	mask := raster.NewMask(box.X1-box.X0, box.Y1-box.Y0)
 	for _, s := range spans {
 		for x := s.X0; x < s.X1; x++ {
-			mask.Set(x-box.X0, s.Y-box.Y0, f.total[s.Y*f.width+x] >= peak/2)
+			mask.Set(x-box.X0, s.Y-box.Y0, float64(f.total[s.Y*f.width+x]) >= peak/2)
 		}
 	}
 	half := filled(mask)
@@ -158,7 +158,7 @@ func (f field) wavy(p place) bool {
 func (a axis) turns(line, k0, k1 int, low float64) int {
 	n, sign := 0, 0.0
 	for k := k0 + 1; k < k1; k++ {
-		s, before := a.slope[a.at(line, k)], a.slope[a.at(line, k-1)]
+		s, before := a.slopeAt(line, k), a.slopeAt(line, k-1)
 		if math.Abs(s) < low || math.Abs(before) < low || s*before < 0 || s*sign > 0 {
 			continue
 		}

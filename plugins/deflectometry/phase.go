@@ -2,60 +2,91 @@ package deflectometry
 
 import (
 	"math"
-
-	"lapgate/pipeline/raster"
+	"runtime"
+	"sync"
 )
+
+// sequence is frames of one size, unpacked row by row: of many large ones only a row each
+// is in memory as numbers.
+type sequence struct {
+	width, height int
+	rows          []func(dst []float32, y int)
+}
+
+func (q sequence) part(from, to int) sequence {
+	return sequence{q.width, q.height, q.rows[from:to]}
+}
 
 // fringes is what N frames of one period and direction say of each pixel.
 type fringes struct {
 	phase      []float64 // rad, −π to π
-	modulation []float64 // counts, B of the model
+	modulation []float32 // counts, B of the model
 }
 
 // solve is the least-squares phase of I_k = A + B·cos(φ + 2πk/N), N ≥ 3 evenly spaced
 // steps: φ = atan2(−Σ I_k sin(2πk/N), Σ I_k cos(2πk/N)), B = (2/N)·√(both sums squared).
-func solve(frames []*raster.Plane, linear func(float32) float64) fringes {
-	n := len(frames)
+func solve(q sequence, linear func(float32) float64) fringes {
+	n := len(q.rows)
 	sin, cos := make([]float64, n), make([]float64, n)
 	for k := range n {
 		sin[k], cos[k] = math.Sincos(2 * math.Pi * float64(k) / float64(n))
 	}
-	p := frames[0]
-	out := fringes{make([]float64, p.Width*p.Height), make([]float64, p.Width*p.Height)}
-	for y := range p.Height {
-		for x := range p.Width {
-			s, c := 0.0, 0.0
-			for k, f := range frames {
-				v := linear(f.At(x, y))
-				s, c = s+v*sin[k], c+v*cos[k]
+	out := fringes{make([]float64, q.width*q.height), make([]float32, q.width*q.height)}
+	inBands(q.height, func(y0, y1 int) {
+		row, s, c := make([]float32, q.width), make([]float64, q.width), make([]float64, q.width)
+		for y := y0; y < y1; y++ {
+			clear(s)
+			clear(c)
+			for k, unpack := range q.rows {
+				unpack(row, y)
+				for x, v := range row {
+					value := linear(v)
+					s[x], c[x] = s[x]+value*sin[k], c[x]+value*cos[k]
+				}
 			}
-			i := y*p.Width + x
-			out.phase[i], out.modulation[i] = math.Atan2(-s, c), 2/float64(n)*math.Hypot(s, c)
+			for x := range row {
+				i := y*q.width + x
+				out.phase[i], out.modulation[i] = math.Atan2(-s[x], c[x]), float32(2/float64(n)*math.Hypot(s[x], c[x]))
+			}
 		}
-	}
+	})
 	return out
+}
+
+// inBands calls do for bands of rows, as many at once as there are processors. What a row
+// gets must not depend on the band it is in.
+func inBands(height int, do func(y0, y1 int)) {
+	n := min(runtime.GOMAXPROCS(0), max(height, 1))
+	var wg sync.WaitGroup
+	for b := range n {
+		wg.Go(func() { do(b*height/n, (b+1)*height/n) })
+	}
+	wg.Wait()
 }
 
 // linearised undoes a display that shows level^gamma: harmonics of that would leak into
 // the phase of 3 and 4 steps. top is the count of the brightest level.
-func linearised(gamma, top float64) func(float32) float64 {
+func linearised(gamma float64, top int) func(float32) float64 {
 	if gamma == 1 {
 		return func(v float32) float64 { return float64(v) }
 	}
-	return func(v float32) float64 { return top * math.Pow(max(float64(v), 0)/top, 1/gamma) }
+	table := make([]float64, top+1)
+	for i := range table {
+		table[i] = float64(top) * math.Pow(float64(i)/float64(top), 1/gamma)
+	}
+	return func(v float32) float64 { return table[min(max(int(v), 0), top)] }
 }
 
 // refine finds the fringe order of a finer period from the coarser phase, which is known
-// without ambiguity. It returns the fine phase over all fringes, and how far each order
-// was from a whole number: near 0.5 it could be the next one.
-func refine(coarse, fine []float64, ratio float64) (phase, doubt []float64) {
-	phase, doubt = make([]float64, len(fine)), make([]float64, len(fine))
+// without ambiguity. It makes fine the phase over all fringes, and takes out of use where
+// the order was so far from a whole number that it could be the next one.
+func refine(coarse, fine []float64, ratio float64, use []bool) {
 	for i := range fine {
 		order := (coarse[i]*ratio - fine[i]) / (2 * math.Pi)
 		whole := math.Round(order)
-		phase[i], doubt[i] = fine[i]+2*math.Pi*whole, math.Abs(order-whole)
+		fine[i] += 2 * math.Pi * whole
+		use[i] = use[i] && math.Abs(order-whole) <= doubtful
 	}
-	return phase, doubt
 }
 
 // flatten takes the best polynomial of second order in x and y off a picture, over the
@@ -64,29 +95,38 @@ func flatten(values []float64, use []bool, width int) {
 	const terms = 6
 	var a [terms][terms + 1]float64
 	height := len(values) / width
-	basis := func(i int) [terms]float64 {
-		x, y := 2*float64(i%width)/float64(width)-1, 2*float64(i/width)/float64(height)-1
-		return [terms]float64{1, x, y, x * x, x * y, y * y}
+	basis := func(x, y int) [terms]float64 {
+		u, v := 2*float64(x)/float64(width)-1, 2*float64(y)/float64(height)-1
+		return [terms]float64{1, u, v, u * u, u * v, v * v}
 	}
-	for i, v := range values {
-		if !use[i] {
-			continue
-		}
-		b := basis(i)
-		for r := range terms {
-			for c := range terms {
-				a[r][c] += b[r] * b[c]
+	step := max(int(math.Sqrt(float64(len(values))/enoughForForm)), 1)
+	for y := step / 2; y < height; y += step {
+		for x := step / 2; x < width; x += step {
+			if i := y*width + x; use[i] {
+				b := basis(x, y)
+				for r := range terms {
+					for c := range terms {
+						a[r][c] += b[r] * b[c]
+					}
+					a[r][terms] += b[r] * values[i]
+				}
 			}
-			a[r][terms] += b[r] * v
 		}
 	}
 	coefficients := eliminate(a[:])
-	for i := range values {
-		for r, b := range basis(i) {
-			values[i] -= coefficients[r] * b
+	inBands(height, func(y0, y1 int) {
+		for y := y0; y < y1; y++ {
+			for x := range width {
+				for r, b := range basis(x, y) {
+					values[y*width+x] -= coefficients[r] * b
+				}
+			}
 		}
-	}
+	})
 }
+
+// enoughForForm is about how many pixels, evenly spread, say what the form is.
+const enoughForForm = 1e6
 
 // eliminate solves normal equations by Gauss and Jordan with row pivots; a term that the
 // pixels do not determine is 0.

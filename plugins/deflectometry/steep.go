@@ -9,17 +9,18 @@ import (
 // field is the slopes of a view in mrad, each the mean of 3 × 3 px in use, so that a peak is
 // not that of the noise; 0 where a pixel is not in use.
 type field struct {
-	slopes [][]float64 // along x, and along y where both directions were shown
-	total  []float64   // their length
+	slopes [][]float32 // along x, and along y where both directions were shown
+	total  []float32   // their length
 	width  int
 }
 
-func newField(slopes [][]float64, use []bool, width int) field {
-	out := field{total: make([]float64, len(use)), width: width}
+func newField(slopes []*raster.Plane, use []bool) field {
+	width := slopes[0].Width
+	out := field{total: make([]float32, len(use)), width: width}
 	for _, s := range slopes {
-		smooth := means(s, use, width)
+		smooth := means(s.Pix, use, width)
 		for i, v := range smooth {
-			out.total[i] = math.Hypot(out.total[i], v)
+			out.total[i] = float32(math.Hypot(float64(out.total[i]), float64(v)))
 		}
 		out.slopes = append(out.slopes, smooth)
 	}
@@ -27,30 +28,35 @@ func newField(slopes [][]float64, use []bool, width int) field {
 }
 
 // means are over the pixels in use among the 3 × 3 around each.
-func means(values []float64, use []bool, width int) []float64 {
-	out, height := make([]float64, len(values)), len(values)/width
-	for i := range values {
-		if !use[i] {
-			continue
-		}
-		sum, n, x0, y0 := 0.0, 0.0, i%width, i/width
-		for y := max(y0-1, 0); y <= min(y0+1, height-1); y++ {
-			for x := max(x0-1, 0); x <= min(x0+1, width-1); x++ {
-				if k := y*width + x; use[k] {
-					sum, n = sum+values[k], n+1
-				}
+func means(values []float32, use []bool, width int) []float32 {
+	out, height := make([]float32, len(values)), len(values)/width
+	inBands(height, func(y0, y1 int) {
+		for i := y0 * width; i < y1*width; i++ {
+			if use[i] {
+				out[i] = meanAround(values, use, width, height, i%width, i/width)
 			}
 		}
-		out[i] = sum / n
-	}
+	})
 	return out
+}
+
+func meanAround(values []float32, use []bool, width, height, x0, y0 int) float32 {
+	sum, n := 0.0, 0.0
+	for y := max(y0-1, 0); y <= min(y0+1, height-1); y++ {
+		for x := max(x0-1, 0); x <= min(x0+1, width-1); x++ {
+			if k := y*width + x; use[k] {
+				sum, n = sum+float64(values[k]), n+1
+			}
+		}
+	}
+	return float32(sum / n)
 }
 
 func (f field) height() int { return len(f.total) / f.width }
 
 // axis is a direction in which slopes are followed pixel by pixel.
 type axis struct {
-	slope        []float64
+	slope        []float32
 	lines        int // how many lines there are across
 	length       int // pixels of one
 	along, apart int // steps between the pixels of a line, and between lines
@@ -67,13 +73,15 @@ func (f field) axes() []axis {
 
 func (a axis) at(line, k int) int { return line*a.apart + k*a.along }
 
+func (a axis) slopeAt(line, k int) float64 { return float64(a.slope[a.at(line, k)]) }
+
 // pieces returns the connected places of at least least px that are steeper than low, and
 // for every pixel the number of its piece, −1 for none.
 func (f field) pieces(low float64, least int) (pieces [][]raster.Span, of []int32) {
 	mask := raster.NewMask(f.width, f.height())
 	of = make([]int32, len(f.total))
 	for i, v := range f.total {
-		mask.Bits[i], of[i] = v > low, -1
+		mask.Bits[i], of[i] = float64(v) > low, -1
 	}
 	for _, spans := range raster.Components(mask) {
 		if raster.SpanArea(spans) < least {
@@ -192,7 +200,7 @@ func (a axis) facings(of []int32, n int) (map[[2]int32]*facing, []float64) {
 
 func (f *facing) add(a axis, line int, before, after stretch) {
 	from, to := before.k1-1, after.k0
-	start, end := a.slope[a.at(line, from)], a.slope[a.at(line, to)]
+	start, end := a.slopeAt(line, from), a.slopeAt(line, to)
 	f.lines++
 	f.gap += float64(to - from - 1)
 	f.narrower += float64(min(before.k1-before.k0, after.k1-after.k0))
@@ -207,6 +215,6 @@ func (f *facing) add(a axis, line int, before, after stretch) {
 		t := float64(i+1) / 4
 		k := from + int(t*float64(to-from)+0.5)
 		exact := float64(k-from) / float64(to-from)
-		f.bend[i] += rising * (a.slope[a.at(line, k)] - start - exact*(end-start))
+		f.bend[i] += rising * (a.slopeAt(line, k) - start - exact*(end-start))
 	}
 }

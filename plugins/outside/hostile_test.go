@@ -180,7 +180,7 @@ func TestHostileStage(t *testing.T) {
 			case "hang":
 				s.Deadline = 500 * time.Millisecond
 			case "leak":
-				s.MaxRSSBytes = 300 << 20
+				s.MaxRSSBytes = 160 << 20
 			case "huge":
 				s.MaxRSSBytes = 4 << 30
 			}
