@@ -155,3 +155,21 @@ func Subtract(dst, a, b *Plane) {
 		}
 	}
 }
+
+// Ratio writes a / noise for the pixels in mask whose noise is above 0, and 0 for the
+// others. The sizes must agree; dst may be a.
+func Ratio(dst, a, noise *Plane, mask *Mask) {
+	if !dst.SameSize(a) || !dst.SameSize(noise) {
+		panic("raster: planes of unlike size")
+	}
+	checkMask(dst, mask)
+	for y := range dst.Height {
+		out, n, in := dst.Row(y), noise.Row(y), mask.Row(y)
+		for x, v := range a.Row(y) {
+			out[x] = 0
+			if in[x] && n[x] > 0 {
+				out[x] = v / n[x]
+			}
+		}
+	}
+}

@@ -78,3 +78,14 @@ func TestErodeADrawnMask(t *testing.T) {
 		}
 	}
 }
+
+func TestRatioIsOfTheMask(t *testing.T) {
+	a, noise, mask := NewPlane(3, 1), NewPlane(3, 1), NewMask(3, 1)
+	copy(a.Pix, []float32{-6, 5, 4})
+	copy(noise.Pix, []float32{2, 0, 2})
+	mask.Bits[0], mask.Bits[1] = true, true
+	Ratio(a, a, noise, mask)
+	if a.Pix[0] != -3 || a.Pix[1] != 0 || a.Pix[2] != 0 {
+		t.Errorf("got %v, want −3, 0 without noise, 0 outside", a.Pix)
+	}
+}

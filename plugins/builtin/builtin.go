@@ -16,6 +16,7 @@ import (
 	"lapgate/plugins/merge"
 	"lapgate/plugins/proof"
 	"lapgate/plugins/region"
+	"lapgate/plugins/scratches"
 )
 
 // Stages returns the factories of all stages.
@@ -26,6 +27,7 @@ func Stages() []pipeline.Factory {
 		flatfield.Factory,
 		darkfield.Factory,
 		blobs.Factory,
+		scratches.Factory,
 		areas.Factory,
 		coverage.Factory,
 		edge.Factory,

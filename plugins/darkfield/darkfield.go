@@ -17,7 +17,7 @@ var Factory = pipeline.Make(pipeline.Factory{
 	Type: "darkfield", Version: "1", Scope: pipeline.ScopeView,
 	Summary: "Measures local level and noise, and writes the matched-filter contrast in units of its own sigma.",
 	Reads:   []string{pipeline.CorrectedPlane, "region", "bad pixels", "saturated pixels"},
-	Writes:  []string{pipeline.BackgroundPlane, pipeline.NoisePlane, pipeline.SNRPlane, "coverage", "grid"},
+	Writes:  []string{pipeline.BackgroundPlane, pipeline.NoisePlane, pipeline.SNRPlane, pipeline.ContrastPlane, "coverage", "grid"},
 }, Default, func(s Settings, _ pipeline.Environment) (pipeline.Stage, error) { return stage{s}, nil })
 
 type stage struct{ s Settings }
@@ -63,6 +63,8 @@ func (st stage) contrast(item *pipeline.Item, corrected *raster.Plane, mask *ras
 	item.SetPlane(pipeline.BackgroundPlane, "DN", level)
 	item.SetPlane(pipeline.NoisePlane, "DN", noise)
 	item.SetPlane(pipeline.SNRPlane, "sigma", snr)
+	raster.Ratio(signal, signal, noise, mask)
+	item.SetPlane(pipeline.ContrastPlane, "sigma", signal)
 }
 
 // turn makes defects of the polarity positive.

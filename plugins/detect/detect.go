@@ -120,6 +120,9 @@ func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
 	}
 	bands := max(runtime.GOMAXPROCS(0)/int(st.working.Add(1)), 1)
 	r, err := c.Find(raw, item.Region.Inside().Spans(), st.settings(bands))
+	if err == nil && st.needed[pipeline.ContrastPlane] {
+		err = st.contrast(item, c, r, bands)
+	}
 	st.working.Add(-1)
 	if err != nil {
 		return &pipeline.Error{Kind: pipeline.InvalidKind, Err: err}

@@ -135,6 +135,23 @@ func TestSameAsTheRow(t *testing.T) {
 	}
 }
 
+// The plane of contrast is written for a stage that reads it, and is that of the row to
+// half a step of the integers in which counts are corrected, and half a per cent.
+func TestContrastForAReader(t *testing.T) {
+	it, c := sight(0, 5)
+	needed := map[string]bool{pipeline.ContrastPlane: true}
+	want := run(t, row(t, c, nil, nil, darkfield.Default), it, c).Planes[pipeline.ContrastPlane]
+	got := run(t, row(t, c, []pipeline.Fuser{Fuser()}, needed, darkfield.Default), it, c).Planes[pipeline.ContrastPlane]
+	if got.Pixels == nil || got.Unit != want.Unit {
+		t.Fatalf("got %+v", got)
+	}
+	for i, v := range got.Pixels.Pix {
+		if w := want.Pixels.Pix[i]; math.Abs(float64(v-w)) > 0.05+0.005*math.Abs(float64(w)) {
+			t.Fatalf("(%d, %d): got %g, want %g", i%width, i/width, v, want.Pixels.Pix[i])
+		}
+	}
+}
+
 func compareDefects(t *testing.T, got, want []pipeline.Defect) {
 	t.Helper()
 	at := map[pipeline.Box]pipeline.Defect{}

@@ -42,6 +42,15 @@ func (st *stage) planes(item *pipeline.Item, r *fused.Result, width, height int)
 	}
 }
 
+// contrast writes the plane of that name.
+func (st *stage) contrast(item *pipeline.Item, c *fused.Correction, r *fused.Result, bands int) error {
+	p, err := c.Contrast(item.Frames[0].Raw, item.Region.Inside().Spans(), r.Grid, bands)
+	if err == nil {
+		item.SetPlane(pipeline.ContrastPlane, "sigma", p)
+	}
+	return err
+}
+
 // report sets the coverage, takes the measurements and proves the absolute bounds, as the
 // stage darkfield does, from counts by cell in place of pixels.
 func (st *stage) report(item *pipeline.Item, r *fused.Result) {

@@ -104,7 +104,7 @@ func (f *finder) find() (*Result, error) {
 		return cmp.Or(cmp.Compare(b.sigmas, a.sigmas), cmp.Compare(a.axis, b.axis), cmp.Compare(a.first, b.first),
 			cmp.Compare(a.flipped, b.flipped), cmp.Compare(a.x, b.x), cmp.Compare(a.t, b.t))
 	})
-	r := &Result{Seeds: len(hits), MemoryBytes: int64(C.ln_work_bytes(f.work.c))}
+	r := &Result{Lay: f.lay(), Seeds: len(hits), MemoryBytes: int64(C.ln_work_bytes(f.work.c))}
 	if len(hits) > mostSeeds {
 		hits, r.Truncated = hits[:mostSeeds], true
 	}

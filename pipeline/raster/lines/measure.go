@@ -9,7 +9,7 @@ import (
 
 // The profile across a line: places on each side, every half pixel.
 const (
-	profileReach = 24
+	profileReach = 16
 	profileStep  = 0.5
 )
 
@@ -45,14 +45,14 @@ func (f *finder) measure(c course) (Line, bool) {
 	}
 	a, b := l.Path[0], l.Path[len(l.Path)-1]
 	l.Angle = fold(math.Atan2(b.Y-a.Y, b.X-a.X) * 180 / math.Pi)
-	_, along := f.profiles(l.Path, float64(c.sign), math.Inf(1))
-	if len(along) == 0 {
+	at := f.profiles(l.Path, float64(c.sign), 1, math.Inf(1))
+	if len(at.along) == 0 {
 		return l, false
 	}
-	across, _ := f.profiles(l.Path, float64(c.sign), spotHeight+3*median(along))
-	l.Width, l.Contrast, l.Flux = fullWidth(across)
+	across := f.profiles(l.Path, float64(c.sign), profileReach, spotHeight+3*median(at.along))
+	l.Width, l.Contrast, l.Flux = fullWidth(across.sum)
 	l.Flux *= l.Length
-	l.Peak = strongest(along)
+	l.Peak = strongest(at.along)
 	return l, l.Width > 0 && l.Length >= leastRatio*l.Width
 }
 
@@ -73,63 +73,83 @@ func fold(angle float64) float64 {
 	return angle
 }
 
-// profiles returns the mean across the path, from −reach to reach, and the mean over 2 px
-// across at each px along it; no value counts as more than most.
-func (f *finder) profiles(path []raster.Point, sign, most float64) (across, along []float64) {
-	n := int(2*profileReach/profileStep) + 1
-	sum, count := make([]float64, n), make([]float64, n)
+// profile gathers the pixels about a path by their distance from it.
+type profile struct {
+	f          *finder
+	sign, most float64 // no value counts as more than most
+	reach      float64 // px to either side
+	sum, count []float64
+	along      []float64 // at each position, the mean about the path itself
+}
+
+// profiles returns the mean across the path, from −reach to reach, and the mean at the path
+// at each position along it. A pixel counts in the bins within 1 px of it, less with distance.
+func (f *finder) profiles(path []raster.Point, sign, reach, most float64) profile {
+	n := 2*int(reach/profileStep) + 1
+	p := profile{f: f, sign: sign, most: most, reach: reach, sum: make([]float64, n), count: make([]float64, n)}
 	for i := 1; i < len(path); i++ {
-		p, q := path[i-1], path[i]
-		d := distance(p, q)
-		if d == 0 {
-			continue
-		}
-		dx, dy := (q.X-p.X)/d, (q.Y-p.Y)/d
-		for t := 0.5; t < d; t++ {
-			middle, pixels := 0., 0.
-			for k := range sum {
-				o := float64(k)*profileStep - profileReach
-				v, ok := f.sample(p.X+t*dx-o*dy, p.Y+t*dy+o*dx)
-				if !ok {
-					continue
-				}
-				v = min(sign*v, most)
-				sum[k] += v
-				count[k]++
-				if math.Abs(o) <= 1 {
-					middle, pixels = middle+v, pixels+1
-				}
-			}
-			if pixels > 0 {
-				along = append(along, middle/pixels)
-			}
+		if k, ok := between(path[i-1], path[i]); ok {
+			p.add(k)
 		}
 	}
-	for k := range sum {
-		if count[k] > 0 {
-			sum[k] /= count[k]
+	for k := range p.sum {
+		if p.count[k] > 0 {
+			p.sum[k] /= p.count[k]
 		}
 	}
-	return sum, along
+	return p
 }
 
-// sample interpolates the plane; ok is false where a pixel does not count.
-func (f *finder) sample(x, y float64) (float64, bool) {
-	ix, iy := int(math.Floor(x)), int(math.Floor(y))
-	if ix < 0 || iy < 0 || ix+1 >= f.plane.Width || iy+1 >= f.plane.Height || !f.region.At(ix, iy) || !f.region.At(ix+1, iy+1) {
-		return 0, false
+func (p *profile) add(k stretch) {
+	slope := k.slope()
+	cos := 1 / math.Hypot(1, slope)
+	for m := k.a; m <= k.b; m++ {
+		c, middle, weight := k.ca+slope*float64(m-k.a), 0., 0.
+		for j := int(math.Ceil(c - p.reach/cos)); j <= int(math.Floor(c+p.reach/cos)); j++ {
+			x, y := j, m
+			if k.axis == 1 {
+				x, y = m, j
+			}
+			v, ok := p.f.pixel(x, y)
+			if !ok {
+				continue
+			}
+			o := (float64(j) - c) * cos
+			v = min(p.sign*v, p.most)
+			p.put(o, v)
+			if share := 1 - math.Abs(o); share > 0 {
+				middle, weight = middle+share*v, weight+share
+			}
+		}
+		if weight > 0 {
+			p.along = append(p.along, middle/weight)
+		}
 	}
-	if f.bad != nil && (f.bad.At(ix, iy) || f.bad.At(ix+1, iy) || f.bad.At(ix, iy+1) || f.bad.At(ix+1, iy+1)) {
-		return 0, false
-	}
-	u, v := x-float64(ix), y-float64(iy)
-	top := (1-u)*float64(f.plane.At(ix, iy)) + u*float64(f.plane.At(ix+1, iy))
-	low := (1-u)*float64(f.plane.At(ix, iy+1)) + u*float64(f.plane.At(ix+1, iy+1))
-	z := (1-v)*top + v*low
-	return z, !math.IsNaN(z) && !math.IsInf(z, 0)
 }
 
-// interpolated is the variance that linear interpolation adds across, on average: 1/6 px².
+func (p *profile) put(o, v float64) {
+	first := int(math.Ceil((o - 1 + p.reach) / profileStep))
+	for b := max(first, 0); b < len(p.sum); b++ {
+		share := 1 - math.Abs(float64(b)*profileStep-p.reach-o)
+		if share <= 0 {
+			return
+		}
+		p.sum[b] += share * v
+		p.count[b] += share
+	}
+}
+
+// pixel returns the plane's value where it counts.
+func (f *finder) pixel(x, y int) (float64, bool) {
+	if !f.region.At(x, y) || f.bad != nil && f.bad.At(x, y) {
+		return 0, false
+	}
+	v := float64(f.plane.At(x, y))
+	return v, !math.IsNaN(v) && !math.IsInf(v, 0)
+}
+
+// interpolated is the variance that gathering within 1 px adds across, that of a triangle:
+// 1/6 px².
 const interpolated = 1. / 6
 
 // fullWidth returns the full width at half height of a profile that is highest within 3 px
@@ -164,8 +184,7 @@ func fullWidth(v []float64) (width, height, flux float64) {
 	return math.Sqrt(max(width*width-8*math.Ln2*interpolated, 0.25)), height, flux
 }
 
-// strongest returns the highest sum of 5 px in a row in sigmas of unit noise: along holds
-// means of 5 places across, half a pixel apart.
+// strongest returns the highest sum of 5 positions in a row in sigmas of unit noise.
 func strongest(along []float64) float64 {
 	const n = 5
 	best := 0.
@@ -179,6 +198,6 @@ func strongest(along []float64) float64 {
 	return best
 }
 
-// alongVariance is the variance of the mean over 2 px across of unit noise, interpolated
-// linearly both ways at random places, about 1/3.
-const alongVariance = 1. / 3
+// alongVariance is the variance of the mean of two pixels with weights 1 − f and f, of unit
+// noise, over all f: 2/3.
+const alongVariance = 2. / 3

@@ -154,13 +154,14 @@ func bestPart(v []total, sign int, noise scatter) (first, last int) {
 	for i, t := range v {
 		s[i+1], w[i+1] = s[i]+float64(sign)*t.sum, w[i]+t.weight
 	}
-	value := func(i, j int) float64 {
-		if weight := w[j] - w[i]; j-i >= leastPositions && weight > 0 {
-			return (s[j] - s[i]) / math.Sqrt(weight*noise.over(float64(j-i)))
+	value := func(i, j int) float64 { // the square, with its sign
+		weight, sum := w[j]-w[i], s[j]-s[i]
+		if j-i < leastPositions || weight <= 0 {
+			return math.Inf(-1)
 		}
-		return math.Inf(-1)
+		return sum * math.Abs(sum) / (weight * noise.over(float64(j-i)))
 	}
-	step := max(4, n/48)
+	step := max(4, n/32)
 	i, j := 0, n
 	best := value(0, n)
 	for a := 0; a < n; a += step {

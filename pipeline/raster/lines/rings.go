@@ -1,7 +1,6 @@
 package lines
 
 import (
-	"cmp"
 	"math"
 	"math/rand/v2"
 	"slices"
@@ -87,11 +86,6 @@ func (f *finder) sampleRings(r *rings, random *rand.Rand, low, high, angle float
 
 // chiMedian is the median of the square of a standard normal variable.
 const chiMedian = 0.4549
-
-func middle(v []float64) float64 {
-	slices.SortFunc(v, cmp.Compare[float64])
-	return v[len(v)/2]
-}
 
 // through is the sum along the line of some positions through p, in sigmas of white noise;
 // ok is false where half of it does not count.

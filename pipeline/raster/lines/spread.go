@@ -24,6 +24,10 @@ func (s scatter) over(positions float64) float64 {
 	if s[0] <= 1 && s[1] <= 1 {
 		return max(s[0], s[1])
 	}
+	return s.grown(positions)
+}
+
+func (s scatter) grown(positions float64) float64 {
 	long, short := 1+(s[0]-1)*positions/rows, 1+(s[1]-1)*min(positions*2/rows, rows/(2*positions))
 	return max(long, short, min(s[0], 1))
 }
