@@ -91,7 +91,7 @@ func (l *launched) Kill(context.Context) error {
 
 // closePipes lets readers end that a child of the process still holds open.
 func (l *launched) closePipes() {
-	time.Sleep(50 * time.Millisecond)
+	l.lastWords()
 	l.stdout.Close()
 	l.stderr.Close()
 }
@@ -106,6 +106,17 @@ func (l *launched) Stdout() io.ReadCloser {
 
 // Stderr implements runner.Runner. Its last words have been taken in when said is closed.
 func (l *launched) Stderr() io.ReadCloser { return &untilEnd{ReadCloser: l.stderr, end: l.said} }
+
+// lastWords waits for what the ended process has said; not long, for a child of it may
+// keep stderr open.
+func (l *launched) lastWords() {
+	select {
+	case <-l.said:
+	case <-time.After(lastWordsWithin):
+	}
+}
+
+const lastWordsWithin = 200 * time.Millisecond
 
 // untilEnd is a reader that closes a channel when it is asked for more at its end.
 type untilEnd struct {

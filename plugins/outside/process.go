@@ -140,6 +140,7 @@ func (p *process) startError(err error) error {
 		select {
 		case <-p.launched.exited:
 			text += " (" + p.launched.ended + ")"
+			p.launched.lastWords()
 		case <-time.After(time.Second):
 		}
 	}
@@ -204,10 +205,7 @@ func (p *process) death() string {
 	case <-time.After(time.Second):
 		return "its process does not answer"
 	}
-	select { // a child of the process may keep stderr open
-	case <-p.launched.said:
-	case <-time.After(20 * time.Millisecond):
-	}
+	p.launched.lastWords()
 	p.mu.Lock()
 	defer p.mu.Unlock()
 	if p.cause != "" {
