@@ -23,9 +23,10 @@ func Kinds() []Kind { return append(ScatteringKinds(), Dent, Waviness) }
 // ScatteringKinds lists the kinds that a dark field or a silhouette shows.
 func ScatteringKinds() []Kind { return []Kind{Dig, Scratch, EdgeChip, Stain, Particle, Fibre} }
 
-// Scatters reports whether the kind is told by light. The others are told by slope, and
-// no rule over what light shows renames them or joins them with what it does show.
-func (k Kind) Scatters() bool { return k != Dent && k != Waviness }
+// Scatters reports whether the kind is told by light. The others are told by slope or by
+// the outline, and no rule over what light shows renames them or joins them with what it
+// does show: a chip that is bright too would be lost as a dig of the rim.
+func (k Kind) Scatters() bool { return k != Dent && k != Waviness && k != EdgeChip }
 
 // MaxDefects is how many defects one unit's evidence keeps; beyond it the evidence is
 // truncated and cannot be accepted.

@@ -192,16 +192,18 @@ func (m *mapMaker) nothing() error {
 	return pipeline.NotFound("map: no unit has the view %q", m.view)
 }
 
-// zones adds the zones that are circles, as the newest unit's view has them.
+// zones adds the zones that are circles, as the newest unit's views have them, each once.
 func (m *mapMaker) zones(in ledger.Inspection) {
+	seen := map[pipeline.ZoneEvidence]bool{}
 	for _, v := range in.Evidence.Views {
-		if len(v.Region.Zones) == 0 || m.view != "" && v.Name != m.view {
+		if m.view != "" && v.Name != m.view {
 			continue
 		}
 		for _, z := range v.Region.Zones {
-			if z.OuterDiameterMM == 0 {
+			if z.OuterDiameterMM == 0 || seen[z] {
 				continue
 			}
+			seen[z] = true
 			one := &inspectpb.MapZone{Name: z.Name, OuterDiameter: 1000 * z.OuterDiameterMM, InnerDiameter: 1000 * z.InnerDiameterMM}
 			if m.coordinates == inspectpb.Coordinates_COORDINATES_CAMERA && v.UMPerPx > 0 {
 				one.CentreX, one.CentreY = v.Region.CentreX, v.Region.CentreY
@@ -210,6 +212,5 @@ func (m *mapMaker) zones(in ledger.Inspection) {
 			}
 			m.out.Zones = append(m.out.Zones, one)
 		}
-		return
 	}
 }

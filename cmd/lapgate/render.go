@@ -26,7 +26,7 @@ func renderCommand() *cobra.Command {
 		Short: "Draw frames of parts that do not exist, with the truth beside them",
 		Long: `Draw frames of parts that do not exist, with the truth beside them.
 
-DIR/calibration/VIEW/{dark,stray,response}/NNN.pgm   frames to calibrate with
+DIR/calibration/VIEW/{dark,stray,response,part}/NNN.pgm   frames to calibrate with
 DIR/frames/LINE/UNIT_VIEW.pgm and .json              frames and their headers
 DIR/truth.jsonl                                      what is true, one unit a line; written last
 

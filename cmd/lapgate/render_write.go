@@ -28,7 +28,8 @@ func (j renderJob) framesDir() string { return filepath.Join(j.out, "frames") }
 
 // calibrationKinds lists the kinds of calibration frame with how many the scene wants.
 func calibrationKinds(s render.Scene) map[string]int {
-	kinds := map[string]int{render.FrameDark: s.Calibration.Dark, render.FrameStray: s.Calibration.Stray, render.FrameResponse: s.Calibration.Response}
+	kinds := map[string]int{render.FrameDark: s.Calibration.Dark, render.FrameStray: s.Calibration.Stray, render.FrameResponse: s.Calibration.Response,
+		render.FramePart: s.Calibration.Part}
 	for _, t := range s.Calibration.Targets {
 		kinds[t.Name] = t.Frames
 	}

@@ -40,6 +40,10 @@ func (d *demo) calibrationRequest(v render.View) calibrate.Request {
 	if r := d.scene.Reference; r.WidthPx > 4*patchMarginPx && r.HeightPx > 4*patchMarginPx {
 		req.Patch = &pipeline.Box{X0: r.XPx + patchMarginPx, Y0: r.YPx + patchMarginPx, X1: r.XPx + r.WidthPx - patchMarginPx, Y1: r.YPx + r.HeightPx - patchMarginPx}
 	}
+	req.Part = calibrate.PartSearch{DiameterMM: d.scene.Part.DiameterMM, Polarity: "rim"}
+	if v.Light == render.LightBack {
+		req.Part.Polarity = "dark"
+	}
 	target, ok := d.target("dots")
 	if !ok {
 		req.Scale = pipeline.Scale{UMPerPx: c.UMPerPx, Source: "stated"}
@@ -61,6 +65,9 @@ func (d *demo) calibrationRequest(v render.View) calibrate.Request {
 func (d *demo) calibrationFolders(v render.View) calibrate.Folders {
 	from := func(kind string) string { return d.path("calibration/" + v.Name + "/" + kind) }
 	f := calibrate.Folders{Dark: from("dark"), Stray: from("stray"), Response: from("response")}
+	if d.scene.Calibration.Part > 0 {
+		f.Part = from("part")
+	}
 	if _, ok := d.target("dots"); ok {
 		f.Dots = from("dots")
 	}

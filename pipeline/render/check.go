@@ -38,7 +38,7 @@ func (s Scene) checkRun() error {
 		atLeast("seconds_per_unit", s.SecondsPerUnit, 0),
 		within("calibration.dark", float64(s.Calibration.Dark), 0, 10000),
 		within("calibration.stray", float64(s.Calibration.Stray), 0, 10000),
-		within("calibration.response", float64(s.Calibration.Response), 0, 10000))
+		within("calibration.response", float64(s.Calibration.Response), 0, 10000), within("calibration.part", float64(s.Calibration.Part), 0, 10000))
 }
 
 func (s Scene) checkTargets() error {

@@ -47,6 +47,7 @@ const (
 	FrameDark     = "dark"     // lamp off
 	FrameStray    = "stray"    // lamp on, a light trap in place of the part
 	FrameResponse = "response" // lamp on, a diffuser over the whole field
+	FramePart     = "part"     // lamp on, a part without a defect, of each process in turn
 )
 
 // CalibrationFrame takes the n-th calibration frame of a kind for a view, n from 0. The
@@ -56,6 +57,9 @@ func (r *Renderer) CalibrationFrame(kind, view string, n int) (pipeline.Frame, e
 	i, err := r.view(view)
 	if err != nil {
 		return pipeline.Frame{}, err
+	}
+	if kind == FramePart {
+		return r.partFrame(view, n)
 	}
 	c, v := r.scene.Camera, r.scene.Views[i]
 	light, maps, power := raster.NewPlane(c.Width, c.Height), r.maps[i], 1.0
@@ -69,11 +73,28 @@ func (r *Renderer) CalibrationFrame(kind, view string, n int) (pipeline.Frame, e
 			light.Pix[i] = float32(v.ResponseDN)
 		}
 	default:
-		return pipeline.Frame{}, pipeline.Invalid("calibration frame: got %q, want %s, %s or %s", kind, FrameDark, FrameStray, FrameResponse)
+		return pipeline.Frame{}, pipeline.Invalid("calibration frame: got %q, want %s, %s, %s or %s", kind, FrameDark, FrameStray, FrameResponse, FramePart)
 	}
 	counts := r.sensor.expose(light, maps, power, r.sensor.frameStream(kind, view, n))
 	line := r.scene.Lines[0]
 	h := r.header(pipeline.Identity{Part: r.scene.Part.Number, Unit: kind, Line: line.Name, Station: line.Station, Attempt: 1, Purpose: pipeline.Setup}, view)
 	h.FrameCounter = uint64(n + 1)
 	return r.frame(h, counts), nil
+}
+
+// partShowing is from where on showings are those of calibration parts: no unit is shown
+// so often.
+const partShowing = 1 << 20
+
+// partFrame takes a frame of a conforming part at nominal lamp power.
+func (r *Renderer) partFrame(view string, n int) (pipeline.Frame, error) {
+	u := r.Showing(n*r.scene.UnitsPerLot, partShowing+n)
+	u.Process = r.scene.Processes[n%len(r.scene.Processes)]
+	u.HazeDN = u.Process.HazeDN.draw(r.unitStream(u, "haze"))
+	u.Objects, u.Spoilers, u.LampPower, u.DiameterMM = nil, nil, 1, r.scene.Part.DiameterMM
+	f, err := r.Frame(&u, view)
+	line := r.scene.Lines[0]
+	f.Header.Identity = pipeline.Identity{Part: r.scene.Part.Number, Unit: FramePart, Line: line.Name, Station: line.Station, Attempt: 1, Purpose: pipeline.Setup}
+	f.Header.Captured, f.Header.FrameCounter = r.scene.start(), uint64(n+1)
+	return f, err
 }

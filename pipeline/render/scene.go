@@ -158,6 +158,7 @@ type CalibrationFrames struct {
 	Dark     int      `yaml:"dark"`
 	Stray    int      `yaml:"stray"`
 	Response int      `yaml:"response"`
+	Part     int      `yaml:"part"`    // of a part without a defect, for focus and scale
 	Targets  []Target `yaml:"targets"` // plates with dots, for scale, distortion and sizing
 }
 

@@ -11,9 +11,9 @@ import (
 
 // Factory describes the stage.
 var Factory = pipeline.Make(pipeline.Factory{
-	Type: "areas", Version: "1", Scope: pipeline.ScopeView,
+	Type: "areas", Version: "2", Scope: pipeline.ScopeView,
 	Summary: "Finds stains, films and other areas larger than the background grid, to either side of a smooth surface.",
-	Reads:   []string{pipeline.CorrectedPlane, "region", "geometry", "bad pixels", "saturated pixels", "defects"},
+	Reads:   []string{pipeline.RawPlane, "calibration", "region", "geometry", "bad pixels", "saturated pixels", "defects"},
 	Writes:  []string{"defects", "proofs", "measurements"},
 }, Default, func(s Settings, _ pipeline.Environment) (pipeline.Stage, error) { return stage{s}, nil })
 
@@ -25,7 +25,7 @@ const leastSigma = 1e-3
 // Run implements pipeline.Stage. Areas are added to the defects already there; one that a
 // defect there fills is left out.
 func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
-	corrected, err := item.Plane(pipeline.CorrectedPlane)
+	corrected, err := corrected(item)
 	if err != nil {
 		return err
 	}

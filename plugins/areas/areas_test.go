@@ -133,3 +133,26 @@ func TestCheckNamesTheKey(t *testing.T) {
 		}
 	}
 }
+
+// Where a fused pass leaves no corrected plane the same areas are found from the raw one.
+func TestAreasWithoutTheCorrectedPlane(t *testing.T) {
+	s := stagetest.SmallScene()
+	s.Spoilers = []render.Spoiler{{Unit: 0, Kind: render.SpoilQuarterStain, Value: 12}}
+	r := stagetest.Render(t, s)
+	u := r.Unit(0)
+	want := run(t, r, u, nil)
+	item := *want
+	item.Planes = map[string]pipeline.NamedPlane{pipeline.RawPlane: want.Planes[pipeline.RawPlane]}
+	item.Defects, item.Proofs, item.Measurements = nil, nil, nil
+	if err := (stage{s: Default}).Run(context.Background(), &item); err != nil {
+		t.Fatal(err)
+	}
+	if len(want.Defects) == 0 || len(item.Defects) != len(want.Defects) {
+		t.Fatalf("%d areas, with the plane %d", len(item.Defects), len(want.Defects))
+	}
+	for i, d := range item.Defects {
+		if w := want.Defects[i]; math.Abs(d.DiameterUM-w.DiameterUM) > 1e-3 || math.Abs(d.PeakDN-w.PeakDN) > 1e-3 {
+			t.Errorf("area %d: %+v, with the plane %+v", i, d, w)
+		}
+	}
+}

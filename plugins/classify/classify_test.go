@@ -145,3 +145,11 @@ func TestDentsKeepTheirKind(t *testing.T) {
 		t.Errorf("got %+v", item.Defects)
 	}
 }
+
+// What is told by the outline keeps its kind too: a chip is longer along the edge than deep.
+func TestChipsKeepTheirKind(t *testing.T) {
+	item := &pipeline.Item{Defects: []pipeline.Defect{{Kind: pipeline.EdgeChip, LengthUM: 1600, WidthUM: 300}}}
+	if err := run(t, Default, item); err != nil || item.Defects[0].Kind != pipeline.EdgeChip {
+		t.Errorf("got %+v, %v", item.Defects, err)
+	}
+}

@@ -11,7 +11,7 @@ import (
 
 // Factory describes the stage.
 var Factory = pipeline.Make(pipeline.Factory{
-	Type: "edge", Version: "1", Scope: pipeline.ScopeView,
+	Type: "edge", Version: "2", Scope: pipeline.ScopeView,
 	Summary: "Finds chips in the outline of a silhouette and measures their reach from the fitted edge.",
 	Reads:   []string{pipeline.RawPlane, "region", "geometry"},
 	Writes:  []string{"defects", "measurements", "coverage"},
@@ -46,7 +46,7 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	item.Measure("edge_spread_um", spread*scale, "um")
 	st.cover(item, seen)
 	defects := slices.Clone(item.Defects)
-	for _, c := range st.withoutNotch(st.chips(reach, scale), scale) {
+	for _, c := range st.chips(st.withoutNotch(reach, scale), scale) {
 		defects = append(defects, st.defect(item, c, circle, scale, contrast, spread))
 	}
 	item.Defects = defects
@@ -120,22 +120,62 @@ func (st stage) chips(reach []float64, scale float64) []chip {
 	return out
 }
 
-// withoutNotch takes out the chip that fits the notch best.
-func (st stage) withoutNotch(chips []chip, scale float64) []chip {
+// withoutNotch takes the notch out of the outline: the run that fits it best or, where a
+// chip beside it makes the run longer, the stretch of it that is most like half an ellipse
+// of the notch's length and reach.
+func (st stage) withoutNotch(reach []float64, scale float64) []float64 {
 	if st.s.NotchReachUM == 0 {
-		return chips
+		return reach
 	}
-	best, at := 0.25, -1
-	for i, k := range chips {
-		off := max(math.Abs(k.reach*scale/st.s.NotchReachUM-1), math.Abs(k.length()*scale/st.s.NotchLengthUM-1))
-		if off <= best {
-			best, at = off, i
+	var notch *chip
+	best := math.Inf(1)
+	for _, k := range st.chips(reach, scale) {
+		deep, long := math.Abs(k.reach*scale/st.s.NotchReachUM-1), k.length()*scale/st.s.NotchLengthUM-1
+		if off := max(deep, math.Abs(long)); deep <= 0.25 && long >= -0.25 && off < best {
+			best, notch = off, &k
 		}
 	}
-	if at < 0 {
-		return chips
+	if notch == nil {
+		return reach
 	}
-	return slices.Delete(slices.Clone(chips), at, at+1)
+	first, last := notch.first, notch.last
+	if best > 0.25 { // longer than a notch
+		first, last = likeANotch(reach, *notch, st.s.NotchLengthUM/scale, st.s.NotchReachUM/scale)
+	}
+	out := slices.Clone(reach)
+	for i := first; i <= last; i++ {
+		out[i%len(out)] = 0
+	}
+	return out
+}
+
+// flank is how far, in directions, the blur carries a notch over each of its ends.
+const flank = 3
+
+// likeANotch returns the first and last direction of the stretch of a run that differs least,
+// in the sum of squares, from half an ellipse.
+func likeANotch(reach []float64, k chip, length, depth float64) (first, last int) {
+	half, best := length/2, math.Inf(1)
+	for middle := k.first; middle <= k.last; middle++ {
+		sum := 0.
+		for i := middle - int(half); i <= middle+int(half); i++ {
+			x := float64(i-middle) / half
+			d := inwards(reach[(i+len(reach))%len(reach)]) - depth*math.Sqrt(max(1-x*x, 0))
+			sum += d * d
+		}
+		if sum < best {
+			best, first, last = sum, middle-int(half)-flank, middle+int(half)+flank
+		}
+	}
+	return max(first, k.first), min(last, k.last)
+}
+
+// inwards is a reach, 0 where the edge was not seen.
+func inwards(v float64) float64 {
+	if v > 0 {
+		return v
+	}
+	return 0
 }
 
 func (k chip) length() float64 { return float64(k.last - k.first + 1) }

@@ -125,6 +125,22 @@ func TestNotchIsNoChip(t *testing.T) {
 	}
 }
 
+// A chip that runs into the notch is told from it: the notch's length is taken out.
+func TestChipAtTheNotch(t *testing.T) {
+	s := scene()
+	s.Part.Notch = render.Notch{DepthUM: 300, WidthUM: 400}
+	r := stagetest.Render(t, s)
+	for i := range 4 {
+		u := r.Unit(i)
+		beside := 280 / 1500. * 180 / math.Pi // 280 µm along the edge of a radius of 1.5 mm
+		u.Add(chipAt(u.PartAngleDeg+beside, 160, 300))
+		found := run(t, r, u, func(s *Settings) { s.NotchReachUM, s.NotchLengthUM, s.MinReachUM = 300, 400, 60 }).Defects
+		if len(found) != 1 || found[0].WidthUM > 200 || found[0].WidthUM < 80 {
+			t.Errorf("unit %d: got %+v, want one chip of about 160 µm", i, found)
+		}
+	}
+}
+
 func TestCheckNamesTheKey(t *testing.T) {
 	for key, change := range map[string]func(*Settings){
 		"polarity": func(s *Settings) { s.Polarity = "rim" }, "min_reach_um": func(s *Settings) { s.MinReachUM = -1 },

@@ -14,8 +14,9 @@ type Settings struct {
 	MaxReachUM float64 `json:"max_reach_um" yaml:"max_reach_um"`
 	// GapUM joins two pieces that lie no further apart along the edge, in µm. 0: three pixels.
 	GapUM float64 `json:"gap_um" yaml:"gap_um"`
-	// NotchReachUM and NotchLengthUM are those of a notch that belongs there: the chip that
-	// comes closest, within a quarter of both, is none. 0: there is no notch.
+	// NotchReachUM and NotchLengthUM are those of a notch that belongs there: the run that
+	// comes closest, within a quarter of both, is no chip; of a longer one as deep, which a
+	// chip beside the notch makes, the notch's length is taken out. 0: there is no notch.
 	NotchReachUM  float64 `json:"notch_reach_um" yaml:"notch_reach_um"`
 	NotchLengthUM float64 `json:"notch_length_um" yaml:"notch_length_um"`
 }

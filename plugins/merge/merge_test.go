@@ -209,3 +209,13 @@ func TestSlopeIsNotLostInAMerge(t *testing.T) {
 		t.Errorf("got %+v, want one dent of 3 mrad", got)
 	}
 }
+
+// A chip that is bright in dark field is not joined with what the ring light shows there: it
+// would be lost as a dig.
+func TestAChipIsNotLostInAMerge(t *testing.T) {
+	chip := dig(100, 100, 80, 10)
+	chip.Kind = pipeline.EdgeChip
+	if got := merged(t, Default, view("back", chip), view("ring", dig(101, 100, 80, 30))); len(got) != 2 {
+		t.Errorf("got %+v, want the chip and what the ring light shows", got)
+	}
+}
