@@ -72,7 +72,7 @@ func (a *app) validate(ctx context.Context, paths []string, plugins string, cali
 		return usageError{fmt.Errorf("%d problems", len(all))}
 	}
 	if len(unchecked) > 0 {
-		return fmt.Errorf("no problem found in what could be checked; %d stages were not", len(unchecked))
+		return fmt.Errorf("no problem found in what could be checked; not checked: the settings of stages in %d places", len(unchecked))
 	}
 	fmt.Fprintln(a.err, "no problem found")
 	return nil
