@@ -6,6 +6,7 @@ import (
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/calibrate"
+	"lapgate/pipeline/raster/fused"
 	"lapgate/pipeline/render"
 	"lapgate/plugins/darkfield"
 	"lapgate/plugins/flatfield"
@@ -18,6 +19,7 @@ type chain struct {
 	calibration *pipeline.Calibration
 	geometry    pipeline.Geometry
 	stages      []pipeline.Stage
+	correction  *fused.Correction // the calibration made ready for the fused pass; made by the first frame
 }
 
 func newChain(r *render.Renderer, view string) (*chain, error) {
