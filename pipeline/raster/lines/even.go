@@ -16,11 +16,12 @@ type trim struct{ share, mean, least float64 }
 
 var trims = [...]trim{{0.3, 0.4967, 0.5}, {0.5, 0.7979, 0.3}}
 
-// leastRest is how many sigmas must stay.
-const leastRest = 3.5
+// leastRest is how many sigmas must stay, and enoughRest how many are a line whatever its
+// strongest blocks are.
+const leastRest, enoughRest = 3.5, 6
 
-// even reports whether the evidence is spread over the line.
-func (f *finder) even(p piece) bool {
+// blocks returns the evidence of a piece block by block, in sigmas of white noise.
+func (f *finder) blocks(p piece) []float64 {
 	v := f.profile(p.stretch)
 	least := evenBlock * p.weight / float64(4*len(v)) // a quarter of the mean
 	var z []float64
@@ -33,15 +34,22 @@ func (f *finder) even(p piece) bool {
 			z = append(z, t.sigmas(p.sign))
 		}
 	}
-	if len(z) < 4 {
+	return z
+}
+
+// even reports whether evidence is spread over its blocks. variance is that of the line's
+// sum over that of white noise.
+func even(blocks []float64, variance float64) bool {
+	if len(blocks) < 4 {
 		return false
 	}
-	all := mean(z) * math.Sqrt(float64(len(z)))
-	slices.Sort(z)
+	all := mean(blocks) * math.Sqrt(float64(len(blocks)))
+	z := slices.Sorted(slices.Values(blocks))
 	for _, cut := range trims {
 		rest := z[:len(z)-int(cut.share*float64(len(z)))]
 		left := (mean(rest) + cut.mean) * math.Sqrt(float64(len(rest)))
-		if left < cut.least*all || cut == trims[0] && left < leastRest*math.Sqrt(p.scatter.over(p.positions())) {
+		left /= math.Sqrt(variance)
+		if left < min(cut.least*all/math.Sqrt(variance), enoughRest) || cut == trims[0] && left < leastRest {
 			return false
 		}
 	}

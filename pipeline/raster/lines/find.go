@@ -152,7 +152,7 @@ func (f *finder) try(h C.ln_hit, tried map[[5]int32]bool) (course, bool) {
 		remember(tried, h)
 		return course{}, false
 	}
-	if !f.even(p) {
+	if p.blocks = f.blocks(p); !even(p.blocks, p.scatter.over(p.positions())) {
 		f.dim(p)
 		return course{}, false
 	}
@@ -185,6 +185,9 @@ func beenNear(tried map[[5]int32]bool, h C.ln_hit) bool {
 func (f *finder) report(r *Result, courses []course) {
 	for _, c := range courses {
 		if c.sigmas() < f.s.need(f.scale()*c.length()) || c.length() < f.s.MinLength || f.region.along(f.path(c), f.rim()) {
+			continue
+		}
+		if !c.even() || !f.standsOut(c) {
 			continue
 		}
 		if l, ok := f.measure(c); ok {

@@ -39,6 +39,20 @@ func (c course) sigmas() float64 {
 	return sum / math.Sqrt(rounding*variance)
 }
 
+// even reports whether the evidence is spread over the whole course.
+func (c course) even() bool {
+	var all []float64
+	positions, variance, weight := 0., 0., 0.
+	for _, p := range c.pieces {
+		all = append(all, p.blocks...)
+		positions += p.positions()
+	}
+	for _, p := range c.pieces {
+		variance, weight = variance+p.weight*p.scatter.over(positions), weight+p.weight
+	}
+	return even(all, variance/max(weight, 1))
+}
+
 func (c course) white() float64 {
 	var t total
 	for _, p := range c.pieces {
@@ -155,7 +169,7 @@ func (f *finder) step(w walk, s stride, sign int) (piece, raster.Point, bool) {
 		}
 		if t := f.sum(k); t.sigmas(sign) > most {
 			most, end = t.sigmas(sign), far
-			best = piece{k, t, sign, scatter{}}
+			best = piece{k, t, sign, scatter{}, nil}
 		}
 	}
 	if most < s.sigmas {
@@ -165,7 +179,9 @@ func (f *finder) step(w walk, s stride, sign int) (piece, raster.Point, bool) {
 	if best.sigmas() < s.sigmas || !f.fills(best) {
 		return best, end, false
 	}
-	return f.cutEnd(best, w.at, end)
+	best, end, ok := f.cutEnd(best, w.at, end)
+	best.blocks = f.blocks(best)
+	return best, end, ok
 }
 
 // fills reports whether both halves of a step have their part in it: one spot has not.

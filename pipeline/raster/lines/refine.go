@@ -11,6 +11,7 @@ type piece struct {
 	total
 	sign    int
 	scatter scatter // of lines at its place and slope
+	blocks  []float64
 }
 
 // positions is the number of pixels along its longer side.
@@ -86,12 +87,12 @@ func (f *finder) lengthen(p piece) (piece, bool) {
 // in turns and in ever smaller steps.
 func (f *finder) polish(k stretch, sign, reach int, step float64) piece {
 	k, t := f.settle(k, reach, step, sign)
-	p := piece{k, t, sign, f.scatter(k)}
+	p := piece{k, t, sign, f.scatter(k), nil}
 	step = 0.5
 	for i := range mostRounds {
 		before, was := p.sigmas(), p.stretch
 		k, t := f.settle(f.extend(p).upright(), 2, step, sign)
-		p = piece{k, t, sign, f.scatter(k)}
+		p = piece{k, t, sign, f.scatter(k), nil}
 		if p.sigmas() < before+0.02 && step <= 0.125 || p.sigmas() < hopeless(i) {
 			break
 		}

@@ -33,10 +33,6 @@ LN_KERNEL int64_t total(const int16_t *restrict a, const int16_t *restrict b, in
 #define CUT 2.5
 #define LEFT 0.9775
 
-// Where the spread lies this near that of white noise it is taken to be it: a tile knows
-// it to some 3 %.
-#define NEAR_WHITE 0.1
-
 // A set of sums to be measured: of lines of some slope over the whole strip (b not NULL) or
 // over a half of it, with the numbers of pixels if some do not count.
 typedef struct {
@@ -56,7 +52,7 @@ static double variance(const sums *s) {
 	if (n < LN_LEAST * s->pixels / 2.)
 		return LN_WHITE;
 	double v = (double)squares(s->a, b, s->width, LN_MOST_SUM) / n;
-	for (int i = 0; i < 4 && v > LN_WHITE * (1 + NEAR_WHITE); i++) {
+	for (int i = 0; i < 4 && v > LN_WHITE * (1 + LN_NEAR_WHITE); i++) {
 		double cap = CUT * __builtin_sqrt(v * s->pixels);
 		v = (double)squares(s->a, b, s->width, cap < LN_MOST_SUM ? (int)cap : LN_MOST_SUM) / (n * LEFT);
 	}
@@ -65,7 +61,7 @@ static double variance(const sums *s) {
 
 static float relative(double v) {
 	v /= LN_WHITE;
-	return v > 1 - NEAR_WHITE && v < 1 + NEAR_WHITE ? 1.f : v > 0.05 ? (float)v : 0.05f;
+	return v > 0.05 ? (float)v : 0.05f;
 }
 
 // whole returns the sums of lines of slope 2t that do not leave the picture sideways, half

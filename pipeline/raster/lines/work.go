@@ -97,6 +97,7 @@ func (w *work) hits(s Settings) ([]C.ln_hit, *spread, error) {
 				return nil, nil, errMemory
 			}
 		}
+		a.settle()
 	}
 	var n C.int32_t
 	p := C.ln_hits(w.c, &n)

@@ -46,10 +46,15 @@ typedef struct {
 // over the strip, and of those over half of it.
 void ln_spread(const ln_tile *k);
 
-// ln_spread_at is the larger of the spreads measured about slope t.
+// Where a variance lies this near that of white noise it may be it: a tile knows it to some
+// 4 % for a slope.
+#define LN_NEAR_WHITE 0.1
+
+// ln_spread_at is the larger of the variances measured about slope t.
 static inline double ln_spread_at(const ln_tile *k, int t) {
 	const float *b = k->spread + t / LN_BIN;
-	return t % LN_BIN && t / LN_BIN + 1 < LN_BINS && b[1] > b[0] ? b[1] : b[0];
+	double v = t % LN_BIN && t / LN_BIN + 1 < LN_BINS && b[1] > b[0] ? b[1] : b[0];
+	return v > 1 - LN_NEAR_WHITE && v < 1 + LN_NEAR_WHITE ? 1 : v;
 }
 
 #endif
