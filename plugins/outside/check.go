@@ -119,7 +119,7 @@ func (a *checker) size() (int, int) {
 	case len(a.item.Frames) > 0:
 		return a.item.Frames[0].Raw.Width, a.item.Frames[0].Raw.Height
 	case a.item.Region != nil:
-		return a.item.Region.Mask().Width, a.item.Region.Mask().Height
+		return a.item.Region.Size()
 	}
 	return 0, 0
 }

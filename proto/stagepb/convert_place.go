@@ -53,8 +53,8 @@ func FromRegion(r *pipeline.Region) *Region {
 	if r == nil {
 		return nil
 	}
-	m := r.Mask()
-	return &Region{CentreX: r.CentreX, CentreY: r.CentreY, RadiusPx: r.RadiusPx, Width: int32(m.Width), Height: int32(m.Height),
+	width, height := r.Size()
+	return &Region{CentreX: r.CentreX, CentreY: r.CentreY, RadiusPx: r.RadiusPx, Width: int32(width), Height: int32(height),
 		Zones: each(r.Zones, func(z pipeline.Zone) *Zone {
 			return &Zone{Name: z.Name, AreaMm2: z.AreaMM2, EquivalentDiameterMm: z.EquivalentDiameterMM, Runs: fromSpans(z.Spans),
 				OuterDiameterMm: z.OuterDiameterMM, InnerDiameterMm: z.InnerDiameterMM, Outline: fromOutline(z.Outline), NoEdge: z.EdgeDistancePx == nil}
