@@ -2,6 +2,7 @@ package server
 
 import (
 	"context"
+	"slices"
 
 	"lapgate/proto/inspectpb"
 	"lapgate/server/alarm"
@@ -47,7 +48,7 @@ func alarms(list []ledger.Alarm) []*inspectpb.Alarm {
 // ListDrift implements InspectionService.
 func (s *Inspection) ListDrift(ctx context.Context, req *inspectpb.ListDriftRequest) (*inspectpb.ListDriftResponse, error) {
 	out := &inspectpb.ListDriftResponse{}
-	for _, at := range s.deps.Stations.list() {
+	for _, at := range s.stationsFor(req) {
 		if req.Line != "" && req.Line != at.line || req.Station != "" && req.Station != at.station {
 			continue
 		}
@@ -60,6 +61,17 @@ func (s *Inspection) ListDrift(ctx context.Context, req *inspectpb.ListDriftRequ
 		}
 	}
 	return out, nil
+}
+
+// stationsFor are the stations heard of since the server started, and the one asked for by
+// name.
+func (s *Inspection) stationsFor(req *inspectpb.ListDriftRequest) []stationSight {
+	list := s.deps.Stations.list()
+	named := place{req.Line, req.Station}
+	if req.Line != "" && req.Station != "" && !slices.ContainsFunc(list, func(at stationSight) bool { return at.place == named }) {
+		list = append(list, stationSight{place: named})
+	}
+	return list
 }
 
 func driftOf(d alarm.Drift) *inspectpb.Drift {

@@ -46,6 +46,12 @@ func TestDriftFromFrameToWarningToHold(t *testing.T) {
 		}
 		r.wantStands(u.Identity.Unit, step.proof, step.stands)
 	}
+	again := newRig(t, rigOptions{recipe: renderedRecipe, calibrations: scene.Calibrations, dsn: r.dsn}) // after a start the ledger tells
+	drift, err := again.ListDrift(context.Background(), &inspectpb.ListDriftRequest{Line: "A", Station: "A1"})
+	must(t, err)
+	if len(drift.Readings) < 2 || drift.Readings[0].Units < 2 {
+		t.Errorf("after a start: %v", drift.Readings)
+	}
 }
 
 // wantStands looks at a reading in the unit's story, in the drift of its station and in the

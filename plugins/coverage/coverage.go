@@ -11,9 +11,9 @@ import (
 
 // Factory describes the stage.
 var Factory = pipeline.Make(pipeline.Factory{
-	Type: "coverage", Version: "1", Scope: pipeline.ScopeView,
+	Type: "coverage", Version: "2", Scope: pipeline.ScopeView,
 	Summary: "Says cell by cell what would have been found, and how much of the region was inspected for what the limits forbid.",
-	Reads:   []string{"grid", "region", "geometry", "bad pixels", "saturated pixels", "proofs"},
+	Reads:   []string{pipeline.RawPlane, "grid", "region", "geometry", "bad pixels", "saturated pixels", "proofs"},
 	Writes:  []string{"coverage", "coverage map", "measurements"},
 }, Default, build)
 
@@ -54,7 +54,18 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 			return o.scratchUM(light*st.s.ScratchContrastDN, st.s.KHigh, noise)
 		})
 	}
-	st.count(item, g, m)
+	dead, err := deadCells(item, g)
+	if err != nil {
+		return err
+	}
+	for i, is := range dead {
+		for _, found := range [][]int{m.DigUM, m.ScratchUM} {
+			if is && i < len(found) && found[i] != 0 {
+				found[i] = -1
+			}
+		}
+	}
+	st.count(item, g, m, dead)
 	item.CoverageMap = m
 	measure(item, "smallest_dig_um", m.DigUM)
 	measure(item, "faintest_scratch_um", m.ScratchUM)
@@ -95,14 +106,14 @@ func cells(g *raster.Grid, smallest func(noise float64) (float64, bool)) []int {
 
 // count fills in the shares and sets the view's coverage. A pixel that is not inspected
 // for several causes counts for the first of: unseen, saturated, noisy.
-func (st stage) count(item *pipeline.Item, g *raster.Grid, m *pipeline.CoverageMap) {
+func (st stage) count(item *pipeline.Item, g *raster.Grid, m *pipeline.CoverageMap, dead []bool) {
 	blind := make([]bool, len(g.Level))
 	for i := range blind {
 		blind[i] = !m.Inspected(i)
 	}
 	trusted := make([]bool, len(g.Level))
 	for i := range trusted {
-		trusted[i] = g.Trusted(i)
+		trusted[i] = g.Trusted(i) && !dead[i]
 	}
 	region := item.Region.Mask()
 	inside, seen, unseen, saturated, noisy := 0, 0, 0, 0, 0
@@ -130,6 +141,45 @@ func (st stage) count(item *pipeline.Item, g *raster.Grid, m *pipeline.CoverageM
 		item.Coverage.Share = float64(seen) / n
 		m.UnseenShare, m.SaturatedShare, m.NoisyShare = float64(unseen)/n, float64(saturated)/n, float64(noisy)/n
 	}
+}
+
+// deadBlockPx is the side of the blocks that a living sensor does not fill with one value.
+const deadBlockPx = 16
+
+// deadCells reports for each cell whether rows or blocks of it are of one value or repeated
+// in a frame: they were not transferred, however quiet they look.
+func deadCells(item *pipeline.Item, g *raster.Grid) ([]bool, error) {
+	out := make([]bool, len(g.Level))
+	for k, f := range item.Frames {
+		p, err := planeOf(item, k)
+		if err != nil {
+			return nil, err
+		}
+		for y, dead := range raster.DeadRows(p) {
+			for column := 0; dead && column < g.Columns; column++ {
+				out[y/g.CellPx*g.Columns+column] = true
+			}
+		}
+		top := float32(f.Raw.Format.MaxCount())
+		for y := 0; y+deadBlockPx <= p.Height; y += deadBlockPx {
+			for x := 0; x+deadBlockPx <= p.Width; x += deadBlockPx {
+				if raster.DeadBlock(p, x, y, deadBlockPx, top) {
+					last := deadBlockPx - 1
+					for _, at := range [][2]int{{x, y}, {x + last, y}, {x, y + last}, {x + last, y + last}} {
+						out[at[1]/g.CellPx*g.Columns+at[0]/g.CellPx] = true
+					}
+				}
+			}
+		}
+	}
+	return out, nil
+}
+
+func planeOf(item *pipeline.Item, k int) (*raster.Plane, error) {
+	if k == 0 {
+		return item.Raw()
+	}
+	return item.Frames[k].Raw.Plane()
 }
 
 // limit is the most that may be found every second time for the forbidden to be found.

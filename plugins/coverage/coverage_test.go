@@ -221,3 +221,25 @@ func TestCheckNamesTheKey(t *testing.T) {
 		t.Errorf("neither contrast nor curve: got %v", err)
 	}
 }
+
+// Rows that were not transferred are quiet, and nothing is found in them: their cells are
+// not inspected.
+func TestABlackBandIsNotInspected(t *testing.T) {
+	s := stagetest.SmallScene()
+	s.Spoilers = []render.Spoiler{{Unit: 1, Kind: render.SpoilBlackBand, Value: 0.1}}
+	r := stagetest.Render(t, s)
+	ask := func(s *Settings) { s.SmallestDigUM, s.DigContrastDN, s.BlurPx = 200, 60, 0.7 }
+	good, spoiled := see(t, r, r.Unit(0), ask), see(t, r, r.Unit(1), ask)
+	if good.Coverage.Share < 0.98 || good.CoverageMap.UnseenShare > 0.02 {
+		t.Errorf("a whole frame: %+v", good.Coverage)
+	}
+	m := spoiled.CoverageMap
+	if spoiled.Coverage.Share > 0.9 || m.UnseenShare < 0.1 {
+		t.Errorf("a tenth of the rows is black: %.3f inspected, %.3f unseen", spoiled.Coverage.Share, m.UnseenShare)
+	}
+	for column := range m.Columns {
+		if i := 180/m.CellPx*m.Columns + column; m.Inside(i) && m.Inspected(i) { // row 180 is the middle of the band
+			t.Errorf("cell %d of the band counts as inspected: %d µm", i, m.DigUM[i])
+		}
+	}
+}

@@ -12,5 +12,6 @@
 // whose peak reaches k_high · noise · raster.MatchedGain; they are found with probability
 // one half. Where the calibration has a sizing curve and no contrast is stated, c is that
 // of a dig of this diameter on the curve. All contrasts are multiplied by the light that
-// the stage proof measured, so a weak lamp covers less.
+// the stage proof measured, so a weak lamp covers less. A cell with rows or blocks of one
+// value, which no living sensor sends, is not inspected, however quiet it is.
 package coverage

@@ -47,16 +47,14 @@ type dead struct {
 	blocks, firstX, firstY int
 }
 
-// leastRow is the shortest row or column whose values may not be all alike: shorter ones
-// may be by chance.
-const leastRow = 16
+// leastColumn is the shortest column whose values may not be all alike: shorter ones may be
+// by chance.
+const leastColumn = 16
 
 func findDead(p *raster.Plane, block int, top float32) dead {
 	var d dead
-	if p.Width >= leastRow {
-		d.findRows(p)
-	}
-	if p.Height >= leastRow {
+	d.findRows(p)
+	if p.Height >= leastColumn {
 		d.findColumns(p)
 	}
 	if block > 0 {
@@ -66,38 +64,14 @@ func findDead(p *raster.Plane, block int, top float32) dead {
 }
 
 func (d *dead) findRows(p *raster.Plane) {
-	var last []float32
-	for y := range p.Height {
-		row := p.Row(y)
-		if constant(row) || same(row, last) {
-			if d.rows == 0 {
-				d.firstRow = y
-			}
+	for y, dead := range raster.DeadRows(p) {
+		if dead && d.rows == 0 {
+			d.firstRow = y
+		}
+		if dead {
 			d.rows++
 		}
-		last = row
 	}
-}
-
-func constant(v []float32) bool {
-	for _, x := range v[1:] {
-		if x != v[0] {
-			return false
-		}
-	}
-	return true
-}
-
-func same(a, b []float32) bool {
-	if len(a) != len(b) {
-		return false
-	}
-	for i, v := range a {
-		if v != b[i] {
-			return false
-		}
-	}
-	return true
 }
 
 // findColumns keeps the columns that are still of one value from row to row: after a few
@@ -125,7 +99,7 @@ func (d *dead) findColumns(p *raster.Plane) {
 func (d *dead) findBlocks(p *raster.Plane, side int, top float32) {
 	for y := 0; y+side <= p.Height; y += side {
 		for x := 0; x+side <= p.Width; x += side {
-			if p.At(x, y) < top && constantBlock(p, x, y, side) {
+			if raster.DeadBlock(p, x, y, side, top) {
 				if d.blocks == 0 {
 					d.firstX, d.firstY = x, y
 				}
@@ -133,16 +107,4 @@ func (d *dead) findBlocks(p *raster.Plane, side int, top float32) {
 			}
 		}
 	}
-}
-
-func constantBlock(p *raster.Plane, x, y, side int) bool {
-	v := p.At(x, y)
-	for r := y; r < y+side; r++ {
-		for _, w := range p.Row(r)[x : x+side] {
-			if w != v {
-				return false
-			}
-		}
-	}
-	return true
 }
