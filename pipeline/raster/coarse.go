@@ -2,7 +2,6 @@ package raster
 
 import (
 	"math"
-	"slices"
 )
 
 // Coarse is a picture reduced to square cells that start at the frame's corner: pixel
@@ -64,13 +63,11 @@ func cellValues(values, sample []float32, src *Plane, mask, bad *Mask, x0, y0, s
 
 // clippedMean uses sample up.
 func clippedMean(values, sample []float32) float32 {
-	slices.Sort(sample)
-	m := sample[len(sample)/2]
+	m := nth(sample, len(sample)/2)
 	for i, v := range sample {
 		sample[i] = max(v-m, m-v)
 	}
-	slices.Sort(sample)
-	reach := coarseClip * 1.4826 * (sample[len(sample)/2] + 0.25)
+	reach := coarseClip * 1.4826 * (nth(sample, len(sample)/2) + 0.25)
 	n, sum := 0, 0.
 	for _, v := range values {
 		if v >= m-reach && v <= m+reach {
@@ -112,7 +109,14 @@ func (c *Coarse) Unevenness(order int) (residual *Plane, sigma float64, ok bool)
 			if !solved {
 				break
 			}
+			moved := 0.
+			for k := range fit {
+				moved = max(moved, math.Abs(next[k]-fit[k]))
+			}
 			fit = next
+			if moved < settled*sigma {
+				break
+			}
 		}
 	}
 	residual = NewPlane(c.Level.Width, c.Level.Height)
@@ -121,6 +125,9 @@ func (c *Coarse) Unevenness(order int) (residual *Plane, sigma float64, ok bool)
 	}
 	return residual, residualScale(cells, fit), true
 }
+
+// settled is the share of sigma by which no term of a fit moves any more.
+const settled = 1e-5
 
 // cell is a valid cell with the terms of the polynomial at its place, −1 to 1 across.
 type cell struct {
@@ -157,7 +164,7 @@ func residualScale(cells []cell, fit [6]float64) float64 {
 	for k, p := range cells {
 		off[k] = math.Abs(p.level - p.surface(fit))
 	}
-	return 1.4826 * median(off)
+	return 1.4826 * quickMedian(off)
 }
 
 // reweighted solves the normal equations of the first terms with biweights of the
