@@ -61,15 +61,15 @@ func (f *Finder) Find(p *raster.Plane, region raster.Rows, bad *raster.Mask, s S
 		return &Result{}, sizeError(p)
 	}
 	w, ok := f.free.Get().(*work)
-	if !ok || w.width != width || w.height != height {
+	if !ok || w.width != width || w.height != height || w.thickness != thickness {
 		var err error
-		if w, err = newWork(width, height); err != nil {
+		if w, err = newWork(width, height, thickness); err != nil {
 			return nil, err
 		}
 	}
 	defer f.free.Put(w)
 	w.load(p, region.Spans(), bad, s.Half)
-	one := finder{work: w, weights: newWeights(thickness), s: s.inPixels(), plane: p, bad: bad, region: border{region, p.Width, p.Height}}
+	one := finder{work: w, weights: w.weights, s: s.inPixels(), plane: p, bad: bad, region: border{region, p.Width, p.Height}}
 	return one.find()
 }
 

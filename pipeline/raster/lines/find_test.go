@@ -104,8 +104,8 @@ func TestBrokenPiecesAreJoined(t *testing.T) {
 		draw(p, x, 100+x/5, x+100, 120+x/5, 1, 2)
 	}
 	lines := find(t, p, nil)
-	if len(lines) != 2 || math.Abs(lines[0].Length-357) > 8 || math.Abs(lines[1].Length-102) > 6 {
-		t.Errorf("got %+v", lines)
+	if len(lines) != 2 || math.Abs(lines[0].Length-357) > 8 || math.Abs(lines[1].Length-102) > 8 {
+		t.Errorf("got %s", lengths(lines))
 	}
 }
 

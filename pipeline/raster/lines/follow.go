@@ -31,7 +31,7 @@ func (c course) sigmas() float64 {
 	}
 	for _, p := range c.pieces {
 		sum += float64(c.sign) * p.sum
-		variance += p.weight * p.scatter.over(positions)
+		variance += p.weight * max(p.scatter.over(positions), p.scatter.over(p.positions()))
 	}
 	if variance <= 0 {
 		return 0

@@ -21,7 +21,7 @@ enum {
 	LN_LEAST = 32,  // pixels that a sum must have
 	LN_BIN = 4,     // slopes that share a spread
 	LN_BINS = LN_ROWS / LN_BIN,
-	LN_LEVELS = 2,  // lengths of line whose spread is measured: LN_ROWS and half of it
+	LN_LEVELS = 3,  // lengths of line whose spread is measured: LN_ROWS, half of it, and 16
 	LN_TILE = 704   // widest tile: the tree then stays in a second-level cache
 };
 

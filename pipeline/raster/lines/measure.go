@@ -7,11 +7,11 @@ import (
 	"lapgate/pipeline/raster"
 )
 
-// The profile across a line: places on each side, every half pixel.
-const (
-	profileReach = 16
-	profileStep  = 0.5
-)
+// The profile across a line reaches to each side so far, px; the second time where it has not
+// fallen to half of its height before.
+var profileReaches = [...]float64{7, 24}
+
+const profileStep = 0.5
 
 // leastRatio is the length over the width that a line has at least.
 const leastRatio = 4
@@ -49,8 +49,13 @@ func (f *finder) measure(c course) (Line, bool) {
 	if len(at.along) == 0 {
 		return l, false
 	}
-	across := f.profiles(l.Path, float64(c.sign), profileReach, spotHeight+3*median(at.along))
-	l.Width, l.Contrast, l.Flux = fullWidth(across.sum)
+	for _, reach := range profileReaches {
+		across := f.profiles(l.Path, float64(c.sign), reach, spotHeight+3*median(at.along))
+		l.Width, l.Contrast, l.Flux = fullWidth(across.sum)
+		if l.Width < reach {
+			break
+		}
+	}
 	l.Flux *= l.Length
 	l.Peak = strongest(at.along)
 	return l, l.Width > 0 && l.Length >= leastRatio*l.Width

@@ -93,7 +93,7 @@ func (f *finder) polish(k stretch, sign, reach int, step float64) piece {
 		before, was := p.sigmas(), p.stretch
 		k, t := f.settle(f.extend(p).upright(), 2, step, sign)
 		p = piece{k, t, sign, f.scatter(k), nil}
-		if p.sigmas() < before+0.02 && step <= 0.125 || p.sigmas() < hopeless(i) {
+		if p.sigmas() < before+0.02 && step <= 0.125 || p.sigmas() < f.hopeless(i) {
 			break
 		}
 		if near(was, p.stretch) || p.sigmas() < before+0.1 {
@@ -103,12 +103,12 @@ func (f *finder) polish(k stretch, sign, reach int, step float64) piece {
 	return p
 }
 
-// hopeless is how many sigmas a line has after some rounds that nothing will come of.
-func hopeless(round int) float64 {
-	if round < 2 {
-		return 4
-	}
-	return 5.2
+// below is how many sigmas a line that comes to something lies below the threshold after
+// each round at most: of scratches of 300 px at half a sigma one in fifty does.
+var below = [...]float64{1.5, 1.1, 0.8}
+
+func (f *finder) hopeless(round int) float64 {
+	return f.s.Threshold - below[min(round, len(below)-1)]
 }
 
 func near(p, q stretch) bool {

@@ -42,7 +42,7 @@ func (f *finder) findRings() *rings {
 	}
 	random := rand.New(rand.NewPCG(1, 1)) // of the places looked at: the same each time
 	along, across := f.sampleRings(r, random, 0, r.most, 0, ringLook), f.sampleRings(r, random, 0, r.most, 50, ringLook)
-	if along[0] < ringLeast*max(across[0], 0.05) && along[1] < ringLeast*max(across[1], 0.05) {
+	if along[0] < ringLeast*max(across[0], 0.05) && along[1] < ringLeast*max(across[1], 0.05) && along[2] < ringLeast*max(across[2], 0.05) {
 		return nil
 	}
 	for i := range ringBins {
@@ -69,7 +69,7 @@ func (f *finder) sampleRings(r *rings, random *rand.Rand, low, high, angle float
 		sin, cos := math.Sincos(at)
 		p := raster.Point{X: r.centre.X + d*cos, Y: r.centre.Y + d*sin}
 		for level := range values {
-			if z, ok := f.through(p, at+math.Pi/2+turn, rows>>level); ok {
+			if z, ok := f.through(p, at+math.Pi/2+turn, levelRows[level]); ok {
 				values[level] = append(values[level], z*z)
 			}
 		}

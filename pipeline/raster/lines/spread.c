@@ -84,10 +84,20 @@ static sums half(const ln_tile *k, int t) {
 	return out;
 }
 
+// sixteenth is over 16 rows of the lower half, of slope t of these.
+static sums sixteenth(const ln_tile *k, int t) {
+	const int from = k->x < 0 ? -k->x : 0, beyond = k->x + k->width + 16 - k->length;
+	sums out = {.a = k->w->sums->sixteen[0][t] + from, .width = k->width - from - (beyond > 0 ? beyond : 0), .pixels = 16};
+	if (k->holed)
+		out.na = k->w->counts->sixteen[0][t] + from;
+	return out;
+}
+
 void ln_spread(const ln_tile *k) {
 	for (int b = 0; b < LN_BINS; b++) {
-		const sums all = whole(k, b * (LN_BIN / 2)), upper = half(k, b * (LN_BIN / 2));
+		const sums all = whole(k, b * (LN_BIN / 2)), upper = half(k, b * (LN_BIN / 2)), few = sixteenth(k, b * 16 / LN_BINS);
 		k->spread[b] = relative(variance(&all));
 		k->spread[LN_BINS + b] = relative(variance(&upper));
+		k->spread[2 * LN_BINS + b] = b & 1 ? k->spread[2 * LN_BINS + b - 1] : relative(variance(&few));
 	}
 }

@@ -11,25 +11,36 @@ const (
 	levels = C.LN_LEVELS
 )
 
-// scatter is the variance of line sums over that of white noise: of lines through a whole
-// strip, and through half of one.
+// levelRows are the lengths of line, in positions, whose scatter is measured.
+var levelRows = [levels]int{rows, rows / 2, 16}
+
+// scatter is the variance of line sums over that of white noise, for lines as long as
+// levelRows.
 type scatter [levels]float64
 
-func (s scatter) most(o scatter) scatter { return scatter{max(s[0], o[0]), max(s[1], o[1])} }
+func (s scatter) most(o scatter) scatter {
+	for level, v := range o {
+		s[level] = max(s[level], v)
+	}
+	return s
+}
 
-// over is that of lines of some number of positions. What a strip's sums scatter beyond
-// white noise is taken to go on along the line, as lay does, so that it grows with the
-// length. A line that crosses lay at a small angle is like lay over half of a strip at most.
+// over is that of lines of some number of positions.
 func (s scatter) over(positions float64) float64 {
-	if s[0] <= 1 && s[1] <= 1 {
+	if s[0] <= 1 && s[1] <= 1 && s[2] <= 1 {
 		return max(s[0], s[1])
 	}
 	return s.grown(positions)
 }
 
+// grown takes what the sums through a strip scatter beyond white noise to go on along the
+// line, as those along lay do, so that it grows with the length. A line that crosses lay at
+// an angle is in step with it over a shorter stretch, which half of a strip or 16 rows show.
 func (s scatter) grown(positions float64) float64 {
-	long, short := 1+(s[0]-1)*positions/rows, 1+(s[1]-1)*min(positions*2/rows, rows/(2*positions))
-	return max(long, short, min(s[0], 1))
+	long := 1 + (s[0]-1)*positions/rows
+	half := 1 + (s[1]-1)*min(positions*2/rows, rows/(2*positions))
+	short := 1 + (s[2]-1)*min(positions/16, 1, rows/(2*positions))
+	return max(long, half, short, min(s[0], 1))
 }
 
 // spread is the scatter of the line sums by place and slope.

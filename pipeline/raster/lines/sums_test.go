@@ -68,7 +68,7 @@ func TestKernelEqualsDirectSums(t *testing.T) {
 	for y := 10; y < 190; y++ {
 		region = append(region, raster.Span{Y: y, X0: y / 4, X1: 100 + y/8}, raster.Span{Y: y, X0: 103 + y/8, X1: 230})
 	}
-	w, err := newWork(width, height)
+	w, err := newWork(width, height, 1)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -112,7 +112,7 @@ func TestHalves(t *testing.T) {
 	p.Set(10, 10, float32(math.NaN()))
 	bad := raster.NewMask(40, 36)
 	bad.Set(21, 20, true)
-	w, err := newWork(20, 18)
+	w, err := newWork(20, 18, 0.5)
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -19,14 +19,16 @@ var errMemory = errors.New("lines: no memory left for the search of a picture")
 type work struct {
 	c             *C.ln_work
 	width, height int
+	thickness     float64 // of the lines looked for, px of this picture
+	weights       *weights
 }
 
-func newWork(width, height int) (*work, error) {
+func newWork(width, height int, thickness float64) (*work, error) {
 	c := C.ln_work_new(C.int32_t(width), C.int32_t(height))
 	if c == nil {
 		return nil, errMemory
 	}
-	w := &work{c, width, height}
+	w := &work{c, width, height, thickness, newWeights(thickness)}
 	runtime.AddCleanup(w, func(c *C.ln_work) { C.ln_work_free(c) }, c)
 	return w, nil
 }

@@ -43,7 +43,7 @@ typedef struct {
 #define LN_WHITE (LN_UNIT * LN_UNIT + 1. / 3)
 
 // ln_spread measures the variance of the sums by slope over that of white noise: of those
-// over the strip, and of those over half of it.
+// over the strip, over half of it and over 16 rows.
 void ln_spread(const ln_tile *k);
 
 // Where a variance lies this near that of white noise it may be it: a tile knows it to some
