@@ -69,7 +69,9 @@ func (w *Watch) Drifts(ctx context.Context, line, station string) ([]Drift, erro
 	if w.drifts.seen == nil {
 		w.drifts.seen = map[place]driftAnswer{}
 	}
-	w.drifts.seen[place{line, station}] = driftAnswer{w.Now(), out}
+	if len(w.drifts.seen) < mostStations {
+		w.drifts.seen[place{line, station}] = driftAnswer{w.Now(), out}
+	}
 	return out, nil
 }
 

@@ -62,16 +62,24 @@ type event struct {
 // mostEvents is how many events are remembered for those who watch.
 const mostEvents = 256
 
+// mostStations is how many stations are remembered; names come from clients. What is known
+// of any other is read from the ledger each time.
+const mostStations = 4096
+
 func (w *Watch) at(p place) *station {
 	w.mu.Lock()
 	defer w.mu.Unlock()
 	if w.stations == nil {
 		w.stations = map[place]*station{}
 	}
-	if w.stations[p] == nil {
-		w.stations[p] = &station{views: map[string]*memory{}}
+	s := w.stations[p]
+	if s == nil {
+		s = &station{views: map[string]*memory{}}
+		if len(w.stations) < mostStations {
+			w.stations[p] = s
+		}
 	}
-	return w.stations[p]
+	return s
 }
 
 // Enter implements Gate.
