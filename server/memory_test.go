@@ -3,11 +3,14 @@ package server_test
 import (
 	"context"
 	"fmt"
+	"strings"
 	"sync"
 	"testing"
 	"time"
 
 	"google.golang.org/grpc"
+	"google.golang.org/grpc/codes"
+	"google.golang.org/grpc/status"
 
 	"lapgate/pipeline"
 	"lapgate/pipeline/raster"
@@ -155,6 +158,28 @@ func (r *rig) showUntilTaken(unit string, seed uint64, diameter float64) {
 			return
 		}
 		time.Sleep(10 * time.Millisecond)
+	}
+}
+
+// Frames of several units in one call would have one answer for all: they are refused, and
+// no worker waits for somebody to take the others.
+func TestUnitInOneCallIsOneUnit(t *testing.T) {
+	r := newRig(t, rigOptions{workers: 2})
+	req := &inspectpb.InspectUnitRequest{}
+	for i := range 5 {
+		for _, view := range []string{"ring", "bar"} {
+			raw := frame(uint64(i), 0)
+			req.Frames = append(req.Frames, &inspectpb.Frame{Header: inspectpb.FromFrameHeader(header(fmt.Sprintf("m%d", i), view, raw)), Data: raw.Data})
+		}
+	}
+	_, err := r.InspectUnit(context.Background(), req)
+	if status.Code(err) != codes.InvalidArgument || !strings.Contains(err.Error(), "one showing") {
+		t.Errorf("error %v, want one that says so", err)
+	}
+	r.memoryIsBack()
+	req.Frames = req.Frames[:2]
+	if _, err := r.InspectUnit(context.Background(), req); err != nil {
+		t.Error(err)
 	}
 }
 

@@ -5,7 +5,6 @@ import (
 
 	"google.golang.org/grpc"
 
-	"lapgate/pipeline"
 	"lapgate/proto/inspectpb"
 	"lapgate/server/intake"
 )
@@ -21,9 +20,6 @@ func (s *Inspection) InspectUnit(ctx context.Context, req *inspectpb.InspectUnit
 }
 
 func (s *Inspection) inspectUnit(ctx context.Context, in *inspectpb.IncomingUnit) (*inspectpb.InspectUnitResponse, error) {
-	if len(in.Frames) == 0 {
-		return nil, inspectpb.ToStatus(pipeline.Invalid("frames: got none, want all frames of one showing"))
-	}
 	var frames []intake.Sent
 	for _, f := range in.Frames {
 		h, err := inspectpb.ToFrameHeader(f.Header)
@@ -32,7 +28,12 @@ func (s *Inspection) inspectUnit(ctx context.Context, in *inspectpb.IncomingUnit
 		}
 		frames = append(frames, intake.Sent{Header: h, Pieces: f.Pieces})
 	}
-	v, err := s.deps.Intake.Inspect(ctx, frames)
+	wait, err := s.deps.Intake.Show(frames)
+	in.Free() // the pixels are where they stay
+	if err != nil {
+		return nil, inspectpb.ToStatus(err)
+	}
+	v, err := wait(ctx)
 	if err != nil {
 		return nil, inspectpb.ToStatus(err)
 	}

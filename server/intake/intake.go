@@ -107,27 +107,51 @@ type Sent struct {
 	Pieces [][]byte
 }
 
-// Inspect judges all frames of one showing and waits for the verdict.
-func (in *Intake) Inspect(ctx context.Context, frames []Sent) (Verdict, error) {
+// Show takes all frames of one showing. Once it returns, the pieces are not needed any
+// more; wait waits for the verdict.
+func (in *Intake) Show(frames []Sent) (wait func(ctx context.Context) (Verdict, error), err error) {
+	if err := oneShowing(frames); err != nil {
+		return nil, err
+	}
 	type outcome struct {
 		v   Verdict
 		err error
 	}
 	done := make(chan outcome, 1)
 	client := new(byte)
-	answer := func(v Verdict, err error) { done <- outcome{v, err} }
+	answer := func(v Verdict, err error) {
+		select {
+		case done <- outcome{v, err}:
+		default: // told already: a frame came after the showing had ended, and opened another
+		}
+	}
 	for _, f := range frames {
 		err := in.offer(f, client, answer)
 		if err != nil && !in.Refuse(f.Header, err, client, answer) {
-			return Verdict{}, err
+			return nil, err
 		}
 	}
-	select {
-	case o := <-done:
-		return o.v, o.err
-	case <-ctx.Done():
-		return Verdict{}, ctx.Err()
+	return func(ctx context.Context) (Verdict, error) {
+		select {
+		case o := <-done:
+			return o.v, o.err
+		case <-ctx.Done():
+			return Verdict{}, ctx.Err()
+		}
+	}, nil
+}
+
+// oneShowing refuses no frames, and frames of several showings: one verdict is the answer.
+func oneShowing(frames []Sent) error {
+	if len(frames) == 0 {
+		return pipeline.Invalid("frames: got none, want all frames of one showing")
 	}
+	for _, f := range frames[1:] {
+		if first, got := ShowingKey(frames[0].Header), ShowingKey(f.Header); got != first {
+			return pipeline.Invalid("frames: got one of %q and one of %q, want those of one showing", first, got)
+		}
+	}
+	return nil
 }
 
 func (in *Intake) offer(f Sent, client any, answer Answer) error {
