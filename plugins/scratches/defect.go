@@ -21,7 +21,7 @@ func defect(item *pipeline.Item, l lines.Line) pipeline.Defect {
 		LengthUM: l.Length * scale, WidthUM: l.Width * scale, DiameterUM: 2 * math.Sqrt(area/math.Pi) * scale,
 		LengthPx: l.Length, WidthPx: l.Width, DiameterPx: 2 * math.Sqrt(area/math.Pi),
 		AngleDeg: l.Angle, Flux: l.Flux * noise, PeakDN: l.Contrast * noise, PeakSigma: l.Peak, SNR: l.Sigmas, Dark: l.Dark,
-		Box: boxOf(l),
+		Box: boxOf(item, l),
 	}
 	for _, p := range l.Path {
 		d.Path = append(d.Path, pipeline.Point(p))
@@ -60,14 +60,16 @@ func noiseAt(g *raster.Grid, p raster.Point) float64 {
 	return g.Noise[row*g.Columns+column]
 }
 
-// boxOf is around all pixels of the line.
-func boxOf(l lines.Line) pipeline.Box {
+// boxOf is around all pixels of the line, within the frame.
+func boxOf(item *pipeline.Item, l lines.Line) pipeline.Box {
 	x0, y0, x1, y1 := math.Inf(1), math.Inf(1), math.Inf(-1), math.Inf(-1)
 	for _, p := range l.Path {
 		x0, y0, x1, y1 = min(x0, p.X), min(y0, p.Y), max(x1, p.X), max(y1, p.Y)
 	}
+	at := func(v float64) int { return int(math.Floor(v + 0.5)) }
 	w := l.Width / 2
-	return pipeline.Box{X0: int(math.Floor(x0 - w + 0.5)), Y0: int(math.Floor(y0 - w + 0.5)), X1: int(math.Floor(x1+w+0.5)) + 1, Y1: int(math.Floor(y1+w+0.5)) + 1}
+	width, height := item.Region.Size()
+	return pipeline.Box{X0: max(at(x0-w), 0), Y0: max(at(y0-w), 0), X1: min(at(x1+w)+1, width), Y1: min(at(y1+w)+1, height)}
 }
 
 // saturated reports whether a saturated pixel lies on the line or beside it.

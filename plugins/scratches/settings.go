@@ -25,7 +25,7 @@ type Settings struct {
 	// surroundings), dark, or both.
 	Polarity string `json:"polarity" yaml:"polarity"`
 	// Resolution is full, or half: means of 2 × 2 pixels, in about a third of the time. A
-	// scratch must then be about a quarter stronger to be found as surely.
+	// scratch of one pixel must then be a third stronger to be found as surely.
 	Resolution string `json:"resolution" yaml:"resolution"`
 	// SeedSigma is how many sigmas the sum along a line through a strip of 128 px must
 	// reach to be looked at; at least 3.5. Lower finds more and takes longer.

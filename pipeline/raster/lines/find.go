@@ -157,6 +157,7 @@ func (f *finder) try(h C.ln_hit, tried map[[5]int32]bool) (course, bool) {
 		return course{}, false
 	}
 	c := f.follow(p)
+	c.ridge = !f.standsOut(c)
 	f.eraseCourse(c)
 	return c, true
 }
@@ -187,7 +188,7 @@ func (f *finder) report(r *Result, courses []course) {
 		if c.sigmas() < f.s.need(f.scale()*c.length()) || c.length() < f.s.MinLength || f.region.along(f.path(c), f.rim()) {
 			continue
 		}
-		if !c.even() || !f.standsOut(c) {
+		if c.ridge || !c.even() {
 			continue
 		}
 		if l, ok := f.measure(c); ok {

@@ -85,6 +85,27 @@ func TestMeasures(t *testing.T) {
 	}
 }
 
+// Wide scratches are one line each, as wide as they were drawn to a fifth; a soft ridge of
+// the level, 40 px wide, is none.
+func TestWideScratch(t *testing.T) {
+	for _, width := range []float64{3, 5, 8} {
+		p := noise(480, 480, uint64(500+width))
+		draw(p, 60, 90, 420, 300, width, 1.2)
+		lines := find(t, p, nil)
+		if len(lines) != 1 || math.Abs(lines[0].Width/width-1) > 0.2 || math.Abs(lines[0].Length-417) > 8 {
+			t.Errorf("width %g: %s, %+v", width, lengths(lines), lines)
+		}
+	}
+	p := noise(480, 480, 510)
+	for i := range p.Pix {
+		d := (float64(i%480) - 2*float64(i/480) + 200) / math.Sqrt(5)
+		p.Pix[i] += float32(0.6 * math.Exp(-d*d/(2*17*17)))
+	}
+	if lines := find(t, p, nil); len(lines) > 0 {
+		t.Errorf("a ridge: %+v", lines)
+	}
+}
+
 func TestPolarity(t *testing.T) {
 	p := noise(400, 400, 31)
 	draw(p, 50, 60, 350, 100, 1, -1.5)

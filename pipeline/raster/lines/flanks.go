@@ -2,8 +2,8 @@ package lines
 
 import "math"
 
-// flankPx are how far beside a line its surroundings are summed, in pixels of the picture
-// searched.
+// flankPx are how far beside a line its surroundings are summed, px of the plane: a line
+// more than some 12 px wide does not stand out from them.
 var flankPx = [...]float64{-11, -9, -7, -5, 5, 7, 9, 11}
 
 // flankLoss is how many sigmas a line may lose at its flanks: their own noise takes some 6 %.
@@ -21,7 +21,7 @@ func (f *finder) standsOut(c course) bool {
 	for _, d := range flankPx {
 		for _, p := range c.pieces {
 			k := p.stretch
-			k.ca, k.cb = k.ca+d, k.cb+d
+			k.ca, k.cb = k.ca+d/f.scale(), k.cb+d/f.scale()
 			t := f.sum(k)
 			beside += float64(c.sign) * t.sum
 			square += t.weight

@@ -12,6 +12,7 @@ type course struct {
 	points []raster.Point // of the picture searched
 	pieces []piece        // what its evidence is
 	sign   int
+	ridge  bool // what lies on both sides is as strong
 }
 
 func (c course) length() float64 {

@@ -43,7 +43,7 @@ func (f *finder) joint(a, b course) (c course, gap float64, ok bool) {
 		for _, q := range []course{b, b.reversed()} {
 			if g, faces := f.faces(p, q); faces && g < gap {
 				gap, ok = g, true
-				c = course{points: slices.Concat(p.points, q.points), pieces: slices.Concat(p.pieces, q.pieces), sign: p.sign}
+				c = course{points: slices.Concat(p.points, q.points), pieces: slices.Concat(p.pieces, q.pieces), sign: p.sign, ridge: p.ridge && q.ridge}
 			}
 		}
 	}

@@ -4,8 +4,14 @@
 
 #include <stdint.h>
 
+// Products and sums are rounded one by one: gcc does so with -std=c11, clang is told.
+#ifdef __clang__
+#pragma STDC FP_CONTRACT OFF
+#endif
+
 // Every function marked LN_KERNEL is compiled for several x86-64 levels and chosen when
-// the program starts. All is integers, so that all clones give equal bits.
+// the program starts. All clones give equal bits: integers, or floats without contraction
+// and without reordering.
 #if defined(__x86_64__) && defined(__GNUC__) && !defined(__clang__) && !defined(LN_NO_CLONES)
 #define LN_CLONES __attribute__((target_clones("arch=x86-64-v4", "arch=x86-64-v3", "arch=x86-64-v2", "default")))
 #else
