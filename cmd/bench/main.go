@@ -48,6 +48,7 @@ func parts() []part {
 	return []part{
 		{"fused", "the fused pass", benchFused},
 		{"verdicts", "frame in over gRPC, verdict out", benchVerdicts},
+		{"lines", "the search for faint lines", benchLines},
 		{"reference", "reference and OpenCV chains, 12 megapixels", benchReference},
 		{"outside", "stages in processes of their own", benchOutside},
 		{"volume", "volume plan, 72 combinations", benchVolume},

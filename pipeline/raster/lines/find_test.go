@@ -86,7 +86,7 @@ func TestMeasures(t *testing.T) {
 }
 
 // Wide scratches are one line each, as wide as they were drawn to a fifth; a soft ridge of
-// the level, 40 px wide, is none.
+// the level, 14 px wide, is none.
 func TestWideScratch(t *testing.T) {
 	for _, width := range []float64{3, 5, 8} {
 		p := noise(480, 480, uint64(500+width))
@@ -99,7 +99,7 @@ func TestWideScratch(t *testing.T) {
 	p := noise(480, 480, 510)
 	for i := range p.Pix {
 		d := (float64(i%480) - 2*float64(i/480) + 200) / math.Sqrt(5)
-		p.Pix[i] += float32(0.6 * math.Exp(-d*d/(2*17*17)))
+		p.Pix[i] += float32(0.7 * math.Exp(-d*d/(2*6*6)))
 	}
 	if lines := find(t, p, nil); len(lines) > 0 {
 		t.Errorf("a ridge: %+v", lines)
