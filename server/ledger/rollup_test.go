@@ -126,6 +126,7 @@ func countUnit(counts map[string]Counts, u []*told) {
 	}
 	if u[0].Attempt == 1 {
 		c.First = plus(c.First, u[0].Judgement.Verdict)
+		c.Permanent = plus(c.Permanent, u[0].Judgement.Verdict) // nothing was proven removable
 		c.FirstBinned = plus(c.FirstBinned, u[0].bin)
 		for _, x := range u[1:] {
 			if u[0].Judgement.Verdict != pipeline.Accept && x.Judgement.Verdict == pipeline.Accept {
