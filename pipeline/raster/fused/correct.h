@@ -27,23 +27,27 @@ PG_INLINE const uint8_t *pg_row(const pg_frame *f, int y) { return f->data + (in
 
 // A row of memory that 64 px take step bytes of, to be asked for before it is used.
 typedef struct {
-	uintptr_t at; // 0: none
-	int step;
+	uintptr_t at;
+	int step; // 0: nothing to ask for
 } pg_stream;
 
+// pg_ask asks for 64 px; what is left of a line that they end in, the next ones ask for.
 PG_INLINE void pg_ask(const pg_stream *s, int x) {
-	const uintptr_t at = s->at + (uintptr_t)(x * s->step >> 6); // two lines hold at least 64 px
-	__builtin_prefetch((const void *)at, 0, 2);
-	__builtin_prefetch((const void *)(at + 64), 0, 2);
+	const uintptr_t at = s->at + (uintptr_t)(x * s->step >> 6);
+	if (s->step > 0)
+		__builtin_prefetch((const void *)at, 0, 2);
+	if (s->step > 64)
+		__builtin_prefetch((const void *)(at + 64), 0, 2);
 }
 
 // pg_streams are frame, offset and gain of row y.
 static inline void pg_streams(const pg_frame *f, int y, pg_stream *out) {
 	const int row = f->layout == PG_BYTES ? 64 : f->layout == PG_10P ? 80 : f->layout == PG_WORDS ? 128 : 96, map = 2 * 64;
 	const int none = y < 0 || y >= f->height || f->use_float;
-	out[0] = (pg_stream){none ? 0 : (uintptr_t)pg_row(f, y), row};
-	out[1] = (pg_stream){none || !f->offset ? 0 : (uintptr_t)(f->offset + (int64_t)y * f->width), map};
-	out[2] = (pg_stream){none || !f->gain ? 0 : (uintptr_t)(f->gain + (int64_t)y * f->width), map};
+	const pg_stream nothing = {0};
+	out[0] = none ? nothing : (pg_stream){(uintptr_t)pg_row(f, y), row};
+	out[1] = none || !f->offset ? nothing : (pg_stream){(uintptr_t)(f->offset + (int64_t)y * f->width), map};
+	out[2] = none || !f->gain ? nothing : (pg_stream){(uintptr_t)(f->gain + (int64_t)y * f->width), map};
 }
 
 PG_INLINE void pg_pair12(const uint8_t *restrict p, uint16_t *restrict d, int n, int packed) {
@@ -92,14 +96,37 @@ PG_INLINE const uint16_t *pg_unpack(const pg_frame *f, uint16_t *restrict tmp, i
 	return tmp;
 }
 
+// pg_eight corrects eight counts from x on; see pg_correct_int.
+PG_INLINE void pg_eight(float *restrict v, const uint8_t *restrict bytes, const uint16_t *restrict words, const int16_t *restrict o,
+                        const int16_t *restrict g, int32_t factor, float unit, int x) {
+	int32_t d[8];
+	for (int i = 0; i < 8; i++)
+		d[i] = (int32_t)(words ? words[x + i] : bytes[x + i]);
+	for (int i = 0; i < 8; i++)
+		d[i] = (((d[i] * factor - o[x + i]) * g[x + i] >> 14) + 1) >> 1;
+	for (int i = 0; i < 8; i++)
+		v[x + i] = (float)d[i] * unit;
+}
+
 // pg_correct_int is pg_correct by the images in 16-bit integers, which take half of the
-// memory that those in floats do; rounded to 1/scale DN.
+// memory that those in floats do; rounded to 1/scale DN. Spans are short: they are
+// taken eight at a time, the last of which may overlap those before.
 PG_INLINE void pg_correct_int(const pg_frame *f, float *restrict v, uint16_t *restrict tmp, int y, int x0, int x1) {
 	const int64_t at = (int64_t)y * f->width;
 	const int16_t *o = f->offset ? f->offset + at : 0, *g = f->gain ? f->gain + at : 0;
 	const uint8_t *bytes = pg_row(f, y);
 	const uint16_t *words = f->layout == PG_BYTES ? 0 : pg_unpack(f, tmp, y, x0, x1);
 	const float unit = (float)(1 / f->scale);
+	if (o && g && x1 - x0 >= 8) {
+		int x = x0;
+		for (; x + 8 < x1; x += 8)
+			if (words)
+				pg_eight(v, bytes, words, o, g, f->factor, unit, x);
+			else
+				pg_eight(v, bytes, 0, o, g, f->factor, unit, x);
+		pg_eight(v, bytes, words, o, g, f->factor, unit, x1 - 8);
+		return;
+	}
 	for (int x = x0; x < x1; x++) {
 		int32_t d = (int32_t)(words ? words[x] : bytes[x]) * f->factor - (o ? o[x] : 0);
 		d = g ? ((d * g[x] >> 14) + 1) >> 1 : d;

@@ -6,7 +6,7 @@
 enum { LEAST_SAMPLES = 24, CLIP_PASSES = 8 };
 
 // pack copies the samples that count, row by row, and returns how many they are.
-static int pack(T *packed, const T *v, int pitch, int rows, int columns) {
+PG_INLINE int pack(T *packed, const T *v, int pitch, int rows, int columns) {
 	int n = 0;
 	for (int k = 0; k < rows; k++, v += pitch) {
 		T least = v[0];
@@ -29,7 +29,7 @@ static int pack(T *packed, const T *v, int pitch, int rows, int columns) {
 // DN, or −1 when fewer than LEAST_SAMPLES count: raster's clipper.moments, with floor in
 // DN. packed holds as many, or is NULL where all of them count. guess is the median of the
 // distances to the median of a cell like it, and becomes that of this one.
-static double sample_sigma(const pg_frame *f, T *v, int pitch, int rows, int columns, T *packed, double unit, double floor, double *guess) {
+PG_WHOLE double sample_sigma(const pg_frame *f, T *v, int pitch, int rows, int columns, T *packed, double unit, double floor, double *guess) {
 	int n = packed || pitch != columns ? pack(packed ? packed : v, v, pitch, rows, columns) : rows * columns;
 	packed = packed ? packed : v;
 	if (n < LEAST_SAMPLES)

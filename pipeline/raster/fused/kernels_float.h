@@ -30,10 +30,10 @@ static T replaced(const pg_frame *f, int x, int y, unsigned good) {
 	return pg_replaced(f, x, y);
 }
 
-// moments sums in eight lanes, so that the order of the sums is the same however wide
+// moments_block sums in eight lanes, so that the order of the sums is the same however wide
 // the vectors are.
-PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restrict c, const T *restrict d, int x0, int x1, T low,
-                       T high, T mid, double *restrict out) {
+PG_INLINE void moments_block(const T *restrict a, const T *restrict b, const T *restrict c, const T *restrict d, int x0, int x1, T low,
+                             T high, T mid, double *restrict out) {
 	const T *rows[4] = {a, b, c, d};
 	float n[8] = {0}, sum[8] = {0}, sum2[8] = {0};
 	for (int k = 0; k < 4; k++) {

@@ -1,5 +1,7 @@
 // Row kernels in 16-bit integers for counts of 8 to 12 bits. Written so that a compiler
 // turns each loop into vector code; no result depends on how wide the vectors are.
+#include <string.h>
+
 #include "correct.h"
 #include "parts.h"
 
@@ -81,24 +83,26 @@ static T replaced(const pg_frame *f, int x, int y, unsigned good) {
 	return n == 0 ? to_value(f, pg_replaced(f, x, y)) : (T)((near[n / 2] + near[(n - 1) / 2]) / 2);
 }
 
-// inside is v − mid where v lies from low to high, and 0 elsewhere; *n counts down by one.
-PG_INLINE int16_t inside(int16_t v, int16_t low, int16_t high, int16_t mid, int16_t *n) {
-	int16_t in = (int16_t)((v < low ? 0 : -1) & (v > high ? 0 : -1));
+// inside is v − mid where v lies from low to low + range, and 0 elsewhere; *n counts down
+// by one.
+PG_INLINE int16_t inside(int16_t v, int16_t low, uint16_t range, int16_t mid, int16_t *n) {
+	int16_t in = (int16_t)((uint16_t)(v - low) <= range ? -1 : 0);
 	*n = (int16_t)(*n + in);
 	return (int16_t)((int16_t)(v - mid) & in);
 }
 
-// moments adds number, sum and sum of squares about mid of the values from low to high
-// in four rows of at most 64 pixels; values within mid ± PG_REACH do not overflow. One
+// moments_block adds number, sum and sum of squares about mid of the values from low to
+// high in four rows of at most 64 pixels; values within mid ± PG_REACH do not overflow. One
 // sum of squares for each row: a compiler turns those into multiply-add steps.
-PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restrict c, const T *restrict d, int x0, int x1, T low,
-                       T high, T mid, double *restrict out) {
+PG_INLINE void moments_block(const T *restrict a, const T *restrict b, const T *restrict c, const T *restrict d, int x0, int x1, T low,
+                             T high, T mid, double *restrict out) {
+	const uint16_t range = (uint16_t)(high - low);
 	int16_t n = 0;
 	int32_t sum = 0, p = 0, q = 0, r = 0, s = 0;
 	for (int x = x0; x < x1; x++) {
 		int16_t count = 0;
-		int16_t e = inside(a[x], low, high, mid, &count), f = inside(b[x], low, high, mid, &count);
-		int16_t g = inside(c[x], low, high, mid, &count), h = inside(d[x], low, high, mid, &count);
+		int16_t e = inside(a[x], low, range, mid, &count), f = inside(b[x], low, range, mid, &count);
+		int16_t g = inside(c[x], low, range, mid, &count), h = inside(d[x], low, range, mid, &count);
 		n = (int16_t)(n - count);
 		sum += (int16_t)(e + f + g + h);
 		p += (int32_t)e * e;
@@ -108,7 +112,7 @@ PG_KERNEL void moments(const T *restrict a, const T *restrict b, const T *restri
 	}
 	out[0] += n;
 	out[1] += sum;
-	out[2] += (double)p + q + r + s;
+	out[2] += p + q + r + s;
 }
 
 // row_signal writes value − level within ±CLAMP. The level
@@ -181,40 +185,68 @@ PG_KERNEL void ramp(T *restrict top, T *restrict slope, int x0, int x1, double a
 	}
 }
 
-// sample_moments writes number, sum and sum of squares of n samples (shifted down by
+enum { PART = 4096 }; // samples that a count in 16 bits holds
+
+// moments_part adds number, sum and sum of squares of up to PART samples (shifted down by
 // shift) from low to high.
-PG_KERNEL void sample_moments(const T *restrict v, int n, int low, int high, int shift, double *restrict out) {
-	int32_t count = 0, sum = 0, sum2 = 0;
-	const int16_t l = (int16_t)low, h = (int16_t)high;
+PG_INLINE void moments_part(const T *restrict v, int n, int16_t low, int16_t high, int shift, int32_t *restrict out) {
+	int16_t count = 0;
+	int32_t sum = 0, sum2 = 0;
 	for (int x = 0; x < n; x++) {
 		int16_t d = (int16_t)(v[x] >> shift);
-		int16_t in = (int16_t)((d < l ? 0 : -1) & (d > h ? 0 : -1));
+		int16_t in = (int16_t)((d < low ? 0 : -1) & (d > high ? 0 : -1));
 		d = (int16_t)(d & in);
-		count -= in;
+		count = (int16_t)(count - in);
 		sum += d;
 		sum2 += (int32_t)d * d;
 	}
-	out[0] = count;
-	out[1] = sum;
-	out[2] = sum2;
+	out[0] += count;
+	out[1] += sum;
+	out[2] += sum2;
+}
+
+// sample_moments writes those of n samples. Most are not shifted.
+PG_INLINE void sample_moments(const T *restrict v, int n, int low, int high, int shift, double *restrict out) {
+	int32_t sums[3] = {0};
+	for (int x = 0; x < n; x += PART)
+		if (shift == 0)
+			moments_part(v + x, n - x < PART ? n - x : PART, (int16_t)low, (int16_t)high, 0, sums);
+		else
+			moments_part(v + x, n - x < PART ? n - x : PART, (int16_t)low, (int16_t)high, shift, sums);
+	for (int k = 0; k < 3; k++)
+		out[k] = sums[k];
+}
+
+typedef int16_t lanes __attribute__((vector_size(32)));
+
+// outside_lanes counts the samples below a or above b; n is a multiple of 16, up to PART.
+PG_INLINE int outside_lanes(const T *v, int n, int16_t a, int16_t b) {
+	lanes count = {0}, w;
+	uint64_t four[4];
+	for (int x = 0; x < n; x += 16) {
+		memcpy(&w, v + x, sizeof w);
+		count -= (w < a) | (w > b);
+	}
+	memcpy(four, &count, sizeof four); // no count of a lane, and no sum of four, fills its 16 bits
+	return (int)((four[0] + four[1] + four[2] + four[3]) * 0x0001000100010001ull >> 48);
 }
 
 // count_between counts the samples from low to high.
-PG_KERNEL int count_between(const T *restrict v, int n, int low, int high) {
+PG_INLINE int count_between(const T *restrict v, int n, int low, int high) {
 	const int16_t a = (int16_t)(low < -32767 ? -32767 : low), b = (int16_t)(high > 32767 ? 32767 : high);
-	int out = 0;
-	for (int x0 = 0; x0 < n; x0 += 4096) {
-		int16_t count = 0;
-		for (int x = x0; x < (n < x0 + 4096 ? n : x0 + 4096); x++)
-			count = (int16_t)(count - (int16_t)((v[x] < a ? 0 : -1) & (v[x] > b ? 0 : -1)));
-		out += count;
+	int out = n;
+	for (int x0 = 0; x0 < n; x0 += PART) {
+		const int m = n - x0 < PART ? n - x0 : PART, whole = m & ~15;
+		out -= outside_lanes(v + x0, whole, a, b);
+		for (int x = x0 + whole; x < x0 + m; x++)
+			out -= v[x] < a || v[x] > b;
 	}
 	return out;
 }
 
 // least_with returns the least t with more than n/2 of the samples below centre + t, or
 // when mirrored within centre ± t. It is looked for first at guess ± reach.
-static int least_with(const T *v, int n, int centre, int mirrored, int guess, int reach, int most) {
+PG_INLINE int least_with(const T *v, int n, int centre, int mirrored, int guess, int reach, int most) {
 	int a = guess - reach, b = guess + reach; // doubled until t lies between
 	for (; b < most && count_between(v, n, mirrored ? centre - b : -32767, centre + b) <= n / 2; reach *= 2)
 		a = b + 1, b += 2 * reach;
@@ -232,7 +264,7 @@ static int least_with(const T *v, int n, int centre, int mirrored, int guess, in
 
 // middles finds the median of n samples and the median of their distances to it, both the
 // upper of the middle two; they are looked for first about what they hold.
-static void middles(T *v, int n, double *median, double *deviation) {
+PG_INLINE void middles(T *v, int n, double *median, double *deviation) {
 	*median = least_with(v, n, 0, 0, (int)*median, 2, 32768);
 	*deviation = least_with(v, n, (int)*median, 1, (int)*deviation, 2, 65536);
 }

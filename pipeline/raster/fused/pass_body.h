@@ -25,6 +25,7 @@ typedef struct {
 	T *cell_low, *cell_high, *cell_mid;
 	pg_span *inner, *spare;
 	int32_t *hits, hit_count; // segments with a value above the threshold in the four filtered rows
+	uint32_t *bits;           // of each of these, a row after the other: which pixels are
 } state;
 
 // hull is the x-range of the region in rows y0 to y1, rounded outwards to whole segments
@@ -178,14 +179,24 @@ static void start_cells(state *s, int row) {
 	}
 }
 
-static void add_moments(state *s, T **rows, int x0, int x1, const pg_stream *next) {
+// moments is moments_block as a function of its own.
+PG_KERNEL void moments(const T *a, const T *b, const T *c, const T *d, int x0, int x1, T low, T high, T mid, double *out) {
+	moments_block(a, b, c, d, x0, x1, low, high, mid, out);
+}
+
+// add_moments adds four rows to the moments of their cells.
+PG_KERNEL void add_moments(const state *s, T **rows, int x0, int x1, const pg_stream *next) {
 	const int cell = s->f->cell;
+	const T *low = s->cell_low, *high = s->cell_high, *mid = s->cell_mid, *a = rows[0], *b = rows[1], *c = rows[2], *d = rows[3];
 	for (int x = x0; x < x1;) {
 		int i = x / cell, end = (i + 1) * cell < x + 64 ? (i + 1) * cell : x + 64;
 		end = end < x1 ? end : x1;
 		for (int k = 0; k < 6; k++)
 			pg_ask(next + k, x);
-		moments(rows[0], rows[1], rows[2], rows[3], x, end, s->cell_low[i], s->cell_high[i], s->cell_mid[i], s->stats + 3 * i);
+		if (end - x == 64)
+			moments_block(a, b, c, d, x, x + 64, low[i], high[i], mid[i], s->stats + 3 * i);
+		else
+			moments_block(a, b, c, d, x, end, low[i], high[i], mid[i], s->stats + 3 * i);
 		x = end;
 	}
 }
