@@ -59,13 +59,13 @@ func TestRenderIsTheSameWithAnyNumberOfWorkers(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		if sum.Units != 6 || sum.Frames != 12 || sum.CalibrationFrames != 10 {
+		if sum.Units != 6 || sum.Frames != 18 || sum.CalibrationFrames != 15 {
 			t.Errorf("got %+v", sum)
 		}
 		runs = append(runs, digest(t, out))
 	}
-	if len(runs[0]) != 2*(12+10)+1 {
-		t.Errorf("got %d files, want 45", len(runs[0]))
+	if len(runs[0]) != 2*(18+15)+1 {
+		t.Errorf("got %d files, want 67", len(runs[0]))
 	}
 	for name, hash := range runs[0] {
 		if runs[1][name] != hash {
