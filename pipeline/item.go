@@ -14,7 +14,7 @@ const (
 	BackgroundPlane = "background" // DN, the local level
 	NoisePlane      = "noise"      // DN, the local sigma of one pixel
 	SNRPlane        = "snr"        // matched filter output in units of its own sigma
-	ContrastPlane   = "contrast"   // each pixel above the level, of either sign, in units of its noise
+	ContrastPlane   = "contrast"   // each good pixel above the level, of either sign, in units of its noise
 )
 
 // NamedPlane is a float32 picture that belongs to an Item. Its pixel (0, 0) lies at

@@ -64,6 +64,13 @@ func (st stage) contrast(item *pipeline.Item, corrected *raster.Plane, mask *ras
 	item.SetPlane(pipeline.NoisePlane, "DN", noise)
 	item.SetPlane(pipeline.SNRPlane, "sigma", snr)
 	raster.Ratio(signal, signal, noise, mask)
+	if item.BadMask != nil {
+		for i, bad := range item.BadMask.Bits {
+			if bad {
+				signal.Pix[i] = 0
+			}
+		}
+	}
 	item.SetPlane(pipeline.ContrastPlane, "sigma", signal)
 }
 

@@ -14,7 +14,7 @@ import (
 
 // Contrast returns the pixels of a region in units of their noise: corrected counts above
 // the level, over the noise, both by a grid that Find measured on this frame. It is 0
-// outside the region. The rows are worked on in bands at once.
+// outside the region and where a pixel is bad. The rows are worked on in bands at once.
 func (c *Correction) Contrast(raw raster.Raw, region []raster.Span, g *raster.Grid, bands int) (*raster.Plane, error) {
 	if err := raw.Check(); err != nil {
 		return nil, err
