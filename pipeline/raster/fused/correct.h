@@ -50,6 +50,18 @@ static inline void pg_streams(const pg_frame *f, int y, pg_stream *out) {
 	out[2] = none || !f->gain ? nothing : (pg_stream){(uintptr_t)(f->gain + (int64_t)y * f->width), map};
 }
 
+// pg_ask_span asks for all lines that x0 … x1 of row y lie in, as far as the frame goes.
+static inline void pg_ask_span(const pg_frame *f, int y, int x0, int x1) {
+	pg_stream s[3];
+	pg_streams(f, y, s);
+	x0 = x0 < 0 ? 0 : x0, x1 = x1 > f->width ? f->width : x1;
+	for (int k = 0; k < 3; k++) {
+		const uintptr_t last = s[k].at + (uintptr_t)((x1 - 1) * s[k].step >> 6);
+		for (uintptr_t p = (s[k].at + (uintptr_t)(x0 * s[k].step >> 6)) / 64 * 64; s[k].step > 0 && p <= last; p += 64)
+			__builtin_prefetch((const void *)p, 0, 2);
+	}
+}
+
 PG_INLINE void pg_pair12(const uint8_t *restrict p, uint16_t *restrict d, int n, int packed) {
 	for (int i = 0; i < n; i++) {
 		uint16_t a = p[3 * i], b = p[3 * i + 1], c = p[3 * i + 2];

@@ -293,16 +293,19 @@ PG_WHOLE void snr_span(const pg_frame *f, const pg_grid *g, line *l, int inner, 
 
 enum { ROWS_AHEAD = 8 };
 
-// ask_row asks for the memory that the spans of row y will need.
+// ask_row asks for the memory that the spans of row y will need beside that of the rows
+// above: two rows further down, and all five where a span is the first of its column.
 static void ask_row(const pg_frame *f, const rows *spans, int y) {
-	pg_stream s[3];
-	if (y >= f->height || spans->start[y] == spans->start[y + 1])
+	if (y >= f->height)
 		return;
-	pg_streams(f, y + 2, s);
-	for (int64_t i = spans->start[y]; i < spans->start[y + 1]; i++)
-		for (int x = spans->at[i].x0 - 4; x < spans->at[i].x1 + 4; x += 64)
-			for (int k = 0; k < 3; k++)
-				pg_ask(s + k, x < 0 ? 0 : x);
+	int64_t above = y > 0 ? spans->start[y - 1] : 0, end = spans->start[y];
+	for (int64_t i = end; i < spans->start[y + 1]; i++) {
+		const pg_span p = spans->at[i];
+		while (above < end && spans->at[above].x1 <= p.x0)
+			above++;
+		for (int k = above < end && spans->at[above].x0 < p.x1 ? 2 : -2; k <= 2; k++)
+			pg_ask_span(f, y + k, p.x0 - 4, p.x1 + 4);
+	}
 }
 
 static int evaluate(const pg_frame *f, const pg_grid *g, const rows *spans, line *l, pg_runs *runs, float **peaks, float *snr) {

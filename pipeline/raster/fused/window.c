@@ -55,7 +55,13 @@ static int from_patch(const pg_patch *p, float *dst, int y, int x0, int x1) {
 	return 0;
 }
 
-static void load(window *w, const pg_blobs *b, int64_t blob, uint16_t *tmp) {
+// ask asks for the memory of the strips, so that their misses overlap.
+static void ask(const window *w) {
+	for (int k = 0; k < w->rows; k++)
+		pg_ask_span(w->f, w->y0 + k, w->x0[k], w->x1[k]);
+}
+
+PG_WHOLE void load(window *w, const pg_blobs *b, int64_t blob, uint16_t *tmp) {
 	for (int k = 0; k < w->rows; k++) {
 		int y = w->y0 + k, n;
 		const pg_span *p = spans_of(w->f, y, &n);
@@ -145,6 +151,7 @@ int window_cut(window *w, const pg_frame *f, const pg_grid *g, const pg_blobs *b
 	w->x0 = (int32_t *)(void *)(w->at + w->rows);
 	w->x1 = w->x0 + w->rows, w->f0 = w->x1 + w->rows, w->f1 = w->f0 + w->rows;
 	int64_t n = strips(w);
+	ask(w);
 	w->clear = o->x0 > MARGIN && o->y0 > MARGIN && o->x1 + MARGIN < f->width && o->y1 + MARGIN < f->height;
 	w->signal = calloc((size_t)n, 3 * sizeof(float) + 2);
 	if (!w->signal)
