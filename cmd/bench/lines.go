@@ -48,8 +48,8 @@ func lineSpeed(o options) (map[string]figure, error) {
 	}
 	defer bank.Close()
 	cv.SetThreads(1)
-	var finder lines.Finder
 	search := func(half bool) func() error {
+		var finder lines.Finder // keeps the memory for pictures of one size
 		s := lines.Default
 		s.Half = half
 		return func() error {
@@ -60,9 +60,10 @@ func lineSpeed(o options) (map[string]figure, error) {
 			return err
 		}
 	}
+	inFull, inHalf := search(false), search(true)
 	full, half, filters := &pair{}, &pair{}, &pair{}
 	for i := range max(repeats(o, 12), 10) {
-		if err := errors.Join(full.time(search(false)), half.time(search(true))); err != nil {
+		if err := errors.Join(full.time(inFull), half.time(inHalf)); err != nil {
 			return nil, err
 		}
 		if i == 0 || i%4 == 0 && !o.short { // it takes seconds

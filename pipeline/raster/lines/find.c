@@ -90,9 +90,9 @@ static int keep(ln_work *w, int32_t *cell, ln_hit h) {
 	return 0;
 }
 
-// scan keeps the lines of slope t, of which some reach.
-static int scan(const ln_tile *k, int t, const int16_t *a, const int16_t *b, const int16_t *na, const int16_t *nb, double variance) {
-	for (int x = 0; x < k->width; x++) {
+// scan keeps the lines of slope t that reach, from x0 to x1.
+static int scan(const ln_tile *k, int t, int x0, int x1, const int16_t *a, const int16_t *b, const int16_t *na, const int16_t *nb, double variance) {
+	for (int x = x0; x < x1; x++) {
 		int v = a[x] + b[x], n = k->holed ? na[x] + nb[x] : LN_ROWS;
 		if (n < LN_LEAST || (k->polarity > 0 && v < 0) || (k->polarity < 0 && v > 0))
 			continue;
@@ -107,6 +107,8 @@ static int scan(const ln_tile *k, int t, const int16_t *a, const int16_t *b, con
 	return 0;
 }
 
+enum { PART = 64 };
+
 static int search(const ln_tile *k) {
 	const ln_tree *s = k->w->sums, *c = k->w->counts;
 	for (int t = 0; t < LN_ROWS; t++) {
@@ -114,13 +116,17 @@ static int search(const ln_tile *k) {
 		const int16_t *a = s->half[0][u], *b = s->half[1][u] + shift, *na = c->half[0][u], *nb = c->half[1][u] + shift;
 		const double variance = LN_WHITE * ln_spread_at(k, t), least = k->seed * __builtin_sqrt(variance * LN_ROWS);
 		const int reach = least < LN_MOST_SUM ? (int)least : LN_MOST_SUM;
-		int found;
-		if (k->holed)
-			found = reaches_by(a, b, na, nb, k->width, (float)(k->seed * k->seed * variance * 0.9999));
-		else
-			found = reaches(a, b, k->width, k->polarity < 0 ? LN_MOST_SUM : reach, k->polarity > 0 ? -LN_MOST_SUM : -reach);
-		if (found && scan(k, t, a, b, na, nb, variance))
-			return 1;
+		const int most = k->polarity < 0 ? LN_MOST_SUM : reach, low = k->polarity > 0 ? -LN_MOST_SUM : -reach;
+		const float square = (float)(k->seed * k->seed * variance * 0.9999);
+		if (!(k->holed ? reaches_by(a, b, na, nb, k->width, square) : reaches(a, b, k->width, most, low)))
+			continue;
+		for (int x = 0; x < k->width; x += PART) { // few do, of a few stretches
+			const int x1 = x + PART < k->width ? x + PART : k->width;
+			if (!k->holed && !reaches(a + x, b + x, x1 - x, most, low))
+				continue;
+			if (scan(k, t, x, x1, a, b, na, nb, variance))
+				return 1;
+		}
 	}
 	return 0;
 }

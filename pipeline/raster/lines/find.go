@@ -36,8 +36,8 @@ type Result struct {
 	MemoryBytes int64  // taken in C, beside the picture
 }
 
-// Finder looks for lines. Its memory is kept from one picture to the next; it may be used
-// by several goroutines at once.
+// Finder looks for lines. Its memory is kept from one picture to the next of the same size
+// and resolution; it may be used by several goroutines at once.
 type Finder struct{ free sync.Pool }
 
 // mostSeeds is how many lines through one strip are looked at, the strongest first. A

@@ -13,6 +13,9 @@ var profileReaches = [...]float64{7, 24}
 
 const profileStep = 0.5
 
+// profilePlaces is at how many positions of a long line its profile is taken at least.
+const profilePlaces = 120
+
 // leastRatio is the length over the width that a line has at least.
 const leastRatio = 4
 
@@ -45,12 +48,12 @@ func (f *finder) measure(c course) (Line, bool) {
 	}
 	a, b := l.Path[0], l.Path[len(l.Path)-1]
 	l.Angle = fold(math.Atan2(b.Y-a.Y, b.X-a.X) * 180 / math.Pi)
-	at := f.profiles(l.Path, float64(c.sign), 1, math.Inf(1))
+	at := f.profiles(l.Path, float64(c.sign), 1, math.Inf(1), 1)
 	if len(at.along) == 0 {
 		return l, false
 	}
 	for _, reach := range profileReaches {
-		across := f.profiles(l.Path, float64(c.sign), reach, spotHeight+3*median(at.along))
+		across := f.profiles(l.Path, float64(c.sign), reach, spotHeight+3*median(at.along), max(int(l.Length)/profilePlaces, 1))
 		l.Width, l.Contrast, l.Flux = fullWidth(across.sum)
 		if l.Width < reach {
 			break
@@ -83,15 +86,16 @@ type profile struct {
 	f          *finder
 	sign, most float64 // no value counts as more than most
 	reach      float64 // px to either side
+	stride     int     // positions from one to the next that is looked at
 	sum, count []float64
 	along      []float64 // at each position, the mean about the path itself
 }
 
 // profiles returns the mean across the path, from −reach to reach, and the mean at the path
 // at each position along it. A pixel counts in the bins within 1 px of it, less with distance.
-func (f *finder) profiles(path []raster.Point, sign, reach, most float64) profile {
+func (f *finder) profiles(path []raster.Point, sign, reach, most float64, stride int) profile {
 	n := 2*int(reach/profileStep) + 1
-	p := profile{f: f, sign: sign, most: most, reach: reach, sum: make([]float64, n), count: make([]float64, n)}
+	p := profile{f: f, sign: sign, most: most, reach: reach, stride: stride, sum: make([]float64, n), count: make([]float64, n)}
 	for i := 1; i < len(path); i++ {
 		if k, ok := between(path[i-1], path[i]); ok {
 			p.add(k)
@@ -108,7 +112,7 @@ func (f *finder) profiles(path []raster.Point, sign, reach, most float64) profil
 func (p *profile) add(k stretch) {
 	slope := k.slope()
 	cos := 1 / math.Hypot(1, slope)
-	for m := k.a; m <= k.b; m++ {
+	for m := k.a; m <= k.b; m += p.stride {
 		c, middle, weight := k.ca+slope*float64(m-k.a), 0., 0.
 		for j := int(math.Ceil(c - p.reach/cos)); j <= int(math.Floor(c+p.reach/cos)); j++ {
 			x, y := j, m

@@ -155,10 +155,14 @@ func bestPart(v []total, sign int, noise scatter) (first, last int) {
 	for i, t := range v {
 		s[i+1], w[i+1] = s[i]+float64(sign)*t.sum, w[i]+t.weight
 	}
-	value := func(i, j int) float64 { // the square, with its sign
+	flat := noise.over(1) == noise.over(1e4) // as white noise is
+	value := func(i, j int) float64 {        // the square, with its sign
 		weight, sum := w[j]-w[i], s[j]-s[i]
 		if j-i < leastPositions || weight <= 0 {
 			return math.Inf(-1)
+		}
+		if flat {
+			return sum * math.Abs(sum) / weight
 		}
 		return sum * math.Abs(sum) / (weight * noise.over(float64(j-i)))
 	}

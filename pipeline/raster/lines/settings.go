@@ -21,7 +21,7 @@ const (
 type Settings struct {
 	Polarity  Polarity
 	Half      bool    // search in means of 2 × 2 pixels: about a quarter of the work
-	Seed      float64 // sigmas that the sum through one strip must reach to be looked at
+	Seed      float64 // sigmas that the sum through one strip must reach to be looked at; with Half 0.2 more
 	Threshold float64 // sigmas that the refined line must reach
 	MinLength float64 // px of the picture
 	JoinGap   float64 // px of the picture over which a line may be broken
@@ -62,9 +62,14 @@ func (s Settings) need(length float64) float64 {
 	return s.Threshold + 0.5*max(0, math.Log2(150/length))
 }
 
+// halfSeed is how many sigmas more a seed needs in half resolution, where a strip holds
+// twice as much of a scratch.
+const halfSeed = 0.2
+
 // inPixels returns the settings with lengths in pixels of the picture searched.
 func (s Settings) inPixels() Settings {
 	if s.Half {
+		s.Seed += halfSeed
 		s.MinLength, s.JoinGap, s.Rim = s.MinLength/2, s.JoinGap/2, math.Ceil(s.Rim/2)
 		if s.Centre != nil {
 			s.Centre = &raster.Point{X: (s.Centre.X - 0.5) / 2, Y: (s.Centre.Y - 0.5) / 2}
