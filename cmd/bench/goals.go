@@ -33,6 +33,11 @@ func goals() []goal {
 		{figure: "grpc_to_verdict_over_fused", part: "verdicts", atMost: true, required: 4, aim: 2.5, must: true},
 		{figure: "grpc_to_verdict_vs_opencv_tuned", part: "verdicts", required: 5, aim: 8},
 		{figure: "line_search_vs_filter_bank", part: "lines", required: 30, aim: 60, must: true},
+		{figure: "line_half_over_full", part: "lines", atMost: true, required: 0.4, aim: 0.3},
+		{figure: "scratch_pd_snr_1_00", part: "lines", required: 0.98, aim: 1},
+		{figure: "scratch_pd_snr_0_75", part: "lines", required: 0.9, aim: 0.99},
+		{figure: "scratch_pd_snr_0_50", part: "lines", aim: 0.5},
+		{figure: "line_false_alarms_per_12mp_frame", part: "lines", atMost: true, required: 0.1, aim: 20. / 300},
 	}
 }
 
