@@ -46,7 +46,7 @@ type Environment struct {
 type Factory struct {
 	Type     string
 	Version  string
-	Summary  string // one sentence
+	Summary  string   // one sentence
 	Scope    Scope    // empty = not known yet: a stage outside that has not started
 	Reads    []string // planes and properties it needs
 	Writes   []string // planes and properties it makes
