@@ -85,13 +85,13 @@ def patches(over):
     """Returns the connected sets of tiles (rows × columns of bool), each as a list of y, x."""
     left, out = {tuple(p) for p in np.argwhere(over)}, []
     while left:
-        todo, patch = [left.pop()], []
-        while todo:
-            y, x = todo.pop()
+        waiting, patch = [left.pop()], []
+        while waiting:
+            y, x = waiting.pop()
             patch.append((y, x))
             near = {(y + dy, x + dx) for dy in (-1, 0, 1) for dx in (-1, 0, 1)} & left
             left -= near
-            todo += near
+            waiting += near
         out.append(sorted(patch))
     return sorted(out)
 
