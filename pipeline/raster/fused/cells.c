@@ -49,7 +49,7 @@ int pg_sample_rows(const pg_frame *f, int row, int *y) {
 // Memory.
 
 int pg_grow(pg_runs *r) {
-	int64_t room = r->room < 4096 ? 4096 : r->room + r->room / 4;
+	int64_t room = r->room + r->room / 4 + 1024;
 	pg_run *at = realloc(r->at, sizeof(pg_run) * (size_t)room);
 	if (!at)
 		return 1;

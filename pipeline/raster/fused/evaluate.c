@@ -14,12 +14,14 @@
 typedef struct {
 	pg_span *at;
 	int64_t count, room;
-	int64_t *start; // height + 1
+	int32_t *start; // height + 1
 } rows;
 
 static int rows_add(rows *r, int y, int x0, int x1) {
 	if (r->count == r->room) {
-		int64_t room = r->room ? 2 * r->room : 4096;
+		int64_t room = r->room + r->room / 4 + 1024;
+		if (room > INT32_MAX)
+			return PG_NO_MEMORY;
 		pg_span *at = realloc(r->at, sizeof(pg_span) * (size_t)room);
 		if (!at)
 			return PG_NO_MEMORY;
@@ -58,20 +60,20 @@ static int merged(rows *r, const rows *from, int height, int y, int grow) {
 // worth_a_look writes the candidate runs of sets that may reach the high threshold.
 static int worth_a_look(const pg_frame *f, const pg_runs *c, rows *out) {
 	int32_t *label = malloc(sizeof(int32_t) * (size_t)(c->count + 1));
-	uint8_t *high = calloc((size_t)c->count + 1, 1);
+	uint8_t *high = calloc((size_t)c->count / 8 + 1, 1); // a bit for each set
 	int e = label && high && out->start ? PG_OK : PG_NO_MEMORY;
 	if (!e) {
 		pg_label(c->at, c->count, label);
 		for (int64_t i = 0; i < c->count; i++)
-			high[label[i]] |= c->at[i].high != 0;
+			high[label[i] / 8] |= (uint8_t)(c->at[i].high << label[i] % 8);
 	}
 	int64_t i = 0;
 	for (int y = 0; y < f->height && !e; y++) {
-		out->start[y] = out->count;
+		out->start[y] = (int32_t)out->count;
 		for (; i < c->count && (int)c->at[i].y == y && !e; i++)
-			if (high[label[i]])
+			if (high[label[i] / 8] >> label[i] % 8 & 1)
 				e = rows_add(out, y, c->at[i].x0, c->at[i].x1);
-		out->start[y + 1] = out->count;
+		out->start[y + 1] = (int32_t)out->count;
 	}
 	free(label);
 	free(high);
@@ -101,23 +103,46 @@ static int region_part(const pg_frame *f, rows *r, int64_t at, int y) {
 	return e;
 }
 
-static int wanted(const pg_frame *f, const pg_runs *c, int all, rows *out) {
-	rows near = {.start = calloc((size_t)f->height + 1, sizeof(int64_t))};
-	int e = out->start && near.start ? PG_OK : PG_NO_MEMORY;
-	e = e ? e : worth_a_look(f, c, &near);
+// taken notes how much memory a step of the search takes at most: bytes beside the blobs'.
+static void taken(pg_blobs *b, int64_t bytes) {
+	bytes += pg_blobs_bytes(b);
+	b->peak = bytes > b->peak ? bytes : b->peak;
+}
+
+// candidates turns b's candidates, which it frees, into spans of those worth a look.
+static int candidates(const pg_frame *f, pg_blobs *b, rows *out) {
+	pg_runs *c = &b->candidates;
+	pg_run *less = c->count > 0 ? realloc(c->at, sizeof(pg_run) * (size_t)c->count) : 0;
+	if (less)
+		c->at = less, c->room = c->count;
+	int e = worth_a_look(f, c, out);
+	taken(b, (int64_t)sizeof(int32_t) * (f->height + c->count) + c->count / 8 + (int64_t)sizeof(pg_span) * out->room);
+	free(c->at);
+	*c = (pg_runs){0};
+	return e;
+}
+
+// wanted writes where the snr plane is to be evaluated: around the candidates, or with
+// all in the whole region. out's start and at are to be freed.
+static int wanted(const pg_frame *f, pg_blobs *b, int all, rows *out) {
+	rows near = {.start = calloc((size_t)f->height + 1, sizeof(int32_t))};
+	int e = near.start ? candidates(f, b, &near) : PG_NO_MEMORY;
+	out->start = calloc((size_t)f->height + 1, sizeof(int32_t));
+	e = e || out->start ? e : PG_NO_MEMORY;
 	for (int y = 0; y < f->height && !e; y++) {
 		int n;
 		const pg_span *p = spans_of(f, y, &n);
 		int64_t at = out->count;
-		out->start[y] = at;
+		out->start[y] = (int32_t)at;
 		for (int i = 0; i < n && all && !e; i++)
 			e = rows_add(out, y, p[i].x0, p[i].x1);
 		if (!all && !e) {
 			e = merged(out, &near, f->height, y, 2);
 			e = e || out->count == at ? e : region_part(f, out, at, y);
 		}
-		out->start[y + 1] = out->count;
+		out->start[y + 1] = (int32_t)out->count;
 	}
+	taken(b, 2 * (int64_t)sizeof(int32_t) * f->height + (int64_t)sizeof(pg_span) * (near.room + out->room));
 	free(near.at);
 	free(near.start);
 	return e;
@@ -266,7 +291,7 @@ static int above(const pg_frame *f, const line *l, pg_runs *runs, int y, int x0,
 // peaks[k] is the highest value of run k and where; runs from first on lie in row y.
 static int note_peaks(const line *l, const pg_runs *runs, int64_t first, float **peaks, int64_t *room) {
 	if (runs->count > *room) {
-		int64_t n = 2 * runs->count + 1024;
+		int64_t n = runs->count + runs->count / 4 + 1024;
 		float *p = realloc(*peaks, sizeof(float) * 2 * (size_t)n);
 		if (!p)
 			return PG_NO_MEMORY;
@@ -407,24 +432,14 @@ static void give_back(pg_band *band, const line *l, void *block) {
 	free(block);
 }
 
-// taken notes how much memory a step of the search takes at most.
-static void taken(pg_blobs *b, int64_t bytes) {
-	bytes += pg_blobs_bytes(b);
-	b->peak = bytes > b->peak ? bytes : b->peak;
-}
-
 int pg_find(const pg_frame *f, const pg_grid *g, pg_band *band, pg_blobs *b, int32_t area, float *snr) {
-	rows spans = {.start = calloc((size_t)f->height + 1, sizeof(int64_t))};
+	rows spans = {0};
 	line l = {0};
 	pg_runs runs = {0};
 	float *peaks = 0;
 	int32_t *label = 0;
 	void *block = 0;
-	taken(b, 2 * 8 * (int64_t)f->height + 5 * b->candidates.count); // what labels them
-	int e = wanted(f, &b->candidates, snr != 0, &spans);
-	taken(b, (int64_t)sizeof(pg_span) * 2 * spans.room);
-	free(b->candidates.at);
-	b->candidates = (pg_runs){0};
+	int e = wanted(f, b, snr != 0, &spans);
 	e = e ? e : line_rows(f, band, &l, &block);
 	if (!snr && !e) {
 		b->patch.start = calloc((size_t)f->height, 2 * sizeof(int32_t));
@@ -433,7 +448,7 @@ int pg_find(const pg_frame *f, const pg_grid *g, pg_band *band, pg_blobs *b, int
 		e = b->patch.start ? PG_OK : PG_NO_MEMORY;
 	}
 	e = e ? e : evaluate(f, g, &spans, &l, &runs, &peaks, snr);
-	taken(b, (int64_t)sizeof(pg_span) * (spans.room + l.need.room) + 8 * (int64_t)f->height + 20 * runs.room + l.bytes);
+	taken(b, (int64_t)sizeof(pg_span) * (spans.room + l.need.room) + 4 * (int64_t)f->height + 20 * runs.room + l.bytes);
 	free(spans.at);
 	free(spans.start);
 	free(l.need.at);

@@ -98,8 +98,8 @@ type job struct {
 	rows       int // of the grid
 	guess      *grid
 	grid       *grid
-	inside     []int64
-	valid      []int64
+	inside     []int // an int is an int64_t here: see grid.go
+	valid      []int
 	bands      []*band
 	guessBytes int64 // taken in C for the grid of the first look
 	blockBytes int64 // taken in C for the first look, and given back after it
@@ -126,7 +126,7 @@ func newJob(c *Correction, raw raster.Raw, region []raster.Span, s Settings) *jo
 	cell := s.Grid.CellPx
 	columns, rows := (c.width+cell-1)/cell, (c.height+cell-1)/cell
 	j.rows = rows
-	j.inside, j.valid = make([]int64, columns*rows), make([]int64, columns*rows)
+	j.inside, j.valid = make([]int, columns*rows), make([]int, columns*rows)
 	values := make([]float64, 5*columns*rows)
 	j.pin.Pin(unsafe.SliceData(values))
 	j.grid = newGrid(j, columns, rows, values)

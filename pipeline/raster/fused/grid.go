@@ -40,6 +40,9 @@ func pinned[T any](j *job, s []T) unsafe.Pointer {
 	return p
 }
 
+// The kernels are for processors of 64 bits: C takes an int for an int64_t.
+var _ = [1]struct{}{}[unsafe.Sizeof(int(0))-unsafe.Sizeof(C.int64_t(0))]
+
 // grid is a grid in memory that C may use.
 type grid struct {
 	c      *C.pg_grid
@@ -85,9 +88,9 @@ func (j *job) rasterGrid() *raster.Grid {
 	n := len(g.filled)
 	out := &raster.Grid{CellPx: j.s.Grid.CellPx, Columns: int(g.c.columns), Rows: int(g.c.rows),
 		Level: g.values[:n:n], Noise: g.values[n : 2*n : 2*n],
-		Inside: make([]int, n), Valid: make([]int, n), Filled: make([]bool, n)}
-	for i := range n {
-		out.Inside[i], out.Valid[i], out.Filled[i] = int(j.inside[i]), int(j.valid[i]), g.filled[i] != 0
+		Inside: j.inside, Valid: j.valid, Filled: make([]bool, n)}
+	for i, f := range g.filled {
+		out.Filled[i] = f != 0
 	}
 	return out
 }

@@ -19,11 +19,12 @@ func (j *job) objects() (*Result, error) {
 	}
 	defer C.pg_blobs_free(found)
 	r := &Result{Grid: j.rasterGrid(), Floats: j.frame.use_float != 0}
+	some := new(spanBuffer)
 	for _, b := range j.bands {
 		if err := firstError(C.pg_collect(found, b.c)); err != nil {
 			return nil, err
 		}
-		r.Saturated = appendSpans(r.Saturated, b.c.saturated.at, int64(b.c.saturated.count))
+		r.Saturated = some.append(r.Saturated, b.c.saturated.at, int64(b.c.saturated.count))
 	}
 	var err error
 	if r.RowsAgain, err = j.again(found); err != nil {
@@ -51,12 +52,15 @@ func (j *job) objects() (*Result, error) {
 	return r, j.measure(found, r.Blobs)
 }
 
-func appendSpans(dst []raster.Span, runs *C.pg_run, n int64) []raster.Span {
+// spanBuffer is what spans pass through on their way from C; made once, as C is given its
+// address.
+type spanBuffer [64]cSpan
+
+func (some *spanBuffer) append(dst []raster.Span, runs *C.pg_run, n int64) []raster.Span {
 	if n == 0 {
 		return dst
 	}
 	dst = slices.Grow(dst, int(n))
-	var some [64]cSpan
 	for done := int64(0); done < n; {
 		part := min(n-done, int64(len(some)))
 		first := (*C.pg_run)(unsafe.Add(unsafe.Pointer(runs), uintptr(done)*unsafe.Sizeof(C.pg_run{})))
@@ -100,9 +104,9 @@ func (j *job) measure(found *C.pg_blobs, out []Blob) error {
 	results := make([]C.int, workers)
 	var wait sync.WaitGroup
 	work := func(w int) {
-		m := new(C.pg_measure)
+		m, some := new(C.pg_measure), new(spanBuffer)
 		for i := w; i < len(out) && results[w] == C.PG_OK; i += workers {
-			results[w] = j.measureOne(found, out, i, m)
+			results[w] = j.measureOne(found, out, i, m, some)
 		}
 	}
 	for w := 1; w < workers; w++ {
@@ -113,7 +117,7 @@ func (j *job) measure(found *C.pg_blobs, out []Blob) error {
 	return firstError(results...)
 }
 
-func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int, m *C.pg_measure) C.int {
+func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int, m *C.pg_measure, some *spanBuffer) C.int {
 	if e := C.pg_measure_blob(j.frame, j.grid.c, found, C.int64_t(i), m); e != C.PG_OK {
 		return e
 	}
@@ -128,6 +132,6 @@ func (j *job) measureOne(found *C.pg_blobs, out []Blob, i int, m *C.pg_measure) 
 		out[i].Path = append(out[i].Path, raster.Point{X: float64(m.path[2*k]), Y: float64(m.path[2*k+1])})
 	}
 	runs := (*C.pg_run)(unsafe.Add(unsafe.Pointer(found.runs.at), uintptr(b.first)*unsafe.Sizeof(C.pg_run{})))
-	out[i].Spans = appendSpans(nil, runs, int64(b.runs))
+	out[i].Spans = some.append(nil, runs, int64(b.runs))
 	return C.PG_OK
 }
