@@ -63,11 +63,11 @@ func cellValues(values, sample []float32, src *Plane, mask, bad *Mask, x0, y0, s
 
 // clippedMean uses sample up.
 func clippedMean(values, sample []float32) float32 {
-	m := nth(sample, len(sample)/2)
+	m := Nth(sample, len(sample)/2)
 	for i, v := range sample {
 		sample[i] = max(v-m, m-v)
 	}
-	reach := coarseClip * 1.4826 * (nth(sample, len(sample)/2) + 0.25)
+	reach := coarseClip * 1.4826 * (Nth(sample, len(sample)/2) + 0.25)
 	n, sum := 0, 0.
 	for _, v := range values {
 		if v >= m-reach && v <= m+reach {

@@ -1,8 +1,9 @@
 package raster
 
-// nth puts v into an order in which v[k] is what it would be if v were sorted, with nothing
+// Nth puts v into an order in which v[k] is what it would be if v were sorted, with nothing
 // larger before and nothing smaller behind it, and returns it (quickselect; Hoare 1961).
-func nth[T float32 | float64](v []T, k int) T {
+// v holds no NaN, and k is one of its indices.
+func Nth[T float32 | float64](v []T, k int) T {
 	low, high := 0, len(v)-1
 	for low < high {
 		pivot := v[(low+high)/2]
@@ -35,7 +36,7 @@ func nth[T float32 | float64](v []T, k int) T {
 // quickMedian is median without sorting v.
 func quickMedian(v []float64) float64 {
 	n := len(v)
-	upper := nth(v, n/2)
+	upper := Nth(v, n/2)
 	if n%2 == 1 {
 		return upper
 	}

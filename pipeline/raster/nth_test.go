@@ -15,7 +15,7 @@ func TestNthAgainstSorting(t *testing.T) {
 		}
 		sorted := slices.Sorted(slices.Values(v))
 		k := r.IntN(len(v))
-		if got := nth(slices.Clone(v), k); got != sorted[k] {
+		if got := Nth(slices.Clone(v), k); got != sorted[k] {
 			t.Fatalf("%v: %d-th is %v, want %v", v, k, got, sorted[k])
 		}
 		if got, want := quickMedian(slices.Clone(v)), median(sorted); got != want {

@@ -80,12 +80,12 @@ func (s *seen) apart(o *seen) float64 {
 // body of the long defect whole; 0 where all of it lies inside.
 func (s *seen) outside(whole *seen) float64 {
 	if !s.long() {
-		d := toPath(pipeline.Point{X: s.UUM, Y: s.VUM}, whole.path) + s.radius - whole.radius
+		d := pipeline.ToPath(pipeline.Point{X: s.UUM, Y: s.VUM}, whole.path) + s.radius - whole.radius
 		return max(d, 0)
 	}
 	far := 0.0
 	for _, p := range dense(s.path) {
-		far = max(far, toPath(p, whole.path)-whole.radius)
+		far = max(far, pipeline.ToPath(p, whole.path)-whole.radius)
 	}
 	return far
 }
@@ -101,19 +101,4 @@ func dense(path []pipeline.Point) []pipeline.Point {
 		}
 	}
 	return out
-}
-
-// toPath returns the distance from p to the nearest point of a path.
-func toPath(p pipeline.Point, path []pipeline.Point) float64 {
-	best := math.Inf(1)
-	for i := 1; i < len(path); i++ {
-		a, b := path[i-1], path[i]
-		dx, dy := b.X-a.X, b.Y-a.Y
-		t := 0.0
-		if l := dx*dx + dy*dy; l > 0 {
-			t = min(max(((p.X-a.X)*dx+(p.Y-a.Y)*dy)/l, 0), 1)
-		}
-		best = min(best, math.Hypot(p.X-a.X-t*dx, p.Y-a.Y-t*dy))
-	}
-	return best
 }

@@ -102,7 +102,7 @@ func onto(o, d pipeline.Defect) float64 {
 	on, all := 0., 0.
 	for _, p := range dense(course(o)) {
 		all++
-		if toPath(p, path) <= reach {
+		if pipeline.ToPath(p, path) <= reach {
 			on++
 		}
 	}
@@ -149,19 +149,4 @@ func absorb(d *pipeline.Defect, piece pipeline.Defect) {
 	d.PeakDN, d.PeakSigma = max(d.PeakDN, piece.PeakDN), max(d.PeakSigma, piece.PeakSigma)
 	d.Saturated = d.Saturated || piece.Saturated
 	d.SNR = max(d.SNR, piece.SNR)
-}
-
-// toPath returns the distance from p to the nearest point of a path, px.
-func toPath(p pipeline.Point, path []pipeline.Point) float64 {
-	best := math.Inf(1)
-	for i := 1; i < len(path); i++ {
-		a, b := path[i-1], path[i]
-		dx, dy := b.X-a.X, b.Y-a.Y
-		t := 0.
-		if l := dx*dx + dy*dy; l > 0 {
-			t = min(max(((p.X-a.X)*dx+(p.Y-a.Y)*dy)/l, 0), 1)
-		}
-		best = min(best, math.Hypot(p.X-a.X-t*dx, p.Y-a.Y-t*dy))
-	}
-	return best
 }
