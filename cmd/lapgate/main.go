@@ -10,6 +10,7 @@ import (
 	"io/fs"
 	"os"
 	"os/signal"
+	"strings"
 	"syscall"
 
 	"github.com/spf13/cobra"
@@ -45,6 +46,9 @@ func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.
 		return 0
 	}
 	fmt.Fprintln(stderr, "lapgate:", err)
+	if strings.Contains(err.Error(), "Error while dialing") { // the words of gRPC; no code says this alone
+		fmt.Fprintln(stderr, "no server answers there: start `lapgated serve`, or name its host and port with --server")
+	}
 	if !started {
 		fmt.Fprintln(stderr, "see lapgate --help, or lapgate VERB --help")
 		return exitUsage

@@ -297,6 +297,7 @@ func TestExitCodes(t *testing.T) {
 		{"feed --watch a b", exitUsage, "want one"},
 		{"feed --reject-cmd no-such-program version.go --spool none", exitUsage, "reject-cmd"},
 		{"yield --server unix:///no/such/socket", exitFailure, "no such file"},
+		{"yield --server 127.0.0.1:1", exitFailure, "start `lapgated serve`"},
 	} {
 		code, _, messages := call(t, strings.Fields(c.args)...)
 		if code != c.code || !strings.Contains(messages, c.want) {

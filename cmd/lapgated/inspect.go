@@ -130,7 +130,7 @@ func readViews(args []string, colour string, id *pipeline.Identity) ([]pipeline.
 		start := time.Now()
 		frame, err := readFrame(name, path, rule, id)
 		if err != nil {
-			return nil, nil, usageError{fmt.Errorf("%s: %w", path, err)}
+			return nil, nil, usageError{fmt.Errorf("view %s: %w", name, err)}
 		}
 		ms[name] += float64(time.Since(start).Microseconds()) / 1000
 		if _, seen := at[name]; !seen {
@@ -179,14 +179,18 @@ func widened(file, stated raster.PixelFormat) raster.PixelFormat {
 // sidecar reads the header beside a frame; none is no error.
 func sidecar(path string) (pipeline.FrameHeader, error) {
 	var h pipeline.FrameHeader
-	text, err := os.ReadFile(strings.TrimSuffix(path, filepath.Ext(path)) + ".json")
+	name := strings.TrimSuffix(path, filepath.Ext(path)) + ".json"
+	text, err := os.ReadFile(name)
 	if errors.Is(err, os.ErrNotExist) {
 		return h, nil
 	}
-	if err == nil {
-		err = json.Unmarshal(text, &h)
+	if err != nil {
+		return h, err
 	}
-	return h, err
+	if err := json.Unmarshal(text, &h); err != nil {
+		return h, fmt.Errorf("%s: %w", name, err)
+	}
+	return h, nil
 }
 
 func colourRule(name string) (files.ColourRule, error) {
