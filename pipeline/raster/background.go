@@ -35,7 +35,8 @@ type Grid struct {
 //
 // Level and sigma of a cell are clipped moments (see clipper). The sigma is replaced by
 // the median of its 3 × 3 cells, and so is the level where it is more than 0.3 sigma
-// away from that. The level's median is not pulled by a slope: where a neighbour is
+// away from that, or 1 sigma where the cell scatters no more than its neighbours (see
+// medianStep). The level's median is not pulled by a slope: where a neighbour is
 // missing, its point reflection 2·centre − opposite stands in. Noise is
 // the sigma of one pixel times the grain factor max(1, sigma of the filtered picture /
 // (MatchedGain · sigma of one pixel)): 1 for white noise, and more where lay or grain
@@ -53,8 +54,7 @@ func MeasureGrid(src *Plane, mask, bad *Mask, s GridSettings) *Grid {
 	}
 	g := newGrid(src.Width, src.Height, s.CellPx)
 	g.measure(src, mask, bad, s)
-	g.Level = g.medianOf(g.Level, true)
-	g.Noise = g.medianOf(g.Noise, false)
+	g.smooth()
 	g.fill()
 	if s.Grain {
 		g.addGrain(src, mask, bad, s)

@@ -5,14 +5,38 @@ import (
 	"slices"
 )
 
-// medianStep is how far, in sigmas of one pixel, a cell's level may lie from the median of
-// its neighbourhood and stay: a defect that fills a cell pulls it further, while haze that
-// changes from cell to cell is to be followed. A whole cell's mean is known to 1/64 sigma.
-const medianStep = 0.3
+// How far, in sigmas of one pixel, a cell's level may lie from the median of its
+// neighbourhood and stay. A defect that fills part of a cell pulls its level and widens its
+// scatter; haze that changes from cell to cell moves the level alone, and is to be followed.
+// A cell counts as even while its sigma is at most evenSpread times the median of its
+// neighbourhood: a defect that brings a share f of it up by c sigmas moves the level by fc
+// and the variance by f(1 − f)c², so that with these numbers none of more than 1.4 sigmas
+// over less than the whole cell is followed. A whole cell's mean is known to 1/64 sigma.
+const (
+	medianStep = 0.3
+	evenStep   = 1.0
+	evenSpread = 1.15
+)
+
+// smooth replaces the noise by the median of each 3 × 3 cells, and the level where it is
+// too far from that.
+func (g *Grid) smooth() {
+	noise := g.medianOf(g.Noise, false)
+	level := g.medianOf(g.Level, true)
+	for i, m := range level {
+		step := medianStep * g.Noise[i]
+		if g.Noise[i] <= evenSpread*noise[i] {
+			step = evenStep * noise[i]
+		}
+		if math.Abs(g.Level[i]-m) <= step {
+			level[i] = g.Level[i]
+		}
+	}
+	g.Level, g.Noise = level, noise
+}
 
 // medianOf returns the median over the measured cells of each 3 × 3 neighbourhood. With
-// slope, missing neighbours are replaced by the point reflection of the opposite ones,
-// and values within medianStep of the median stay as they are.
+// slope, missing neighbours are replaced by the point reflection of the opposite ones.
 func (g *Grid) medianOf(values []float64, slope bool) []float64 {
 	out := slices.Clone(values)
 	var near [9]float64
@@ -27,10 +51,7 @@ func (g *Grid) medianOf(values []float64, slope bool) []float64 {
 				n++
 			}
 		}
-		m := median(near[:n])
-		if !slope || math.Abs(values[i]-m) > medianStep*g.Noise[i] {
-			out[i] = m
-		}
+		out[i] = median(near[:n])
 	}
 	return out
 }

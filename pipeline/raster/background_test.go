@@ -26,6 +26,30 @@ func TestGridOnASlopeWithNoise(t *testing.T) {
 	}
 }
 
+// Haze with a crest over one cell, 0.7 sigma above the median of the cells around, is
+// background: the matched filter would show a level that stays behind as 2.5 sigmas all
+// over the crest. A dig that fills a third of a cell with 2 sigmas is none.
+func TestGridFollowsHazeAndNoDigs(t *testing.T) {
+	const cell = 64
+	crest, dig := noisy(7*cell, 7*cell, 20, 1, 5), noisy(7*cell, 7*cell, 20, 1, 5)
+	wave := func(p float64) float64 { return math.Cos(2 * math.Pi * (p - 3.5*cell + 0.5) / (3 * cell)) }
+	for i := range crest.Pix {
+		x, y := float64(i%crest.Width), float64(i/crest.Width)
+		crest.Pix[i] += float32(1.4 * wave(x) * wave(y))
+		if math.Hypot(x-3.5*cell, y-3.5*cell) < 21 {
+			dig.Pix[i] += 2
+		}
+	}
+	const middle = 3*7 + 3
+	// The mean of 1.4·cos·cos over the cell: 1.4·(sin(π/3)/(π/3))² = 0.957.
+	if off := MeasureGrid(crest, fullMask(7*cell, 7*cell), nil, DefaultGrid()).Level[middle] - 20 - 0.957; math.Abs(off) > 0.1 {
+		t.Errorf("the level on the crest is off by %.2f sigma, want it followed", off)
+	}
+	if off := MeasureGrid(dig, fullMask(7*cell, 7*cell), nil, DefaultGrid()).Level[middle] - 20; math.Abs(off) > 0.1 {
+		t.Errorf("the level under the dig is off by %.2f sigma, want that of the cells around", off)
+	}
+}
+
 // Standard deviation of a normal distribution cut at ±3 and ±2 sigma: 0.986577 and
 // 0.879626 (√0.973 34 and √0.773 74, from the formula with φ(3) = 0.004 431 85).
 func TestTruncation(t *testing.T) {

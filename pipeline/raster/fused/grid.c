@@ -41,8 +41,10 @@ static int neighbour(const pg_grid *g, const double *v, int x, int y, int dx, in
 	return 1;
 }
 
-// MEDIAN_STEP is raster's medianStep.
+// These are raster's medianStep, evenStep and evenSpread.
 #define MEDIAN_STEP 0.3
+#define EVEN_STEP 1.0
+#define EVEN_SPREAD 1.15
 
 // all_near copies the 3 × 3 cells around (x, y); returns 0 where one is missing.
 static int all_near(const pg_grid *g, const double *v, int x, int y, double *near) {
@@ -107,9 +109,19 @@ static void medians(const pg_grid *g, double *dst, const double *v, int slope) {
 				dst[i] = v[i];
 				continue;
 			}
-			double m = whole && x > 0 && x + 1 < g->columns ? dst[i] : near_median(g, v, x, y, slope);
-			dst[i] = !slope || fabs(v[i] - m) > MEDIAN_STEP * g->sigma[i] ? m : v[i];
+			if (!whole || x < 1 || x + 1 >= g->columns)
+				dst[i] = near_median(g, v, x, y, slope);
 		}
+	}
+}
+
+// keep_even puts back the levels that are near the median of their neighbourhood.
+static void keep_even(pg_grid *g) {
+	for (int64_t i = 0, cells = (int64_t)g->columns * g->rows; i < cells; i++) {
+		int even = g->sigma[i] <= EVEN_SPREAD * g->noise[i];
+		double step = even ? EVEN_STEP * g->noise[i] : MEDIAN_STEP * g->sigma[i];
+		if (fabs(g->mean[i] - g->level[i]) <= step)
+			g->level[i] = g->mean[i];
 	}
 }
 
@@ -156,6 +168,7 @@ int pg_smooth(const pg_frame *f, pg_grid *g) {
 		return PG_NO_MEMORY;
 	medians(g, g->level, g->mean, 1);
 	medians(g, g->noise, g->sigma, 0);
+	keep_even(g);
 	fill(g, known, known + cells);
 	free(known);
 	return PG_OK;

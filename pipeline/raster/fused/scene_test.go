@@ -21,6 +21,7 @@ type look struct {
 	width, height int
 	noise         float64 // counts of 8 bits
 	lay           float64 // amplitude of a lay with a period of 9 px
+	haze          float64 // amplitude of crests three cells apart
 	digs          int
 	scratches     int
 	plain         bool // no dark, stray, response, bad pixels
@@ -41,7 +42,8 @@ func draw(l look) scene {
 	for y := range h {
 		for x := range w {
 			u, v := float64(x)/float64(w)-0.5, float64(y)/float64(h)-0.5
-			light[y*w+x] = base + 8*math.Cos(2.5*u+0.4) - 6*(u*u+v*v) + l.lay*math.Sin(2*math.Pi*(0.8*float64(x)+0.6*float64(y))/9)
+			light[y*w+x] = base + 8*math.Cos(2.5*u+0.4) - 6*(u*u+v*v) + l.lay*math.Sin(2*math.Pi*(0.8*float64(x)+0.6*float64(y))/9) +
+				l.haze*math.Cos(2*math.Pi*float64(x)/192)*math.Cos(2*math.Pi*float64(y)/192)
 		}
 	}
 	sign := 1.
