@@ -9,18 +9,21 @@ import (
 )
 
 // defect turns a line into a defect: with its zone, its place on the station, its sizes in
-// µm at the scale where it lies, and its heights in DN by the noise there.
+// µm at the scale where it lies, and its heights in DN by the noise along it. Its peak in DN
+// is how high the profile across it is in the mean along it, not its brightest pixel, which
+// is noise; that in sigmas is of its strongest 5 px. SNR is the sum along the whole line over the
+// noise of its pixels, as the flux of a blob over its own; how lay scatters is not in it.
 func defect(item *pipeline.Item, l lines.Line) pipeline.Defect {
 	middle := halfway(l.Path, l.Length)
 	u, v, scale := item.Geometry.ToStation(middle.X, middle.Y)
-	noise := noiseAt(item.Grid, middle)
+	noise := noiseAlong(item.Grid, l.Path)
 	area := l.Length * l.Width
 	d := pipeline.Defect{
 		Kind: pipeline.Scratch, View: item.View, Place: pipeline.Place{XPx: middle.X, YPx: middle.Y, UUM: u, VUM: v},
 		AreaPx: int(math.Round(area)), AreaUM2: area * scale * scale,
 		LengthUM: l.Length * scale, WidthUM: l.Width * scale, DiameterUM: 2 * math.Sqrt(area/math.Pi) * scale,
 		LengthPx: l.Length, WidthPx: l.Width, DiameterPx: 2 * math.Sqrt(area/math.Pi),
-		AngleDeg: l.Angle, Flux: l.Flux * noise, PeakDN: l.Contrast * noise, PeakSigma: l.Peak, SNR: l.Sigmas, Dark: l.Dark,
+		AngleDeg: l.Angle, Flux: l.Flux * noise, PeakDN: l.Contrast * noise, PeakSigma: l.Peak, SNR: l.White, Dark: l.Dark,
 		Box: boxOf(item, l),
 	}
 	for _, p := range l.Path {
@@ -51,6 +54,21 @@ func halfway(path []raster.Point, length float64) raster.Point {
 		left -= d
 	}
 	return path[len(path)-1]
+}
+
+// noiseAlong returns the mean noise of the cells along a path, DN.
+func noiseAlong(g *raster.Grid, path []raster.Point) float64 {
+	sum, n := 0., 0.
+	for i := 1; i < len(path); i++ {
+		p, q := path[i-1], path[i]
+		d := math.Hypot(q.X-p.X, q.Y-p.Y)
+		for k := range int(d/16) + 1 {
+			t := (float64(k) + 0.5) / float64(int(d/16)+1)
+			share := d / float64(int(d/16)+1)
+			sum, n = sum+share*noiseAt(g, raster.Point{X: p.X + t*(q.X-p.X), Y: p.Y + t*(q.Y-p.Y)}), n+share
+		}
+	}
+	return sum / n
 }
 
 // noiseAt returns the noise of the cell that holds a point, DN.

@@ -8,5 +8,5 @@
 //
 // Where the stage blobs saw the same scratch, one defect remains: the line where it is the
 // longer one, with the pieces in it, else the blob. A dig on a scratch stays a dig when it
-// is wider than the scratch.
+// is clearly wider or higher than the scratch.
 package scratches

@@ -84,14 +84,20 @@ func apart(a, b pipeline.Box) int {
 	return max(a.X0-b.X1, b.X0-a.X1, a.Y0-b.Y1, b.Y0-a.Y1)
 }
 
+// A dig that lies on a scratch is a piece of it when it is hardly wider and hardly higher.
+const (
+	pieceWidth  = 1.25 // times the scratch's width, and 1 px more
+	pieceHeight = 3    // times the scratch's height
+)
+
 // same reports whether a defect is the scratch or a piece of it: its course lies along the
-// scratch's, or the other way round, and a dig is not wider than the scratch.
+// scratch's, or the other way round, and a dig does not stand out from the scratch.
 func same(o, d pipeline.Defect) bool {
 	switch o.Kind {
 	case pipeline.Scratch:
 		return onto(o, d) >= sharePart || onto(d, o) >= sharePart
 	case pipeline.Dig:
-		return o.WidthPx <= 2*d.WidthPx+2*besidePx && onto(o, d) == 1
+		return o.WidthPx <= pieceWidth*d.WidthPx+1 && o.PeakDN <= pieceHeight*d.PeakDN && onto(o, d) == 1
 	}
 	return false
 }

@@ -133,7 +133,6 @@ func (f *finder) scatter(k stretch) scatter {
 }
 
 // try refines a hit and judges what comes out.
-
 func (f *finder) try(h C.ln_hit, tried map[[5]int32]bool) (course, bool) {
 	k, sign := f.strip(h), 1
 	if h.value < 0 {
@@ -147,7 +146,7 @@ func (f *finder) try(h C.ln_hit, tried map[[5]int32]bool) (course, bool) {
 	if now.sigmas(sign) < need {
 		return course{}, false
 	}
-	p := f.refine(k, sign)
+	p := f.withoutSpots(f.refine(k, sign))
 	if p.sigmas() < f.s.Threshold {
 		remember(tried, h)
 		return course{}, false
@@ -160,6 +159,18 @@ func (f *finder) try(h C.ln_hit, tried map[[5]int32]bool) (course, bool) {
 	c.ridge = !f.standsOut(c)
 	f.eraseCourse(c)
 	return c, true
+}
+
+// withoutSpots takes the spots on a line out and refines it anew, until it has none left or
+// comes to nothing without them.
+func (f *finder) withoutSpots(p piece) piece {
+	for range mostSpots {
+		if p.sigmas() < f.s.Threshold || !f.takeOut(p.stretch, p.sign, level(f.heights(p.stretch, p.sign))) {
+			break
+		}
+		p = f.refine(p.stretch, p.sign)
+	}
+	return p
 }
 
 // nearPx is how near each other two lines that lead to nothing are taken to be the same.

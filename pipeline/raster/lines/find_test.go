@@ -78,7 +78,7 @@ func TestMeasures(t *testing.T) {
 			if off := math.Abs(math.Remainder(l.Angle-angle, 180)); g.apart(l) > 3 || off > 0.3 || math.Abs(l.Length-250) > 5 {
 				t.Errorf("half %v, %d: ends %.1f px off, angle %.2f°, length %.1f", half, i, g.apart(l), off, l.Length)
 			}
-			if l.Dark || math.Abs(l.Width-1.7) > 0.6 || math.Abs(l.Contrast-1.6) > 0.5 || math.Abs(l.Flux-250*1.5*2) > 200 {
+			if l.Dark || math.Abs(l.Width-1.5) > 0.4 || math.Abs(l.Contrast-2) > 0.4 || math.Abs(l.Flux-250*1.5*2) > 100 {
 				t.Errorf("half %v, %d: width %.2f, contrast %.2f, flux %.0f", half, i, l.Width, l.Contrast, l.Flux)
 			}
 		}
@@ -160,7 +160,7 @@ func TestCurvedScratchIsOneLine(t *testing.T) {
 			p := noise(700, 700, uint64(40+i))
 			drawArc(p, 350-radius*math.Cos(from+200/radius), 350-radius*math.Sin(from+200/radius), radius, from, 400, 2)
 			lines := find(t, p, nil)
-			if len(lines) != 1 || math.Abs(lines[0].Length-400) > 28 {
+			if len(lines) != 1 || math.Abs(lines[0].Length-400) > 18 {
 				t.Errorf("radius %g, %d: %s", radius, i, lengths(lines))
 				continue
 			}

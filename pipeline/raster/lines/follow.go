@@ -105,15 +105,18 @@ func (f *finder) followEnd(c *course) {
 	n := len(c.points)
 	from, to := c.points[n-2], c.points[n-1]
 	w := walk{at: to, angle: math.Atan2(to.Y-from.Y, to.X-from.X)}
-	most := (f.work.width + f.work.height) / 8
+	most, last := (f.work.width+f.work.height)/8, -1 // the piece of the last step
 	for range most {
 		p, far, ok := f.next(w, c.sign)
 		if !ok {
 			w = w.ahead()
 			if w.gap > f.s.JoinGap {
-				return
+				break
 			}
 			continue
+		}
+		if last >= 0 { // so that it does not come back onto itself
+			f.erase(c.pieces[last].stretch, 0)
 		}
 		if w.gap > 0 {
 			c.points = append(c.points, w.at)
@@ -126,7 +129,10 @@ func (f *finder) followEnd(c *course) {
 			w.angle += turned
 		}
 		w.at, w.gap, w.bends = far, 0, true
-		f.erase(p.stretch, 0) // so that it does not come back onto itself
+		last = len(c.pieces) - 1
+	}
+	if last >= 0 {
+		f.settleEnd(c, w.curve)
 	}
 }
 
