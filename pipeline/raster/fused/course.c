@@ -107,16 +107,16 @@ static double across(const line *l, double t, int first, int last) {
 
 // course_at returns the course's place across at t, and its slope over t ± 1.
 PG_INLINE double course_at(const line *l, double t, int first, int last, double *slope) {
-	double c = (t - l->t0) * l->per_px - 0.5;
-	int k = (int)c;
-	double part = c - k, step;
-	if (c < first || k >= last || part < l->per_px || part + l->per_px > 1) { // t ± 1 lie between other bins
+	const double c = (t - l->t0) * l->per_px - 0.5, pixel = l->per_px;
+	const int k = (int)c;
+	if (c < first + 1 || k + 2 > last) { // t ± 1 may lie beyond the ends
 		*slope = (across(l, t + 1, first, last) - across(l, t - 1, first, last)) / 2;
 		return across(l, t, first, last);
 	}
-	step = l->cross[k + 1] - l->cross[k];
-	*slope = step * l->per_px;
-	return l->cross[k] + part * step;
+	const double part = c - k, *p = l->cross + k, step = p[1] - p[0];
+	const double down = part - pixel, up = part + pixel - 1; // how far t − 1 and t + 1 lie beyond the bins about t
+	*slope = ((1 + up - down) * step + (up > 0 ? up : 0) * (p[2] - p[1] - step) - (down < 0 ? down : 0) * (p[0] - p[-1] - step)) / 2;
+	return p[0] + part * step;
 }
 
 static void inner(const line *l, double a, double b, int *first, int *last) {
@@ -169,8 +169,19 @@ static int full_width(const double *v, int n, double step, double *width) {
 	return 1;
 }
 
+// spread turns shares split between the two nearest bins into what a triangle over two
+// bins to either side gives: the triangle is straight between bins, so that nothing is lost.
+static void spread(double *v) {
+	double before = 0;
+	for (int i = 0; i < BINS; i++) {
+		double own = v[i + 1];
+		v[i] = own + (before + v[i + 2]) / 2;
+		before = own;
+	}
+}
+
 static int width_of(const line *l, double a, double b, double *width) {
-	double sum[BINS] = {0}, n[BINS] = {0};
+	double sum[BINS + 2] = {0}, n[BINS + 2] = {0}; // one more bin at either end
 	int first, last;
 	inner(l, a, b, &first, &last);
 	EACH_FOOT(l->w, k, u) {
@@ -178,17 +189,16 @@ static int width_of(const line *l, double a, double b, double *width) {
 		if (t < a || t > b)
 			continue;
 		double slope, middle = course_at(l, t, first, last, &slope);
-		double o = (ACROSS(l, k, u) - middle) / sqrt(1 + slope * slope);
-		double places = o / profile_step + BINS / 2;
-		if (places < -4 || places > BINS + 4)
-			continue; // adds to no bin
-		int at = (int)(places + 8) - 9; // the bin below, rounded down, and one more
-		for (int i = at; i <= at + 3; i++) {
-			double far = (i - places) * profile_step, share = 1 - (far < 0 ? -far : far);
-			if (i >= 0 && i < BINS && share > 0)
-				sum[i] += share * (double)l->w->signal[l->w->at[k] + u], n[i] += share;
-		}
+		double places = (ACROSS(l, k, u) - middle) / (profile_step * sqrt(1 + slope * slope)) + BINS / 2 + 1;
+		if (places < 0 || places >= BINS + 1)
+			continue;
+		int at = (int)places;
+		double share = places - at, v = (double)l->w->signal[l->w->at[k] + u];
+		sum[at] += (1 - share) * v, n[at] += 1 - share;
+		sum[at + 1] += share * v, n[at + 1] += share;
 	}
+	spread(sum);
+	spread(n);
 	for (int i = 0; i < BINS; i++)
 		sum[i] = n[i] > 0 ? sum[i] / n[i] : 0;
 	return full_width(sum, BINS, profile_step, width);

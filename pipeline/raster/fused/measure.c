@@ -38,46 +38,65 @@ PG_INLINE float value(const window *w, const float *v, int k, int x) {
 	return k < 0 || k >= w->rows || x < w->x0[k] || x >= w->x1[k] ? 0 : v[w->at[k] + x];
 }
 
-static float least4(float a, float b, float c, float d) {
-	a = a < b ? a : b, c = c < d ? c : d;
-	return a < c ? a : c;
+// region bounds what reaches half in each row by m0 and m1, empty rows by m0 = m1, and
+// leaves depth 0 outside.
+static void region(const window *w, float half) {
+	EACH_ROW(w, k) {
+		const float *v = w->smooth + w->at[k];
+		int a = w->f0[k], b = w->f1[k];
+		for (int x = w->m0[k]; x < w->m1[k]; x++)
+			w->depth[w->at[k] + x] = 0;
+		while (a < b && v[a] < half)
+			a++;
+		while (b > a && v[b - 1] < half)
+			b--;
+		w->m0[k] = a, w->m1[k] = b;
+	}
 }
 
-// chamfer is the distance of a pixel by its neighbours in its own row (dx) and in row k.
-PG_INLINE float chamfer(const window *w, const float *d, int own, int k, int x, int dx) {
-	const float diagonal = 1.41421356f;
+#define DIAGONAL 1.41421356f
+
+PG_INLINE float lesser(float a, float b) { return a < b ? a : b; }
+
+// beside is the least distance of a pixel by its three neighbours in row k.
+PG_INLINE float beside(const window *w, const float *d, int k, int x) {
 	if (w->clear) { // every neighbour of a foot pixel is in a strip
 		const float *p = d + w->at[k] + x;
-		return least4(d[w->at[own] + x + dx] + 1, p[0] + 1, p[-1] + diagonal, p[1] + diagonal);
+		return lesser(lesser(p[-1], p[1]) + DIAGONAL, p[0] + 1);
 	}
-	return least4(value(w, d, own, x + dx) + 1, value(w, d, k, x) + 1, value(w, d, k, x - 1) + diagonal, value(w, d, k, x + 1) + diagonal);
+	return lesser(lesser(value(w, d, k, x - 1), value(w, d, k, x + 1)) + DIAGONAL, value(w, d, k, x) + 1);
 }
 
-// depths writes each pixel's distance to the nearest one below half; returns the greatest.
+// depths writes each pixel's distance to the nearest one below half, by two passes over
+// rows and diagonals (Borgefors 1986, with steps of 1 and the root of 2); returns the
+// greatest.
 static float depths(const window *w, float half) {
 	float *d = w->depth, top = 0;
-	EACH_ROW(w, k)
-		memset(d + w->at[k] + w->x0[k], 0, sizeof(float) * (size_t)(w->x1[k] - w->x0[k]));
-	EACH_ROW(w, k)
-		for (int x = w->f0[k]; x < w->f1[k]; x++)
-			if (w->smooth[w->at[k] + x] >= half)
-				d[w->at[k] + x] = chamfer(w, d, k, k - 1, x, -1);
-	for (int k = w->rows - 1; k >= 0; k--)
-		for (int x = w->f1[k] - 1; x >= w->f0[k]; x--) {
-			float *p = d + w->at[k] + x;
-			if (*p <= 0)
-				continue;
-			float m = chamfer(w, d, k, k + 1, x, 1);
-			*p = m < *p ? m : *p;
-			top = *p > top ? *p : top;
+	region(w, half);
+	EACH_ROW(w, k) {
+		float last = 0;
+		const float *v = w->smooth + w->at[k];
+		for (int x = w->m0[k]; x < w->m1[k]; x++) {
+			float next = lesser(beside(w, d, k - 1, x), last + 1);
+			d[w->at[k] + x] = last = v[x] >= half ? next : 0;
 		}
+	}
+	for (int k = w->rows - 1; k >= 0; k--) {
+		float last = 0;
+		for (int x = w->m1[k] - 1; x >= w->m0[k]; x--) {
+			float *p = d + w->at[k] + x;
+			last = lesser(lesser(beside(w, d, k + 1, x), last + 1), *p);
+			*p = last;
+			top = last > top ? last : top;
+		}
+	}
 	return top;
 }
 
 static double plateau(const window *w, double half) {
 	float least = 0.75f * depths(w, (float)half);
 	double sum = 0, n = 0;
-	EACH_ROW(w, k) for (int x = w->f0[k]; x < w->f1[k]; x++) {
+	EACH_ROW(w, k) for (int x = w->m0[k]; x < w->m1[k]; x++) {
 		float d = w->depth[w->at[k] + x];
 		if (d > 0 && d >= least)
 			sum += (double)w->smooth[w->at[k] + x], n++;
@@ -85,93 +104,82 @@ static double plateau(const window *w, double half) {
 	return n == 0 ? 2 * half : sum / n;
 }
 
-static void add_polygon(sums *m, double (*p)[2], int n) {
-	for (int i = 0; i < n; i++) {
-		const double *a = p[i], *b = p[(i + 1) % n];
-		double cross = a[0] * b[1] - b[0] * a[1];
-		m->a += cross / 2;
-		m->x += cross * (a[0] + b[0]) / 6;
-		m->y += cross * (a[1] + b[1]) / 6;
-		m->xx += cross * (a[0] * a[0] + a[0] * b[0] + b[0] * b[0]) / 12;
-		m->yy += cross * (a[1] * a[1] + a[1] * b[1] + b[1] * b[1]) / 12;
-		m->xy += cross * (a[0] * b[1] + 2 * a[0] * a[1] + 2 * b[0] * b[1] + b[0] * a[1]) / 24;
-	}
+// add_edge adds what an edge from a to b of a polygon does to its moments.
+PG_INLINE void add_edge(sums *m, const double *a, const double *b) {
+	double cross = a[0] * b[1] - b[0] * a[1];
+	m->a += cross / 2;
+	m->x += cross * (a[0] + b[0]) / 6;
+	m->y += cross * (a[1] + b[1]) / 6;
+	m->xx += cross * (a[0] * a[0] + a[0] * b[0] + b[0] * b[0]) / 12;
+	m->yy += cross * (a[1] * a[1] + a[1] * b[1] + b[1] * b[1]) / 12;
+	m->xy += cross * (a[0] * b[1] + 2 * a[0] * a[1] + 2 * b[0] * b[1] + b[0] * a[1]) / 24;
 }
 
-// add_whole adds the unit square at (x, y).
-PG_INLINE void add_whole(sums *m, double x, double y) {
-	m->a += 1;
-	m->x += x + 0.5, m->y += y + 0.5;
-	m->xx += x * x + x + 1. / 3, m->xy += (x + 0.5) * (y + 0.5), m->yy += y * y + y + 1. / 3;
+// add_whole adds the unit squares of row y from x = a to before b.
+static void add_whole(sums *m, double a, double b, double y) {
+	double n = b - a, x = n * (a + b - 1) / 2, xx = ((b - 1) * b * (2 * b - 1) - (a - 1) * a * (2 * a - 1)) / 6;
+	m->a += n;
+	m->x += x + n / 2, m->y += n * (y + 0.5);
+	m->xx += xx + x + n / 3, m->xy += (x + n / 2) * (y + 0.5), m->yy += n * (y * y + y + 1. / 3);
 }
 
-// add_square adds the part at or above half of the unit square at (x, y).
-static void add_square(sums *m, const float c[4], float half, double x, double y) {
+// add_square adds the part at or above half of the unit square at (x, y) with these
+// values at its corners, in turn about it, and returns the length of the contour in it:
+// raster's squareContour.
+static double add_square(sums *m, const float c[4], float half, double x, double y) {
 	const double corner[4][2] = {{x, y}, {x + 1, y}, {x + 1, y + 1}, {x, y + 1}};
-	double p[8][2];
-	int n = 0;
+	double p[8][2], contour = 0;
+	int n = 0, leaves[2], enters[2], out = 0, in = 0;
 	for (int k = 0; k < 4; k++) {
-		float a = c[k], b = c[(k + 1) % 4];
-		const double *q = corner[k], *r = corner[(k + 1) % 4];
-		if (a >= half)
+		const int l = (k + 1) & 3;
+		const double *q = corner[k], *r = corner[l];
+		if (c[k] >= half)
 			p[n][0] = q[0], p[n++][1] = q[1];
-		if ((a >= half) != (b >= half)) {
-			double f = (double)(half - a) / (double)(b - a);
+		if ((c[k] >= half) != (c[l] >= half)) {
+			double f = (double)(half - c[k]) / (double)(c[l] - c[k]);
+			if (c[k] >= half)
+				leaves[out++] = n;
+			else
+				enters[in++] = n;
 			p[n][0] = q[0] + f * (r[0] - q[0]), p[n++][1] = q[1] + f * (r[1] - q[1]);
 		}
 	}
-	add_polygon(m, p, n);
-}
-
-// square_contour is the length of the contour inside a unit square: raster's squareContour.
-static double square_contour(const float c[4], float half) {
-	static const double corner[4][2] = {{0, 0}, {1, 0}, {1, 1}, {0, 1}};
-	double leaves[2][2], enters[2][2], total = 0;
-	int n = 0, m = 0, first = 0;
-	for (int k = 0; k < 4; k++) {
-		float a = c[k], b = c[(k + 1) % 4];
-		if ((a >= half) == (b >= half))
-			continue;
-		double f = (double)(half - a) / (double)(b - a);
-		double *p = a >= half ? leaves[n++] : enters[m++];
-		first = first || (a < half && n == 0);
-		p[0] = corner[k][0] + f * (corner[(k + 1) % 4][0] - corner[k][0]);
-		p[1] = corner[k][1] + f * (corner[(k + 1) % 4][1] - corner[k][1]);
+	add_edge(m, p[n - 1], p[0]);
+	for (int k = 1; k < n; k++)
+		add_edge(m, p[k - 1], p[k]);
+	const int first = enters[0] < leaves[0]; // a way in follows the way out
+	for (int k = 0; k < out; k++) {
+		const double *a = p[leaves[k]], *b = p[enters[first && k + 1 < in ? k + 1 : first ? 0 : k]];
+		contour += sqrt((a[0] - b[0]) * (a[0] - b[0]) + (a[1] - b[1]) * (a[1] - b[1]));
 	}
-	for (int k = 0; k < n; k++) {
-		int to = first ? (k + 1) % m : k;
-		double dx = leaves[k][0] - enters[to][0], dy = leaves[k][1] - enters[to][1];
-		total += sqrt(dx * dx + dy * dy);
-	}
-	return total;
-}
-
-// quiet reports whether the square at (x, k) is known to lie below half.
-PG_INLINE int quiet(const window *w, int k, int x, float half) {
-	if (!w->clear || x <= w->x0[k] || x <= w->x0[k + 1] || x + 1 >= w->x1[k] || x + 1 >= w->x1[k + 1])
-		return 0;
-	const float *p = w->smooth + w->at[k] + x, *q = w->smooth + w->at[k + 1] + x;
-	return p[0] < half && p[1] < half && q[0] < half && q[1] < half;
+	return contour;
 }
 
 // above also returns the contour's length.
 static sums above(const window *w, float half, double *contour) {
 	sums m = {0};
 	*contour = 0;
+	region(w, half);
 	for (int k = 0; k + 1 < w->rows; k++) {
+		const double y = (double)(w->y0 + k);
 		int a = w->x0[k] < w->x0[k + 1] ? w->x0[k] : w->x0[k + 1], b = w->x1[k] > w->x1[k + 1] ? w->x1[k] : w->x1[k + 1];
-		int f0 = w->f0[k] < w->f0[k + 1] ? w->f0[k] : w->f0[k + 1], f1 = w->f1[k] > w->f1[k + 1] ? w->f1[k] : w->f1[k + 1];
-		a = f0 - 1 > a ? f0 - 1 : a, b = f1 + 1 < b ? f1 + 1 : b;
+		int m0 = w->m0[k] < w->m0[k + 1] ? w->m0[k] : w->m0[k + 1], m1 = w->m1[k] > w->m1[k + 1] ? w->m1[k] : w->m1[k + 1];
+		a = m0 - 1 > a ? m0 - 1 : a, b = m1 + 1 < b ? m1 + 1 : b;
+		int whole = a; // start of the whole squares that are not yet added
 		for (int x = a; x + 1 < b; x++) {
-			if (quiet(w, k, x, half))
-				continue;
 			float c[4] = {value(w, w->smooth, k, x), value(w, w->smooth, k, x + 1), value(w, w->smooth, k + 1, x + 1),
 			              value(w, w->smooth, k + 1, x)};
-			if (c[0] >= half && c[1] >= half && c[2] >= half && c[3] >= half)
-				add_whole(&m, (double)x, (double)(w->y0 + k));
-			else if (c[0] >= half || c[1] >= half || c[2] >= half || c[3] >= half)
-				add_square(&m, c, half, (double)x, (double)(w->y0 + k)), *contour += square_contour(c, half);
+			int corners = (c[0] >= half) + (c[1] >= half) + (c[2] >= half) + (c[3] >= half);
+			if (corners == 4)
+				continue;
+			if (x > whole)
+				add_whole(&m, whole, x, y);
+			whole = x + 1;
+			if (corners > 0)
+				*contour += add_square(&m, c, half, (double)x, y);
 		}
+		if (b - 1 > whole)
+			add_whole(&m, whole, b - 1, y);
 	}
 	return m;
 }

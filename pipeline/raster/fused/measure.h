@@ -12,10 +12,11 @@ typedef struct {
 	int64_t *at;        // where pixel x = 0 of the row would be
 	float *signal;      // DN above the level, positive in the blob; 0 where not usable
 	float *smooth;      // under a 3 × 3 binomial filter, 0 outside foot
-	float *depth;
+	float *depth;       // 0 outside m0 to m1
 	uint8_t *usable;    // in the region and not another blob's
 	uint8_t *foot;      // the blob grown by 2 px, where usable
 	int32_t *f0, *f1;   // from the first to behind the last foot pixel of each row
+	int32_t *m0, *m1;   // the same of what reaches the height looked at last
 	const pg_frame *f;
 	const pg_grid *g;
 	const pg_run *runs; // the blob's

@@ -266,6 +266,22 @@ static void take_samples(state *s, const T *restrict filtered, int y) {
 // have further to go than one step: 0.9973 where there is nothing but noise.
 #define CLEAN 0.995
 
+// cell_moments is moments of the first columns of a whole cell's values, of side × side.
+// Where integers hold the squares of all of them it takes the cell in one go.
+static void cell_moments(const T *cell, int side, int columns, T low, T high, T mid, double *out) {
+	const double reach = (double)high - (double)mid, quarter = (double)side * side / 4;
+	if (sizeof(T) == 2 && columns == side && 4 * quarter * reach * reach < 2147483648. && quarter < 4096) {
+		const T *q = cell + (int64_t)quarter;
+		moments(cell, q, q + (int64_t)quarter, q + 2 * (int64_t)quarter, 0, (int)quarter, low, high, mid, out);
+		return;
+	}
+	for (int k = 0; k < side; k += 4)
+		for (int x = 0; x < columns; x += 64) {
+			const T *r = cell + (int64_t)k * side;
+			moments(r, r + side, r + 2 * side, r + 3 * side, x, x + 64 < columns ? x + 64 : columns, low, high, mid, out);
+		}
+}
+
 // settle_cell repeats the clipping of one cell over all of its pixels until nothing
 // changes, from the moments it has.
 static void settle_cell(state *s, int64_t at) {
@@ -275,6 +291,8 @@ static void settle_cell(state *s, int64_t at) {
 	int x1 = x0 + f->cell < f->width ? x0 + f->cell : f->width, y1 = y0 + f->cell < f->height ? y0 + f->cell : f->height;
 	T *cell = (T *)(void *)s->b->whole;
 	double last = -1, m[3];
+	for (int y = y0; y < y1; y++) // so that their misses overlap
+		pg_ask_span(f, y, x0, x1);
 	for (int y = y0; y < y0 + f->cell; y++) {
 		T *row = cell + (int64_t)(y - y0) * f->cell - x0;
 		if (y < y1)
@@ -287,11 +305,7 @@ static void settle_cell(state *s, int64_t at) {
 		T low, high, mid;
 		bounds_of(f, o->mean[at], f->clip * o->sigma[at], &low, &high, &mid);
 		m[0] = m[1] = m[2] = 0;
-		for (int k = 0; k < f->cell; k += 4)
-			for (int x = 0; x < x1 - x0; x += 64) {
-				const T *r = cell + (int64_t)k * f->cell;
-				moments(r, r + f->cell, r + 2 * f->cell, r + 3 * f->cell, x, x + 64 < x1 - x0 ? x + 64 : x1 - x0, low, high, mid, m);
-			}
+		cell_moments(cell, f->cell, x1 - x0, low, high, mid, m);
 		if (m[0] < 1 || m[0] == last)
 			return;
 		last = m[0];

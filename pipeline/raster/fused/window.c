@@ -105,30 +105,11 @@ static void grow(window *w, int64_t n) {
 		while (b > a && !w->foot[w->at[k] + b - 1])
 			b--;
 		w->f0[k] = a, w->f1[k] = b;
+		w->m0[k] = w->m1[k] = a;
 	}
 }
 
-// whole_mean is binomial_mean where all nine pixels are usable; 0 in *ok where not.
-static inline float whole_mean(const window *w, int k, int x, int *ok) {
-	*ok = k > 0 && k + 1 < w->rows && x > w->x0[k] && x + 1 < w->x1[k] && x > w->x0[k - 1] && x + 1 < w->x1[k - 1] &&
-	      x > w->x0[k + 1] && x + 1 < w->x1[k + 1];
-	if (!*ok)
-		return 0;
-	const uint8_t *u = w->usable + w->at[k - 1] + x, *v = w->usable + w->at[k] + x, *t = w->usable + w->at[k + 1] + x;
-	*ok = u[-1] & u[0] & u[1] & v[-1] & v[0] & v[1] & t[-1] & t[0] & t[1];
-	const float *a = w->signal + w->at[k - 1] + x, *b = w->signal + w->at[k] + x, *c = w->signal + w->at[k + 1] + x;
-	float sum = a[-1];
-	sum += 2 * a[0], sum += a[1];
-	sum += 2 * b[-1], sum += 4 * b[0], sum += 2 * b[1];
-	sum += c[-1], sum += 2 * c[0], sum += c[1];
-	return sum / 16;
-}
-
 static float binomial_mean(const window *w, int k, int x) {
-	int ok;
-	float mean = whole_mean(w, k, x, &ok);
-	if (ok)
-		return mean;
 	float sum = 0, weights = 0;
 	for (int v = k > 0 ? k - 1 : 0; v <= k + 1 && v < w->rows; v++)
 		for (int u = x - 1; u <= x + 1; u++) {
@@ -141,15 +122,46 @@ static float binomial_mean(const window *w, int k, int x) {
 	return sum / weights;
 }
 
+// usable_row reports whether all of x0 … x1 in row k lies in its strip and is usable.
+static int usable_row(const window *w, int k, int x0, int x1) {
+	return k >= 0 && k < w->rows && x0 >= w->x0[k] && x1 <= w->x1[k] && !memchr(w->usable + w->at[k] + x0, 0, (size_t)(x1 - x0));
+}
+
+// mean_row is binomial_mean of the foot pixels of x0 … x1 where all pixels around are usable.
+PG_INLINE void mean_row(float *restrict dst, const uint8_t *restrict foot, const float *restrict a, const float *restrict b,
+                        const float *restrict c, int x0, int x1) {
+	for (int x = x0; x < x1; x++) {
+		float sum = a[x - 1];
+		sum += 2 * a[x], sum += a[x + 1];
+		sum += 2 * b[x - 1], sum += 4 * b[x], sum += 2 * b[x + 1];
+		sum += c[x - 1], sum += 2 * c[x], sum += c[x + 1];
+		dst[x] = foot[x] ? sum / 16 : 0;
+	}
+}
+
+PG_WHOLE void smooth(window *w) {
+	EACH_ROW(w, k) {
+		const int a = w->f0[k], b = w->f1[k];
+		if (a >= b)
+			continue;
+		if (usable_row(w, k - 1, a - 1, b + 1) && usable_row(w, k, a - 1, b + 1) && usable_row(w, k + 1, a - 1, b + 1))
+			mean_row(w->smooth + w->at[k], w->foot + w->at[k], w->signal + w->at[k - 1], w->signal + w->at[k], w->signal + w->at[k + 1], a, b);
+		else
+			for (int x = a; x < b; x++)
+				w->smooth[w->at[k] + x] = w->foot[w->at[k] + x] ? binomial_mean(w, k, x) : 0;
+	}
+}
+
 int window_cut(window *w, const pg_frame *f, const pg_grid *g, const pg_blobs *b, int64_t blob) {
 	const pg_blob *o = b->blobs + blob;
 	int y0 = o->y0 - MARGIN < 0 ? 0 : o->y0 - MARGIN, y1 = o->y1 + MARGIN > f->height ? f->height : o->y1 + MARGIN;
 	*w = (window){.y0 = y0, .rows = y1 - y0, .f = f, .g = g, .runs = b->runs.at + o->first, .count = o->runs};
-	w->at = malloc((size_t)w->rows * (sizeof(int64_t) + 4 * sizeof(int32_t)) + sizeof(uint16_t) * (size_t)f->width);
+	w->at = malloc((size_t)w->rows * (sizeof(int64_t) + 6 * sizeof(int32_t)) + sizeof(uint16_t) * (size_t)f->width);
 	if (!w->at)
 		return PG_NO_MEMORY;
 	w->x0 = (int32_t *)(void *)(w->at + w->rows);
 	w->x1 = w->x0 + w->rows, w->f0 = w->x1 + w->rows, w->f1 = w->f0 + w->rows;
+	w->m0 = w->f1 + w->rows, w->m1 = w->m0 + w->rows;
 	int64_t n = strips(w);
 	ask(w);
 	w->clear = o->x0 > MARGIN && o->y0 > MARGIN && o->x1 + MARGIN < f->width && o->y1 + MARGIN < f->height;
@@ -159,10 +171,10 @@ int window_cut(window *w, const pg_frame *f, const pg_grid *g, const pg_blobs *b
 	w->smooth = w->signal + n, w->depth = w->smooth + n;
 	w->usable = (uint8_t *)(void *)(w->depth + n);
 	w->foot = w->usable + n;
-	load(w, b, blob, (uint16_t *)(void *)(w->f1 + w->rows));
+	load(w, b, blob, (uint16_t *)(void *)(w->m1 + w->rows));
 	turn(w, n);
 	grow(w, n);
-	EACH_FOOT(w, k, x) w->smooth[w->at[k] + x] = binomial_mean(w, k, x);
+	smooth(w);
 	return PG_OK;
 }
 
