@@ -13,6 +13,7 @@ import (
 	"lapgate/plugins/detect"
 	"lapgate/plugins/edge"
 	"lapgate/plugins/flatfield"
+	"lapgate/plugins/logarithm"
 	"lapgate/plugins/merge"
 	"lapgate/plugins/proof"
 	"lapgate/plugins/region"
@@ -31,6 +32,7 @@ func Stages() []pipeline.Factory {
 		areas.Factory,
 		coverage.Factory,
 		edge.Factory,
+		logarithm.Factory,
 		merge.Factory(),
 		datum.Factory,
 		classify.Factory(),

@@ -68,12 +68,16 @@ func build(s Settings, env pipeline.Environment) (pipeline.Stage, error) {
 
 // Run implements pipeline.Stage.
 func (st *stage) Run(ctx context.Context, item *pipeline.Item) error {
-	if st.s.Shape == FoundCircle {
+	if st.s.Shape == FoundCircle || st.s.Shape == FoundArea {
 		raw, err := item.Raw()
 		if err != nil {
 			return err
 		}
-		st.find(item, raw)
+		if st.s.Shape == FoundArea {
+			st.findArea(item, raw)
+		} else {
+			st.find(item, raw)
+		}
 		return ctx.Err()
 	}
 	p, err := st.fixed(item)

@@ -13,6 +13,7 @@ import (
 // The ways to say where the part is.
 const (
 	FoundCircle = "found_circle" // a round part, found in every frame
+	FoundArea   = "found_area"   // a part of any outline on dark surroundings, found in every frame
 	Circle      = "circle"       // a circle that is always in the same place
 	Polygon     = "polygon"
 	MaskImage   = "mask"
@@ -20,17 +21,27 @@ const (
 )
 
 // Shapes lists the ways in a fixed order.
-func Shapes() []string { return []string{FoundCircle, Circle, Polygon, MaskImage, WholeFrame} }
+func Shapes() []string {
+	return []string{FoundCircle, FoundArea, Circle, Polygon, MaskImage, WholeFrame}
+}
 
 // Settings say where on the frame limits hold.
 type Settings struct {
-	// Shape is found_circle, circle, polygon, mask or frame.
+	// Shape is found_circle, found_area, circle, polygon, mask or frame.
 	Shape string `json:"shape" yaml:"shape"`
 	// DiameterMM is the part's diameter in mm, for both circles; it must be above 0.
 	DiameterMM float64 `json:"diameter_mm" yaml:"diameter_mm"`
 	// DiameterToleranceMM is how much the diameter found may differ from diameter_mm, in
 	// mm; for found_circle it must be above 0.
 	DiameterToleranceMM float64 `json:"diameter_tolerance_mm" yaml:"diameter_tolerance_mm"`
+	// AreaMM2 is the part's area in mm² for found_area, where it must be above 0.
+	AreaMM2 float64 `json:"area_mm2" yaml:"area_mm2"`
+	// AreaToleranceMM2 is how much the area found may differ from area_mm2, in mm²; for
+	// found_area it must be above 0.
+	AreaToleranceMM2 float64 `json:"area_tolerance_mm2" yaml:"area_tolerance_mm2"`
+	// EdgeLevel is the share of the part's level, above 0 and below 1, below which pixels
+	// are surroundings, for found_area.
+	EdgeLevel float64 `json:"edge_level" yaml:"edge_level"`
 	// Polarity says how the part looks against its surroundings: bright, dark, or rim
 	// where the outline itself is a bright line, as a chamfer is in dark field.
 	Polarity string `json:"polarity" yaml:"polarity"`
@@ -66,7 +77,8 @@ type Settings struct {
 	// MaskSHA256 is the SHA-256 of that file in hexadecimal. Empty: any; the effective
 	// settings then carry the one that was read, so another picture is another recipe.
 	MaskSHA256 string `json:"mask_sha256" yaml:"mask_sha256"`
-	// RimMM is the width of a rim, in mm, that is left out all around a circle. 0: none.
+	// RimMM is the width of a rim, in mm, that is left out all around a circle or a
+	// found area. 0: none.
 	RimMM float64 `json:"rim_mm" yaml:"rim_mm"`
 	// Zones are concentric parts of a circle in order of precedence. None: one zone named
 	// "all". Only circles have zones.
@@ -90,7 +102,7 @@ type ZoneSettings struct {
 }
 
 // Default is the whole frame as one zone.
-var Default = Settings{Shape: WholeFrame, Polarity: "bright", Focus: drift.FocusBounds(), Scale: drift.ScaleBounds()}
+var Default = Settings{Shape: WholeFrame, Polarity: "bright", EdgeLevel: 0.5, Focus: drift.FocusBounds(), Scale: drift.ScaleBounds()}
 
 // Check implements pipeline.Checker.
 func (s Settings) Check() error {
@@ -108,14 +120,22 @@ func (s Settings) Check() error {
 		return fmt.Errorf("diameter_mm: got 0, want the part's diameter for shape %s", s.Shape)
 	case s.Shape == FoundCircle && (s.DiameterToleranceMM == 0 || s.DiameterToleranceMM >= s.DiameterMM):
 		return fmt.Errorf("diameter_tolerance_mm: got %g, want above 0 and below diameter_mm (%g)", s.DiameterToleranceMM, s.DiameterMM)
+	case s.Shape == FoundArea && s.AreaMM2 == 0:
+		return fmt.Errorf("area_mm2: got 0, want the part's area for shape %s", s.Shape)
+	case s.Shape == FoundArea && (s.AreaToleranceMM2 == 0 || s.AreaToleranceMM2 >= s.AreaMM2):
+		return fmt.Errorf("area_tolerance_mm2: got %g, want above 0 and below area_mm2 (%g)", s.AreaToleranceMM2, s.AreaMM2)
+	case s.Shape == FoundArea && s.Polarity != "bright":
+		return fmt.Errorf("polarity: got %q for shape %s, want bright", s.Polarity, s.Shape)
+	case !(s.EdgeLevel > 0 && s.EdgeLevel < 1):
+		return fmt.Errorf("edge_level: got %g, want above 0 and below 1", s.EdgeLevel)
 	case s.Shape == Polygon && len(s.Polygon) < 3:
 		return fmt.Errorf("polygon: got %d corners, want at least 3", len(s.Polygon))
 	case s.Shape == MaskImage && s.MaskFile == "":
 		return fmt.Errorf("mask_file: not given, want the name of a PNG beside the recipe")
 	case s.NeedPartEdge && s.Shape != FoundCircle:
 		return fmt.Errorf("need_part_edge: got true for shape %s, want it only for %s", s.Shape, FoundCircle)
-	case !s.round() && (len(s.Zones) > 0 || s.RimMM > 0):
-		return fmt.Errorf("zones: got zones or rim_mm for shape %s, want them only for %s and %s", s.Shape, FoundCircle, Circle)
+	case !s.round() && (len(s.Zones) > 0 || s.RimMM > 0 && s.Shape != FoundArea):
+		return fmt.Errorf("zones: got zones or rim_mm for shape %s, want them only for %s and %s (rim_mm also for %s)", s.Shape, FoundCircle, Circle, FoundArea)
 	case s.round() && 2*s.RimMM >= s.DiameterMM:
 		return fmt.Errorf("rim_mm: got %g, want less than half of diameter_mm (%g)", s.RimMM, s.DiameterMM)
 	}
@@ -137,6 +157,7 @@ func (s Settings) checkNumbers() error {
 		high float64
 	}{
 		{"diameter_mm", s.DiameterMM, largest}, {"diameter_tolerance_mm", s.DiameterToleranceMM, largest},
+		{"area_mm2", s.AreaMM2, largest}, {"area_tolerance_mm2", s.AreaToleranceMM2, largest},
 		{"centre_x_px", s.CentreXPx, largest}, {"centre_y_px", s.CentreYPx, largest}, {"search_px", s.SearchPx, largest},
 		{"min_edge_share", s.MinEdgeShare, 1}, {"max_edge_rms_px", s.MaxEdgeRMSPx, largest},
 		{"max_edge_width_px", s.MaxEdgeWidthPx, largest}, {"rim_mm", s.RimMM, largest},
