@@ -158,6 +158,8 @@ func (r *result) falseDefects(nominal, conforming []inspected) error {
 		return err
 	}
 	r.plain("the same, one-sided upper 95 % bound", upper.High/float64(len(conforming)), len(conforming), "frames")
+	// Of white noise one pixel in 1/(1 − Φ(6)) reaches k_high; neighbours come together.
+	r.plain("the same, of white noise alone at 6 sigmas at most", float64(conforming[0].regionPx)*math.Erfc(6/math.Sqrt2)/2, conforming[0].regionPx, "pixels of the part")
 	r.atMost("false defects per conforming frame, upper 95 % bound", upper.High/float64(len(conforming)), 0.02)
 	return nil
 }

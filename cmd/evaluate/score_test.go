@@ -73,3 +73,36 @@ func TestMedianInterval(t *testing.T) {
 		t.Errorf("median %g, interval %+v; ranks 40 to 60 hold it with 95 %% (binomial)", median(v), i)
 	}
 }
+
+// Of twenty clean values at most one may pass a limit for 5 %.
+func TestLimitForFalseAlarms(t *testing.T) {
+	var clean []float64
+	for i := range 20 {
+		clean = append(clean, 3+0.51*float64(i))
+	}
+	limit := limitFor(clean, 0.05)
+	above := 0
+	for _, v := range clean {
+		if v > limit {
+			above++
+		}
+	}
+	if above != 1 || limit < 12.18 || limit > 12.3 {
+		t.Errorf("limit %g lets %d of 20 pass, want 1 and 12.2: 3 + 18·0.51 = 12.18", limit, above)
+	}
+}
+
+func TestExposuresAreParted(t *testing.T) {
+	var list []tile
+	for _, f := range []string{"exp2_num_20.jpg", "exp1_num_10.jpg", "exp1_num_30.jpg", "exp3_num_50.jpg", "exp6_num_25.jpg"} {
+		list = append(list, tile{picture: picture{file: f, group: "G"}})
+	}
+	list = append(list, tile{picture: picture{file: "exp4_num_60.jpg", group: "H"}})
+	got, err := exposures(list)
+	if err != nil || len(got) != 3 || len(got[0]) != 3 || len(got[1]) != 2 || len(got[2]) != 1 || got[0][2].file != "exp6_num_25.jpg" {
+		t.Errorf("got %v, %v: want exposures 1 2 6, then 1 3, then 4 of another group", got, err)
+	}
+	if _, err := exposures([]tile{{picture: picture{file: "a.jpg"}}}); err == nil {
+		t.Error("a name without exposure is taken")
+	}
+}

@@ -16,11 +16,9 @@ import (
 const (
 	tilesName = "magnetic_tile"
 	tilesView = "top"
-	// tilesMarginPx is what is cut off all around, as by the read-out window of a camera:
-	// the pictures end at the tile's edge, where it falls off into the dark.
-	tilesMarginPx = 16
-	// tilesLimit is the recipe's limit, for defects of the kinds that it has no limit for.
-	tilesLimit = 8
+	// tilesFalseAlarms is the share of clean pictures that may be rejected where limits are
+	// chosen.
+	tilesFalseAlarms = 0.05
 )
 
 // kinds says which defects count.
@@ -39,6 +37,9 @@ type tile struct {
 	mask   *raster.Mask  // of the defect; nil = clean
 	top    [2]float64    // largest peak_sigma, by kinds; 0 = no defect
 	score  [2]pixelScore // of the defects above the limit, by kinds
+	// rejected is the verdict, by kinds: that of the recipe, and what one limit on all defects
+	// would say.
+	rejected [2]bool
 }
 
 // tileSet inspects tiles with one recipe.
@@ -47,12 +48,10 @@ type tileSet struct {
 	recipe *pipeline.Recipe
 	line   *pipeline.Pipeline
 	blobs  blobs.Settings
-	margin int // px that are cut off all around
-	limit  float64
 }
 
 func newTileSet(o options, change func(*pipeline.Recipe)) (*tileSet, []picture, []picture, error) {
-	t := &tileSet{margin: tilesMarginPx, limit: tilesLimit, dir: filepath.Join(o.data, tilesName)}
+	t := &tileSet{dir: filepath.Join(o.data, tilesName)}
 	all, err := pictures(t.dir)
 	if err != nil {
 		return nil, nil, nil, err
@@ -85,7 +84,6 @@ func (t *tileSet) tile(p picture) (tile, error) {
 	if err != nil {
 		return out, err
 	}
-	raw = inset(raw, t.margin)
 	if out.result, err = runPicture(t.line, t.recipe, tilesView, p.file, raw); err != nil {
 		return out, err
 	}
@@ -106,36 +104,35 @@ func (t *tileSet) tile(p picture) (tile, error) {
 		}
 	}
 	marks := marksOf(j)
+	out.rejected[digs] = j.Verdict == pipeline.Reject
 	out.score[digs] = out.pixelScore(func(d pipeline.Defect) bool { return marks[d.ID] })
-	out.score[anyKind] = out.pixelScore(func(d pipeline.Defect) bool { return d.PeakSigma > t.limit })
 	return out, nil
+}
+
+// judgeAny gives tiles the verdict and the marks of one limit on all defects.
+func judgeAny(tiles []tile, limit float64) {
+	for i, t := range tiles {
+		tiles[i].rejected[anyKind] = t.top[anyKind] > limit
+		tiles[i].score[anyKind] = t.pixelScore(func(d pipeline.Defect) bool { return d.PeakSigma > limit })
+	}
 }
 
 // truth returns the mask of a defective tile.
 func (t *tileSet) truth(p picture, raw raster.Raw) (*raster.Mask, error) {
-	mask, err := readMask(filepath.Join(t.dir, "masks", strings.TrimSuffix(p.file, filepath.Ext(p.file))+".png"), t.margin)
+	mask, err := readMask(filepath.Join(t.dir, "masks", strings.TrimSuffix(p.file, filepath.Ext(p.file))+".png"))
 	if err == nil && (mask.Width != raw.Width || mask.Height != raw.Height) {
 		err = fmt.Errorf("%s: its mask has %d × %d pixels, the picture %d × %d", p.file, mask.Width, mask.Height, raw.Width, raw.Height)
 	}
 	return mask, err
 }
 
-// inset returns the picture without a margin all around. It needs whole bytes a pixel.
-func inset(r raster.Raw, margin int) raster.Raw {
-	bytes := r.Format.BitsPerPixel() / 8
-	r.Width, r.Height = r.Width-2*margin, r.Height-2*margin
-	first := margin*r.Stride + margin*bytes
-	r.Data = r.Data[first : first+r.Size()]
-	return r
-}
-
-// readMask reads a picture whose white pixels are the defect, without a margin.
-func readMask(path string, margin int) (*raster.Mask, error) {
+// readMask reads a picture whose white pixels are the defect.
+func readMask(path string) (*raster.Mask, error) {
 	raw, err := files.Read(path, files.Options{})
 	if err != nil {
 		return nil, err
 	}
-	p, err := inset(raw, margin).Plane()
+	p, err := raw.Plane()
 	if err != nil {
 		return nil, err
 	}

@@ -7,62 +7,66 @@ import (
 	"slices"
 
 	"lapgate/pipeline"
+	"lapgate/plugins/region"
 )
 
 // tileChoice is one set of settings with what it reaches on the choose side.
 type tileChoice struct {
-	marginPx, gridPx int
-	leastWidthPx     float64 // of a blowhole: lines of the grinding are thinner,
-	mostLengthPx     float64 // and longer; 0 = any
-	area             float64 // AUROC, Blowhole against Free
-	kLow, limit      float64
-	pixelF1          float64
+	rimPx, gridPx int
+	mostLengthPx  float64 // and the former are longer; 0 = any
+	area          float64 // AUROC, Blowhole against Free
+	kLow, limit   float64
+	pixelF1       float64
 }
 
-// chooseTiles finds margin, grid and shape by the highest AUROC on the choose side, then k_low
-// and limit by the highest pixel F1 over its Blowhole and Free pictures; of a tie the
-// first tried.
+// chooseK is k_low and k_high while rim, grid and shape are chosen.
+const chooseK = 3.5
+
+// chooseTiles finds rim, grid and shape by the highest AUROC on the choose side, then
+// k_low by the highest pixel F1 over its Blowhole and Free pictures, each with the limit
+// that rejects at most tilesFalseAlarms of the Free ones; of a tie the first tried.
 func chooseTiles(o options, out io.Writer) error {
 	var tried []tileChoice
-	for _, margin := range []int{12, 16} {
-		for _, grid := range []int{20, 24, 28, 32, 48} {
-			tiles, err := chooseSide(o, margin, grid, 3)
+	for _, rim := range []int{3, 5, 7} {
+		for _, grid := range []int{28, 40, 56} {
+			tiles, err := chooseSide(o, rim, grid, chooseK)
 			if err != nil {
 				return err
 			}
-			tried = append(tried, sweepShapes(tiles, tileChoice{marginPx: margin, gridPx: grid})...)
+			tried = append(tried, sweepShapes(tiles, tileChoice{rimPx: rim, gridPx: grid})...)
 		}
 	}
 	slices.SortStableFunc(tried, func(a, b tileChoice) int { return cmp.Compare(b.area, a.area) })
-	fmt.Fprintln(out, "margin_px grid_px least width most length AUROC")
+	fmt.Fprintln(out, "rim_px grid_px most length AUROC")
 	for _, c := range tried[:20] {
-		fmt.Fprintf(out, "%9d %7d %11g %11g %.3f\n", c.marginPx, c.gridPx, c.leastWidthPx, c.mostLengthPx, c.area)
+		fmt.Fprintf(out, "%6d %7d %11g %.3f\n", c.rimPx, c.gridPx, c.mostLengthPx, c.area)
 	}
 	best := tried[0]
 	tried = nil
-	for _, low := range []float64{2.5, 3, 3.5, 4, 5, 6} {
-		tiles, err := chooseSide(o, best.marginPx, best.gridPx, low)
+	for _, best.kLow = range []float64{2.5, 3, 3.5, 4, 5} {
+		tiles, err := chooseSide(o, best.rimPx, best.gridPx, best.kLow)
 		if err != nil {
 			return err
 		}
-		tiles = append(ofClass(tiles, "Blowhole"), ofClass(tiles, "Free")...)
-		tried = append(tried, sweepPixels(tiles, tileChoice{leastWidthPx: best.leastWidthPx, mostLengthPx: best.mostLengthPx, kLow: low})...)
+		tried = append(tried, best.withLimit(tiles))
 	}
 	slices.SortStableFunc(tried, func(a, b tileChoice) int { return cmp.Compare(b.pixelF1, a.pixelF1) })
-	fmt.Fprintln(out, "k_low limit pixel F1")
-	for _, c := range tried[:10] {
-		fmt.Fprintf(out, "%5g %5g %.3f\n", c.kLow, c.limit, c.pixelF1)
+	fmt.Fprintln(out, "k_low limit AUROC pixel F1")
+	for _, c := range tried {
+		fmt.Fprintf(out, "%5g %5.1f %.3f %.3f\n", c.kLow, c.limit, c.area, c.pixelF1)
 	}
 	return nil
 }
 
-func chooseSide(o options, margin, grid int, low float64) ([]tile, error) {
-	t, choose, _, err := newTileSet(o, func(r *pipeline.Recipe) { setAll(r, grid, low, low) })
+func chooseSide(o options, rim, grid int, low float64) ([]tile, error) {
+	t, choose, _, err := newTileSet(o, func(r *pipeline.Recipe) {
+		setAll(r, grid, low, low)
+		setRim(r, rim)
+	})
 	if err != nil {
 		return nil, err
 	}
 	defer t.line.Close()
-	t.margin = margin
 	return t.inspect(append(ofPictures(choose, "Blowhole"), ofPictures(choose, "Free")...))
 }
 
@@ -78,41 +82,62 @@ func ofPictures(list []picture, class string) []picture {
 
 // shaped reports whether a defect may be a blowhole.
 func (c tileChoice) shaped(d pipeline.Defect) bool {
-	return d.WidthPx >= c.leastWidthPx && (c.mostLengthPx == 0 || d.LengthPx <= c.mostLengthPx)
+	return c.mostLengthPx == 0 || d.LengthPx <= c.mostLengthPx
+}
+
+// strengths returns the largest peak_sigma of what may be a blowhole, by class.
+func (c tileChoice) strengths(tiles []tile) map[string][]float64 {
+	top := map[string][]float64{}
+	for _, t := range tiles {
+		best := 0.0
+		for _, d := range t.result.Item.Defects {
+			if c.shaped(d) {
+				best = max(best, d.PeakSigma)
+			}
+		}
+		top[t.class] = append(top[t.class], best)
+	}
+	return top
 }
 
 func sweepShapes(tiles []tile, at tileChoice) []tileChoice {
 	var out []tileChoice
-	for _, at.leastWidthPx = range []float64{0, 3, 4, 5} {
-		for _, at.mostLengthPx = range []float64{0, 80, 40, 30} {
-			top := map[string][]float64{}
-			for _, t := range tiles {
-				best := 0.0
-				for _, d := range t.result.Item.Defects {
-					if at.shaped(d) {
-						best = max(best, d.PeakSigma)
-					}
-				}
-				top[t.class] = append(top[t.class], best)
-			}
-			at.area = auroc(top["Blowhole"], top["Free"])
-			out = append(out, at)
-		}
+	for _, at.mostLengthPx = range []float64{0, 60, 40, 30} {
+		top := at.strengths(tiles)
+		at.area = auroc(top["Blowhole"], top["Free"])
+		out = append(out, at)
 	}
 	return out
 }
 
-func sweepPixels(tiles []tile, at tileChoice) []tileChoice {
-	var out []tileChoice
-	for limit := 6.0; limit <= 30; limit++ {
-		c := at
-		c.limit = limit
-		var sum pixelScore
-		for _, t := range tiles {
-			sum = sum.plus(t.pixelScore(func(d pipeline.Defect) bool { return c.shaped(d) && d.PeakSigma > limit }))
-		}
-		c.pixelF1 = sum.f1()
-		out = append(out, c)
+// withLimit sets the limit and what is reached with it.
+func (c tileChoice) withLimit(tiles []tile) tileChoice {
+	top := c.strengths(tiles)
+	c.area = auroc(top["Blowhole"], top["Free"])
+	c.limit = limitFor(top["Free"], tilesFalseAlarms)
+	var sum pixelScore
+	for _, t := range tiles {
+		sum = sum.plus(t.pixelScore(func(d pipeline.Defect) bool { return c.shaped(d) && d.PeakSigma > c.limit }))
 	}
-	return out
+	c.pixelF1 = sum.f1()
+	return c
+}
+
+// setRim sets the width of the rim in every region.
+func setRim(r *pipeline.Recipe, rimPx int) {
+	for v, view := range r.Views {
+		for i, s := range view.Stages {
+			if s.Type != region.Factory.Type {
+				continue
+			}
+			decode := s.Decode
+			r.Views[v].Stages[i].Decode = func(dst any) error {
+				if err := decode(dst); err != nil {
+					return err
+				}
+				dst.(*region.Settings).RimMM = float64(rimPx) / 1000 // at 1 um/px
+				return nil
+			}
+		}
+	}
 }

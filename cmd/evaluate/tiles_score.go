@@ -26,19 +26,49 @@ func evaluateTiles(o options, progress io.Writer) (*result, error) {
 	if err != nil {
 		return nil, err
 	}
+	limit := limitFor(strengths(ofClass(chosen, "Free"), anyKind), tilesFalseAlarms)
+	judgeAny(chosen, limit)
+	judgeAny(scored, limit)
 	r := &result{}
-	clean := ofClass(scored, "Free")
-	upper := r.class("Blowhole by digs", ofClass(scored, "Blowhole"), clean, "scored tiles", digs)
-	inside := slices.DeleteFunc(ofClass(scored, "Blowhole"), func(t tile) bool { return t.mask.Count() == 0 })
-	r.plain("scored Blowhole pictures with the defect in the cut margin", float64(len(ofClass(scored, "Blowhole"))-len(inside)), len(inside), "other pictures; the former count as missed above")
-	r.class("Blowhole by digs", inside, clean, "scored, not in the margin", digs)
-	r.class("Blowhole by any defect", ofClass(scored, "Blowhole"), clean, "scored tiles", anyKind)
+	clean, holes := ofClass(scored, "Free"), ofClass(scored, "Blowhole")
+	upper := r.class("Blowhole by digs", holes, clean, "scored tiles", digs)
+	inside := slices.DeleteFunc(slices.Clone(holes), tile.inRim)
+	r.plain("scored Blowhole pictures with most of the defect in the rim", float64(len(holes)-len(inside)), len(inside), "other pictures; the former count as missed above")
+	r.class("Blowhole by digs", inside, clean, "scored, not in the rim", digs)
+	r.alarms("by digs, scored tiles", clean, digs)
+	r.alarms("by digs, tiles of the choice", ofClass(chosen, "Free"), digs)
+	if err := r.exposureVerdicts("Blowhole by digs, scored tiles", holes, digs); err != nil {
+		return nil, err
+	}
+	if err := r.exposureVerdicts("Blowhole by digs, tiles of the choice", ofClass(chosen, "Blowhole"), digs); err != nil {
+		return nil, err
+	}
+	r.class("Blowhole by any defect", holes, clean, "scored tiles", anyKind)
 	r.class("Blowhole by digs", ofClass(chosen, "Blowhole"), ofClass(chosen, "Free"), "tiles of the choice", digs)
+	r.plain("limit on any defect", limit, len(ofClass(chosen, "Free")), "sigma; rejects at most 5 % of the clean pictures of the choice")
+	r.alarms("by any defect, scored tiles", clean, anyKind)
 	for _, other := range []string{"Crack", "Break", "Fray"} {
-		r.class(other+" by any defect", append(ofClass(scored, other), ofClass(chosen, other)...), clean, "all, scored Free", anyKind)
+		all := append(ofClass(scored, other), ofClass(chosen, other)...)
+		r.class(other+" by any defect", all, clean, "all, scored Free", anyKind)
+		if err := r.exposureVerdicts(other+" by any defect, all", all, anyKind); err != nil {
+			return nil, err
+		}
 	}
 	r.atLeast("AUROC, Blowhole by digs, upper end", upper, 0.95)
 	return r, nil
+}
+
+// inRim reports whether most of a tile's defect lies outside the region.
+func (t tile) inRim() bool {
+	region, inside := t.result.Item.Region.Inside(), 0
+	for _, s := range t.mask.Spans() {
+		for x := s.X0; x < s.X1; x++ {
+			if region.At(x, s.Y) {
+				inside++
+			}
+		}
+	}
+	return 2*inside < t.mask.Count()
 }
 
 func ofClass(tiles []tile, class string) []tile {

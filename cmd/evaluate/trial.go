@@ -46,6 +46,7 @@ type inspected struct {
 	digs     []dig
 	falses   int // defects that lie on nothing drawn
 	accepted bool
+	regionPx int
 }
 
 func digsOf(units []inspected) []dig {
@@ -87,7 +88,7 @@ func (t *trial) unit(i int, c condition) (inspected, error) {
 		return inspected{}, fmt.Errorf("unit %d: %s: %s", i, f.Reason, f.Detail)
 	}
 	view := e.Views[0]
-	out := inspected{accepted: j.Verdict == pipeline.Accept}
+	out := inspected{accepted: j.Verdict == pipeline.Accept, regionPx: int(math.Pi * math.Pow(t.radiusPx(render.Object{DiameterUM: 1000 * t.renderer.Scene().Part.DiameterMM}), 2))}
 	for _, o := range u.Objects {
 		if o.Kind == pipeline.Dig && o.Isolated && o.Sightings[0].PeakSigma >= leastSigma {
 			out.digs = append(out.digs, t.lookFor(o, i, view.Defects))
