@@ -6,9 +6,11 @@ import (
 	"lapgate/pipeline/raster"
 )
 
-// The profile across a line reaches to each side so far, px; the second time where it has not
-// fallen to half of its height before.
-var profileReaches = [...]float64{7, 24}
+// The profile across a line reaches to each side so far, px; further where the line is wide.
+var profileReaches = [...]float64{5, 12, 24}
+
+// wideShare is the share of the reach that a line's width may be.
+const wideShare = 0.7
 
 // leastRatio is the length over the width that a line has at least.
 const leastRatio = 4
@@ -66,12 +68,12 @@ func (f *finder) fitAcross(l *Line, sign, blur float64) (best fitted, ok bool) {
 		if best, ok = fitShape(across(rows), reach, blur); !ok {
 			return best, false
 		}
-		bent := bendOf(rows, length, l.White, best.unrowed(blur).fullWidth(), reach)
+		bent := bendOf(rows, length, l.White, best.unrowed(blur).fullWidth())
 		if len(bent) > 0 {
 			rows = f.rows(l.Path, sign, reach, 1, bent)
 			best, ok = fitShape(across(rows), reach, blur)
 		}
-		if best.fullWidth() < reach || reach == profileReaches[len(profileReaches)-1] {
+		if best.fullWidth() < wideShare*reach || reach == profileReaches[len(profileReaches)-1] {
 			l.Path = bent.bent(l.Path)
 			return best, ok
 		}

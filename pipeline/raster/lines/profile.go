@@ -36,12 +36,20 @@ func (f *finder) rowsOf(out []row, k stretch, from raster.Point, s, sign, reach 
 	slope := k.slope()
 	across := math.Hypot(1, slope) // px of the axis for each px across
 	n, first := 2*int(reach/profileStep)+1, len(out)
+	values := make([]float64, n*((k.b-k.a)/stride+1))
+	buffer := make([]float64, 0, int(2*reach*across)+4)
 	for m := k.a; m <= k.b; m += stride {
 		c := k.at(m)
-		r := row{s: s + distance(from, k.point(float64(m), c)), v: make([]float64, n)}
-		c += across * shift.at(r.s)
+		r := row{s: s + distance(from, k.point(float64(m), c)), v: values[:n:n]}
+		values = values[n:]
+		c += across * (shift.at(r.s) - reach)
+		low := int(math.Floor(c))
+		buffer = f.pixels(buffer[:0], k.axis, m, low, int(math.Floor(c+2*across*reach))+1)
 		for b := range r.v {
-			r.v[b] = sign * f.interpolated(k.axis, m, c+across*(float64(b)*profileStep-reach))
+			at := c + across*float64(b)*profileStep - float64(low)
+			j := min(int(at), len(buffer)-2)
+			t := at - float64(j)
+			r.v[b] = sign * (buffer[j]*(1-t) + buffer[j+1]*t)
 		}
 		out = append(out, r)
 	}
@@ -51,20 +59,20 @@ func (f *finder) rowsOf(out []row, k stretch, from raster.Point, s, sign, reach 
 	return out
 }
 
-// interpolated is the plane between two pixels across an axis; NaN where one does not count.
-func (f *finder) interpolated(axis, m int, c float64) float64 {
-	j := int(math.Floor(c))
-	x0, y0, x1, y1 := j, m, j+1, m
-	if axis == 1 {
-		x0, y0, x1, y1 = m, j, m, j+1
+// pixels appends those from low to high across an axis; NaN where one does not count.
+func (f *finder) pixels(v []float64, axis, m, low, high int) []float64 {
+	for j := low; j <= high; j++ {
+		x, y := j, m
+		if axis == 1 {
+			x, y = m, j
+		}
+		one, ok := f.pixel(x, y)
+		if !ok {
+			one = math.NaN()
+		}
+		v = append(v, one)
 	}
-	a, ok0 := f.pixel(x0, y0)
-	b, ok1 := f.pixel(x1, y1)
-	if !ok0 || !ok1 {
-		return math.NaN()
-	}
-	t := c - float64(j)
-	return a*(1-t) + b*t
+	return v
 }
 
 // pixel returns the plane's value where it counts.
@@ -96,13 +104,43 @@ func across(rows []row) []float64 {
 	return out
 }
 
-// middleMean sorts v and returns the mean of its middle half; 0 for none.
+// middleMean reorders v and returns the mean of its middle half; 0 for none.
 func middleMean(v []float64) float64 {
-	if len(v) == 0 {
+	n := len(v)
+	if n == 0 {
 		return 0
 	}
-	slices.Sort(v)
-	return mean(v[len(v)/4 : len(v)-len(v)/4])
+	low, high := n/4, n-n/4
+	split(v, low)
+	split(v[low:], high-low)
+	return mean(v[low:high])
+}
+
+// split reorders v so that its first k values are the lowest (Hoare's selection).
+func split(v []float64, k int) {
+	for low, high := 0, len(v)-1; low < high && k > low && k <= high; {
+		pivot, i, j := v[(low+high)/2], low, high
+		for i <= j {
+			for v[i] < pivot {
+				i++
+			}
+			for v[j] > pivot {
+				j--
+			}
+			if i <= j {
+				v[i], v[j] = v[j], v[i]
+				i, j = i+1, j-1
+			}
+		}
+		switch {
+		case k <= j:
+			high = j
+		case k > i:
+			low = i
+		default:
+			return
+		}
+	}
 }
 
 // along returns the middle value of each row.

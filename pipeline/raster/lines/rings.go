@@ -41,7 +41,7 @@ func (f *finder) findRings() *rings {
 		}
 	}
 	random := rand.New(rand.NewPCG(1, 1)) // of the places looked at: the same each time
-	along, across := f.sampleRings(r, random, 0, r.most, 0, ringLook), f.sampleRings(r, random, 0, r.most, 50, ringLook)
+	along, across := f.sampleRings(r, random, 0, r.most, 0, ringLook).orWhite(), f.sampleRings(r, random, 0, r.most, 50, ringLook).orWhite()
 	if along[0] < ringLeast*max(across[0], 0.05) && along[1] < ringLeast*max(across[1], 0.05) && along[2] < ringLeast*max(across[2], 0.05) {
 		return nil
 	}
@@ -51,23 +51,58 @@ func (f *finder) findRings() *rings {
 			r.values = append(r.values, f.sampleRings(r, random, low, high, angle, ringSamples))
 		}
 	}
+	r.fill()
 	return r
 }
 
-// sampleRings looks at lines through random places between two distances from the centre,
-// at an angle to the rings, and returns how their sums scatter.
+// fill gives rings of which too little is seen, as in the corners of a frame, what the next
+// one inwards has, or else outwards.
+func (r *rings) fill() {
+	n := len(ringAngles)
+	for i := n; i < len(r.values); i++ {
+		r.values[i] = r.values[i].orThose(r.values[i-n])
+	}
+	for i := len(r.values) - 1 - n; i >= 0; i-- {
+		r.values[i] = r.values[i].orThose(r.values[i+n])
+	}
+	for i := range r.values {
+		r.values[i] = r.values[i].orWhite()
+	}
+}
+
+// orThose returns the scatter with those of o where nothing is known.
+func (s scatter) orThose(o scatter) scatter {
+	for level, v := range s {
+		if v == 0 {
+			s[level] = o[level]
+		}
+	}
+	return s
+}
+
+func (s scatter) orWhite() scatter { return s.orThose(scatter{1, 1, 1}) }
+
+// ringTries is how many places are drawn for each line looked at.
+const ringTries = 60
+
+// sampleRings looks at lines through random places of the picture between two distances from
+// the centre, at an angle to the rings, and returns how their sums scatter; 0 where too few
+// of the length count.
 func (f *finder) sampleRings(r *rings, random *rand.Rand, low, high, angle float64, n int) scatter {
 	var values [levels][]float64
-	for range 4 * n {
+	width, height := float64(f.work.width), float64(f.work.height)
+	for range ringTries * n {
 		if len(values[0]) == n {
 			break
 		}
-		d, at, turn := low+(high-low)*random.Float64(), 2*math.Pi*random.Float64(), angle*math.Pi/180
+		p := raster.Point{X: width * random.Float64(), Y: height * random.Float64()}
+		if d := distance(p, r.centre); d < low || d >= high {
+			continue
+		}
+		at, turn := math.Atan2(p.Y-r.centre.Y, p.X-r.centre.X), angle*math.Pi/180
 		if random.IntN(2) == 0 {
 			turn = -turn
 		}
-		sin, cos := math.Sincos(at)
-		p := raster.Point{X: r.centre.X + d*cos, Y: r.centre.Y + d*sin}
 		for level := range values {
 			if z, ok := f.through(p, at+math.Pi/2+turn, levelRows[level]); ok {
 				values[level] = append(values[level], z*z)
@@ -76,7 +111,6 @@ func (f *finder) sampleRings(r *rings, random *rand.Rand, low, high, angle float
 	}
 	var out scatter
 	for level, v := range values {
-		out[level] = 1
 		if len(v) >= n/8 {
 			out[level] = middle(v) / chiMedian
 		}

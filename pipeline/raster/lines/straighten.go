@@ -7,8 +7,10 @@ import (
 	"lapgate/pipeline/raster"
 )
 
-// bend is how far beside a path the line's own course lies, px, at places along it.
-type bend []struct{ s, off float64 }
+// bend is how far beside a path the line's own course lies, at places along it.
+type bend []beside
+
+type beside struct{ s, off float64 } // px along, px beside
 
 // at is linear between the places and constant beyond.
 func (b bend) at(s float64) float64 {
@@ -33,11 +35,12 @@ const (
 	leastWindow  = 10. // px along
 	mostBend     = 2.5 // px that the course may lie beside the path
 	endStep      = 1.5 // px from the last window but one to the last
+	leastBend    = 0.3 // px somewhere; below it the path is left as it is
 )
 
 // bendOf finds the course of a line of some width in windows along it. A line with less
 // evidence than two windows need has none.
-func bendOf(rows []row, length, sigmas, width, reach float64) bend {
+func bendOf(rows []row, length, sigmas, width float64) bend {
 	n := int(min(math.Pow(sigmas/windowSigmas, 2), length/leastWindow))
 	if n < 2 {
 		return nil
@@ -48,10 +51,13 @@ func bendOf(rows []row, length, sigmas, width, reach float64) bend {
 		if len(part) < 4 {
 			continue
 		}
-		place := struct{ s, off float64 }{(part[0].s + part[len(part)-1].s) / 2, summit(across(part), width, reach)}
-		out = append(out, place)
+		out = append(out, beside{(part[0].s + part[len(part)-1].s) / 2, summit(across(part), width)})
 	}
-	return out.calm()
+	out = out.calm()
+	if !slices.ContainsFunc(out, func(p beside) bool { return math.Abs(p.off) >= leastBend }) {
+		return nil
+	}
+	return out
 }
 
 // calm takes the median of three neighbours, and lets the ends lie little off theirs: a
@@ -71,7 +77,7 @@ func (b bend) calm() bend {
 }
 
 // summit is where the profile, in a mean as wide as the line, is highest near its middle.
-func summit(v []float64, width, reach float64) float64 {
+func summit(v []float64, width float64) float64 {
 	half := max(int(width/2/profileStep+0.5), 1)
 	broad := func(k int) float64 {
 		sum, n := 0., 0.
@@ -119,8 +125,8 @@ func (b bend) bent(path []raster.Point) []raster.Point {
 		if len(out) == 0 {
 			put(0)
 		}
-		for _, place := range b {
-			if t := (place.s - s) / d; t > 0.02 && t < 0.98 {
+		for _, at := range b {
+			if t := (at.s - s) / d; t > 0.02 && t < 0.98 {
 				put(t)
 			}
 		}
