@@ -144,7 +144,6 @@ PG_KERNEL void row_signal(T *restrict s, const T *restrict v, const T *restrict 
 	int from = x0;
 	for (; from + 64 <= x1; from += 64) {
 		pg_ask(next, from);
-		pg_ask(next + 1, from);
 		switch (shift * 2 + (negate != 0)) {
 			SIGNAL_PART(0, 0) SIGNAL_PART(0, 1) SIGNAL_PART(1, 0) SIGNAL_PART(1, 1) SIGNAL_PART(2, 0)
 			SIGNAL_PART(2, 1) SIGNAL_PART(3, 0) SIGNAL_PART(3, 1) SIGNAL_PART(4, 0) SIGNAL_PART(4, 1)

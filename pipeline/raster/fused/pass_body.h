@@ -191,7 +191,7 @@ PG_KERNEL void add_moments(const state *s, T **rows, int x0, int x1, const pg_st
 	for (int x = x0; x < x1;) {
 		int i = x / cell, end = (i + 1) * cell < x + 64 ? (i + 1) * cell : x + 64;
 		end = end < x1 ? end : x1;
-		for (int k = 0; k < 6; k++)
+		for (int k = 0; k < 4; k++)
 			pg_ask(next + k, x);
 		if (end - x == 64)
 			moments_block(a, b, c, d, x, x + 64, low[i], high[i], mid[i], s->stats + 3 * i);
@@ -201,8 +201,15 @@ PG_KERNEL void add_moments(const state *s, T **rows, int x0, int x1, const pg_st
 	}
 }
 
-PG_KERNEL void along(T *restrict dst, const T *restrict v, int x0, int x1) {
-	for (int x = x0; x < x1; x++)
+// along filters x0 … x1 along x, and asks for next on the way.
+PG_KERNEL void along(T *restrict dst, const T *restrict v, int x0, int x1, const pg_stream *next) {
+	int from = x0;
+	for (; from + 64 <= x1; from += 64) {
+		pg_ask(next, from);
+		for (int x = from; x < from + 64; x++)
+			dst[x] = taps(v[x - 2], v[x - 1], v[x], v[x + 1], v[x + 2]);
+	}
+	for (int x = from; x < x1; x++)
 		dst[x] = taps(v[x - 2], v[x - 1], v[x], v[x + 1], v[x + 2]);
 }
 
@@ -218,7 +225,7 @@ static void to_signal(state *s, T *v, int y, int x0, int x1, const pg_stream *ne
 	row_signal(sig, v, s->top, s->slope, fy, s->shift, y, s->least, s->most, f->polarity < 0, x0, x1, next);
 	fill_gaps(f, sig, y, x0, x1, 0);
 	sig[x0 - 2] = sig[x0 - 1] = sig[x1] = sig[x1 + 1] = 0;
-	along(out, sig, x0, x1);
+	along(out, sig, x0, x1, next + 1);
 }
 
 // gather keeps every fourth value of a row, the third of four: as row k of the samples of

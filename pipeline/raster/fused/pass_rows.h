@@ -126,12 +126,13 @@ static int scan_inner(state *s, int k, int y, int x0, int x1, int *next) {
 	const T *f = s->filtered[k];
 	for (; *next < s->hit_count; ++*next) {
 		int j = s->hits[*next];
-		if ((j + 1) * SEGMENT <= x0)
+		const uint32_t bits = s->bits[GROUP * *next + k];
+		if (bits == 0 || (j + 1) * SEGMENT <= x0)
 			continue;
 		if (j * SEGMENT >= x1)
 			break;
 		int a = j * SEGMENT < x0 ? x0 : j * SEGMENT, e = (j + 1) * SEGMENT < x1 ? (j + 1) * SEGMENT : x1;
-		if (e - a == SEGMENT ? scan_segment(s, f, y, j, s->bits[GROUP * *next + k]) : scan(s, f, y, a, e, 1))
+		if (e - a == SEGMENT ? scan_segment(s, f, y, j, bits) : scan(s, f, y, a, e, 1))
 			return PG_NO_MEMORY;
 		if ((j + 1) * SEGMENT > x1)
 			break; // the rest of the segment may lie in the next span
@@ -199,15 +200,14 @@ static int group(state *s, int y, int keep) {
 	int e = load(s, s->value, y, x0, x1, keep);
 	if (e)
 		return e;
-	pg_stream next[3 * GROUP + 2]; // of the next four rows: the last two while the signal is made
+	pg_stream next[3 * GROUP]; // of the next four rows
 	for (int k = 0; k < GROUP; k++)
-		pg_streams(f, y + GROUP + k, next + (k < 2 ? 3 * k : 4 * k - 2));
-	next[9] = next[13] = (pg_stream){0};
+		pg_streams(f, y + GROUP + k, next + 3 * k);
 	if (keep)
 		add_moments(s, s->value, x0, x1, next);
 	for (int k = 0; k < GROUP; k++)
 		if (y + k < f->height)
-			to_signal(s, s->value[k], y + k, x0, x1, next + 6 + 2 * k);
+			to_signal(s, s->value[k], y + k, x0, x1, next + GROUP + 2 * k);
 		else
 			memset(s->ring[(y + k) & 7] - PAD, 0, sizeof(T) * (size_t)s->pitch);
 	return PG_OK;

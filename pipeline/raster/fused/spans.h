@@ -28,10 +28,29 @@ static inline int span_meet(pg_span *dst, const pg_span *a, int n, const pg_span
 	return count;
 }
 
+// span_inner_one is span_inner where each of the five rows has one span, and −1 elsewhere.
+PG_INLINE int span_inner_one(const pg_frame *f, int y, pg_span *dst) {
+	if (y < 2 || y + 2 >= f->height)
+		return -1;
+	const int32_t *start = f->span_start + y - 2;
+	const pg_span *p = f->spans + start[0];
+	if (start[1] - start[0] != 1 || start[2] - start[1] != 1 || start[3] - start[2] != 1 || start[4] - start[3] != 1 || start[5] - start[4] != 1)
+		return -1;
+	int x0 = p->x0, x1 = p->x1;
+	for (int k = 1; k < 5; k++) {
+		x0 = p[k].x0 > x0 ? p[k].x0 : x0;
+		x1 = p[k].x1 < x1 ? p[k].x1 : x1;
+	}
+	*dst = (pg_span){y, x0 + 2, x1 - 2};
+	return x0 + 2 < x1 - 2;
+}
+
 // span_inner is where in row y all of 5 × 5 pixels lie in the region. a and b hold a row;
 // the result is in *a.
 static inline int span_inner(const pg_frame *f, int y, pg_span **a, pg_span **b) {
-	int n;
+	int n = span_inner_one(f, y, *a);
+	if (n >= 0)
+		return n;
 	const pg_span *p = spans_of(f, y, &n);
 	n = span_meet(*a, p, n, p, n, 2);
 	for (int k = -2; k <= 2 && n > 0; k++) {
