@@ -234,20 +234,3 @@ int pg_fits(const pg_frame *f, const pg_grid *g) {
 	return (high + across + down) * f->scale < 32700 && (low - across - down) * f->scale > -16000 &&
 	       3 * fmax(down, across) * f->scale < 16000 && f->clip * widest * f->scale < PG_REACH && PG_GAIN * noise / n * f->scale > 1.2;
 }
-
-// pg_uncovered allows for a hundredth of the threshold.
-int32_t pg_uncovered(const pg_frame *f, const pg_grid *g, const pg_grid *truth, uint8_t *rows) {
-	int32_t n = 0;
-	memset(rows, 0, (size_t)g->rows);
-	for (int64_t i = 0; i < (int64_t)g->columns * g->rows; i++) {
-		if (truth->inside[i] == 0)
-			continue;
-		double used = pg_cautious(f, f->low, g->noise[i], g->slack), off = fabs(g->level[i] - truth->level[i]) + (f->use_float ? 0 : 0.5 / f->scale);
-		if (used <= 1.01 * f->low * PG_GAIN * truth->noise[i] - off)
-			continue;
-		for (int64_t row = i / g->columns - 1; row <= i / g->columns + 1; row++)
-			if (row >= 0 && row < g->rows && !rows[row])
-				rows[row] = 1, n++;
-	}
-	return n;
-}

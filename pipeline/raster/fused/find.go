@@ -219,31 +219,12 @@ func (j *job) pass() error {
 	return firstError(C.pg_grain(j.frame, j.grid.c, 1))
 }
 
-// again passes once more, with the levels and the noise of all pixels, over the grid rows
-// for which the first look was too far off, and replaces their candidates. It returns how
-// many rows that were.
+// again passes once more, with the levels and the noise of all pixels, where the first
+// look was too far off. It returns in how many grid rows that was.
 func (j *job) again(found *C.pg_blobs) (int, error) {
-	rows := make([]uint8, j.rows)
-	n := int(C.pg_uncovered(j.frame, j.guess.c, j.grid.c, (*C.uint8_t)(unsafe.SliceData(rows))))
-	cell := j.s.Grid.CellPx
-	for row := 0; row < j.rows; row++ {
-		first := row
-		for row < j.rows && rows[row] != 0 {
-			row++
-		}
-		if row == first {
-			continue
-		}
-		b := j.bands[0].c // the guess is of no more use: its memory takes the moments measured once more
-		e := C.pg_pass(j.frame, j.grid.c, j.guess.c, b, C.int32_t(first), C.int32_t(row))
-		if e == C.PG_OK {
-			e = C.pg_replace(found, b, C.int32_t(first*cell), C.int32_t(row*cell))
-		}
-		if err := firstError(e); err != nil {
-			return n, err
-		}
-	}
-	return n, nil
+	var rows C.int32_t
+	err := firstError(C.pg_again(j.frame, j.guess.c, j.grid.c, j.bands[0].c, found, &rows))
+	return int(rows), err
 }
 
 // byRow returns the spans of a region merged and sorted, and where each row starts.

@@ -80,24 +80,6 @@ int pg_collect(pg_blobs *b, pg_band *band) {
 	return r->count > INT32_MAX / 8 ? PG_NO_MEMORY : PG_OK;
 }
 
-int pg_replace(pg_blobs *b, const pg_band *band, int32_t y0, int32_t y1) {
-	pg_runs *r = &b->candidates;
-	int64_t first = 0, last, more = band->runs.count;
-	while (first < r->count && (int32_t)r->at[first].y < y0)
-		first++;
-	for (last = first; last < r->count && (int32_t)r->at[last].y < y1;)
-		last++;
-	while (r->room < r->count + more)
-		if (pg_grow(r))
-			return PG_NO_MEMORY;
-	if (r->count > last)
-		memmove(r->at + first + more, r->at + last, sizeof(pg_run) * (size_t)(r->count - last));
-	if (more > 0)
-		memcpy(r->at + first, band->runs.at, sizeof(pg_run) * (size_t)more);
-	r->count += more - (last - first);
-	return PG_OK;
-}
-
 void pg_spans(const pg_run *runs, int64_t n, pg_span *out) {
 	for (int64_t i = 0; i < n; i++)
 		out[i] = (pg_span){(int32_t)runs[i].y, runs[i].x0, runs[i].x1};

@@ -50,8 +50,10 @@ int64_t pg_blobs_bytes(const pg_blobs *b); // taken now
 int pg_collect(pg_blobs *b, pg_band *band);
 // pg_spans writes runs as spans.
 void pg_spans(const pg_run *runs, int64_t n, pg_span *out);
-// pg_replace puts the candidates of a band in the place of those in rows y0 to y1.
-int pg_replace(pg_blobs *b, const pg_band *band, int32_t y0, int32_t y1);
+// pg_again passes once more, with the grid truth, over the cells around which the
+// thresholds that g gave did not find all that truth calls for, and puts what it finds in
+// the place of their candidates. rows receives in how many grid rows there were any.
+int pg_again(const pg_frame *f, const pg_grid *g, const pg_grid *truth, pg_band *band, pg_blobs *b, int32_t *rows);
 // pg_find evaluates the snr plane exactly around the candidates that may matter, labels
 // what is above the thresholds and keeps blobs of at least area pixels. With snr (width ×
 // height, zeroed) it evaluates the whole region and writes it there. The band's memory is

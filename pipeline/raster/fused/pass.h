@@ -115,11 +115,7 @@ int pg_grain(const pg_frame *f, pg_grid *g, double share);
 int pg_fits(const pg_frame *f, const pg_grid *g);
 
 // pg_pass finds candidate runs in the rows of grid rows row0 to row1 with the thresholds
-// of g, and measures the cells anew on all of their pixels into out.
+// of g, and measures the cells anew on all of their pixels into out, unless that is NULL.
 int pg_pass(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, int32_t row0, int32_t row1);
-
-// pg_uncovered marks the grid rows in which the thresholds that g gave did not find all
-// that the grid truth calls for, and returns how many they are.
-int32_t pg_uncovered(const pg_frame *f, const pg_grid *g, const pg_grid *truth, uint8_t *rows);
 
 #endif

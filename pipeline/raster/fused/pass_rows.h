@@ -222,7 +222,7 @@ static int emit(state *s, int y, int first, int last) {
 		thresholds(s, y - 2);
 		vertical(s, y, x0, x1);
 	}
-	if (s->f->use_grain && y - 2 >= first && y - 2 < last)
+	if (s->out && s->f->use_grain && y - 2 >= first && y - 2 < last)
 		take_samples(s, s->filtered[0], y - 2);
 	for (int k = 0; k < GROUP && x0 < x1; k++) {
 		int row = y - 2 + k;
@@ -236,20 +236,22 @@ static int pass(const pg_frame *f, const pg_grid *g, pg_grid *out, pg_band *b, i
 	state s;
 	start(&s, f, g, out, b);
 	b->runs.count = b->saturated.count = 0;
+	const int keep = out != 0;
 	int first = row0 * f->cell, last = row1 * f->cell < f->height ? row1 * f->cell : f->height;
 	int e = group(&s, first - GROUP, 0), y = first;
 	for (; y < last && !e; y += GROUP) {
-		if (y % f->cell == 0)
+		if (keep && y % f->cell == 0)
 			start_cells(&s, y / f->cell);
-		e = group(&s, y, 1);
+		e = group(&s, y, keep);
 		e = e ? e : emit(&s, y, first, last);
-		if (y % f->cell == 0 && y > first) // the last samples of the row above came with this group
+		if (keep && y % f->cell == 0 && y > first) // the last samples of the row above came with this group
 			finish_grain(&s, y / f->cell - 1);
-		if (!e && ((y + GROUP) % f->cell == 0 || y + GROUP >= last))
+		if (keep && !e && ((y + GROUP) % f->cell == 0 || y + GROUP >= last))
 			e = finish_moments(&s, y / f->cell);
 	}
 	e = e ? e : group(&s, y, 0);
 	e = e ? e : emit(&s, y, first, last);
-	finish_grain(&s, row1 - 1);
+	if (keep)
+		finish_grain(&s, row1 - 1);
 	return e;
 }

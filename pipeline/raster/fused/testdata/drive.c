@@ -40,7 +40,8 @@ typedef struct {
 	pg_blobs *blobs;
 	void *blocks;
 	float *snr;
-	int n, again;
+	int n;
+	int32_t again;
 	uint64_t digest;
 } job;
 
@@ -216,10 +217,8 @@ static int objects(job *j) {
 	pg_measure m;
 	for (int i = 0; i < j->n; i++)
 		e = e ? e : pg_collect(j->blobs, j->bands[i]);
-	if (j->again && !e) { // as where the first look was off in the first rows
-		e = pg_pass(&j->f, &j->grid, &j->guess, j->bands[0], 0, 1);
-		e = e ? e : pg_replace(j->blobs, j->bands[0], 0, j->f.cell);
-	}
+	if (!e)
+		e = pg_again(&j->f, &j->guess, &j->grid, j->bands[0], j->blobs, &j->again);
 	e = e ? e : pg_find(&j->f, &j->grid, j->bands[0], j->blobs, 1, j->snr);
 	e = e ? e : pg_index(&j->f, j->blobs);
 	for (int64_t i = 0; i < j->blobs->count && !e; i++) {
@@ -279,7 +278,6 @@ static int fuzz(int count) {
 		if (below(2))
 			mark_bad(&j.f, below(8) ? 0.01 : 0.9);
 		lay_region(&j.f, below(2) ? 0 : below(6));
-		j.again = below(2);
 		begin(&j, 1 + below(4));
 		if (below(3) == 0)
 			j.snr = room(sizeof(float) * (size_t)j.f.width * (size_t)j.f.height);
@@ -328,11 +326,8 @@ static int timing(int count) {
 			best[k] = fmin(best[k], t[k + 1] - t[k]);
 		best[3] = fmin(best[3], t[3] - t[0]);
 	}
-	uint8_t *uncovered = room((size_t)j.grid.rows);
-	int again = pg_uncovered(&j.f, &j.guess, &j.grid, uncovered);
-	free(uncovered);
 	int64_t runs = j.bands[0]->runs.count;
-	printf("%.3f look %.3f rows %.3f objects %.3f blobs %d runs %d rows again %d\n", best[3], best[0], best[1], best[2], (int)j.blobs->count, (int)runs, again);
+	printf("%.3f look %.3f rows %.3f objects %.3f blobs %d runs %d rows again %d\n", best[3], best[0], best[1], best[2], (int)j.blobs->count, (int)runs, (int)j.again);
 	drop(&j);
 	return 0;
 }
