@@ -19,14 +19,16 @@ ln_work *ln_work_new(int32_t width, int32_t height) {
 	w->pixels = calloc(1, picture);
 	w->outside = malloc((size_t)length);
 	w->sums = malloc(2 * sizeof *w->sums);
-	if (!w->turned || !w->pixels || !w->outside || !w->sums) {
+	w->positions = length + 1;
+	w->totals = malloc(2 * sizeof *w->totals * (size_t)w->positions);
+	if (!w->turned || !w->pixels || !w->outside || !w->sums || !w->totals) {
 		ln_work_free(w);
 		return 0;
 	}
 	w->plane.at = w->pixels + LN_MARGIN * w->plane.pitch + LN_PAD;
 	w->ones = w->turned + strip;
 	w->counts = w->sums + 1;
-	w->bytes = (int64_t)(2 * strip + picture + (size_t)length + 2 * sizeof *w->sums + sizeof *w);
+	w->bytes = (int64_t)(2 * strip + picture + (size_t)length + 2 * sizeof *w->sums + 2 * sizeof *w->totals * (size_t)w->positions + sizeof *w);
 	return w;
 }
 
@@ -37,6 +39,7 @@ void ln_work_free(ln_work *w) {
 	free(w->pixels);
 	free(w->outside);
 	free(w->sums);
+	free(w->totals);
 	free(w->hits);
 	free(w);
 }

@@ -99,6 +99,19 @@ int ln_profile(const ln_work *w, ln_stretch s, const int16_t *weights, ln_total 
 // against each other, and returns the stretch with the highest sign·sum/√weight.
 ln_stretch ln_settle(const ln_work *w, ln_stretch s, const int16_t *weights, int32_t reach, double step, int32_t sign, ln_total *best);
 
+// ln_part finds the part of a stretch, LN_PART positions at least, with the highest
+// sign·sum over its spread: first among bounds some positions apart, then all about those.
+// scatter is the variance of sums over LN_ROWS, half of it and 16 positions over that of
+// white noise. Returns the number of positions; below LN_PART there is no part.
+enum { LN_PART = 16 };
+int ln_part(ln_work *w, ln_stretch s, const int16_t *weights, int32_t sign, const double *scatter, int32_t *first, int32_t *last);
+
+// ln_over is the variance of sums along lines of some number of positions over that of
+// white noise. What the sums through a strip scatter beyond it is taken to go on along the
+// line, as those along lay do, so that it grows with the length. A line that crosses lay at
+// an angle is in step with it over a shorter stretch, which half of a strip or 16 rows show.
+double ln_over(const double *scatter, double positions);
+
 // ln_erase_along makes the pixels within reach across a stretch not count.
 void ln_erase_along(ln_work *w, ln_stretch s, int32_t reach);
 

@@ -23,8 +23,8 @@ func (p piece) sigmas() float64 {
 }
 
 const (
-	leastPositions = 16 // of a refined line
-	firstReach     = 96 // positions looked at beyond each end
+	leastPositions = C.LN_PART // of a refined line
+	firstReach     = 96        // positions looked at beyond each end
 	mostRounds     = 12
 )
 
@@ -124,12 +124,10 @@ func (f *finder) extend(p piece) stretch {
 		return p.stretch
 	}
 	long := p.resized(a, b)
-	v := f.profile(long)
-	if len(v) < leastPositions {
-		return p.stretch
+	if first, last, ok := f.part(long, p.sign, p.scatter); ok {
+		return long.resized(a+first, a+last)
 	}
-	first, last := bestPart(v, p.sign, p.scatter)
-	return long.resized(a+first, a+last)
+	return p.stretch
 }
 
 // inside cuts positions a to b to those where the line lies in the picture.
@@ -145,48 +143,4 @@ func (f *finder) inside(k stretch, a, b int) (int, int) {
 		m0, m1 = m1, m0
 	}
 	return max(a, int(math.Ceil(max(m0, -1)))), min(b, int(math.Floor(min(m1, 1e6))))
-}
-
-// bestPart returns the first and the last position of the part with the highest sum over
-// its spread: first among bounds some positions apart, then all about those.
-func bestPart(v []total, sign int, noise scatter) (first, last int) {
-	n := len(v)
-	s, w := make([]float64, n+1), make([]float64, n+1)
-	for i, t := range v {
-		s[i+1], w[i+1] = s[i]+float64(sign)*t.sum, w[i]+t.weight
-	}
-	flat := noise.over(1) == noise.over(1e4) // as white noise is
-	value := func(i, j int) float64 {        // the square, with its sign
-		weight, sum := w[j]-w[i], s[j]-s[i]
-		if j-i < leastPositions || weight <= 0 {
-			return math.Inf(-1)
-		}
-		if flat {
-			return sum * math.Abs(sum) / weight
-		}
-		return sum * math.Abs(sum) / (weight * noise.over(float64(j-i)))
-	}
-	step := max(4, n/32)
-	i, j := 0, n
-	best := value(0, n)
-	for a := 0; a < n; a += step {
-		for b := a + leastPositions; b <= n; b += step {
-			if x := value(a, b); x > best {
-				best, i, j = x, a, b
-			}
-		}
-	}
-	for range 2 {
-		for a := max(i-step, 0); a <= min(i+step, n); a++ {
-			if x := value(a, j); x > best {
-				best, i = x, a
-			}
-		}
-		for b := max(j-step, 0); b <= min(j+step, n); b++ {
-			if x := value(i, b); x > best {
-				best, j = x, b
-			}
-		}
-	}
-	return i, j - 1
 }

@@ -1,5 +1,7 @@
 package lines
 
+// #cgo noescape ln_over
+// #cgo nocallback ln_over
 // #include "lines.h"
 import "C"
 
@@ -27,21 +29,13 @@ func (s scatter) most(o scatter) scatter {
 
 // over is that of lines of some number of positions.
 func (s scatter) over(positions float64) float64 {
-	if s[0] <= 1 && s[1] <= 1 && s[2] <= 1 {
+	if s[0] <= 1 && s[1] <= 1 && s[2] <= 1 { // as most are
 		return max(s[0], s[1])
 	}
-	return s.grown(positions)
+	return float64(C.ln_over(s.c(), C.double(positions)))
 }
 
-// grown takes what the sums through a strip scatter beyond white noise to go on along the
-// line, as those along lay do, so that it grows with the length. A line that crosses lay at
-// an angle is in step with it over a shorter stretch, which half of a strip or 16 rows show.
-func (s scatter) grown(positions float64) float64 {
-	long := 1 + (s[0]-1)*positions/rows
-	half := 1 + (s[1]-1)*min(positions*2/rows, rows/(2*positions))
-	short := 1 + (s[2]-1)*min(positions/16, 1, rows/(2*positions))
-	return max(long, half, short, min(s[0], 1))
-}
+func (s *scatter) c() *C.double { return (*C.double)(&s[0]) }
 
 // spread is the scatter of the line sums by place and slope.
 type spread struct{ axes [2]axisSpread }

@@ -1,5 +1,13 @@
 package lines
 
+// #cgo noescape ln_part
+// #cgo nocallback ln_part
+// #cgo noescape ln_sum
+// #cgo nocallback ln_sum
+// #cgo noescape ln_settle
+// #cgo nocallback ln_settle
+// #cgo noescape ln_profile
+// #cgo nocallback ln_profile
 // #include "lines.h"
 import "C"
 
@@ -119,4 +127,12 @@ func (f *finder) settle(k stretch, reach int, step float64, sign int) (stretch, 
 	s := C.ln_settle(f.work.c, k.c(), f.weights.of(k.slope()), C.int32_t(reach), C.double(step), C.int32_t(sign), &t)
 	k.ca, k.cb = float64(s.ca), float64(s.cb)
 	return k, total{float64(t.sum), float64(t.weight)}
+}
+
+// part returns the first and the last position of the part of a stretch that stands out
+// most; ok is false where the stretch leaves the picture or is too short.
+func (f *finder) part(k stretch, sign int, noise scatter) (first, last int, ok bool) {
+	var i, j C.int32_t
+	n := C.ln_part(f.work.c, k.c(), f.weights.of(k.slope()), C.int32_t(sign), noise.c(), &i, &j)
+	return int(i), int(j), n >= leastPositions
 }

@@ -26,6 +26,7 @@ struct ln_work {
 	int8_t *turned, *ones; // strips of LN_ROWS rows: of columns, and of what counts
 	uint8_t *outside;      // pixels of each column of the strip that do not count
 	ln_tree *sums, *counts;
+	int32_t *totals, positions; // running totals of a stretch, twice as many
 	ln_hit *hits;
 	int32_t kept, room;
 	int32_t best[LN_SIDE * (LN_ROWS / LN_CELL)]; // of a tile's cells, the number of the hit; −1 = none
@@ -56,5 +57,9 @@ static inline double ln_spread_at(const ln_tile *k, int t) {
 	double v = t % LN_BIN && t / LN_BIN + 1 < LN_BINS && b[1] > b[0] ? b[1] : b[0];
 	return v > 1 - LN_NEAR_WHITE && v < 1 + LN_NEAR_WHITE ? 1 : v;
 }
+
+// ln_run writes running totals of a stretch: what its first i positions add is at i, for i up
+// to the number returned. In steps times LN_WEIGHT, and squares of LN_WEIGHT.
+int ln_run(const ln_work *w, ln_stretch s, const int16_t *weights, int32_t *sums, int32_t *squares);
 
 #endif
