@@ -10,6 +10,30 @@ import (
 type border struct {
 	raster.Rows
 	width, height int
+	first         []int32 // of the rows' spans, and their end
+}
+
+func newBorder(region raster.Rows, width, height int) border {
+	b := border{region, width, height, make([]int32, height+1)}
+	for _, s := range region.Spans() {
+		b.first[s.Y+1]++
+	}
+	for y := range height {
+		b.first[y+1] += b.first[y]
+	}
+	return b
+}
+
+// has is At, at once for a row of one span.
+func (b *border) has(x, y int) bool {
+	if uint(y) >= uint(b.height) {
+		return false
+	}
+	if at := b.first[y]; b.first[y+1]-at == 1 {
+		s := &b.Spans()[at]
+		return x >= s.X0 && x < s.X1
+	}
+	return b.At(x, y)
 }
 
 // Along the border is a line of which this share lies within rim px of where the region
@@ -17,7 +41,7 @@ type border struct {
 const rimShare = 0.5
 
 // along reports whether a path runs along the border of the region and not into it.
-func (b border) along(path []raster.Point, rim float64) bool {
+func (b *border) along(path []raster.Point, rim float64) bool {
 	if rim <= 0 {
 		return false
 	}
@@ -42,10 +66,10 @@ func (b border) along(path []raster.Point, rim float64) bool {
 }
 
 // ends reports whether the region does not hold a place; beyond the frame is no end of it.
-func (b border) ends(x, y float64) bool {
+func (b *border) ends(x, y float64) bool {
 	ix, iy := int(math.Round(x)), int(math.Round(y))
 	if ix < 0 || iy < 0 || ix >= b.width || iy >= b.height {
 		return false
 	}
-	return !b.At(ix, iy)
+	return !b.has(ix, iy)
 }

@@ -69,7 +69,7 @@ func (f *Finder) Find(p *raster.Plane, region raster.Rows, bad *raster.Mask, s S
 	}
 	defer f.free.Put(w)
 	w.load(p, region.Spans(), bad, s.Half)
-	one := finder{work: w, weights: w.weights, s: s.inPixels(), plane: p, bad: bad, region: border{region, p.Width, p.Height}}
+	one := finder{work: w, weights: w.weights, s: s.inPixels(), plane: p, bad: bad, region: newBorder(region, p.Width, p.Height)}
 	return one.find()
 }
 

@@ -7,6 +7,10 @@
 // Products and sums are rounded one by one: gcc does so with -std=c11, clang is told.
 #ifdef __clang__
 #pragma STDC FP_CONTRACT OFF
+// ln_middle returns the mean of the middle half of n numbers, all but the lowest n / 4 and
+// the highest as many; 0 for none.
+double ln_middle(const float *v, int32_t n);
+
 #endif
 
 // Every function marked LN_KERNEL is compiled for several x86-64 levels and chosen when
@@ -16,6 +20,10 @@
 #define LN_CLONES __attribute__((target_clones("arch=x86-64-v4", "arch=x86-64-v3", "arch=x86-64-v2", "default")))
 #else
 #define LN_CLONES
+// ln_middle returns the mean of the middle half of n numbers, all but the lowest n / 4 and
+// the highest as many; 0 for none.
+double ln_middle(const float *v, int32_t n);
+
 #endif
 #define LN_INLINE static inline __attribute__((always_inline))
 #define LN_KERNEL LN_CLONES static __attribute__((noinline))
@@ -114,5 +122,9 @@ double ln_over(const double *scatter, double positions);
 
 // ln_erase_along makes the pixels within reach across a stretch not count.
 void ln_erase_along(ln_work *w, ln_stretch s, int32_t reach);
+
+// ln_middle returns the mean of the middle half of n numbers, all but the lowest n / 4 and
+// the highest as many; 0 for none.
+double ln_middle(const float *v, int32_t n);
 
 #endif

@@ -7,7 +7,9 @@ import (
 )
 
 // The profile across a line reaches to each side so far, px; further where the line is wide.
-var profileReaches = [...]float64{5, 12, 24}
+var profileReaches = [...]float64{5, 12, mostProfile}
+
+const mostProfile = 24
 
 // wideShare is the share of the reach that a line's width may be.
 const wideShare = 0.7
@@ -52,7 +54,7 @@ func (f *finder) measure(c course) (Line, bool) {
 	l.Flux = best.height * best.width * l.Length
 	a, b := l.Path[0], l.Path[len(l.Path)-1]
 	l.Angle = fold(math.Atan2(b.Y-a.Y, b.X-a.X) * 180 / math.Pi)
-	middle := along(f.rows(l.Path, float64(c.sign), 0, 1, nil))
+	middle := along(f.rows(l.Path, float64(c.sign), 0, nil))
 	l.Peak = strongest(middle)
 	return l, l.Width > 0 && l.Length >= leastRatio*l.Width && f.stays(middle, l.Width)
 }
@@ -63,15 +65,15 @@ func (f *finder) fitAcross(l *Line, sign, blur float64) (best fitted, ok bool) {
 	for i := 1; i < len(l.Path); i++ {
 		length += distance(l.Path[i-1], l.Path[i])
 	}
+	m := &f.work.sampled
 	for _, reach := range profileReaches {
-		rows := f.rows(l.Path, sign, reach, 1, nil)
-		if best, ok = fitShape(across(rows), reach, blur); !ok {
+		rows := f.rows(l.Path, sign, reach, nil)
+		if best, ok = fitShape(m.across(rows), reach, blur); !ok {
 			return best, false
 		}
-		bent := bendOf(rows, length, l.White, best.unrowed(blur).fullWidth())
+		bent := m.bend(rows, length, l.White, best.unrowed(blur).fullWidth())
 		if len(bent) > 0 {
-			rows = f.rows(l.Path, sign, reach, 1, bent)
-			best, ok = fitShape(across(rows), reach, blur)
+			best, ok = fitShape(m.across(f.rows(l.Path, sign, reach, bent)), reach, blur)
 		}
 		if best.fullWidth() < wideShare*reach || reach == profileReaches[len(profileReaches)-1] {
 			l.Path = bent.bent(l.Path)

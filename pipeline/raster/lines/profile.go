@@ -1,8 +1,14 @@
 package lines
 
+// #cgo noescape ln_middle
+// #cgo nocallback ln_middle
+// #include "lines.h"
+import "C"
+
 import (
 	"math"
 	"slices"
+	"unsafe"
 
 	"lapgate/pipeline/raster"
 )
@@ -15,139 +21,122 @@ const mostRows = 480
 // row is what lies across a line at one position of it.
 type row struct {
 	s float64   // px along the path
-	v []float64 // from −reach to reach by profileStep; NaN where a pixel does not count
+	v []float32 // from −reach to reach by profileStep; NaN where a pixel does not count
+}
+
+// sampled is memory of rows, of pixels and of a column; what it holds is overwritten by the
+// next rows.
+type sampled struct {
+	rows           []row
+	values, buffer []float32
+	column         []float32
 }
 
 // rows returns what lies across a path, pixels interpolated along the axis to which they
-// run across, at every stride-th position.
-func (f *finder) rows(path []raster.Point, sign, reach float64, stride int, shift bend) []row {
-	var out []row
+// run across, at every position. It is overwritten by the next call.
+func (f *finder) rows(path []raster.Point, sign, reach float64, shift bend) []row {
+	m := &f.work.sampled
+	m.rows, m.values = m.rows[:0], m.values[:0]
 	s := 0.
 	for i := 1; i < len(path); i++ {
 		if k, ok := between(path[i-1], path[i]); ok {
-			out = f.rowsOf(out, k, path[i-1], s, sign, reach, stride, shift)
+			f.rowsOf(m, k, path[i-1], s, sign, reach, shift)
 		}
 		s += distance(path[i-1], path[i])
 	}
-	return out
+	return m.rows
 }
 
-func (f *finder) rowsOf(out []row, k stretch, from raster.Point, s, sign, reach float64, stride int, shift bend) []row {
+// rowsOf adds those of a straight part of the path that begins at a point, s px along.
+func (f *finder) rowsOf(out *sampled, k stretch, from raster.Point, s, sign, reach float64, shift bend) {
 	slope := k.slope()
 	across := math.Hypot(1, slope) // px of the axis for each px across
-	n, first := 2*int(reach/profileStep)+1, len(out)
-	values := make([]float64, n*((k.b-k.a)/stride+1))
-	buffer := make([]float64, 0, int(2*reach*across)+4)
-	for m := k.a; m <= k.b; m += stride {
-		c := k.at(m)
-		r := row{s: s + distance(from, k.point(float64(m), c)), v: values[:n:n]}
+	n, first := 2*int(reach/profileStep)+1, len(out.rows)
+	values := out.grow(n * (k.b - k.a + 1))
+	at, ahead := s+distance(from, k.point(float64(k.a), k.ca)), across
+	if distance(from, k.point(float64(k.b), k.cb)) < at-s {
+		ahead = -across
+	}
+	for m := k.a; m <= k.b; m++ {
+		r := row{s: at + ahead*float64(m-k.a), v: values[:n:n]}
 		values = values[n:]
-		c += across * (shift.at(r.s) - reach)
+		c := k.ca + slope*float64(m-k.a) + across*(shift.at(r.s)-reach)
 		low := int(math.Floor(c))
-		buffer = f.pixels(buffer[:0], k.axis, m, low, int(math.Floor(c+2*across*reach))+1)
-		for b := range r.v {
-			at := c + across*float64(b)*profileStep - float64(low)
-			j := min(int(at), len(buffer)-2)
-			t := at - float64(j)
-			r.v[b] = sign * (buffer[j]*(1-t) + buffer[j+1]*t)
-		}
-		out = append(out, r)
+		f.pixels(out, k.axis, m, low, int(math.Floor(c+2*across*reach))+1)
+		interpolate(r.v, out.buffer, float32(c-float64(low)), float32(across*profileStep), float32(sign))
+		out.rows = append(out.rows, r)
 	}
-	if len(out) > first && out[first].s > out[len(out)-1].s {
-		slices.Reverse(out[first:])
+	if ahead < 0 {
+		slices.Reverse(out.rows[first:])
 	}
-	return out
 }
 
-// pixels appends those from low to high across an axis; NaN where one does not count.
-func (f *finder) pixels(v []float64, axis, m, low, high int) []float64 {
-	for j := low; j <= high; j++ {
-		x, y := j, m
+// grow returns room for n more values.
+func (m *sampled) grow(n int) []float32 {
+	used := len(m.values)
+	m.values = slices.Grow(m.values, n)[:used+n]
+	return m.values[used:]
+}
+
+// interpolate takes values between pixels, the first one at a place and the others by steps.
+func interpolate(out, pixels []float32, at, step, sign float32) {
+	for b := range out {
+		x := at + step*float32(b)
+		j := min(int(x), len(pixels)-2)
+		p := pixels[j : j+2]
+		out[b] = sign * (p[0] + (x-float32(j))*(p[1]-p[0]))
+	}
+}
+
+// pixels fills the buffer with those from low to high across an axis; NaN where one does not
+// count.
+func (f *finder) pixels(out *sampled, axis, m, low, high int) {
+	out.buffer = slices.Grow(out.buffer[:0], high-low+1)[:high-low+1]
+	for i := range out.buffer {
+		x, y := low+i, m
 		if axis == 1 {
-			x, y = m, j
+			x, y = m, low+i
 		}
-		one, ok := f.pixel(x, y)
-		if !ok {
-			one = math.NaN()
+		out.buffer[i] = float32(math.NaN())
+		if f.region.has(x, y) && (f.bad == nil || !f.bad.At(x, y)) {
+			if v := f.plane.At(x, y); v-v == 0 { // neither NaN nor infinite
+				out.buffer[i] = v
+			}
 		}
-		v = append(v, one)
 	}
-	return v
-}
-
-// pixel returns the plane's value where it counts.
-func (f *finder) pixel(x, y int) (float64, bool) {
-	if !f.region.At(x, y) || f.bad != nil && f.bad.At(x, y) {
-		return 0, false
-	}
-	v := float64(f.plane.At(x, y))
-	return v, !math.IsNaN(v) && !math.IsInf(v, 0)
 }
 
 // across returns the profile of rows: at each place the mean of the middle half of them, so
 // that digs on the line or beside it, over up to a quarter of its length, do not count.
-func across(rows []row) []float64 {
+func (m *sampled) across(rows []row) []float64 {
 	if len(rows) == 0 {
 		return nil
 	}
 	step := (len(rows) + mostRows - 1) / mostRows
-	out, column := make([]float64, len(rows[0].v)), make([]float64, 0, len(rows))
+	out := make([]float64, len(rows[0].v))
 	for b := range out {
-		column = column[:0]
+		column := m.column[:0]
 		for i := 0; i < len(rows); i += step {
-			if v := rows[i].v[b]; !math.IsNaN(v) {
+			if v := rows[i].v[b]; v == v {
 				column = append(column, v)
 			}
 		}
 		out[b] = middleMean(column)
+		m.column = column
 	}
 	return out
 }
 
-// middleMean reorders v and returns the mean of its middle half; 0 for none.
-func middleMean(v []float64) float64 {
-	n := len(v)
-	if n == 0 {
-		return 0
-	}
-	low, high := n/4, n-n/4
-	split(v, low)
-	split(v[low:], high-low)
-	return mean(v[low:high])
-}
-
-// split reorders v so that its first k values are the lowest (Hoare's selection).
-func split(v []float64, k int) {
-	for low, high := 0, len(v)-1; low < high && k > low && k <= high; {
-		pivot, i, j := v[(low+high)/2], low, high
-		for i <= j {
-			for v[i] < pivot {
-				i++
-			}
-			for v[j] > pivot {
-				j--
-			}
-			if i <= j {
-				v[i], v[j] = v[j], v[i]
-				i, j = i+1, j-1
-			}
-		}
-		switch {
-		case k <= j:
-			high = j
-		case k > i:
-			low = i
-		default:
-			return
-		}
-	}
+// middleMean returns the mean of the middle half of v; 0 for none.
+func middleMean(v []float32) float64 {
+	return float64(C.ln_middle((*C.float)(unsafe.SliceData(v)), C.int32_t(len(v))))
 }
 
 // along returns the middle value of each row.
 func along(rows []row) []float64 {
 	out := make([]float64, 0, len(rows))
 	for _, r := range rows {
-		if v := r.v[len(r.v)/2]; !math.IsNaN(v) {
+		if v := float64(r.v[len(r.v)/2]); !math.IsNaN(v) {
 			out = append(out, v)
 		}
 	}

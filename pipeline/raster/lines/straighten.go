@@ -38,9 +38,9 @@ const (
 	leastBend    = 0.3 // px somewhere; below it the path is left as it is
 )
 
-// bendOf finds the course of a line of some width in windows along it. A line with less
+// bend finds the course of a line of some width in windows along it. A line with less
 // evidence than two windows need has none.
-func bendOf(rows []row, length, sigmas, width float64) bend {
+func (m *sampled) bend(rows []row, length, sigmas, width float64) bend {
 	n := int(min(math.Pow(sigmas/windowSigmas, 2), length/leastWindow))
 	if n < 2 {
 		return nil
@@ -51,7 +51,7 @@ func bendOf(rows []row, length, sigmas, width float64) bend {
 		if len(part) < 4 {
 			continue
 		}
-		out = append(out, beside{(part[0].s + part[len(part)-1].s) / 2, summit(across(part), width)})
+		out = append(out, beside{(part[0].s + part[len(part)-1].s) / 2, summit(m.across(part), width)})
 	}
 	out = out.calm()
 	if !slices.ContainsFunc(out, func(p beside) bool { return math.Abs(p.off) >= leastBend }) {

@@ -30,7 +30,7 @@ func rowBlur(path []raster.Point) float64 {
 // value is the shape at an offset, 1 where a wide band is whole.
 func (s shape) value(o float64) float64 {
 	k := 1 / (math.Sqrt2 * s.blur)
-	return 0.5 * (math.Erf((o-s.at+s.width/2)*k) - math.Erf((o-s.at-s.width/2)*k))
+	return 0.5 * (erf((o-s.at+s.width/2)*k) - erf((o-s.at-s.width/2)*k))
 }
 
 // unrowed is the shape without a variance that taking rows added.
@@ -53,6 +53,9 @@ func (s shape) fullWidth() float64 {
 	return 2 * low
 }
 
+// mostPlaces is how many places a profile has at most.
+const mostPlaces = 2*mostProfile/profileStep + 1
+
 // fitted is a shape of some height on a level.
 type fitted struct {
 	shape
@@ -62,9 +65,13 @@ type fitted struct {
 // fit sets height and level to fit v from bin first on, by least squares.
 func (s shape) fit(v []float64, first int, reach float64) fitted {
 	n, sg, sgg, sv, svg := 0., 0., 0., 0., 0.
-	g := make([]float64, len(v))
+	var room [mostPlaces]float64
+	g := room[:len(v)]
+	k := 1 / (math.Sqrt2 * s.blur)
+	from, wide, step := (float64(first)*profileStep-reach-s.at)*k, s.width/2*k, profileStep*k
 	for i := range v {
-		g[i] = s.value(float64(first+i)*profileStep - reach)
+		at := from + float64(i)*step
+		g[i] = 0.5 * (erf(at+wide) - erf(at-wide))
 		n, sg, sgg, sv, svg = n+1, sg+g[i], sgg+g[i]*g[i], sv+v[i], svg+v[i]*g[i]
 	}
 	out := fitted{shape: s, misfit: math.Inf(1)}

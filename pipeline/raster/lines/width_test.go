@@ -66,3 +66,12 @@ func TestWidthOfBlurredScratches(t *testing.T) {
 		}
 	}
 }
+
+// Against math.Erf.
+func TestErf(t *testing.T) {
+	for x := -6.; x < 6; x += 0.0007 {
+		if d := math.Abs(erf(x) - math.Erf(x)); d > 3e-9 {
+			t.Fatalf("erf(%g) is %g off", x, d)
+		}
+	}
+}

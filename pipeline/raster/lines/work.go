@@ -21,6 +21,7 @@ type work struct {
 	width, height int
 	thickness     float64 // of the lines looked for, px of this picture
 	weights       *weights
+	sampled       sampled
 }
 
 func newWork(width, height int, thickness float64) (*work, error) {
@@ -28,7 +29,7 @@ func newWork(width, height int, thickness float64) (*work, error) {
 	if c == nil {
 		return nil, errMemory
 	}
-	w := &work{c, width, height, thickness, newWeights(thickness)}
+	w := &work{c: c, width: width, height: height, thickness: thickness, weights: newWeights(thickness)}
 	runtime.AddCleanup(w, func(c *C.ln_work) { C.ln_work_free(c) }, c)
 	return w, nil
 }
