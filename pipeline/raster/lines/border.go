@@ -36,6 +36,21 @@ func (b *border) has(x, y int) bool {
 	return b.At(x, y)
 }
 
+// holds reports whether all of a rectangle is in rows of one span each; bounds are included.
+func (b *border) holds(x0, y0, x1, y1 int) bool {
+	if y0 < 0 || y1 >= b.height {
+		return false
+	}
+	spans := b.Spans()
+	for y := y0; y <= y1; y++ {
+		at := b.first[y]
+		if b.first[y+1]-at != 1 || x0 < spans[at].X0 || x1 >= spans[at].X1 {
+			return false
+		}
+	}
+	return true
+}
+
 // Along the border is a line of which this share lies within rim px of where the region
 // ends on one side, or all of whose deeper part is shorter.
 const rimShare = 0.5

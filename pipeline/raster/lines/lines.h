@@ -11,6 +11,9 @@
 // the highest as many; 0 for none.
 double ln_middle(const float *v, int32_t n);
 
+// ln_median returns the upper of the middle two of n numbers, n above 0.
+float ln_median(const float *v, int32_t n);
+
 #endif
 
 // Every function marked LN_KERNEL is compiled for several x86-64 levels and chosen when
@@ -23,6 +26,9 @@ double ln_middle(const float *v, int32_t n);
 // ln_middle returns the mean of the middle half of n numbers, all but the lowest n / 4 and
 // the highest as many; 0 for none.
 double ln_middle(const float *v, int32_t n);
+
+// ln_median returns the upper of the middle two of n numbers, n above 0.
+float ln_median(const float *v, int32_t n);
 
 #endif
 #define LN_INLINE static inline __attribute__((always_inline))
@@ -126,5 +132,8 @@ void ln_erase_along(ln_work *w, ln_stretch s, int32_t reach);
 // ln_middle returns the mean of the middle half of n numbers, all but the lowest n / 4 and
 // the highest as many; 0 for none.
 double ln_middle(const float *v, int32_t n);
+
+// ln_median returns the upper of the middle two of n numbers, n above 0.
+float ln_median(const float *v, int32_t n);
 
 #endif

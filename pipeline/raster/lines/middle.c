@@ -1,4 +1,4 @@
-// The mean of the middle half of some values.
+// The middle of some values, and the mean of their middle half.
 #include "lines.h"
 
 enum { LANES = 16, LAST_BISECTION = 40 };
@@ -67,16 +67,38 @@ static float split(const float *v, int32_t n, int32_t k, float low, float high, 
 #define FAR 1.74
 #define NEAR 0.59
 
+typedef struct {
+	double mean, sigma;
+} moments;
+
+static moments moments_of(const float *v, int32_t n) {
+	double squares;
+	const double mean = between(v, n, -__FLT_MAX__, __FLT_MAX__, &squares) / n, variance = squares / n - mean * mean;
+	return (moments){mean, __builtin_sqrt(variance > 0 ? variance : 0) + 1e-6 * __builtin_fabs(mean) + 1e-12};
+}
+
 double ln_middle(const float *v, int32_t n) {
 	if (n < 1)
 		return 0;
-	double squares;
-	const double mean = between(v, n, -__FLT_MAX__, __FLT_MAX__, &squares) / n, variance = squares / n - mean * mean;
-	const double sigma = __builtin_sqrt(variance > 0 ? variance : 0) + 1e-6 * __builtin_fabs(mean) + 1e-12;
+	const moments m = moments_of(v, n);
 	const int32_t first = n / 4, end = n - n / 4;
 	int32_t under, within;
-	const float low = split(v, n, first, (float)(mean - FAR * sigma), (float)(mean + NEAR * sigma), &under);
-	const float high = split(v, n, end, (float)(mean - NEAR * sigma), (float)(mean + FAR * sigma), &within);
+	double squares;
+	const float low = split(v, n, first, (float)(m.mean - FAR * m.sigma), (float)(m.mean + NEAR * m.sigma), &under);
+	const float high = split(v, n, end, (float)(m.mean - NEAR * m.sigma), (float)(m.mean + FAR * m.sigma), &within);
 	const double sum = between(v, n, low, high, &squares);
 	return (sum - (first - under) * (double)low + (end - within) * (double)high) / (end - first);
+}
+
+LN_KERNEL float lowest_from(const float *restrict v, int32_t n, float limit) {
+	float low = __FLT_MAX__;
+	for (int32_t i = 0; i < n; i++)
+		low = v[i] >= limit && v[i] < low ? v[i] : low;
+	return low;
+}
+
+float ln_median(const float *v, int32_t n) {
+	const moments m = moments_of(v, n);
+	int32_t below;
+	return lowest_from(v, n, split(v, n, n / 2, (float)(m.mean - 1.01 * m.sigma), (float)(m.mean + 1.01 * m.sigma), &below));
 }

@@ -27,5 +27,8 @@ func TestMiddleMean(t *testing.T) {
 		if got := middleMean(v); math.Abs(got-want) > 1e-6*max(math.Abs(s[0]), s[len(s)-1], 1) {
 			t.Fatalf("%v: got %g, want %g", v, got, want)
 		}
+		if got, want := median(v), s[len(s)/2]; float64(got) != want {
+			t.Fatalf("%v: got %g, want %g", v, got, want)
+		}
 	}
 }

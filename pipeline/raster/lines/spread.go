@@ -86,11 +86,9 @@ func (a *axisSpread) settle() {
 }
 
 func calm(up, down []float32) {
-	var all []float64
-	for i := range up {
-		all = append(all, float64(up[i]), float64(down[i]))
-	}
-	common := middle(all)
+	var all [2 * bins]float32
+	copy(all[copy(all[:], up):], down)
+	common := float64(median(all[:]))
 	if math.Abs(common-1) < 0.02 {
 		common = 1
 	}

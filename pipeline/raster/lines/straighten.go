@@ -30,6 +30,15 @@ func (b bend) at(s float64) float64 {
 	return b[len(b)-1].off
 }
 
+// most is the largest distance from the path.
+func (b bend) most() float64 {
+	most := 0.
+	for _, p := range b {
+		most = max(most, math.Abs(p.off))
+	}
+	return most
+}
+
 const (
 	windowSigmas = 8.  // that a window of a line has, so that its place is known to a fraction of a pixel
 	leastWindow  = 10. // px along
