@@ -96,6 +96,10 @@ PG_KERNEL void sample_means(const pg_frame *f, T *restrict dst, T **rows, float 
 	}
 }
 
+// has_grain is whether the first look measures the grain of a grid row's cells, or takes
+// that of the row above: it only says how many candidates there will be.
+PG_INLINE int has_grain(int row) { return row % 2 == 0; }
+
 static int sample(const pg_frame *f, pg_grid *g, pg_band *b, T *blocks, int row0, int row1) {
 	state s;
 	T *rows[4 * PG_SAMPLES];
@@ -114,7 +118,7 @@ static int sample(const pg_frame *f, pg_grid *g, pg_band *b, T *blocks, int row0
 				if (e)
 					return e;
 			}
-			if (f->use_grain)
+			if (f->use_grain && has_grain(row))
 				sample_means(f, means + (int64_t)k * (f->width / GROUP), rows + 4 * k, b->sums, s.signal, x0, x1);
 		}
 		int e = sample_cells(&s, g, rows, n, row, x0, x1, 4. * n / (bottom - row * f->cell));
@@ -145,6 +149,10 @@ static void sample_grain(const pg_frame *f, pg_grid *g, const T *blocks, T *scra
 	int y[PG_SAMPLES], n = pg_sample_rows(f, row, y), columns = f->width / GROUP;
 	const T *means = blocks + (int64_t)row * pg_sample_blocks(f) / (int64_t)sizeof(T);
 	double guess = 0;
+	if (!has_grain(row)) {
+		memcpy(g->block + (int64_t)row * g->columns, g->block + (int64_t)(row - 1) * g->columns, sizeof(double) * (size_t)g->columns);
+		return;
+	}
 	for (int k = 0; k < n; k++)
 		less_level(f, g, scratch + (int64_t)k * columns, means + (int64_t)k * columns, y[k]);
 	for (int i = 0; i < g->columns; i++) {
