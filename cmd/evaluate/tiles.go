@@ -29,17 +29,23 @@ const (
 	anyKind              // all
 )
 
-// tile is one picture on its way.
+// tile is what came of one picture.
 type tile struct {
 	picture
-	result pipeline.ViewResult
-	pixels footprints
-	mask   *raster.Mask  // of the defect; nil = clean
-	top    [2]float64    // largest peak_sigma, by kinds; 0 = no defect
-	score  [2]pixelScore // of the defects above the limit, by kinds
-	// rejected is the verdict, by kinds: that of the recipe, and what one limit on all defects
-	// would say.
-	rejected [2]bool
+	found []found
+	truth int           // pixels of the defect; 0 = clean
+	inRim bool          // most of the defect lies where the recipe does not look
+	holds []string      // reasons for which it could not be accepted, whatever its limits say
+	top   [2]float64    // largest peak_sigma, by kinds; 0 = no defect
+	score [2]pixelScore // of the defects above the limit, by kinds
+	// verdict is that of the recipe, and what one limit on all defects would say.
+	verdict [2]pipeline.Verdict
+}
+
+// found is one defect that was found.
+type found struct {
+	peakSigma, lengthPx float64
+	marked, both        int // its pixels, and those of them that lie on the truth
 }
 
 // tileSet inspects tiles with one recipe.
@@ -84,36 +90,99 @@ func (t *tileSet) tile(p picture) (tile, error) {
 	if err != nil {
 		return out, err
 	}
-	if out.result, err = runPicture(t.line, t.recipe, tilesView, p.file, raw); err != nil {
+	res, err := runPicture(t.line, t.recipe, tilesView, p.file, raw)
+	if err != nil {
 		return out, err
 	}
-	if out.pixels, err = footprintsOf(out.result.Item, t.blobs); err != nil {
+	pixels, err := footprintsOf(res.Item, t.blobs)
+	if err != nil {
 		return out, err
 	}
-	out.result.Item.Planes = nil
-	e, j := t.line.Finish(context.Background(), out.result.Item.Identity, []pipeline.ViewResult{out.result}, nil, time.Unix(0, 0))
-	for _, d := range e.Defects {
-		out.top[anyKind] = max(out.top[anyKind], d.PeakSigma)
-		if d.Kind == pipeline.Dig {
-			out.top[digs] = max(out.top[digs], d.PeakSigma)
-		}
-	}
+	var mask *raster.Mask // nil = clean
 	if p.class != "Free" {
-		if out.mask, err = t.truth(p, raw); err != nil {
+		if mask, err = t.truth(p, raw); err != nil {
 			return out, err
 		}
+		out.truth, out.inRim = mask.Count(), 2*onMask(mask, res.Item.Region.Inside().Spans()) < mask.Count()
 	}
-	marks := marksOf(j)
-	out.rejected[digs] = j.Verdict == pipeline.Reject
-	out.score[digs] = out.pixelScore(func(d pipeline.Defect) bool { return marks[d.ID] })
+	res.Item.Planes = nil
+	e, j := t.line.Finish(context.Background(), res.Item.Identity, []pipeline.ViewResult{res}, nil, time.Unix(0, 0))
+	out.judge(e, j, pixels, mask)
 	return out, nil
+}
+
+// judge takes over what was found and the verdict of the recipe.
+func (t *tile) judge(e pipeline.Evidence, j pipeline.Judgement, pixels footprints, mask *raster.Mask) {
+	marks := marksOf(j)
+	t.verdict[digs], t.holds = j.Verdict, holdsOf(j)
+	t.score[digs].truth = t.truth
+	for _, d := range e.Defects {
+		f := found{peakSigma: d.PeakSigma, lengthPx: d.LengthPx, both: onMask(mask, pixels[d.ID])}
+		for _, s := range pixels[d.ID] {
+			f.marked += s.Len()
+		}
+		t.found = append(t.found, f)
+		t.top[anyKind] = max(t.top[anyKind], d.PeakSigma)
+		if d.Kind == pipeline.Dig {
+			t.top[digs] = max(t.top[digs], d.PeakSigma)
+		}
+		if marks[d.ID] {
+			t.score[digs] = t.score[digs].with(f)
+		}
+	}
+}
+
+// onMask counts the pixels of spans that are in the mask; nil = none is.
+func onMask(mask *raster.Mask, spans []raster.Span) int {
+	n := 0
+	for _, s := range spans {
+		for x := s.X0; x < s.X1 && mask != nil; x++ {
+			if mask.At(x, s.Y) {
+				n++
+			}
+		}
+	}
+	return n
+}
+
+// holdsOf returns the names of a judgement's reasons to hold that are no limits: with one of
+// them a unit is never accepted. A limit that is provably broken still rejects it.
+func holdsOf(j pipeline.Judgement) []string {
+	var out []string
+	for _, r := range j.Reasons {
+		if r.Verdict == pipeline.Hold && r.Rule == "" {
+			out = append(out, r.Name)
+		}
+	}
+	return out
+}
+
+// judgeBy gives a tile the marks and the verdict of one limit on the defects that count.
+func (t *tile) judgeBy(k kinds, limit float64, counts func(found) bool) {
+	t.top[k], t.score[k] = 0, pixelScore{truth: t.truth}
+	for _, f := range t.found {
+		if !counts(f) {
+			continue
+		}
+		t.top[k] = max(t.top[k], f.peakSigma)
+		if f.peakSigma > limit {
+			t.score[k] = t.score[k].with(f)
+		}
+	}
+	switch {
+	case t.top[k] > limit: // as the product has it: what was found was found
+		t.verdict[k] = pipeline.Reject
+	case len(t.holds) > 0:
+		t.verdict[k] = pipeline.Hold
+	default:
+		t.verdict[k] = pipeline.Accept
+	}
 }
 
 // judgeAny gives tiles the verdict and the marks of one limit on all defects.
 func judgeAny(tiles []tile, limit float64) {
-	for i, t := range tiles {
-		tiles[i].rejected[anyKind] = t.top[anyKind] > limit
-		tiles[i].score[anyKind] = t.pixelScore(func(d pipeline.Defect) bool { return d.PeakSigma > limit })
+	for i := range tiles {
+		tiles[i].judgeBy(anyKind, limit, func(found) bool { return true })
 	}
 }
 

@@ -12,28 +12,43 @@ import (
 
 // tileChoice is one set of settings with what it reaches on the choose side.
 type tileChoice struct {
+	tileSettings
+	area    float64 // AUROC, Blowhole against Free
+	limit   float64 // sigma
+	pixelF1 float64
+}
+
+// tileSettings are what is tried.
+type tileSettings struct {
 	rimPx, gridPx int
-	mostLengthPx  float64 // and the former are longer; 0 = any
-	area          float64 // AUROC, Blowhole against Free
-	kLow, limit   float64
-	pixelF1       float64
+	mostLengthPx  float64 // of a blowhole; 0 = any
+	kLow          float64
 }
 
 // chooseK is k_low and k_high while rim, grid and shape are chosen.
 const chooseK = 3.5
 
-// chooseTiles finds rim, grid and shape by the highest AUROC on the choose side, then
-// k_low by the highest pixel F1 over its Blowhole and Free pictures, each with the limit
-// that rejects at most tilesFalseAlarms of the Free ones; of a tie the first tried.
+// inspector inspects one set of pictures with one rim, grid and k_low.
+type inspector func(rimPx, gridPx int, kLow float64) ([]tile, error)
+
+// chooseTiles prints the tables from which the recipe is chosen.
 func chooseTiles(o options, out io.Writer) error {
+	_, err := choiceOf(func(rim, grid int, low float64) ([]tile, error) { return chooseSide(o, rim, grid, low) }, out)
+	return err
+}
+
+// choiceOf is the rule of the choice, on the Blowhole and Free pictures of a set: rim, grid
+// and shape by the highest AUROC, then k_low by the highest pixel F1, each with the limit
+// that rejects at most tilesFalseAlarms of the Free ones; of a tie the first tried.
+func choiceOf(of inspector, out io.Writer) (tileChoice, error) {
 	var tried []tileChoice
 	for _, rim := range []int{3, 5, 7} {
 		for _, grid := range []int{28, 40, 56} {
-			tiles, err := chooseSide(o, rim, grid, chooseK)
+			tiles, err := of(rim, grid, chooseK)
 			if err != nil {
-				return err
+				return tileChoice{}, err
 			}
-			tried = append(tried, sweepShapes(tiles, tileChoice{rimPx: rim, gridPx: grid})...)
+			tried = append(tried, sweepShapes(tiles, tileChoice{tileSettings: tileSettings{rimPx: rim, gridPx: grid}})...)
 		}
 	}
 	slices.SortStableFunc(tried, func(a, b tileChoice) int { return cmp.Compare(b.area, a.area) })
@@ -41,33 +56,43 @@ func chooseTiles(o options, out io.Writer) error {
 	for _, c := range tried[:20] {
 		fmt.Fprintf(out, "%6d %7d %11g %.3f\n", c.rimPx, c.gridPx, c.mostLengthPx, c.area)
 	}
-	best := tried[0]
-	tried = nil
-	for _, best.kLow = range []float64{2.5, 3, 3.5, 4, 5} {
-		tiles, err := chooseSide(o, best.rimPx, best.gridPx, best.kLow)
+	return tried[0].lowest(of, out)
+}
+
+// lowest chooses k_low and the limit for a rim, grid and shape.
+func (c tileChoice) lowest(of inspector, out io.Writer) (tileChoice, error) {
+	var tried []tileChoice
+	for _, c.kLow = range []float64{2.5, 3, 3.5, 4, 5} {
+		tiles, err := of(c.rimPx, c.gridPx, c.kLow)
 		if err != nil {
-			return err
+			return c, err
 		}
-		tried = append(tried, best.withLimit(tiles))
+		tried = append(tried, c.withLimit(tiles))
 	}
 	slices.SortStableFunc(tried, func(a, b tileChoice) int { return cmp.Compare(b.pixelF1, a.pixelF1) })
 	fmt.Fprintln(out, "k_low limit AUROC pixel F1")
 	for _, c := range tried {
 		fmt.Fprintf(out, "%5g %5.1f %.3f %.3f\n", c.kLow, c.limit, c.area, c.pixelF1)
 	}
-	return nil
+	return tried[0], nil
 }
 
+// chooseSide inspects the choose side's Blowhole and Free pictures.
 func chooseSide(o options, rim, grid int, low float64) ([]tile, error) {
-	t, choose, _, err := newTileSet(o, func(r *pipeline.Recipe) {
-		setAll(r, grid, low, low)
-		setRim(r, rim)
-	})
+	t, choose, _, err := newTileSet(o, withSettings(rim, grid, low))
 	if err != nil {
 		return nil, err
 	}
 	defer t.line.Close()
 	return t.inspect(append(ofPictures(choose, "Blowhole"), ofPictures(choose, "Free")...))
+}
+
+// withSettings sets rim, grid and thresholds in a recipe.
+func withSettings(rim, grid int, low float64) func(*pipeline.Recipe) {
+	return func(r *pipeline.Recipe) {
+		setAll(r, grid, low, low)
+		setRim(r, rim)
+	}
 }
 
 func ofPictures(list []picture, class string) []picture {
@@ -81,8 +106,8 @@ func ofPictures(list []picture, class string) []picture {
 }
 
 // shaped reports whether a defect may be a blowhole.
-func (c tileChoice) shaped(d pipeline.Defect) bool {
-	return c.mostLengthPx == 0 || d.LengthPx <= c.mostLengthPx
+func (c tileChoice) shaped(f found) bool {
+	return c.mostLengthPx == 0 || f.lengthPx <= c.mostLengthPx
 }
 
 // strengths returns the largest peak_sigma of what may be a blowhole, by class.
@@ -90,9 +115,9 @@ func (c tileChoice) strengths(tiles []tile) map[string][]float64 {
 	top := map[string][]float64{}
 	for _, t := range tiles {
 		best := 0.0
-		for _, d := range t.result.Item.Defects {
-			if c.shaped(d) {
-				best = max(best, d.PeakSigma)
+		for _, f := range t.found {
+			if c.shaped(f) {
+				best = max(best, f.peakSigma)
 			}
 		}
 		top[t.class] = append(top[t.class], best)
@@ -117,7 +142,8 @@ func (c tileChoice) withLimit(tiles []tile) tileChoice {
 	c.limit = limitFor(top["Free"], tilesFalseAlarms)
 	var sum pixelScore
 	for _, t := range tiles {
-		sum = sum.plus(t.pixelScore(func(d pipeline.Defect) bool { return c.shaped(d) && d.PeakSigma > c.limit }))
+		t.judgeBy(digs, c.limit, c.shaped)
+		sum = sum.plus(t.score[digs])
 	}
 	c.pixelF1 = sum.f1()
 	return c

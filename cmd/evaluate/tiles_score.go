@@ -5,7 +5,6 @@ import (
 	"io"
 	"slices"
 
-	"lapgate/pipeline"
 	"lapgate/server/yield"
 )
 
@@ -30,45 +29,64 @@ func evaluateTiles(o options, progress io.Writer) (*result, error) {
 	judgeAny(chosen, limit)
 	judgeAny(scored, limit)
 	r := &result{}
-	clean, holes := ofClass(scored, "Free"), ofClass(scored, "Blowhole")
-	upper := r.class("Blowhole by digs", holes, clean, "scored tiles", digs)
-	inside := slices.DeleteFunc(slices.Clone(holes), tile.inRim)
-	r.plain("scored Blowhole pictures with most of the defect in the rim", float64(len(holes)-len(inside)), len(inside), "other pictures; the former count as missed above")
-	r.class("Blowhole by digs", inside, clean, "scored, not in the rim", digs)
-	r.alarms("by digs, scored tiles", clean, digs)
-	r.alarms("by digs, tiles of the choice", ofClass(chosen, "Free"), digs)
-	if err := r.exposureVerdicts("Blowhole by digs, scored tiles", holes, digs); err != nil {
+	upper, err := r.blowholes(scored, "scored tiles")
+	if err != nil {
 		return nil, err
 	}
-	if err := r.exposureVerdicts("Blowhole by digs, tiles of the choice", ofClass(chosen, "Blowhole"), digs); err != nil {
+	if _, err := r.blowholes(chosen, "tiles of the choice"); err != nil {
 		return nil, err
 	}
-	r.class("Blowhole by any defect", holes, clean, "scored tiles", anyKind)
-	r.class("Blowhole by digs", ofClass(chosen, "Blowhole"), ofClass(chosen, "Free"), "tiles of the choice", digs)
 	r.plain("limit on any defect", limit, len(ofClass(chosen, "Free")), "sigma; rejects at most 5 % of the clean pictures of the choice")
-	r.alarms("by any defect, scored tiles", clean, anyKind)
+	if err := r.anyDefect(scored, chosen); err != nil {
+		return nil, err
+	}
+	r.atLeast("AUROC, Blowhole by digs, upper end", upper, 0.95)
+	return r, r.crossTiles(o, progress)
+}
+
+// blowholes adds how the recipe, which looks for digs, fares on Blowhole and Free pictures:
+// all of them, and those with nothing to hold. It returns the upper end of the first AUROC's
+// interval.
+func (r *result) blowholes(tiles []tile, which string) (float64, error) {
+	const name = "Blowhole by digs"
+	clean, holes := ofClass(tiles, "Free"), ofClass(tiles, "Blowhole")
+	upper := r.class(name, holes, clean, which, digs)
+	if err := r.held("Blowhole, "+which, holes); err != nil {
+		return 0, err
+	}
+	if err := r.held("Free, "+which, clean); err != nil {
+		return 0, err
+	}
+	r.class(name, judgeable(holes), judgeable(clean), which+", nothing to hold", digs)
+	outside := slices.DeleteFunc(slices.Clone(holes), func(t tile) bool { return t.inRim })
+	if rim := len(holes) - len(outside); rim > 0 {
+		r.plain("Blowhole pictures with most of the defect in the rim, "+which, float64(rim), len(holes),
+			fmt.Sprintf("pictures; the recipe does not look there, and nothing holds %d of them; missed above", len(judgeable(holes))-len(judgeable(outside))))
+		r.class(name, outside, clean, which+", not in the rim", digs)
+		r.class(name, judgeable(outside), judgeable(clean), which+", not in the rim, nothing to hold", digs)
+	}
+	r.verdictShares("by digs, "+which, clean, digs)
+	r.verdictShares("by digs, "+which+", nothing to hold", judgeable(clean), digs)
+	return upper, r.exposureVerdicts(name+", "+which, holes, clean, digs)
+}
+
+// anyDefect adds what one limit on all defects reaches, class by class.
+func (r *result) anyDefect(scored, chosen []tile) error {
+	clean := ofClass(scored, "Free")
+	r.class("Blowhole by any defect", ofClass(scored, "Blowhole"), clean, "scored tiles", anyKind)
+	r.verdictShares("by any defect, scored tiles", clean, anyKind)
 	for _, other := range []string{"Crack", "Break", "Fray"} {
 		all := append(ofClass(scored, other), ofClass(chosen, other)...)
 		r.class(other+" by any defect", all, clean, "all, scored Free", anyKind)
-		if err := r.exposureVerdicts(other+" by any defect, all", all, anyKind); err != nil {
-			return nil, err
+		if err := r.held(other+", all", all); err != nil {
+			return err
+		}
+		r.class(other+" by any defect", judgeable(all), judgeable(clean), "all, scored Free, nothing to hold", anyKind)
+		if err := r.exposureVerdicts(other+" by any defect, all", all, nil, anyKind); err != nil {
+			return err
 		}
 	}
-	r.atLeast("AUROC, Blowhole by digs, upper end", upper, 0.95)
-	return r, nil
-}
-
-// inRim reports whether most of a tile's defect lies outside the region.
-func (t tile) inRim() bool {
-	region, inside := t.result.Item.Region.Inside(), 0
-	for _, s := range t.mask.Spans() {
-		for x := s.X0; x < s.X1; x++ {
-			if region.At(x, s.Y) {
-				inside++
-			}
-		}
-	}
-	return 2*inside < t.mask.Count()
+	return nil
 }
 
 func ofClass(tiles []tile, class string) []tile {
@@ -85,6 +103,10 @@ func ofClass(tiles []tile, class string) []tile {
 // draw groups within the class and within the clean tiles. It returns the upper end of
 // the AUROC's interval.
 func (r *result) class(name string, bad, clean []tile, which string, k kinds) float64 {
+	if len(bad) == 0 || len(clean) == 0 {
+		r.plain("no AUROC "+name+", "+which, 0, len(bad)+len(clean), fmt.Sprintf("pictures, %d of them defective: nothing to compare", len(bad)))
+		return 0
+	}
 	badGroups, cleanGroups := byGroup(bad), byGroup(clean)
 	both := func(of func(b, c []tile) float64) yield.Interval {
 		return bootstrapBoth(len(badGroups), len(cleanGroups), func(i, j []int) float64 { return of(drawn(badGroups, i), drawn(cleanGroups, j)) })
@@ -158,32 +180,15 @@ func (p pixelScore) plus(q pixelScore) pixelScore {
 	return pixelScore{p.both + q.both, p.marked + q.marked, p.truth + q.truth}
 }
 
+// with adds a mark.
+func (p pixelScore) with(f found) pixelScore {
+	return p.plus(pixelScore{both: f.both, marked: f.marked})
+}
+
 func pixelsOf(tiles []tile, k kinds) pixelScore {
 	var sum pixelScore
 	for _, t := range tiles {
 		sum = sum.plus(t.score[k])
 	}
 	return sum
-}
-
-// pixelScore counts the pixels of the defects that are marks.
-func (t tile) pixelScore(mark func(pipeline.Defect) bool) pixelScore {
-	var p pixelScore
-	if t.mask != nil {
-		p.truth = t.mask.Count()
-	}
-	for _, d := range t.result.Item.Defects {
-		if !mark(d) {
-			continue
-		}
-		for _, s := range t.pixels[d.ID] {
-			p.marked += s.Len()
-			for x := s.X0; x < s.X1 && t.mask != nil; x++ {
-				if t.mask.At(x, s.Y) {
-					p.both++
-				}
-			}
-		}
-	}
-	return p
 }

@@ -5,7 +5,7 @@ import (
 	"fmt"
 	"slices"
 
-	"lapgate/server/yield"
+	"lapgate/pipeline"
 )
 
 // limitFor is the smallest limit, to one decimal, that rejects at most the share of clean
@@ -20,6 +20,14 @@ func limitFor(clean []float64, share float64) float64 {
 	return limit
 }
 
+// exposureOf reads the numbers of the exposure and of the picture out of a file's name.
+func exposureOf(file string) (exposure, number int, err error) {
+	if _, err = fmt.Sscanf(file, "exp%d_num_%d", &exposure, &number); err != nil {
+		err = fmt.Errorf("%s: want a name like exp1_num_4727.jpg: %w", file, err)
+	}
+	return exposure, number, err
+}
+
 // exposures sorts the pictures of each group by their numbers and parts them into tiles: the
 // exposure number, which rises from picture to picture of one tile, starts anew with the next.
 func exposures(tiles []tile) ([][]tile, error) {
@@ -29,13 +37,13 @@ func exposures(tiles []tile) ([][]tile, error) {
 			tile
 			exposure, number int
 		}
-		var shots []shot
-		for _, t := range group {
-			s := shot{tile: t}
-			if _, err := fmt.Sscanf(t.file, "exp%d_num_%d", &s.exposure, &s.number); err != nil {
-				return nil, fmt.Errorf("%s: want a name like exp1_num_4727.jpg: %w", t.file, err)
+		shots := make([]shot, len(group))
+		for i, t := range group {
+			var err error
+			shots[i].tile = t
+			if shots[i].exposure, shots[i].number, err = exposureOf(t.file); err != nil {
+				return nil, err
 			}
-			shots = append(shots, s)
 		}
 		slices.SortFunc(shots, func(a, b shot) int { return cmp.Compare(a.number, b.number) })
 		for i, s := range shots {
@@ -48,54 +56,64 @@ func exposures(tiles []tile) ([][]tile, error) {
 	return out, nil
 }
 
-// verdicts adds on how many of the defective tiles with several exposures every one of them
-// has the same verdict, and on how many all are rejected.
-func (r *result) exposureVerdicts(name string, bad []tile, k kinds) error {
-	shown, err := exposures(bad)
-	if err != nil {
-		return err
-	}
-	several, constant, caught := 0, 0, 0
+// overExposures counts tiles that were shown at several exposures.
+type overExposures struct{ tiles, constant, neverAccepted, alwaysRejected, everRejected, alwaysAccepted int }
+
+func countExposures(shown [][]tile, k kinds) overExposures {
+	var c overExposures
 	for _, t := range shown {
 		if len(t) < 2 {
 			continue
 		}
-		several++
-		rejected := 0
+		n := map[pipeline.Verdict]int{}
 		for _, x := range t {
-			if x.rejected[k] {
-				rejected++
+			n[x.verdict[k]]++
+		}
+		c.tiles++
+		count := func(is bool, into *int) {
+			if is {
+				*into++
 			}
 		}
-		if rejected == 0 || rejected == len(t) {
-			constant++
-		}
-		if rejected == len(t) {
-			caught++
-		}
+		count(len(n) == 1, &c.constant)
+		count(n[pipeline.Accept] == 0, &c.neverAccepted)
+		count(n[pipeline.Reject] == len(t), &c.alwaysRejected)
+		count(n[pipeline.Reject] > 0, &c.everRejected)
+		count(n[pipeline.Accept] == len(t), &c.alwaysAccepted)
 	}
-	if several == 0 {
-		return nil
-	}
-	if _, err := r.share("verdict constant over exposures "+name, constant, several, "tiles with several exposures"); err != nil {
-		return err
-	}
-	_, err = r.share("rejected at every exposure "+name, caught, several, "tiles with several exposures")
-	return err
+	return c
 }
 
-// alarms adds the share of clean pictures that are rejected, with a bootstrap over groups.
-func (r *result) alarms(name string, clean []tile, k kinds) {
-	groups := byGroup(clean)
-	share := func(tiles []tile) float64 {
-		n := 0
-		for _, t := range tiles {
-			if t.rejected[k] {
-				n++
-			}
-		}
-		return float64(n) / float64(max(len(tiles), 1))
+// exposureVerdicts adds what becomes of defective tiles with several exposures, and beside it
+// of clean ones where any are given.
+func (r *result) exposureVerdicts(name string, bad, clean []tile, k kinds) error {
+	shown, err := exposures(bad)
+	if err != nil {
+		return err
 	}
-	ends := bootstrapBoth(len(groups), 0, func(i, _ []int) float64 { return share(drawn(groups, i)) })
-	r.between("clean pictures rejected, "+name, share(clean), yield.Interval{Low: ends.Low, High: ends.High}, len(clean), fmt.Sprintf("pictures; %d groups, bootstrap over them", len(groups)))
+	beside, err := exposures(clean)
+	if err != nil {
+		return err
+	}
+	c, of := countExposures(shown, k), countExposures(beside, k)
+	for _, f := range []struct {
+		name    string
+		count   int
+		n       int
+		subject string
+	}{
+		{"verdict constant over exposures ", c.constant, c.tiles, "defective"},
+		{"never accepted, reject or hold at every exposure ", c.neverAccepted, c.tiles, "defective"},
+		{"rejected at every exposure ", c.alwaysRejected, c.tiles, "defective"},
+		{"clean, rejected at any exposure ", of.everRejected, of.tiles, "clean"},
+		{"clean, accepted at every exposure ", of.alwaysAccepted, of.tiles, "clean"},
+	} {
+		if f.n == 0 {
+			continue
+		}
+		if _, err := r.share(f.name+name, f.count, f.n, f.subject+" tiles with several exposures"); err != nil {
+			return err
+		}
+	}
+	return nil
 }
