@@ -1,7 +1,9 @@
 // The middle of some values, and the mean of their middle half.
+#include <string.h>
+
 #include "lines.h"
 
-enum { LANES = 16, LAST_BISECTION = 40 };
+enum { LANES = 8, LAST_TURN = 100 };
 
 // count returns how many of v lie below a limit.
 LN_KERNEL int32_t count(const float *restrict v, int32_t n, float limit) {
@@ -11,49 +13,48 @@ LN_KERNEL int32_t count(const float *restrict v, int32_t n, float limit) {
 	return below;
 }
 
-// A sum is taken in lanes, in the same order by all clones.
-typedef struct {
-	float lane[LANES], square[LANES];
-} lanes;
+typedef float floats __attribute__((vector_size(4 * LANES)));
+typedef int32_t masks __attribute__((vector_size(4 * LANES)));
 
-LN_KERNEL void total(const float *restrict v, int32_t n, float low, float high, lanes *restrict out) {
-	lanes t = {{0}, {0}};
+// between returns the sum of v from low on below high, and of their squares. Both are taken
+// in lanes, in the same order by all clones.
+LN_KERNEL double between(const float *v, int32_t n, float low, float high, double *squares) {
+	floats sum = {0}, square = {0};
 	int32_t i = 0;
-	for (; i + LANES <= n; i += LANES)
-		for (int k = 0; k < LANES; k++) {
-			const float x = v[i + k] >= low && v[i + k] < high ? v[i + k] : 0;
-			t.lane[k] += x;
-			t.square[k] += x * x;
-		}
+	for (; i + LANES <= n; i += LANES) {
+		floats x;
+		memcpy(&x, v + i, sizeof x);
+		x = (floats)((masks)x & (x >= low) & (x < high));
+		sum += x;
+		square += x * x;
+	}
+	double all = 0;
+	*squares = 0;
 	for (; i < n; i++)
 		if (v[i] >= low && v[i] < high)
-			t.lane[0] += v[i], t.square[0] += v[i] * v[i];
-	*out = t;
-}
-
-// between returns the sum of v from low on below high, and of their squares.
-static double between(const float *v, int32_t n, float low, float high, double *squares) {
-	lanes t;
-	double sum = 0;
-	total(v, n, low, high, &t);
-	*squares = 0;
+			all += v[i], *squares += v[i] * v[i];
 	for (int k = 0; k < LANES; k++)
-		sum += t.lane[k], *squares += t.square[k];
-	return sum;
+		all += sum[k], *squares += square[k];
+	return all;
 }
 
 // split returns a limit between low and high, or beyond them if need be, below which k
-// values lie, and how many really do: fewer where the next ones are equal.
+// values lie, and how many really do: fewer where the next ones are equal. It is looked for
+// where the values would be if they lay evenly, at every third turn halfway.
 static float split(const float *v, int32_t n, int32_t k, float low, float high, int32_t *below) {
-	for (float by = high - low; (*below = count(v, n, low)) > k && by < __FLT_MAX__; by *= 2)
-		low -= by;
-	for (float by = high - low; count(v, n, high) < k && by < __FLT_MAX__; by *= 2)
-		high += by;
-	for (int i = 0; i < LAST_BISECTION && *below != k; i++) {
-		const float middle = 0.5f * (low + high);
+	int32_t over = count(v, n, high);
+	*below = count(v, n, low);
+	for (float by = high - low; *below > k && by < __FLT_MAX__; by *= 2)
+		*below = count(v, n, low -= by);
+	for (float by = high - low; over < k && by < __FLT_MAX__; by *= 2)
+		over = count(v, n, high += by);
+	for (int i = 0; i < LAST_TURN && *below != k; i++) {
+		const float share = i % 3 == 2 || over == *below ? 0.5f : ((float)(k - *below) + 0.5f) / (float)(over - *below + 1);
+		const float middle = low + share * (high - low);
 		const int32_t c = count(v, n, middle);
 		if (c > k) {
 			high = middle;
+			over = c;
 			continue;
 		}
 		low = middle;

@@ -89,7 +89,7 @@ func (w *work) erase(y, x0, x1 int) {
 }
 
 // hits searches all strips and returns the lines through one that stand out, and how the
-// sums spread.
+// sums spread. They are in C's memory until the next search.
 func (w *work) hits(s Settings) ([]C.ln_hit, *spread, error) {
 	C.ln_clear(w.c)
 	sp := newSpread(w.width, w.height)
@@ -104,7 +104,7 @@ func (w *work) hits(s Settings) ([]C.ln_hit, *spread, error) {
 	}
 	var n C.int32_t
 	p := C.ln_hits(w.c, &n)
-	return append([]C.ln_hit(nil), unsafe.Slice(p, int(n))...), sp, nil
+	return unsafe.Slice((*C.ln_hit)(p), int(n)), sp, nil
 }
 
 func (w *work) eraseAlong(k stretch, reach int) {
