@@ -10,7 +10,7 @@ COMMIT  := $(shell git rev-parse --short=12 HEAD 2>/dev/null || echo unknown)
 LDFLAGS := -X main.version=$(VERSION) -X main.commit=$(COMMIT)
 DATA    ?= $(firstword $(wildcard ../shared/data ../../shared/data))
 
-.PHONY: all deps deps-check build test race fuzz demo bench bench-short compare spoil evaluate crosscheck lint gen clean
+.PHONY: all deps deps-check build test race fuzz arm64 demo bench bench-short compare spoil evaluate crosscheck lint gen clean
 
 all: build
 
@@ -32,6 +32,11 @@ race: deps ## where goroutines share something; kernels and the volume plan do n
 
 fuzz: deps ## every fuzz target for FUZZTIME
 	@.ci/fuzz $(or $(FUZZTIME),5s)
+
+arm64: ## the C kernels built for arm64, under qemu: the same bits as here; ALL=1: the Go tests around them as well
+	@.ci/deps gcc-aarch64-linux-gnu libc6-dev-arm64-cross qemu-user-static
+	go test -count=1 -v -run '^TestSameBitsOnArm64$$' ./pipeline/raster/fused ./pipeline/raster/lines
+	$(if $(ALL),CGO_ENABLED=1 GOARCH=arm64 CC=aarch64-linux-gnu-gcc go test -short -exec 'qemu-aarch64-static -L /usr/aarch64-linux-gnu' ./pipeline/raster/fused ./pipeline/raster/lines)
 
 demo: build ## the main job with embedded defaults; ONCE=1 stops after the report, UNITS=n shows fewer
 	build/lapgated demo --client build/lapgate --dir build/demo $(if $(ONCE),--once --report build/demo.json) $(if $(UNITS),--units $(UNITS))

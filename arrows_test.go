@@ -23,6 +23,7 @@ var arrows = map[string][]string{
 	"pipeline":                  {"pipeline/raster"},
 	"pipeline/raster":           {},
 	"pipeline/raster/files":     {"pipeline/raster"},
+	"pipeline/raster/drive":     {},
 	"pipeline/raster/fused":     {"pipeline/raster"},
 	"pipeline/raster/lines":     {"pipeline/raster"},
 	"pipeline/raster/cv":        {"pipeline/raster", gocv},

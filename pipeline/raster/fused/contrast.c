@@ -30,11 +30,11 @@ static void ramps(const pg_frame *f, const pg_grid *g, const double *nodes, int 
 		double step = (right - left) / f->cell, start = left + fx * (right - left);
 		if (hold && (fx < 0 || fx >= 1)) { // up to the first node, and beyond the last one
 			const int node = ix * f->cell + f->cell / 2;
-			end = fx < 0 && node < end ? node + 1 : end;
+			end = fx < 0 && node < end ? node : end;
 			start = fx < 0 ? left : right;
 			step = 0;
 		} else if (hold) { // not beyond the last one
-			const int last = jx * f->cell + f->cell / 2 + 1;
+			const int last = jx * f->cell + f->cell / 2;
 			end = last < end && last > x ? last : end;
 		}
 		end = end > x ? end : x + 1;

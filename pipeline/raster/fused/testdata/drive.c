@@ -7,8 +7,11 @@
 #include <string.h>
 #include <time.h>
 
+#include "../bound.h"
+#include "../contrast.h"
 #include "../correct.h"
 #include "../objects.h"
+#include "../parts.h"
 
 static uint64_t seed = 1;
 
@@ -40,7 +43,7 @@ typedef struct {
 	pg_blobs *blobs;
 	void *blocks;
 	float *snr;
-	int n;
+	int n, weaker, beside; // weaker: drop some blobs; beside: try what is not part of a search
 	int32_t again;
 	uint64_t digest;
 } job;
@@ -84,8 +87,11 @@ static void spot(float *light, const pg_frame *f, double cx, double cy, double p
 static void expose(pg_frame *f, double level, double noise, int spots, int scratches, int stride) {
 	uint8_t *data = room((size_t)stride * (size_t)f->height);
 	float *light = room(sizeof(float) * (size_t)f->width * (size_t)f->height);
-	for (int i = 0; i < spots; i++)
-		spot(light, f, below(f->width), below(f->height), noise * (1 + 30 * uniform()), 0.8 + 2 * uniform());
+	for (int i = 0; i < spots; i++) { // one draw a statement: compilers differ in the order of arguments
+		double s = 0.8 + 2 * uniform(), peak = noise * (1 + 30 * uniform());
+		int y = below(f->height), x = below(f->width);
+		spot(light, f, x, y, peak, s);
+	}
 	for (int i = 0; i < scratches; i++) {
 		double x = below(f->width), y = below(f->height), a = 3.14159 * uniform(), length = 60 + 440 * uniform();
 		for (double t = 0; t < length; t++)
@@ -212,6 +218,76 @@ static int rows(job *j) {
 	return e ? e : pg_grain(&j->f, &j->grid, 1);
 }
 
+// expected is what pg_contrast owes a pixel, in double, and how far it may be off.
+static double expected(const job *j, int x, int y, double *off) {
+	const pg_frame *f = &j->f;
+	const pg_grid *g = &j->grid;
+	pg_grid noise = *g;
+	noise.level = g->noise;
+	const double half = 0.5 * f->cell - 0.5, right = half + (g->columns - 1) * f->cell, bottom = half + (g->rows - 1) * f->cell;
+	double v = pg_correct_one(f, x, y), level = pg_level(g, f->cell, x, y);
+	double n = pg_level(&noise, f->cell, fmin(fmax(x, half), right), fmin(fmax(y, half), bottom));
+	double rounding = f->use_float ? 0 : 1.5 / f->scale + 1e-4 * fabs(v);
+	*off = (rounding + 1e-5 * (fabs(v) + fabs(level))) / n + 1e-5 * fabs(v - level) / n;
+	return (v - level) / n;
+}
+
+// contrast holds pg_contrast, in bands as contrast.go has it, against its definition, and
+// wants 0 where a pixel is bad or outside.
+static int contrast(const job *j) {
+	const pg_frame *f = &j->f;
+	float *out = room(sizeof(float) * (size_t)f->width * (size_t)f->height);
+	int e = 0, wrong = 0;
+	for (int i = 0; i < 3; i++)
+		e = e ? e : pg_contrast(f, j->grid.level, j->grid.noise, j->grid.columns, j->grid.rows, i * f->height / 3, (i + 1) * f->height / 3, out);
+	for (int y = 0; y < f->height && !e; y++) {
+		const float *row = out + (int64_t)y * f->width;
+		int x = 0;
+		for (int i = f->span_start[y]; i < f->span_start[y + 1]; i++) {
+			for (; x < f->spans[i].x0; x++)
+				wrong += row[x] != 0;
+			for (; x < f->spans[i].x1; x++) {
+				double off = 0, v = pg_is_bad(f, x, y) ? 0 : expected(j, x, y, &off);
+				wrong += !(fabs((double)row[x] - v) <= off);
+			}
+		}
+		for (; x < f->width; x++)
+			wrong += row[x] != 0;
+	}
+	free(out);
+	if (wrong)
+		fprintf(stderr, "contrast: %d pixels off\n", wrong);
+	return e ? e : wrong ? -1 : 0;
+}
+
+// some drops about half of the blobs, as find.go does with the weaker ones, and wants the
+// pixels of the others unchanged.
+static int some(job *j) {
+	pg_blobs *b = j->blobs;
+	int64_t kept = 0, n = 0, wrong = 0;
+	uint8_t *keep = room((size_t)b->count);
+	pg_span *before = room(sizeof(pg_span) * (size_t)b->runs.count), *after = room(sizeof(pg_span) * (size_t)b->runs.count);
+	for (int64_t i = 0; i < b->count; i++)
+		if ((keep[i] = (uint8_t)below(2))) {
+			pg_spans(b->runs.at + b->blobs[i].first, b->blobs[i].runs, before + n);
+			kept++, n += b->blobs[i].runs;
+		}
+	pg_keep(b, keep);
+	wrong += b->count != kept || b->runs.count != n;
+	for (int64_t i = 0, k = 0; i < b->count && !wrong; k += b->blobs[i++].runs)
+		pg_spans(b->runs.at + b->blobs[i].first, b->blobs[i].runs, after + k);
+	wrong += !!memcmp(before, after, sizeof(pg_span) * (size_t)n);
+	free(keep), free(before), free(after);
+	return wrong ? -2 : 0;
+}
+
+// sizes wants the memory that is reported to be some.
+static int sizes(const job *j) {
+	volatile uint64_t sum = pg_read(&j->f);
+	(void)sum;
+	return pg_blobs_bytes(j->blobs) <= 0 || pg_band_bytes(j->bands[0]) <= 0 ? -3 : 0;
+}
+
 static int objects(job *j) {
 	int e = 0;
 	pg_measure m;
@@ -220,6 +296,8 @@ static int objects(job *j) {
 	if (!e)
 		e = pg_again(&j->f, &j->guess, &j->grid, j->bands[0], j->blobs, &j->again);
 	e = e ? e : pg_find(&j->f, &j->grid, j->bands[0], j->blobs, 1, j->snr);
+	if (!e && j->weaker)
+		e = some(j);
 	e = e ? e : pg_index(&j->f, j->blobs);
 	for (int64_t i = 0; i < j->blobs->count && !e; i++) {
 		e = pg_measure_blob(&j->f, &j->grid, j->blobs, i, &m);
@@ -241,7 +319,10 @@ static int all(job *j) {
 		for (int i = 0; i < j->n; i++)
 			mix(j, j->bands[i]->runs.at, sizeof(pg_run) * (size_t)j->bands[i]->runs.count);
 	}
-	return e ? e : objects(j);
+	e = e ? e : objects(j);
+	if (!e && j->beside)
+		e = contrast(j);
+	return e ? e : j->beside ? sizes(j) : 0;
 }
 
 static void drop(job *j) {
@@ -281,6 +362,7 @@ static int fuzz(int count) {
 		begin(&j, 1 + below(4));
 		if (below(3) == 0)
 			j.snr = room(sizeof(float) * (size_t)j.f.width * (size_t)j.f.height);
+		j.weaker = below(2), j.beside = 1;
 		int e = all(&j);
 		drop(&j);
 		if (e) {

@@ -52,9 +52,15 @@ static void load(ln_work *w, int width, int height, int half, int odd) {
 	free(b);
 }
 
+// One draw a statement here and below: compilers differ in the order of arguments.
+static void erase(ln_work *w, int width, int height) {
+	const int x1 = below(width + 40) - 20, x0 = below(width + 4) - 2, y = below(height + 4) - 2;
+	ln_erase(w, y, x0, x1);
+}
+
 static void holes(ln_work *w, int width, int height) {
 	for (int i = below(40); i > 0; i--)
-		ln_erase(w, below(height + 4) - 2, below(width + 4) - 2, below(width + 40) - 20);
+		erase(w, width, height);
 	if (below(2)) // a disc
 		for (int y = 0; y < height; y++) {
 			double dy = (y - height / 2.) / (height / 2.), half = dy * dy < 1 ? sqrt(1 - dy * dy) * width / 2 : 0;
@@ -84,7 +90,8 @@ static void around(ln_work *w, int width, int height, int rounds) {
 			mix(p, sizeof *p * (size_t)n);
 			free(p);
 		}
-		s = ln_settle(w, s, weights, below(3), 0.5, below(2) ? 1 : -1, &t);
+		const int sign = below(2) ? 1 : -1, reach = below(3);
+		s = ln_settle(w, s, weights, reach, 0.5, sign, &t);
 		mix(&t, sizeof t);
 		if (below(4) == 0)
 			ln_erase_along(w, s, below(6));
@@ -118,15 +125,18 @@ static void one(int width, int height) {
 		exit(1);
 	const int twice = 1 + below(2);
 	for (int i = 0; i < twice; i++) {
-		load(w, width, height, below(2), below(3) == 0);
+		const int odd = below(3) == 0, half = below(2);
+		load(w, width, height, half, odd);
 		if (below(2))
 			holes(w, width, height);
-		search(w, width, height, 3 + 3 * uniform(), below(3) - 1);
+		const int polarity = below(3) - 1;
+		search(w, width, height, 3 + 3 * uniform(), polarity);
 		around(w, width, height, 40);
 	}
 	const int at = below(width) - LN_ROWS, n = 1 + below(LN_TILE < width + LN_ROWS - 1 - at - LN_ROWS ? LN_TILE : 16);
 	int16_t *sums = malloc(sizeof *sums * LN_ROWS * (size_t)n);
-	ln_sums(w, 0, height > LN_ROWS ? below(height - LN_ROWS + 1) : 0, below(2), at, n, sums);
+	const int flipped = below(2), first = height > LN_ROWS ? below(height - LN_ROWS + 1) : 0;
+	ln_sums(w, 0, first, flipped, at, n, sums);
 	mix(sums, sizeof *sums * LN_ROWS * (size_t)n);
 	free(sums);
 	if (ln_work_bytes(w) <= 0)
@@ -164,7 +174,8 @@ int main(int argc, char **argv) {
 	const int fuzz = argc > 3 && !strcmp(argv[1], "fuzz");
 	state = fuzz ? strtoull(argv[2], 0, 10) * 2654435761u + 1 : 77;
 	for (int i = fuzz ? atoi(argv[3]) : 12; i > 0; i--) {
-		one(1 + below(i % 4 ? 400 : 1800), 1 + below(300));
+		const int height = 1 + below(300);
+		one(1 + below(i % 4 ? 400 : 1800), height);
 		printf("%016llx\n", (unsigned long long)hash);
 	}
 	return 0;
