@@ -25,7 +25,8 @@ static course start(const ln_work *w, const ln_stretch *s) {
 	return c;
 }
 
-// pixels returns the four at position i, one in each byte; entry what they count.
+// pixels returns the four at position i, one in each byte, the first in the lowest (of a
+// little-endian processor); entry what they count.
 LN_INLINE uint32_t pixels(const course *c, const int16_t *weights, int64_t i, int beside, const int16_t **entry) {
 	const int64_t cross = c->cross + i * c->slope;
 	*entry = weights + (cross >> 12 & (LN_FRACTIONS - 1)) * LN_ENTRY;
