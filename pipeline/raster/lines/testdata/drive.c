@@ -69,6 +69,28 @@ static void holes(ln_work *w, int width, int height) {
 		}
 }
 
+static void part(ln_work *w, ln_stretch s, const int16_t *weights) {
+	double scatter[LN_LEVELS] = {1, 1, 1};
+	const int uneven = below(2);
+	for (int i = 0; uneven && i < LN_LEVELS; i++)
+		scatter[i] = 0.5 + 2 * uniform();
+	int32_t ends[2] = {0};
+	const int sign = below(2) ? 1 : -1, n = ln_part(w, s, weights, sign, scatter, ends, ends + 1);
+	mix(&n, sizeof n);
+	mix(ends, sizeof ends);
+}
+
+static void middles(void) {
+	const int n = 1 + below(200), few = below(3);
+	float *v = malloc(sizeof *v * (size_t)n);
+	for (int i = 0; i < n; i++)
+		v[i] = few ? (float)below(4) : normal();
+	const double middle = ln_middle(v, n), median = ln_median(v, n);
+	mix(&middle, sizeof middle);
+	mix(&median, sizeof median);
+	free(v);
+}
+
 static void around(ln_work *w, int width, int height, int rounds) {
 	int16_t weights[LN_FRACTIONS * LN_ENTRY] = {0};
 	for (int i = 0; i < LN_FRACTIONS; i++)
@@ -93,6 +115,8 @@ static void around(ln_work *w, int width, int height, int rounds) {
 		const int sign = below(2) ? 1 : -1, reach = below(3);
 		s = ln_settle(w, s, weights, reach, 0.5, sign, &t);
 		mix(&t, sizeof t);
+		part(w, s, weights);
+		middles();
 		if (below(4) == 0)
 			ln_erase_along(w, s, below(6));
 	}
