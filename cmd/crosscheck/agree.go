@@ -12,83 +12,127 @@ import (
 // Bounds on how far the fused pass may be from the reference.
 const (
 	nearThreshold = 0.02 // of a threshold: what is that close to it may fall on either side
-	centreBound   = 0.1  // px
-	sizeBound     = 0.02 // of diameter, length and width
-	leastShare    = 0.99 // of the objects in both, with the same centre, with the same sizes
+	centreBound   = 0.1  // px, of every object in both
+	sizeBound     = 0.02 // of the reference's diameter, length and width at half height, of every object in both
 	leastPixels   = 0.97 // of the objects with the same pixels, but for those near k_low
-	leastObjects  = 60   // on each surface, for the shares to say anything
+	leastObjects  = 60   // on each surface, to say anything
 )
 
-// tally counts how the objects of the fused pass and of the reference compare on one
-// surface. An object is one with a peak of k_high or more on either side.
+// tally counts how what the fused pass finds and what the reference finds compare on one
+// surface. An object is a thing with a peak of k_high or more on either side.
 type tally struct {
 	surface          string
+	frame            string // looked at now
 	reference, fused int
-	near             int // on one side only, with a peak within 2 % of k_high
-	pieces           int // in one piece on one side only, for pixels within 2 % of k_low
-	missing          int // on one side only, and no such excuse
-	pairs            int
+	near             int // objects on one side only, with a peak within 2 % of k_high
+	pieces           int // things in one piece on one side only, for pixels within 2 % of k_low
+	faint            int // things on one side only, with a peak within 2 % of k_low
+	pairs            int // objects in both
+	low              int // things with a partner, noise included; each side counts
 	samePixels       int
 	nearPixels       int // other pixels, all of them within 2 % of k_low
 	otherPixels      int
-	centres, sizes   int     // of all pairs: beyond the bounds
-	worstCentre      float64 // px
-	low              [2]int  // above k_low, noise included: of either side with a partner, and in all but peaks near k_low
+	worstCentre      float64     // px
+	worstSize        float64     // share
+	exceptions       []exception // to the rule; each is printed
 }
 
-// add compares the objects of one frame.
+// exception is a thing for which the rule does not hold.
+type exception struct{ kind, what string }
+
+// The kinds of exceptions.
+const (
+	oneSide   = "object on one side only"
+	faintSide = "thing below k_high on one side only"
+	centreOff = "centres too far apart"
+	sizeOff   = "sizes too far apart"
+)
+
+// allowed returns how many exceptions of a kind a surface may have. A cell's level and noise
+// hang on which of its values are clipped: the reference's own noise moves by up to 3 % in a
+// cell where the counts are rounded to 1/32 DN before, and the level of a cell with a large
+// object in it by some hundredths of a sigma with the start of the clipping. That moves what
+// is near k_low, and the outline at half height of a faint object on lay.
+func allowed(kind string) int {
+	if kind == faintSide || kind == sizeOff {
+		return 1
+	}
+	return 0
+}
+
+// except notes an exception: where, and how each side has it.
+func (t *tally) except(kind string, a thing, format string, args ...any) {
+	t.exceptions = append(t.exceptions, exception{kind, fmt.Sprintf("%s: at (%.1f, %.1f), peak %.3f sigmas, %d px: %s", t.frame, a.X, a.Y, a.PeakSNR, a.AreaPx, kind) +
+		fmt.Sprintf(format, args...)})
+}
+
+// add compares what was found in one frame.
 func (t *tally) add(f found) {
 	snr := f.item.Planes[pipeline.SNRPlane].Pixels
 	ours, theirs := labels(f.fused, snr.Width, snr.Height), labels(f.reference, snr.Width, snr.Height)
 	for i, a := range f.fused {
 		b, ok := partner(a, i, theirs, ours, f.reference)
-		t.count(ok, a.PeakSNR)
-		if a.PeakSNR < kHigh {
-			continue
+		t.fused += object01(a)
+		t.compare("fused pass", a, b, ok, side{f.reference, theirs, ours, snr})
+		if ok && a.PeakSNR >= kHigh && b.PeakSNR >= kHigh {
+			t.pair(a, b, samePixels(a, b), near(ours, theirs, snr, a.spans, b.spans))
 		}
-		t.fused++
-		if !ok || b.PeakSNR < kHigh {
-			t.alone(a, theirs, ours, f.reference, snr)
-			continue
-		}
-		t.pair(a, b, samePixels(a, b), near(ours, theirs, snr, a.spans, b.spans))
 	}
 	for i, b := range f.reference {
 		a, ok := partner(b, i, ours, theirs, f.fused)
-		t.count(ok, b.PeakSNR)
-		if b.PeakSNR < kHigh {
-			continue
-		}
-		t.reference++
-		if !ok || a.PeakSNR < kHigh {
-			t.alone(b, ours, theirs, f.fused, snr)
-		}
+		t.reference += object01(b)
+		t.compare("reference", b, a, ok, side{f.fused, ours, theirs, snr})
 	}
 }
 
-// count counts a thing above k_low, unless it is alone because its peak is near that.
-func (t *tally) count(ok bool, peak float64) {
+// object01 is 1 for an object, 0 for what is fainter.
+func object01(a thing) int {
+	if a.PeakSNR >= kHigh {
+		return 1
+	}
+	return 0
+}
+
+// side is what the other side has found, with the labels of both.
+type side struct {
+	list       []thing
+	other, own *labelled
+	snr        *raster.Plane
+}
+
+// compare counts thing a of the side named. Where the other side does not have it, or has it
+// below k_high, its peak must be near that threshold; or it is a piece of what the
+// other side has whole, or the whole of pieces, for pixels near k_low.
+func (t *tally) compare(name string, a, b thing, ok bool, s side) {
+	high := a.PeakSNR >= kHigh
 	if ok {
-		t.low[0]++
+		t.low++
+		if !high || b.PeakSNR >= kHigh {
+			return
+		}
 	}
-	if ok || peak > kLow*(1+nearThreshold) {
-		t.low[1]++
+	k, kind := s.other.most(a.spans), faintSide
+	if high {
+		kind = oneSide
+	}
+	switch {
+	case high && ok && a.PeakSNR <= kHigh*(1+nearThreshold) && b.PeakSNR >= kHigh*(1-nearThreshold):
+		t.near++
+	case !high && a.PeakSNR <= kLow*(1+nearThreshold):
+		t.faint++
+	case !ok && k >= 0 && (!high || s.list[k].PeakSNR >= kHigh) && near(s.own, s.other, s.snr, a.spans, s.list[k].spans):
+		t.pieces++
+	case k >= 0:
+		t.except(kind, a, " (%s); the other has a peak of %.3f sigmas, %d px there", name, s.list[k].PeakSNR, s.list[k].AreaPx)
+	default:
+		t.except(kind, a, " (%s); the other has nothing there, the reference's snr is %.3f at most", name, most(s.snr, a.spans))
 	}
 }
 
-// alone counts an object that the other side does not have: its peak is near k_high, or it
-// is a piece of one that the other side has whole, or the whole of pieces, for pixels near
-// k_low, or it is missing.
-func (t *tally) alone(a thing, other, own *labelled, list []thing, snr *raster.Plane) {
-	k := other.most(a.spans)
-	switch {
-	case a.PeakSNR <= kHigh*(1+nearThreshold):
-		t.near++
-	case k >= 0 && list[k].PeakSNR >= kHigh && near(own, other, snr, a.spans, list[k].spans):
-		t.pieces++
-	default:
-		t.missing++
-	}
+// most is the highest value of a plane in spans.
+func most(p *raster.Plane, spans []raster.Span) float32 {
+	x, y := highest(p, spans)
+	return p.At(x, y)
 }
 
 // labels numbers the pixels of each thing from 1.
@@ -149,13 +193,21 @@ func (t *tally) pair(a, b thing, same, near bool) {
 	off := math.Hypot(a.X-b.X, a.Y-b.Y)
 	t.worstCentre = max(t.worstCentre, off)
 	if !(off <= centreBound) {
-		t.centres++
+		t.except(centreOff, a, " by %.3f px", off)
 	}
-	for _, s := range [][2]float64{{a.Diameter, b.Diameter}, {a.Length, b.Length}, {a.Width, b.Width}} {
-		if !(math.Abs(s[0]-s[1]) <= sizeBound*s[1]) {
-			t.sizes++
-			break
+	sizes := ""
+	for _, s := range []struct {
+		name       string
+		ours, want float64
+	}{{"diameter", a.Diameter, b.Diameter}, {"length", a.Length, b.Length}, {"width", a.Width, b.Width}} {
+		change := math.Abs(s.ours-s.want) / s.want
+		t.worstSize = max(t.worstSize, change)
+		if !(change <= sizeBound) {
+			sizes += fmt.Sprintf("; %s %.3f px, reference %.3f px", s.name, s.ours, s.want)
 		}
+	}
+	if sizes != "" {
+		t.except(sizeOff, a, "%s", sizes)
 	}
 }
 
@@ -178,31 +230,32 @@ func near(ours, theirs *labelled, snr *raster.Plane, lists ...[]raster.Span) boo
 	return true
 }
 
-// String is a line for people.
+// String is a line for people, and one for each exception.
 func (t tally) String() string {
-	return fmt.Sprintf("fused pass and reference on %s: %d and %d objects, %d in both (%d with the same pixels, %d but for pixels within %g %% of k_low, %d otherwise), "+
-		"%d on one side only within %g %% of k_high, %d in pieces, %d on one side only; centres beyond %g px: %d (worst %.3f), sizes beyond %g %%: %d; all above k_low: %d of %d have a partner",
-		t.surface, t.fused, t.reference, t.pairs, t.samePixels, t.nearPixels, 100*nearThreshold, t.otherPixels, t.near, 100*nearThreshold, t.pieces, t.missing,
-		centreBound, t.centres, t.worstCentre, 100*sizeBound, t.sizes, t.low[0], t.low[1])
+	out := fmt.Sprintf("fused pass and reference on %s: %d and %d objects, %d in both (%d with the same pixels, %d but for pixels within %g %% of k_low, %d otherwise), "+
+		"%d on one side only within %g %% of k_high; of %d things above k_low, %d are on one side only within %g %% of it, %d in pieces for pixels within %g %% of it; "+
+		"centres differ by at most %.3f px, sizes by %.2f %%; exceptions: %d",
+		t.surface, t.fused, t.reference, t.pairs, t.samePixels, t.nearPixels, 100*nearThreshold, t.otherPixels, t.near, 100*nearThreshold,
+		t.low+t.faint+t.pieces, t.faint, 100*nearThreshold, t.pieces, 100*nearThreshold, t.worstCentre, 100*t.worstSize, len(t.exceptions))
+	for _, e := range t.exceptions {
+		out += "\n  exception: " + e.what
+	}
+	return out
 }
 
 // check says what is beyond the bounds.
 func (t tally) check() error {
-	all := t.fused + t.reference
-	for _, c := range []struct {
-		off, of int
-		least   float64
-		what    string
-	}{
-		{t.missing, all, leastShare, "objects are on one side only, with peaks not near the threshold"},
-		{t.low[1] - t.low[0], t.low[1], leastShare, "objects above k_low are on one side only"},
-		{t.otherPixels, t.pairs, leastPixels, "objects have other pixels, and not only near k_low"},
-		{t.centres, t.pairs, leastShare, fmt.Sprintf("centres differ by more than %g px", centreBound)},
-		{t.sizes, t.pairs, leastShare, fmt.Sprintf("sizes differ by more than %g %%", 100*sizeBound)},
-	} {
-		if float64(c.off) > (1-c.least)*float64(c.of) {
-			return fmt.Errorf("%s: %d of %d %s; want at most %.0f %%", t.surface, c.off, c.of, c.what, 100*(1-c.least))
+	counts := map[string]int{}
+	for _, e := range t.exceptions {
+		counts[e.kind]++
+	}
+	for _, kind := range []string{oneSide, faintSide, centreOff, sizeOff} {
+		if counts[kind] > allowed(kind) {
+			return fmt.Errorf("%s: exceptions: %d × %s; want at most %d", t.surface, counts[kind], kind, allowed(kind))
 		}
+	}
+	if float64(t.otherPixels) > (1-leastPixels)*float64(t.pairs) {
+		return fmt.Errorf("%s: %d of %d objects have other pixels, and not only near k_low; want at most %.0f %%", t.surface, t.otherPixels, t.pairs, 100*(1-leastPixels))
 	}
 	if t.pairs < leastObjects {
 		return fmt.Errorf("%s: %d objects in common, want at least %d to compare", t.surface, t.pairs, leastObjects)

@@ -40,19 +40,26 @@ func TestCheckCanFail(t *testing.T) {
 		spoil func(f *found)
 		says  string // in the error; empty = none
 	}{
-		"the same":             {spoil: func(*found) {}},
-		"two missed":           {func(f *found) { f.fused = f.fused[2:] }, "2 of 158 objects are on one side only"},
-		"two too many":         {func(f *found) { f.reference = f.reference[2:] }, "2 of 158 objects are on one side only"},
-		"peaks far too low":    {func(f *found) { f.fused[3].PeakSNR, f.fused[4].PeakSNR = 5.9, 5.9 }, "2 of 158 objects are on one side only"},
-		"peaks near threshold": {func(f *found) { f.peaks(5.95, 6.05) }, ""},
-		"one centre off":       {func(f *found) { f.fused[3].X += 0.11 }, "1 of 80 centres"},
-		"centre just within":   {func(f *found) { f.fused[3].X += 0.099 }, ""},
-		"no number":            {func(f *found) { f.fused[3].Y = math.NaN() }, "1 of 80 centres"},
-		"one width off":        {func(f *found) { f.fused[3].Width *= 1.021 }, "1 of 80 sizes"},
-		"pixels too many":      {func(f *found) { f.widen(3, 3.6) }, "3 of 80 objects have other pixels"},
-		"pixels near k_low":    {func(f *found) { f.widen(30, 3.44) }, ""},
-		"in pieces":            {func(f *found) { f.cut(1) }, ""},
-		"too few to say":       {func(f *found) { f.fused, f.reference = f.fused[:59], f.reference[:59] }, "want at least 60"},
+		"the same":               {spoil: func(*found) {}},
+		"one missed":             {func(f *found) { f.fused = f.fused[1:] }, "1 × object on one side only"},
+		"one too many":           {func(f *found) { f.reference = f.reference[1:] }, "1 × object on one side only"},
+		"peak far too low":       {func(f *found) { f.fused[3].PeakSNR = 5.9 }, "1 × object on one side only"},
+		"peaks near threshold":   {func(f *found) { f.peaks(5.95, 6.05) }, ""},
+		"near k_high but missed": {func(f *found) { f.peaks(6.05, 6.05); f.fused = f.fused[1:] }, "1 × object on one side only"},
+		"one faint missed":       {func(f *found) { f.peaks(5, 5); f.fused = f.fused[1:] }, ""},
+		"two faint missed":       {func(f *found) { f.peaks(5, 5); f.fused = f.fused[2:] }, "2 × thing below k_high"},
+		"faint ones near k_low":  {func(f *found) { f.peaks(3.56, 3.56); f.fused = f.fused[9:] }, ""},
+		"one centre off":         {func(f *found) { f.fused[3].X += 0.11 }, "1 × centres"},
+		"centre just within":     {func(f *found) { f.fused[3].X += 0.099 }, ""},
+		"no number":              {func(f *found) { f.fused[3].Y = math.NaN() }, "1 × centres"},
+		"one width off":          {func(f *found) { f.fused[3].Width *= 1.021 }, ""},
+		"two widths off":         {func(f *found) { f.fused[3].Width *= 1.021; f.fused[9].Width *= 0.979 }, "2 × sizes"},
+		"no size":                {func(f *found) { f.fused[3].Width = math.NaN(); f.fused[4].Length = math.Inf(1) }, "2 × sizes"},
+		"pixels too many":        {func(f *found) { f.widen(3, 3.6) }, "3 of 80 objects have other pixels"},
+		"pixels near k_low":      {func(f *found) { f.widen(30, 3.44) }, ""},
+		"in pieces":              {func(f *found) { f.cut(1, 1) }, ""},
+		"torn at 5 to 10 sigmas": {func(f *found) { f.cut(1, 2) }, "1 × object on one side only"},
+		"too few to say":         {func(f *found) { f.fused, f.reference = f.fused[:59], f.reference[:59] }, "want at least 60"},
 	} {
 		t.Run(name, func(t *testing.T) {
 			f := twoSides()
@@ -83,11 +90,12 @@ func (f *found) widen(n int, snr float32) {
 	}
 }
 
-// cut makes the upper row of the first n objects of the pass an object of its own.
-func (f *found) cut(n int) {
+// cut makes the upper row of the first n objects of the pass an object of its own, and
+// leaves the rows from next on to the object.
+func (f *found) cut(n, next int) {
 	for i := range n {
 		b := f.fused[i]
-		f.fused[i].spans = b.spans[1:]
+		f.fused[i].spans = b.spans[next:]
 		b.spans = b.spans[:1]
 		f.fused = append(f.fused, b)
 	}

@@ -112,8 +112,9 @@ func (doc *document) add(dir string, s surface, scene render.Scene, units int) e
 		if err != nil {
 			return err
 		}
+		t.frame = fmt.Sprintf("%s-%02d", s.name, i)
 		t.add(found)
-		f, err := writeFrame(dir, fmt.Sprintf("%s-%02d", s.name, i), found)
+		f, err := writeFrame(dir, t.frame, found)
 		if err != nil {
 			return err
 		}
