@@ -273,6 +273,10 @@ static void take_samples(state *s, const T *restrict filtered, int y) {
 // have further to go than one step: 0.9973 where there is nothing but noise.
 #define CLEAN 0.995
 
+// FAR is by how many sigmas a cell's level or sigma may differ from the first look's for
+// one step of clipping to do.
+#define FAR 0.08
+
 // cell_moments is moments of the first columns of a whole cell's values, of side × side.
 // Where integers hold the squares of all of them it takes the cell in one go.
 static void cell_moments(const T *cell, int side, int columns, T low, T high, T mid, double *out) {
@@ -328,7 +332,9 @@ static int finish_moments(state *s, int row) {
 	for (int i = 0; i < s->out->columns && !e; i++) {
 		int64_t at = (int64_t)row * s->out->columns + i;
 		e = pg_cell_done(s->f, s->out, at, s->stats + 3 * i, (double)s->cell_mid[i] / s->f->scale, s->g);
-		if (!e && !s->out->filled[at] && s->stats[3 * i] < CLEAN * (double)s->out->valid[at])
+		double sigma = s->out->sigma[at], moved = sigma - s->g->sigma[at], shift = s->out->mean[at] - s->g->mean[at];
+		int far = moved > FAR * sigma || -moved > FAR * sigma || shift > FAR * sigma || -shift > FAR * sigma;
+		if (!e && !s->out->filled[at] && (far || s->stats[3 * i] < CLEAN * (double)s->out->valid[at]))
 			settle_cell(s, at);
 	}
 	return e;
