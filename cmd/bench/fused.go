@@ -152,6 +152,7 @@ func benchFused(o options) (map[string]figure, error) {
 			if times[name] == nil {
 				times[name] = &pair{}
 			}
+			time.Sleep(10 * time.Millisecond) // OpenCV's threads go on spinning for a while
 			if err := times[name].time(job); err != nil {
 				return nil, fmt.Errorf("%s: %w", name, err)
 			}
