@@ -46,8 +46,9 @@ var Factory = pipeline.Make(pipeline.Factory{
 
 type stage struct{ s Settings }
 
-// Run implements pipeline.Stage: v becomes scale·ln(1 + v/offset), and 0 where v is not
-// above 0. Heights and fluxes of the defects found after it are on that scale.
+// Run implements pipeline.Stage: v becomes scale·ln(1 + |v|/offset) with the sign of v, so
+// that noise about 0 keeps both of its sides. Heights and fluxes of the defects found after
+// it are on that scale.
 func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	corrected, err := item.Plane(pipeline.CorrectedPlane)
 	if err != nil {
@@ -57,9 +58,8 @@ func (st stage) Run(ctx context.Context, item *pipeline.Item) error {
 	for y := range corrected.Height {
 		dst := out.Row(y)
 		for x, v := range corrected.Row(y) {
-			if v > 0 {
-				dst[x] = float32(st.s.ScaleDN * math.Log1p(float64(v)/st.s.OffsetDN))
-			}
+			w := float64(v)
+			dst[x] = float32(math.Copysign(st.s.ScaleDN*math.Log1p(math.Abs(w)/st.s.OffsetDN), w))
 		}
 	}
 	item.SetPlane(pipeline.CorrectedPlane, "DN", out)
