@@ -7,8 +7,8 @@
 #include "parts.h"
 #include "spans.h"
 
-// BESIDE is how far beyond a part's columns its rows are filtered, so that what lies
-// outside does not count.
+// BESIDE is how far beyond a part its pixels are filtered, so that the cut through the
+// region does not count in it.
 #define BESIDE 8
 
 // uncovered reports whether the thresholds that g gave at a node may have missed what the
@@ -40,8 +40,8 @@ static int32_t columns(const pg_frame *f, const pg_grid *g, const pg_grid *truth
 	return n;
 }
 
-// narrowed is f with the part of its region from x0 to x1 in rows y0 to y1, a little
-// more of it beside, and two rows above and below. start and spans hold it.
+// narrowed is f with the part of its region from x0 to x1 in rows y0 to y1, and BESIDE px
+// more of it all around. start and spans hold it.
 static pg_frame narrowed(const pg_frame *f, int32_t *start, pg_span *spans, int y0, int y1, int x0, int x1) {
 	pg_frame out = *f;
 	int32_t n = 0;
@@ -101,11 +101,13 @@ static int weave(pg_runs *old, const pg_runs *found, int y0, int y1, int x0, int
 }
 
 int pg_again(const pg_frame *f, const pg_grid *g, const pg_grid *truth, pg_band *band, pg_blobs *b, int32_t *rows) {
-	int32_t *x0 = malloc(sizeof(int32_t) * (2 * (size_t)g->rows + (size_t)f->height + 1)), *x1 = x0 + g->rows, *start = x1 + g->rows;
+	const size_t ints = 2 * (size_t)g->rows + (size_t)f->height + 1, all = (size_t)f->span_start[f->height] + 1;
+	int32_t *x0 = malloc(sizeof(int32_t) * ints);
 	if (!x0)
 		return PG_NO_MEMORY;
+	int32_t *x1 = x0 + g->rows, *start = x1 + g->rows;
 	*rows = columns(f, g, truth, x0, x1);
-	pg_span *spans = *rows > 0 ? malloc(sizeof(pg_span) * ((size_t)f->span_start[f->height] + 1)) : 0;
+	pg_span *spans = *rows > 0 ? malloc(sizeof(pg_span) * all) : 0;
 	int e = *rows > 0 && !spans ? PG_NO_MEMORY : PG_OK;
 	for (int32_t row = 0; row < g->rows && !e; row++) {
 		if (x0[row] >= x1[row])
@@ -115,6 +117,10 @@ int pg_again(const pg_frame *f, const pg_grid *g, const pg_grid *truth, pg_band 
 		pg_frame part = narrowed(f, start, spans, y0, y1, a, c);
 		e = pg_pass(&part, truth, 0, band, row, row + 1);
 		e = e ? e : weave(&b->candidates, &band->runs, y0, y1, a, c);
+	}
+	if (spans) { // beside the grid of the first look, which is still there
+		int64_t bytes = pg_blobs_bytes(b) + (int64_t)(sizeof(int32_t) * ints + sizeof(pg_span) * all) + 5 * 8 * (int64_t)g->columns * g->rows;
+		b->peak = bytes > b->peak ? bytes : b->peak;
 	}
 	free(spans);
 	free(x0);
